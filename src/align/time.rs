@@ -1,0 +1,169 @@
+//! Analysis times.
+
+use crate::settings::{AlignMethod, Analysis};
+use crate::time::{Time, micros_of};
+
+/// Analysis times: whole multiples of the interval since 1970-01-01T00:00:00Z at which at least one station has a
+/// value. A stray report of another year thus costs one time, not a year of empty ones.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub struct TimeGrid {
+    /// μs
+    interval: i64,
+    /// Runs of multiples, first and last, in order and apart.
+    runs: Vec<(i64, i64)>,
+    /// Times before each run.
+    before: Vec<usize>,
+}
+
+impl TimeGrid {
+    /// Times that have a report of any station, whose times (ascending) are given for each station.
+    pub fn covering<S: Iterator<Item = Time>>(
+        stations: impl Iterator<Item = S>,
+        analysis: &Analysis,
+    ) -> Self {
+        let interval = micros_of(analysis.interval).max(1);
+        // A report at time t serves the analysis times from t - back to t + ahead.
+        let (back, ahead) = match analysis.method {
+            AlignMethod::Nearest { tolerance } => {
+                let reach = micros_of(tolerance).min(interval / 2);
+                (reach, reach)
+            }
+            // The window is open at its start: (t - window, t].
+            AlignMethod::VectorMean { window, .. } => (0, micros_of(window).min(interval) - 1),
+        };
+        let first = analysis
+            .from
+            .map_or(i64::MIN, |t| ceil_div(t.micros(), interval));
+        let last = analysis
+            .to
+            .map_or(i64::MAX, |t| t.micros().div_euclid(interval));
+
+        let mut runs: Vec<(i64, i64)> = Vec::new();
+        for times in stations {
+            let mut open: Option<(i64, i64)> = None;
+            for time in times {
+                let low = ceil_div(time.micros() - back, interval).max(first);
+                let high = (time.micros() + ahead).div_euclid(interval).min(last);
+                if low > high {
+                    continue;
+                }
+                open = match open {
+                    Some((start, end)) if low <= end + 1 => Some((start, end.max(high))),
+                    Some(run) => {
+                        runs.push(run);
+                        Some((low, high))
+                    }
+                    None => Some((low, high)),
+                };
+            }
+            runs.extend(open);
+        }
+        runs.sort_unstable();
+        let mut merged: Vec<(i64, i64)> = Vec::new();
+        for (low, high) in runs {
+            match merged.last_mut() {
+                Some(run) if low <= run.1 + 1 => run.1 = run.1.max(high),
+                _ => merged.push((low, high)),
+            }
+        }
+        let before = merged
+            .iter()
+            .scan(0_usize, |count, &(low, high)| {
+                let start = *count;
+                *count += usize::try_from(high - low + 1).unwrap_or(usize::MAX);
+                Some(start)
+            })
+            .collect();
+        Self {
+            interval,
+            runs: merged,
+            before,
+        }
+    }
+
+    /// Number of analysis times.
+    #[must_use]
+    pub fn len(&self) -> usize {
+        match (self.runs.last(), self.before.last()) {
+            (Some(&(low, high)), Some(before)) => {
+                before + usize::try_from(high - low + 1).unwrap_or(0)
+            }
+            _ => 0,
+        }
+    }
+
+    /// True if there is none.
+    #[must_use]
+    pub fn is_empty(&self) -> bool {
+        self.runs.is_empty()
+    }
+
+    /// First analysis time.
+    #[must_use]
+    pub fn first(&self) -> Option<Time> {
+        self.runs.first().map(|run| self.time(run.0))
+    }
+
+    /// Last analysis time.
+    #[must_use]
+    pub fn last(&self) -> Option<Time> {
+        self.runs.last().map(|run| self.time(run.1))
+    }
+
+    /// Times between the first and the last at which no station has a value.
+    #[must_use]
+    pub fn empty_times(&self) -> u64 {
+        self.runs
+            .windows(2)
+            .map(|w| u64::try_from(w[1].0 - w[0].1 - 1).unwrap_or(0))
+            .sum()
+    }
+
+    /// The times from number `start` on.
+    pub fn times_from(&self, start: usize) -> impl Iterator<Item = Time> + '_ {
+        let run = self
+            .before
+            .partition_point(|&b| b <= start)
+            .saturating_sub(1);
+        let skip = start - self.before.get(run).copied().unwrap_or(0);
+        self.runs
+            .iter()
+            .skip(run)
+            .flat_map(|&(low, high)| low..=high)
+            .skip(skip)
+            .map(|k| self.time(k))
+    }
+
+    /// From `time` to the nearest analysis time, μs.
+    #[must_use]
+    pub fn distance(&self, time: Time) -> i64 {
+        let next = self.until_next(time);
+        let k = self
+            .runs
+            .partition_point(|run| run.0 * self.interval <= time.micros());
+        let since = self.runs.get(k.wrapping_sub(1)).map_or(i64::MAX, |run| {
+            let last = run.1.min(time.micros().div_euclid(self.interval));
+            time.micros() - last * self.interval
+        });
+        next.min(since)
+    }
+
+    /// From `time` to the first analysis time at or after it, μs.
+    #[must_use]
+    pub fn until_next(&self, time: Time) -> i64 {
+        let k = self
+            .runs
+            .partition_point(|run| run.1 * self.interval < time.micros());
+        self.runs.get(k).map_or(i64::MAX, |run| {
+            run.0.max(ceil_div(time.micros(), self.interval)) * self.interval - time.micros()
+        })
+    }
+
+    fn time(&self, multiple: i64) -> Time {
+        Time::from_micros(multiple * self.interval)
+    }
+}
+
+fn ceil_div(a: i64, b: i64) -> i64 {
+    a.div_euclid(b) + i64::from(a.rem_euclid(b) > 0)
+}

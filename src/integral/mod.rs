@@ -1,0 +1,164 @@
+//! From coefficient rows and winds to area-mean vorticity and divergence with their errors.
+//!
+//! Circulation and outward flux are the values times the polygon's area.
+
+mod earth;
+
+use crate::align::WindBlock;
+use crate::check::Flag;
+use crate::polygon::{CoefficientRow, StationPolygon};
+use crate::time::Time;
+
+pub use earth::{
+    OMEGA, SELF_TEST_ALLOWED, SelfTest, earth_rotation, planetary_vorticity, self_test,
+};
+
+/// Estimates of all polygons at a run of analysis times.
+///
+/// Columns have the shape polygons × times; the value of polygon `p` at time `t` stands at `p * times.len() + t`. Where
+/// the flag is [`Flag::Missing`] the value is 0 and means nothing.
+#[derive(Debug, Clone, Default, PartialEq)]
+pub struct EstimateBlock {
+    /// The analysis times.
+    pub times: Vec<Time>,
+    /// Area-mean relative vorticity, 1/s, positive counter-clockwise.
+    pub vorticity: Vec<f64>,
+    /// Its standard error, 1/s.
+    pub vorticity_se: Vec<f64>,
+    /// Area-mean horizontal divergence, 1/s.
+    pub divergence: Vec<f64>,
+    /// Its standard error, 1/s.
+    pub divergence_se: Vec<f64>,
+    /// Worst flag of the stations.
+    pub flag: Vec<Flag>,
+}
+
+/// Estimates every polygon at every time of a block, in one pass over the columns of its stations.
+///
+/// - **Error**: instrument errors only, independent between stations: var ζ = Σ wᵀ C w with the 2×2 covariance C of
+///   each report (`methods.md` 1.4, full form; Davies-Jones 1993, MWR 121, 713).
+/// - **Missing**: a polygon without one of its stations has no value at that time.
+#[must_use]
+pub fn estimate(polygons: &[StationPolygon], winds: &WindBlock) -> EstimateBlock {
+    let n = winds.times.len();
+    let cells = polygons.len() * n;
+    let mut out = EstimateBlock {
+        times: winds.times.clone(),
+        vorticity: vec![0.0; cells],
+        vorticity_se: vec![0.0; cells],
+        divergence: vec![0.0; cells],
+        divergence_se: vec![0.0; cells],
+        flag: vec![Flag::NotEvaluated; cells],
+    };
+    if n == 0 {
+        return out;
+    }
+    let columns = out
+        .vorticity
+        .chunks_exact_mut(n)
+        .zip(out.vorticity_se.chunks_exact_mut(n))
+        .zip(out.divergence.chunks_exact_mut(n))
+        .zip(out.divergence_se.chunks_exact_mut(n))
+        .zip(out.flag.chunks_exact_mut(n));
+    for (polygon, ((((vorticity, vorticity_se), divergence), divergence_se), flag)) in
+        polygons.iter().zip(columns)
+    {
+        add_values(&polygon.row, winds, vorticity, divergence);
+        add_variances(&polygon.row, winds, vorticity_se, divergence_se);
+        for &station in &polygon.row.stations {
+            for (flag, &of_station) in flag.iter_mut().zip(&winds.flag[winds.of_station(station)]) {
+                *flag = flag.worst(of_station);
+            }
+        }
+        for t in 0..n {
+            if flag[t] == Flag::Missing {
+                vorticity[t] = 0.0;
+                divergence[t] = 0.0;
+            }
+            vorticity_se[t] = vorticity_se[t].sqrt();
+            divergence_se[t] = divergence_se[t].sqrt();
+        }
+    }
+    out
+}
+
+/// Adds the linear forms; the loop over times has no branch and vectorises.
+fn add_values(
+    row: &CoefficientRow,
+    winds: &WindBlock,
+    vorticity: &mut [f64],
+    divergence: &mut [f64],
+) {
+    for (&station, &[x, y]) in row.stations.iter().zip(&row.weights) {
+        let cells = winds.of_station(station);
+        let (u, v) = (&winds.u[cells.clone()], &winds.v[cells]);
+        for (((z, d), u), v) in vorticity
+            .iter_mut()
+            .zip(divergence.iter_mut())
+            .zip(u)
+            .zip(v)
+        {
+            *z += x * u + y * v;
+            *d += y * u - x * v;
+        }
+    }
+}
+
+/// Adds the quadratic forms wᵀ C w.
+fn add_variances(
+    row: &CoefficientRow,
+    winds: &WindBlock,
+    vorticity: &mut [f64],
+    divergence: &mut [f64],
+) {
+    for (&station, &[x, y]) in row.stations.iter().zip(&row.weights) {
+        let cells = winds.of_station(station);
+        let (xx, xy2, yy) = (x * x, 2.0 * x * y, y * y);
+        let covariance = winds.var_u[cells.clone()]
+            .iter()
+            .zip(&winds.cov_uv[cells.clone()])
+            .zip(&winds.var_v[cells]);
+        for ((z, d), ((uu, uv), vv)) in vorticity
+            .iter_mut()
+            .zip(divergence.iter_mut())
+            .zip(covariance)
+        {
+            *z += xx * uu + xy2 * uv + yy * vv;
+            *d += yy * uu - xy2 * uv + xx * vv;
+        }
+    }
+}
+
+/// Sense of rotation relative to the Earth's.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Sense {
+    /// With the planetary vorticity.
+    Cyclonic,
+    /// Against it.
+    Anticyclonic,
+}
+
+impl Sense {
+    /// The sense of a vorticity where the planetary vorticity is `planetary`; `None` on the equator, and where nothing
+    /// turns.
+    #[must_use]
+    pub fn of(vorticity: f64, planetary: f64) -> Option<Self> {
+        let product = vorticity * planetary;
+        if product > 0.0 {
+            Some(Self::Cyclonic)
+        } else if product < 0.0 {
+            Some(Self::Anticyclonic)
+        } else {
+            None
+        }
+    }
+
+    /// The sense as a word.
+    #[must_use]
+    pub const fn name(self) -> &'static str {
+        match self {
+            Self::Cyclonic => "cyclonic",
+            Self::Anticyclonic => "anticyclonic",
+        }
+    }
+}

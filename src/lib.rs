@@ -1,0 +1,16 @@
+//! Area-averaged vorticity and divergence, with error bars, from the reports of wind-station networks.
+#![forbid(unsafe_code)]
+
+pub mod align;
+pub mod check;
+pub mod error;
+pub mod integral;
+pub mod polygon;
+pub mod report;
+pub mod settings;
+pub mod station;
+pub mod sum;
+pub mod tally;
+pub mod time;
+pub mod units;
+pub mod warning;

@@ -1,0 +1,433 @@
+//! Builds all polygons of a network.
+
+use std::collections::{BTreeMap, HashMap, HashSet};
+
+use geographiclib_rs::Geodesic;
+use nalgebra::Vector3;
+
+use super::delaunay::{network_centre, triangulate};
+use super::ring::{defects, overlap};
+use super::sphere::{latitude_longitude, unit_vector};
+use super::{
+    CoefficientRow, DirectedEdge, EdgeSet, Exclusion, InvalidPolygon, LONG_EDGE, PolygonKind,
+    Shape, StationPolygon, geodesic_area,
+};
+use crate::error::{Error, Place, Problem, nearest_name};
+use crate::settings::{PolygonChoice, PolygonLimits, RegionParts, RegionSettings};
+use crate::station::{Network, Position};
+use crate::warning::Warning;
+
+/// A triangle with a smaller angle is flat: its stations stand on one line within what positions are known to
+/// (9 m in 50 km), degrees.
+const FLAT: f64 = 0.01;
+
+/// The polygons of a network.
+#[derive(Debug, Default)]
+pub struct BuiltPolygons {
+    /// Polygons within the limits: triangles in the order of their stations, then rings, then regions, as named.
+    pub polygons: Vec<StationPolygon>,
+    /// Polygons outside the limits, with the reason.
+    pub excluded: Vec<(StationPolygon, Exclusion)>,
+    /// Triangles dropped because their stations stand on one line.
+    pub flat: usize,
+    /// The edges of all.
+    pub edges: EdgeSet,
+    /// What the user should know.
+    pub warnings: Vec<Warning>,
+}
+
+/// Builds triangles, rings and regions.
+///
+/// # Errors
+/// All defects of rings and regions; stations that make no polygon at all.
+pub fn build_polygons(
+    network: &Network,
+    choice: &PolygonChoice,
+    limits: &PolygonLimits,
+) -> Result<BuiltPolygons, Error> {
+    let mut builder = Builder {
+        network,
+        limits,
+        positions: network.stations().iter().map(|s| s.position).collect(),
+        geodesic: Geodesic::wgs84(),
+        built: BuiltPolygons::default(),
+        problems: Vec::new(),
+    };
+    let needs_triangles = choice.triangles
+        || choice
+            .regions
+            .iter()
+            .any(|r| !matches!(r.parts, RegionParts::Polygons(_)));
+    if needs_triangles {
+        builder.triangles()?;
+    } else {
+        // Rings alone: the network must still fit into a hemisphere for its maps.
+        let directions: Vec<Vector3<f64>> =
+            builder.positions.iter().map(|&p| unit_vector(p)).collect();
+        network_centre(&directions)?;
+    }
+    for ring in &choice.rings {
+        builder.ring(&ring.name, &ring.stations, &ring.place);
+    }
+    for region in &choice.regions {
+        builder.region(region);
+    }
+    if !builder.problems.is_empty() {
+        return Err(Error::Invalid(builder.problems));
+    }
+    let mut built = builder.built;
+    if !choice.triangles {
+        built.polygons.retain(|p| p.kind != PolygonKind::Triangle);
+        built
+            .excluded
+            .retain(|(p, _)| p.kind != PolygonKind::Triangle);
+    }
+    warn(&mut built);
+    Ok(built)
+}
+
+fn warn(built: &mut BuiltPolygons) {
+    let long: Vec<f64> = built
+        .polygons
+        .iter()
+        .map(|p| p.shape.longest_edge)
+        .filter(|&l| l > LONG_EDGE)
+        .collect();
+    if !long.is_empty() {
+        built.warnings.push(Warning::LongEdges {
+            polygons: long.len(),
+            longest: long.iter().copied().fold(0.0, f64::max),
+        });
+    }
+    let (usable, of) = (
+        built.polygons.len(),
+        built.polygons.len() + built.excluded.len(),
+    );
+    if 2 * usable < of {
+        built.warnings.push(Warning::FewPolygons { usable, of });
+    }
+}
+
+struct Builder<'a> {
+    network: &'a Network,
+    limits: &'a PolygonLimits,
+    positions: Vec<Position>,
+    geodesic: Geodesic,
+    built: BuiltPolygons,
+    problems: Vec<Problem>,
+}
+
+impl Builder<'_> {
+    fn triangles(&mut self) -> Result<(), Error> {
+        let doubles = self.network.coincident();
+        let left_out: HashSet<&str> = doubles
+            .iter()
+            .filter_map(|w| match w {
+                Warning::OnePlace { left_out, .. } => Some(left_out.as_str()),
+                _ => None,
+            })
+            .collect();
+        let stations: Vec<usize> = (0..self.network.len())
+            .filter(|&s| !left_out.contains(self.network.stations()[s].id.as_str()))
+            .collect();
+        for ring in triangulate(&self.positions, &stations)? {
+            let id = ring
+                .map(|s| self.network.stations()[s].id.as_str())
+                .join("+");
+            match self.polygon(id, PolygonKind::Triangle, vec![ring.to_vec()]) {
+                Some(polygon) if polygon.shape.smallest_angle >= FLAT => self.add(polygon),
+                _ => self.built.flat += 1,
+            }
+        }
+        if self.built.polygons.is_empty() && self.built.excluded.is_empty() {
+            return Err(Error::Network(format!(
+                "all {} stations stand on one line; they make no polygon",
+                stations.len()
+            )));
+        }
+        self.built.warnings.extend(doubles);
+        Ok(())
+    }
+
+    fn ring(&mut self, name: &str, stations: &[String], place: &Place) {
+        let mut ring = Vec::new();
+        for station in stations {
+            match self.network.find(station) {
+                Some(s) => ring.push(s),
+                None => self.unknown_station(name, station, place),
+            }
+        }
+        if ring.len() < stations.len() || self.name_is_taken(name, place) {
+            return;
+        }
+        let mut defects = defects(&ring, self.network);
+        if defects.is_empty() {
+            let area = self.area(&ring);
+            if area < 0.0 {
+                ring.reverse();
+            }
+            match self.polygon(name.to_string(), PolygonKind::Ring, vec![ring]) {
+                Some(polygon) => {
+                    self.add(polygon);
+                    return;
+                }
+                None => defects.push(InvalidPolygon::Flat),
+            }
+        }
+        for defect in defects {
+            self.problem(place, format!("ring `{name}`: {defect}"));
+        }
+    }
+
+    fn region(&mut self, region: &RegionSettings) {
+        let place = &region.place;
+        let parts: Vec<usize> = match &region.parts {
+            RegionParts::AllTriangles => self.triangles_where(|_| true),
+            RegionParts::TrianglesOf(stations) => {
+                let mut wanted = HashSet::new();
+                for station in stations {
+                    match self.network.find(station) {
+                        Some(s) => {
+                            wanted.insert(s);
+                        }
+                        None => self.unknown_station(&region.name, station, place),
+                    }
+                }
+                self.triangles_where(|ring| ring.iter().all(|s| wanted.contains(s)))
+            }
+            RegionParts::Polygons(ids) => {
+                let mut parts = Vec::new();
+                for id in ids {
+                    if let Some(k) = self.built.polygons.iter().position(|p| &p.id == id) {
+                        parts.push(k);
+                    } else {
+                        self.missing_part(region, id);
+                    }
+                }
+                if parts.len() < ids.len() {
+                    return;
+                }
+                parts
+            }
+        };
+        if parts.is_empty() {
+            self.problem(
+                place,
+                format!("region `{}` has no polygon within the limits", region.name),
+            );
+            return;
+        }
+        if self.name_is_taken(&region.name, place) || self.parts_overlap(region, &parts) {
+            return;
+        }
+        let polygon = self.union(&region.name, &parts);
+        self.built.polygons.push(polygon);
+    }
+
+    fn triangles_where(&self, wanted: impl Fn(&[usize]) -> bool) -> Vec<usize> {
+        let polygons = self.built.polygons.iter().enumerate();
+        polygons
+            .filter(|(_, p)| {
+                p.kind == PolygonKind::Triangle && p.outline.iter().all(|ring| wanted(ring))
+            })
+            .map(|(k, _)| k)
+            .collect()
+    }
+
+    fn missing_part(&mut self, region: &RegionSettings, id: &str) {
+        let message = match self.built.excluded.iter().find(|(p, _)| p.id == id) {
+            Some((_, why)) => format!(
+                "region `{}`: polygon `{id}` is outside the limits ({why})",
+                region.name
+            ),
+            None => {
+                let ids = self.built.polygons.iter().map(|p| p.id.as_str());
+                let near = nearest_name(id, ids)
+                    .map_or_else(String::new, |n| format!("; is `{n}` meant?"));
+                format!("region `{}`: there is no polygon `{id}`{near}", region.name)
+            }
+        };
+        self.problem(&region.place, message);
+    }
+
+    /// Triangles never overlap each other; anything with a ring or region among them is looked at pair by pair.
+    fn parts_overlap(&mut self, region: &RegionSettings, parts: &[usize]) -> bool {
+        let before = self.problems.len();
+        for (k, &a) in parts.iter().enumerate() {
+            for &b in &parts[k + 1..] {
+                let (pa, pb) = (&self.built.polygons[a], &self.built.polygons[b]);
+                let triangles =
+                    pa.kind == PolygonKind::Triangle && pb.kind == PolygonKind::Triangle;
+                let shared = if triangles {
+                    a == b
+                } else {
+                    // A hole only takes ground away; to look at outlines with holes as if they had none is too strict
+                    // by a case that no one needs.
+                    pa.outline.iter().any(|ra| {
+                        pb.outline
+                            .iter()
+                            .any(|rb| overlap(ra, rb, self.network).unwrap_or(true))
+                    })
+                };
+                if shared {
+                    let message = format!(
+                        "region `{}`: `{}` and `{}` overlap",
+                        region.name, pa.id, pb.id
+                    );
+                    self.problem(&region.place, message);
+                }
+            }
+        }
+        self.problems.len() > before
+    }
+
+    /// The union: edges that two parts share cancel before anything is added up, the outline remains.
+    fn union(&mut self, name: &str, parts: &[usize]) -> StationPolygon {
+        let mut net: BTreeMap<usize, i32> = BTreeMap::new();
+        let mut area = crate::sum::CompensatedSum::default();
+        for &k in parts {
+            let part = &self.built.polygons[k];
+            area.add(part.shape.area);
+            for directed in &part.path {
+                *net.entry(directed.edge).or_default() += if directed.forward { 1 } else { -1 };
+            }
+        }
+        let path: Vec<DirectedEdge> = net
+            .into_iter()
+            .filter(|&(_, n)| n != 0)
+            .map(|(edge, n)| DirectedEdge {
+                edge,
+                forward: n > 0,
+            })
+            .collect();
+        let (outline, path) = loops(&path, &self.built.edges);
+        self.assemble(
+            name.to_string(),
+            PolygonKind::Region,
+            outline,
+            path,
+            area.total(),
+        )
+    }
+
+    fn area(&self, ring: &[usize]) -> f64 {
+        geodesic_area(ring.iter().map(|&s| self.positions[s]), &self.geodesic).0
+    }
+
+    /// A polygon from counter-clockwise rings; `None` if it has no area.
+    fn polygon(
+        &mut self,
+        id: String,
+        kind: PolygonKind,
+        outline: Vec<Vec<usize>>,
+    ) -> Option<StationPolygon> {
+        let area: f64 = outline.iter().map(|ring| self.area(ring)).sum();
+        // Below this the area is lost in its own rounding (0.1 m²).
+        if area < 100.0 {
+            return None;
+        }
+        let mut path = Vec::new();
+        for ring in &outline {
+            for (k, &a) in ring.iter().enumerate() {
+                let b = ring[(k + 1) % ring.len()];
+                path.push(
+                    self.built
+                        .edges
+                        .directed(a, b, &self.positions, &self.geodesic),
+                );
+            }
+        }
+        Some(self.assemble(id, kind, outline, path, area))
+    }
+
+    fn assemble(
+        &self,
+        id: String,
+        kind: PolygonKind,
+        outline: Vec<Vec<usize>>,
+        path: Vec<DirectedEdge>,
+        area: f64,
+    ) -> StationPolygon {
+        let edges = &self.built.edges;
+        let row = CoefficientRow::of(&path, edges, area);
+        let middle: Vector3<f64> = row
+            .stations
+            .iter()
+            .map(|&s| unit_vector(self.positions[s]))
+            .sum();
+        StationPolygon {
+            id,
+            kind,
+            shape: Shape::of(area, &path, edges, &row.weights, self.network),
+            middle: latitude_longitude(&middle),
+            outline,
+            path,
+            row,
+        }
+    }
+
+    fn add(&mut self, polygon: StationPolygon) {
+        match Exclusion::of(&polygon.shape, self.limits) {
+            None => self.built.polygons.push(polygon),
+            Some(why) => self.built.excluded.push((polygon, why)),
+        }
+    }
+
+    fn name_is_taken(&mut self, name: &str, place: &Place) -> bool {
+        let all = self
+            .built
+            .polygons
+            .iter()
+            .chain(self.built.excluded.iter().map(|(p, _)| p));
+        let taken = all.into_iter().any(|p| p.id == name);
+        if taken {
+            self.problem(place, format!("there is already a polygon `{name}`"));
+        }
+        taken
+    }
+
+    fn unknown_station(&mut self, polygon: &str, station: &str, place: &Place) {
+        let ids = self.network.stations().iter().map(|s| s.id.as_str());
+        let near =
+            nearest_name(station, ids).map_or_else(String::new, |n| format!("; is `{n}` meant?"));
+        self.problem(
+            place,
+            format!("`{polygon}` names station `{station}`, which is not in the list{near}"),
+        );
+    }
+
+    fn problem(&mut self, place: &Place, message: String) {
+        self.problems.push(Problem::new(place.clone(), message));
+    }
+}
+
+/// Orders the edges of an outline into closed paths, each beginning with its smallest station.
+///
+/// Where two paths touch at a station, either way of joining them has the same edges and so the same sums.
+fn loops(path: &[DirectedEdge], edges: &EdgeSet) -> (Vec<Vec<usize>>, Vec<DirectedEdge>) {
+    let mut leaving: HashMap<usize, Vec<DirectedEdge>> = HashMap::new();
+    let mut starts: Vec<usize> = Vec::new();
+    for &edge in path {
+        let start = edges.ends(edge).0;
+        leaving.entry(start).or_default().push(edge);
+        starts.push(start);
+    }
+    starts.sort_unstable();
+    let (mut rings, mut ordered) = (Vec::new(), Vec::new());
+    for start in starts {
+        let mut ring = Vec::new();
+        let mut at = start;
+        while let Some(edge) = leaving.get_mut(&at).and_then(Vec::pop) {
+            ring.push(at);
+            ordered.push(edge);
+            at = edges.ends(edge).1;
+            if at == start {
+                break;
+            }
+        }
+        if !ring.is_empty() {
+            rings.push(ring);
+        }
+    }
+    (rings, ordered)
+}

@@ -1,0 +1,144 @@
+//! Cuts an input into blocks of whole lines, so that blocks can be read in parallel.
+
+use std::io::{self, Read};
+
+/// Size of a block, bytes: large enough to make the cost of a block small, small enough to stay in the cache.
+const BLOCK: usize = 1 << 20;
+/// A longer line is no row; it is skipped and counted.
+const LONGEST_LINE: usize = 1 << 20;
+
+/// Whole lines of an input.
+#[derive(Debug, Default)]
+pub(super) struct Block {
+    /// The bytes; the last line may lack its line end only at the end of the input.
+    pub bytes: Vec<u8>,
+    /// Number of the first line, from 1.
+    pub first_line: u64,
+    /// Number of a line that was too long and skipped; it stood after `bytes`.
+    pub overlong: Option<u64>,
+}
+
+/// Reads an input block by block.
+pub(super) struct Blocks<R> {
+    input: R,
+    rest: Vec<u8>,
+    line: u64,
+    ended: bool,
+}
+
+impl<R: Read> Blocks<R> {
+    pub(super) fn new(input: R) -> Self {
+        Self {
+            input,
+            rest: Vec::new(),
+            line: 1,
+            ended: false,
+        }
+    }
+
+    /// The next block; `None` at the end of the input.
+    pub(super) fn next_block(&mut self) -> io::Result<Option<Block>> {
+        let mut bytes = std::mem::take(&mut self.rest);
+        loop {
+            if !self.ended && bytes.len() < BLOCK {
+                let want = (BLOCK - bytes.len()) as u64;
+                let got = self.input.by_ref().take(want).read_to_end(&mut bytes)?;
+                self.ended = (got as u64) < want;
+            }
+            if self.ended {
+                return Ok((!bytes.is_empty()).then(|| self.block(bytes, None)));
+            }
+            if let Some(end) = memchr::memrchr(b'\n', &bytes) {
+                self.rest = bytes.split_off(end + 1);
+                return Ok(Some(self.block(bytes, None)));
+            }
+            if bytes.len() >= LONGEST_LINE {
+                self.skip_line()?;
+                let line = self.line;
+                self.line += 1;
+                let block = self.block(Vec::new(), Some(line));
+                return Ok(Some(block));
+            }
+        }
+    }
+
+    fn block(&mut self, bytes: Vec<u8>, overlong: Option<u64>) -> Block {
+        let first_line = self.line;
+        self.line += memchr::memchr_iter(b'\n', &bytes).count() as u64;
+        Block {
+            bytes,
+            first_line,
+            overlong,
+        }
+    }
+
+    /// Throws away the rest of a line that is too long.
+    fn skip_line(&mut self) -> io::Result<()> {
+        loop {
+            let mut buffer = Vec::new();
+            let got = self
+                .input
+                .by_ref()
+                .take(BLOCK as u64)
+                .read_to_end(&mut buffer)?;
+            if let Some(end) = memchr::memchr(b'\n', &buffer) {
+                self.rest = buffer.split_off(end + 1);
+                return Ok(());
+            }
+            if got < BLOCK {
+                self.ended = true;
+                return Ok(());
+            }
+        }
+    }
+}
+
+#[cfg(test)]
+#[expect(clippy::unwrap_used, reason = "a test may panic")]
+mod tests {
+    use super::*;
+
+    fn all(text: &[u8]) -> Vec<Block> {
+        let mut blocks = Blocks::new(text);
+        let mut out = Vec::new();
+        while let Some(block) = blocks.next_block().unwrap() {
+            out.push(block);
+        }
+        out
+    }
+
+    #[test]
+    fn blocks_join_to_the_input_and_count_lines() {
+        let mut text = Vec::new();
+        for i in 0..200_000 {
+            text.extend_from_slice(format!("line {i}\n").as_bytes());
+        }
+        text.extend_from_slice(b"last");
+        let blocks = all(&text);
+        assert!(blocks.len() > 1);
+        let joined: Vec<u8> = blocks.iter().flat_map(|b| b.bytes.clone()).collect();
+        assert_eq!(joined, text);
+        for block in &blocks {
+            let start = format!("line {}\n", block.first_line - 1);
+            assert!(block.bytes.starts_with(start.as_bytes()));
+        }
+    }
+
+    #[test]
+    fn a_line_of_many_megabytes_is_skipped_and_named() {
+        let mut text = b"a\n".to_vec();
+        text.resize(5 << 20, b'x');
+        text.extend_from_slice(b"\nb\n");
+        let blocks = all(&text);
+        assert_eq!(
+            blocks.iter().filter_map(|b| b.overlong).collect::<Vec<_>>(),
+            [2]
+        );
+        let last = blocks.last().unwrap();
+        assert_eq!(
+            (last.bytes.as_slice(), last.first_line),
+            (b"b\n".as_slice(), 3)
+        );
+        assert!(all(b"").is_empty());
+    }
+}

@@ -1,0 +1,215 @@
+//! Checked settings, shared by library and command line.
+//!
+//! One TOML file per network, `networks/<name>/network.toml`. Paths in it are relative to it. All defects of the file
+//! are listed at once, each with its line; an unknown key is a defect.
+
+mod read;
+mod section;
+
+use std::path::PathBuf;
+use std::time::Duration;
+
+use crate::error::Place;
+use crate::report::ReportFormat;
+use crate::station::Catalogue;
+use crate::time::Time;
+
+pub use read::{Overrides, read_settings};
+
+/// Everything a run needs to know, verified.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Settings {
+    /// Name of the network, for people.
+    pub name: String,
+    /// The station list.
+    pub station_file: PathBuf,
+    /// How to read it.
+    pub catalogue: Catalogue,
+    /// The report files and how to read each group.
+    pub reports: Vec<ReportSource>,
+    /// What is known of the sensors.
+    pub sensor: SensorErrors,
+    /// Analysis times.
+    pub analysis: Analysis,
+    /// Limits of the range check.
+    pub range: RangeLimits,
+    /// Which polygons are built.
+    pub polygons: PolygonChoice,
+    /// Which polygons are left out.
+    pub limits: PolygonLimits,
+}
+
+/// A group of report files of one format.
+#[derive(Debug, Clone, PartialEq)]
+pub struct ReportSource {
+    /// The files, globs resolved, in order.
+    pub files: Vec<PathBuf>,
+    /// Columns and units.
+    pub format: ReportFormat,
+}
+
+/// Errors of the sensors and of the code they report in; standard deviations.
+///
+/// Defaults: WMO-No. 8 requires 0.5 m/s up to 5 m/s, 10 % above, and 5 degrees, at k = 2 (from memory, `methods.md`
+/// 5.2); a standard deviation is half of that.
+#[derive(Debug, Clone, Copy, PartialEq, serde::Serialize)]
+pub struct SensorErrors {
+    /// Standard deviation of the speed at low speed, m/s.
+    pub speed_sd: f64,
+    /// Standard deviation of the speed as a share of the speed; the larger of the two holds.
+    pub speed_sd_share: f64,
+    /// Standard deviation of the direction, degrees.
+    pub direction_sd: f64,
+    /// Step of the reported speeds, m/s; 0 if finer than matters.
+    pub speed_step: f64,
+    /// Step of the reported directions, degrees; 0 if finer than matters.
+    pub direction_step: f64,
+    /// A calm means a speed below this, m/s.
+    pub calm_below: f64,
+}
+
+impl Default for SensorErrors {
+    fn default() -> Self {
+        Self {
+            speed_sd: 0.25,
+            speed_sd_share: 0.05,
+            direction_sd: 2.5,
+            speed_step: 0.0,
+            direction_step: 0.0,
+            calm_below: 0.5,
+        }
+    }
+}
+
+/// How reports become winds at analysis times.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Analysis {
+    /// Time between analysis times, which are whole multiples of it since 1970-01-01T00:00:00Z.
+    pub interval: Duration,
+    /// What stands for a station at an analysis time.
+    pub method: AlignMethod,
+    /// First analysis time, if limited.
+    pub from: Option<Time>,
+    /// Last analysis time, if limited.
+    pub to: Option<Time>,
+}
+
+impl Default for Analysis {
+    fn default() -> Self {
+        let interval = Duration::from_mins(10);
+        Self {
+            interval,
+            method: AlignMethod::Nearest {
+                tolerance: interval / 2,
+            },
+            from: None,
+            to: None,
+        }
+    }
+}
+
+/// What stands for a station at an analysis time.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub enum AlignMethod {
+    /// The report nearest in time, at most `tolerance` away; of two equally near the earlier.
+    Nearest {
+        /// Largest distance in time.
+        tolerance: Duration,
+    },
+    /// The vector mean of the reports in the window that ends at the analysis time.
+    VectorMean {
+        /// Length of the window.
+        window: Duration,
+        /// Fewest reports that make a mean.
+        least_reports: u32,
+    },
+}
+
+/// Limits of the range check, m/s.
+///
+/// Defaults: QARTOD wind manual, test 4, examples (sensor span 0-100, user span 0-75 m/s; `methods.md` 6.1).
+#[derive(Debug, Clone, Copy, PartialEq, serde::Serialize)]
+pub struct RangeLimits {
+    /// A faster wind is suspect.
+    pub speed_suspect: f64,
+    /// A faster wind is impossible and fails.
+    pub speed_fail: f64,
+}
+
+impl Default for RangeLimits {
+    fn default() -> Self {
+        Self {
+            speed_suspect: 75.0,
+            speed_fail: 100.0,
+        }
+    }
+}
+
+/// Which polygons are built.
+#[derive(Debug, Clone, PartialEq)]
+pub struct PolygonChoice {
+    /// All Delaunay triangles.
+    pub triangles: bool,
+    /// Rings named by the user.
+    pub rings: Vec<RingSettings>,
+    /// Unions of polygons named by the user.
+    pub regions: Vec<RegionSettings>,
+}
+
+/// A ring named by the user.
+#[derive(Debug, Clone, PartialEq)]
+pub struct RingSettings {
+    /// Its name.
+    pub name: String,
+    /// Stations in order round the ring, either way.
+    pub stations: Vec<String>,
+    /// Where the settings name it.
+    pub place: Place,
+}
+
+/// A union of polygons named by the user.
+#[derive(Debug, Clone, PartialEq)]
+pub struct RegionSettings {
+    /// Its name.
+    pub name: String,
+    /// What it is made of.
+    pub parts: RegionParts,
+    /// Where the settings name it.
+    pub place: Place,
+}
+
+/// What a region is made of.
+#[derive(Debug, Clone, PartialEq)]
+pub enum RegionParts {
+    /// These polygons.
+    Polygons(Vec<String>),
+    /// All triangles within the limits whose corners are all among these stations.
+    TrianglesOf(Vec<String>),
+    /// All triangles within the limits.
+    AllTriangles,
+}
+
+/// Limits outside which a polygon is left out.
+#[derive(Debug, Clone, Copy, PartialEq, serde::Serialize)]
+pub struct PolygonLimits {
+    /// Smallest interior angle, degrees. Default 15: below it the error of a triangle is at least 1.5 times that of the
+    /// equilateral one of the same area (from the noise factor, `methods.md` 1.4).
+    pub smallest_angle: f64,
+    /// Longest edge, m; none by default, but edges over 500 km give a warning.
+    pub longest_edge: Option<f64>,
+    /// Smallest area, m².
+    pub smallest_area: f64,
+    /// Largest area, m².
+    pub largest_area: Option<f64>,
+}
+
+impl Default for PolygonLimits {
+    fn default() -> Self {
+        Self {
+            smallest_angle: 15.0,
+            longest_edge: None,
+            smallest_area: 0.0,
+            largest_area: None,
+        }
+    }
+}

@@ -1,0 +1,436 @@
+//! From the text of `network.toml` to checked settings.
+
+use std::path::{Path, PathBuf};
+use std::time::Duration;
+
+use super::section::{Document, Section};
+use super::{
+    AlignMethod, Analysis, PolygonChoice, PolygonLimits, RangeLimits, RegionParts, RegionSettings,
+    ReportSource, RingSettings, SensorErrors, Settings,
+};
+use crate::error::{Error, Place, Problem};
+use crate::report::{ReportFormat, WindColumns};
+use crate::station::{Catalogue, StationColumns};
+use crate::time::Time;
+use crate::units;
+
+/// What the command line sets in place of the file.
+#[derive(Debug, Clone, Default)]
+pub struct Overrides {
+    /// Report files in place of those of the settings; they have the format of the first `[[reports]]`.
+    pub reports: Vec<PathBuf>,
+    /// `analysis.interval`
+    pub interval: Option<Duration>,
+    /// `analysis.tolerance`
+    pub tolerance: Option<Duration>,
+    /// `analysis.method = "mean"` over this window.
+    pub window: Option<Duration>,
+    /// `analysis.from`
+    pub from: Option<Time>,
+    /// `analysis.to`
+    pub to: Option<Time>,
+    /// `limits.smallest_angle`
+    pub smallest_angle: Option<f64>,
+    /// `limits.longest_edge`, m
+    pub longest_edge: Option<f64>,
+}
+
+/// Reads a settings file. The settings come back even where there are defects, with defaults in their place, so that
+/// the caller can go on to look for defects of the station list; with any defect they must not be used for a run.
+///
+/// # Errors
+/// Only if the file itself cannot be read.
+pub fn read_settings(
+    path: &Path,
+    overrides: &Overrides,
+) -> Result<(Settings, Vec<Problem>), Error> {
+    let text = std::fs::read_to_string(path).map_err(|e| Error::read(path, e))?;
+    let file = path.display().to_string();
+    let base = path.parent().unwrap_or(Path::new("."));
+    Ok(parse_settings(&file, &text, base, overrides))
+}
+
+fn parse_settings(
+    file: &str,
+    text: &str,
+    base: &Path,
+    overrides: &Overrides,
+) -> (Settings, Vec<Problem>) {
+    let document = Document::new(file, text);
+    let mut root = document.root();
+
+    let name = root
+        .required::<String>("name")
+        .map_or_else(String::new, |f| f.value);
+    let mut stations = root.section("stations");
+    let station_file = station_file(&mut stations, base);
+    let catalogue = catalogue(&mut stations);
+    stations.finish();
+
+    let settings = Settings {
+        name,
+        station_file,
+        catalogue,
+        reports: reports(&mut root, base, &overrides.reports),
+        sensor: sensor(root.section("sensor")),
+        analysis: analysis(root.section("analysis"), overrides),
+        range: range(root.section("check")),
+        limits: limits(root.section("limits"), overrides),
+        polygons: polygons(root.section("polygons")),
+    };
+    root.finish();
+    (settings, document.into_problems())
+}
+
+fn station_file(section: &mut Section, base: &Path) -> PathBuf {
+    let Some(found) = section.required::<String>("file") else {
+        return PathBuf::new();
+    };
+    let path = base.join(&found.value);
+    if !path.is_file() {
+        section.problem(found.place, format!("`{}` is not a file", path.display()));
+        return PathBuf::new();
+    }
+    path
+}
+
+fn catalogue(section: &mut Section) -> Catalogue {
+    let default = StationColumns::default();
+    let mut columns = section.section("columns");
+    let text = |columns: &mut Section, key| columns.value::<String>(key).map(|f| f.value);
+    let catalogue_columns = StationColumns {
+        id: text(&mut columns, "id").unwrap_or(default.id),
+        name: text(&mut columns, "name"),
+        latitude: text(&mut columns, "latitude").unwrap_or(default.latitude),
+        longitude: text(&mut columns, "longitude").unwrap_or(default.longitude),
+        elevation: text(&mut columns, "elevation"),
+    };
+    columns.finish();
+    let elevation_unit = section.parsed("elevation_unit", |unit| {
+        units::length_unit(unit)
+            .ok_or_else(|| format!("`{unit}` is not a unit of length (m, km or ft expected)"))
+    });
+    Catalogue {
+        columns: catalogue_columns,
+        elevation_unit: elevation_unit.unwrap_or(1.0),
+        only: section.value("only").map(|f| f.value),
+    }
+}
+
+fn reports(root: &mut Section, base: &Path, instead: &[PathBuf]) -> Vec<ReportSource> {
+    let mut sources = Vec::new();
+    for mut section in root.sections("reports") {
+        let format = report_format(&mut section);
+        let files: Vec<PathBuf> = match section.required::<Vec<toml::Spanned<String>>>("files") {
+            Some(found) if instead.is_empty() => expand(&section, base, &found.value, &found.place),
+            _ => Vec::new(),
+        };
+        section.finish();
+        sources.push(ReportSource { files, format });
+    }
+    if !instead.is_empty() {
+        sources.truncate(1);
+        match sources.first_mut() {
+            Some(first) => first.files = instead.to_vec(),
+            None => root.missing("[[reports]]"),
+        }
+    }
+    sources
+}
+
+/// Resolves names and globs; each must match at least one file.
+fn expand(
+    section: &Section,
+    base: &Path,
+    patterns: &[toml::Spanned<String>],
+    place: &Place,
+) -> Vec<PathBuf> {
+    let mut files = Vec::new();
+    for pattern in patterns {
+        let pattern = pattern.get_ref();
+        let full = base.join(pattern);
+        if full.is_file() {
+            files.push(full);
+            continue;
+        }
+        match glob::glob(&full.to_string_lossy()) {
+            Ok(paths) => {
+                let before = files.len();
+                // Sorted by the glob itself; what cannot be looked at is reported when it is read.
+                files.extend(paths.filter_map(Result::ok).filter(|p| p.is_file()));
+                if files.len() == before {
+                    section.problem(
+                        place.clone(),
+                        format!("`{}` matches no file", full.display()),
+                    );
+                }
+            }
+            Err(error) => section.problem(
+                place.clone(),
+                format!("`{pattern}` is not a pattern of file names: {error}"),
+            ),
+        }
+    }
+    files
+}
+
+fn report_format(section: &mut Section) -> ReportFormat {
+    let mut columns = section.section("columns");
+    let place = columns.place();
+    let text = |columns: &mut Section, key| columns.value::<String>(key).map(|f| f.value);
+    let station = text(&mut columns, "station");
+    let time = text(&mut columns, "time");
+    let direction = text(&mut columns, "direction");
+    let speed = text(&mut columns, "speed");
+    let eastward = text(&mut columns, "eastward");
+    let northward = text(&mut columns, "northward");
+    let wind = match (direction, speed, eastward, northward) {
+        (direction, speed, None, None) => WindColumns::DirectionSpeed {
+            direction: direction.unwrap_or_else(|| "direction".into()),
+            speed: speed.unwrap_or_else(|| "speed".into()),
+        },
+        (None, None, Some(eastward), Some(northward)) => WindColumns::Components {
+            eastward,
+            northward,
+        },
+        (..) => {
+            columns.problem(
+                place,
+                "either `direction` and `speed`, or `eastward` and `northward` are expected",
+            );
+            WindColumns::DirectionSpeed {
+                direction: "direction".into(),
+                speed: "speed".into(),
+            }
+        }
+    };
+    columns.finish();
+    ReportFormat {
+        station: station.unwrap_or_else(|| "station".into()),
+        time: time.unwrap_or_else(|| "time".into()),
+        wind,
+        speed_unit: section.parsed("speed_unit", str::parse).unwrap_or_default(),
+        missing: section
+            .value("missing")
+            .map(|f| f.value)
+            .unwrap_or_default(),
+    }
+}
+
+fn sensor(mut section: Section) -> SensorErrors {
+    let default = SensorErrors::default();
+    let mut speed = |key, default| section.parsed(key, units::parse_speed).unwrap_or(default);
+    let (speed_sd, speed_step, calm_below) = (
+        speed("speed_sd", default.speed_sd),
+        speed("speed_step", default.speed_step),
+        speed("calm_below", default.calm_below),
+    );
+    let errors = SensorErrors {
+        speed_sd,
+        speed_sd_share: section
+            .number("speed_sd_share", 0.0..=1.0)
+            .unwrap_or(default.speed_sd_share),
+        direction_sd: section
+            .number("direction_sd", 0.0..=90.0)
+            .unwrap_or(default.direction_sd),
+        speed_step,
+        direction_step: section
+            .number("direction_step", 0.0..=90.0)
+            .unwrap_or(default.direction_step),
+        calm_below,
+    };
+    section.finish();
+    errors
+}
+
+fn analysis(mut section: Section, overrides: &Overrides) -> Analysis {
+    let default = Analysis::default();
+    let positive = |text: &str| match units::parse_duration(text)? {
+        Duration::ZERO => Err(format!(
+            "`{text}` is no time at all (more than 0 s expected)"
+        )),
+        duration => Ok(duration),
+    };
+    let interval = section.parsed("interval", positive);
+    let interval = overrides.interval.or(interval).unwrap_or(default.interval);
+    let method = section.value::<String>("method");
+    let tolerance = section.parsed("tolerance", units::parse_duration);
+    let tolerance = overrides.tolerance.or(tolerance).unwrap_or(interval / 2);
+    let window = section.parsed("window", positive);
+    let window = overrides.window.or(window).unwrap_or(interval);
+    let least_reports = section
+        .value::<u32>("least_reports")
+        .map_or(1, |f| f.value.max(1));
+    let nearest = AlignMethod::Nearest { tolerance };
+    let mean = AlignMethod::VectorMean {
+        window,
+        least_reports,
+    };
+    let method = match method {
+        _ if overrides.window.is_some() => mean,
+        None => nearest,
+        Some(found) => match found.value.as_str() {
+            "nearest" => nearest,
+            "mean" => mean,
+            other => {
+                section.problem(
+                    found.place,
+                    format!("`{other}` is no method (`nearest` or `mean` expected)"),
+                );
+                nearest
+            }
+        },
+    };
+    let from = section.parsed("from", Time::parse_rfc3339);
+    let to = section.parsed("to", Time::parse_rfc3339);
+    let analysis = Analysis {
+        interval,
+        method,
+        from: overrides.from.or(from),
+        to: overrides.to.or(to),
+    };
+    if let (Some(from), Some(to)) = (analysis.from, analysis.to)
+        && from > to
+    {
+        section.problem(
+            section.place(),
+            format!("the period ends ({to}) before it begins ({from})"),
+        );
+    }
+    section.finish();
+    analysis
+}
+
+fn range(mut section: Section) -> RangeLimits {
+    let default = RangeLimits::default();
+    let limits = RangeLimits {
+        speed_suspect: section
+            .parsed("speed_suspect", units::parse_speed)
+            .unwrap_or(default.speed_suspect),
+        speed_fail: section
+            .parsed("speed_fail", units::parse_speed)
+            .unwrap_or(default.speed_fail),
+    };
+    section.finish();
+    limits
+}
+
+fn limits(mut section: Section, overrides: &Overrides) -> PolygonLimits {
+    let default = PolygonLimits::default();
+    let angle = section.number("smallest_angle", 0.0..=60.0);
+    let edge = section.parsed("longest_edge", units::parse_length);
+    let limits = PolygonLimits {
+        smallest_angle: overrides
+            .smallest_angle
+            .or(angle)
+            .unwrap_or(default.smallest_angle),
+        longest_edge: overrides.longest_edge.or(edge),
+        smallest_area: section
+            .parsed("smallest_area", units::parse_area)
+            .unwrap_or(default.smallest_area),
+        largest_area: section.parsed("largest_area", units::parse_area),
+    };
+    section.finish();
+    limits
+}
+
+fn polygons(mut section: Section) -> PolygonChoice {
+    let triangles = section.value("triangles").is_none_or(|f| f.value);
+    let mut rings = Vec::new();
+    for mut ring in section.sections("ring") {
+        let name = ring.required::<String>("name");
+        let stations = ring.required::<Vec<String>>("stations");
+        if let (Some(name), Some(stations)) = (name, stations) {
+            rings.push(RingSettings {
+                name: name.value,
+                stations: stations.value,
+                place: stations.place,
+            });
+        }
+        ring.finish();
+    }
+    let mut regions = Vec::new();
+    for mut region in section.sections("region") {
+        let place = region.place();
+        let name = region.required::<String>("name");
+        let parts = region.value::<Vec<String>>("polygons");
+        let stations = region.value::<Vec<String>>("triangles_of");
+        let all = region
+            .value::<bool>("all_triangles")
+            .is_some_and(|f| f.value);
+        let parts = match (parts, stations, all) {
+            (Some(parts), None, false) => Some(RegionParts::Polygons(parts.value)),
+            (None, Some(stations), false) => Some(RegionParts::TrianglesOf(stations.value)),
+            (None, None, true) => Some(RegionParts::AllTriangles),
+            _ => {
+                region.problem(
+                    place.clone(),
+                    "one of `polygons`, `triangles_of` or `all_triangles = true` is expected",
+                );
+                None
+            }
+        };
+        if let (Some(name), Some(parts)) = (name, parts) {
+            regions.push(RegionSettings {
+                name: name.value,
+                parts,
+                place,
+            });
+        }
+        region.finish();
+    }
+    section.finish();
+    PolygonChoice {
+        triangles,
+        rings,
+        regions,
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    fn problems(text: &str) -> Vec<String> {
+        parse_settings("n.toml", text, Path::new("."), &Overrides::default())
+            .1
+            .iter()
+            .map(ToString::to_string)
+            .collect()
+    }
+
+    #[test]
+    fn every_defect_is_listed_with_its_line() {
+        let text = "nam = \"x\"\n[stations]\nfile = \"nowhere.csv\"\n[analysis]\nintervall = \"5 min\"\n\
+                    tolerance = \"5 parsecs\"\n[sensor]\ndirection_sd = 400\n[[reports]]\nfiles = [\"*.nothing\"]\n\
+                    speed_unit = \"furlong\"\n";
+        let found = problems(text);
+        let expected = [
+            "n.toml:1: `name` is missing",
+            "n.toml:1 `nam`: there is no such key; is `name` meant?",
+            "n.toml:3 `stations.file`: `./nowhere.csv` is not a file",
+            "n.toml:5 `analysis.intervall`: there is no such key; is `interval` meant?",
+            "n.toml:6 `analysis.tolerance`: `5 parsecs` is not a duration (number and unit s, min, h or d expected, \
+             such as `5 min`)",
+            "n.toml:8 `sensor.direction_sd`: 400 is out of range (0 to 90 expected)",
+            "n.toml:10 `reports.files`: `./*.nothing` matches no file",
+            "n.toml:11 `reports.speed_unit`: `furlong` is not a unit of speed (m/s, km/h, mph or kt expected)",
+        ];
+        assert_eq!(found, expected);
+    }
+
+    #[test]
+    fn a_wrong_type_and_broken_toml_have_their_line() {
+        let found = problems("name = \"x\"\n[stations]\nfile = 3\n");
+        assert_eq!(found.len(), 1, "{found:?}");
+        assert!(
+            found[0].starts_with("n.toml:3 `stations.file`: invalid type: integer `3`"),
+            "{found:?}"
+        );
+        assert!(
+            problems("name = \"x\n")
+                .iter()
+                .any(|p| p.starts_with("n.toml:1"))
+        );
+    }
+}

@@ -1,0 +1,112 @@
+//! What several tests need.
+#![allow(dead_code, reason = "each test uses a part of it")]
+#![allow(clippy::unwrap_used, clippy::panic, reason = "tests may panic")]
+
+use gyremesh::error::{Error, Place};
+use gyremesh::polygon::{BuiltPolygons, StationPolygon, build_polygons};
+use gyremesh::settings::{PolygonChoice, PolygonLimits, RegionParts, RegionSettings, RingSettings};
+use gyremesh::station::{Network, Position, Station};
+use gyremesh::units::Wind;
+
+/// No limits at all.
+pub const NO_LIMITS: PolygonLimits = PolygonLimits {
+    smallest_angle: 0.0,
+    longest_edge: None,
+    smallest_area: 0.0,
+    largest_area: None,
+};
+
+/// A network of stations `S000`, `S001`, ... at (latitude, longitude).
+pub fn network(points: &[(f64, f64)]) -> Network {
+    let stations = points.iter().enumerate().map(|(k, &(lat, lon))| Station {
+        id: format!("S{k:03}"),
+        name: format!("S{k:03}"),
+        position: Position::new(lat, lon).unwrap(),
+        elevation: None,
+    });
+    Network::new(stations.collect())
+}
+
+pub fn positions(network: &Network) -> Vec<Position> {
+    network.stations().iter().map(|s| s.position).collect()
+}
+
+fn id(station: usize) -> String {
+    format!("S{station:03}")
+}
+
+/// A named ring of station numbers.
+pub fn ring(name: &str, stations: &[usize]) -> RingSettings {
+    RingSettings {
+        name: name.into(),
+        stations: stations.iter().map(|&s| id(s)).collect(),
+        place: Place::default(),
+    }
+}
+
+pub fn region(name: &str, parts: RegionParts) -> RegionSettings {
+    RegionSettings {
+        name: name.into(),
+        parts,
+        place: Place::default(),
+    }
+}
+
+pub fn triangles(network: &Network) -> Result<BuiltPolygons, Error> {
+    build(network, true, vec![], vec![])
+}
+
+pub fn build(
+    network: &Network,
+    triangles: bool,
+    rings: Vec<RingSettings>,
+    regions: Vec<RegionSettings>,
+) -> Result<BuiltPolygons, Error> {
+    let choice = PolygonChoice {
+        triangles,
+        rings,
+        regions,
+    };
+    build_polygons(network, &choice, &NO_LIMITS)
+}
+
+/// The ring through all points, as one polygon.
+pub fn ring_of(points: &[(f64, f64)]) -> (Network, StationPolygon) {
+    let network = network(points);
+    let all: Vec<usize> = (0..points.len()).collect();
+    let built = build(&network, false, vec![ring("ring", &all)], vec![]).unwrap();
+    let polygon = built.polygons.into_iter().next().unwrap();
+    (network, polygon)
+}
+
+/// Winds by station number.
+pub fn winds(values: &[(f64, f64)]) -> impl Fn(usize) -> Wind + '_ {
+    |s| Wind {
+        u: values[s].0,
+        v: values[s].1,
+    }
+}
+
+/// `"a b;c d"` as pairs.
+pub fn pairs(text: &str) -> Vec<(f64, f64)> {
+    text.split(';')
+        .map(|pair| {
+            let (a, b) = pair.split_once(' ').unwrap();
+            (a.parse().unwrap(), b.parse().unwrap())
+        })
+        .collect()
+}
+
+/// Rows of a table of `tests/data`.
+pub fn table(name: &str) -> Vec<csv::StringRecord> {
+    let path = format!("{}/tests/data/{name}", env!("CARGO_MANIFEST_DIR"));
+    let mut reader = csv::ReaderBuilder::new()
+        .comment(Some(b'#'))
+        .from_path(path)
+        .unwrap();
+    reader.records().map(Result::unwrap).collect()
+}
+
+pub fn close(found: f64, expected: f64, tolerance: f64) -> bool {
+    (found - expected).abs() <= tolerance
+}
