@@ -3,8 +3,11 @@
 
 pub mod align;
 pub mod check;
+pub mod cli;
 pub mod error;
 pub mod integral;
+pub mod output;
+pub mod pipeline;
 pub mod polygon;
 pub mod report;
 pub mod settings;

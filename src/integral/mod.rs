@@ -3,6 +3,7 @@
 //! Circulation and outward flux are the values times the polygon's area.
 
 mod earth;
+mod extremes;
 
 use crate::align::WindBlock;
 use crate::check::Flag;
@@ -12,6 +13,7 @@ use crate::time::Time;
 pub use earth::{
     OMEGA, SELF_TEST_ALLOWED, SelfTest, earth_rotation, planetary_vorticity, self_test,
 };
+pub use extremes::{Extremes, Peak};
 
 /// Estimates of all polygons at a run of analysis times.
 ///

@@ -20,7 +20,7 @@ pub struct Shape {
     /// Smallest interior angle, degrees.
     pub smallest_angle: f64,
     /// 4 tan(π/n)·A/Σl²: 1 for the regular n-gon, less for any other; 4√3·A/Σl² for a triangle.
-    pub regularity: f64,
+    pub quality: f64,
     /// Error of vorticity, and of divergence, per unit error of each wind component, 1/m: √Σ(X²+Y²)/(2A), which is
     /// √Σl²/(2A) for a triangle and 2/L for the equilateral one (`methods.md` 1.4).
     pub noise_factor: f64,
@@ -63,7 +63,7 @@ impl Shape {
             perimeter: lengths.clone().sum(),
             longest_edge: lengths.fold(0.0, f64::max),
             smallest_angle,
-            regularity: 4.0 * (PI / ring.len() as f64).tan() * area / squares,
+            quality: 4.0 * (PI / ring.len() as f64).tan() * area / squares,
             noise_factor: weights
                 .iter()
                 .map(|[x, y]| x * x + y * y)

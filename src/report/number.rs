@@ -97,7 +97,6 @@ impl TimeReader {
 }
 
 #[cfg(test)]
-#[expect(clippy::float_cmp, reason = "parsing is exact")]
 mod tests {
     use proptest::prelude::*;
 

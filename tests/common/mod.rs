@@ -2,6 +2,7 @@
 #![allow(dead_code, reason = "each test uses a part of it")]
 #![allow(clippy::unwrap_used, clippy::panic, reason = "tests may panic")]
 
+use geographiclib_rs::{DirectGeodesic, Geodesic};
 use gyremesh::error::{Error, Place};
 use gyremesh::polygon::{BuiltPolygons, StationPolygon, build_polygons};
 use gyremesh::settings::{PolygonChoice, PolygonLimits, RegionParts, RegionSettings, RingSettings};
@@ -109,4 +110,39 @@ pub fn table(name: &str) -> Vec<csv::StringRecord> {
 
 pub fn close(found: f64, expected: f64, tolerance: f64) -> bool {
     (found - expected).abs() <= tolerance
+}
+
+/// A plane that touches the Earth at `origin` (latitude, longitude), x towards east and y towards north there; distances
+/// and bearings from the origin are true. Its coordinates are `shrink` times as long as on the Earth.
+#[derive(Debug, Clone, Copy)]
+pub struct Plane {
+    pub origin: (f64, f64),
+    pub shrink: f64,
+}
+
+impl Plane {
+    /// Position of the point (x, y), m, and by how much a wind turns clockwise in its frame of true north, degrees.
+    fn direct(self, (x, y): (f64, f64)) -> ((f64, f64), f64) {
+        let bearing = x.atan2(y).to_degrees();
+        let (lat, lon) = self.origin;
+        let (lat, lon, azimuth): (f64, f64, f64) =
+            Geodesic::wgs84().direct(lat, lon, bearing, x.hypot(y) / self.shrink);
+        ((lat, lon), azimuth - bearing)
+    }
+
+    /// Latitude and longitude of points (x, y), m.
+    pub fn place(self, points: &[(f64, f64)]) -> Vec<(f64, f64)> {
+        points.iter().map(|&p| self.direct(p).0).collect()
+    }
+
+    /// Winds of the plane in the local frame of each point.
+    pub fn turn(self, points: &[(f64, f64)], winds: &[(f64, f64)]) -> Vec<(f64, f64)> {
+        let pairs = points.iter().zip(winds);
+        pairs
+            .map(|(&p, &(u, v))| {
+                let (sin, cos) = self.direct(p).1.to_radians().sin_cos();
+                (u * cos + v * sin, v * cos - u * sin)
+            })
+            .collect()
+    }
 }

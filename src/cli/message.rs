@@ -1,0 +1,231 @@
+//! What the program says to people.
+
+use std::fmt::Write as _;
+use std::path::PathBuf;
+
+use crate::integral::Peak;
+use crate::output::{CAUTION, ERROR_BARS};
+use crate::pipeline::{Outcome, Setup};
+use crate::polygon::{Exclusion, StationPolygon};
+
+/// Width of everything printed.
+const WIDTH: usize = 80;
+/// Stations named as those that reported least.
+const LEAST: usize = 3;
+
+/// Says something on stderr.
+#[expect(
+    clippy::print_stderr,
+    reason = "this is the one place that speaks to stderr"
+)]
+pub(super) fn say(kind: &str, text: &str) {
+    eprintln!("{kind}: {text}");
+}
+
+/// Text cut to a width in characters.
+fn cut(text: &str, width: usize) -> String {
+    if text.chars().count() <= width {
+        text.to_string()
+    } else {
+        let mut short: String = text.chars().take(width.saturating_sub(1)).collect();
+        short.push('…');
+        short
+    }
+}
+
+/// The table of `polygons`.
+pub(super) fn polygon_table(setup: &Setup) -> String {
+    let mut out = String::new();
+    let built = &setup.built;
+    // Writing to a string cannot fail.
+    let _ = writeln!(
+        out,
+        "{}: {} stations, {} polygons within the limits, {} left out",
+        setup.settings.name,
+        setup.network.len(),
+        built.polygons.len(),
+        built.excluded.len()
+    );
+    let _ = writeln!(
+        out,
+        "noise: error of vorticity or divergence, 1e-5 /s, for 1 m/s in each component\n"
+    );
+    let _ = writeln!(
+        out,
+        "{:<24} {:>9} {:>8} {:>6} {:>7} {:>6}  left out",
+        "polygon", "area km2", "edge km", "angle", "quality", "noise"
+    );
+    let used = built.polygons.iter().map(|p| (p, None));
+    let excluded = built.excluded.iter().map(|(p, why)| (p, Some(why)));
+    for (polygon, why) in used.chain(excluded) {
+        out.push_str(&polygon_line(polygon, why));
+    }
+    if built.flat > 0 {
+        let _ = writeln!(
+            out,
+            "\n{} triangles of stations on one line dropped",
+            built.flat
+        );
+    }
+    out
+}
+
+fn polygon_line(polygon: &StationPolygon, why: Option<&Exclusion>) -> String {
+    let shape = &polygon.shape;
+    let line = format!(
+        "{:<24} {:>9.1} {:>8.1} {:>6.1} {:>7.2} {:>6.1}  {}",
+        cut(&polygon.id, 24),
+        shape.area / 1e6,
+        shape.longest_edge / 1e3,
+        shape.smallest_angle,
+        shape.quality,
+        shape.noise_factor * 1e5,
+        why.map_or_else(String::new, short_reason)
+    );
+    cut(line.trim_end(), WIDTH) + "\n"
+}
+
+fn short_reason(why: &Exclusion) -> String {
+    match why {
+        Exclusion::SmallAngle(..) => "angle",
+        Exclusion::LongEdge(..) => "edge",
+        Exclusion::SmallArea(..) => "too small",
+        Exclusion::LargeArea(..) => "too large",
+    }
+    .into()
+}
+
+/// The summary of `estimate`.
+pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -> String {
+    let mut out = String::new();
+    let grid = &outcome.grid;
+    let built = &setup.built;
+    let _ = writeln!(out, "{}", setup.settings.name);
+    if let (Some(first), Some(last)) = (grid.first(), grid.last()) {
+        let interval = setup.settings.analysis.interval.as_secs_f64() / 60.0;
+        let _ = writeln!(
+            out,
+            "Period      {first} to {last}, {} times, every {interval} min",
+            grid.len()
+        );
+    }
+    let reporting = outcome.stations.iter().filter(|s| s.values > 0).count();
+    let _ = writeln!(
+        out,
+        "Stations    {reporting} of {} reported",
+        setup.network.len()
+    );
+    let _ = writeln!(
+        out,
+        "Reports     {} rows read, {} used ({:.1} %)",
+        outcome.rows.received,
+        outcome.aligned.all.passed,
+        100.0 * outcome.share_used()
+    );
+    for tally in [&outcome.rows, &outcome.repeats, &outcome.aligned.all] {
+        for (reason, n) in &tally.set_aside {
+            let _ = writeln!(out, "            {n:>8} {}", reason.words());
+        }
+    }
+    let values: u64 = outcome.extremes.values.iter().sum();
+    let possible = (grid.len() * built.polygons.len()).max(1) as f64;
+    let _ = writeln!(
+        out,
+        "Polygons    {} used, {} left out; {:.1} % of their values are there",
+        built.polygons.len(),
+        built.excluded.len(),
+        100.0 * values as f64 / possible
+    );
+    let _ = writeln!(
+        out,
+        "Self-test   {:.0e} of 2 Omega on {} polygons",
+        setup.self_test.largest_difference, setup.self_test.polygons
+    );
+    let _ = writeln!(out, "\nStrongest, in 1e-5 /s:");
+    let extremes = &outcome.extremes;
+    for (what, peak) in [
+        ("convergence", extremes.convergence),
+        ("cyclonic spin-up", extremes.cyclonic),
+        ("anticyclonic", extremes.anticyclonic),
+    ] {
+        let _ = writeln!(out, "  {what:<17} {}", peak_text(setup, peak));
+    }
+    least_reporting(&mut out, setup, outcome);
+    let _ = writeln!(out, "\n{}", wrapped(&format!("Errors: {ERROR_BARS}.")));
+    let _ = writeln!(out, "{}", wrapped(CAUTION));
+    let names: Vec<String> = files
+        .iter()
+        .filter_map(|f| f.file_name().map(|n| n.to_string_lossy().into_owned()))
+        .collect();
+    if let Some(folder) = files.first().and_then(|f| f.parent()) {
+        let _ = writeln!(
+            out,
+            "\nWritten to {}: {}",
+            folder.display(),
+            names.join(", ")
+        );
+    }
+    out
+}
+
+fn peak_text(setup: &Setup, peak: Option<Peak>) -> String {
+    let Some(peak) = peak else {
+        return "none".into();
+    };
+    let polygon = &setup.built.polygons[peak.polygon];
+    let (latitude, longitude) = polygon.middle;
+    format!(
+        "{:+.1} ± {:.1}  {}  {} ({:.2} {}, {:.2} {})",
+        peak.value * 1e5,
+        peak.error * 1e5,
+        peak.time,
+        cut(&polygon.id, 24),
+        latitude.abs(),
+        if latitude < 0.0 { "S" } else { "N" },
+        longitude.abs(),
+        if longitude < 0.0 { "W" } else { "E" },
+    )
+}
+
+/// Names the stations with the fewest values, if any is incomplete.
+fn least_reporting(out: &mut String, setup: &Setup, outcome: &Outcome) {
+    let times = outcome.grid.len() as u64;
+    let mut order: Vec<usize> = (0..setup.network.len())
+        .filter(|&s| outcome.stations[s].values < times)
+        .collect();
+    order.sort_by_key(|&s| outcome.stations[s].values);
+    if order.is_empty() {
+        let _ = writeln!(out, "\nEvery station has a value at every time");
+        return;
+    }
+    let _ = writeln!(out, "\nReported least:");
+    for &s in order.iter().take(LEAST) {
+        let station = &setup.network.stations()[s];
+        let values = outcome.stations[s].values;
+        let share = 100.0 * values as f64 / times.max(1) as f64;
+        let _ = writeln!(
+            out,
+            "  {:<24} {values} of {times} times ({share:.1} %)",
+            cut(&station.id, 24)
+        );
+    }
+}
+
+/// Text in lines of at most the width.
+fn wrapped(text: &str) -> String {
+    let mut out = String::new();
+    let mut width = 0;
+    for word in text.split_whitespace() {
+        let length = word.chars().count();
+        if width > 0 && width + 1 + length > WIDTH {
+            out.push('\n');
+            width = 0;
+        } else if width > 0 {
+            out.push(' ');
+            width += 1;
+        }
+        out.push_str(word);
+        width += length;
+    }
+    out
+}

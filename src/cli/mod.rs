@@ -1,0 +1,160 @@
+//! The command line: one function for each command, no physics.
+
+pub mod args;
+mod message;
+
+use std::io::{self, Write};
+use std::path::{Path, PathBuf};
+
+use clap::Parser;
+use indicatif::{ProgressBar, ProgressStyle};
+
+use self::args::{Args, Command, EstimateArgs, PolygonsArgs};
+use crate::error::Error;
+use crate::output::{OutputSet, PolygonRows, mesh_csv, mesh_geojson, stations_csv, summary_json};
+use crate::pipeline::{self, Setup};
+use crate::settings::Overrides;
+
+/// How a run ended; the value is the exit status.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+#[repr(u8)]
+pub enum Status {
+    /// Complete.
+    Complete = 0,
+    /// Complete, but some input was unusable.
+    SomeInputUnusable = 1,
+    /// Not done.
+    NotDone = 2,
+}
+
+/// Runs the program with the arguments of the process.
+#[must_use]
+pub fn main() -> Status {
+    let args = match Args::try_parse() {
+        Ok(args) => args,
+        Err(error) => {
+            // Help and version are no errors; a closed pipe under them is none either.
+            let status = if error.use_stderr() {
+                Status::NotDone
+            } else {
+                Status::Complete
+            };
+            let _ = error.print();
+            return status;
+        }
+    };
+    let result = match &args.command {
+        Command::Polygons(args) => polygons(args),
+        Command::Estimate(args) => estimate(args),
+    };
+    match result {
+        Ok(status) => status,
+        Err(error) if error.is_closed_pipe() => Status::Complete,
+        Err(error) => {
+            message::say("error", &error.to_string());
+            Status::NotDone
+        }
+    }
+}
+
+/// Results for the user.
+fn print(text: &str) -> Result<(), Error> {
+    let mut out = io::stdout().lock();
+    out.write_all(text.as_bytes())
+        .and_then(|()| out.flush())
+        .map_err(|e| Error::write(Path::new("standard output"), e))
+}
+
+fn polygons(args: &PolygonsArgs) -> Result<Status, Error> {
+    let setup = Setup::read(&args.network, &Overrides::from(args))?;
+    for warning in &setup.built.warnings {
+        message::say("warning", &warning.to_string());
+    }
+    if let Some(folder) = &args.out {
+        let mut set = OutputSet::new(folder)?;
+        set.put("mesh.geojson", mesh_geojson(&setup).as_bytes())?;
+        set.put("mesh.csv", mesh_csv(&setup).as_bytes())?;
+        set.commit()?;
+    }
+    print(&message::polygon_table(&setup))?;
+    Ok(Status::Complete)
+}
+
+fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
+    if let Some(threads) = args.threads {
+        // Fails only if a pool is already there, which then serves as well.
+        let _ = rayon::ThreadPoolBuilder::new()
+            .num_threads(threads)
+            .build_global();
+    }
+    let setup = Setup::read(&args.network, &Overrides::from(args))?;
+    if setup.built.polygons.is_empty() {
+        return Err(Error::Network(format!(
+            "none of {} polygons is within the limits; `gyremesh polygons` lists the reasons",
+            setup.built.excluded.len()
+        )));
+    }
+    let folder = args
+        .out
+        .clone()
+        .unwrap_or_else(|| default_folder(&args.network));
+    let mut set = OutputSet::new(&folder)?;
+    let series = set.create("polygons.csv")?;
+    set.write(series, PolygonRows::header().as_bytes())?;
+    let rows = PolygonRows::new(&setup);
+
+    let bar = progress_bar(args.quiet);
+    let outcome = pipeline::run(
+        &setup,
+        |block| rows.encode(block),
+        |bytes| set.write(series, &bytes),
+        |done, of| {
+            bar.set_length(of as u64);
+            bar.set_position(done as u64);
+        },
+    );
+    bar.finish_and_clear();
+    let outcome = outcome?;
+
+    set.put("mesh.geojson", mesh_geojson(&setup).as_bytes())?;
+    set.put("stations.csv", stations_csv(&setup, &outcome).as_bytes())?;
+    set.put("summary.json", summary_json(&setup, &outcome).as_bytes())?;
+    let files = set.commit()?;
+
+    for warning in &outcome.warnings {
+        message::say("warning", &warning.to_string());
+    }
+    for failure in &outcome.failures {
+        message::say("warning", &failure.to_string());
+    }
+    if !args.quiet {
+        print(&message::run_summary(&setup, &outcome, &files))?;
+    }
+    Ok(if outcome.is_complete() {
+        Status::Complete
+    } else {
+        Status::SomeInputUnusable
+    })
+}
+
+/// `out/NAME`, NAME being the folder of the settings file.
+fn default_folder(network: &Path) -> PathBuf {
+    let name = network
+        .canonicalize()
+        .ok()
+        .and_then(|path| path.parent()?.file_name().map(PathBuf::from))
+        .unwrap_or_else(|| "network".into());
+    Path::new("out").join(name)
+}
+
+/// On stderr, and only on a terminal.
+fn progress_bar(quiet: bool) -> ProgressBar {
+    if quiet {
+        return ProgressBar::hidden();
+    }
+    let bar = ProgressBar::no_length();
+    if let Ok(style) = ProgressStyle::with_template("{bar:40} {pos} of {len} times, {eta} left") {
+        bar.set_style(style);
+    }
+    bar
+}

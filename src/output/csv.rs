@@ -1,0 +1,211 @@
+//! Comma-separated results: UTF-8, LF, empty for a missing value, shortest numbers that read back the same.
+
+use zmij::Buffer;
+
+use crate::check::Flag;
+use crate::integral::{EstimateBlock, Sense};
+use crate::pipeline::{Outcome, Setup};
+use crate::polygon::StationPolygon;
+use crate::station::Network;
+
+/// Header of `polygons.csv`: the first eleven columns are the contract of the format.
+const POLYGON_COLUMNS: &str = "time,polygon,stations,area_km2,vorticity,vorticity_se,divergence,divergence_se,\
+                               planetary_vorticity,absolute_vorticity,flag,sense\n";
+
+/// Writes rows of `polygons.csv`, one for each time and polygon.
+pub struct PolygonRows {
+    /// For each polygon the text of its fixed columns: polygon, stations and area with commas around.
+    fixed: Vec<String>,
+    planetary: Vec<f64>,
+    planetary_text: Vec<String>,
+}
+
+impl PolygonRows {
+    /// Prepares the columns that do not change with time.
+    #[must_use]
+    pub fn new(setup: &Setup) -> Self {
+        let fixed = setup
+            .built
+            .polygons
+            .iter()
+            .map(|p| {
+                format!(
+                    ",{},{},{},",
+                    quoted(&p.id),
+                    quoted(&station_list(p, &setup.network)),
+                    number(p.shape.area / 1e6)
+                )
+            })
+            .collect();
+        Self {
+            fixed,
+            planetary_text: setup.planetary.iter().map(|&f| number(f)).collect(),
+            planetary: setup.planetary.clone(),
+        }
+    }
+
+    /// The header line.
+    #[must_use]
+    pub fn header() -> &'static str {
+        POLYGON_COLUMNS
+    }
+
+    /// The rows of a block, by time, then polygon.
+    #[must_use]
+    pub fn encode(&self, block: &EstimateBlock) -> Vec<u8> {
+        let n = block.times.len();
+        let mut out = Vec::with_capacity(n * self.fixed.len() * 192);
+        let mut buffer = Buffer::new();
+        for (t, time) in block.times.iter().enumerate() {
+            let time = time.to_string();
+            for (p, fixed) in self.fixed.iter().enumerate() {
+                let cell = p * n + t;
+                out.extend_from_slice(time.as_bytes());
+                out.extend_from_slice(fixed.as_bytes());
+                let missing = block.flag[cell] == Flag::Missing;
+                for value in [
+                    block.vorticity[cell],
+                    block.vorticity_se[cell],
+                    block.divergence[cell],
+                    block.divergence_se[cell],
+                ] {
+                    if !missing {
+                        out.extend_from_slice(buffer.format(value).as_bytes());
+                    }
+                    out.push(b',');
+                }
+                out.extend_from_slice(self.planetary_text[p].as_bytes());
+                out.push(b',');
+                let sense = if missing {
+                    None
+                } else {
+                    let absolute = block.vorticity[cell] + self.planetary[p];
+                    out.extend_from_slice(buffer.format(absolute).as_bytes());
+                    Sense::of(block.vorticity[cell], self.planetary[p])
+                };
+                out.push(b',');
+                out.push(b'0' + block.flag[cell].value());
+                out.push(b',');
+                out.extend_from_slice(sense.map_or("", Sense::name).as_bytes());
+                out.push(b'\n');
+            }
+        }
+        out
+    }
+}
+
+/// Station identifiers of a polygon: counter-clockwise, separated by spaces; further paths of a region after `|`.
+pub(super) fn station_list(polygon: &StationPolygon, network: &Network) -> String {
+    let rings: Vec<String> = polygon
+        .outline
+        .iter()
+        .map(|ring| {
+            let ids: Vec<&str> = ring
+                .iter()
+                .map(|&s| network.stations()[s].id.as_str())
+                .collect();
+            ids.join(" ")
+        })
+        .collect();
+    rings.join(" | ")
+}
+
+/// A field, quoted where it must be (RFC 4180).
+fn quoted(text: &str) -> String {
+    if text.contains([',', '"', '\n', '\r']) {
+        format!("\"{}\"", text.replace('"', "\"\""))
+    } else {
+        text.to_string()
+    }
+}
+
+fn number(value: f64) -> String {
+    Buffer::new().format(value).to_string()
+}
+
+fn optional(value: Option<f64>) -> String {
+    value.map_or_else(String::new, number)
+}
+
+/// `stations.csv`: the health of each station. Speeds in m/s, direction in degrees.
+#[must_use]
+pub fn stations_csv(setup: &Setup, outcome: &Outcome) -> String {
+    let mut out = String::from(
+        "station,name,latitude,longitude,elevation_m,reports,calm,no_direction,no_speed,suspect,failed,used,values,\
+         availability,first_report,last_report,mean_speed,vector_mean_speed,vector_mean_direction\n",
+    );
+    let times = outcome.grid.len().max(1) as f64;
+    for (station, health) in setup.network.stations().iter().zip(&outcome.stations) {
+        let (first, last) = health
+            .period
+            .map_or_else(Default::default, |(a, b)| (a.to_string(), b.to_string()));
+        let mean = health.vector_mean;
+        let fields = [
+            quoted(&station.id),
+            quoted(&station.name),
+            number(station.position.latitude()),
+            number(station.position.longitude()),
+            optional(station.elevation),
+            health.reports.to_string(),
+            health.calm.to_string(),
+            health.no_direction.to_string(),
+            health.no_speed.to_string(),
+            health.suspect.to_string(),
+            health.failed.to_string(),
+            health.used.to_string(),
+            health.values.to_string(),
+            number(health.values as f64 / times),
+            first,
+            last,
+            optional(health.mean_speed),
+            optional(mean.map(crate::units::Wind::speed)),
+            optional(
+                mean.and_then(crate::units::Wind::from_direction)
+                    .map(crate::units::FromDirection::degrees),
+            ),
+        ];
+        out.push_str(&fields.join(","));
+        out.push('\n');
+    }
+    out
+}
+
+/// `mesh.csv`: shape and use of every polygon, without any report.
+#[must_use]
+pub fn mesh_csv(setup: &Setup) -> String {
+    let mut out = String::from(
+        "polygon,kind,stations,area_km2,perimeter_km,longest_edge_km,smallest_angle_deg,shape_quality,\
+         noise_factor_per_m,elevation_spread_m,planetary_vorticity,excluded\n",
+    );
+    let used = setup
+        .built
+        .polygons
+        .iter()
+        .zip(&setup.planetary)
+        .map(|(p, &f)| (p, Some(f), String::new()));
+    let excluded = setup
+        .built
+        .excluded
+        .iter()
+        .map(|(p, why)| (p, None, why.to_string()));
+    for (polygon, planetary, excluded) in used.chain(excluded) {
+        let shape = &polygon.shape;
+        let fields = [
+            quoted(&polygon.id),
+            polygon.kind.name().to_string(),
+            quoted(&station_list(polygon, &setup.network)),
+            number(shape.area / 1e6),
+            number(shape.perimeter / 1e3),
+            number(shape.longest_edge / 1e3),
+            number(shape.smallest_angle),
+            number(shape.quality),
+            number(shape.noise_factor),
+            optional(shape.elevation_spread),
+            optional(planetary),
+            quoted(&excluded),
+        ];
+        out.push_str(&fields.join(","));
+        out.push('\n');
+    }
+    out
+}

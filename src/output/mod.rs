@@ -1,0 +1,19 @@
+//! Writes results. Nothing here computes.
+
+mod csv;
+mod file;
+mod geojson;
+mod summary;
+
+pub use csv::{PolygonRows, mesh_csv, stations_csv};
+pub use file::OutputSet;
+pub use geojson::{mesh_geojson, outline_geometry};
+pub use summary::summary_json;
+
+/// What a polygon's estimate is not, wherever results are shown.
+pub const CAUTION: &str = "These are estimates, not warnings. For severe weather, turbines and aviation follow the national \
+                           weather service, site safety rules, local codes and licensed practice.";
+
+/// What the error bars hold so far.
+pub const ERROR_BARS: &str = "one standard error, from instrument errors and rounding only; the wind between the stations \
+                              is not in it";

@@ -1,0 +1,127 @@
+//! `summary.json`: settings used, books of every stage, self-test, strongest values.
+
+use std::collections::BTreeMap;
+
+use serde_json::{Value, json};
+
+use super::{CAUTION, ERROR_BARS};
+use crate::integral::Peak;
+use crate::pipeline::{Outcome, Setup};
+use crate::settings::{AlignMethod, ReportSource, Settings};
+
+/// The summary of a run, as JSON. It holds nothing that differs between two runs of the same input.
+#[must_use]
+pub fn summary_json(setup: &Setup, outcome: &Outcome) -> String {
+    let grid = &outcome.grid;
+    let mut reasons: BTreeMap<&str, usize> = BTreeMap::new();
+    for (_, why) in &setup.built.excluded {
+        *reasons.entry(why.name()).or_default() += 1;
+    }
+    let excluded: Vec<Value> = setup
+        .built
+        .excluded
+        .iter()
+        .map(|(p, why)| json!({ "polygon": p.id, "reason": why.name(), "detail": why.to_string() }))
+        .collect();
+    let files: Vec<Value> = outcome
+        .files
+        .iter()
+        .map(|(file, tally)| json!({ "file": file, "rows": tally }))
+        .collect();
+    let failures: Vec<String> = outcome.failures.iter().map(ToString::to_string).collect();
+    let warnings: Vec<String> = outcome.warnings.iter().map(ToString::to_string).collect();
+    let extremes = &outcome.extremes;
+    let summary = json!({
+        "program": { "name": env!("CARGO_PKG_NAME"), "version": env!("CARGO_PKG_VERSION") },
+        "network": setup.settings.name,
+        "settings": settings(&setup.settings),
+        "period": {
+            "first": grid.first().map(|t| t.to_string()),
+            "last": grid.last().map(|t| t.to_string()),
+            "times": grid.len(),
+            "times_without_report": grid.empty_times(),
+        },
+        "reports": {
+            "rows": outcome.rows,
+            "files": files,
+            "failures": failures,
+            "repeats": outcome.repeats,
+            "aligned": outcome.aligned.all,
+            "share_used": outcome.share_used(),
+        },
+        "stations": setup.network.len(),
+        "polygons": {
+            "used": setup.built.polygons.len(),
+            "excluded": setup.built.excluded.len(),
+            "excluded_by_reason": reasons,
+            "excluded_list": excluded,
+            "flat_triangles": setup.built.flat,
+            "values": extremes.values.iter().sum::<u64>(),
+            "values_possible": (grid.len() * setup.built.polygons.len()),
+        },
+        "self_test": setup.self_test,
+        "extremes": {
+            "convergence": peak(setup, extremes.convergence),
+            "divergence": peak(setup, extremes.divergence),
+            "cyclonic_vorticity": peak(setup, extremes.cyclonic),
+            "anticyclonic_vorticity": peak(setup, extremes.anticyclonic),
+        },
+        "warnings": warnings,
+        "units": {
+            "vorticity": "s-1", "divergence": "s-1", "speed": "m s-1", "area_km2": "km2", "time": "RFC 3339 UTC",
+        },
+        "error_bars": ERROR_BARS,
+        "caution": CAUTION,
+    });
+    let mut text = format!("{summary:#}");
+    text.push('\n');
+    text
+}
+
+fn peak(setup: &Setup, peak: Option<Peak>) -> Option<Value> {
+    peak.map(|peak| {
+        let polygon = &setup.built.polygons[peak.polygon];
+        json!({
+            "polygon": polygon.id,
+            "latitude": polygon.middle.0,
+            "longitude": polygon.middle.1,
+            "time": peak.time.to_string(),
+            "value": peak.value,
+            "standard_error": peak.error,
+        })
+    })
+}
+
+fn settings(settings: &Settings) -> Value {
+    let analysis = &settings.analysis;
+    let method = match analysis.method {
+        AlignMethod::Nearest { tolerance } => {
+            json!({ "method": "nearest", "tolerance_s": tolerance.as_secs_f64() })
+        }
+        AlignMethod::VectorMean {
+            window,
+            least_reports,
+        } => {
+            json!({ "method": "mean", "window_s": window.as_secs_f64(), "least_reports": least_reports })
+        }
+    };
+    let reports: Vec<Value> = settings
+        .reports
+        .iter()
+        .map(|ReportSource { files, format }| json!({ "files": files, "format": format }))
+        .collect();
+    json!({
+        "station_file": settings.station_file,
+        "stations": settings.catalogue,
+        "reports": reports,
+        "sensor": settings.sensor,
+        "analysis": {
+            "interval_s": analysis.interval.as_secs_f64(),
+            "align": method,
+            "from": analysis.from.map(|t| t.to_string()),
+            "to": analysis.to.map(|t| t.to_string()),
+        },
+        "check": settings.range,
+        "limits": settings.limits,
+    })
+}
