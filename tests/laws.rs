@@ -26,11 +26,10 @@ const ROUNDING: f64 = 1e-12;
 /// Accuracy of an area, m² (`tests/data/SOURCES.md`).
 const AREA: f64 = 0.1;
 
-/// The cases are the same in every run; `PROPTEST_RNG_SEED` draws others.
+/// The cases are the same in every run; `PROPTEST_RNG_SEED` draws others and `PROPTEST_CASES` more.
 fn config() -> ProptestConfig {
     let default = ProptestConfig::default();
     ProptestConfig {
-        cases: 48,
         rng_seed: match default.rng_seed {
             RngSeed::Random => RngSeed::Fixed(20_260_612),
             seed @ RngSeed::Fixed(_) => seed,
@@ -54,16 +53,19 @@ fn plane() -> impl Strategy<Value = (Plane, f64)> {
 /// Positions of a network, no two nearer than 1/50 of its size.
 fn stations() -> impl Strategy<Value = Pairs> {
     let points = prop::collection::vec((-0.5..0.5, -0.5..0.5), 5..MOST);
-    (plane(), points).prop_filter_map("three stations apart", |((plane, size), points): (_, Pairs)| {
-        let mut apart: Pairs = Vec::new();
-        for (x, y) in points {
-            if apart.iter().all(|p| (p.0 - x).hypot(p.1 - y) > 0.02) {
-                apart.push((x, y));
+    (plane(), points).prop_filter_map(
+        "three stations apart",
+        |((plane, size), points): (_, Pairs)| {
+            let mut apart: Pairs = Vec::new();
+            for (x, y) in points {
+                if apart.iter().all(|p| (p.0 - x).hypot(p.1 - y) > 0.02) {
+                    apart.push((x, y));
+                }
             }
-        }
-        let metres: Pairs = apart.iter().map(|p| (p.0 * size, p.1 * size)).collect();
-        (metres.len() >= 3).then(|| plane.place(&metres))
-    })
+            let metres: Pairs = apart.iter().map(|p| (p.0 * size, p.1 * size)).collect();
+            (metres.len() >= 3).then(|| plane.place(&metres))
+        },
+    )
 }
 
 /// Positions of a simple ring, counter-clockwise: its stations lie in order round the middle.

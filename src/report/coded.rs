@@ -19,8 +19,9 @@ pub enum CodedDirection {
     Variable,
     /// 000 (METAR) or 00 (SYNOP) with a speed above 0.
     ///
-    /// The code form has no such wind: north is 360 or 36, and zeros go with calm. Stations that send it mostly do so
-    /// at all times, so that a broken vane is likelier than a north wind.
+    /// The code form has no such wind: north is 360 or 36, and zeros go with calm. The five stations that sent it in a
+    /// world-wide sample (October 2022, three times over 33 hours, 14 reports of 11 to 36 kt) sent nothing else: a
+    /// broken vane is likelier than a north wind.
     Zero,
     /// Not given, or calm.
     Missing,

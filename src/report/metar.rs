@@ -167,8 +167,13 @@ impl<'a> Iterator for Metars<'a> {
             if piece.text.is_empty() || is_empty_bulletin(piece.text) {
                 continue;
             }
+            let names_its_kind = matches!(piece.split_first().0, "METAR" | "SPECI");
             let report = parse_metar(piece.text).map(|metar| Metar {
-                special: metar.special || self.special,
+                special: if names_its_kind {
+                    metar.special
+                } else {
+                    self.special
+                },
                 correction: metar.correction.max(self.correction),
                 ..metar
             });
