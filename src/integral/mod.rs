@@ -77,8 +77,9 @@ pub fn estimate(polygons: &[StationPolygon], winds: &WindBlock) -> EstimateBlock
                 vorticity[t] = 0.0;
                 divergence[t] = 0.0;
             }
-            vorticity_se[t] = vorticity_se[t].sqrt();
-            divergence_se[t] = divergence_se[t].sqrt();
+            // Rounding may leave a variance of nothing just below 0.
+            vorticity_se[t] = vorticity_se[t].max(0.0).sqrt();
+            divergence_se[t] = divergence_se[t].max(0.0).sqrt();
         }
     }
     out
