@@ -19,12 +19,10 @@ use rand::{RngExt, SeedableRng};
 use rand_chacha::ChaCha8Rng;
 
 fn polygons(stations: usize, rng: &mut ChaCha8Rng) -> Vec<StationPolygon> {
-    let stations = (0..stations).map(|k| Station {
-        id: format!("S{k:05}"),
-        name: String::new(),
-        position: Position::new(rng.random_range(45.0..48.0), rng.random_range(-31.0..-27.0))
-            .unwrap(),
-        elevation: None,
+    let stations = (0..stations).map(|k| {
+        let position =
+            Position::new(rng.random_range(45.0..48.0), rng.random_range(-31.0..-27.0)).unwrap();
+        Station::new(format!("S{k:05}"), position)
     });
     let choice = PolygonChoice {
         triangles: true,

@@ -10,11 +10,10 @@ mod common;
 
 use std::fmt::Write as _;
 
-use gyremesh::report::{ReportFormat, WindColumns, read_reports};
+use gyremesh::report::{ReportFormat, read_reports};
 use gyremesh::settings::ReportSource;
 use gyremesh::station::{Network, Position, Station};
 use gyremesh::time::Time;
-use gyremesh::units::SpeedUnit;
 use rand::{RngExt, SeedableRng};
 use rand_chacha::ChaCha8Rng;
 
@@ -38,32 +37,29 @@ fn main() {
     }
     let file = tempfile::NamedTempFile::new().unwrap();
     std::fs::write(file.path(), &text).unwrap();
-    let stations = (0..STATIONS).map(|s| Station {
-        id: format!("ST{s:03}"),
-        name: String::new(),
-        position: Position::new(45.0, s as f64 * 0.1).unwrap(),
-        elevation: None,
+    let stations = (0..STATIONS).map(|s| {
+        let position = Position::new(45.0, s as f64 * 0.1).unwrap();
+        Station::new(format!("ST{s:03}"), position)
     });
     let network = Network::new(stations.collect());
     let source = ReportSource {
         files: vec![file.path().to_path_buf()],
-        format: ReportFormat {
-            station: "station".into(),
-            time: "time".into(),
-            wind: WindColumns::DirectionSpeed {
-                direction: "direction".into(),
-                speed: "speed".into(),
-            },
-            speed_unit: SpeedUnit::MetrePerSecond,
-            missing: vec![],
-        },
+        format: ReportFormat::default(),
     };
     let sources = [source];
     let pool = rayon::ThreadPoolBuilder::new()
         .num_threads(1)
         .build()
         .unwrap();
-    let ours = || pool.install(|| read_reports(&sources, &network).rows.len());
+    let ours = || {
+        pool.install(|| {
+            read_reports(&sources, &network)
+                .rows
+                .iter()
+                .map(gyremesh::report::Rows::len)
+                .sum::<usize>()
+        })
+    };
 
     let bare = || {
         let mut reader = csv::Reader::from_path(file.path()).unwrap();

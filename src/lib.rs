@@ -9,8 +9,7 @@
 //! use gyremesh::units::{FromDirection, Wind};
 //!
 //! let station = |id: &str, latitude, longitude| {
-//!     let position = Position::new(latitude, longitude).unwrap();
-//!     Station { id: id.into(), name: id.into(), position, elevation: None }
+//!     Station::new(id, Position::new(latitude, longitude).unwrap())
 //! };
 //! let network = Network::new(vec![
 //!     station("A", 46.0, 7.0), station("B", 46.0, 7.4), station("C", 46.3, 7.2),
@@ -44,7 +43,7 @@
 //!
 //! - [`settings`]: one TOML file for each network, all its defects at once.
 //! - [`station`]: stations and the network they make.
-//! - [`report`]: wind reports into columns.
+//! - [`input`], [`report`]: files of many forms, wind reports into columns.
 //! - [`check`]: flags of the reports.
 //! - [`align`]: winds of all stations at analysis times, with their instrument errors.
 //! - [`polygon`]: triangles, rings, regions; shape and coefficient rows.
@@ -65,6 +64,7 @@ pub mod align;
 pub mod check;
 pub mod cli;
 pub mod error;
+pub mod input;
 pub mod integral;
 pub mod output;
 pub mod pipeline;

@@ -12,7 +12,7 @@ use crate::integral::{
     EstimateBlock, Extremes, SELF_TEST_ALLOWED, SelfTest, estimate, planetary_vorticity, self_test,
 };
 use crate::polygon::{BuiltPolygons, build_polygons};
-use crate::report::{Content, ReportTable, read_reports};
+use crate::report::{Content, FileOutcome, ReportTable, read_reports};
 use crate::settings::{Overrides, Settings, read_settings};
 use crate::station::{Network, Position, read_catalogue};
 use crate::tally::Tally;
@@ -132,7 +132,7 @@ pub struct Outcome {
     /// Rows of the files.
     pub rows: Tally,
     /// The same per file.
-    pub files: Vec<(String, Tally)>,
+    pub files: Vec<FileOutcome>,
     /// Repeats taken out.
     pub repeats: Tally,
     /// What became of the reports at the analysis times.
@@ -181,7 +181,7 @@ pub fn run<T: Send>(
 ) -> Result<Outcome, Error> {
     let mut read = read_reports(&setup.settings.reports, &setup.network);
     let (mut table, repeats) = ReportTable::new(&read.rows, setup.network.len());
-    read.rows = crate::report::Rows::default();
+    read.rows = Vec::new();
     check_range(&mut table, &setup.settings.range);
 
     let mut aligner = Aligner::new(&table, &setup.settings.analysis, setup.settings.sensor);

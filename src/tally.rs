@@ -21,14 +21,28 @@ pub enum Reason {
     DirectionOutOfRange,
     /// The speed is below 0.
     NegativeSpeed,
+    /// The text of a METAR or SYNOP report cannot be read.
+    UnreadableReport,
+    /// The position that the row carries is none.
+    UnreadablePosition,
+    /// The direction is magnetic, and the declination is not known.
+    NoDeclination,
+    /// A NIL report: the station says that it has none.
+    Nil,
     /// The station is not in the list.
     UnknownStation,
     /// The station is in the list, but the settings do not ask for it.
     StationNotAskedFor,
+    /// Before or after the time for which the list has the station where it stands.
+    OutsideValidity,
+    /// The other half of a report: speed and direction came separately.
+    Joined,
     /// The same report again.
     Repeated,
     /// A later row of the same station and time says something else, and holds.
     Replaced,
+    /// A correction of the report holds.
+    Corrected,
     /// There is no speed.
     NoSpeed,
     /// There is a speed, but no direction.
@@ -56,10 +70,17 @@ impl Reason {
             Self::UnreadableWind => "unreadable wind",
             Self::DirectionOutOfRange => "direction out of range",
             Self::NegativeSpeed => "negative speed",
+            Self::UnreadableReport => "unreadable report",
+            Self::UnreadablePosition => "unreadable position",
+            Self::NoDeclination => "no declination",
+            Self::Nil => "NIL",
             Self::UnknownStation => "unknown station",
             Self::StationNotAskedFor => "station not asked for",
+            Self::OutsideValidity => "outside the station's validity",
+            Self::Joined => "joined speed and direction",
             Self::Repeated => "repeated",
             Self::Replaced => "replaced by a later row",
+            Self::Corrected => "corrected",
             Self::NoSpeed => "no speed",
             Self::NoDirection => "no direction",
             Self::FailedCheck => "failed a check",
@@ -81,6 +102,9 @@ impl Reason {
                 | Self::UnreadableWind
                 | Self::DirectionOutOfRange
                 | Self::NegativeSpeed
+                | Self::NoDeclination
+                | Self::UnreadablePosition
+                | Self::UnreadableReport
         )
     }
 }

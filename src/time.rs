@@ -3,7 +3,7 @@
 use std::fmt;
 use std::time::Duration;
 
-use chrono::{DateTime, SecondsFormat, Utc};
+use chrono::{DateTime, Datelike, NaiveDateTime, SecondsFormat};
 
 /// An instant in UTC: whole microseconds since 1970-01-01T00:00:00Z (no leap seconds).
 #[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Default)]
@@ -39,16 +39,21 @@ impl Time {
         let time = DateTime::parse_from_rfc3339(text).map_err(|_| {
             format!("`{text}` is not a time (RFC 3339 with its offset from UTC expected, such as 2031-06-14T12:00:00Z)")
         })?;
-        let utc = time.with_timezone(&Utc);
-        if YEARS.contains(&chrono::Datelike::year(&utc)) {
-            Ok(Self(utc.timestamp_micros()))
-        } else {
-            Err(format!(
+        Self::from_utc(time.naive_utc()).ok_or_else(|| {
+            format!(
                 "`{text}` is not in the years {} to {}",
                 YEARS.start(),
                 YEARS.end()
-            ))
-        }
+            )
+        })
+    }
+
+    /// From a calendar time in UTC; `None` outside the years 1800 to 2200, which is a slip of the source.
+    #[must_use]
+    pub fn from_utc(time: NaiveDateTime) -> Option<Self> {
+        YEARS
+            .contains(&time.year())
+            .then(|| Self(time.and_utc().timestamp_micros()))
     }
 }
 

@@ -3,7 +3,7 @@
 use std::time::Duration;
 
 use super::*;
-use crate::report::Rows;
+use crate::report::{Part, Report, Rows};
 use crate::units::FromDirection;
 
 const MINUTE: i64 = 60_000_000;
@@ -14,15 +14,19 @@ fn table(reports: &[(f64, Option<f64>, Option<f64>)]) -> ReportTable {
     for &(minute, speed, direction) in reports {
         #[expect(clippy::cast_possible_truncation, reason = "small test numbers")]
         let time = Time::from_micros((minute * MINUTE as f64) as i64);
-        rows.push(
-            0,
+        rows.push(&Report {
+            station: 0,
             time,
             speed,
-            direction.and_then(FromDirection::new),
-            (0, 1),
-        );
+            direction: direction.and_then(FromDirection::new),
+            part: Part::Whole,
+            gust: None,
+            moving: None,
+            correction: 0,
+            place: (0, 1),
+        });
     }
-    ReportTable::new(&rows, 1).0
+    ReportTable::new(&[rows], 1).0
 }
 
 fn analysis(minutes: u64, method: AlignMethod) -> Analysis {

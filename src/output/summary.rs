@@ -26,7 +26,7 @@ pub fn summary_json(setup: &Setup, outcome: &Outcome) -> String {
     let files: Vec<Value> = outcome
         .files
         .iter()
-        .map(|(file, tally)| json!({ "file": file, "rows": tally }))
+        .map(|f| json!({ "file": f.file, "rows": f.tally }))
         .collect();
     let failures: Vec<String> = outcome.failures.iter().map(ToString::to_string).collect();
     let warnings: Vec<String> = outcome.warnings.iter().map(ToString::to_string).collect();
@@ -108,7 +108,7 @@ fn settings(settings: &Settings) -> Value {
     let reports: Vec<Value> = settings
         .reports
         .iter()
-        .map(|ReportSource { files, format }| json!({ "files": files, "format": format }))
+        .map(|ReportSource { files, format }| json!({ "files": files, "form": format.form, "speed_unit": format.speed_unit.symbol() }))
         .collect();
     json!({
         "station_file": settings.station_file,

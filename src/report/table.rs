@@ -1,5 +1,6 @@
-//! Reports in columns.
+//! Reports in columns, by station and time.
 
+use super::rows::{Moving, Rows, kind};
 use crate::check::Flag;
 use crate::tally::{Reason, Tally};
 use crate::time::Time;
@@ -14,150 +15,102 @@ pub enum Content {
     Calm,
     /// A speed without a direction.
     SpeedOnly,
-    /// Neither.
+    /// Neither, or a direction alone.
     Nothing,
 }
 
-/// Reports in the order of the input, as columns of equal length.
-#[derive(Debug, Default)]
-pub struct Rows {
-    station: Vec<u32>,
-    time: Vec<Time>,
-    /// m/s; 0 where there is none.
-    speed: Vec<f64>,
-    /// Degrees; 0 where there is none.
-    direction: Vec<f64>,
-    content: Vec<Content>,
-    file: Vec<u32>,
-    line: Vec<u32>,
+/// Two rows of the same station and time that say different things.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub struct Conflict {
+    /// Place of the station in the network.
+    pub station: u32,
+    /// The time of both.
+    pub time: Time,
+    /// File and line of the row set aside.
+    pub set_aside: (u16, u32),
+    /// File and line of the row that holds.
+    pub holds: (u16, u32),
 }
 
-impl Rows {
-    /// Adds a report of station `station` (its place in the network).
-    pub fn push(
-        &mut self,
-        station: u32,
-        time: Time,
-        speed: Option<f64>,
-        direction: Option<FromDirection>,
-        place: (u32, u64),
-    ) {
-        let content = match (speed, direction) {
-            // Common practice: no speed is calm, whatever stands for the direction.
-            (Some(0.0), _) => Content::Calm,
-            (Some(_), Some(_)) => Content::Wind,
-            (Some(_), None) => Content::SpeedOnly,
-            (None, _) => Content::Nothing,
-        };
-        self.station.push(station);
-        self.time.push(time);
-        self.speed.push(speed.unwrap_or(0.0));
-        self.direction
-            .push(direction.map_or(0.0, FromDirection::degrees));
-        self.content.push(content);
-        self.file.push(place.0);
-        self.line.push(u32::try_from(place.1).unwrap_or(u32::MAX));
-    }
+/// Conflicts that are kept with their places; the others are only counted.
+const CONFLICTS_KEPT: usize = 100;
 
-    /// Adds rows that come later in the input.
-    pub fn append(&mut self, mut later: Self) {
-        self.station.append(&mut later.station);
-        self.time.append(&mut later.time);
-        self.speed.append(&mut later.speed);
-        self.direction.append(&mut later.direction);
-        self.content.append(&mut later.content);
-        self.file.append(&mut later.file);
-        self.line.append(&mut later.line);
-    }
-
-    /// How many there are.
-    #[must_use]
-    pub fn len(&self) -> usize {
-        self.time.len()
-    }
-
-    /// True if there are none.
-    #[must_use]
-    pub fn is_empty(&self) -> bool {
-        self.time.is_empty()
-    }
-
-    fn same_wind(&self, a: usize, b: usize) -> bool {
-        self.content[a] == self.content[b]
-            && self.speed[a].to_bits() == self.speed[b].to_bits()
-            && self.direction[a].to_bits() == self.direction[b].to_bits()
-    }
-}
-
-/// The values of a column at these places.
-fn gather<T: Copy>(column: &[T], places: &[u32]) -> Vec<T> {
-    places.iter().map(|&i| column[i as usize]).collect()
-}
-
-/// Reports sorted by station and time, each station and time once.
+/// Reports sorted by station, time and level, each of these once.
 #[derive(Debug)]
 pub struct ReportTable {
     rows: Rows,
     flag: Vec<Flag>,
     /// Station s has the rows `starts[s]..starts[s + 1]`.
     starts: Vec<usize>,
+    conflicts: Vec<Conflict>,
+}
+
+/// A row among several [`Rows`].
+#[derive(Debug, Clone, Copy)]
+struct At {
+    part: u32,
+    row: u32,
 }
 
 impl ReportTable {
-    /// Sorts rows by station, then time. Of rows with the same station and time the last of the input holds; the
-    /// others are set aside as [`Reason::Repeated`] if they say the same, [`Reason::Replaced`] if not.
+    /// Sorts rows by station, then time and level. `parts` follow each other in the order of the input; `stations` is
+    /// the number of stations in the network; the tally is of rows. Of rows with the same station, time and level one
+    /// holds, the others are set aside:
     ///
-    /// `stations` is the number of stations in the network; the tally is of rows.
+    /// - speed and direction from different inputs become one report ([`Reason::Joined`]);
+    /// - the highest correction holds ([`Reason::Corrected`]);
+    /// - else the last of the input; the others are [`Reason::Repeated`] if they say the same, [`Reason::Replaced`] if
+    ///   not, and the first of these are listed as conflicts.
     #[must_use]
-    pub fn new(rows: &Rows, stations: usize) -> (Self, Tally) {
-        let mut order: Vec<u32> = (0..u32::try_from(rows.len()).unwrap_or(u32::MAX)).collect();
-        // Stable: the order of the input remains among equals. Files in time order are nearly sorted runs, which the
-        // standard sort makes use of.
-        order.sort_by_key(|&i| {
-            let i = i as usize; // an index of `rows`
-            (rows.station[i], rows.time[i])
-        });
-
-        let mut tally = Tally::default();
-        let mut kept: Vec<u32> = Vec::with_capacity(order.len());
-        for &i in &order {
-            if let Some(last) = kept.last_mut() {
-                let (a, b) = (*last as usize, i as usize);
-                if rows.station[a] == rows.station[b] && rows.time[a] == rows.time[b] {
-                    let reason = if rows.same_wind(a, b) {
-                        Reason::Repeated
-                    } else {
-                        Reason::Replaced
-                    };
-                    tally.set_aside(reason, 1);
-                    *last = i;
-                    continue;
-                }
-            }
-            kept.push(i);
-        }
-        tally.pass(kept.len() as u64);
-
-        let mut counts = vec![0_usize; stations + 1];
-        for &i in &kept {
-            counts[rows.station[i as usize] as usize + 1] += 1; // stations are < `stations`
+    pub fn new(parts: &[Rows], stations: usize) -> (Self, Tally) {
+        let mut starts = vec![0_usize; stations + 1];
+        for &station in parts.iter().flat_map(|p| &p.station) {
+            starts[station as usize + 1] += 1; // stations are < `stations`
         }
         for s in 0..stations {
-            counts[s + 1] += counts[s];
+            starts[s + 1] += starts[s];
         }
-        let sorted = Rows {
-            station: gather(&rows.station, &kept),
-            time: gather(&rows.time, &kept),
-            speed: gather(&rows.speed, &kept),
-            direction: gather(&rows.direction, &kept),
-            content: gather(&rows.content, &kept),
-            file: gather(&rows.file, &kept),
-            line: gather(&rows.line, &kept),
+        // The order of the input within each station.
+        let mut next = starts.clone();
+        let mut order = vec![At { part: 0, row: 0 }; starts[stations]];
+        for (part, rows) in (0..).zip(parts) {
+            for (row, &station) in (0..).zip(&rows.station) {
+                let slot = &mut next[station as usize];
+                order[*slot] = At { part, row };
+                *slot += 1;
+            }
+        }
+
+        let mut builder = TableBuilder {
+            parts,
+            out: Rows::with_capacity(order.len()),
+            tally: Tally::default(),
+            conflicts: Vec::new(),
         };
+        let mut sorted_starts = vec![0];
+        for s in 0..stations {
+            let of_station = &mut order[starts[s]..starts[s + 1]];
+            let key = |at: &At| builder.key(*at);
+            if !of_station.is_sorted_by_key(key) {
+                of_station.sort_by(|a, b| {
+                    let (a, b) = (builder.key(*a), builder.key(*b));
+                    a.partial_cmp(&b).unwrap_or(std::cmp::Ordering::Equal)
+                });
+            }
+            builder.station(of_station);
+            sorted_starts.push(builder.out.len());
+        }
+        let TableBuilder {
+            out,
+            tally,
+            conflicts,
+            ..
+        } = builder;
         let table = Self {
-            flag: vec![Flag::NotEvaluated; sorted.len()],
-            rows: sorted,
-            starts: counts,
+            flag: vec![Flag::NotEvaluated; out.len()],
+            rows: out,
+            starts: sorted_starts,
+            conflicts,
         };
         (table, tally)
     }
@@ -195,19 +148,26 @@ impl ReportTable {
     /// What report `i` says.
     #[must_use]
     pub fn content(&self, i: usize) -> Content {
-        self.rows.content[i]
+        let (speed, kind) = (self.rows.speed[i], self.rows.kind[i]);
+        match kind & (kind::SPEED | kind::DIRECTION) {
+            // Common practice: no speed is calm, whatever stands for the direction.
+            both if both & kind::SPEED != 0 && speed <= 0.0 => Content::Calm,
+            kind::SPEED => Content::SpeedOnly,
+            0 | kind::DIRECTION => Content::Nothing,
+            _ => Content::Wind,
+        }
     }
 
     /// Speed of report `i`, m/s.
     #[must_use]
     pub fn speed(&self, i: usize) -> Option<f64> {
-        (self.rows.content[i] != Content::Nothing).then(|| self.rows.speed[i])
+        (self.rows.kind[i] & kind::SPEED != 0).then(|| self.rows.speed[i])
     }
 
     /// Direction of report `i`; calm has none.
     #[must_use]
     pub fn direction(&self, i: usize) -> Option<FromDirection> {
-        match self.rows.content[i] {
+        match self.content(i) {
             Content::Wind => FromDirection::new(self.rows.direction[i]),
             _ => None,
         }
@@ -216,7 +176,7 @@ impl ReportTable {
     /// Wind vector of report `i`; calm is the zero vector.
     #[must_use]
     pub fn wind(&self, i: usize) -> Option<Wind> {
-        match self.rows.content[i] {
+        match self.content(i) {
             Content::Calm => Some(Wind::default()),
             Content::Wind => FromDirection::new(self.rows.direction[i])
                 .map(|from| Wind::blowing_from(self.rows.speed[i], from)),
@@ -224,9 +184,27 @@ impl ReportTable {
         }
     }
 
+    /// Gust of report `i`, m/s.
+    #[must_use]
+    pub fn gust(&self, i: usize) -> Option<f64> {
+        self.rows.gust.get(i).copied().flatten()
+    }
+
+    /// Position and level that report `i` carries itself.
+    #[must_use]
+    pub fn moving(&self, i: usize) -> Option<Moving> {
+        self.rows.moving.get(i).copied().flatten()
+    }
+
+    /// True if any report carries its own position or level.
+    #[must_use]
+    pub fn has_moving(&self) -> bool {
+        !self.rows.moving.is_empty()
+    }
+
     /// Place of report `i` in the input: number of the file as read, line.
     #[must_use]
-    pub fn origin(&self, i: usize) -> (u32, u32) {
+    pub fn origin(&self, i: usize) -> (u16, u32) {
         (self.rows.file[i], self.rows.line[i])
     }
 
@@ -241,6 +219,12 @@ impl ReportTable {
         self.flag[i] = self.flag[i].worst(flag);
     }
 
+    /// The first rows that say different things of the same station and time.
+    #[must_use]
+    pub fn conflicts(&self) -> &[Conflict] {
+        &self.conflicts
+    }
+
     /// First and last time of all reports.
     #[must_use]
     pub fn period(&self) -> Option<(Time, Time)> {
@@ -250,40 +234,276 @@ impl ReportTable {
     }
 }
 
+struct TableBuilder<'a> {
+    parts: &'a [Rows],
+    out: Rows,
+    tally: Tally,
+    conflicts: Vec<Conflict>,
+}
+
+impl TableBuilder<'_> {
+    /// What rows are sorted by; reports without a level come first.
+    fn key(&self, at: At) -> (Time, f64) {
+        let rows = &self.parts[at.part as usize];
+        let row = at.row as usize;
+        let moving = rows.moving.get(row).copied().flatten();
+        let level = moving.and_then(|m| m.level).unwrap_or(f64::NEG_INFINITY);
+        (rows.time[row], level)
+    }
+
+    fn kind(&self, at: At) -> u8 {
+        self.parts[at.part as usize].kind[at.row as usize]
+    }
+
+    fn correction(&self, at: At) -> u8 {
+        let column = &self.parts[at.part as usize].correction;
+        column.get(at.row as usize).copied().unwrap_or(0)
+    }
+
+    fn place(&self, at: At) -> (u16, u32) {
+        let rows = &self.parts[at.part as usize];
+        (rows.file[at.row as usize], rows.line[at.row as usize])
+    }
+
+    fn same_wind(&self, a: At, b: At) -> bool {
+        let value = |at: At| {
+            let rows = &self.parts[at.part as usize];
+            let row = at.row as usize;
+            (
+                rows.kind[row],
+                rows.speed[row].to_bits(),
+                rows.direction[row].to_bits(),
+            )
+        };
+        value(a) == value(b)
+    }
+
+    /// Adds the reports of a station, sorted.
+    fn station(&mut self, order: &[At]) {
+        let mut start = 0;
+        while start < order.len() {
+            let key = self.key(order[start]);
+            let mut end = start + 1;
+            while end < order.len() && self.key(order[end]) == key {
+                end += 1;
+            }
+            self.group(&order[start..end]);
+            start = end;
+        }
+    }
+
+    /// Adds the one report of rows with the same station, time and level.
+    fn group(&mut self, group: &[At]) {
+        if let [one] = group {
+            self.keep(*one, None);
+            return;
+        }
+        let of = |part: u8| -> Vec<At> {
+            let parts = kind::SPEED_PART | kind::DIRECTION_PART;
+            group
+                .iter()
+                .copied()
+                .filter(|&at| self.kind(at) & parts == part)
+                .collect()
+        };
+        let (whole, speeds, directions) = (of(0), of(kind::SPEED_PART), of(kind::DIRECTION_PART));
+        let speed = self.one_of(&speeds);
+        let direction = self.one_of(&directions);
+        match (self.one_of(&whole), speed, direction) {
+            (Some(whole), speed, direction) => {
+                let parts = u64::from(speed.is_some()) + u64::from(direction.is_some());
+                self.tally.set_aside(Reason::Replaced, parts);
+                self.keep(whole, None);
+            }
+            (None, Some(speed), direction) => {
+                self.tally
+                    .set_aside(Reason::Joined, u64::from(direction.is_some()));
+                self.keep(speed, direction);
+            }
+            (None, None, Some(direction)) => self.keep(direction, None),
+            (None, None, None) => {}
+        }
+    }
+
+    /// The row that holds among rows of one kind; the others are set aside.
+    fn one_of(&mut self, rows: &[At]) -> Option<At> {
+        let mut holds = *rows.first()?;
+        for &row in rows.get(1..)? {
+            let (old, new) = (self.correction(holds), self.correction(row));
+            let (out, reason) = match new.cmp(&old) {
+                std::cmp::Ordering::Less => (row, Reason::Corrected),
+                std::cmp::Ordering::Greater => (holds, Reason::Corrected),
+                std::cmp::Ordering::Equal if self.same_wind(holds, row) => {
+                    (holds, Reason::Repeated)
+                }
+                std::cmp::Ordering::Equal => (holds, Reason::Replaced),
+            };
+            self.tally.set_aside(reason, 1);
+            if new >= old {
+                holds = row;
+            }
+            if reason == Reason::Replaced && self.conflicts.len() < CONFLICTS_KEPT {
+                let rows = &self.parts[row.part as usize];
+                self.conflicts.push(Conflict {
+                    station: rows.station[row.row as usize],
+                    time: rows.time[row.row as usize],
+                    set_aside: self.place(out),
+                    holds: self.place(holds),
+                });
+            }
+        }
+        Some(holds)
+    }
+
+    /// Adds a row to the table, with the direction of another one if given.
+    fn keep(&mut self, at: At, direction: Option<At>) {
+        self.tally.pass(1);
+        let (rows, row) = (&self.parts[at.part as usize], at.row as usize);
+        let before = self.out.len();
+        let mut kind = rows.kind[row] & (kind::SPEED | kind::DIRECTION);
+        let mut degrees = rows.direction[row];
+        if let Some(at) = direction {
+            let (rows, row) = (&self.parts[at.part as usize], at.row as usize);
+            kind |= rows.kind[row] & kind::DIRECTION;
+            degrees = rows.direction[row];
+        }
+        let out = &mut self.out;
+        out.station.push(rows.station[row]);
+        out.time.push(rows.time[row]);
+        out.speed.push(rows.speed[row]);
+        out.direction.push(degrees);
+        out.kind.push(kind);
+        out.file.push(rows.file[row]);
+        out.line.push(rows.line[row]);
+        if let Some(&gust) = rows.gust.get(row) {
+            out.gust.resize(before, None);
+            out.gust.push(gust);
+        }
+        if let Some(&moving) = rows.moving.get(row) {
+            out.moving.resize(before, None);
+            out.moving.push(moving);
+        }
+    }
+}
+
 #[cfg(test)]
 mod tests {
+    use super::super::rows::{Part, Report};
     use super::*;
 
-    fn row(rows: &mut Rows, station: u32, second: i64, speed: f64) {
-        let line = rows.len() as u64;
-        let from = FromDirection::new(90.0);
-        rows.push(
+    fn report(station: u32, second: i64, speed: Option<f64>, part: Part) -> Report {
+        Report {
             station,
-            Time::from_micros(second * 1_000_000),
-            Some(speed),
-            from,
-            (0, line),
-        );
+            time: Time::from_micros(second * 1_000_000),
+            speed,
+            direction: FromDirection::new(90.0).filter(|_| part != Part::Speed),
+            part,
+            gust: None,
+            moving: None,
+            correction: 0,
+            place: (0, 1),
+        }
+    }
+
+    fn table(reports: &[Report]) -> (ReportTable, Tally) {
+        let mut rows = Rows::default();
+        for (line, report) in (1..).zip(reports) {
+            rows.push(&Report {
+                place: (0, line),
+                ..*report
+            });
+        }
+        // Cut anywhere: parts follow each other.
+        let mut first = Rows::default();
+        if let Some(one) = reports.first() {
+            first.push(&Report {
+                place: (0, 1),
+                ..*one
+            });
+            rows = Rows::default();
+            for (line, report) in (2..).zip(&reports[1..]) {
+                rows.push(&Report {
+                    place: (0, line),
+                    ..*report
+                });
+            }
+        }
+        let (table, tally) = ReportTable::new(&[first, rows], 3);
+        assert!(tally.balances());
+        assert_eq!(tally.received, reports.len() as u64);
+        assert_eq!(tally.passed, table.len() as u64);
+        (table, tally)
     }
 
     #[test]
     fn sorts_and_counts_repeats() {
-        let mut rows = Rows::default();
-        row(&mut rows, 1, 20, 1.0);
-        row(&mut rows, 0, 10, 2.0);
-        row(&mut rows, 1, 10, 3.0);
-        row(&mut rows, 1, 20, 1.0); // the same again
-        row(&mut rows, 0, 10, 4.0); // another speed: this one holds
-        let (table, tally) = ReportTable::new(&rows, 3);
-        assert_eq!(tally.received, 5);
+        let (table, tally) = table(&[
+            report(1, 20, Some(1.0), Part::Whole),
+            report(0, 10, Some(2.0), Part::Whole),
+            report(1, 10, Some(3.0), Part::Whole),
+            report(1, 20, Some(1.0), Part::Whole), // the same again
+            report(0, 10, Some(4.0), Part::Whole), // another speed: this one holds
+        ]);
         assert_eq!(tally.count(Reason::Repeated), 1);
         assert_eq!(tally.count(Reason::Replaced), 1);
-        assert!(tally.balances());
         assert_eq!(table.of_station(0), 0..1);
         assert_eq!(table.of_station(1), 1..3);
         assert_eq!(table.of_station(2), 3..3);
         assert_eq!(table.speed(0), Some(4.0));
-        assert_eq!(table.origin(0), (0, 4));
+        assert_eq!(table.origin(0), (0, 5));
         assert!(table.times()[1] < table.times()[2]);
+        let conflict = table.conflicts()[0];
+        assert_eq!((conflict.set_aside, conflict.holds), ((0, 2), (0, 5)));
+    }
+
+    #[test]
+    fn a_correction_holds_wherever_it_stands() {
+        let corrected = Report {
+            correction: 2,
+            ..report(0, 10, Some(7.0), Part::Whole)
+        };
+        let first = Report {
+            correction: 1,
+            ..report(0, 10, Some(6.0), Part::Whole)
+        };
+        let (table, tally) = table(&[corrected, report(0, 10, Some(5.0), Part::Whole), first]);
+        assert_eq!(table.speed(0), Some(7.0));
+        assert_eq!(tally.count(Reason::Corrected), 2);
+        assert!(table.conflicts().is_empty());
+    }
+
+    #[test]
+    fn speed_and_direction_of_two_files_become_one_report() {
+        let (table, tally) = table(&[
+            report(0, 10, Some(5.0), Part::Speed),
+            report(0, 20, Some(6.0), Part::Speed),
+            report(0, 10, None, Part::Direction),
+            report(0, 30, None, Part::Direction),
+        ]);
+        assert_eq!(tally.count(Reason::Joined), 1);
+        assert_eq!(table.content(0), Content::Wind);
+        assert_eq!(table.content(1), Content::SpeedOnly);
+        assert_eq!(table.content(2), Content::Nothing);
+    }
+
+    #[test]
+    fn levels_are_different_reports() {
+        let at = |level| Report {
+            moving: Some(Moving {
+                position: None,
+                level: Some(level),
+            }),
+            ..report(0, 10, Some(level), Part::Whole)
+        };
+        let (table, _) = table(&[
+            at(850.0),
+            at(1000.0),
+            at(850.0),
+            report(0, 10, Some(1.0), Part::Whole),
+        ]);
+        let levels: Vec<Option<f64>> = (0..table.len())
+            .map(|i| table.moving(i).and_then(|m| m.level))
+            .collect();
+        assert_eq!(levels, [None, Some(850.0), Some(1000.0)]);
     }
 }

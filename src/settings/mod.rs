@@ -4,6 +4,7 @@
 //! are listed at once, each with its line; an unknown key is a defect.
 
 mod read;
+mod reports;
 mod section;
 
 use std::path::PathBuf;

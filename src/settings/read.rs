@@ -3,13 +3,13 @@
 use std::path::{Path, PathBuf};
 use std::time::Duration;
 
+use super::reports::reports;
 use super::section::{Document, Section};
 use super::{
     AlignMethod, Analysis, PolygonChoice, PolygonLimits, RangeLimits, RegionParts, RegionSettings,
-    ReportSource, RingSettings, SensorErrors, Settings,
+    RingSettings, SensorErrors, Settings,
 };
-use crate::error::{Error, Place, Problem};
-use crate::report::{ReportFormat, WindColumns};
+use crate::error::{Error, Problem};
 use crate::station::{Catalogue, StationColumns};
 use crate::time::Time;
 use crate::units;
@@ -114,106 +114,6 @@ fn catalogue(section: &mut Section) -> Catalogue {
         columns: catalogue_columns,
         elevation_unit: elevation_unit.unwrap_or(1.0),
         only: section.value("only").map(|f| f.value),
-    }
-}
-
-fn reports(root: &mut Section, base: &Path, instead: &[PathBuf]) -> Vec<ReportSource> {
-    let mut sources = Vec::new();
-    for mut section in root.sections("reports") {
-        let format = report_format(&mut section);
-        let files: Vec<PathBuf> = match section.required::<Vec<toml::Spanned<String>>>("files") {
-            Some(found) if instead.is_empty() => expand(&section, base, &found.value, &found.place),
-            _ => Vec::new(),
-        };
-        section.finish();
-        sources.push(ReportSource { files, format });
-    }
-    if !instead.is_empty() {
-        sources.truncate(1);
-        match sources.first_mut() {
-            Some(first) => first.files = instead.to_vec(),
-            None => root.missing("[[reports]]"),
-        }
-    }
-    sources
-}
-
-/// Resolves names and globs; each must match at least one file.
-fn expand(
-    section: &Section,
-    base: &Path,
-    patterns: &[toml::Spanned<String>],
-    place: &Place,
-) -> Vec<PathBuf> {
-    let mut files = Vec::new();
-    for pattern in patterns {
-        let pattern = pattern.get_ref();
-        let full = base.join(pattern);
-        if full.is_file() {
-            files.push(full);
-            continue;
-        }
-        match glob::glob(&full.to_string_lossy()) {
-            Ok(paths) => {
-                let before = files.len();
-                // Sorted by the glob itself; what cannot be looked at is reported when it is read.
-                files.extend(paths.filter_map(Result::ok).filter(|p| p.is_file()));
-                if files.len() == before {
-                    section.problem(
-                        place.clone(),
-                        format!("`{}` matches no file", full.display()),
-                    );
-                }
-            }
-            Err(error) => section.problem(
-                place.clone(),
-                format!("`{pattern}` is not a pattern of file names: {error}"),
-            ),
-        }
-    }
-    files
-}
-
-fn report_format(section: &mut Section) -> ReportFormat {
-    let mut columns = section.section("columns");
-    let place = columns.place();
-    let text = |columns: &mut Section, key| columns.value::<String>(key).map(|f| f.value);
-    let station = text(&mut columns, "station");
-    let time = text(&mut columns, "time");
-    let direction = text(&mut columns, "direction");
-    let speed = text(&mut columns, "speed");
-    let eastward = text(&mut columns, "eastward");
-    let northward = text(&mut columns, "northward");
-    let wind = match (direction, speed, eastward, northward) {
-        (direction, speed, None, None) => WindColumns::DirectionSpeed {
-            direction: direction.unwrap_or_else(|| "direction".into()),
-            speed: speed.unwrap_or_else(|| "speed".into()),
-        },
-        (None, None, Some(eastward), Some(northward)) => WindColumns::Components {
-            eastward,
-            northward,
-        },
-        (..) => {
-            columns.problem(
-                place,
-                "either `direction` and `speed`, or `eastward` and `northward` are expected",
-            );
-            WindColumns::DirectionSpeed {
-                direction: "direction".into(),
-                speed: "speed".into(),
-            }
-        }
-    };
-    columns.finish();
-    ReportFormat {
-        station: station.unwrap_or_else(|| "station".into()),
-        time: time.unwrap_or_else(|| "time".into()),
-        wind,
-        speed_unit: section.parsed("speed_unit", str::parse).unwrap_or_default(),
-        missing: section
-            .value("missing")
-            .map(|f| f.value)
-            .unwrap_or_default(),
     }
 }
 

@@ -40,6 +40,7 @@ impl<'a> Document<'a> {
             at: 0,
             table: table.into_inner(),
             asked: Vec::new(),
+            taken: Vec::new(),
         }
     }
 
@@ -78,6 +79,7 @@ pub(super) struct Section<'d> {
     at: usize,
     table: DeTable<'d>,
     asked: Vec<&'static str>,
+    taken: Vec<&'static str>,
 }
 
 impl<'d> Section<'d> {
@@ -91,7 +93,11 @@ impl<'d> Section<'d> {
 
     fn take(&mut self, key: &'static str) -> Option<Spanned<DeValue<'d>>> {
         self.asked.push(key);
-        self.table.remove(key)
+        let value = self.table.remove(key);
+        if value.is_some() {
+            self.taken.push(key);
+        }
+        value
     }
 
     /// A value of any type that serde reads; `None` if absent or defective.
@@ -168,6 +174,24 @@ impl<'d> Section<'d> {
         None
     }
 
+    /// One of a few words.
+    pub(super) fn choice<T: Clone, const N: usize>(
+        &mut self,
+        key: &'static str,
+        choices: &[(&str, T); N],
+    ) -> Option<T> {
+        self.parsed(key, |text| {
+            let chosen = choices.iter().find(|(word, _)| *word == text);
+            chosen.map(|(_, value)| value.clone()).ok_or_else(|| {
+                let words: Vec<String> = choices
+                    .iter()
+                    .map(|(word, _)| format!("`{word}`"))
+                    .collect();
+                format!("`{text}` is none of {}", words.join(", "))
+            })
+        })
+    }
+
     /// Reports a defect at a place of this file.
     pub(super) fn problem(&self, place: Place, message: impl Into<String>) {
         self.document
@@ -176,8 +200,9 @@ impl<'d> Section<'d> {
             .push(Problem::new(place, message));
     }
 
+    /// True if the key is in the file, read already or not.
     pub(super) fn has(&self, key: &str) -> bool {
-        self.table.contains_key(key)
+        self.table.contains_key(key) || self.taken.contains(&key)
     }
 
     /// The place of this section's start.
@@ -199,6 +224,7 @@ impl<'d> Section<'d> {
             at,
             table,
             asked: Vec::new(),
+            taken: Vec::new(),
         }
     }
 
@@ -227,6 +253,7 @@ impl<'d> Section<'d> {
                     at,
                     table,
                     asked: Vec::new(),
+                    taken: Vec::new(),
                 }
             })
             .collect()

@@ -272,10 +272,9 @@ impl List<'_> {
             .unwrap_or(&id)
             .to_string();
         Some(Station {
-            id,
             name,
-            position,
             elevation: elevation.map(|e| e * self.elevation_unit),
+            ..Station::new(id, position)
         })
     }
 }

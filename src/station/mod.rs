@@ -1,15 +1,19 @@
 //! Stations and the network they make.
 
 mod catalogue;
+mod declination;
 
 use std::collections::HashMap;
 
 use geographiclib_rs::{Geodesic, InverseGeodesic};
 
+use crate::time::Time;
+use crate::units::SpeedUnit;
 use crate::warning::Warning;
 
 pub(crate) use catalogue::missing_column;
 pub use catalogue::{Catalogue, StationColumns, read_catalogue};
+pub use declination::Declinations;
 
 /// Geodetic position on WGS 84, degrees: latitude in [-90, 90], longitude in [-180, 180).
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -76,10 +80,49 @@ pub struct Station {
     pub id: String,
     /// Name for people; the identifier where none is given.
     pub name: String,
+    /// Other identifiers that reports may use.
+    pub aliases: Vec<String>,
     /// Where it stands.
     pub position: Position,
     /// Height of the ground above mean sea level, m.
     pub elevation: Option<f64>,
+    /// From when on it stands there, if it moved.
+    pub valid_from: Option<Time>,
+    /// Until when, exclusive, it stands there, if it moved.
+    pub valid_to: Option<Time>,
+    /// Sensor and site.
+    pub site: Site,
+}
+
+impl Station {
+    /// A station of which only identifier and position are known.
+    #[must_use]
+    pub fn new(id: impl Into<String>, position: Position) -> Self {
+        let id = id.into();
+        Self {
+            name: id.clone(),
+            id,
+            aliases: Vec::new(),
+            position,
+            elevation: None,
+            valid_from: None,
+            valid_to: None,
+            site: Site::default(),
+        }
+    }
+}
+
+/// What the list says of a station's sensor and site.
+#[derive(Debug, Clone, Copy, Default, PartialEq)]
+pub struct Site {
+    /// Unit of its speeds, where it differs from that of the files.
+    pub speed_unit: Option<SpeedUnit>,
+    /// Magnetic declination, degrees, east positive: true = magnetic + declination.
+    pub declination: Option<f64>,
+    /// Height of the sensor above the ground, m.
+    pub sensor_height: Option<f64>,
+    /// Roughness length of its surroundings, m.
+    pub roughness: Option<f64>,
 }
 
 /// Stations nearer to each other than this count as one place (m): no polygon can use both. Common practice: the

@@ -19,12 +19,10 @@ pub const NO_LIMITS: PolygonLimits = PolygonLimits {
 
 /// A network of stations `S000`, `S001`, ... at (latitude, longitude).
 pub fn network(points: &[(f64, f64)]) -> Network {
-    let stations = points.iter().enumerate().map(|(k, &(lat, lon))| Station {
-        id: format!("S{k:03}"),
-        name: format!("S{k:03}"),
-        position: Position::new(lat, lon).unwrap(),
-        elevation: None,
-    });
+    let stations = points
+        .iter()
+        .enumerate()
+        .map(|(k, &(lat, lon))| Station::new(format!("S{k:03}"), Position::new(lat, lon).unwrap()));
     Network::new(stations.collect())
 }
 

@@ -1,8 +1,4 @@
-//! Numbers and times from bytes: a fast path for the usual form, the exact library for the rest.
-
-use chrono::NaiveDate;
-
-use crate::time::Time;
+//! Numbers from bytes: a fast path for the usual form, the exact library for the rest.
 
 /// Powers of ten that are exact in f64.
 const POWERS: [f64; 16] = [
@@ -13,7 +9,7 @@ const POWERS: [f64; 16] = [
 ///
 /// Up to 15 digits without exponent are one integer divided by one exact power of ten: correctly rounded (Clinger
 /// 1990, How to read floating point numbers accurately). Anything else goes to `fast-float2`.
-pub(super) fn parse_number(text: &[u8]) -> Option<f64> {
+pub(crate) fn parse_number(text: &[u8]) -> Option<f64> {
     let (negative, digits) = match text {
         [b'-', rest @ ..] => (true, rest),
         _ => (false, text),
@@ -44,56 +40,20 @@ fn parse_any(text: &[u8]) -> Option<f64> {
     value.is_finite().then_some(value)
 }
 
-/// Reads RFC 3339 times; remembers the last date, since most rows share it with the row before.
-#[derive(Debug, Default)]
-pub(super) struct TimeReader {
-    date: [u8; 10],
-    /// Midnight of that date, s.
-    midnight: i64,
-    known: bool,
-}
-
-impl TimeReader {
-    pub(super) fn parse(&mut self, text: &[u8]) -> Result<Time, String> {
-        if let Some(time) = self.fast(text) {
-            return Ok(time);
+/// The same with a decimal comma.
+pub(crate) fn parse_number_with_comma(text: &[u8]) -> Option<f64> {
+    // Longer than any number worth reading.
+    let mut buffer = [0_u8; 48];
+    let copy = buffer.get_mut(..text.len())?;
+    copy.copy_from_slice(text);
+    for byte in copy.iter_mut() {
+        match *byte {
+            b',' => *byte = b'.',
+            b'.' => return None,
+            _ => {}
         }
-        Time::parse_rfc3339(&String::from_utf8_lossy(text))
     }
-
-    /// `YYYY-MM-DDThh:mm:ssZ` and nothing else.
-    fn fast(&mut self, text: &[u8]) -> Option<Time> {
-        let text: &[u8; 20] = text.try_into().ok()?;
-        let (date, clock) = text.split_first_chunk::<10>()?;
-        let &[b'T', h1, h2, b':', m1, m2, b':', s1, s2, b'Z'] = clock else {
-            return None;
-        };
-        let two = |a: u8, b: u8| {
-            let (a, b) = (a.wrapping_sub(b'0'), b.wrapping_sub(b'0'));
-            (a < 10 && b < 10).then(|| i64::from(a) * 10 + i64::from(b))
-        };
-        let (hour, minute, second) = (two(h1, h2)?, two(m1, m2)?, two(s1, s2)?);
-        if hour > 23 || minute > 59 || second > 59 {
-            return None;
-        }
-        if !self.known || *date != self.date {
-            self.learn(date)?;
-        }
-        Some(Time::from_micros(
-            (self.midnight + hour * 3600 + minute * 60 + second) * 1_000_000,
-        ))
-    }
-
-    fn learn(&mut self, date: &[u8; 10]) -> Option<()> {
-        // The library checks the date and its year; midnight is all that is kept.
-        let text = std::str::from_utf8(date).ok()?;
-        NaiveDate::parse_from_str(text, "%Y-%m-%d").ok()?;
-        let midnight = Time::parse_rfc3339(&format!("{text}T00:00:00Z")).ok()?;
-        self.midnight = midnight.micros() / 1_000_000;
-        self.date = *date;
-        self.known = true;
-        Some(())
-    }
+    parse_number(copy)
 }
 
 #[cfg(test)]
@@ -106,11 +66,6 @@ mod tests {
         #[test]
         fn numbers_equal_the_standard_library(text in "-?[0-9]{0,12}(\\.[0-9]{0,6})?(e-?[0-9]{1,2})?") {
             prop_assert_eq!(parse_number(text.as_bytes()), text.parse::<f64>().ok().filter(|x| x.is_finite()));
-        }
-
-        #[test]
-        fn times_equal_the_library(text in "[0-9]{4}-[01][0-9]-[0-3][0-9]T[0-2][0-9]:[0-6][0-9]:[0-6][0-9]Z") {
-            prop_assert_eq!(TimeReader::default().parse(text.as_bytes()).ok(), Time::parse_rfc3339(&text).ok());
         }
     }
 
@@ -127,5 +82,13 @@ mod tests {
         ] {
             assert_eq!(parse_number(bad.as_bytes()), None, "{bad}");
         }
+    }
+
+    #[test]
+    fn a_decimal_comma_is_a_point_and_a_point_is_none() {
+        assert_eq!(parse_number_with_comma(b"12,5"), Some(12.5));
+        assert_eq!(parse_number_with_comma(b"-3"), Some(-3.0));
+        assert_eq!(parse_number_with_comma(b"12.5"), None);
+        assert_eq!(parse_number_with_comma(b"1,2,3"), None);
     }
 }

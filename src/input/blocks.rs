@@ -9,7 +9,7 @@ const LONGEST_LINE: usize = 1 << 20;
 
 /// Whole lines of an input.
 #[derive(Debug, Default)]
-pub(super) struct Block {
+pub(crate) struct Block {
     /// The bytes; the last line may lack its line end only at the end of the input.
     pub bytes: Vec<u8>,
     /// Number of the first line, from 1.
@@ -19,26 +19,34 @@ pub(super) struct Block {
 }
 
 /// Reads an input block by block.
-pub(super) struct Blocks<R> {
+pub(crate) struct Blocks<R> {
     input: R,
+    /// The start of a line whose end was not read yet.
     rest: Vec<u8>,
+    /// Buffers given back.
+    spare: Vec<Vec<u8>>,
     line: u64,
     ended: bool,
 }
 
 impl<R: Read> Blocks<R> {
-    pub(super) fn new(input: R) -> Self {
+    pub(crate) fn new(input: R) -> Self {
         Self {
             input,
             rest: Vec::new(),
+            spare: Vec::new(),
             line: 1,
             ended: false,
         }
     }
 
     /// The next block; `None` at the end of the input.
-    pub(super) fn next_block(&mut self) -> io::Result<Option<Block>> {
-        let mut bytes = std::mem::take(&mut self.rest);
+    pub(crate) fn next_block(&mut self) -> io::Result<Option<Block>> {
+        let mut bytes = self.spare.pop().unwrap_or_default();
+        bytes.clear();
+        // One allocation for the whole block; the size never grows beyond it.
+        bytes.reserve_exact(BLOCK);
+        bytes.append(&mut self.rest);
         loop {
             if !self.ended && bytes.len() < BLOCK {
                 let want = (BLOCK - bytes.len()) as u64;
@@ -49,7 +57,8 @@ impl<R: Read> Blocks<R> {
                 return Ok((!bytes.is_empty()).then(|| self.block(bytes, None)));
             }
             if let Some(end) = memchr::memrchr(b'\n', &bytes) {
-                self.rest = bytes.split_off(end + 1);
+                self.rest.extend_from_slice(&bytes[end + 1..]); // end < bytes.len()
+                bytes.truncate(end + 1);
                 return Ok(Some(self.block(bytes, None)));
             }
             if bytes.len() >= LONGEST_LINE {
@@ -60,6 +69,11 @@ impl<R: Read> Blocks<R> {
                 return Ok(Some(block));
             }
         }
+    }
+
+    /// Takes the buffer of a block that is done with.
+    pub(crate) fn give_back(&mut self, buffer: Vec<u8>) {
+        self.spare.push(buffer);
     }
 
     fn block(&mut self, bytes: Vec<u8>, overlong: Option<u64>) -> Block {

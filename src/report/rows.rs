@@ -1,0 +1,161 @@
+//! Reports in the order of the input.
+
+use crate::time::Time;
+use crate::units::FromDirection;
+
+/// A report as a reader hands it over.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Report {
+    /// Place of the station in the network.
+    pub station: u32,
+    /// End of the averaging window.
+    pub time: Time,
+    /// m/s
+    pub speed: Option<f64>,
+    /// Where the wind blows from.
+    pub direction: Option<FromDirection>,
+    /// Which of the two the input holds at all.
+    pub part: Part,
+    /// m/s
+    pub gust: Option<f64>,
+    /// Position and level of the report itself.
+    pub moving: Option<Moving>,
+    /// 0 for the first report, more for each correction of it.
+    pub correction: u8,
+    /// Number of the file, line in it.
+    pub place: (u32, u64),
+}
+
+/// What of a wind an input holds.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Part {
+    /// Speed and direction.
+    Whole,
+    /// Speed alone; the direction comes from elsewhere.
+    Speed,
+    /// Direction alone; the speed comes from elsewhere.
+    Direction,
+}
+
+/// Position and level that a report carries itself.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Moving {
+    /// Degrees north and east, if given.
+    pub position: Option<crate::station::Position>,
+    /// Height, m, or pressure, Pa, if given.
+    pub level: Option<f64>,
+}
+
+/// Bits of the `kind` column.
+pub(super) mod kind {
+    pub const SPEED: u8 = 1;
+    pub const DIRECTION: u8 = 2;
+    pub const SPEED_PART: u8 = 4;
+    pub const DIRECTION_PART: u8 = 8;
+}
+
+/// Reports in the order of the input, as columns of equal length; a column that few inputs have is empty where none of
+/// its values is there.
+#[derive(Debug, Clone, Default, PartialEq)]
+pub struct Rows {
+    pub(super) station: Vec<u32>,
+    pub(super) time: Vec<Time>,
+    /// m/s; 0 where there is none.
+    pub(super) speed: Vec<f64>,
+    /// Degrees; 0 where there is none.
+    pub(super) direction: Vec<f64>,
+    pub(super) kind: Vec<u8>,
+    pub(super) file: Vec<u16>,
+    pub(super) line: Vec<u32>,
+    pub(super) gust: Vec<Option<f64>>,
+    pub(super) moving: Vec<Option<Moving>>,
+    pub(super) correction: Vec<u8>,
+}
+
+impl Rows {
+    /// Rows with room for `n` reports.
+    #[must_use]
+    pub fn with_capacity(n: usize) -> Self {
+        Self {
+            station: Vec::with_capacity(n),
+            time: Vec::with_capacity(n),
+            speed: Vec::with_capacity(n),
+            direction: Vec::with_capacity(n),
+            kind: Vec::with_capacity(n),
+            file: Vec::with_capacity(n),
+            line: Vec::with_capacity(n),
+            ..Self::default()
+        }
+    }
+
+    /// Adds a report.
+    pub fn push(&mut self, report: &Report) {
+        let before = self.len();
+        let part = match report.part {
+            Part::Whole => 0,
+            Part::Speed => kind::SPEED_PART,
+            Part::Direction => kind::DIRECTION_PART,
+        };
+        let speed = if report.speed.is_some() {
+            kind::SPEED
+        } else {
+            0
+        };
+        let direction = if report.direction.is_some() {
+            kind::DIRECTION
+        } else {
+            0
+        };
+        self.station.push(report.station);
+        self.time.push(report.time);
+        self.speed.push(report.speed.unwrap_or(0.0));
+        self.direction
+            .push(report.direction.map_or(0.0, FromDirection::degrees));
+        self.kind.push(part | speed | direction);
+        self.file
+            .push(u16::try_from(report.place.0).unwrap_or(u16::MAX));
+        self.line
+            .push(u32::try_from(report.place.1).unwrap_or(u32::MAX));
+        put(
+            &mut self.gust,
+            before,
+            report.gust,
+            report.gust.is_some(),
+            None,
+        );
+        put(
+            &mut self.moving,
+            before,
+            report.moving,
+            report.moving.is_some(),
+            None,
+        );
+        put(
+            &mut self.correction,
+            before,
+            report.correction,
+            report.correction > 0,
+            0,
+        );
+    }
+
+    /// How many there are.
+    #[must_use]
+    pub fn len(&self) -> usize {
+        self.time.len()
+    }
+
+    /// True if there are none.
+    #[must_use]
+    pub fn is_empty(&self) -> bool {
+        self.time.is_empty()
+    }
+}
+
+/// Adds a value to a column that stays empty until a value `is_there`.
+fn put<T: Copy>(column: &mut Vec<T>, before: usize, value: T, is_there: bool, nothing: T) {
+    if is_there || !column.is_empty() {
+        column.resize(before, nothing);
+        column.push(value);
+    }
+}
