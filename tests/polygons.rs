@@ -16,7 +16,7 @@ use gyremesh::polygon::{
     triangulate,
 };
 use gyremesh::settings::{PolygonChoice, PolygonLimits, RegionParts, RegionSettings, RingSettings};
-use gyremesh::station::{Network, Position, Station};
+use gyremesh::station::{Network, Position};
 use gyremesh::warning::Warning;
 use rand::SeedableRng;
 use rand::seq::SliceRandom;
@@ -897,14 +897,11 @@ fn triangulation_is_ordered() {
 #[test]
 fn elevation_spread_is_that_of_the_corners() {
     let elevations = [Some(400.0), Some(-20.0), Some(1800.0), None, Some(650.0)];
-    let stations = SQUARE.iter().zip(elevations).enumerate();
-    let stations = stations.map(|(k, (&(lat, lon), elevation))| Station {
-        id: format!("S{k:03}"),
-        name: String::new(),
-        position: Position::new(lat, lon).unwrap(),
-        elevation,
-    });
-    let network = Network::new(stations.collect());
+    let mut stations = network(&SQUARE).stations().to_vec();
+    for (station, elevation) in stations.iter_mut().zip(elevations) {
+        station.elevation = elevation;
+    }
+    let network = Network::new(stations);
     let built = triangles(&network).unwrap();
     let spread = |id: &str| {
         let polygon = built.polygons.iter().find(|p| p.id == id).unwrap();

@@ -13,7 +13,7 @@ use serde::Serialize;
 
 pub(crate) use blocks::{Block, Blocks};
 pub(crate) use number::{parse_number, parse_number_with_comma};
-pub(crate) use row::{Header, Row, find_delimiter, read_header};
+pub(crate) use row::{Header, Row, Splitter, find_delimiter, find_separators, read_header};
 pub use source::open;
 pub(crate) use source::{latin1_to_utf8, read_all};
 pub(crate) use time::TimeReader;

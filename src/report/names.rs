@@ -11,6 +11,7 @@ pub(super) struct Names<'a> {
     pub(super) declinations: Declinations<'a>,
     index: HashMap<Vec<u8>, u32>,
     not_asked_for: HashSet<Vec<u8>>,
+    any_moved: bool,
 }
 
 /// What a name is.
@@ -42,6 +43,10 @@ impl<'a> Names<'a> {
             declinations: Declinations::new(network),
             index,
             not_asked_for,
+            any_moved: network
+                .stations()
+                .iter()
+                .any(|s| s.valid_from.is_some() || s.valid_to.is_some()),
         }
     }
 
@@ -61,6 +66,9 @@ impl<'a> Names<'a> {
 
     /// True if the station of this number stands where the list says at this time.
     pub(super) fn is_valid(&self, station: u32, time: Time) -> bool {
+        if !self.any_moved {
+            return true;
+        }
         self.network
             .stations()
             .get(station as usize)

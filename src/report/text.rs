@@ -12,8 +12,9 @@ use super::read::PartOutcome;
 use super::rows::{Moving, Part, Report, Rows};
 use crate::error::{Error, Place, Problem};
 use crate::input::{
-    Block, Blocks, Header, MissingMarks, Row, TimeReader, find_delimiter, latin1_to_utf8, open,
-    parse_number, parse_number_with_comma, read_header, shown,
+    Block, Blocks, Header, MissingMarks, Row, Splitter, TimeReader, find_delimiter,
+    find_separators, latin1_to_utf8, open, parse_number, parse_number_with_comma, read_header,
+    shown,
 };
 use crate::station::{Position, missing_column};
 use crate::tally::Reason;
@@ -127,6 +128,8 @@ struct Layout<'a> {
     level: Option<usize>,
     wide: Vec<WideStation>,
     missing: MissingMarks<'a>,
+    /// One of each station's unit of speed in m/s.
+    factors: Vec<f64>,
 }
 
 impl<'a> Layout<'a> {
@@ -208,6 +211,17 @@ impl<'a> Layout<'a> {
             level,
             wide,
             missing: MissingMarks::new(&format.text),
+            factors: names
+                .network
+                .stations()
+                .iter()
+                .map(|s| {
+                    s.site
+                        .speed_unit
+                        .unwrap_or(format.speed_unit)
+                        .in_metres_per_second()
+                })
+                .collect(),
         })
     }
 
@@ -389,25 +403,10 @@ impl<'a> BlockReader<'a> {
             converted = latin1_to_utf8(rest);
             rest = &converted;
         }
-        let has_quotes = memchr::memchr(b'"', rest).is_some();
-        let mut row = Row::new(self.layout.delimiter);
-        let mut number = block.first_line;
-        while !rest.is_empty() {
-            let end = memchr::memchr(b'\n', rest).unwrap_or(rest.len());
-            let mut line = rest.get(..end).unwrap_or_default();
-            rest = rest.get(end + 1..).unwrap_or_default();
-            while let [before @ .., b'\r'] = line {
-                line = before;
-            }
-            if !line.is_empty() {
-                if row.split(line, has_quotes) {
-                    self.row(&row, number);
-                } else {
-                    let message = format!("a quote does not end on its line: `{}`", shown(line));
-                    self.set_aside(Unusable::line(Reason::BrokenLine, message), number);
-                }
-            }
-            number += 1;
+        if memchr::memchr(b'"', rest).is_some() {
+            self.quoted_lines(rest, block.first_line);
+        } else {
+            self.plain_lines(rest, block.first_line);
         }
         if let Some(number) = block.overlong {
             let message = "the line is longer than 1 MiB".to_string();
@@ -415,6 +414,43 @@ impl<'a> BlockReader<'a> {
         }
         self.outcome.rows.push(self.rows);
         self.outcome
+    }
+
+    /// Lines without quotes: all separators of the block are found first.
+    fn plain_lines(&mut self, text: &[u8], first_line: u64) {
+        let mut separators = Vec::with_capacity(text.len() / 8);
+        find_separators(text, self.layout.delimiter, &mut separators);
+        let mut fields: Vec<(u32, u32)> = Vec::new();
+        let (mut start, mut number) = (0, first_line);
+        for at in separators {
+            fields.push((start, at));
+            start = at + 1;
+            if text.get(at as usize) == Some(&b'\n') {
+                self.row(&Row::new(text, &fields), number);
+                fields.clear();
+                number += 1;
+            }
+        }
+        // The last line may lack its end. Blocks are far smaller than 4 GiB.
+        let end = u32::try_from(text.len()).unwrap_or(u32::MAX);
+        if start < end || !fields.is_empty() {
+            fields.push((start, end));
+            self.row(&Row::new(text, &fields), number);
+        }
+    }
+
+    fn quoted_lines(&mut self, text: &[u8], first_line: u64) {
+        let mut splitter = Splitter::new(self.layout.delimiter);
+        for (number, line) in (first_line..).zip(text.split(|&byte| byte == b'\n')) {
+            let line = line.trim_ascii_end();
+            match splitter.split(line) {
+                Some(row) => self.row(&row, number),
+                None => {
+                    let message = format!("a quote does not end on its line: `{}`", shown(line));
+                    self.set_aside(Unusable::line(Reason::BrokenLine, message), number);
+                }
+            }
+        }
     }
 
     fn set_aside(&mut self, unusable: Unusable, line: u64) {
@@ -432,6 +468,9 @@ impl<'a> BlockReader<'a> {
     }
 
     fn row(&mut self, row: &Row, line: u64) {
+        if row.is_blank() {
+            return;
+        }
         if !self.layout.wide.is_empty() {
             self.wide_row(row, line);
         } else if let Err(unusable) = self.long_row(row, line) {
@@ -613,11 +652,8 @@ impl<'a> BlockReader<'a> {
 
     /// One of the station's unit of speed in m/s.
     fn factor(&self, station: u32) -> f64 {
-        let own = self.names.network.stations().get(station as usize);
-        let unit = own
-            .and_then(|s| s.site.speed_unit)
-            .unwrap_or(self.layout.format.speed_unit);
-        unit.in_metres_per_second()
+        let factors = &self.layout.factors;
+        factors.get(station as usize).copied().unwrap_or(1.0)
     }
 
     fn wind(
