@@ -128,7 +128,7 @@ fn from(speed: f64, degrees: f64) -> (f64, f64) {
     (wind.u, wind.v)
 }
 
-/// `methods.md` 1.1 \[V\]: A = 1.4e9 m², F = +235000, C = -5000 m²/s, D = +1.6785714e-4, zeta = -3.5714286e-6 1/s.
+/// `methods.md` 1.1 [V]: A = 1.4e9 m², F = +235000, C = -5000 m²/s, D = +1.6785714e-4, zeta = -3.5714286e-6 1/s.
 /// Tolerance: curvature over 0.6 km, 1e-8 of the terms.
 #[test]
 fn test_field_t0_has_its_handbook_values() {
@@ -143,7 +143,7 @@ fn test_field_t0_has_its_handbook_values() {
     assert!(close(d * case.area(), 235_000.0, 0.2));
 }
 
-/// `methods.md` 1.1 and 2 \[V\]: T0 in its full size at 52 N. The azimuthal plane is off by 2.7e-5 of the area for 100 km
+/// `methods.md` 1.1 and 2 [V]: T0 in its full size at 52 N. The azimuthal plane is off by 2.7e-5 of the area for 100 km
 /// triangles; tolerance (L/a)² of the terms, 1e-4.
 #[test]
 fn test_field_t0_in_full_size_is_off_by_the_curvature_only() {
@@ -158,7 +158,7 @@ fn test_field_t0_in_full_size_is_off_by_the_curvature_only() {
     assert!(case.tolerance() < 1e-7);
 }
 
-/// `methods.md` 1.3 \[V\]: the pentagon, A = 2312.5 km², D = 9.5135135e-5, zeta = -1.0810811e-6 (line integral; least
+/// `methods.md` 1.3 [V]: the pentagon, A = 2312.5 km², D = 9.5135135e-5, zeta = -1.0810811e-6 (line integral; least
 /// squares would give 9.3281459e-5 and -6.69344e-8). Tolerance: curvature over 0.6 km.
 #[test]
 fn the_pentagon_has_the_values_of_the_line_integral() {
@@ -177,7 +177,7 @@ fn the_pentagon_has_the_values_of_the_line_integral() {
     assert!(close(z, -1.081_081_1e-6, 1e-11) && close(d, 9.513_513_5e-5, 1e-10));
 }
 
-/// `methods.md` 1.3 and 1.4 \[V\]: on a regular n-gon D = 2/(nR²) Σ r·V, zeta = 2/(nR²) Σ r×V, and the noise factor is
+/// `methods.md` 1.3 and 1.4 [V]: on a regular n-gon D = 2/(nR²) Σ r·V, zeta = 2/(nR²) Σ r×V, and the noise factor is
 /// 2/(√n R). Tolerance: curvature over 0.3 km.
 #[test]
 fn a_regular_polygon_equals_the_plane_fit() {
@@ -232,7 +232,7 @@ fn a_quadrilateral_is_the_mean_of_its_triangles() {
     }
 }
 
-/// `methods.md` 1.4 \[V\]: T0 with s = 0.5 m/s gives 1.7677670e-5, the equilateral triangle of side 50 km 2.0e-5 1/s.
+/// `methods.md` 1.4 [V]: T0 with s = 0.5 m/s gives 1.7677670e-5, the equilateral triangle of side 50 km 2.0e-5 1/s.
 /// Tolerance: eight printed digits and the share of curvature.
 #[test]
 fn noise_factors_are_those_of_the_handbook() {
@@ -251,7 +251,7 @@ fn noise_factors_are_those_of_the_handbook() {
     assert!(close(angle, 60.0, 60.0 * case.share()), "{angle}");
 }
 
-/// `methods.md` 1.4 \[V\]: q = 0.8660 for the right isosceles triangle, 0.2279 for base 1 and height 0.1; four printed
+/// `methods.md` 1.4 [V]: q = 0.8660 for the right isosceles triangle, 0.2279 for base 1 and height 0.1; four printed
 /// digits. And `s_D` = s √(√3/(A q)).
 #[test]
 fn shape_quality_is_that_of_the_handbook() {
@@ -268,7 +268,7 @@ fn shape_quality_is_that_of_the_handbook() {
     }
 }
 
-/// `methods.md` 1.4 \[D, V\]: all directions 10 degrees too large turn T0 into D' = 1.6468684e-4, zeta' = -3.2665258e-5.
+/// `methods.md` 1.4 [D, V]: all directions 10 degrees too large turn T0 into D' = 1.6468684e-4, zeta' = -3.2665258e-5.
 /// Tolerance: curvature over 0.6 km.
 #[test]
 fn a_common_offset_of_direction_mixes_divergence_and_vorticity() {
@@ -401,7 +401,7 @@ fn an_easterly_that_grows_northward_is_positive_vorticity() {
     case.assert_values(9.5e-5, 0.0);
 }
 
-/// `methods.md` 11, closed forms \[V\]: solid rotation 2w, pure strain 0, pure divergence 2c, uniform wind 0, on any
+/// `methods.md` 11, closed forms [V]: solid rotation 2w, pure strain 0, pure divergence 2c, uniform wind 0, on any
 /// polygon, here a concave one and a thin one. Tolerance: curvature over 0.9 km.
 #[test]
 fn linear_fields_are_exact_on_any_polygon() {
@@ -428,7 +428,7 @@ fn linear_fields_are_exact_on_any_polygon() {
     }
 }
 
-/// `methods.md` 11, closed forms \[V\]: Rankine vortex of core 20 km and 30 m/s: the regular n-gon on a circle round it
+/// `methods.md` 11, closed forms [V]: Rankine vortex of core 20 km and 30 m/s: the regular n-gon on a circle round it
 /// gives 2V/r, so beyond the core a triangle has 2 Vm Rc/r², the mean of the disc, though not its own mean. Tolerance:
 /// curvature over 0.6 km.
 #[test]
@@ -451,7 +451,7 @@ fn a_rankine_vortex_gives_twice_speed_by_radius() {
     }
 }
 
-/// `methods.md` 2 \[V\]: u = U0 cos(latitude) has zeta = 2 U0 sin(latitude)/a; on T45 the integral is 2.230e-6 for U0 = 10.
+/// `methods.md` 2 [V]: u = U0 cos(latitude) has zeta = 2 U0 sin(latitude)/a; on T45 the integral is 2.230e-6 for U0 = 10.
 /// The rigid rotation of the ellipsoid with the same U0 = w a has the published mean of f, 1.037244281e-4, times w/Omega.
 /// Tolerances: the printed digits; against the sphere's closed form at the middle latitude 0.4 %, which is the
 /// flattening of the ellipsoid (1/298 of lengths) and the curvature over 1 degree.
@@ -710,7 +710,7 @@ fn an_error_that_cannot_reach_a_value_leaves_none() {
     }
 }
 
-/// `methods.md` 1.4 \[V\]: isotropic errors give vorticity and divergence the same error, s times the noise factor.
+/// `methods.md` 1.4 [V]: isotropic errors give vorticity and divergence the same error, s times the noise factor.
 /// Tolerance: rounding.
 #[test]
 fn isotropic_errors_reach_both_values_alike() {

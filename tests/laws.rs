@@ -30,8 +30,8 @@ const AREA: f64 = 0.1;
 fn config() -> ProptestConfig {
     let default = ProptestConfig::default();
     ProptestConfig {
-        // Half of the usual number keeps the file within some seconds.
-        cases: default.cases.div_ceil(2),
+        // A quarter of the usual number keeps the file within some seconds.
+        cases: default.cases.div_ceil(4),
         rng_seed: match default.rng_seed {
             RngSeed::Random => RngSeed::Fixed(20_260_612),
             seed @ RngSeed::Fixed(_) => seed,

@@ -86,7 +86,7 @@ fn assert_order_does_not_matter(points: &Points, expected: usize) {
     }
 }
 
-/// `methods.md` 2 \[V\]: (-17,179), (-17,-179), (-16,180): A = 11 813 598 680.034 m², mean f -4.183068340e-5. Tolerance
+/// `methods.md` 2 [V]: (-17,179), (-17,-179), (-16,180): A = 11 813 598 680.034 m², mean f -4.183068340e-5. Tolerance
 /// as printed.
 #[test]
 fn polygon_across_the_date_line() {
@@ -104,7 +104,7 @@ fn polygon_across_the_date_line() {
 
 /// A ring round a pole: its area is that of the cap, and the mean of f close to 2 Omega sin 80 and beyond. On the sphere
 /// the mean over a cap from latitude p is Omega (1 + sin p) (`methods.md` 2, zones), for 80 degrees 0.9924 of 2 Omega;
-/// the ellipsoid and the straight edges of a dodecagon change less than 2e-4 of it.
+/// the ellipsoid and the straight edges of a dodecagon change less than 5e-4 of it.
 #[test]
 fn polygon_around_a_pole() {
     for sign in [1.0, -1.0] {
@@ -236,9 +236,9 @@ fn of_two_stations_at_one_place_one_makes_triangles() {
     );
 }
 
-/// Two places at which five stations stand are no three places; the refusal counts places.
+/// Five stations at two places make no triangle; the refusal counts places.
 #[test]
-fn three_stations_at_two_places_make_no_polygon() {
+fn five_stations_at_two_places_make_no_polygon() {
     let points = [
         (47.0, 8.0),
         (47.0, 8.0),
@@ -485,9 +485,7 @@ fn a_network_wider_than_a_hemisphere_is_refused() {
 fn stations_on_one_circle_give_the_same_triangles_in_any_order() {
     for lat in [80.0, -80.0, 45.0] {
         let points: Vec<(f64, f64)> = (0..8).map(|k| (lat, 45.0 * f64::from(k) - 180.0)).collect();
-        if lat.abs() > 50.0 {
-            assert_order_does_not_matter(&points, 6);
-        }
+        assert_order_does_not_matter(&points, 6);
     }
     for origin in [(0.0, 0.0), (50.0, 180.0), (-33.0, 151.0), (89.9, 0.0)] {
         let plane = Plane {
@@ -565,7 +563,7 @@ fn a_concave_ring_is_accepted() {
         let shape = built.polygons[0].shape;
         // Area of the plane, curvature (30/6371)² of it: A = 1/2 · 20 km · 50 km - 1/2 · 20 km · 20 km.
         assert!(close(shape.area, 300e6, 300e6 * 2.2e-5), "{}", shape.area);
-        // 2 atan(10/50) at the tip; atan(20/10) - ... = 15.26 degrees at the barbs.
+        // The tip has 22.6 degrees, a barb lies between its edges to the tip and to the notch.
         let barb = (50.0_f64 / 10.0).atan().to_degrees() - (20.0_f64 / 10.0).atan().to_degrees();
         assert!(
             close(shape.smallest_angle, barb, 0.001),

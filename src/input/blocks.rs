@@ -3,7 +3,7 @@
 use std::io::{self, Read};
 
 /// Size of a block, bytes: large enough to make the cost of a block small, small enough to stay in the cache.
-const BLOCK: usize = 1 << 20;
+const BLOCK: usize = 1 << 18;
 /// A longer line is no row; it is skipped and counted.
 const LONGEST_LINE: usize = 1 << 20;
 
@@ -48,8 +48,9 @@ impl<R: Read> Blocks<R> {
         bytes.reserve_exact(BLOCK);
         bytes.append(&mut self.rest);
         loop {
-            if !self.ended && bytes.len() < BLOCK {
-                let want = (BLOCK - bytes.len()) as u64;
+            if !self.ended {
+                // A line longer than a block makes it grow, up to the longest line there may be.
+                let want = BLOCK.saturating_sub(bytes.len()).max(BLOCK / 4) as u64;
                 let got = self.input.by_ref().take(want).read_to_end(&mut bytes)?;
                 self.ended = (got as u64) < want;
             }

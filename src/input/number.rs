@@ -35,6 +35,33 @@ pub(crate) fn parse_number(text: &[u8]) -> Option<f64> {
     Some(if negative { -value } else { value })
 }
 
+/// Reads a short decimal number without a sign, the usual case; `None` sends anything else to [`parse_number`].
+#[inline]
+pub(crate) fn parse_short(text: &[u8]) -> Option<f64> {
+    if text.is_empty() || text.len() > 8 {
+        return None;
+    }
+    let mut mantissa = 0_u32;
+    let mut decimals = 0;
+    let mut after_point = 0;
+    for &byte in text {
+        let digit = byte.wrapping_sub(b'0');
+        if digit < 10 {
+            mantissa = mantissa * 10 + u32::from(digit);
+            decimals += after_point;
+        } else if byte == b'.' && after_point == 0 {
+            after_point = 1;
+        } else {
+            return None;
+        }
+    }
+    // A point alone is no number.
+    if after_point == 1 && text.len() == 1 {
+        return None;
+    }
+    Some(f64::from(mantissa) / POWERS.get(decimals)?)
+}
+
 fn parse_any(text: &[u8]) -> Option<f64> {
     let value: f64 = fast_float2::parse(text).ok()?;
     value.is_finite().then_some(value)
@@ -65,7 +92,11 @@ mod tests {
     proptest! {
         #[test]
         fn numbers_equal_the_standard_library(text in "-?[0-9]{0,12}(\\.[0-9]{0,6})?(e-?[0-9]{1,2})?") {
-            prop_assert_eq!(parse_number(text.as_bytes()), text.parse::<f64>().ok().filter(|x| x.is_finite()));
+            let expected = text.parse::<f64>().ok().filter(|x| x.is_finite());
+            prop_assert_eq!(parse_number(text.as_bytes()), expected);
+            if let Some(short) = parse_short(text.as_bytes()) {
+                prop_assert_eq!(Some(short), expected);
+            }
         }
     }
 

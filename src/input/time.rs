@@ -106,6 +106,8 @@ pub(crate) struct TimeReader<'a> {
     date: [u8; 10],
     /// Midnight of that date, s.
     midnight: Option<i64>,
+    /// The last text of the usual form, and of any other.
+    last_usual: Option<([u8; 20], Time)>,
     last: Option<(Vec<u8>, Time)>,
 }
 
@@ -121,14 +123,28 @@ impl<'a> TimeReader<'a> {
             },
             date: [0; 10],
             midnight: None,
+            last_usual: None,
             last: None,
         }
     }
 
+    #[inline]
     pub(crate) fn parse(&mut self, text: &[u8]) -> Result<Time, String> {
+        if let Some((last, time)) = &self.last_usual
+            && last == text
+        {
+            return Ok(*time);
+        }
+        self.parse_new(text)
+    }
+
+    fn parse_new(&mut self, text: &[u8]) -> Result<Time, String> {
         if self.format.form == TimeForm::Rfc3339
             && let Some(time) = self.fast(text)
         {
+            if let Ok(usual) = text.try_into() {
+                self.last_usual = Some((usual, time));
+            }
             return Ok(time);
         }
         if let Some((last, time)) = &self.last

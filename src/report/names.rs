@@ -11,7 +11,7 @@ pub(super) struct Names<'a> {
     pub(super) declinations: Declinations<'a>,
     index: HashMap<Vec<u8>, u32>,
     not_asked_for: HashSet<Vec<u8>>,
-    any_moved: bool,
+    pub(super) any_moved: bool,
 }
 
 /// What a name is.
@@ -101,6 +101,17 @@ impl<'a> Finder<'a> {
                 .map(|s| s.id.clone().into_bytes())
                 .collect(),
         }
+    }
+
+    /// The station that is expected next, if the text is its name as spelled before.
+    #[inline]
+    pub(super) fn expected(&mut self, text: &[u8]) -> Option<u32> {
+        let guess = *self.follows.get(self.last)?;
+        if self.spelling.get(guess as usize)? != text {
+            return None;
+        }
+        self.last = guess as usize;
+        Some(guess)
     }
 
     pub(super) fn find(&mut self, text: &[u8]) -> Found {

@@ -54,19 +54,25 @@ pub(super) mod kind {
     pub const DIRECTION_PART: u8 = 8;
 }
 
-/// Reports in the order of the input, as columns of equal length; a column that few inputs have is empty where none of
-/// its values is there.
+/// What every report has, packed.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub(super) struct Packed {
+    pub(super) time: Time,
+    /// m/s; 0 where there is none.
+    pub(super) speed: f64,
+    /// Degrees; 0 where there is none.
+    pub(super) direction: f64,
+    pub(super) station: u32,
+    pub(super) line: u32,
+    pub(super) file: u16,
+    pub(super) kind: u8,
+}
+
+/// Reports in the order of the input. What few inputs have stands in columns of its own, which are empty where none of
+/// their values is there.
 #[derive(Debug, Clone, Default, PartialEq)]
 pub struct Rows {
-    pub(super) station: Vec<u32>,
-    pub(super) time: Vec<Time>,
-    /// m/s; 0 where there is none.
-    pub(super) speed: Vec<f64>,
-    /// Degrees; 0 where there is none.
-    pub(super) direction: Vec<f64>,
-    pub(super) kind: Vec<u8>,
-    pub(super) file: Vec<u16>,
-    pub(super) line: Vec<u32>,
+    pub(super) packed: Vec<Packed>,
     pub(super) gust: Vec<Option<f64>>,
     pub(super) moving: Vec<Option<Moving>>,
     pub(super) correction: Vec<u8>,
@@ -77,18 +83,13 @@ impl Rows {
     #[must_use]
     pub fn with_capacity(n: usize) -> Self {
         Self {
-            station: Vec::with_capacity(n),
-            time: Vec::with_capacity(n),
-            speed: Vec::with_capacity(n),
-            direction: Vec::with_capacity(n),
-            kind: Vec::with_capacity(n),
-            file: Vec::with_capacity(n),
-            line: Vec::with_capacity(n),
+            packed: Vec::with_capacity(n),
             ..Self::default()
         }
     }
 
     /// Adds a report.
+    #[inline]
     pub fn push(&mut self, report: &Report) {
         let before = self.len();
         let part = match report.part {
@@ -106,16 +107,15 @@ impl Rows {
         } else {
             0
         };
-        self.station.push(report.station);
-        self.time.push(report.time);
-        self.speed.push(report.speed.unwrap_or(0.0));
-        self.direction
-            .push(report.direction.map_or(0.0, FromDirection::degrees));
-        self.kind.push(part | speed | direction);
-        self.file
-            .push(u16::try_from(report.place.0).unwrap_or(u16::MAX));
-        self.line
-            .push(u32::try_from(report.place.1).unwrap_or(u32::MAX));
+        self.packed.push(Packed {
+            time: report.time,
+            speed: report.speed.unwrap_or(0.0),
+            direction: report.direction.map_or(0.0, FromDirection::degrees),
+            station: report.station,
+            line: u32::try_from(report.place.1).unwrap_or(u32::MAX),
+            file: u16::try_from(report.place.0).unwrap_or(u16::MAX),
+            kind: part | speed | direction,
+        });
         put(
             &mut self.gust,
             before,
@@ -142,13 +142,13 @@ impl Rows {
     /// How many there are.
     #[must_use]
     pub fn len(&self) -> usize {
-        self.time.len()
+        self.packed.len()
     }
 
     /// True if there are none.
     #[must_use]
     pub fn is_empty(&self) -> bool {
-        self.time.is_empty()
+        self.packed.is_empty()
     }
 }
 

@@ -1,6 +1,6 @@
 //! Reports in columns, by station and time.
 
-use super::rows::{Moving, Rows, kind};
+use super::rows::{Moving, Packed, Rows, kind};
 use crate::check::Flag;
 use crate::tally::{Reason, Tally};
 use crate::time::Time;
@@ -38,11 +38,26 @@ const CONFLICTS_KEPT: usize = 100;
 /// Reports sorted by station, time and level, each of these once.
 #[derive(Debug)]
 pub struct ReportTable {
-    rows: Rows,
+    columns: TableColumns,
     flag: Vec<Flag>,
     /// Station s has the rows `starts[s]..starts[s + 1]`.
     starts: Vec<usize>,
     conflicts: Vec<Conflict>,
+}
+
+/// The values of the reports, one column each; gust, moving and correction are empty where no report has any.
+#[derive(Debug, Default)]
+struct TableColumns {
+    time: Vec<Time>,
+    /// m/s; 0 where there is none.
+    speed: Vec<f64>,
+    /// Degrees; 0 where there is none.
+    direction: Vec<f64>,
+    kind: Vec<u8>,
+    file: Vec<u16>,
+    line: Vec<u32>,
+    gust: Vec<Option<f64>>,
+    moving: Vec<Option<Moving>>,
 }
 
 /// A row among several [`Rows`].
@@ -64,8 +79,8 @@ impl ReportTable {
     #[must_use]
     pub fn new(parts: &[Rows], stations: usize) -> (Self, Tally) {
         let mut starts = vec![0_usize; stations + 1];
-        for &station in parts.iter().flat_map(|p| &p.station) {
-            starts[station as usize + 1] += 1; // stations are < `stations`
+        for report in parts.iter().flat_map(|p| &p.packed) {
+            starts[report.station as usize + 1] += 1; // stations are < `stations`
         }
         for s in 0..stations {
             starts[s + 1] += starts[s];
@@ -74,8 +89,8 @@ impl ReportTable {
         let mut next = starts.clone();
         let mut order = vec![At { part: 0, row: 0 }; starts[stations]];
         for (part, rows) in (0..).zip(parts) {
-            for (row, &station) in (0..).zip(&rows.station) {
-                let slot = &mut next[station as usize];
+            for (row, report) in (0..).zip(&rows.packed) {
+                let slot = &mut next[report.station as usize];
                 order[*slot] = At { part, row };
                 *slot += 1;
             }
@@ -83,7 +98,7 @@ impl ReportTable {
 
         let mut builder = TableBuilder {
             parts,
-            out: Rows::with_capacity(order.len()),
+            out: TableColumns::with_capacity(order.len()),
             tally: Tally::default(),
             conflicts: Vec::new(),
         };
@@ -98,7 +113,7 @@ impl ReportTable {
                 });
             }
             builder.station(of_station);
-            sorted_starts.push(builder.out.len());
+            sorted_starts.push(builder.out.time.len());
         }
         let TableBuilder {
             out,
@@ -107,8 +122,8 @@ impl ReportTable {
             ..
         } = builder;
         let table = Self {
-            flag: vec![Flag::NotEvaluated; out.len()],
-            rows: out,
+            flag: vec![Flag::NotEvaluated; out.time.len()],
+            columns: out,
             starts: sorted_starts,
             conflicts,
         };
@@ -124,13 +139,13 @@ impl ReportTable {
     /// Number of reports.
     #[must_use]
     pub fn len(&self) -> usize {
-        self.rows.len()
+        self.columns.time.len()
     }
 
     /// True if there are no reports.
     #[must_use]
     pub fn is_empty(&self) -> bool {
-        self.rows.is_empty()
+        self.columns.time.is_empty()
     }
 
     /// The reports of a station, in the order of time.
@@ -142,13 +157,13 @@ impl ReportTable {
     /// Times of all reports.
     #[must_use]
     pub fn times(&self) -> &[Time] {
-        &self.rows.time
+        &self.columns.time
     }
 
     /// What report `i` says.
     #[must_use]
     pub fn content(&self, i: usize) -> Content {
-        let (speed, kind) = (self.rows.speed[i], self.rows.kind[i]);
+        let (speed, kind) = (self.columns.speed[i], self.columns.kind[i]);
         match kind & (kind::SPEED | kind::DIRECTION) {
             // Common practice: no speed is calm, whatever stands for the direction.
             both if both & kind::SPEED != 0 && speed <= 0.0 => Content::Calm,
@@ -161,14 +176,14 @@ impl ReportTable {
     /// Speed of report `i`, m/s.
     #[must_use]
     pub fn speed(&self, i: usize) -> Option<f64> {
-        (self.rows.kind[i] & kind::SPEED != 0).then(|| self.rows.speed[i])
+        (self.columns.kind[i] & kind::SPEED != 0).then(|| self.columns.speed[i])
     }
 
     /// Direction of report `i`; calm has none.
     #[must_use]
     pub fn direction(&self, i: usize) -> Option<FromDirection> {
         match self.content(i) {
-            Content::Wind => FromDirection::new(self.rows.direction[i]),
+            Content::Wind => FromDirection::new(self.columns.direction[i]),
             _ => None,
         }
     }
@@ -178,8 +193,8 @@ impl ReportTable {
     pub fn wind(&self, i: usize) -> Option<Wind> {
         match self.content(i) {
             Content::Calm => Some(Wind::default()),
-            Content::Wind => FromDirection::new(self.rows.direction[i])
-                .map(|from| Wind::blowing_from(self.rows.speed[i], from)),
+            Content::Wind => FromDirection::new(self.columns.direction[i])
+                .map(|from| Wind::blowing_from(self.columns.speed[i], from)),
             Content::SpeedOnly | Content::Nothing => None,
         }
     }
@@ -187,25 +202,25 @@ impl ReportTable {
     /// Gust of report `i`, m/s.
     #[must_use]
     pub fn gust(&self, i: usize) -> Option<f64> {
-        self.rows.gust.get(i).copied().flatten()
+        self.columns.gust.get(i).copied().flatten()
     }
 
     /// Position and level that report `i` carries itself.
     #[must_use]
     pub fn moving(&self, i: usize) -> Option<Moving> {
-        self.rows.moving.get(i).copied().flatten()
+        self.columns.moving.get(i).copied().flatten()
     }
 
     /// True if any report carries its own position or level.
     #[must_use]
     pub fn has_moving(&self) -> bool {
-        !self.rows.moving.is_empty()
+        !self.columns.moving.is_empty()
     }
 
     /// Place of report `i` in the input: number of the file as read, line.
     #[must_use]
     pub fn origin(&self, i: usize) -> (u16, u32) {
-        (self.rows.file[i], self.rows.line[i])
+        (self.columns.file[i], self.columns.line[i])
     }
 
     /// Flag of report `i`.
@@ -228,31 +243,43 @@ impl ReportTable {
     /// First and last time of all reports.
     #[must_use]
     pub fn period(&self) -> Option<(Time, Time)> {
-        let first = self.rows.time.iter().min()?;
-        let last = self.rows.time.iter().max()?;
+        let first = self.columns.time.iter().min()?;
+        let last = self.columns.time.iter().max()?;
         Some((*first, *last))
+    }
+}
+
+impl TableColumns {
+    fn with_capacity(n: usize) -> Self {
+        Self {
+            time: Vec::with_capacity(n),
+            speed: Vec::with_capacity(n),
+            direction: Vec::with_capacity(n),
+            kind: Vec::with_capacity(n),
+            file: Vec::with_capacity(n),
+            line: Vec::with_capacity(n),
+            ..Self::default()
+        }
     }
 }
 
 struct TableBuilder<'a> {
     parts: &'a [Rows],
-    out: Rows,
+    out: TableColumns,
     tally: Tally,
     conflicts: Vec<Conflict>,
 }
 
 impl TableBuilder<'_> {
-    /// What rows are sorted by; reports without a level come first.
-    fn key(&self, at: At) -> (Time, f64) {
-        let rows = &self.parts[at.part as usize];
-        let row = at.row as usize;
-        let moving = rows.moving.get(row).copied().flatten();
-        let level = moving.and_then(|m| m.level).unwrap_or(f64::NEG_INFINITY);
-        (rows.time[row], level)
+    fn packed(&self, at: At) -> &Packed {
+        &self.parts[at.part as usize].packed[at.row as usize]
     }
 
-    fn kind(&self, at: At) -> u8 {
-        self.parts[at.part as usize].kind[at.row as usize]
+    /// What rows are sorted by; reports without a level come first.
+    fn key(&self, at: At) -> (Time, f64) {
+        let moving = self.parts[at.part as usize].moving.get(at.row as usize);
+        let level = moving.copied().flatten().and_then(|m| m.level);
+        (self.packed(at).time, level.unwrap_or(f64::NEG_INFINITY))
     }
 
     fn correction(&self, at: At) -> u8 {
@@ -261,18 +288,17 @@ impl TableBuilder<'_> {
     }
 
     fn place(&self, at: At) -> (u16, u32) {
-        let rows = &self.parts[at.part as usize];
-        (rows.file[at.row as usize], rows.line[at.row as usize])
+        let report = self.packed(at);
+        (report.file, report.line)
     }
 
     fn same_wind(&self, a: At, b: At) -> bool {
         let value = |at: At| {
-            let rows = &self.parts[at.part as usize];
-            let row = at.row as usize;
+            let report = self.packed(at);
             (
-                rows.kind[row],
-                rows.speed[row].to_bits(),
-                rows.direction[row].to_bits(),
+                report.kind,
+                report.speed.to_bits(),
+                report.direction.to_bits(),
             )
         };
         value(a) == value(b)
@@ -303,7 +329,7 @@ impl TableBuilder<'_> {
             group
                 .iter()
                 .copied()
-                .filter(|&at| self.kind(at) & parts == part)
+                .filter(|&at| self.packed(at).kind & parts == part)
                 .collect()
         };
         let (whole, speeds, directions) = (of(0), of(kind::SPEED_PART), of(kind::DIRECTION_PART));
@@ -343,10 +369,10 @@ impl TableBuilder<'_> {
                 holds = row;
             }
             if reason == Reason::Replaced && self.conflicts.len() < CONFLICTS_KEPT {
-                let rows = &self.parts[row.part as usize];
+                let report = self.packed(row);
                 self.conflicts.push(Conflict {
-                    station: rows.station[row.row as usize],
-                    time: rows.time[row.row as usize],
+                    station: report.station,
+                    time: report.time,
                     set_aside: self.place(out),
                     holds: self.place(holds),
                 });
@@ -358,30 +384,30 @@ impl TableBuilder<'_> {
     /// Adds a row to the table, with the direction of another one if given.
     fn keep(&mut self, at: At, direction: Option<At>) {
         self.tally.pass(1);
-        let (rows, row) = (&self.parts[at.part as usize], at.row as usize);
-        let before = self.out.len();
-        let mut kind = rows.kind[row] & (kind::SPEED | kind::DIRECTION);
-        let mut degrees = rows.direction[row];
+        let report = *self.packed(at);
+        let (mut kind, mut degrees) = (report.kind, report.direction);
         if let Some(at) = direction {
-            let (rows, row) = (&self.parts[at.part as usize], at.row as usize);
-            kind |= rows.kind[row] & kind::DIRECTION;
-            degrees = rows.direction[row];
+            let other = self.packed(at);
+            kind |= other.kind;
+            degrees = other.direction;
         }
+        let (rows, row) = (&self.parts[at.part as usize], at.row as usize);
         let out = &mut self.out;
-        out.station.push(rows.station[row]);
-        out.time.push(rows.time[row]);
-        out.speed.push(rows.speed[row]);
+        let before = out.time.len();
+        out.time.push(report.time);
+        out.speed.push(report.speed);
         out.direction.push(degrees);
-        out.kind.push(kind);
-        out.file.push(rows.file[row]);
-        out.line.push(rows.line[row]);
-        if let Some(&gust) = rows.gust.get(row) {
+        out.kind.push(kind & (kind::SPEED | kind::DIRECTION));
+        out.file.push(report.file);
+        out.line.push(report.line);
+        // A column that one part has and another has not is filled up.
+        if !rows.gust.is_empty() || !out.gust.is_empty() {
             out.gust.resize(before, None);
-            out.gust.push(gust);
+            out.gust.push(rows.gust.get(row).copied().flatten());
         }
-        if let Some(&moving) = rows.moving.get(row) {
+        if !rows.moving.is_empty() || !out.moving.is_empty() {
             out.moving.resize(before, None);
-            out.moving.push(moving);
+            out.moving.push(rows.moving.get(row).copied().flatten());
         }
     }
 }
