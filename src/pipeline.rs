@@ -5,16 +5,18 @@ use std::path::{Path, PathBuf};
 
 use rayon::prelude::*;
 
-use crate::align::{AlignTally, Aligner, TimeGrid, WindBlock};
+use crate::align::{AlignTally, Aligner, StationSensors, TimeGrid, WindBlock, height_factor};
 use crate::check::{Flag, check_range};
 use crate::error::{Error, Problem};
 use crate::integral::{
     EstimateBlock, Extremes, SELF_TEST_ALLOWED, SelfTest, estimate, planetary_vorticity, self_test,
 };
 use crate::polygon::{BuiltPolygons, build_polygons};
-use crate::report::{Content, FileOutcome, ReportTable, read_reports};
-use crate::settings::{Overrides, Settings, read_settings};
-use crate::station::{Network, Position, read_catalogue};
+use crate::report::{
+    Content, FileOutcome, ReportTable, Rounding, SpeedStep, find_rounding, read_reports,
+};
+use crate::settings::{Overrides, SensorErrors, Settings, read_settings};
+use crate::station::{Network, Position, Station, read_catalogue};
 use crate::tally::Tally;
 use crate::time::Time;
 use crate::units::Wind;
@@ -124,6 +126,10 @@ pub struct StationHealth {
     pub mean_speed: Option<f64>,
     /// Their vector mean.
     pub vector_mean: Option<Wind>,
+    /// Steps found in its reports.
+    pub rounding: Rounding,
+    /// What its speeds were multiplied with to stand for the common height.
+    pub height_factor: Option<f64>,
 }
 
 /// What came of a run.
@@ -184,7 +190,13 @@ pub fn run<T: Send>(
     read.rows = Vec::new();
     check_range(&mut table, &setup.settings.range);
 
-    let mut aligner = Aligner::new(&table, &setup.settings.analysis, setup.settings.sensor);
+    let rounding: Vec<Rounding> = (0..setup.network.len())
+        .map(|s| find_rounding(&table, s))
+        .collect();
+    let (sensors, mut warnings) = station_sensors(setup, &rounding);
+    let factors = sensors.height_factors.clone();
+    levels_agree(&table, &setup.settings)?;
+    let mut aligner = Aligner::new(&table, &setup.settings.analysis, sensors);
     if aligner.grid().is_empty() {
         return Err(no_usable_report(
             &read.tally,
@@ -223,9 +235,13 @@ pub fn run<T: Send>(
     }
     let aligned = aligner.tally();
     let stations = (0..setup.network.len())
-        .map(|s| health(&table, s, aligned.used[s], aligner.values()[s]))
+        .map(|s| StationHealth {
+            rounding: rounding[s],
+            height_factor: factors[s],
+            ..health(&table, s, aligned.used[s], aligner.values()[s])
+        })
         .collect();
-    let mut warnings = setup.built.warnings.clone();
+    warnings.splice(0..0, setup.built.warnings.iter().cloned());
     warnings.append(&mut read.warnings);
     Ok(Outcome {
         rows: read.tally,
@@ -238,6 +254,61 @@ pub fn run<T: Send>(
         warnings,
         failures: read.failures,
     })
+}
+
+/// Errors and height factors of the stations; those whose speeds cannot be reduced are named.
+fn station_sensors(setup: &Setup, rounding: &[Rounding]) -> (StationSensors, Vec<Warning>) {
+    let stated = setup.settings.sensor;
+    let errors = rounding
+        .iter()
+        .map(|found| SensorErrors {
+            speed_step: stated
+                .speed_step
+                .or(found.speed.map(SpeedStep::metres_per_second)),
+            direction_step: stated.direction_step.or(found.direction),
+            ..stated
+        })
+        .collect();
+    let mut warnings = Vec::new();
+    let mut factor = |station: &Station| {
+        let Some(reduction) = setup.settings.analysis.height else {
+            return Some(1.0);
+        };
+        match height_factor(&station.site, &reduction) {
+            Ok(factor) => Some(factor),
+            Err(reason) => {
+                warnings.push(Warning::NoHeightFactor {
+                    station: station.id.clone(),
+                    reason,
+                });
+                None
+            }
+        }
+    };
+    let height_factors = setup.network.stations().iter().map(&mut factor).collect();
+    let sensors = StationSensors {
+        errors,
+        height_factors,
+    };
+    (sensors, warnings)
+}
+
+/// Reports on levels need a level to be asked for.
+fn levels_agree(table: &ReportTable, settings: &Settings) -> Result<(), Error> {
+    let mut levels = (0..table.len()).filter_map(|i| table.moving(i).and_then(|m| m.level));
+    match (table.has_moving(), settings.analysis.level) {
+        (true, None) => match levels.next() {
+            Some(level) => Err(Error::Reports(format!(
+                "the reports stand on levels (the first at {level} Pa or m): state the one to use as `analysis.level`, \
+                 such as \"850 hPa\" or \"100 m\""
+            ))),
+            None => Ok(()),
+        },
+        (false, Some(_)) => Err(Error::Reports(
+            "`analysis.level` is stated, but the reports have no level (`columns.level`)".into(),
+        )),
+        _ => Ok(()),
+    }
 }
 
 fn health(table: &ReportTable, station: usize, used: u64, values: u64) -> StationHealth {

@@ -49,6 +49,10 @@ pub enum Reason {
     NoDirection,
     /// Failed a check.
     FailedCheck,
+    /// The report stands on another level than the one asked for.
+    OtherLevel,
+    /// The speed cannot be reduced to the common height.
+    NoHeightFactor,
     /// Before the first or after the last analysis time.
     OutsidePeriod,
     /// Another report of the station is nearer to the analysis time.
@@ -84,6 +88,8 @@ impl Reason {
             Self::NoSpeed => "no speed",
             Self::NoDirection => "no direction",
             Self::FailedCheck => "failed a check",
+            Self::OtherLevel => "on another level",
+            Self::NoHeightFactor => "no reduction to the height",
             Self::OutsidePeriod => "outside the period",
             Self::NotNearest => "not nearest to an analysis time",
             Self::TooFarInTime => "too far from an analysis time",

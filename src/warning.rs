@@ -31,6 +31,13 @@ pub enum Warning {
         /// The station that may be meant.
         nearest: Option<String>,
     },
+    /// The speeds of a station cannot be reduced to the common height.
+    NoHeightFactor {
+        /// Which.
+        station: String,
+        /// Why.
+        reason: String,
+    },
     /// Input rows that could not be used.
     UnusableRows {
         /// File.
@@ -74,7 +81,7 @@ impl fmt::Display for Warning {
             ),
             Self::LongEdges { polygons, longest } => write!(
                 f,
-                "{polygons} polygons have an edge over {:.0} km (longest {:.0} km); the flux along such an edge is \
+                "polygons with an edge over {:.0} km: {polygons} (longest {:.0} km); the flux along such an edge is \
                  only good to {:.0e} of the wind through it. Set `limits.longest_edge` to leave them out",
                 crate::polygon::LONG_EDGE / 1e3,
                 longest / 1e3,
@@ -94,6 +101,10 @@ impl fmt::Display for Warning {
                     None => Ok(()),
                 }
             }
+            Self::NoHeightFactor { station, reason } => write!(
+                f,
+                "station `{station}` is left out, its speeds cannot be reduced to the common height: {reason}"
+            ),
             Self::UnusableRows { file, rows, first } => {
                 write!(f, "{file}: {rows} rows could not be used")?;
                 for problem in first {

@@ -376,7 +376,7 @@ fn holton_3_divergence_of_four_stations() {
     for (station, &(u, v)) in case.winds.iter().enumerate() {
         let wind = Wind { u, v };
         let covariance = instrument_covariance(wind, false, &sensor);
-        block.set(station, 0, wind, covariance, Flag::Pass);
+        common::set(&mut block, station, 0, wind, covariance, Flag::Pass);
     }
     let se = estimate(&polygons, &block).divergence_se[0] / PLANE.shrink;
     assert!(close(se, 1.31e-5, 5e-8), "{se:e}");
@@ -535,7 +535,7 @@ fn random_block(stations: usize, times: usize) -> WindBlock {
                 uv: a * b,
                 vv: b * b + c * c,
             };
-            block.set(station, time, wind, covariance, Flag::Pass);
+            common::set(&mut block, station, time, wind, covariance, Flag::Pass);
         }
     }
     block
@@ -637,7 +637,7 @@ fn a_missing_station_costs_its_own_polygons_only() {
     let whole = random_block(20, times);
     let mut block = whole.clone();
     let nothing = (Wind::default(), Covariance::default());
-    block.set(3, 7, nothing.0, nothing.1, Flag::Missing);
+    common::set(&mut block, 3, 7, nothing.0, nothing.1, Flag::Missing);
     for (station, time, flag) in [
         (5, 7, Flag::Suspect),
         (5, 8, Flag::Suspect),
@@ -699,7 +699,7 @@ fn an_error_that_cannot_reach_a_value_leaves_none() {
                 v: scale * y,
             };
             let covariance = instrument_covariance(wind, false, &sensor);
-            block.set(station, 0, wind, covariance, Flag::Pass);
+            common::set(&mut block, station, 0, wind, covariance, Flag::Pass);
         }
         let out = estimate(std::slice::from_ref(&case.polygon), &block);
         let noise = case.polygon.shape.noise_factor;

@@ -49,10 +49,10 @@ pub fn instrument_covariance(wind: Wind, calm: bool, sensor: &SensorErrors) -> C
             vv: calm_variance,
         };
     }
+    let speed_step = sensor.speed_step.unwrap_or(0.0);
     let share = sensor.speed_sd_share * sensor.speed_sd_share * squared;
-    let along = (sensor.speed_sd * sensor.speed_sd).max(share)
-        + sensor.speed_step * sensor.speed_step / 12.0;
-    let step = sensor.direction_step.to_radians();
+    let along = (sensor.speed_sd * sensor.speed_sd).max(share) + speed_step * speed_step / 12.0;
+    let step = sensor.direction_step.unwrap_or(0.0).to_radians();
     let direction = sensor.direction_sd.to_radians();
     let across = squared * (direction * direction + step * step / 12.0);
     // e eᵀ and n nᵀ from the components themselves: no square root, no angle.
@@ -84,8 +84,8 @@ mod tests {
             speed_sd: 0.0,
             speed_sd_share: 0.0,
             direction_sd: 0.0,
-            speed_step: 1852.0 / 3600.0,
-            direction_step: 10.0,
+            speed_step: Some(1852.0 / 3600.0),
+            direction_step: Some(10.0),
             calm_below: 0.5,
         };
         let c = instrument_covariance(east, false, &coded);

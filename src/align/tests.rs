@@ -33,8 +33,7 @@ fn analysis(minutes: u64, method: AlignMethod) -> Analysis {
     Analysis {
         interval: Duration::from_secs(60 * minutes),
         method,
-        from: None,
-        to: None,
+        ..Analysis::default()
     }
 }
 
@@ -45,7 +44,11 @@ fn nearest(minutes: u64) -> AlignMethod {
 }
 
 fn run(table: &ReportTable, analysis: &Analysis) -> (WindBlock, AlignTally) {
-    let mut aligner = Aligner::new(table, analysis, SensorErrors::default());
+    let sensors = StationSensors {
+        errors: vec![SensorErrors::default()],
+        height_factors: vec![Some(1.0)],
+    };
+    let mut aligner = Aligner::new(table, analysis, sensors);
     let block = aligner.next_block().unwrap_or_default();
     assert!(aligner.next_block().is_none());
     let tally = aligner.tally();
@@ -137,4 +140,53 @@ fn calm_is_a_wind_of_zero_with_the_error_of_its_threshold() {
     assert!((block.var_u[0] - 0.0625).abs() < 1e-12);
     let variance = block.of_station(0).map(|c| block.var_v[c]).next().unwrap();
     assert!((variance - 0.0625).abs() < 1e-12);
+}
+
+#[test]
+fn linear_needs_a_report_on_both_sides() {
+    let reports = table(&[
+        (0.0, Some(2.0), Some(270.0)),
+        (8.0, Some(6.0), Some(270.0)),
+        (12.0, Some(8.0), Some(270.0)),
+        (40.0, Some(8.0), Some(270.0)),
+    ]);
+    let linear = AlignMethod::Linear {
+        tolerance: Duration::from_mins(10),
+    };
+    let (block, tally) = run(&reports, &analysis(4, linear));
+    let minutes: Vec<i64> = block.times.iter().map(|t| t.micros() / MINUTE).collect();
+    let values: Vec<(i64, f64, f32)> = (0..minutes.len())
+        .filter(|&t| block.flag[t] != Flag::Missing)
+        .map(|t| (minutes[t], block.u[t], block.age[t]))
+        .collect();
+    assert_eq!(
+        values,
+        [
+            (0, 2.0, 0.0),
+            (4, 4.0, 240.0),
+            (8, 6.0, 0.0),
+            (12, 8.0, 0.0),
+            (40, 8.0, 0.0)
+        ]
+    );
+    assert_eq!(tally.all.passed, 4);
+}
+
+#[test]
+fn values_know_their_age_and_height() {
+    let reports = table(&[(1.0, Some(4.0), Some(270.0))]);
+    let sensors = |factor| StationSensors {
+        errors: vec![SensorErrors::default()],
+        height_factors: vec![factor],
+    };
+    let analysis = analysis(5, nearest(2));
+    let block = Aligner::new(&reports, &analysis, sensors(Some(1.5)))
+        .next_block()
+        .unwrap();
+    assert_eq!((block.u[0], block.age[0]), (6.0, 60.0));
+    // 0.25 m/s along the wind, times the factor.
+    assert!((block.var_u[0].sqrt() - 0.375).abs() < 1e-12);
+    let mut aligner = Aligner::new(&reports, &analysis, sensors(None));
+    assert!(aligner.next_block().is_none());
+    assert_eq!(aligner.tally().all.count(Reason::NoHeightFactor), 1);
 }

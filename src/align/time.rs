@@ -22,14 +22,25 @@ impl TimeGrid {
         analysis: &Analysis,
     ) -> Self {
         let interval = micros_of(analysis.interval).max(1);
-        // A report at time t serves the analysis times from t - back to t + ahead.
-        let (back, ahead) = match analysis.method {
+        // Spans of instants that a report at `time` serves, for a line together with the one `before` it.
+        let served = |before: Option<i64>, time: i64| match analysis.method {
             AlignMethod::Nearest { tolerance } => {
                 let reach = micros_of(tolerance).min(interval / 2);
-                (reach, reach)
+                [Some((time - reach, time + reach)), None]
+            }
+            AlignMethod::Linear { tolerance } => {
+                let reach = micros_of(tolerance);
+                let between = before.map(|b| (b.max(time - reach), time.min(b + reach)));
+                [
+                    between.filter(|(start, end)| start <= end),
+                    Some((time, time)),
+                ]
             }
             // The window is open at its start: (t - window, t].
-            AlignMethod::VectorMean { window, .. } => (0, micros_of(window).min(interval) - 1),
+            AlignMethod::VectorMean { window, .. } => {
+                let reach = micros_of(window).min(interval) - 1;
+                [Some((time, time + reach)), None]
+            }
         };
         let first = analysis
             .from
@@ -41,20 +52,24 @@ impl TimeGrid {
         let mut runs: Vec<(i64, i64)> = Vec::new();
         for times in stations {
             let mut open: Option<(i64, i64)> = None;
-            for time in times {
-                let low = ceil_div(time.micros() - back, interval).max(first);
-                let high = (time.micros() + ahead).div_euclid(interval).min(last);
-                if low > high {
-                    continue;
-                }
-                open = match open {
-                    Some((start, end)) if low <= end + 1 => Some((start, end.max(high))),
-                    Some(run) => {
-                        runs.push(run);
-                        Some((low, high))
+            let mut before = None;
+            for time in times.map(Time::micros) {
+                for (start, end) in served(before, time).into_iter().flatten() {
+                    let low = ceil_div(start, interval).max(first);
+                    let high = end.div_euclid(interval).min(last);
+                    if low > high {
+                        continue;
                     }
-                    None => Some((low, high)),
-                };
+                    open = match open {
+                        Some((start, end)) if low <= end + 1 => Some((start, end.max(high))),
+                        Some(run) => {
+                            runs.push(run);
+                            Some((low, high))
+                        }
+                        None => Some((low, high)),
+                    };
+                }
+                before = Some(time);
             }
             runs.extend(open);
         }

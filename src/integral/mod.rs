@@ -33,6 +33,8 @@ pub struct EstimateBlock {
     pub divergence_se: Vec<f64>,
     /// Worst flag of the stations.
     pub flag: Vec<Flag>,
+    /// Largest age of the stations' values, s.
+    pub age: Vec<f32>,
 }
 
 /// Estimates every polygon at every time of a block, in one pass over the columns of its stations.
@@ -51,6 +53,7 @@ pub fn estimate(polygons: &[StationPolygon], winds: &WindBlock) -> EstimateBlock
         divergence: vec![0.0; cells],
         divergence_se: vec![0.0; cells],
         flag: vec![Flag::NotEvaluated; cells],
+        age: vec![0.0; cells],
     };
     if n == 0 {
         return out;
@@ -61,21 +64,26 @@ pub fn estimate(polygons: &[StationPolygon], winds: &WindBlock) -> EstimateBlock
         .zip(out.vorticity_se.chunks_exact_mut(n))
         .zip(out.divergence.chunks_exact_mut(n))
         .zip(out.divergence_se.chunks_exact_mut(n))
-        .zip(out.flag.chunks_exact_mut(n));
-    for (polygon, ((((vorticity, vorticity_se), divergence), divergence_se), flag)) in
+        .zip(out.flag.chunks_exact_mut(n))
+        .zip(out.age.chunks_exact_mut(n));
+    for (polygon, (((((vorticity, vorticity_se), divergence), divergence_se), flag), age)) in
         polygons.iter().zip(columns)
     {
         add_values(&polygon.row, winds, vorticity, divergence);
         add_variances(&polygon.row, winds, vorticity_se, divergence_se);
         for &station in &polygon.row.stations {
-            for (flag, &of_station) in flag.iter_mut().zip(&winds.flag[winds.of_station(station)]) {
+            let cells = winds.of_station(station);
+            for (flag, &of_station) in flag.iter_mut().zip(&winds.flag[cells.clone()]) {
                 *flag = flag.worst(of_station);
+            }
+            for (age, &of_station) in age.iter_mut().zip(&winds.age[cells]) {
+                *age = age.max(of_station);
             }
         }
         for t in 0..n {
             if flag[t] == Flag::Missing {
-                vorticity[t] = 0.0;
-                divergence[t] = 0.0;
+                (vorticity[t], divergence[t]) = (0.0, 0.0);
+                (vorticity_se[t], divergence_se[t]) = (0.0, 0.0);
             }
             // Rounding may leave a variance of nothing just below 0.
             vorticity_se[t] = vorticity_se[t].max(0.0).sqrt();

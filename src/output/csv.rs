@@ -10,7 +10,7 @@ use crate::station::Network;
 
 /// Header of `polygons.csv`: the first eleven columns are the contract of the format.
 const POLYGON_COLUMNS: &str = "time,polygon,stations,area_km2,vorticity,vorticity_se,divergence,divergence_se,\
-                               planetary_vorticity,absolute_vorticity,flag,sense\n";
+                               planetary_vorticity,absolute_vorticity,flag,sense,age_s\n";
 
 /// Writes rows of `polygons.csv`, one for each time and polygon.
 pub struct PolygonRows {
@@ -87,6 +87,10 @@ impl PolygonRows {
                 out.push(b'0' + block.flag[cell].value());
                 out.push(b',');
                 out.extend_from_slice(sense.map_or("", Sense::name).as_bytes());
+                out.push(b',');
+                if !missing {
+                    out.extend_from_slice(buffer.format(block.age[cell]).as_bytes());
+                }
                 out.push(b'\n');
             }
         }
@@ -132,7 +136,7 @@ fn optional(value: Option<f64>) -> String {
 pub fn stations_csv(setup: &Setup, outcome: &Outcome) -> String {
     let mut out = String::from(
         "station,name,latitude,longitude,elevation_m,reports,calm,no_direction,no_speed,suspect,failed,used,values,\
-         availability,first_report,last_report,mean_speed,vector_mean_speed,vector_mean_direction\n",
+         availability,first_report,last_report,mean_speed,vector_mean_speed,vector_mean_direction,direction_step_deg,speed_step,speed_step_unit,height_factor\n",
     );
     let times = outcome.grid.len().max(1) as f64;
     for (station, health) in setup.network.stations().iter().zip(&outcome.stations) {
@@ -163,6 +167,14 @@ pub fn stations_csv(setup: &Setup, outcome: &Outcome) -> String {
                 mean.and_then(crate::units::Wind::from_direction)
                     .map(crate::units::FromDirection::degrees),
             ),
+            optional(health.rounding.direction),
+            optional(health.rounding.speed.map(|s| s.count)),
+            health
+                .rounding
+                .speed
+                .map_or("", |s| s.unit.symbol())
+                .to_string(),
+            optional(health.height_factor),
         ];
         out.push_str(&fields.join(","));
         out.push('\n');

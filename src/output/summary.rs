@@ -98,6 +98,9 @@ fn settings(settings: &Settings) -> Value {
         AlignMethod::Nearest { tolerance } => {
             json!({ "method": "nearest", "tolerance_s": tolerance.as_secs_f64() })
         }
+        AlignMethod::Linear { tolerance } => {
+            json!({ "method": "linear", "tolerance_s": tolerance.as_secs_f64() })
+        }
         AlignMethod::VectorMean {
             window,
             least_reports,
@@ -120,6 +123,8 @@ fn settings(settings: &Settings) -> Value {
             "align": method,
             "from": analysis.from.map(|t| t.to_string()),
             "to": analysis.to.map(|t| t.to_string()),
+            "height_m": analysis.height.map(|h| h.height),
+            "level": analysis.level,
         },
         "check": settings.range,
         "limits": settings.limits,

@@ -7,6 +7,7 @@ use nalgebra::Vector3;
 
 use super::delaunay::{network_centre, triangulate};
 use super::ring::{defects, overlap};
+use super::shape::interior_angles;
 use super::sphere::{latitude_longitude, unit_vector};
 use super::{
     CoefficientRow, DirectedEdge, EdgeSet, Exclusion, InvalidPolygon, LONG_EDGE, PolygonKind,
@@ -108,6 +109,13 @@ fn warn(built: &mut BuiltPolygons) {
     }
 }
 
+/// A part of a region: the number of a polygon within the limits, or of one left out.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+enum PartOf {
+    Used(usize),
+    LeftOut(usize),
+}
+
 struct Builder<'a> {
     network: &'a Network,
     limits: &'a PolygonLimits,
@@ -135,11 +143,12 @@ impl Builder<'_> {
                 .map(|s| self.network.stations()[s].id.as_str())
                 .join("+");
             match self.polygon(id, PolygonKind::Triangle, vec![ring.to_vec()]) {
-                Some(polygon) if polygon.shape.smallest_angle >= FLAT => self.add(polygon),
-                _ => self.built.flat += 1,
+                Some(polygon) => self.add(polygon),
+                None => self.built.flat += 1,
             }
         }
-        if self.built.polygons.is_empty() && self.built.excluded.is_empty() {
+        let flat = |p: &StationPolygon| p.shape.smallest_angle < FLAT;
+        if self.built.polygons.is_empty() && self.built.excluded.iter().all(|(p, _)| flat(p)) {
             return Err(Error::Network(format!(
                 "all {} stations stand on one line; they make no polygon",
                 stations.len()
@@ -167,10 +176,13 @@ impl Builder<'_> {
                 ring.reverse();
             }
             match self.polygon(name.to_string(), PolygonKind::Ring, vec![ring]) {
-                Some(polygon) => {
-                    self.add(polygon);
-                    return;
-                }
+                Some(polygon) => match self.spike(&polygon) {
+                    None => {
+                        self.add(polygon);
+                        return;
+                    }
+                    Some(defect) => defects.push(defect),
+                },
                 None => defects.push(InvalidPolygon::Flat),
             }
         }
@@ -179,9 +191,26 @@ impl Builder<'_> {
         }
     }
 
+    /// The corner of a ring where it runs back the way it came, which rounding can hide from the test for crossings.
+    fn spike(&self, polygon: &StationPolygon) -> Option<InvalidPolygon> {
+        let edges = &self.built.edges;
+        let corner = interior_angles(&polygon.path, edges)
+            .position(|a| !(FLAT..=360.0 - FLAT).contains(&a))?;
+        let name = |edge: DirectedEdge| {
+            let (from, to, _) = edges.ends(edge);
+            let id = |s: usize| self.network.stations()[s].id.clone();
+            (id(from), id(to))
+        };
+        let before = (corner + polygon.path.len() - 1) % polygon.path.len();
+        Some(InvalidPolygon::EdgesCross {
+            first: name(polygon.path[before]),
+            second: name(polygon.path[corner]),
+        })
+    }
+
     fn region(&mut self, region: &RegionSettings) {
         let place = &region.place;
-        let parts: Vec<usize> = match &region.parts {
+        let parts: Vec<PartOf> = match &region.parts {
             RegionParts::AllTriangles => self.triangles_where(|_| true),
             RegionParts::TrianglesOf(stations) => {
                 let mut wanted = HashSet::new();
@@ -199,7 +228,7 @@ impl Builder<'_> {
                 let mut parts = Vec::new();
                 for id in ids {
                     if let Some(k) = self.built.polygons.iter().position(|p| &p.id == id) {
-                        parts.push(k);
+                        parts.push(PartOf::Used(k));
                     } else {
                         self.missing_part(region, id);
                     }
@@ -224,14 +253,38 @@ impl Builder<'_> {
         self.built.polygons.push(polygon);
     }
 
-    fn triangles_where(&self, wanted: impl Fn(&[usize]) -> bool) -> Vec<usize> {
-        let polygons = self.built.polygons.iter().enumerate();
-        polygons
-            .filter(|(_, p)| {
-                p.kind == PolygonKind::Triangle && p.outline.iter().all(|ring| wanted(ring))
-            })
-            .map(|(k, _)| k)
-            .collect()
+    fn part(&self, part: PartOf) -> &StationPolygon {
+        match part {
+            PartOf::Used(k) => &self.built.polygons[k],
+            PartOf::LeftOut(k) => &self.built.excluded[k].0,
+        }
+    }
+
+    /// The triangles whose ring is wanted. Of those left out, the ones that other parts enclose belong to a region all
+    /// the same: their sides cancel, and without them the region would have holes. So they are taken off from the
+    /// outside only.
+    fn triangles_where(&self, wanted: impl Fn(&[usize]) -> bool) -> Vec<PartOf> {
+        let used = (0..self.built.polygons.len()).map(PartOf::Used);
+        let left_out = (0..self.built.excluded.len()).map(PartOf::LeftOut);
+        let is_wanted = |part: &PartOf| {
+            let p = self.part(*part);
+            p.kind == PolygonKind::Triangle && p.outline.iter().all(|ring| wanted(ring))
+        };
+        let mut parts: Vec<PartOf> = used.chain(left_out).filter(is_wanted).collect();
+        loop {
+            let mut sides: HashMap<usize, u32> = HashMap::new();
+            for side in parts.iter().flat_map(|&part| &self.part(part).path) {
+                *sides.entry(side.edge).or_default() += 1;
+            }
+            let before = parts.len();
+            parts.retain(|&part| {
+                let enclosed = |side: &DirectedEdge| sides.get(&side.edge) == Some(&2);
+                matches!(part, PartOf::Used(_)) || self.part(part).path.iter().all(enclosed)
+            });
+            if parts.len() == before {
+                return parts;
+            }
+        }
     }
 
     fn missing_part(&mut self, region: &RegionSettings, id: &str) {
@@ -251,11 +304,11 @@ impl Builder<'_> {
     }
 
     /// Triangles never overlap each other; anything with a ring or region among them is looked at pair by pair.
-    fn parts_overlap(&mut self, region: &RegionSettings, parts: &[usize]) -> bool {
+    fn parts_overlap(&mut self, region: &RegionSettings, parts: &[PartOf]) -> bool {
         let before = self.problems.len();
         for (k, &a) in parts.iter().enumerate() {
             for &b in &parts[k + 1..] {
-                let (pa, pb) = (&self.built.polygons[a], &self.built.polygons[b]);
+                let (pa, pb) = (self.part(a), self.part(b));
                 let triangles =
                     pa.kind == PolygonKind::Triangle && pb.kind == PolygonKind::Triangle;
                 let shared = if triangles {
@@ -282,11 +335,11 @@ impl Builder<'_> {
     }
 
     /// The union: edges that two parts share cancel before anything is added up, the outline remains.
-    fn union(&mut self, name: &str, parts: &[usize]) -> StationPolygon {
+    fn union(&self, name: &str, parts: &[PartOf]) -> StationPolygon {
         let mut net: BTreeMap<usize, i32> = BTreeMap::new();
         let mut area = crate::sum::CompensatedSum::default();
         for &k in parts {
-            let part = &self.built.polygons[k];
+            let part = self.part(k);
             area.add(part.shape.area);
             for directed in &part.path {
                 *net.entry(directed.edge).or_default() += if directed.forward { 1 } else { -1 };
@@ -367,7 +420,10 @@ impl Builder<'_> {
     }
 
     fn add(&mut self, polygon: StationPolygon) {
-        match Exclusion::of(&polygon.shape, self.limits) {
+        let angle = polygon.shape.smallest_angle;
+        let flat = polygon.kind == PolygonKind::Triangle && angle < FLAT;
+        let why = flat.then_some(Exclusion::SmallAngle(angle, FLAT));
+        match why.or_else(|| Exclusion::of(&polygon.shape, self.limits)) {
             None => self.built.polygons.push(polygon),
             Some(why) => self.built.excluded.push((polygon, why)),
         }

@@ -39,21 +39,7 @@ impl Shape {
     ) -> Self {
         let lengths = ring.iter().map(|&e| edges.ends(e).2);
         let squares: f64 = lengths.clone().map(|l| l * l).sum();
-        let smallest_angle = (0..ring.len())
-            .map(|k| {
-                // The edge that ends here: the one before, or the last of the path where a path begins.
-                let here = edges.ends(ring[k]).0;
-                let ends_here = |e: &&DirectedEdge| edges.ends(**e).1 == here;
-                let before = ring[..k]
-                    .last()
-                    .filter(ends_here)
-                    .or_else(|| ring[k..].iter().find(ends_here));
-                // From the way out round to the way back: the inside lies to the left.
-                let out = edges.azimuths(ring[k]).0;
-                let back = before.map_or(out, |&e| edges.azimuths(e).1 + 180.0);
-                (out - back).rem_euclid(360.0)
-            })
-            .fold(f64::INFINITY, f64::min);
+        let smallest_angle = interior_angles(ring, edges).fold(f64::INFINITY, f64::min);
         let elevations: Option<Vec<f64>> = ring
             .iter()
             .map(|&e| network.stations()[edges.ends(e).0].elevation)
@@ -76,6 +62,26 @@ impl Shape {
             }),
         }
     }
+}
+
+/// Interior angle at the start of each edge of a path, degrees in 0 to 360.
+pub(super) fn interior_angles<'a>(
+    path: &'a [DirectedEdge],
+    edges: &'a EdgeSet,
+) -> impl Iterator<Item = f64> + 'a {
+    (0..path.len()).map(|k| {
+        // The edge that ends here: the one before, or the last of the path where a path begins.
+        let here = edges.ends(path[k]).0;
+        let ends_here = |e: &&DirectedEdge| edges.ends(**e).1 == here;
+        let before = path[..k]
+            .last()
+            .filter(ends_here)
+            .or_else(|| path[k..].iter().find(ends_here));
+        // From the way out round to the way back: the inside lies to the left.
+        let out = edges.azimuths(path[k]).0;
+        let back = before.map_or(out, |&e| edges.azimuths(e).1 + 180.0);
+        (out - back).rem_euclid(360.0)
+    })
 }
 
 /// Why a polygon is left out, with its figure and the limit.

@@ -11,6 +11,7 @@ mod format;
 mod metar;
 mod names;
 mod read;
+mod rounding;
 mod rows;
 mod synop;
 mod table;
@@ -20,6 +21,7 @@ pub use coded::{CodeError, CodedDirection, CodedSpeed, CodedWind, DayTime, Entry
 pub use format::{Columns, North, ReportForm, ReportFormat, WindColumns};
 pub use metar::{Metar, Metars, metars, parse_metar};
 pub use read::{FileOutcome, ReadOutcome, read_reports};
+pub use rounding::{Rounding, SpeedStep, find_rounding};
 pub use rows::{Moving, Part, Report, Rows};
 pub use synop::{Synop, Synops, synops};
 pub use table::{Conflict, Content, ReportTable};

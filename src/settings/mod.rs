@@ -10,6 +10,7 @@ mod section;
 use std::path::PathBuf;
 use std::time::Duration;
 
+use crate::align::HeightReduction;
 use crate::error::Place;
 use crate::report::ReportFormat;
 use crate::station::Catalogue;
@@ -61,10 +62,10 @@ pub struct SensorErrors {
     pub speed_sd_share: f64,
     /// Standard deviation of the direction, degrees.
     pub direction_sd: f64,
-    /// Step of the reported speeds, m/s; 0 if finer than matters.
-    pub speed_step: f64,
-    /// Step of the reported directions, degrees; 0 if finer than matters.
-    pub direction_step: f64,
+    /// Step of the reported speeds, m/s; if not stated, found for each station from its reports.
+    pub speed_step: Option<f64>,
+    /// Step of the reported directions, degrees; if not stated, found for each station from its reports.
+    pub direction_step: Option<f64>,
     /// A calm means a speed below this, m/s.
     pub calm_below: f64,
 }
@@ -75,8 +76,8 @@ impl Default for SensorErrors {
             speed_sd: 0.25,
             speed_sd_share: 0.05,
             direction_sd: 2.5,
-            speed_step: 0.0,
-            direction_step: 0.0,
+            speed_step: None,
+            direction_step: None,
             calm_below: 0.5,
         }
     }
@@ -93,6 +94,10 @@ pub struct Analysis {
     pub from: Option<Time>,
     /// Last analysis time, if limited.
     pub to: Option<Time>,
+    /// Common height to which speeds are reduced, if asked for.
+    pub height: Option<HeightReduction>,
+    /// The level to use, where reports stand on levels: height, m, or pressure, Pa.
+    pub level: Option<f64>,
 }
 
 impl Default for Analysis {
@@ -105,6 +110,8 @@ impl Default for Analysis {
             },
             from: None,
             to: None,
+            height: None,
+            level: None,
         }
     }
 }
@@ -114,6 +121,11 @@ impl Default for Analysis {
 pub enum AlignMethod {
     /// The report nearest in time, at most `tolerance` away; of two equally near the earlier.
     Nearest {
+        /// Largest distance in time.
+        tolerance: Duration,
+    },
+    /// u and v on the straight line between the reports before and after, each at most `tolerance` away.
+    Linear {
         /// Largest distance in time.
         tolerance: Duration,
     },
@@ -184,9 +196,9 @@ pub struct RegionSettings {
 pub enum RegionParts {
     /// These polygons.
     Polygons(Vec<String>),
-    /// All triangles within the limits whose corners are all among these stations.
+    /// All triangles whose corners are all among these stations; those outside the limits only where they are enclosed.
     TrianglesOf(Vec<String>),
-    /// All triangles within the limits.
+    /// All triangles; those outside the limits only where they are enclosed.
     AllTriangles,
 }
 

@@ -9,6 +9,7 @@ use super::{
     AlignMethod, Analysis, PolygonChoice, PolygonLimits, RangeLimits, RegionParts, RegionSettings,
     RingSettings, SensorErrors, Settings,
 };
+use crate::align::{HeightReduction, Profile};
 use crate::error::{Error, Problem};
 use crate::station::{Catalogue, StationColumns};
 use crate::time::Time;
@@ -119,14 +120,11 @@ fn catalogue(section: &mut Section) -> Catalogue {
 
 fn sensor(mut section: Section) -> SensorErrors {
     let default = SensorErrors::default();
-    let mut speed = |key, default| section.parsed(key, units::parse_speed).unwrap_or(default);
-    let (speed_sd, speed_step, calm_below) = (
-        speed("speed_sd", default.speed_sd),
-        speed("speed_step", default.speed_step),
-        speed("calm_below", default.calm_below),
-    );
+    let mut speed = |key| section.parsed(key, units::parse_speed);
+    let (speed_sd, speed_step, calm_below) =
+        (speed("speed_sd"), speed("speed_step"), speed("calm_below"));
     let errors = SensorErrors {
-        speed_sd,
+        speed_sd: speed_sd.unwrap_or(default.speed_sd),
         speed_sd_share: section
             .number("speed_sd_share", 0.0..=1.0)
             .unwrap_or(default.speed_sd_share),
@@ -134,10 +132,8 @@ fn sensor(mut section: Section) -> SensorErrors {
             .number("direction_sd", 0.0..=90.0)
             .unwrap_or(default.direction_sd),
         speed_step,
-        direction_step: section
-            .number("direction_step", 0.0..=90.0)
-            .unwrap_or(default.direction_step),
-        calm_below,
+        direction_step: section.number("direction_step", 0.0..=90.0),
+        calm_below: calm_below.unwrap_or(default.calm_below),
     };
     section.finish();
     errors
@@ -162,6 +158,7 @@ fn analysis(mut section: Section, overrides: &Overrides) -> Analysis {
         .value::<u32>("least_reports")
         .map_or(1, |f| f.value.max(1));
     let nearest = AlignMethod::Nearest { tolerance };
+    let linear = AlignMethod::Linear { tolerance };
     let mean = AlignMethod::VectorMean {
         window,
         least_reports,
@@ -171,11 +168,12 @@ fn analysis(mut section: Section, overrides: &Overrides) -> Analysis {
         None => nearest,
         Some(found) => match found.value.as_str() {
             "nearest" => nearest,
+            "linear" => linear,
             "mean" => mean,
             other => {
                 section.problem(
                     found.place,
-                    format!("`{other}` is no method (`nearest` or `mean` expected)"),
+                    format!("`{other}` is no method (`nearest`, `linear` or `mean` expected)"),
                 );
                 nearest
             }
@@ -188,6 +186,8 @@ fn analysis(mut section: Section, overrides: &Overrides) -> Analysis {
         method,
         from: overrides.from.or(from),
         to: overrides.to.or(to),
+        height: height(&mut section),
+        level: section.parsed("level", level),
     };
     if let (Some(from), Some(to)) = (analysis.from, analysis.to)
         && from > to
@@ -199,6 +199,37 @@ fn analysis(mut section: Section, overrides: &Overrides) -> Analysis {
     }
     section.finish();
     analysis
+}
+
+/// The common height, if asked for.
+fn height(section: &mut Section) -> Option<HeightReduction> {
+    let height = section.parsed("height", units::parse_length);
+    let logarithmic = section.choice("profile", &[("log", true), ("power", false)]);
+    let exponent = section.number("exponent", 0.0..=1.0);
+    let profile = match logarithmic {
+        // 1/7 is the usual exponent of neutral air over open ground (common practice).
+        Some(false) => Profile::Power {
+            exponent: exponent.unwrap_or(1.0 / 7.0),
+        },
+        _ => Profile::Logarithmic,
+    };
+    Some(HeightReduction {
+        height: height.filter(|h| *h > 0.0)?,
+        profile,
+    })
+}
+
+/// A level: pressure, Pa, or height, m.
+fn level(text: &str) -> Result<f64, String> {
+    let pressure = text.strip_suffix("hPa").map(|n| (n, 100.0));
+    if let Some((number, factor)) = pressure.or_else(|| text.strip_suffix("Pa").map(|n| (n, 1.0))) {
+        let number: Option<f64> = number.trim().parse().ok().filter(|n: &f64| n.is_finite());
+        return number
+            .map(|n| n * factor)
+            .ok_or_else(|| format!("`{text}` is not a level (such as `850 hPa` or `100 m`)"));
+    }
+    units::parse_length(text)
+        .map_err(|_| format!("`{text}` is not a level (such as `850 hPa` or `100 m`)"))
 }
 
 fn range(mut section: Section) -> RangeLimits {

@@ -1,24 +1,44 @@
-//! Reads station lists.
+//! Reads station lists: text tables and GeoJSON.
 
-use std::collections::HashMap;
+use std::io::{self, Read};
 use std::path::Path;
 
-use super::{Network, Position, Station, tidy_id};
+use super::{StationList, features, table};
 use crate::error::{Error, Place, Problem, nearest_name};
+use crate::input::{Blocks, TextFormat, open};
 
-/// Which columns of a station list hold what.
+/// A list in GeoJSON is read as a whole; a larger one is a slip.
+const LARGEST_GEOJSON: u64 = 1 << 30;
+/// The form of a list shows in its first bytes.
+const FIRST_BYTES: u64 = 1 << 10;
+
+/// Which columns of a station list hold what; in GeoJSON, which properties.
 #[derive(Debug, Clone, PartialEq, Eq, serde::Serialize)]
 pub struct StationColumns {
     /// Identifier, as the reports write it.
     pub id: String,
     /// Name for people.
     pub name: Option<String>,
-    /// Degrees north.
+    /// Degrees north. In GeoJSON the position is that of the point.
     pub latitude: String,
     /// Degrees east.
     pub longitude: String,
     /// Height of the ground above mean sea level.
     pub elevation: Option<String>,
+    /// Other identifiers: a whole field is one, and so is each of its parts between `;`.
+    pub aliases: Vec<String>,
+    /// From when on the station stands there: RFC 3339, or a date for 00:00 UTC.
+    pub valid_from: Option<String>,
+    /// Until when, exclusive.
+    pub valid_to: Option<String>,
+    /// Unit of the station's speeds.
+    pub speed_unit: Option<String>,
+    /// Magnetic declination, degrees, east positive.
+    pub declination: Option<String>,
+    /// Height of the sensor above the ground, m.
+    pub sensor_height: Option<String>,
+    /// Roughness length of the surroundings, m.
+    pub roughness: Option<String>,
 }
 
 impl Default for StationColumns {
@@ -29,6 +49,13 @@ impl Default for StationColumns {
             latitude: "latitude".into(),
             longitude: "longitude".into(),
             elevation: None,
+            aliases: Vec::new(),
+            valid_from: None,
+            valid_to: None,
+            speed_unit: None,
+            declination: None,
+            sensor_height: None,
+            roughness: None,
         }
     }
 }
@@ -38,139 +65,67 @@ impl Default for StationColumns {
 pub struct Catalogue {
     /// Column names.
     pub columns: StationColumns,
+    /// How the text is written, if it is a table.
+    pub text: TextFormat,
     /// One unit of the elevation column in metres.
     pub elevation_unit: f64,
     /// Only these stations, if given.
     pub only: Option<Vec<String>>,
+    /// The list is a table of reports: of each station the first row with a position holds.
+    pub first_of_each: bool,
 }
 
-/// Reads a station list in CSV, with a header line.
+impl Default for Catalogue {
+    fn default() -> Self {
+        Self {
+            columns: StationColumns::default(),
+            text: TextFormat::default(),
+            elevation_unit: 1.0,
+            only: None,
+            first_of_each: false,
+        }
+    }
+}
+
+/// Reads a station list, compressed or not: GeoJSON if its first sign is `{`, else a text table with a header line.
 ///
 /// # Errors
 /// All defects of the list, or the system's refusal to read it.
-pub fn read_catalogue(path: &Path, catalogue: &Catalogue) -> Result<Network, Error> {
-    let bytes = std::fs::read(path).map_err(|e| Error::read(path, e))?;
+pub fn read_catalogue(path: &Path, catalogue: &Catalogue) -> Result<StationList, Error> {
     let file = path.display().to_string();
-    parse_catalogue(&file, &bytes, catalogue).map_err(Error::Invalid)
+    let input = open(path).map_err(|e| Error::read(path, e))?;
+    read_list(&file, input, catalogue)
+        .map_err(|e| Error::read(path, e))?
+        .map_err(Error::Invalid)
 }
 
-struct ColumnIndex {
-    id: usize,
-    name: Option<usize>,
-    latitude: usize,
-    longitude: usize,
-    elevation: Option<usize>,
-}
-
-fn parse_catalogue(
+/// Reads a list from anything.
+fn read_list(
     file: &str,
-    bytes: &[u8],
+    mut input: impl Read,
     catalogue: &Catalogue,
-) -> Result<Network, Vec<Problem>> {
-    let bytes = bytes.strip_prefix(b"\xef\xbb\xbf").unwrap_or(bytes);
-    let mut reader = csv::ReaderBuilder::new()
-        .trim(csv::Trim::All)
-        .flexible(true)
-        .from_reader(bytes);
-    let header = reader.headers().cloned().unwrap_or_default();
-    let columns = find_columns(file, &header, &catalogue.columns)?;
-
-    let mut list = List {
-        file,
-        columns: &catalogue.columns,
-        elevation_unit: catalogue.elevation_unit,
-        problems: Vec::new(),
-    };
-    let mut stations: Vec<Station> = Vec::new();
-    let mut not_asked_for = Vec::new();
-    let mut first_line: HashMap<String, u64> = HashMap::new();
-    for record in reader.records() {
-        let record = match record {
-            Ok(record) => record,
-            Err(error) => {
-                list.problems.push(Problem::new(
-                    Place {
-                        file: file.into(),
-                        line: error.position().map(csv::Position::line),
-                        column: None,
-                    },
-                    "the line is not UTF-8 text",
-                ));
-                continue;
-            }
-        };
-        let line = record.position().map_or(0, csv::Position::line);
-        let id = tidy_id(record.get(columns.id).unwrap_or(""));
-        if let Some(only) = &catalogue.only
-            && !only.iter().any(|o| tidy_id(o) == id)
-        {
-            not_asked_for.push(id);
-            continue;
-        }
-        if id.is_empty() {
-            list.problem(line, &catalogue.columns.id, "the identifier is empty");
-            continue;
-        }
-        if let Some(first) = first_line.get(&id) {
-            let message =
-                format!("station `{id}` is already on line {first} (each station once expected)");
-            list.problem(line, &catalogue.columns.id, message);
-            continue;
-        }
-        first_line.insert(id.clone(), line);
-        if let Some(station) = list.station(&record, &columns, line, id) {
-            stations.push(station);
-        }
+) -> io::Result<Result<StationList, Vec<Problem>>> {
+    let mut start = Vec::new();
+    input
+        .by_ref()
+        .take(FIRST_BYTES)
+        .read_to_end(&mut start)?;
+    let text = start.strip_prefix(b"\xef\xbb\xbf").unwrap_or(&start);
+    let is_geojson = text.trim_ascii_start().starts_with(b"{");
+    let mut input = start.chain(input);
+    if !is_geojson {
+        return table::read_table(file, Blocks::new(input), catalogue);
     }
-    let mut problems = list.problems;
-    for wanted in catalogue.only.iter().flatten() {
-        if !first_line.contains_key(&tidy_id(wanted)) {
-            problems.push(Problem::new(
-                Place {
-                    file: file.into(),
-                    line: None,
-                    column: Some(catalogue.columns.id.clone()),
-                },
-                format!("station `{wanted}`, asked for in the settings, is not in the list"),
-            ));
-        }
+    let mut bytes = Vec::new();
+    input
+        .by_ref()
+        .take(LARGEST_GEOJSON + 1)
+        .read_to_end(&mut bytes)?;
+    if bytes.len() as u64 > LARGEST_GEOJSON {
+        let message = format!("it is larger than {} MiB", LARGEST_GEOJSON >> 20);
+        return Err(io::Error::new(io::ErrorKind::FileTooLarge, message));
     }
-    if problems.is_empty() {
-        Ok(Network::new(stations).with_not_asked_for(not_asked_for))
-    } else {
-        Err(problems)
-    }
-}
-
-/// Finds the columns in the header; names those found when one is missing.
-fn find_columns(
-    file: &str,
-    header: &csv::StringRecord,
-    columns: &StationColumns,
-) -> Result<ColumnIndex, Vec<Problem>> {
-    let mut problems = Vec::new();
-    let mut find = |name: &str| {
-        let found = header.iter().position(|h| h == name);
-        if found.is_none() {
-            problems.push(missing_column(file, name, header.iter()));
-        }
-        found
-    };
-    let id = find(&columns.id);
-    let latitude = find(&columns.latitude);
-    let longitude = find(&columns.longitude);
-    let name = columns.name.as_deref().map(&mut find);
-    let elevation = columns.elevation.as_deref().map(&mut find);
-    match (id, latitude, longitude) {
-        (Some(id), Some(latitude), Some(longitude)) if problems.is_empty() => Ok(ColumnIndex {
-            id,
-            name: name.flatten(),
-            latitude,
-            longitude,
-            elevation: elevation.flatten(),
-        }),
-        _ => Err(problems),
-    }
+    Ok(features::read_features(file, &bytes, catalogue))
 }
 
 /// The problem of a column that a header lacks.
@@ -200,97 +155,20 @@ pub(crate) fn missing_column<'a>(
     )
 }
 
-struct List<'a> {
-    file: &'a str,
-    columns: &'a StationColumns,
-    elevation_unit: f64,
-    problems: Vec<Problem>,
-}
-
-impl List<'_> {
-    fn problem(&mut self, line: u64, column: &str, message: impl Into<String>) {
-        self.problems.push(Problem::new(
-            Place {
-                file: self.file.into(),
-                line: Some(line),
-                column: Some(column.into()),
-            },
-            message,
-        ));
-    }
-
-    fn number(
-        &mut self,
-        record: &csv::StringRecord,
-        index: usize,
-        line: u64,
-        column: &str,
-    ) -> Option<f64> {
-        let text = record.get(index).unwrap_or("");
-        match text.parse::<f64>() {
-            Ok(number) if number.is_finite() => Some(number),
-            _ => {
-                self.problem(line, column, format!("`{text}` is not a number"));
-                None
-            }
-        }
-    }
-
-    fn station(
-        &mut self,
-        record: &csv::StringRecord,
-        index: &ColumnIndex,
-        line: u64,
-        id: String,
-    ) -> Option<Station> {
-        let columns = self.columns;
-        let latitude = self.number(record, index.latitude, line, &columns.latitude);
-        let longitude = self.number(record, index.longitude, line, &columns.longitude);
-        let elevation = match (index.elevation, &columns.elevation) {
-            // An unknown elevation is common in lists and only leaves out a shape measure.
-            (Some(i), Some(column)) if !record.get(i).unwrap_or("").is_empty() => {
-                self.number(record, i, line, column)
-            }
-            _ => None,
-        };
-        let position = match Position::new(latitude?, longitude?) {
-            Ok(position) => position,
-            Err(message) => {
-                let column = if message.starts_with("latitude") {
-                    &columns.latitude
-                } else {
-                    &columns.longitude
-                };
-                self.problem(line, column, message);
-                return None;
-            }
-        };
-        let name = index
-            .name
-            .and_then(|i| record.get(i))
-            .filter(|name| !name.is_empty())
-            .unwrap_or(&id)
-            .to_string();
-        Some(Station {
-            name,
-            elevation: elevation.map(|e| e * self.elevation_unit),
-            ..Station::new(id, position)
-        })
-    }
-}
-
 #[cfg(test)]
 #[expect(clippy::unwrap_used, reason = "a test may panic")]
 mod tests {
+    use super::super::{Network, Period};
     use super::*;
 
     fn read(text: &str, only: Option<Vec<String>>) -> Result<Network, Vec<String>> {
         let catalogue = Catalogue {
-            columns: StationColumns::default(),
-            elevation_unit: 1.0,
             only,
+            ..Catalogue::default()
         };
-        parse_catalogue("s.csv", text.as_bytes(), &catalogue)
+        read_list("s.csv", text.as_bytes(), &catalogue)
+            .unwrap()
+            .and_then(|list| list.network(Period::default()))
             .map_err(|problems| problems.iter().map(ToString::to_string).collect())
     }
 

@@ -144,3 +144,21 @@ impl Plane {
             .collect()
     }
 }
+
+/// Sets a wind of a block, of no age.
+pub fn set(
+    block: &mut gyremesh::align::WindBlock,
+    station: usize,
+    time: usize,
+    wind: Wind,
+    covariance: gyremesh::align::Covariance,
+    flag: gyremesh::check::Flag,
+) {
+    let value = gyremesh::align::AlignedWind {
+        wind,
+        covariance,
+        flag,
+        age: 0.0,
+    };
+    block.set(station, time, &value);
+}
