@@ -35,6 +35,8 @@ pub enum Reason {
     StationNotAskedFor,
     /// Before or after the time for which the list has the station where it stands.
     OutsideValidity,
+    /// A row of the same station and time that lacks what another has.
+    Emptier,
     /// The other half of a report: speed and direction came separately.
     Joined,
     /// The same report again.
@@ -81,6 +83,7 @@ impl Reason {
             Self::UnknownStation => "unknown station",
             Self::StationNotAskedFor => "station not asked for",
             Self::OutsideValidity => "outside the station's validity",
+            Self::Emptier => "less complete than another",
             Self::Joined => "joined speed and direction",
             Self::Repeated => "repeated",
             Self::Replaced => "replaced by a later row",

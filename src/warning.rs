@@ -2,6 +2,8 @@
 
 use std::fmt;
 
+use crate::station::PositionSlip;
+
 /// Something a user should know; the run goes on.
 #[derive(Debug, Clone, PartialEq)]
 #[non_exhaustive]
@@ -14,6 +16,46 @@ pub enum Warning {
         left_out: String,
         /// Their distance, m.
         metres: f64,
+    },
+    /// Stations of the list that have no position in any row.
+    NoPosition {
+        /// How many.
+        stations: usize,
+        /// The first of them.
+        first: Vec<String>,
+    },
+    /// Aliases that do not tell stations apart; they are not used.
+    SharedAliases {
+        /// How many.
+        aliases: usize,
+        /// The first of them.
+        first: String,
+        /// Stations it belongs to.
+        stations: Vec<String>,
+    },
+    /// Stations at latitude 0, longitude 0, far from all others.
+    AtZero {
+        /// How many.
+        stations: usize,
+        /// The first of them.
+        first: Vec<String>,
+        /// Distance of the nearest other station, m.
+        metres: f64,
+    },
+    /// A station far from all others.
+    FarStation {
+        /// The station.
+        station: String,
+        /// The one nearest to it.
+        nearest: String,
+        /// Their distance, m.
+        metres: f64,
+        /// Median distance of nearest stations in the network, m.
+        median: f64,
+        /// What would explain it.
+        slip: Option<PositionSlip>,
+        /// Stations that are as far from all others, besides this one.
+        more: usize,
     },
     /// Edges so long that the flux rule loses accuracy.
     LongEdges {
@@ -65,6 +107,54 @@ impl Warning {
             Self::UnusableRows { .. } | Self::UnknownStation { .. }
         )
     }
+
+    fn far_station(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        let Self::FarStation {
+            station,
+            nearest,
+            metres,
+            median,
+            slip,
+            more,
+        } = self
+        else {
+            return Ok(());
+        };
+        write!(
+            f,
+            "station `{station}` stands {:.0} km from the nearest other station, `{nearest}` (median of the network \
+             {:.0} km)",
+            metres / 1e3,
+            median / 1e3
+        )?;
+        if *more > 0 {
+            write!(f, ", and {more} more are as lonely")?;
+        }
+        f.write_str(match slip {
+            Some(PositionSlip::LongitudeSign) => {
+                ": is the sign of the longitude mirrored? With the other sign it would stand among them"
+            }
+            Some(PositionSlip::LatitudeSign) => {
+                ": is the sign of the latitude mirrored? With the other sign it would stand among them"
+            }
+            Some(PositionSlip::Swapped) => {
+                ": are latitude and longitude swapped? The other way round it would stand among them"
+            }
+            None => {
+                ": check the position; if it is right, set `limits.longest_edge` so that its long edges make no \
+                 polygons"
+            }
+        })
+    }
+}
+
+/// The names, and how many more there are.
+fn some_of(first: &[String], of: usize) -> String {
+    let names: Vec<String> = first.iter().map(|name| format!("`{name}`")).collect();
+    match of.saturating_sub(first.len()) {
+        0 => names.join(", "),
+        more => format!("{} and {more} more", names.join(", ")),
+    }
 }
 
 impl fmt::Display for Warning {
@@ -79,6 +169,41 @@ impl fmt::Display for Warning {
                 "stations `{kept}` and `{left_out}` stand {metres:.1} m apart; `{left_out}` is left out of the \
                  triangles. If they are two sensors of one site, keep the better one in the list"
             ),
+            Self::NoPosition { stations, first } => write!(
+                f,
+                "without a position in any row of the list, so left out: {}. Add a row with latitude and longitude to \
+                 use such a station",
+                some_of(first, *stations)
+            ),
+            Self::SharedAliases {
+                aliases,
+                first,
+                stations,
+            } => {
+                let names = some_of(stations, stations.len());
+                write!(
+                    f,
+                    "alias `{first}` belongs to several stations ({names}) and is not used"
+                )?;
+                if *aliases > 1 {
+                    write!(f, ", nor are {} more like it", aliases - 1)?;
+                }
+                f.write_str(
+                    ". Give each station its own, or leave that column out of `stations.columns.aliases`",
+                )
+            }
+            Self::AtZero {
+                stations,
+                first,
+                metres,
+            } => write!(
+                f,
+                "at latitude 0, longitude 0, {:.0} km from all other stations: {}. Is the position unknown? State it, or \
+                 take the station out of the list",
+                metres / 1e3,
+                some_of(first, *stations)
+            ),
+            Self::FarStation { .. } => self.far_station(f),
             Self::LongEdges { polygons, longest } => write!(
                 f,
                 "polygons with an edge over {:.0} km: {polygons} (longest {:.0} km); the flux along such an edge is \

@@ -1,10 +1,12 @@
 //! Checks of the reports. A check removes nothing: it raises a flag, and the alignment decides.
 
 mod range;
+mod summary;
 
 use serde::Serialize;
 
 pub use range::check_range;
+pub use summary::{StationReading, summarise};
 
 /// Quality flag with the values of IOOS QARTOD.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize)]

@@ -33,6 +33,9 @@ These are estimates, not warnings: follow the national weather service, site saf
 /// The commands, in the order of the data.
 #[derive(Debug, Subcommand)]
 pub enum Command {
+    /// Read all reports and show what came of each file and station; estimates nothing
+    #[command(after_help = CHECK_HELP)]
+    Check(CheckArgs),
     /// List the polygons of a network, their shape and what is left out; needs no reports
     #[command(after_help = POLYGONS_HELP)]
     Polygons(PolygonsArgs),
@@ -40,6 +43,13 @@ pub enum Command {
     #[command(after_help = ESTIMATE_HELP)]
     Estimate(EstimateArgs),
 }
+
+const CHECK_HELP: &str = "\
+Reads:   settings, station list, report files.
+Prints:  for each file the rows, passed on and set aside by reason; for each station what its reports hold, first and \
+last report, the usual time between them, gaps, and the steps to which it rounds; repeats that disagree.
+
+Example: gyremesh check networks/ostrin/network.toml";
 
 const POLYGONS_HELP: &str = "\
 Reads:   settings, station list.
@@ -57,18 +67,34 @@ when they are whole.
 
 Settings file (defaults in brackets):
   name                        name of the network
-  [stations]  file            CSV with a header line
-              columns         id, latitude, longitude [of these names], name, elevation [none]
+  [stations]  file            table with a header line, or GeoJSON points; gzip and Zstandard are recognised
+              columns         id, latitude, longitude [of these names], name, elevation, aliases (one or a list),
+                              valid_from, valid_to (RFC 3339 or YYYY-MM-DD), speed_unit, declination (degrees),
+                              sensor_height, roughness (m) [none]
               elevation_unit  m, km or ft [m]
               only            list of identifiers [all]
-  [[reports]] files           list of names and patterns; gzip is recognised
-              columns         station, time, direction, speed [of these names], or eastward, northward
+              first_of_each   true for a table of reports: the first row of each station with a position [false]
+              delimiter [found], decimal [.], encoding [utf-8], skip_lines [0], missing: as in [[reports]]
+  [[reports]] files           list of names and patterns, - for standard input; gzip and Zstandard are recognised, \
+${NAME} is an environment variable
+              form            table, metar or synop [table]
+              columns         station, time (one or a list), direction, speed [of these names]; one of direction and \
+speed if the other stands in another file; or eastward, northward; or report (METAR text); {station} in a name makes \
+the table wide; gust, latitude, longitude, level [none]
               speed_unit      m/s, km/h, mph or kt [m/s]
-              missing         texts that mean no value [NA, N/A, NaN, null, M, MM, -, ///, -9999, -999, empty]
+              north           true or magnetic [true]
+              level_unit      Pa, hPa, m, km or ft [Pa or m]
+              time            form: RFC 3339, YYYYMMDDHHMM, epoch seconds, epoch milliseconds or a pattern such as \
+%d.%m.%Y %H:%M [RFC 3339]; zone: UTC, +08:00 or Asia/Hong_Kong [in the text]; repeated_hour: first or second [first]; \
+label: start, middle or end of the window [end], averaging
+              reference       a time within two weeks of METAR and SYNOP reports
+              missing         texts that mean no value [NA, N/A, NaN, null, none, M, MM, -, /, //, ///, -9999, -999]
+              delimiter       one sign or tab [found]; decimal [.]; encoding: utf-8 or latin-1 [utf-8]; skip_lines [0]
   [sensor]    speed_sd [0.25 m/s], speed_sd_share [0.05], direction_sd [2.5 degrees]: standard deviations
-              speed_step, direction_step [0]: steps of the reports; calm_below [0.5 m/s]
-  [analysis]  interval [10 min], method = nearest or mean [nearest], tolerance [half the interval],
+              speed_step, direction_step: steps of the reports [found for each station]; calm_below [0.5 m/s]
+  [analysis]  interval [10 min], method: nearest, linear or mean [nearest], tolerance [half the interval],
               window [the interval], least_reports [1], from, to [all]
+              height (common height), profile: log or power [log], exponent [1/7]; level, such as 850 hPa
   [check]     speed_suspect [75 m/s], speed_fail [100 m/s]
   [polygons]  triangles [true]
   [[polygons.ring]]    name, stations in order
@@ -76,6 +102,22 @@ Settings file (defaults in brackets):
   [limits]    smallest_angle [15 degrees], longest_edge, smallest_area, largest_area [none]
 
 Example: gyremesh estimate networks/ostrin/network.toml --out out/ostrin";
+
+/// Options of `check`.
+#[derive(Debug, ClapArgs)]
+pub struct CheckArgs {
+    /// Settings file
+    pub network: PathBuf,
+    /// Report files in place of those of the settings, in the format of the first [[reports]]
+    #[arg(long, value_name = "FILE", num_args = 1..)]
+    pub reports: Vec<PathBuf>,
+    /// Print JSON
+    #[arg(long)]
+    pub json: bool,
+    /// Threads [default: all processors]
+    #[arg(long, value_name = "N")]
+    pub threads: Option<usize>,
+}
 
 /// Options of `polygons`.
 #[derive(Debug, ClapArgs)]
@@ -136,6 +178,15 @@ pub struct LimitArgs {
     /// Leave out polygons with a longer edge, such as 80km
     #[arg(long, value_name = "LENGTH", value_parser = units::parse_length)]
     pub longest_edge: Option<f64>,
+}
+
+impl From<&CheckArgs> for Overrides {
+    fn from(args: &CheckArgs) -> Self {
+        Self {
+            reports: args.reports.clone(),
+            ..Self::default()
+        }
+    }
 }
 
 impl From<&PolygonsArgs> for Overrides {

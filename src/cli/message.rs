@@ -23,7 +23,7 @@ pub(super) fn say(kind: &str, text: &str) {
 }
 
 /// Text cut to a width in characters.
-fn cut(text: &str, width: usize) -> String {
+pub(super) fn cut(text: &str, width: usize) -> String {
     if text.chars().count() <= width {
         text.to_string()
     } else {
@@ -109,7 +109,7 @@ pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
             grid.len()
         );
     }
-    let reporting = outcome.stations.iter().filter(|s| s.values > 0).count();
+    let reporting = outcome.values.iter().filter(|&&n| n > 0).count();
     let _ = writeln!(
         out,
         "Stations    {reporting} of {} reported",
@@ -118,11 +118,15 @@ pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
     let _ = writeln!(
         out,
         "Reports     {} rows read, {} used ({:.1} %)",
-        outcome.rows.received,
+        outcome.reading.rows.received,
         outcome.aligned.all.passed,
         100.0 * outcome.share_used()
     );
-    for tally in [&outcome.rows, &outcome.repeats, &outcome.aligned.all] {
+    for tally in [
+        &outcome.reading.rows,
+        &outcome.reading.repeats,
+        &outcome.aligned.all,
+    ] {
         for (reason, n) in &tally.set_aside {
             let _ = writeln!(out, "            {n:>8} {}", reason.words());
         }
@@ -191,9 +195,9 @@ fn peak_text(setup: &Setup, peak: Option<Peak>) -> String {
 fn least_reporting(out: &mut String, setup: &Setup, outcome: &Outcome) {
     let times = outcome.grid.len() as u64;
     let mut order: Vec<usize> = (0..setup.network.len())
-        .filter(|&s| outcome.stations[s].values < times)
+        .filter(|&s| outcome.values[s] < times)
         .collect();
-    order.sort_by_key(|&s| outcome.stations[s].values);
+    order.sort_by_key(|&s| outcome.values[s]);
     if order.is_empty() {
         let _ = writeln!(out, "\nEvery station has a value at every time");
         return;
@@ -201,7 +205,7 @@ fn least_reporting(out: &mut String, setup: &Setup, outcome: &Outcome) {
     let _ = writeln!(out, "\nReported least:");
     for &s in order.iter().take(LEAST) {
         let station = &setup.network.stations()[s];
-        let values = outcome.stations[s].values;
+        let values = outcome.values[s];
         let share = 100.0 * values as f64 / times.max(1) as f64;
         let _ = writeln!(
             out,

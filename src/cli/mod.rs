@@ -2,6 +2,7 @@
 
 pub mod args;
 mod message;
+mod reading;
 
 use std::io::{self, Write};
 use std::path::{Path, PathBuf};
@@ -9,10 +10,12 @@ use std::path::{Path, PathBuf};
 use clap::Parser;
 use indicatif::{ProgressBar, ProgressStyle};
 
-use self::args::{Args, Command, EstimateArgs, PolygonsArgs};
+use self::args::{Args, CheckArgs, Command, EstimateArgs, PolygonsArgs};
 use crate::error::Error;
-use crate::output::{OutputSet, PolygonRows, mesh_csv, mesh_geojson, stations_csv, summary_json};
-use crate::pipeline::{self, Setup};
+use crate::output::{
+    OutputSet, PolygonRows, mesh_csv, mesh_geojson, reading_json, stations_csv, summary_json,
+};
+use crate::pipeline::{self, Reading, Setup, Sources};
 use crate::settings::Overrides;
 
 /// How a run ended; the value is the exit status.
@@ -44,6 +47,7 @@ pub fn main() -> Status {
         }
     };
     let result = match &args.command {
+        Command::Check(args) => check(args),
         Command::Polygons(args) => polygons(args),
         Command::Estimate(args) => estimate(args),
     };
@@ -65,6 +69,39 @@ fn print(text: &str) -> Result<(), Error> {
         .map_err(|e| Error::write(Path::new("standard output"), e))
 }
 
+fn check(args: &CheckArgs) -> Result<Status, Error> {
+    use_threads(args.threads);
+    let sources = Sources::read(&args.network, &Overrides::from(args))?;
+    let reading = Reading::of(&sources.settings, &sources.network);
+    for warning in sources.warnings.iter().chain(&reading.warnings) {
+        message::say("warning", &warning.to_string());
+    }
+    for failure in &reading.failures {
+        message::say("warning", &failure.to_string());
+    }
+    print(&if args.json {
+        reading_json(&sources.settings, &sources.network, &reading)
+    } else {
+        reading::reading_text(&sources.settings, &sources.network, &reading)
+    })?;
+    Ok(if reading.failures.len() == reading.files.len() {
+        Status::NotDone
+    } else if reading.is_complete() {
+        Status::Complete
+    } else {
+        Status::SomeInputUnusable
+    })
+}
+
+/// Limits the threads; fails only if a pool is already there, which then serves as well.
+fn use_threads(threads: Option<usize>) {
+    if let Some(threads) = threads {
+        let _ = rayon::ThreadPoolBuilder::new()
+            .num_threads(threads)
+            .build_global();
+    }
+}
+
 fn polygons(args: &PolygonsArgs) -> Result<Status, Error> {
     let setup = Setup::read(&args.network, &Overrides::from(args))?;
     for warning in &setup.built.warnings {
@@ -81,12 +118,7 @@ fn polygons(args: &PolygonsArgs) -> Result<Status, Error> {
 }
 
 fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
-    if let Some(threads) = args.threads {
-        // Fails only if a pool is already there, which then serves as well.
-        let _ = rayon::ThreadPoolBuilder::new()
-            .num_threads(threads)
-            .build_global();
-    }
+    use_threads(args.threads);
     let setup = Setup::read(&args.network, &Overrides::from(args))?;
     if setup.built.polygons.is_empty() {
         return Err(Error::Network(format!(
@@ -124,13 +156,13 @@ fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
     for warning in &outcome.warnings {
         message::say("warning", &warning.to_string());
     }
-    for failure in &outcome.failures {
+    for failure in &outcome.reading.failures {
         message::say("warning", &failure.to_string());
     }
     if !args.quiet {
         print(&message::run_summary(&setup, &outcome, &files))?;
     }
-    Ok(if outcome.is_complete() {
+    Ok(if outcome.reading.is_complete() {
         Status::Complete
     } else {
         Status::SomeInputUnusable

@@ -136,45 +136,45 @@ fn optional(value: Option<f64>) -> String {
 pub fn stations_csv(setup: &Setup, outcome: &Outcome) -> String {
     let mut out = String::from(
         "station,name,latitude,longitude,elevation_m,reports,calm,no_direction,no_speed,suspect,failed,used,values,\
-         availability,first_report,last_report,mean_speed,vector_mean_speed,vector_mean_direction,direction_step_deg,speed_step,speed_step_unit,height_factor\n",
+         availability,first_report,last_report,mean_speed,vector_mean_speed,vector_mean_direction,interval_s,gaps,direction_step_deg,speed_step,speed_step_unit,height_factor\n",
     );
     let times = outcome.grid.len().max(1) as f64;
-    for (station, health) in setup.network.stations().iter().zip(&outcome.stations) {
-        let (first, last) = health
+    for (k, station) in setup.network.stations().iter().enumerate() {
+        let reading = &outcome.reading.stations[k];
+        let (first, last) = reading
             .period
             .map_or_else(Default::default, |(a, b)| (a.to_string(), b.to_string()));
-        let mean = health.vector_mean;
+        let mean = reading.vector_mean;
+        let speed_step = reading.rounding.speed;
         let fields = [
             quoted(&station.id),
             quoted(&station.name),
             number(station.position.latitude()),
             number(station.position.longitude()),
             optional(station.elevation),
-            health.reports.to_string(),
-            health.calm.to_string(),
-            health.no_direction.to_string(),
-            health.no_speed.to_string(),
-            health.suspect.to_string(),
-            health.failed.to_string(),
-            health.used.to_string(),
-            health.values.to_string(),
-            number(health.values as f64 / times),
+            reading.reports.to_string(),
+            reading.calm.to_string(),
+            reading.no_direction.to_string(),
+            reading.no_speed.to_string(),
+            reading.suspect.to_string(),
+            reading.failed.to_string(),
+            outcome.aligned.used[k].to_string(),
+            outcome.values[k].to_string(),
+            number(outcome.values[k] as f64 / times),
             first,
             last,
-            optional(health.mean_speed),
+            optional(reading.mean_speed),
             optional(mean.map(crate::units::Wind::speed)),
             optional(
                 mean.and_then(crate::units::Wind::from_direction)
                     .map(crate::units::FromDirection::degrees),
             ),
-            optional(health.rounding.direction),
-            optional(health.rounding.speed.map(|s| s.count)),
-            health
-                .rounding
-                .speed
-                .map_or("", |s| s.unit.symbol())
-                .to_string(),
-            optional(health.height_factor),
+            optional(reading.interval.map(|i| i as f64 * 1e-6)),
+            reading.gaps.to_string(),
+            optional(reading.rounding.direction),
+            optional(speed_step.map(|s| s.count)),
+            speed_step.map_or("", |s| s.unit.symbol()).to_string(),
+            optional(outcome.height_factors[k]),
         ];
         out.push_str(&fields.join(","));
         out.push('\n');

@@ -3,11 +3,13 @@
 mod csv;
 mod file;
 mod geojson;
+mod reading;
 mod summary;
 
 pub use csv::{PolygonRows, mesh_csv, stations_csv};
 pub use file::OutputSet;
 pub use geojson::{mesh_geojson, outline_geometry};
+pub use reading::reading_json;
 pub use summary::summary_json;
 
 /// What a polygon's estimate is not, wherever results are shown.

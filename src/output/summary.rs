@@ -24,11 +24,17 @@ pub fn summary_json(setup: &Setup, outcome: &Outcome) -> String {
         .map(|(p, why)| json!({ "polygon": p.id, "reason": why.name(), "detail": why.to_string() }))
         .collect();
     let files: Vec<Value> = outcome
+        .reading
         .files
         .iter()
         .map(|f| json!({ "file": f.file, "rows": f.tally }))
         .collect();
-    let failures: Vec<String> = outcome.failures.iter().map(ToString::to_string).collect();
+    let failures: Vec<String> = outcome
+        .reading
+        .failures
+        .iter()
+        .map(ToString::to_string)
+        .collect();
     let warnings: Vec<String> = outcome.warnings.iter().map(ToString::to_string).collect();
     let extremes = &outcome.extremes;
     let summary = json!({
@@ -42,10 +48,10 @@ pub fn summary_json(setup: &Setup, outcome: &Outcome) -> String {
             "times_without_report": grid.empty_times(),
         },
         "reports": {
-            "rows": outcome.rows,
+            "rows": outcome.reading.rows,
             "files": files,
             "failures": failures,
-            "repeats": outcome.repeats,
+            "repeats": outcome.reading.repeats,
             "aligned": outcome.aligned.all,
             "share_used": outcome.share_used(),
         },

@@ -1,7 +1,5 @@
 //! Files of METAR, SPECI and SYNOP reports.
 
-use std::path::Path;
-
 use super::coded::{CodeError, CodedWind, DayTime, Entry};
 use super::format::{ReportForm, ReportFormat};
 use super::metar::metars;
@@ -9,14 +7,14 @@ use super::names::{Found, Names};
 use super::read::PartOutcome;
 use super::rows::{Part, Report, Rows};
 use super::synop::synops;
-use crate::error::{Error, Place, Problem};
-use crate::input::{latin1_to_utf8, read_all, shown};
+use crate::error::{Place, Problem};
+use crate::input::{latin1_to_utf8, shown};
 use crate::tally::Reason;
 use crate::time::Time;
 use crate::units::FromDirection;
 
 /// Largest file of code forms, bytes: a day of the whole world is below 100 MiB.
-const LARGEST: u64 = 1 << 30;
+pub(super) const LARGEST: u64 = 1 << 30;
 
 /// Speed, direction and gust that can be used of a coded wind. A direction of 000 with a speed is no direction, and a
 /// speed that is only a lower bound (P99) is none.
@@ -54,22 +52,21 @@ struct Known<'a> {
     wind: Option<CodedWind>,
 }
 
-/// Reads a file of one code form.
+/// Reads the text of a file of one code form.
 pub(super) fn read_coded(
-    path: &Path,
+    bytes: Vec<u8>,
+    file: &str,
     number: u32,
     format: &ReportFormat,
     names: &Names,
-) -> Result<PartOutcome, Error> {
-    let bytes = read_all(path, LARGEST).map_err(|e| Error::read(path, e))?;
+) -> PartOutcome {
     // The forms use ASCII alone; remarks may hold anything.
     let text = match String::from_utf8(bytes) {
         Ok(text) => text,
         Err(error) => String::from_utf8(latin1_to_utf8(error.as_bytes())).unwrap_or_default(),
     };
-    let file = path.display().to_string();
     let mut reader = CodedReader {
-        file: &file,
+        file,
         number,
         format,
         names,
@@ -100,7 +97,7 @@ pub(super) fn read_coded(
         }
     }
     reader.outcome.rows.push(reader.rows);
-    Ok(reader.outcome)
+    reader.outcome
 }
 
 struct CodedReader<'a> {

@@ -20,7 +20,7 @@ mod text;
 pub use coded::{CodeError, CodedDirection, CodedSpeed, CodedWind, DayTime, Entry};
 pub use format::{Columns, North, ReportForm, ReportFormat, WindColumns};
 pub use metar::{Metar, Metars, metars, parse_metar};
-pub use read::{FileOutcome, ReadOutcome, read_reports};
+pub use read::{FileOutcome, ReadOutcome, read_bytes, read_reports};
 pub use rounding::{Rounding, SpeedStep, find_rounding};
 pub use rows::{Moving, Part, Report, Rows};
 pub use synop::{Synop, Synops, synops};

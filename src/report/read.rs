@@ -10,6 +10,7 @@ use super::names::{Found, Names};
 use super::rows::Rows;
 use super::{ReportFormat, coded_file, text};
 use crate::error::{Error, Place, Problem, nearest_name};
+use crate::input::{open, read_all};
 use crate::settings::ReportSource;
 use crate::station::Network;
 use crate::tally::{Reason, Tally};
@@ -110,6 +111,28 @@ impl PartOutcome {
     }
 }
 
+/// Reads reports from memory, named `name` in messages.
+#[must_use]
+pub fn read_bytes(
+    bytes: &[u8],
+    name: &str,
+    format: &ReportFormat,
+    network: &Network,
+) -> ReadOutcome {
+    let names = Names::new(network);
+    let part = match &format.form {
+        ReportForm::Table(columns) => text::read_table(bytes, name, 0, format, columns, &names),
+        ReportForm::Metar | ReportForm::Synop => Ok(coded_file::read_coded(
+            bytes.to_vec(),
+            name,
+            0,
+            format,
+            &names,
+        )),
+    };
+    gather(vec![(name.to_string(), part)], network)
+}
+
 /// Reads all report files, several at a time; the result has the order of the settings.
 #[must_use]
 pub fn read_reports(sources: &[ReportSource], network: &Network) -> ReadOutcome {
@@ -122,15 +145,23 @@ pub fn read_reports(sources: &[ReportSource], network: &Network) -> ReadOutcome 
         )
         .map(|(number, (file, format))| (number, file, format))
         .collect();
-    let parts: Vec<Result<PartOutcome, Error>> = files
+    let parts: Vec<(String, Result<PartOutcome, Error>)> = files
         .par_iter()
-        .map(|&(number, file, format)| read_file(file, number, format, &names))
+        .map(|&(number, file, format)| {
+            (
+                file.display().to_string(),
+                read_file(file, number, format, &names),
+            )
+        })
         .collect();
+    gather(parts, network)
+}
 
+/// Puts the parts together, in their order.
+fn gather(parts: Vec<(String, Result<PartOutcome, Error>)>, network: &Network) -> ReadOutcome {
     let mut outcome = ReadOutcome::default();
     let mut unknown: BTreeMap<Vec<u8>, u64> = BTreeMap::new();
-    for ((_, path, _), part) in files.into_iter().zip(parts) {
-        let file = path.display().to_string();
+    for (file, part) in parts {
         let part = part.unwrap_or_else(|error| {
             outcome.failures.push(error);
             PartOutcome::default()
@@ -175,10 +206,15 @@ fn read_file(
     format: &ReportFormat,
     names: &Names,
 ) -> Result<PartOutcome, Error> {
+    let file = path.display().to_string();
     match &format.form {
-        ReportForm::Table(columns) => text::read_table(path, number, format, columns, names),
+        ReportForm::Table(columns) => {
+            let input = open(path).map_err(|e| Error::read(path, e))?;
+            text::read_table(input, &file, number, format, columns, names)
+        }
         ReportForm::Metar | ReportForm::Synop => {
-            coded_file::read_coded(path, number, format, names)
+            let bytes = read_all(path, coded_file::LARGEST).map_err(|e| Error::read(path, e))?;
+            Ok(coded_file::read_coded(bytes, &file, number, format, names))
         }
     }
 }

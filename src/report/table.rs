@@ -1,5 +1,7 @@
 //! Reports in columns, by station and time.
 
+use std::cmp::Ordering;
+
 use super::rows::{Moving, Packed, Rows, kind};
 use crate::check::Flag;
 use crate::tally::{Reason, Tally};
@@ -61,7 +63,7 @@ struct TableColumns {
 }
 
 /// A row among several [`Rows`].
-#[derive(Debug, Clone, Copy)]
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
 struct At {
     part: u32,
     row: u32,
@@ -74,6 +76,7 @@ impl ReportTable {
     ///
     /// - speed and direction from different inputs become one report ([`Reason::Joined`]);
     /// - the highest correction holds ([`Reason::Corrected`]);
+    /// - a row that lacks what another has says nothing against it ([`Reason::Emptier`]);
     /// - else the last of the input; the others are [`Reason::Repeated`] if they say the same, [`Reason::Replaced`] if
     ///   not, and the first of these are listed as conflicts.
     #[must_use]
@@ -109,7 +112,7 @@ impl ReportTable {
             if !of_station.is_sorted_by_key(key) {
                 of_station.sort_by(|a, b| {
                     let (a, b) = (builder.key(*a), builder.key(*b));
-                    a.partial_cmp(&b).unwrap_or(std::cmp::Ordering::Equal)
+                    a.partial_cmp(&b).unwrap_or(Ordering::Equal)
                 });
             }
             builder.station(of_station);
@@ -304,6 +307,12 @@ impl TableBuilder<'_> {
         value(a) == value(b)
     }
 
+    /// True if row `a` has a speed or direction less than row `b`, and none more.
+    fn says_less(&self, a: At, b: At) -> bool {
+        let values = |at: At| self.packed(at).kind & (kind::SPEED | kind::DIRECTION);
+        values(a) != values(b) && values(a) & !values(b) == 0
+    }
+
     /// Adds the reports of a station, sorted.
     fn station(&mut self, order: &[At]) {
         let mut start = 0;
@@ -357,15 +366,15 @@ impl TableBuilder<'_> {
         for &row in rows.get(1..)? {
             let (old, new) = (self.correction(holds), self.correction(row));
             let (out, reason) = match new.cmp(&old) {
-                std::cmp::Ordering::Less => (row, Reason::Corrected),
-                std::cmp::Ordering::Greater => (holds, Reason::Corrected),
-                std::cmp::Ordering::Equal if self.same_wind(holds, row) => {
-                    (holds, Reason::Repeated)
-                }
-                std::cmp::Ordering::Equal => (holds, Reason::Replaced),
+                Ordering::Less => (row, Reason::Corrected),
+                Ordering::Greater => (holds, Reason::Corrected),
+                Ordering::Equal if self.same_wind(holds, row) => (holds, Reason::Repeated),
+                Ordering::Equal if self.says_less(row, holds) => (row, Reason::Emptier),
+                Ordering::Equal if self.says_less(holds, row) => (holds, Reason::Emptier),
+                Ordering::Equal => (holds, Reason::Replaced),
             };
             self.tally.set_aside(reason, 1);
-            if new >= old {
+            if out == holds {
                 holds = row;
             }
             if reason == Reason::Replaced && self.conflicts.len() < CONFLICTS_KEPT {
@@ -496,6 +505,23 @@ mod tests {
         assert_eq!(table.speed(0), Some(7.0));
         assert_eq!(tally.count(Reason::Corrected), 2);
         assert!(table.conflicts().is_empty());
+    }
+
+    #[test]
+    fn a_row_without_a_wind_does_not_wipe_out_one_that_has_it() {
+        let empty = Report {
+            direction: None,
+            ..report(0, 10, None, Part::Whole)
+        };
+        for rows in [
+            [empty, report(0, 10, Some(5.0), Part::Whole)],
+            [report(0, 10, Some(5.0), Part::Whole), empty],
+        ] {
+            let (table, tally) = table(&rows);
+            assert_eq!(table.speed(0), Some(5.0));
+            assert_eq!(tally.count(Reason::Emptier), 1);
+            assert!(table.conflicts().is_empty());
+        }
     }
 
     #[test]

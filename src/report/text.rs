@@ -1,5 +1,6 @@
 //! Text tables, long (one row for each station and time) and wide (a column for each station).
 
+use std::io::Read;
 use std::path::Path;
 
 use rayon::prelude::*;
@@ -28,14 +29,13 @@ const SHORT_ROW: usize = 32;
 
 /// Reads a text table.
 pub(super) fn read_table(
-    path: &Path,
+    input: impl Read,
+    file: &str,
     number: u32,
     format: &ReportFormat,
     columns: &Columns,
     names: &Names,
 ) -> Result<PartOutcome, Error> {
-    let file = path.display().to_string();
-    let input = open(path).map_err(|e| Error::read(path, e))?;
     let mut blocks = Blocks::new(input);
     let mut outcome = PartOutcome::default();
     let mut layout: Option<Layout> = None;
@@ -58,13 +58,13 @@ pub(super) fn read_table(
             None => match (batch.first_mut(), failure.take()) {
                 (Some(first), _) => {
                     let line = read_header(first, format.text.skip_lines);
-                    let new = Layout::new(&line, &file, number, format, columns, names)?;
+                    let new = Layout::new(&line, file, number, format, columns, names)?;
                     layout.insert(new)
                 }
-                (None, Some(error)) => return Err(Error::read(path, error)),
+                (None, Some(error)) => return Err(Error::read(Path::new(file), error)),
                 (None, None) => {
                     let wanted = columns.time.first().map_or("time", String::as_str);
-                    let problem = missing_column(&file, wanted, std::iter::empty());
+                    let problem = missing_column(file, wanted, std::iter::empty());
                     return Err(Error::Invalid(vec![problem]));
                 }
             },
@@ -81,7 +81,7 @@ pub(super) fn read_table(
             blocks.give_back(block.bytes);
         }
         if let Some(error) = failure {
-            outcome.ended_early(&file, &error);
+            outcome.ended_early(file, &error);
             return Ok(outcome);
         }
         if ended {

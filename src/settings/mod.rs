@@ -3,6 +3,7 @@
 //! One TOML file per network, `networks/<name>/network.toml`. Paths in it are relative to it. All defects of the file
 //! are listed at once, each with its line; an unknown key is a defect.
 
+mod path;
 mod read;
 mod reports;
 mod section;

@@ -3,7 +3,8 @@
 use std::path::{Path, PathBuf};
 use std::time::Duration;
 
-use super::reports::reports;
+use super::path::expand_path;
+use super::reports::{reports, text_format};
 use super::section::{Document, Section};
 use super::{
     AlignMethod, Analysis, PolygonChoice, PolygonLimits, RangeLimits, RegionParts, RegionSettings,
@@ -87,7 +88,13 @@ fn station_file(section: &mut Section, base: &Path) -> PathBuf {
     let Some(found) = section.required::<String>("file") else {
         return PathBuf::new();
     };
-    let path = base.join(&found.value);
+    let path = match expand_path(base, &found.value) {
+        Ok(path) => path,
+        Err(message) => {
+            section.problem(found.place, message);
+            return PathBuf::new();
+        }
+    };
     if !path.is_file() {
         section.problem(found.place, format!("`{}` is not a file", path.display()));
         return PathBuf::new();
@@ -105,6 +112,13 @@ fn catalogue(section: &mut Section) -> Catalogue {
         latitude: text(&mut columns, "latitude").unwrap_or(default.latitude),
         longitude: text(&mut columns, "longitude").unwrap_or(default.longitude),
         elevation: text(&mut columns, "elevation"),
+        aliases: alias_columns(&mut columns),
+        valid_from: text(&mut columns, "valid_from"),
+        valid_to: text(&mut columns, "valid_to"),
+        speed_unit: text(&mut columns, "speed_unit"),
+        declination: text(&mut columns, "declination"),
+        sensor_height: text(&mut columns, "sensor_height"),
+        roughness: text(&mut columns, "roughness"),
     };
     columns.finish();
     let elevation_unit = section.parsed("elevation_unit", |unit| {
@@ -113,8 +127,25 @@ fn catalogue(section: &mut Section) -> Catalogue {
     });
     Catalogue {
         columns: catalogue_columns,
+        text: text_format(section),
         elevation_unit: elevation_unit.unwrap_or(1.0),
         only: section.value("only").map(|f| f.value),
+        first_of_each: section.value("first_of_each").is_some_and(|f| f.value),
+    }
+}
+
+/// One column, or a list of columns.
+fn alias_columns(section: &mut Section) -> Vec<String> {
+    #[derive(serde::Deserialize)]
+    #[serde(untagged)]
+    enum OneOrMore {
+        One(String),
+        More(Vec<String>),
+    }
+    match section.value("aliases").map(|found| found.value) {
+        None => Vec::new(),
+        Some(OneOrMore::One(one)) => vec![one],
+        Some(OneOrMore::More(more)) => more,
     }
 }
 

@@ -4,6 +4,7 @@ use std::path::{Path, PathBuf};
 use std::time::Duration;
 
 use super::ReportSource;
+use super::path::expand_path;
 use super::section::{Found, Section};
 use crate::error::Place;
 use crate::input::{Label, RepeatedHour, TextFormat, TimeForm, TimeFormat, Zone};
@@ -37,11 +38,17 @@ pub(super) fn reports(root: &mut Section, base: &Path, instead: &[PathBuf]) -> V
 fn expand(section: &Section, base: &Path, patterns: &Found<Vec<String>>) -> Vec<PathBuf> {
     let mut files = Vec::new();
     for pattern in &patterns.value {
-        let full = base.join(pattern);
         if pattern == "-" {
             files.push(PathBuf::from("-"));
             continue;
         }
+        let full = match expand_path(base, pattern) {
+            Ok(full) => full,
+            Err(message) => {
+                section.problem(patterns.place.clone(), message);
+                continue;
+            }
+        };
         if full.is_file() {
             files.push(full);
             continue;
@@ -118,7 +125,7 @@ fn level_unit(text: &str) -> Result<f64, String> {
     }
 }
 
-fn text_format(section: &mut Section) -> TextFormat {
+pub(super) fn text_format(section: &mut Section) -> TextFormat {
     let delimiter = section.parsed("delimiter", |text| match text {
         "tab" => Ok('\t'),
         _ => match text.chars().collect::<Vec<_>>().as_slice() {

@@ -106,10 +106,7 @@ fn read_list(
     catalogue: &Catalogue,
 ) -> io::Result<Result<StationList, Vec<Problem>>> {
     let mut start = Vec::new();
-    input
-        .by_ref()
-        .take(FIRST_BYTES)
-        .read_to_end(&mut start)?;
+    input.by_ref().take(FIRST_BYTES).read_to_end(&mut start)?;
     let text = start.strip_prefix(b"\xef\xbb\xbf").unwrap_or(&start);
     let is_geojson = text.trim_ascii_start().starts_with(b"{");
     let mut input = start.chain(input);

@@ -49,8 +49,10 @@ pub(super) fn read_features(
         match serde_json::from_value::<Feature>(value) {
             Ok(feature) => {
                 if let Some(properties) = &feature.properties {
-                    for name in properties.keys().filter(|name| !seen.contains(*name)) {
-                        seen.insert(name.clone());
+                    for name in properties.keys() {
+                        if !seen.contains(name) {
+                            seen.insert(name.clone());
+                        }
                     }
                 }
                 add(&mut builder, at, &feature, catalogue);

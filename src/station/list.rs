@@ -262,8 +262,13 @@ impl<'a> ListBuilder<'a> {
         let earlier = self.seen.entry(id).or_default();
         if let Some(new) = &station {
             let period = |s: &Station| (s.valid_from, s.valid_to);
-            let same = |old: &&mut Station| old.position == new.position && period(old) == period(new);
-            if let Some(old) = earlier.iter_mut().filter_map(|s| s.station.as_mut()).find(same) {
+            let same =
+                |old: &&mut Station| old.position == new.position && period(old) == period(new);
+            if let Some(old) = earlier
+                .iter_mut()
+                .filter_map(|s| s.station.as_mut())
+                .find(same)
+            {
                 self.repeats += 1;
                 for alias in &new.aliases {
                     if !old.aliases.contains(alias) {

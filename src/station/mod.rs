@@ -2,6 +2,11 @@
 
 mod catalogue;
 mod declination;
+mod doubts;
+mod entry;
+mod features;
+mod list;
+mod table;
 
 use std::collections::HashMap;
 
@@ -14,6 +19,8 @@ use crate::warning::Warning;
 pub(crate) use catalogue::missing_column;
 pub use catalogue::{Catalogue, StationColumns, read_catalogue};
 pub use declination::Declinations;
+pub use doubts::{PositionSlip, doubts};
+pub use list::{Period, StationList};
 
 /// Geodetic position on WGS 84, degrees: latitude in [-90, 90], longitude in [-180, 180).
 #[derive(Debug, Clone, Copy, PartialEq)]

@@ -134,9 +134,10 @@ impl TableReader<'_> {
 
     fn line(&mut self, number: u64, line: &[u8]) {
         if std::str::from_utf8(line).is_err() {
-            let (_, more) = self.not_utf8.get_or_insert((number, 0));
-            // The first is not one more.
-            *more += u64::from(self.not_utf8.is_some_and(|(first, _)| first != number));
+            match &mut self.not_utf8 {
+                None => self.not_utf8 = Some((number, 0)),
+                Some((_, more)) => *more += 1,
+            }
             return;
         }
         let Some(row) = self.splitter.split(line) else {
