@@ -87,6 +87,11 @@ impl Setup {
                 let lines = warnings.iter().map(|warning| format!("\n  {warning}"));
                 return Err(Error::Network(message + &lines.collect::<String>()));
             }
+            // A station that stands wrongly may be the reason.
+            Err(Error::Network(message)) if problems.is_empty() => {
+                let doubts = warnings.iter().map(|doubt| format!("\n  {doubt}"));
+                return Err(Error::Network(message + &doubts.collect::<String>()));
+            }
             Err(error) if problems.is_empty() => return Err(error),
             Err(error) => {
                 problems.push(Problem::new(

@@ -171,12 +171,12 @@ impl Builder<'_> {
         }
         let mut defects = defects(&ring, self.network);
         if defects.is_empty() {
-            let area = self.area(&ring);
-            if area < 0.0 {
+            let reversed = self.area(&ring) < 0.0;
+            if reversed {
                 ring.reverse();
             }
             match self.polygon(name.to_string(), PolygonKind::Ring, vec![ring]) {
-                Some(polygon) => match self.spike(&polygon) {
+                Some(polygon) => match self.spike(&polygon, reversed) {
                     None => {
                         self.add(polygon);
                         return;
@@ -191,20 +191,30 @@ impl Builder<'_> {
         }
     }
 
-    /// The corner of a ring where it runs back the way it came, which rounding can hide from the test for crossings.
-    fn spike(&self, polygon: &StationPolygon) -> Option<InvalidPolygon> {
+    /// The corner of a ring where it runs back the way it came, which rounding can hide from the test for crossings; the
+    /// edges are named in the user's direction.
+    fn spike(&self, polygon: &StationPolygon, reversed: bool) -> Option<InvalidPolygon> {
         let edges = &self.built.edges;
         let corner = interior_angles(&polygon.path, edges)
             .position(|a| !(FLAT..=360.0 - FLAT).contains(&a))?;
         let name = |edge: DirectedEdge| {
             let (from, to, _) = edges.ends(edge);
             let id = |s: usize| self.network.stations()[s].id.clone();
-            (id(from), id(to))
+            if reversed {
+                (id(to), id(from))
+            } else {
+                (id(from), id(to))
+            }
         };
         let before = (corner + polygon.path.len() - 1) % polygon.path.len();
+        let (first, second) = if reversed {
+            (corner, before)
+        } else {
+            (before, corner)
+        };
         Some(InvalidPolygon::EdgesCross {
-            first: name(polygon.path[before]),
-            second: name(polygon.path[corner]),
+            first: name(polygon.path[first]),
+            second: name(polygon.path[second]),
         })
     }
 

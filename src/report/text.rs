@@ -14,7 +14,7 @@ use super::rows::{Moving, Part, Report, Rows};
 use crate::error::{Error, Place, Problem};
 use crate::input::{
     Block, Blocks, Header, MissingMarks, Row, Splitter, TimeReader, find_delimiter,
-    find_separators, latin1_to_utf8, open, parse_number, parse_number_with_comma, parse_short,
+    find_separators, latin1_to_utf8, parse_number, parse_number_with_comma, parse_short,
     read_header, shown,
 };
 use crate::station::{Position, missing_column};

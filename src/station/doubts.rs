@@ -16,6 +16,8 @@ const FAR: f64 = 100e3;
 const FAR_IN_MEDIANS: f64 = 10.0;
 /// A changed position fits if a neighbour is within this many medians, or if it is in the box of the others.
 const FITS_IN_MEDIANS: f64 = 3.0;
+/// In a wider box, degrees, nearly any position would fit, so it explains nothing.
+const WIDEST_BOX: f64 = 30.0;
 /// In a smaller network a median says nothing.
 const FEWEST_STATIONS: usize = 4;
 /// Stations that a warning names; the others are counted.
@@ -164,6 +166,7 @@ struct Frame {
 }
 
 impl Frame {
+    /// The box of the stations, if it is small.
     fn new(stations: &[&Station]) -> Option<Self> {
         let middle = stations.first()?.position.longitude();
         let mut frame = Self {
@@ -180,7 +183,9 @@ impl Frame {
             frame.west = frame.west.min(lon);
             frame.east = frame.east.max(lon);
         }
-        Some(frame)
+        let is_small =
+            frame.north - frame.south <= WIDEST_BOX && frame.east - frame.west <= WIDEST_BOX;
+        is_small.then_some(frame)
     }
 
     fn coordinates(&self, p: Position) -> (f64, f64) {
