@@ -73,6 +73,15 @@ pub enum Warning {
         /// The station that may be meant.
         nearest: Option<String>,
     },
+    /// Stations without a usable report.
+    NeverReported {
+        /// How many.
+        stations: usize,
+        /// The first of them.
+        first: Vec<String>,
+        /// Polygons that have no value for it.
+        polygons: usize,
+    },
     /// The speeds of a station cannot be reduced to the common height.
     NoHeightFactor {
         /// Which.
@@ -158,6 +167,7 @@ fn some_of(first: &[String], of: usize) -> String {
 }
 
 impl fmt::Display for Warning {
+    #[expect(clippy::too_many_lines, reason = "one arm for each warning")]
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         match self {
             Self::OnePlace {
@@ -225,6 +235,20 @@ impl fmt::Display for Warning {
                     Some(nearest) => write!(f, "; is `{nearest}` meant?"),
                     None => Ok(()),
                 }
+            }
+            Self::NeverReported {
+                stations,
+                first,
+                polygons,
+            } => {
+                let names: Vec<String> = first.iter().map(|id| format!("`{id}`")).collect();
+                let more = if *stations > first.len() { ", ..." } else { "" };
+                write!(
+                    f,
+                    "{stations} stations have no usable report ({}{more}), so {polygons} polygons have no values; name \
+                     the others in `stations.only` to join them without these",
+                    names.join(", ")
+                )
             }
             Self::NoHeightFactor { station, reason } => write!(
                 f,

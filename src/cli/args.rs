@@ -108,7 +108,7 @@ Example: gyremesh estimate networks/ostrin/network.toml --out out/ostrin";
 pub struct CheckArgs {
     /// Settings file
     pub network: PathBuf,
-    /// Report files in place of those of the settings, in the format of the first [[reports]]
+    /// Report files in place of those of the settings, in the format of the first group of the settings
     #[arg(long, value_name = "FILE", num_args = 1..)]
     pub reports: Vec<PathBuf>,
     /// Print JSON
@@ -140,7 +140,7 @@ pub struct EstimateArgs {
     /// Folder of the results [default: out/NAME, NAME being the folder of the settings file]
     #[arg(long, value_name = "DIR")]
     pub out: Option<PathBuf>,
-    /// Report files in place of those of the settings, in the format of the first [[reports]]
+    /// Report files in place of those of the settings, in the format of the first group of the settings
     #[arg(long, value_name = "FILE", num_args = 1..)]
     pub reports: Vec<PathBuf>,
     /// Time between estimates, such as 5min or 1h

@@ -9,6 +9,7 @@ use crate::align::{AlignTally, Aligner, StationSensors, TimeGrid, WindBlock, hei
 use crate::check::StationReading;
 use crate::error::Error;
 use crate::integral::{EstimateBlock, Extremes, estimate};
+use crate::polygon::StationPolygon;
 use crate::report::{ReportTable, SpeedStep};
 use crate::settings::{SensorErrors, Settings};
 use crate::station::Station;
@@ -96,11 +97,13 @@ pub fn run<T: Send>(
         aligner.values().to_vec(),
         aligner.grid().clone(),
     );
+    let silent = never_reported(setup, &values);
     let warnings = [
         &setup.warnings,
         &setup.built.warnings,
         &reading.warnings,
         &sensor_warnings,
+        &silent,
     ];
     Ok(Outcome {
         warnings: warnings.into_iter().flatten().cloned().collect(),
@@ -111,6 +114,22 @@ pub fn run<T: Send>(
         height_factors,
         extremes,
     })
+}
+
+/// Stations without any value, if they cost polygons.
+fn never_reported(setup: &Setup, values: &[u64]) -> Vec<Warning> {
+    let silent: Vec<usize> = (0..values.len()).filter(|&s| values[s] == 0).collect();
+    let lost = |p: &&StationPolygon| p.row.stations.iter().any(|s| silent.contains(s));
+    let polygons = setup.built.polygons.iter().filter(lost).count();
+    if polygons == 0 {
+        return Vec::new();
+    }
+    let id = |&s: &usize| setup.network.stations()[s].id.clone();
+    vec![Warning::NeverReported {
+        stations: silent.len(),
+        first: silent.iter().take(3).map(id).collect(),
+        polygons,
+    }]
 }
 
 /// Errors and height factors of the stations; those whose speeds cannot be reduced are named.

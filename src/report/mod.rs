@@ -6,8 +6,10 @@
 
 mod coded;
 mod coded_file;
+mod columnar;
 mod direction;
 mod format;
+mod layout;
 mod metar;
 mod names;
 mod read;
@@ -16,6 +18,7 @@ mod rows;
 mod synop;
 mod table;
 mod text;
+mod values;
 
 pub use coded::{CodeError, CodedDirection, CodedSpeed, CodedWind, DayTime, Entry};
 pub use format::{Columns, North, ReportForm, ReportFormat, WindColumns};

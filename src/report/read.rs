@@ -8,7 +8,7 @@ use rayon::prelude::*;
 use super::format::ReportForm;
 use super::names::{Found, Names};
 use super::rows::Rows;
-use super::{ReportFormat, coded_file, text};
+use super::{ReportFormat, coded_file, columnar, text};
 use crate::error::{Error, Place, Problem, nearest_name};
 use crate::input::{open, read_all};
 use crate::settings::ReportSource;
@@ -208,6 +208,9 @@ fn read_file(
 ) -> Result<PartOutcome, Error> {
     let file = path.display().to_string();
     match &format.form {
+        ReportForm::Table(columns) if columnar::is_columnar_file(path) => {
+            columnar::read_columnar(path, number, format, columns, names)
+        }
         ReportForm::Table(columns) => {
             let input = open(path).map_err(|e| Error::read(path, e))?;
             text::read_table(input, &file, number, format, columns, names)

@@ -42,6 +42,15 @@ impl Unusable {
             message,
         }
     }
+
+    /// A whole line that is no row.
+    pub(super) fn line(reason: Reason, message: String) -> Self {
+        Self {
+            reason,
+            value: None,
+            message,
+        }
+    }
 }
 
 /// The wind as the row gives it: speeds and components in its own unit, directions from its own north.
@@ -73,7 +82,7 @@ pub(super) struct ValueReader<'a> {
     /// The missing marks that are numbers.
     number_marks: Vec<f64>,
     /// True if a number of 0 or more can be a missing mark.
-    positive_marks: bool,
+    pub(super) positive_marks: bool,
     /// One of each station's unit of speed in m/s.
     factors: Vec<f64>,
 }
@@ -277,7 +286,7 @@ impl<'a> ValueReader<'a> {
     }
 
     /// One of the station's unit of speed in m/s.
-    fn factor(&self, station: u32) -> f64 {
+    pub(super) fn factor(&self, station: u32) -> f64 {
         let factor = self.factors.get(station as usize);
         factor.copied().unwrap_or(1.0)
     }

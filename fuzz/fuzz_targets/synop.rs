@@ -1,0 +1,32 @@
+//! Any bytes as SYNOP: as bulletins, as a file.
+#![no_main]
+
+mod common;
+
+use gyremesh::report::{ReportForm, ReportFormat, read_bytes, synops};
+use libfuzzer_sys::fuzz_target;
+
+fuzz_target!(|data: &[u8]| {
+    let text = String::from_utf8_lossy(data);
+    let lines = 1 + text.matches('\n').count() as u64;
+    let mut last = 0;
+    for entry in synops(&text) {
+        assert!((last..=lines).contains(&entry.line));
+        assert!(text.contains(entry.text));
+        last = entry.line;
+        if let Ok(synop) = entry.report {
+            assert_eq!(synop.station.len(), 5);
+            assert!(!synop.nil || synop.wind.is_none());
+            let speed = synop.wind.and_then(|wind| wind.speed);
+            assert!(speed.is_none_or(|speed| (0.0..=1000.0).contains(&speed.value)));
+        }
+    }
+    let format = ReportFormat {
+        form: ReportForm::Synop,
+        reference: common::reference(),
+        ..ReportFormat::default()
+    };
+    let network = common::network();
+    let outcome = read_bytes(data, "fuzz", &format, &network);
+    common::balance(&outcome, &network);
+});
