@@ -22,7 +22,7 @@
 //! let (vorticity, divergence) = built.polygons[0].row.apply(|station| winds[station]);
 //! let error = 0.5 * built.polygons[0].shape.noise_factor; // for 0.5 m/s in each component
 //! let text = format!("divergence ({:+.1} ± {:.1})e-5 1/s", divergence * 1e5, error * 1e5);
-//! assert_eq!(text, "divergence (+9.2 ± 3.0)e-5 1/s");
+//! assert_eq!(text, "divergence (+5.5 ± 2.9)e-5 1/s");
 //! # let _ = vorticity;
 //! ```
 //!

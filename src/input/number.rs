@@ -55,9 +55,10 @@ pub(crate) fn parse_short(text: &[u8]) -> Option<f64> {
             return None;
         }
     }
-    // A point alone is no number.
-    if after_point == 1 && text.len() == 1 {
-        return None;
+    // A division costs more than all the rest: whole numbers go without.
+    if decimals == 0 {
+        // A point alone is no number.
+        return (after_point < text.len()).then(|| f64::from(mantissa));
     }
     Some(f64::from(mantissa) / POWERS.get(decimals)?)
 }

@@ -100,6 +100,7 @@ impl<'a> Row<'a> {
     }
 
     /// The same; `None` beyond the end of the line.
+    #[inline]
     pub(crate) fn get(&self, column: usize) -> Option<&'a [u8]> {
         let &(start, end) = self.fields.get(column)?;
         Some(self.text.get(start as usize..end as usize)?.trim_ascii())

@@ -153,6 +153,7 @@ impl Rows {
 }
 
 /// Adds a value to a column that stays empty until a value `is_there`.
+#[inline]
 fn put<T: Copy>(column: &mut Vec<T>, before: usize, value: T, is_there: bool, nothing: T) {
     if is_there || !column.is_empty() {
         column.resize(before, nothing);
