@@ -198,6 +198,17 @@ fn quotes_marks_of_byte_order_and_line_ends_change_nothing() {
 }
 
 #[test]
+fn a_last_field_left_empty_is_missing_with_quotes_and_without() {
+    for station in ["A", "\"A\""] {
+        for sign in [",", ";", "\t"] {
+            let text = TABLE.replace(",A,270,5.5", &format!(",{station},270,"));
+            let found = lines("", text.replace(',', sign));
+            assert_eq!(found[0], "A 2031-06-14T00:00:00Z - -", "{station} {sign:?}");
+        }
+    }
+}
+
+#[test]
 fn lines_before_the_header_are_skipped_and_counted() {
     let text = format!("\u{feff}Station data, \"all\n;;;\n{TABLE}").replace("A,270", "A,470");
     let settings = "[[reports]]\nfiles = [\"r.csv\"]\nskip_lines = 2";
@@ -306,7 +317,7 @@ fn wide_tables_give_what_long_ones_give() {
     let columns = "columns = { direction = \"{station}_dir\", speed = \"{station}_speed\" }";
     assert_eq!(lines(columns, pairs), WINDS);
 
-    // A name that is the pattern alone, in one file and beside another pattern.
+    // A name that is the pattern alone.
     let settings = "[[reports]]\nfiles = [\"s.csv\"]\ncolumns = { speed = \"{station}\" }\n\
                     [[reports]]\nfiles = [\"d.csv\"]\ncolumns = { direction = \"{station}\" }";
     let files: [(&str, &[u8]); 2] = [
@@ -316,9 +327,23 @@ fn wide_tables_give_what_long_ones_give() {
     let found = Site::new(STATIONS, settings, &files).read();
     assert!(found.reading.is_complete(), "{:?}", found.reading.warnings);
     assert_eq!(found.lines(), WINDS);
-    let bare = pairs.replace("_speed", "");
+}
+
+#[test]
+fn a_wide_table_whose_speeds_have_the_names_of_the_stations() {
+    let text = "time,A_dir,A,B_dir,B,C,C_dir\n2031-06-14T00:00:00Z,270,5.5,280.5,6,7.25,250\n";
     let columns = "columns = { direction = \"{station}_dir\", speed = \"{station}\" }";
-    assert_eq!(lines(columns, bare), WINDS);
+    assert_eq!(lines(columns, text), WINDS);
+}
+
+#[test]
+fn a_column_of_an_unknown_station_in_a_wide_table_is_told() {
+    let text = "time,A,B,Cc\n2031-06-14T00:00:00Z,5.5,6,7.25\n";
+    let settings = "[[reports]]\nfiles = [\"s.csv\"]\ncolumns = { speed = \"{station}\" }";
+    let found = Site::new(STATIONS, settings, &[("s.csv", text.as_bytes())]).read();
+    assert_eq!(found.reading.rows.passed, 2);
+    assert_eq!(found.reading.rows.count(Reason::UnknownStation), 1);
+    assert!(!found.reading.is_complete());
 }
 
 #[test]
@@ -329,6 +354,7 @@ fn missing_marks_by_default_and_as_stated() {
         assert_eq!(wind("", mark, "5"), "- 5", "{mark}");
         assert_eq!(wind("", "90", mark), "- -", "{mark}");
     }
+    assert_eq!(wind("decimal = \",\"", "90", "-9999,0"), "- -");
     let stated = "missing = [\"999\", \"x\", \"-1\"]";
     for mark in ["999", "X", "-1", "-1.0", ""] {
         assert_eq!(wind(stated, "90", mark), "- -", "{mark}");

@@ -1,4 +1,5 @@
 //! What the targets that read reports share.
+#![allow(dead_code, reason = "each target uses a part of it")]
 
 use gyremesh::check::{check_range, summarise};
 use gyremesh::report::{ReadOutcome, ReportTable, Rows};

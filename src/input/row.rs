@@ -74,24 +74,33 @@ pub(crate) fn find_delimiter(
 #[derive(Debug, Clone, Copy)]
 pub(crate) struct Row<'a> {
     text: &'a [u8],
-    /// Start and end of each field in `text`.
-    fields: &'a [(u32, u32)],
+    /// Where the first field starts in `text`.
+    start: u32,
+    /// Where each field ends.
+    ends: &'a [u32],
+    /// Bytes between a field's end and the next one's start: the delimiter, or nothing.
+    between: u32,
 }
 
 impl<'a> Row<'a> {
-    /// Fields of a text by start and end.
-    pub(crate) fn new(text: &'a [u8], fields: &'a [(u32, u32)]) -> Self {
-        Self { text, fields }
+    /// Fields of a text by the start of the first and the end of each, with one delimiter between them.
+    pub(crate) fn new(text: &'a [u8], start: u32, ends: &'a [u32]) -> Self {
+        Self {
+            text,
+            start,
+            ends,
+            between: 1,
+        }
     }
 
     /// How many fields the line has.
     pub(crate) fn len(&self) -> usize {
-        self.fields.len()
+        self.ends.len()
     }
 
     /// True if nothing but white space is on the line.
     pub(crate) fn is_blank(&self) -> bool {
-        self.fields.len() < 2 && self.field(0).is_empty()
+        self.ends.len() < 2 && self.field(0).is_empty()
     }
 
     /// A field without the white space around it; empty beyond the end of the line.
@@ -102,7 +111,11 @@ impl<'a> Row<'a> {
     /// The same; `None` beyond the end of the line.
     #[inline]
     pub(crate) fn get(&self, column: usize) -> Option<&'a [u8]> {
-        let &(start, end) = self.fields.get(column)?;
+        let end = *self.ends.get(column)?;
+        let start = match column.checked_sub(1) {
+            Some(before) => self.ends.get(before)? + self.between,
+            None => self.start,
+        };
         Some(self.text.get(start as usize..end as usize)?.trim_ascii())
     }
 }
@@ -140,8 +153,8 @@ pub(crate) struct Splitter {
     quotes: csv_core::Reader,
     line: Vec<u8>,
     text: Vec<u8>,
-    ends: Vec<usize>,
-    fields: Vec<(u32, u32)>,
+    long_ends: Vec<usize>,
+    ends: Vec<u32>,
 }
 
 impl Splitter {
@@ -151,8 +164,8 @@ impl Splitter {
             quotes: csv_core::ReaderBuilder::new().delimiter(delimiter).build(),
             line: Vec::new(),
             text: Vec::new(),
+            long_ends: Vec::new(),
             ends: Vec::new(),
-            fields: Vec::new(),
         }
     }
 
@@ -162,38 +175,29 @@ impl Splitter {
         self.line.extend_from_slice(line);
         // The line end ends the record, unless a quote is still open: then it would be text.
         self.line.push(b'\n');
-        self.text.resize(self.line.len(), 0);
-        self.ends.resize(self.line.len() + 1, 0);
-        self.fields.clear();
         if memchr::memchr(b'"', line).is_none() {
-            find_fields(&self.line, self.delimiter, &mut self.fields);
-            return Some(Row::new(&self.line, &self.fields));
+            find_separators(&self.line, self.delimiter, &mut self.ends);
+            return Some(Row::new(&self.line, 0, &self.ends));
         }
+        self.text.resize(self.line.len(), 0);
+        self.long_ends.resize(self.line.len() + 1, 0);
         self.quotes.reset();
         let (outcome, _, _, fields) =
             self.quotes
-                .read_record(&self.line, &mut self.text, &mut self.ends);
+                .read_record(&self.line, &mut self.text, &mut self.long_ends);
         if outcome != ReadRecordResult::Record {
             return None;
         }
-        let mut start = 0;
-        for &end in self.ends.get(..fields).unwrap_or_default() {
-            let end = u32::try_from(end).unwrap_or(u32::MAX);
-            self.fields.push((start, end));
-            start = end;
-        }
-        Some(Row::new(&self.text, &self.fields))
-    }
-}
-
-/// The fields of a line without quotes that ends with a line end.
-fn find_fields(line: &[u8], delimiter: u8, fields: &mut Vec<(u32, u32)>) {
-    let mut separators = Vec::new();
-    find_separators(line, delimiter, &mut separators);
-    let mut start = 0;
-    for end in separators {
-        fields.push((start, end));
-        start = end + 1;
+        self.ends.clear();
+        let ends = self.long_ends.get(..fields).unwrap_or_default();
+        self.ends.extend(
+            ends.iter()
+                .map(|&end| u32::try_from(end).unwrap_or(u32::MAX)),
+        );
+        Some(Row {
+            between: 0,
+            ..Row::new(&self.text, 0, &self.ends)
+        })
     }
 }
 

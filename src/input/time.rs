@@ -130,8 +130,9 @@ impl<'a> TimeReader<'a> {
 
     #[inline]
     pub(crate) fn parse(&mut self, text: &[u8]) -> Result<Time, String> {
+        // A comparison of fixed length is a few instructions.
         if let Some((last, time)) = &self.last_usual
-            && last == text
+            && <&[u8; 20]>::try_from(text).is_ok_and(|text| text == last)
         {
             return Ok(*time);
         }

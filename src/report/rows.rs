@@ -139,6 +139,37 @@ impl Rows {
         );
     }
 
+    /// Adds a report of speed (m/s) and direction and nothing else: the usual one, on the shortest way.
+    #[inline]
+    pub fn push_wind(
+        &mut self,
+        station: u32,
+        time: Time,
+        speed: f64,
+        direction: FromDirection,
+        place: (u32, u64),
+    ) {
+        self.packed.push(Packed {
+            time,
+            speed,
+            direction: direction.degrees(),
+            station,
+            line: u32::try_from(place.1).unwrap_or(u32::MAX),
+            file: u16::try_from(place.0).unwrap_or(u16::MAX),
+            kind: kind::SPEED | kind::DIRECTION,
+        });
+        // Columns that others have begun go on.
+        if !self.gust.is_empty() {
+            self.gust.push(None);
+        }
+        if !self.moving.is_empty() {
+            self.moving.push(None);
+        }
+        if !self.correction.is_empty() {
+            self.correction.push(0);
+        }
+    }
+
     /// How many there are.
     #[must_use]
     pub fn len(&self) -> usize {

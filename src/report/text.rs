@@ -10,7 +10,7 @@ use super::layout::Layout;
 use super::metar::parse_metar;
 use super::names::{Finder, Found, Names};
 use super::read::PartOutcome;
-use super::rows::{Moving, Part, Report, Rows};
+use super::rows::{Moving, Rows};
 use super::values::{GivenWind, Unusable, Value, ValueReader, WindValue};
 use crate::error::Error;
 use crate::input::{
@@ -137,22 +137,17 @@ impl<'a> BlockReader<'a> {
     fn plain_lines(&mut self, text: &[u8], first_line: u64) {
         let mut separators = Vec::with_capacity(text.len() / 8);
         find_separators(text, self.layout.delimiter, &mut separators);
-        let mut fields: Vec<(u32, u32)> = Vec::new();
-        let (mut start, mut number) = (0, first_line);
-        for at in separators {
-            fields.push((start, at));
-            start = at + 1;
-            if text.get(at as usize) == Some(&b'\n') {
-                self.row(&Row::new(text, &fields), number);
-                fields.clear();
-                number += 1;
-            }
-        }
         // The last line may lack its end. Blocks are far smaller than 4 GiB.
-        let end = u32::try_from(text.len()).unwrap_or(u32::MAX);
-        if start < end || !fields.is_empty() {
-            fields.push((start, end));
-            self.row(&Row::new(text, &fields), number);
+        if !text.ends_with(b"\n") {
+            separators.push(u32::try_from(text.len()).unwrap_or(u32::MAX));
+        }
+        let (mut start, mut first, mut number) = (0, 0, first_line);
+        for (k, &at) in separators.iter().enumerate() {
+            if text.get(at as usize).is_none_or(|&byte| byte == b'\n') {
+                let ends = separators.get(first..=k).unwrap_or_default();
+                self.row(&Row::new(text, start, ends), number);
+                (start, first, number) = (at + 1, k + 1, number + 1);
+            }
         }
     }
 
@@ -199,17 +194,9 @@ impl<'a> BlockReader<'a> {
         let direction = FromDirection::new(degrees)?;
         let time = self.time.parse(row.get(*layout.time.first()?)?).ok()?;
         let station = self.finder.expected(row.get(layout.station?)?)?;
-        self.rows.push(&Report {
-            station,
-            time,
-            speed: Some(speed * self.values.factor(station)),
-            direction: Some(direction),
-            part: Part::Whole,
-            gust: None,
-            moving: None,
-            correction: 0,
-            place: (self.values.number, line),
-        });
+        let speed = speed * self.values.factor(station);
+        let place = (self.values.number, line);
+        self.rows.push_wind(station, time, speed, direction, place);
         self.outcome.tally.pass(1);
         Some(())
     }

@@ -40,7 +40,7 @@ fn metar_in_bulletins_and_one_a_line() {
 #[test]
 fn metar_in_a_column_with_its_own_and_with_other_times() {
     let with_columns = "report,id,at\nQXAA 141150Z 27010KT,QXAA,2031-06-14T11:50:00Z\n\
-                        \"METAR QXBB 141150Z 28012KT, RMK\",QXBB,2031-06-14T11:50:00Z\n";
+                        \"METAR QXBB 141150Z 28012KT RMK A, B\",QXBB,2031-06-14T11:50:00Z\n";
     let columns = "columns = { report = \"report\", station = \"id\", time = \"at\" }";
     assert_eq!(lines_of(STATIONS, columns, with_columns), metar_winds());
     let alone = "n;text\n1;QXAA 141150Z 27010KT\n2;QXBB 141150Z 28012KT\n";

@@ -220,7 +220,7 @@ fn an_unknown_station_is_told_with_the_nearest_name() {
         .map(ToString::to_string)
         .collect();
     let expected =
-        "1 reports of `Kestrel Hil`, which is not in the station list; is `Kestrel_Hill` meant?";
+        "1 reports of `Kestrel Hil`, which is not in the station list; is `Kestrel Hill` meant?";
     assert_eq!(warnings, [expected]);
     assert_eq!(found.reading.rows.count(Reason::UnknownStation), 1);
     assert!(!found.reading.is_complete());
