@@ -380,7 +380,7 @@ fn a_file_without_permission() {
     let files: [(&str, &[u8]); 2] = [("a.csv", text.as_bytes()), ("b.csv", text.as_bytes())];
     let site = Site::new(&files, "");
     let locked = site.path("b.csv");
-    fs::set_permissions(&locked, fs::Permissions::from_mode(0)).unwrap();
+    fs::set_permissions(&locked, fs::Permissions::from_mode(0o000)).unwrap();
     if fs::read(&locked).is_ok() {
         eprintln!("skipped: this user may read every file");
         return;

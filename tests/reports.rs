@@ -12,6 +12,7 @@ use gyremesh::pipeline::{Reading, Sources};
 use gyremesh::settings::Overrides;
 use gyremesh::station::Network;
 use gyremesh::tally::Reason;
+use gyremesh::units::FromDirection;
 use serde_json::Value;
 use tempfile::TempDir;
 
@@ -105,7 +106,7 @@ impl Found {
         let mut lines = Vec::new();
         for (s, station) in self.network.stations().iter().enumerate() {
             for i in table.of_station(s) {
-                let direction = shown(table.direction(i).map(|d| d.degrees()));
+                let direction = shown(table.direction(i).map(FromDirection::degrees));
                 let (time, speed) = (table.times()[i], shown(table.speed(i)));
                 lines.push(format!("{} {time} {direction} {speed}", station.id));
             }
@@ -180,12 +181,12 @@ fn a_decimal_comma_with_and_without_quotes() {
 
 #[test]
 fn quotes_marks_of_byte_order_and_line_ends_change_nothing() {
-    let quoted: String = TABLE
-        .lines()
-        .map(|line| format!("\"{}\"\n", line.replace(',', "\",\"")))
-        .collect();
+    let quoted = TABLE
+        .trim_end()
+        .replace(',', "\",\"")
+        .replace('\n', "\"\n\"");
     for text in [
-        quoted,
+        format!("\"{quoted}\"\n"),
         format!("\u{feff}{TABLE}"),
         TABLE.replace('\n', "\r\n"),
         TABLE.replace('\n', "\r\r\n"),
@@ -287,6 +288,19 @@ fn many_files_by_a_pattern_are_as_one_in_the_order_of_their_names() {
 }
 
 #[test]
+fn a_pattern_in_a_folder_whose_name_has_brackets() {
+    let settings = "[[reports]]\nfiles = [\"part*.csv\"]";
+    let site = Site::new(STATIONS, settings, &[("part1.csv", TABLE.as_bytes())]);
+    let folder = site.path("net[1]");
+    fs::create_dir(&folder).unwrap();
+    for name in ["network.toml", "stations.csv", "part1.csv"] {
+        fs::rename(site.path(name), folder.join(name)).unwrap();
+    }
+    let sources = Sources::read(&folder.join("network.toml"), &Overrides::default());
+    assert!(sources.is_ok(), "{}", sources.unwrap_err());
+}
+
+#[test]
 fn speed_and_direction_from_two_files_are_joined() {
     let speeds = TABLE
         .replace(",270", "")
@@ -354,13 +368,19 @@ fn missing_marks_by_default_and_as_stated() {
         assert_eq!(wind("", mark, "5"), "- 5", "{mark}");
         assert_eq!(wind("", "90", mark), "- -", "{mark}");
     }
-    assert_eq!(wind("decimal = \",\"", "90", "-9999,0"), "- -");
     let stated = "missing = [\"999\", \"x\", \"-1\"]";
     for mark in ["999", "X", "-1", "-1.0", ""] {
         assert_eq!(wind(stated, "90", mark), "- -", "{mark}");
         assert_eq!(wind(stated, mark, "5"), "- 5", "{mark}");
     }
     assert_eq!(wind(stated, "90", "5"), "90 5");
+}
+
+#[test]
+fn a_missing_mark_with_a_decimal_comma() {
+    let format = "decimal = \",\"";
+    assert_eq!(wind(format, "90", "-9999"), "- -");
+    assert_eq!(wind(format, "90", "-9999,0"), "- -");
 }
 
 #[test]

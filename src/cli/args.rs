@@ -62,7 +62,9 @@ Example: gyremesh polygons networks/ostrin/network.toml";
 const ESTIMATE_HELP: &str = "\
 Reads:   settings, station list, report files.
 Prints:  period, share of reports used, polygons, strongest convergence and spin-up, stations that reported least.
-Writes:  polygons.csv (a row for each time and polygon), mesh.geojson, stations.csv, summary.json. Files appear only \
+Writes:  polygons.csv (a row for each time and polygon; other formats with --format), polygon_summary.csv (a row for \
+each polygon: mean, standard deviation, extremes, share beyond 1.96 standard errors), mesh.geojson, stations.csv, \
+summary.json. Files appear only \
 when they are whole.
 
 Settings file (defaults in brackets):
@@ -161,12 +163,32 @@ pub struct EstimateArgs {
     /// Limits in place of those of the settings
     #[command(flatten)]
     pub limits: LimitArgs,
+    /// Formats of the series, several separated by commas
+    #[arg(
+        long,
+        value_name = "FORMAT",
+        value_delimiter = ',',
+        default_value = "csv"
+    )]
+    pub format: Vec<Format>,
+    /// Write no series, only the summary of each polygon
+    #[arg(long)]
+    pub summary_only: bool,
     /// Threads; the results do not depend on it [default: all processors]
     #[arg(long, value_name = "N")]
     pub threads: Option<usize>,
     /// Print no summary and no progress; warnings remain
     #[arg(long, short)]
     pub quiet: bool,
+}
+
+/// A format of the series.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, clap::ValueEnum)]
+pub enum Format {
+    /// polygons.csv
+    Csv,
+    /// polygons.parquet: the same columns, typed, null for missing
+    Parquet,
 }
 
 /// Limits of the polygons.

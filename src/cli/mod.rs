@@ -10,10 +10,11 @@ use std::path::{Path, PathBuf};
 use clap::Parser;
 use indicatif::{ProgressBar, ProgressStyle};
 
-use self::args::{Args, CheckArgs, Command, EstimateArgs, PolygonsArgs};
+use self::args::{Args, CheckArgs, Command, EstimateArgs, Format, PolygonsArgs};
 use crate::error::Error;
 use crate::output::{
-    OutputSet, PolygonRows, mesh_csv, mesh_geojson, reading_json, stations_csv, summary_json,
+    Formats, OutputSet, mesh_csv, mesh_geojson, reading_json, series, stations_csv, summary_csv,
+    summary_json,
 };
 use crate::pipeline::{self, Reading, Setup, Sources};
 use crate::settings::Overrides;
@@ -131,15 +132,17 @@ fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
         .clone()
         .unwrap_or_else(|| default_folder(&args.network));
     let mut set = OutputSet::new(&folder)?;
-    let series = set.create("polygons.csv")?;
-    set.write(series, PolygonRows::header().as_bytes())?;
-    let rows = PolygonRows::new(&setup);
+    let formats = Formats {
+        csv: !args.summary_only && args.format.contains(&Format::Csv),
+        parquet: !args.summary_only && args.format.contains(&Format::Parquet),
+    };
+    let (encoder, mut series_files) = series(&setup, formats, &mut set)?;
 
     let bar = progress_bar(args.quiet);
     let outcome = pipeline::run(
         &setup,
-        |block| rows.encode(block),
-        |bytes| set.write(series, &bytes),
+        |block| encoder.encode(block),
+        |encoded| series_files.write(&mut set, encoded),
         |done, of| {
             bar.set_length(of as u64);
             bar.set_position(done as u64);
@@ -148,8 +151,13 @@ fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
     bar.finish_and_clear();
     let outcome = outcome?;
 
+    series_files.finish(&mut set)?;
     set.put("mesh.geojson", mesh_geojson(&setup).as_bytes())?;
     set.put("stations.csv", stations_csv(&setup, &outcome).as_bytes())?;
+    set.put(
+        "polygon_summary.csv",
+        summary_csv(&setup, &outcome).as_bytes(),
+    )?;
     set.put("summary.json", summary_json(&setup, &outcome).as_bytes())?;
     let files = set.commit()?;
 

@@ -4,6 +4,7 @@
 
 mod earth;
 mod extremes;
+mod statistics;
 
 use crate::align::WindBlock;
 use crate::check::Flag;
@@ -14,6 +15,7 @@ pub use earth::{
     OMEGA, SELF_TEST_ALLOWED, SelfTest, earth_rotation, planetary_vorticity, self_test,
 };
 pub use extremes::{Extremes, Peak};
+pub use statistics::{RunStatistics, Statistics};
 
 /// Estimates of all polygons at a run of analysis times.
 ///

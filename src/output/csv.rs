@@ -182,6 +182,63 @@ pub fn stations_csv(setup: &Setup, outcome: &Outcome) -> String {
     out
 }
 
+/// `polygon_summary.csv`: what the values of each polygon come to, 1/s.
+#[must_use]
+pub fn summary_csv(setup: &Setup, outcome: &Outcome) -> String {
+    let mut out = String::from("polygon");
+    for quantity in ["vorticity", "divergence"] {
+        for column in [
+            "values",
+            "mean",
+            "mean_se",
+            "sd",
+            "min",
+            "min_time",
+            "max",
+            "max_time",
+            "significant_share",
+        ] {
+            out.push(',');
+            out.push_str(quantity);
+            out.push('_');
+            out.push_str(column);
+        }
+    }
+    out.push('\n');
+    let statistics = &outcome.statistics;
+    for ((polygon, vorticity), divergence) in setup
+        .built
+        .polygons
+        .iter()
+        .zip(&statistics.vorticity)
+        .zip(&statistics.divergence)
+    {
+        out.push_str(&quoted(&polygon.id));
+        for s in [vorticity, divergence] {
+            let there = |value: f64| optional((s.count > 0).then_some(value));
+            let time = |peak: Option<(f64, crate::time::Time)>| {
+                peak.map_or_else(String::new, |p| p.1.to_string())
+            };
+            for field in [
+                s.count.to_string(),
+                there(s.mean),
+                optional(s.mean_error()),
+                optional(s.standard_deviation()),
+                optional(s.smallest.map(|p| p.0)),
+                time(s.smallest),
+                optional(s.largest.map(|p| p.0)),
+                time(s.largest),
+                there(s.significant as f64 / s.count.max(1) as f64),
+            ] {
+                out.push(',');
+                out.push_str(&field);
+            }
+        }
+        out.push('\n');
+    }
+    out
+}
+
 /// `mesh.csv`: shape and use of every polygon, without any report.
 #[must_use]
 pub fn mesh_csv(setup: &Setup) -> String {

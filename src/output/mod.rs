@@ -3,13 +3,17 @@
 mod csv;
 mod file;
 mod geojson;
+#[cfg(feature = "parquet")]
+mod parquet;
 mod reading;
+mod series;
 mod summary;
 
-pub use csv::{PolygonRows, mesh_csv, stations_csv};
+pub use csv::{PolygonRows, mesh_csv, stations_csv, summary_csv};
 pub use file::OutputSet;
 pub use geojson::{mesh_geojson, outline_geometry};
 pub use reading::reading_json;
+pub use series::{Formats, SeriesEncoder, SeriesFiles, series};
 pub use summary::summary_json;
 
 /// What a polygon's estimate is not, wherever results are shown.

@@ -8,7 +8,7 @@ use super::{Reading, Setup};
 use crate::align::{AlignTally, Aligner, StationSensors, TimeGrid, WindBlock, height_factor};
 use crate::check::StationReading;
 use crate::error::Error;
-use crate::integral::{EstimateBlock, Extremes, estimate};
+use crate::integral::{EstimateBlock, Extremes, RunStatistics, estimate};
 use crate::polygon::StationPolygon;
 use crate::report::{ReportTable, SpeedStep};
 use crate::settings::{SensorErrors, Settings};
@@ -30,6 +30,8 @@ pub struct Outcome {
     pub height_factors: Vec<Option<f64>>,
     /// Strongest values.
     pub extremes: Extremes,
+    /// Statistics of each polygon.
+    pub statistics: RunStatistics,
     /// What the user should know of all stages.
     pub warnings: Vec<Warning>,
 }
@@ -69,6 +71,7 @@ pub fn run<T: Send>(
     let times = aligner.grid().len();
     let polygons = &setup.built.polygons;
     let mut extremes = Extremes::default();
+    let mut statistics = RunStatistics::default();
     let mut done = 0;
     loop {
         let wave: Vec<WindBlock> = std::iter::from_fn(|| aligner.next_block())
@@ -77,16 +80,18 @@ pub fn run<T: Send>(
         if wave.is_empty() {
             break;
         }
-        let results: Vec<(usize, Extremes, T)> = wave
+        let results: Vec<(usize, Extremes, RunStatistics, T)> = wave
             .par_iter()
             .map(|winds| {
                 let block = estimate(polygons, winds);
                 let peaks = Extremes::of(&block, &setup.planetary);
-                (winds.times.len(), peaks, encode(&block))
+                let sums = RunStatistics::of(&block, polygons.len());
+                (winds.times.len(), peaks, sums, encode(&block))
             })
             .collect();
-        for (n, peaks, encoded) in results {
+        for (n, peaks, sums, encoded) in results {
             extremes.merge(&peaks);
+            statistics.merge(&sums);
             write(encoded)?;
             done += n;
         }
@@ -113,6 +118,7 @@ pub fn run<T: Send>(
         values,
         height_factors,
         extremes,
+        statistics,
     })
 }
 

@@ -12,7 +12,8 @@ fn read(format: &str, text: &str) -> Found {
 fn list_with(column: &str, values: [&str; 3]) -> String {
     let ends = [column].into_iter().chain(values);
     let lines = STATIONS.lines().zip(ends);
-    lines.map(|(line, end)| format!("{line},{end}\n")).collect()
+    let lines: Vec<String> = lines.map(|(line, end)| format!("{line},{end}")).collect();
+    lines.join("\n")
 }
 
 #[test]
@@ -97,13 +98,16 @@ fn speeds_are_reduced_to_a_common_height() {
 
 #[test]
 fn rounding_that_is_found_goes_into_the_error_bars() {
-    let mut text = "time,station,direction,speed\n".to_string();
+    let mut rows = vec!["time,station,direction,speed".to_string()];
     for hour in 0..24 {
         for (station, offset) in [("A", 0), ("B", 20), ("C", 50)] {
             let direction = (hour * 70 + offset) % 360;
-            text += &format!("2031-06-14T{hour:02}:00:00Z,{station},{direction},7.03\n");
+            rows.push(format!(
+                "2031-06-14T{hour:02}:00:00Z,{station},{direction},7.03"
+            ));
         }
     }
+    let text = rows.join("\n");
     let errors = |sensor: &str| {
         let settings = format!(
             "[[reports]]\nfiles = [\"r.csv\"]\n[sensor]\nspeed_step = \"0 m/s\"\n{sensor}\n\

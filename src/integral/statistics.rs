@@ -1,0 +1,164 @@
+//! What a polygon's values come to over a run.
+
+use super::EstimateBlock;
+use crate::check::Flag;
+use crate::time::Time;
+
+/// Statistics of the values of one quantity of one polygon.
+#[derive(Debug, Clone, Copy, Default, PartialEq)]
+pub struct Statistics {
+    /// Values.
+    pub count: u64,
+    /// Their mean, 1/s.
+    pub mean: f64,
+    /// Sum of the squared differences from the mean, 1/s².
+    squares: f64,
+    /// Sum of the squared standard errors, 1/s².
+    errors: f64,
+    /// Values beyond 1.96 standard errors from 0.
+    pub significant: u64,
+    /// Smallest value and its time.
+    pub smallest: Option<(f64, Time)>,
+    /// Largest value and its time.
+    pub largest: Option<(f64, Time)>,
+}
+
+/// Two-sided 95 % of the normal distribution.
+const SIGNIFICANT: f64 = 1.96;
+
+impl Statistics {
+    fn add(&mut self, value: f64, error: f64, time: Time) {
+        self.count += 1;
+        // Welford 1962, Technometrics 4, 419: no cancellation.
+        let before = value - self.mean;
+        self.mean += before / self.count as f64;
+        self.squares += before * (value - self.mean);
+        self.errors += error * error;
+        self.significant += u64::from(value.abs() > SIGNIFICANT * error);
+        if self.smallest.is_none_or(|(smallest, _)| value < smallest) {
+            self.smallest = Some((value, time));
+        }
+        if self.largest.is_none_or(|(largest, _)| value > largest) {
+            self.largest = Some((value, time));
+        }
+    }
+
+    /// Takes in the statistics of later values.
+    pub fn merge(&mut self, later: &Self) {
+        if later.count == 0 {
+            return;
+        }
+        // Chan, Golub & LeVeque 1983, Am. Stat. 37, 242.
+        let (a, b) = (self.count as f64, later.count as f64);
+        let difference = later.mean - self.mean;
+        self.mean += difference * b / (a + b);
+        self.squares += later.squares + difference * difference * a * b / (a + b);
+        self.errors += later.errors;
+        self.count += later.count;
+        self.significant += later.significant;
+        self.smallest = match (self.smallest, later.smallest) {
+            (Some(a), Some(b)) if a.0 <= b.0 => Some(a),
+            (a, b) => b.or(a),
+        };
+        self.largest = match (self.largest, later.largest) {
+            (Some(a), Some(b)) if a.0 >= b.0 => Some(a),
+            (a, b) => b.or(a),
+        };
+    }
+
+    /// Standard deviation of the values (n − 1), 1/s.
+    #[must_use]
+    pub fn standard_deviation(&self) -> Option<f64> {
+        (self.count > 1).then(|| (self.squares / (self.count - 1) as f64).sqrt())
+    }
+
+    /// Standard error of the mean, 1/s: the root mean square of the values' own errors. The errors of a sensor persist,
+    /// so a mean over time is no better than its values.
+    #[must_use]
+    pub fn mean_error(&self) -> Option<f64> {
+        (self.count > 0).then(|| (self.errors / self.count as f64).sqrt())
+    }
+}
+
+/// Statistics of all polygons: vorticity and divergence of the values that passed or were not flagged worse than
+/// suspect.
+#[derive(Debug, Clone, Default, PartialEq)]
+pub struct RunStatistics {
+    /// For each polygon its vorticity.
+    pub vorticity: Vec<Statistics>,
+    /// For each polygon its divergence.
+    pub divergence: Vec<Statistics>,
+}
+
+impl RunStatistics {
+    /// Those of a block.
+    #[must_use]
+    pub fn of(block: &EstimateBlock, polygons: usize) -> Self {
+        let n = block.times.len();
+        let of = |values: &[f64], errors: &[f64]| -> Vec<Statistics> {
+            (0..polygons)
+                .map(|polygon| {
+                    let mut statistics = Statistics::default();
+                    for (t, &time) in block.times.iter().enumerate() {
+                        let cell = polygon * n + t;
+                        if block.flag[cell] < Flag::Fail {
+                            statistics.add(values[cell], errors[cell], time);
+                        }
+                    }
+                    statistics
+                })
+                .collect()
+        };
+        Self {
+            vorticity: of(&block.vorticity, &block.vorticity_se),
+            divergence: of(&block.divergence, &block.divergence_se),
+        }
+    }
+
+    /// Takes in those of a later block.
+    pub fn merge(&mut self, later: &Self) {
+        let merge = |all: &mut Vec<Statistics>, later: &[Statistics]| {
+            all.resize(later.len(), Statistics::default());
+            for (a, b) in all.iter_mut().zip(later) {
+                a.merge(b);
+            }
+        };
+        merge(&mut self.vorticity, &later.vorticity);
+        merge(&mut self.divergence, &later.divergence);
+    }
+}
+
+#[cfg(test)]
+#[expect(clippy::unwrap_used, reason = "a test may panic")]
+mod tests {
+    use super::*;
+
+    /// NumPy 2.4: x = [3, 1, 4, 1, 5, 9, 2, 6] * 1e-5; x.mean() = 3.875e-5, x.std(ddof=1) = 2.748376143938713e-05.
+    #[test]
+    fn merged_parts_equal_the_whole() {
+        let values = [3.0, 1.0, 4.0, 1.0, 5.0, 9.0, 2.0, 6.0].map(|x| x * 1e-5);
+        let mut whole = Statistics::default();
+        let mut merged = Statistics::default();
+        for (k, chunk) in values.chunks(3).enumerate() {
+            let mut part = Statistics::default();
+            for (i, &value) in chunk.iter().enumerate() {
+                let time = Time::from_micros(i64::try_from(3 * k + i).unwrap());
+                part.add(value, 2e-5, time);
+                whole.add(value, 2e-5, time);
+            }
+            merged.merge(&part);
+        }
+        assert!((merged.mean - 3.875e-5).abs() < 1e-18);
+        let deviation = merged.standard_deviation().unwrap();
+        assert!(
+            (deviation - 2.748_376_143_938_713e-5).abs() < 1e-18,
+            "{deviation:e}"
+        );
+        assert!((whole.standard_deviation().unwrap() - deviation).abs() < 1e-18);
+        assert!((merged.mean_error().unwrap() - 2e-5).abs() < 1e-18);
+        assert_eq!((merged.count, merged.significant), (8, 4));
+        assert_eq!(merged.smallest.unwrap().1.micros(), 1);
+        assert_eq!(merged.largest.unwrap().1.micros(), 5);
+        assert_eq!(whole.smallest, merged.smallest);
+    }
+}

@@ -1,0 +1,174 @@
+//! The series in its formats, and the summary of each polygon.
+#![cfg(feature = "parquet")]
+#![allow(clippy::unwrap_used, clippy::panic, reason = "tests may panic")]
+
+use std::collections::BTreeMap;
+use std::fs::File;
+use std::path::Path;
+use std::process::Command;
+
+use arrow_array::cast::AsArray;
+use arrow_array::types::{
+    Float32Type, Float64Type, Int32Type, TimestampMicrosecondType, UInt8Type,
+};
+use arrow_array::{Array, RecordBatch};
+use parquet::arrow::arrow_reader::ParquetRecordBatchReaderBuilder;
+
+fn estimate(out: &Path, more: &[&str]) {
+    let network = Path::new(env!("CARGO_MANIFEST_DIR")).join("networks/ostrin/network.toml");
+    let output = Command::new(env!("CARGO_BIN_EXE_gyremesh"))
+        .arg("estimate")
+        .arg(network)
+        .args(["--quiet", "--out"])
+        .arg(out)
+        .args(more)
+        .output()
+        .unwrap();
+    assert_eq!(
+        output.status.code(),
+        Some(0),
+        "{}",
+        String::from_utf8_lossy(&output.stderr)
+    );
+}
+
+fn rows(path: &Path) -> Vec<csv::StringRecord> {
+    csv::Reader::from_path(path)
+        .unwrap()
+        .records()
+        .map(Result::unwrap)
+        .collect()
+}
+
+/// A cell as `polygons.csv` writes it: shortest text that reads back the same, empty for null.
+fn text(batch: &RecordBatch, column: usize, row: usize) -> Vec<f64> {
+    let array = batch.column(column);
+    if array.is_null(row) {
+        return vec![];
+    }
+    match column {
+        10 => vec![f64::from(array.as_primitive::<UInt8Type>().value(row))],
+        12 => vec![f64::from(array.as_primitive::<Float32Type>().value(row))],
+        _ => vec![array.as_primitive::<Float64Type>().value(row)],
+    }
+}
+
+fn name(batch: &RecordBatch, column: usize, row: usize) -> String {
+    let array = batch.column(column).as_dictionary::<Int32Type>();
+    if array.is_null(row) {
+        return String::new();
+    }
+    let key = usize::try_from(array.keys().value(row)).unwrap();
+    array.values().as_string::<i32>().value(key).to_string()
+}
+
+/// The same bytes of every number, column for column, row for row.
+#[test]
+fn parquet_holds_what_the_csv_holds() {
+    let out = tempfile::tempdir().unwrap();
+    estimate(out.path(), &["--format", "csv,parquet"]);
+    let csv = rows(&out.path().join("polygons.csv"));
+    let file = File::open(out.path().join("polygons.parquet")).unwrap();
+    let builder = ParquetRecordBatchReaderBuilder::try_new(file).unwrap();
+    let names: Vec<String> = builder
+        .schema()
+        .fields()
+        .iter()
+        .map(|f| f.name().clone())
+        .collect();
+    let header = csv::Reader::from_path(out.path().join("polygons.csv"))
+        .unwrap()
+        .headers()
+        .unwrap()
+        .clone();
+    assert_eq!(names, header.iter().collect::<Vec<_>>());
+    let mut at = 0;
+    for batch in builder.build().unwrap() {
+        let batch = batch.unwrap();
+        for row in 0..batch.num_rows() {
+            let expected = &csv[at];
+            let micros = batch
+                .column(0)
+                .as_primitive::<TimestampMicrosecondType>()
+                .value(row);
+            let time = gyremesh::time::Time::from_micros(micros).to_string();
+            assert_eq!(time, expected[0]);
+            for column in [1, 2, 11] {
+                assert_eq!(name(&batch, column, row), expected[column]);
+            }
+            for column in [3, 4, 5, 6, 7, 8, 9, 10, 12] {
+                let found = text(&batch, column, row);
+                let wanted: Vec<f64> = expected[column].parse().into_iter().collect();
+                assert_eq!(found, wanted, "row {at}, column {}", &names[column]);
+            }
+            at += 1;
+        }
+    }
+    assert_eq!(at, csv.len());
+    // The demo has missing values, so nulls were compared too.
+    assert!(csv.iter().any(|r| r[4].is_empty()));
+}
+
+/// Counts, means, extremes and shares recomputed from the series. Tolerance: rounding of sums of 289 values.
+#[test]
+fn the_summary_of_each_polygon_is_that_of_its_series() {
+    let out = tempfile::tempdir().unwrap();
+    estimate(out.path(), &[]);
+    let mut series: BTreeMap<String, Vec<(f64, f64, String)>> = BTreeMap::new();
+    for row in rows(&out.path().join("polygons.csv")) {
+        if let (Ok(value), Ok(error)) = (row[6].parse::<f64>(), row[7].parse::<f64>()) {
+            series
+                .entry(row[1].to_string())
+                .or_default()
+                .push((value, error, row[0].to_string()));
+        }
+    }
+    let summary = rows(&out.path().join("polygon_summary.csv"));
+    assert!(summary.len() >= series.len());
+    for row in &summary {
+        let values = &series[&row[0]];
+        let n = values.len() as f64;
+        // The columns of divergence follow the nine of vorticity.
+        let number = |k: usize| row[9 + k].parse::<f64>().unwrap();
+        assert!((number(1) - n).abs() < 0.5);
+        let mean = values.iter().map(|v| v.0).sum::<f64>() / n;
+        assert!(
+            (number(2) - mean).abs() < 1e-12 * 1e-3,
+            "{} {mean:e}",
+            number(2)
+        );
+        let rms = (values.iter().map(|v| v.1 * v.1).sum::<f64>() / n).sqrt();
+        assert!((number(3) / rms - 1.0).abs() < 1e-12);
+        let sd = (values.iter().map(|v| (v.0 - mean).powi(2)).sum::<f64>() / (n - 1.0)).sqrt();
+        assert!((number(4) / sd - 1.0).abs() < 1e-12);
+        let smallest = values.iter().min_by(|a, b| a.0.total_cmp(&b.0)).unwrap();
+        assert_eq!((number(5), &row[9 + 6]), (smallest.0, smallest.2.as_str()));
+        let largest = values.iter().max_by(|a, b| a.0.total_cmp(&b.0)).unwrap();
+        assert_eq!((number(7), &row[9 + 8]), (largest.0, largest.2.as_str()));
+        let significant = values.iter().filter(|v| v.0.abs() > 1.96 * v.1).count() as f64;
+        assert!((number(9) - significant / n).abs() < 1e-12);
+    }
+}
+
+#[test]
+fn summary_only_writes_no_series() {
+    let (all, only) = (tempfile::tempdir().unwrap(), tempfile::tempdir().unwrap());
+    estimate(all.path(), &["--format", "parquet"]);
+    estimate(only.path(), &["--summary-only"]);
+    assert!(
+        all.path().join("polygons.parquet").is_file() && !all.path().join("polygons.csv").exists()
+    );
+    assert!(
+        !only.path().join("polygons.csv").exists()
+            && !only.path().join("polygons.parquet").exists()
+    );
+    for name in [
+        "polygon_summary.csv",
+        "stations.csv",
+        "mesh.geojson",
+        "summary.json",
+    ] {
+        let read = |folder: &Path| std::fs::read(folder.join(name)).unwrap();
+        assert!(read(all.path()) == read(only.path()), "{name}");
+    }
+}
