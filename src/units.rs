@@ -67,6 +67,30 @@ impl FromStr for SpeedUnit {
     }
 }
 
+/// What directions are counted from.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, serde::Serialize)]
+#[serde(rename_all = "snake_case")]
+pub enum North {
+    /// True north.
+    True,
+    /// Magnetic north: the declination of the station is added.
+    Magnetic,
+}
+
+impl FromStr for North {
+    type Err = String;
+
+    fn from_str(text: &str) -> Result<Self, String> {
+        match text.trim() {
+            "true" => Ok(Self::True),
+            "magnetic" => Ok(Self::Magnetic),
+            _ => Err(format!(
+                "`{text}` is no north (`true` or `magnetic` expected)"
+            )),
+        }
+    }
+}
+
 /// Direction the wind blows *from*, degrees clockwise from true north, in (0, 360]. Calm has none.
 #[derive(Debug, Clone, Copy, PartialEq, PartialOrd)]
 pub struct FromDirection(f64);

@@ -25,12 +25,13 @@ use arrow_ipc::writer::{FileWriter, IpcWriteOptions};
 use gyremesh::error::Error;
 use gyremesh::input::{Label, TextFormat, TimeForm, TimeFormat, Zone};
 use gyremesh::report::{
-    Columns, North, ReadOutcome, ReportForm, ReportFormat, ReportTable, WindColumns, read_reports,
+    Columns, ReadOutcome, ReportForm, ReportFormat, ReportTable, WindColumns, read_reports,
 };
 use gyremesh::settings::ReportSource;
 use gyremesh::station::{Network, Position, Station};
 use gyremesh::tally::Reason;
 use gyremesh::time::Time;
+use gyremesh::units::North;
 use gyremesh::units::SpeedUnit;
 use parquet::arrow::ArrowWriter;
 use parquet::basic::{Compression, ZstdLevel};

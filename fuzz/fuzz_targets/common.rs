@@ -6,7 +6,7 @@ use gyremesh::report::{ReadOutcome, ReportTable, Rows};
 use gyremesh::settings::RangeLimits;
 use gyremesh::station::{Network, Position, Station};
 use gyremesh::time::Time;
-use gyremesh::units::SpeedUnit;
+use gyremesh::units::{FromDirection, SpeedUnit};
 
 /// Four stations: plain, with its own unit and an alias, moved away in 2031, with a code-form name.
 ///
@@ -56,7 +56,7 @@ pub fn balance(outcome: &ReadOutcome, network: &Network) -> ReportTable {
         assert!(table.times()[of_station.clone()].is_sorted());
         for i in of_station {
             assert!(table.speed(i).is_none_or(|speed| speed >= 0.0));
-            let direction = table.direction(i).map(|d| d.degrees());
+            let direction = table.direction(i).map(FromDirection::degrees);
             assert!(direction.is_none_or(|d| d > 0.0 && d <= 360.0));
         }
     }

@@ -6,7 +6,8 @@ mod common;
 use std::time::Duration;
 
 use gyremesh::input::{Label, RepeatedHour, TextFormat, TimeForm, TimeFormat, Zone};
-use gyremesh::report::{Columns, North, ReportForm, ReportFormat, WindColumns, read_bytes};
+use gyremesh::report::{Columns, ReportForm, ReportFormat, WindColumns, read_bytes};
+use gyremesh::units::North;
 use gyremesh::units::SpeedUnit;
 use libfuzzer_sys::fuzz_target;
 

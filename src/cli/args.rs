@@ -71,7 +71,7 @@ Settings file (defaults in brackets):
   name                        name of the network
   [stations]  file            table with a header line, or GeoJSON points; gzip and Zstandard are recognised
               columns         id, latitude, longitude [of these names], name, elevation, aliases (one or a list),
-                              valid_from, valid_to (RFC 3339 or YYYY-MM-DD), speed_unit, declination (degrees),
+                              valid_from, valid_to (RFC 3339 or YYYY-MM-DD), speed_unit, north, declination (degrees),
                               sensor_height, roughness (m) [none]
               elevation_unit  m, km or ft [m]
               only            list of identifiers [all]

@@ -4,7 +4,7 @@ use serde::Serialize;
 
 use crate::input::{TextFormat, TimeFormat};
 use crate::time::Time;
-use crate::units::SpeedUnit;
+use crate::units::{North, SpeedUnit};
 
 /// The mark in a column name that stands for the station: such a table is wide, a column for each station.
 pub(super) const STATION_MARK: &str = "{station}";
@@ -20,7 +20,7 @@ pub struct ReportFormat {
     pub time: TimeFormat,
     /// Unit of speeds, components and gusts, unless a station has its own; code forms carry theirs.
     pub speed_unit: SpeedUnit,
-    /// What directions are counted from.
+    /// What directions are counted from, unless a station has its own.
     pub north: North,
     /// One unit of the level column in Pa or m.
     pub level_factor: f64,
@@ -149,14 +149,4 @@ impl WindColumns {
         let (first, second) = self.names();
         first.contains(STATION_MARK) || second.is_some_and(|s| s.contains(STATION_MARK))
     }
-}
-
-/// What directions are counted from.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize)]
-#[serde(rename_all = "snake_case")]
-pub enum North {
-    /// True north.
-    True,
-    /// Magnetic north: the declination of the station is added.
-    Magnetic,
 }

@@ -1,11 +1,12 @@
 //! Where the values of a text table stand.
 
-use super::format::{North, STATION_MARK, WindColumns};
+use super::format::{STATION_MARK, WindColumns};
 use super::names::{Found, Names};
 use super::values::ValueReader;
 use crate::error::{Error, Place, Problem};
 use crate::input::{Header, find_delimiter, latin1_to_utf8};
 use crate::station::missing_column;
+use crate::units::North;
 
 /// The columns of one station in a wide table.
 pub(super) struct WideStation {
@@ -104,6 +105,11 @@ impl Layout {
                 && !is_wide
                 && columns.time.len() == 1
                 && format.north == North::True
+                && names
+                    .network
+                    .stations()
+                    .iter()
+                    .all(|s| s.site.north.is_none())
                 && !format.text.decimal_comma
                 && !names.any_moved
                 && !values.positive_marks

@@ -21,7 +21,7 @@ mod text;
 mod values;
 
 pub use coded::{CodeError, CodedDirection, CodedSpeed, CodedWind, DayTime, Entry};
-pub use format::{Columns, North, ReportForm, ReportFormat, WindColumns};
+pub use format::{Columns, ReportForm, ReportFormat, WindColumns};
 pub use metar::{Metar, Metars, metars, parse_metar};
 pub use read::{FileOutcome, ReadOutcome, read_bytes, read_reports};
 pub use rounding::{Rounding, SpeedStep, find_rounding};

@@ -2,7 +2,7 @@
 //! the values come from.
 
 use super::direction::{DirectionText, direction_word};
-use super::format::{Columns, North, ReportFormat, WindColumns};
+use super::format::{Columns, ReportFormat, WindColumns};
 use super::names::Names;
 use super::rows::{Moving, Part, Report};
 use crate::error::{Place, Problem};
@@ -10,7 +10,7 @@ use crate::input::{MISSING_MARKS, MissingMarks, parse_number, parse_number_with_
 use crate::station::Position;
 use crate::tally::Reason;
 use crate::time::Time;
-use crate::units::{FromDirection, Wind};
+use crate::units::{FromDirection, North, Wind};
 
 /// A value of a report.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -300,7 +300,9 @@ impl<'a> ValueReader<'a> {
         let Some(DirectionText::From(direction)) = direction else {
             return Ok(None);
         };
-        if self.format.north == North::True {
+        let own = self.names.network.stations().get(station as usize);
+        let north = own.and_then(|s| s.site.north).unwrap_or(self.format.north);
+        if north == North::True {
             return Ok(Some(direction));
         }
         match self.names.declinations.at(station as usize, time) {

@@ -116,6 +116,7 @@ fn catalogue(section: &mut Section) -> Catalogue {
         valid_from: text(&mut columns, "valid_from"),
         valid_to: text(&mut columns, "valid_to"),
         speed_unit: text(&mut columns, "speed_unit"),
+        north: text(&mut columns, "north"),
         declination: text(&mut columns, "declination"),
         sensor_height: text(&mut columns, "sensor_height"),
         roughness: text(&mut columns, "roughness"),

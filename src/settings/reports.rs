@@ -8,9 +8,9 @@ use super::path::expand_path;
 use super::section::{Found, Section};
 use crate::error::Place;
 use crate::input::{Label, RepeatedHour, TextFormat, TimeForm, TimeFormat, Zone};
-use crate::report::{Columns, North, ReportForm, ReportFormat, WindColumns};
+use crate::report::{Columns, ReportForm, ReportFormat, WindColumns};
 use crate::time::Time;
-use crate::units;
+use crate::units::{self, North};
 
 /// Reads all groups of report files; `instead` replaces the files, in the format of the first group.
 pub(super) fn reports(root: &mut Section, base: &Path, instead: &[PathBuf]) -> Vec<ReportSource> {
@@ -104,12 +104,7 @@ fn report_format(section: &mut Section) -> ReportFormat {
         text: text_format(section),
         time: time_format(section.section("time")),
         speed_unit: section.parsed("speed_unit", str::parse).unwrap_or_default(),
-        north: section
-            .choice(
-                "north",
-                &[("true", North::True), ("magnetic", North::Magnetic)],
-            )
-            .unwrap_or(North::True),
+        north: section.parsed("north", str::parse).unwrap_or(North::True),
         level_factor: section.parsed("level_unit", level_unit).unwrap_or(1.0),
         reference,
     }

@@ -33,6 +33,8 @@ pub struct StationColumns {
     pub valid_to: Option<String>,
     /// Unit of the station's speeds.
     pub speed_unit: Option<String>,
+    /// What its directions are counted from: `true` or `magnetic`.
+    pub north: Option<String>,
     /// Magnetic declination, degrees, east positive.
     pub declination: Option<String>,
     /// Height of the sensor above the ground, m.
@@ -53,6 +55,7 @@ impl Default for StationColumns {
             valid_from: None,
             valid_to: None,
             speed_unit: None,
+            north: None,
             declination: None,
             sensor_height: None,
             roughness: None,

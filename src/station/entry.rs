@@ -9,7 +9,7 @@ use super::{Catalogue, Position, Site, Station, StationColumns};
 use crate::error::{Place, Problem};
 use crate::input::{MissingMarks, parse_number, parse_number_with_comma, shown};
 use crate::time::Time;
-use crate::units::SpeedUnit;
+use crate::units::{North, SpeedUnit};
 
 /// What an entry may say of a station.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -22,6 +22,7 @@ pub(super) enum Field {
     ValidFrom,
     ValidTo,
     SpeedUnit,
+    North,
     Declination,
     SensorHeight,
     Roughness,
@@ -41,6 +42,7 @@ impl StationColumns {
             Field::ValidFrom => self.valid_from.as_deref(),
             Field::ValidTo => self.valid_to.as_deref(),
             Field::SpeedUnit => self.speed_unit.as_deref(),
+            Field::North => self.north.as_deref(),
             Field::Declination => self.declination.as_deref(),
             Field::SensorHeight => self.sensor_height.as_deref(),
             Field::Roughness => self.roughness.as_deref(),
@@ -59,6 +61,7 @@ impl StationColumns {
             Field::ValidFrom,
             Field::ValidTo,
             Field::SpeedUnit,
+            Field::North,
             Field::Declination,
             Field::SensorHeight,
             Field::Roughness,
@@ -217,6 +220,7 @@ impl<'a> EntryReader<'a> {
 
     fn site(&mut self, at: Whence, texts: &Texts) -> Site {
         let speed_unit = self.parsed(at, Field::SpeedUnit, texts, str::parse::<SpeedUnit>);
+        let north = self.parsed(at, Field::North, texts, str::parse::<North>);
         let declination = self.number(at, Field::Declination, texts);
         if let Some(degrees) = declination.filter(|d| !(-180.0..=180.0).contains(d)) {
             let message = format!("{degrees} is out of range (-180 to 180 degrees expected)");
@@ -224,6 +228,7 @@ impl<'a> EntryReader<'a> {
         }
         Site {
             speed_unit,
+            north,
             declination,
             sensor_height: self.positive(at, Field::SensorHeight, texts),
             roughness: self.positive(at, Field::Roughness, texts),

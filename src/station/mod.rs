@@ -13,7 +13,7 @@ use std::collections::HashMap;
 use geographiclib_rs::{Geodesic, InverseGeodesic};
 
 use crate::time::Time;
-use crate::units::SpeedUnit;
+use crate::units::{North, SpeedUnit};
 use crate::warning::Warning;
 
 pub(crate) use catalogue::missing_column;
@@ -124,6 +124,8 @@ impl Station {
 pub struct Site {
     /// Unit of its speeds, where it differs from that of the files.
     pub speed_unit: Option<SpeedUnit>,
+    /// What its directions are counted from, where it differs from that of the files.
+    pub north: Option<North>,
     /// Magnetic declination, degrees, east positive: true = magnetic + declination.
     pub declination: Option<f64>,
     /// Height of the sensor above the ground, m.
