@@ -160,12 +160,19 @@ impl Wind {
 #[must_use]
 pub fn sin_cos_degrees(degrees: f64) -> (f64, f64) {
     // Reduce to [-45, 45] exactly, as GeographicLib's sincosd does (Karney 2013), so that north has no eastward part.
-    let quarter = (degrees / 90.0).round();
-    let (sin, cos) = (degrees - 90.0 * quarter).to_radians().sin_cos();
-    match quarter.rem_euclid(4.0) {
-        1.0 => (cos, -sin),
-        2.0 => (-sin, -cos),
-        3.0 => (-cos, sin),
+    let turned = if degrees.abs() < 36_000.0 {
+        degrees
+    } else {
+        degrees.rem_euclid(360.0)
+    };
+    // The nearest multiple of 90 by a cast: rounding is a call into the mathematics library.
+    #[expect(clippy::cast_possible_truncation, reason = "below 36 000 degrees")]
+    let quarter = (turned / 90.0 + 400.5) as i32 - 400;
+    let (sin, cos) = (turned - 90.0 * f64::from(quarter)).to_radians().sin_cos();
+    match quarter.rem_euclid(4) {
+        1 => (cos, -sin),
+        2 => (-sin, -cos),
+        3 => (-cos, sin),
         _ => (sin, cos),
     }
 }
@@ -294,6 +301,22 @@ mod tests {
         assert_eq!((west.u, west.v), (5.0, 0.0));
         assert_eq!(north.from_direction().unwrap().degrees(), 360.0);
         assert_eq!(west.from_direction().unwrap().degrees(), 270.0);
+    }
+
+    #[test]
+    fn sines_are_exact_at_quarter_turns_and_right_elsewhere() {
+        assert_eq!(sin_cos_degrees(-90.0), (-1.0, 0.0));
+        assert_eq!(sin_cos_degrees(360.0), (0.0, 1.0));
+        assert_eq!(sin_cos_degrees(36_000_000.0), (0.0, 1.0));
+        for k in -8000..8000 {
+            let degrees = f64::from(k) * 0.1;
+            let (sin, cos) = sin_cos_degrees(degrees);
+            let (s, c) = degrees.to_radians().sin_cos();
+            assert!(
+                (sin - s).abs() < 1e-14 && (cos - c).abs() < 1e-14,
+                "{degrees}"
+            );
+        }
     }
 
     #[test]

@@ -104,8 +104,14 @@ fn lies_on_steps(values: &[f64], step: f64, slack: f64) -> bool {
     if values.len() < FEWEST {
         return false;
     }
-    let on_step = |value: &&f64| (**value - (**value / step).round() * step).abs() <= slack;
-    values.iter().filter(on_step).count() as f64 >= SHARE * values.len() as f64
+    // As soon as too many lie elsewhere, the rest need not be looked at.
+    let mut elsewhere = (1.0 - SHARE) * values.len() as f64;
+    values.iter().all(|&value| {
+        if (value - (value / step).round() * step).abs() > slack {
+            elsewhere -= 1.0;
+        }
+        elsewhere >= 0.0
+    })
 }
 
 #[cfg(test)]
