@@ -6,7 +6,7 @@ mod run;
 use std::path::{Path, PathBuf};
 
 use crate::error::{Error, Problem};
-use crate::integral::{SELF_TEST_ALLOWED, SelfTest, planetary_vorticity, self_test};
+use crate::integral::{SelfTest, planetary_vorticity, self_test};
 use crate::polygon::{BuiltPolygons, build_polygons};
 use crate::settings::{Overrides, Settings, read_settings};
 use crate::station::{Network, Period, Position, doubts, read_catalogue};
@@ -106,11 +106,11 @@ impl Setup {
         }
         let positions: Vec<Position> = network.stations().iter().map(|s| s.position).collect();
         let self_test = self_test(&built.polygons, &built.edges, &positions);
-        if self_test.largest_difference > SELF_TEST_ALLOWED {
+        if !self_test.passed {
             return Err(Error::SelfTest {
                 polygon: self_test.polygon,
                 difference: self_test.largest_difference,
-                allowed: SELF_TEST_ALLOWED,
+                allowed: self_test.allowed,
             });
         }
         let planetary = built

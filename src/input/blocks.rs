@@ -27,6 +27,8 @@ pub(crate) struct Blocks<R> {
     spare: Vec<Vec<u8>>,
     line: u64,
     ended: bool,
+    /// What ended the input before its end; it is told after the bytes before it.
+    failure: Option<io::Error>,
 }
 
 impl<R: Read> Blocks<R> {
@@ -37,10 +39,11 @@ impl<R: Read> Blocks<R> {
             spare: Vec::new(),
             line: 1,
             ended: false,
+            failure: None,
         }
     }
 
-    /// The next block; `None` at the end of the input.
+    /// The next block; `None` at the end of the input. An error comes after the lines that were read before it.
     pub(crate) fn next_block(&mut self) -> io::Result<Option<Block>> {
         let mut bytes = self.spare.pop().unwrap_or_default();
         bytes.clear();
@@ -51,10 +54,23 @@ impl<R: Read> Blocks<R> {
             if !self.ended {
                 // A line longer than a block makes it grow, up to the longest line there may be.
                 let want = BLOCK.saturating_sub(bytes.len()).max(BLOCK / 4) as u64;
-                let got = self.input.by_ref().take(want).read_to_end(&mut bytes)?;
-                self.ended = (got as u64) < want;
+                match self.input.by_ref().take(want).read_to_end(&mut bytes) {
+                    Ok(got) => self.ended = (got as u64) < want,
+                    Err(error) => {
+                        // What was read before it stands in `bytes`; a line that was cut is no row.
+                        let whole = memchr::memrchr(b'\n', &bytes).map_or(0, |end| end + 1);
+                        bytes.truncate(whole);
+                        self.failure = Some(error);
+                        self.ended = true;
+                    }
+                }
             }
             if self.ended {
+                if bytes.is_empty()
+                    && let Some(error) = self.failure.take()
+                {
+                    return Err(error);
+                }
                 return Ok((!bytes.is_empty()).then(|| self.block(bytes, None)));
             }
             if let Some(end) = memchr::memrchr(b'\n', &bytes) {

@@ -58,10 +58,9 @@ impl<'a> MissingMarks<'a> {
         if self.0.iter().any(|mark| mark.eq_ignore_ascii_case(text)) {
             return true;
         }
-        // -9999 is also written -9999.0.
-        let whole = text
-            .strip_suffix(b".0")
-            .or_else(|| text.strip_suffix(b".00"));
+        // -9999 is also written -9999.0, or -9999,0.
+        let endings: [&[u8]; 4] = [b".0", b".00", b",0", b",00"];
+        let whole = endings.into_iter().find_map(|end| text.strip_suffix(end));
         whole.is_some_and(|whole| {
             self.0
                 .iter()

@@ -11,9 +11,7 @@ use crate::check::Flag;
 use crate::polygon::{CoefficientRow, StationPolygon};
 use crate::time::Time;
 
-pub use earth::{
-    OMEGA, SELF_TEST_ALLOWED, SelfTest, earth_rotation, planetary_vorticity, self_test,
-};
+pub use earth::{OMEGA, SelfTest, earth_rotation, planetary_vorticity, self_test};
 pub use extremes::{Extremes, Peak};
 pub use statistics::{RunStatistics, Statistics};
 

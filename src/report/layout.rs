@@ -80,7 +80,15 @@ impl Layout {
         let longitude = finder.optional(columns.longitude.as_deref());
         let level = finder.optional(columns.level.as_deref());
         let wide = if is_wide {
-            wide_stations(&header, first, second, names)
+            let others = [
+                &columns.gust,
+                &columns.latitude,
+                &columns.longitude,
+                &columns.level,
+            ];
+            let others = others.into_iter().flatten().chain(&columns.time);
+            let others: Vec<&str> = others.map(String::as_str).collect();
+            wide_stations(&header, first, second, &others, names)
         } else {
             Vec::new()
         };
@@ -141,10 +149,15 @@ fn wide_stations(
     header: &Header,
     first: &str,
     second: Option<&str>,
+    others: &[&str],
     names: &Names,
 ) -> Vec<WideStation> {
     let mut stations: Vec<WideStation> = Vec::new();
     for (column, name) in header.names.iter().enumerate() {
+        // A pattern may fit every column: those that hold something else are no stations.
+        if others.contains(&name.as_str()) {
+            continue;
+        }
         let (station, is_second) = match (
             station_in(first, name),
             second.and_then(|s| station_in(s, name)),
@@ -156,10 +169,6 @@ fn wide_stations(
             (None, None) => continue,
         };
         let found = names.find(station.as_bytes());
-        // With a pattern that fits everything, what is no station (the time column) is no station column.
-        if first == STATION_MARK && !matches!(found, Found::Station(_)) {
-            continue;
-        }
         let place = stations
             .iter()
             .position(|s| s.name == station)

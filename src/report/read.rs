@@ -10,7 +10,7 @@ use super::names::{Found, Names};
 use super::rows::Rows;
 use super::{ReportFormat, coded_file, columnar, text};
 use crate::error::{Error, Place, Problem, nearest_name};
-use crate::input::{open, read_all};
+use crate::input::{open, read_all, shown};
 use crate::settings::ReportSource;
 use crate::station::Network;
 use crate::tally::{Reason, Tally};
@@ -184,7 +184,7 @@ fn gather(parts: Vec<(String, Result<PartOutcome, Error>)>, network: &Network) -
         });
     }
     for (name, rows) in unknown {
-        let name = String::from_utf8_lossy(&name).into_owned();
+        let name = shown(&name);
         let known = network.stations().iter().flat_map(|s| {
             [s.id.as_str()]
                 .into_iter()

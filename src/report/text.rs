@@ -56,8 +56,9 @@ pub(super) fn read_table(
         }
         let layout = match &layout {
             Some(layout) => layout,
-            None => match (batch.first_mut(), failure.take()) {
-                (Some(first), _) => {
+            None => match (batch.first_mut(), failure) {
+                (Some(first), error) => {
+                    failure = error;
                     let line = read_header(first, format.text.skip_lines);
                     layout.insert(Layout::new(&line, &values)?)
                 }
@@ -154,7 +155,10 @@ impl<'a> BlockReader<'a> {
     fn quoted_lines(&mut self, text: &[u8], first_line: u64) {
         let mut splitter = Splitter::new(self.layout.delimiter);
         for (number, line) in (first_line..).zip(text.split(|&byte| byte == b'\n')) {
-            let line = line.trim_ascii_end();
+            let mut line = line;
+            while let [before @ .., b'\r'] = line {
+                line = before;
+            }
             match splitter.split(line) {
                 Some(row) => self.row(&row, number),
                 None => {

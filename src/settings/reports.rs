@@ -4,7 +4,7 @@ use std::path::{Path, PathBuf};
 use std::time::Duration;
 
 use super::ReportSource;
-use super::path::expand_path;
+use super::path::{expand_path, expand_pattern};
 use super::section::{Found, Section};
 use crate::error::Place;
 use crate::input::{Label, RepeatedHour, TextFormat, TimeForm, TimeFormat, Zone};
@@ -42,8 +42,10 @@ fn expand(section: &Section, base: &Path, patterns: &Found<Vec<String>>) -> Vec<
             files.push(PathBuf::from("-"));
             continue;
         }
-        let full = match expand_path(base, pattern) {
-            Ok(full) => full,
+        let named =
+            expand_path(base, pattern).and_then(|full| Ok((full, expand_pattern(base, pattern)?)));
+        let (full, full_pattern) = match named {
+            Ok(named) => named,
             Err(message) => {
                 section.problem(patterns.place.clone(), message);
                 continue;
@@ -53,7 +55,7 @@ fn expand(section: &Section, base: &Path, patterns: &Found<Vec<String>>) -> Vec<
             files.push(full);
             continue;
         }
-        match glob::glob(&full.to_string_lossy()) {
+        match glob::glob(&full_pattern) {
             Ok(paths) => {
                 let before = files.len();
                 // Sorted by the glob itself; what cannot be looked at is reported when it is read.
