@@ -56,6 +56,20 @@ fn line_integrals_of_300_polygons() {
         let (_, polygon) = ring_of(&points);
         let [area, vorticity, divergence] = [3, 6, 7].map(|k| row[k].parse::<f64>().unwrap());
         let (z, d) = polygon.row.apply(winds(&wind));
+        // Circulation and flux do not know the area: to 1e-9 of wind times perimeter.
+        let [circulation, flux] = [4, 5].map(|k| row[k].parse::<f64>().unwrap());
+        let (c, f) = polygon.circulation_and_flux(winds(&wind));
+        let largest = 20.0 * polygon.shape.perimeter;
+        assert!(
+            close(c, circulation, 1e-9 * largest),
+            "polygon {}: {c} {circulation}",
+            &row[0]
+        );
+        assert!(
+            close(f, flux, 1e-9 * largest),
+            "polygon {}: {f} {flux}",
+            &row[0]
+        );
         let scale = polygon.shape.noise_factor;
         let tolerance = 1e-9 * scale + 0.1 / area * vorticity.abs().max(divergence.abs());
         assert!(

@@ -62,6 +62,13 @@ pub struct StationPolygon {
 }
 
 impl StationPolygon {
+    /// Circulation along the outline and flux out of it, m²/s, of winds given by station: vorticity and divergence times
+    /// the area.
+    pub fn circulation_and_flux(&self, wind: impl Fn(usize) -> crate::units::Wind) -> (f64, f64) {
+        let (vorticity, divergence) = self.row.apply(wind);
+        (vorticity * self.shape.area, divergence * self.shape.area)
+    }
+
     /// Number of stations whose winds matter.
     #[must_use]
     pub fn size(&self) -> usize {

@@ -52,6 +52,21 @@ fn magnetic_directions_with_a_stated_declination() {
     assert_eq!(directions, [250.0, 286.0, 10.0]);
 }
 
+/// One station of three counts from magnetic north; a word that is no north is a defect.
+#[test]
+fn north_of_a_single_station() {
+    let with = |norths: [&str; 3]| {
+        let list = list_with("d,north", norths);
+        let settings = "columns = { declination = \"d\", north = \"north\" }\n[[reports]]\nfiles = [\"r.csv\"]";
+        Site::new(&list, settings, &[("r.csv", TABLE.as_bytes())])
+    };
+    let found = with(["-20,magnetic", "5.5,true", "120,"]).read();
+    let directions: Vec<f64> = (0..3)
+        .map(|i| found.reading.table.direction(i).unwrap().degrees())
+        .collect();
+    assert_eq!(directions, [250.0, 280.5, 250.0]);
+}
+
 /// World Magnetic Model 2025 by the Python package pygeomag 1.1.0: -9.4163 degrees at A, -9.3027 at B, in 2025.5.
 #[test]
 fn magnetic_directions_by_the_model() {
