@@ -2,6 +2,8 @@
 #![allow(dead_code, reason = "each test uses a part of it")]
 #![allow(clippy::unwrap_used, clippy::panic, reason = "tests may panic")]
 
+pub mod hard;
+
 use geographiclib_rs::{DirectGeodesic, Geodesic};
 use gyremesh::error::{Error, Place};
 use gyremesh::polygon::{BuiltPolygons, StationPolygon, build_polygons};
