@@ -5,6 +5,17 @@ const POWERS: [f64; 16] = [
     1e0, 1e1, 1e2, 1e3, 1e4, 1e5, 1e6, 1e7, 1e8, 1e9, 1e10, 1e11, 1e12, 1e13, 1e14, 1e15,
 ];
 
+/// Whole tenths below 204.8, correctly rounded: most speeds are such, and a division costs more than all else of a row.
+const TENTHS: [f64; 2048] = {
+    let mut table = [0.0; 2048];
+    let mut k = 0;
+    while k < table.len() {
+        table[k] = k as f64 / 10.0;
+        k += 1;
+    }
+    table
+};
+
 /// Reads a decimal number; `None` if it is none, or not finite.
 ///
 /// Up to 15 digits without exponent are one integer divided by one exact power of ten: correctly rounded (Clinger
@@ -55,12 +66,12 @@ pub(crate) fn parse_short(text: &[u8]) -> Option<f64> {
             return None;
         }
     }
-    // A division costs more than all the rest: whole numbers go without.
-    if decimals == 0 {
+    match decimals {
         // A point alone is no number.
-        return (after_point < text.len()).then(|| f64::from(mantissa));
+        0 => (after_point < text.len()).then(|| f64::from(mantissa)),
+        1 if (mantissa as usize) < TENTHS.len() => TENTHS.get(mantissa as usize).copied(),
+        _ => Some(f64::from(mantissa) / POWERS.get(decimals)?),
     }
-    Some(f64::from(mantissa) / POWERS.get(decimals)?)
 }
 
 fn parse_any(text: &[u8]) -> Option<f64> {

@@ -116,7 +116,13 @@ impl<'a> Row<'a> {
             Some(before) => self.ends.get(before)? + self.between,
             None => self.start,
         };
-        Some(self.text.get(start as usize..end as usize)?.trim_ascii())
+        let field = self.text.get(start as usize..end as usize)?;
+        // Most fields have no white space around them.
+        match field {
+            [] => Some(field),
+            [first, .., last] | [first @ last] if *first > b' ' && *last > b' ' => Some(field),
+            _ => Some(field.trim_ascii()),
+        }
     }
 }
 
