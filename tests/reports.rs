@@ -210,6 +210,12 @@ fn a_last_field_left_empty_is_missing_with_quotes_and_without() {
 }
 
 #[test]
+fn lines_of_delimiters_alone_are_blank() {
+    let text = TABLE.replace("\n", "\n,,,\n \n");
+    assert_eq!(lines("", &text), WINDS);
+}
+
+#[test]
 fn lines_before_the_header_are_skipped_and_counted() {
     let text = format!("\u{feff}Station data, \"all\n;;;\n{TABLE}").replace("A,270", "A,470");
     let settings = "[[reports]]\nfiles = [\"r.csv\"]\nskip_lines = 2";

@@ -46,15 +46,12 @@ pub(crate) fn parse_number(text: &[u8]) -> Option<f64> {
     Some(if negative { -value } else { value })
 }
 
-/// Reads a short decimal number without a sign, the usual case; `None` sends anything else to [`parse_number`].
+/// Reads the short decimal number without a sign that a text begins with, the usual case, and its length; `None` sends
+/// anything else to [`parse_number`].
 #[inline]
-pub(crate) fn parse_short(text: &[u8]) -> Option<f64> {
-    if text.is_empty() || text.len() > 8 {
-        return None;
-    }
+pub(crate) fn parse_short(text: &[u8]) -> Option<(f64, usize)> {
     let mut mantissa = 0_u32;
-    let mut decimals = 0;
-    let mut after_point = 0;
+    let (mut length, mut decimals, mut after_point) = (0, 0, 0);
     for &byte in text {
         let digit = byte.wrapping_sub(b'0');
         if digit < 10 {
@@ -63,15 +60,22 @@ pub(crate) fn parse_short(text: &[u8]) -> Option<f64> {
         } else if byte == b'.' && after_point == 0 {
             after_point = 1;
         } else {
+            break;
+        }
+        length += 1;
+        // More digits than these are for the general way, and would not fit.
+        if length > 8 {
             return None;
         }
     }
-    match decimals {
+    let number = match decimals {
         // A point alone is no number.
-        0 => (after_point < text.len()).then(|| f64::from(mantissa)),
-        1 if (mantissa as usize) < TENTHS.len() => TENTHS.get(mantissa as usize).copied(),
-        _ => Some(f64::from(mantissa) / POWERS.get(decimals)?),
-    }
+        0 if length > after_point => f64::from(mantissa),
+        0 => return None,
+        1 if (mantissa as usize) < TENTHS.len() => *TENTHS.get(mantissa as usize)?,
+        _ => f64::from(mantissa) / POWERS.get(decimals)?,
+    };
+    Some((number, length))
 }
 
 fn parse_any(text: &[u8]) -> Option<f64> {
@@ -106,7 +110,9 @@ mod tests {
         fn numbers_equal_the_standard_library(text in "-?[0-9]{0,12}(\\.[0-9]{0,6})?(e-?[0-9]{1,2})?") {
             let expected = text.parse::<f64>().ok().filter(|x| x.is_finite());
             prop_assert_eq!(parse_number(text.as_bytes()), expected);
-            if let Some(short) = parse_short(text.as_bytes()) {
+            if let Some((short, length)) = parse_short(text.as_bytes())
+                && length == text.len()
+            {
                 prop_assert_eq!(Some(short), expected);
             }
         }

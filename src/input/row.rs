@@ -98,9 +98,9 @@ impl<'a> Row<'a> {
         self.ends.len()
     }
 
-    /// True if nothing but white space is on the line.
+    /// True if nothing but white space and delimiters is on the line.
     pub(crate) fn is_blank(&self) -> bool {
-        self.ends.len() < 2 && self.field(0).is_empty()
+        (0..self.len()).all(|column| self.field(column).is_empty())
     }
 
     /// A field without the white space around it; empty beyond the end of the line.

@@ -128,7 +128,11 @@ impl<'a> TimeReader<'a> {
         }
     }
 
-    #[inline]
+    /// The last text of the usual form, and its time.
+    pub(crate) fn usual(&self) -> Option<(&[u8; 20], Time)> {
+        self.last_usual.as_ref().map(|(text, time)| (text, *time))
+    }
+
     pub(crate) fn parse(&mut self, text: &[u8]) -> Result<Time, String> {
         // A comparison of fixed length is a few instructions.
         if let Some((last, time)) = &self.last_usual

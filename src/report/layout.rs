@@ -16,6 +16,59 @@ pub(super) struct WideStation {
     pub(super) second: Option<usize>,
 }
 
+/// What a column of the plainest table holds.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub(super) enum Role {
+    Station,
+    Time,
+    Direction,
+    Speed,
+    /// Nothing that is needed.
+    Other,
+}
+
+/// True for a table so plain that its usual rows can be read in one go.
+fn is_plain(values: &ValueReader) -> bool {
+    let (format, columns, names) = (values.format, values.columns, values.names);
+    matches!(columns.wind, WindColumns::DirectionSpeed { .. })
+        && !columns.wind.is_wide()
+        && columns.time.len() == 1
+        && format.north == North::True
+        && names
+            .network
+            .stations()
+            .iter()
+            .all(|s| s.site.north.is_none())
+        && !format.text.decimal_comma
+        && !names.any_moved
+        && !values.positive_marks
+        && [
+            &columns.gust,
+            &columns.latitude,
+            &columns.longitude,
+            &columns.level,
+        ]
+        .iter()
+        .all(|c| c.is_none())
+}
+
+/// The roles of the columns up to the last one needed.
+fn roles(station: usize, time: usize, direction: usize, speed: usize) -> Vec<Role> {
+    let named = [
+        (station, Role::Station),
+        (time, Role::Time),
+        (direction, Role::Direction),
+        (speed, Role::Speed),
+    ];
+    let last = station.max(time).max(direction).max(speed);
+    (0..=last)
+        .map(|column| {
+            let role = named.iter().find(|(place, _)| *place == column);
+            role.map_or(Role::Other, |&(_, role)| role)
+        })
+        .collect()
+}
+
 /// Where the values of a table stand.
 pub(super) struct Layout {
     pub(super) delimiter: u8,
@@ -28,8 +81,9 @@ pub(super) struct Layout {
     pub(super) longitude: Option<usize>,
     pub(super) level: Option<usize>,
     pub(super) wide: Vec<WideStation>,
-    /// Direction and speed, one time column, true north, nothing else: most rows can go the short way.
-    pub(super) is_plain: bool,
+    /// The columns up to the last one needed, of a table so plain that most rows can go the short way: direction and
+    /// speed, one time column, true north, nothing else. Empty for any other.
+    pub(super) roles: Vec<Role>,
 }
 
 impl Layout {
@@ -65,7 +119,7 @@ impl Layout {
         } else {
             finder.optional(columns.station.as_deref())
         };
-        let time = columns
+        let time: Vec<usize> = columns
             .time
             .iter()
             .filter_map(|name| finder.find(name))
@@ -98,6 +152,12 @@ impl Layout {
         if !finder.problems.is_empty() {
             return Err(Error::Invalid(finder.problems));
         }
+        let roles = match (&time[..], station, first_column, second_column) {
+            (&[time], Some(station), Some(direction), Some(speed)) if is_plain(values) => {
+                roles(station, time, direction, speed)
+            }
+            _ => Vec::new(),
+        };
         Ok(Self {
             delimiter,
             station,
@@ -109,26 +169,7 @@ impl Layout {
             longitude,
             level,
             wide,
-            is_plain: matches!(columns.wind, WindColumns::DirectionSpeed { .. })
-                && !is_wide
-                && columns.time.len() == 1
-                && format.north == North::True
-                && names
-                    .network
-                    .stations()
-                    .iter()
-                    .all(|s| s.site.north.is_none())
-                && !format.text.decimal_comma
-                && !names.any_moved
-                && !values.positive_marks
-                && [
-                    &columns.gust,
-                    &columns.latitude,
-                    &columns.longitude,
-                    &columns.level,
-                ]
-                .iter()
-                .all(|c| c.is_none()),
+            roles,
         })
     }
 }

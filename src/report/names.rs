@@ -103,15 +103,17 @@ impl<'a> Finder<'a> {
         }
     }
 
-    /// The station that is expected next, if the text is its name as spelled before.
+    /// The station that is expected next, and its name as spelled before.
     #[inline]
-    pub(super) fn expected(&mut self, text: &[u8]) -> Option<u32> {
+    pub(super) fn expected(&self) -> Option<(u32, &[u8])> {
         let guess = *self.follows.get(self.last)?;
-        if self.spelling.get(guess as usize)? != text {
-            return None;
-        }
-        self.last = guess as usize;
-        Some(guess)
+        Some((guess, self.spelling.get(guess as usize)?))
+    }
+
+    /// The station that was expected did come.
+    #[inline]
+    pub(super) fn was_expected(&mut self, station: u32) {
+        self.last = station as usize;
     }
 
     pub(super) fn find(&mut self, text: &[u8]) -> Found {
