@@ -211,7 +211,7 @@ fn a_last_field_left_empty_is_missing_with_quotes_and_without() {
 
 #[test]
 fn lines_of_delimiters_alone_are_blank() {
-    let text = TABLE.replace("\n", "\n,,,\n \n");
+    let text = TABLE.replace('\n', "\n,,,\n \n");
     assert_eq!(lines("", &text), WINDS);
 }
 
