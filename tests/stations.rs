@@ -609,6 +609,12 @@ fn a_run_across_a_move_is_refused_and_one_side_of_it_is_done() {
     let after = area(&["--from", "2031-03-01T00:00:00Z"]);
     // The triangle is half as high again: 0.3 instead of 0.2 degrees, on the ellipsoid to 1 %.
     assert!((after / before - 1.5).abs() < 0.015, "{before} {after}");
+    // The polygons alone take the same options.
+    let (status, err) = site.run("polygons", &["--from", "2031-03-01T00:00:00Z"]);
+    assert_eq!((status, err.as_str()), (0, ""));
+    let mut reader = csv::Reader::from_path(site.path("out/mesh.csv")).unwrap();
+    let row = reader.records().next().unwrap().unwrap();
+    assert_eq!(row[3].parse::<f64>().unwrap().to_bits(), after.to_bits());
 }
 
 #[test]

@@ -129,6 +129,12 @@ pub struct PolygonsArgs {
     /// Write mesh.geojson and mesh.csv into this folder
     #[arg(long, value_name = "DIR")]
     pub out: Option<PathBuf>,
+    /// Stations as they stand from this time on, RFC 3339
+    #[arg(long, value_name = "TIME", value_parser = Time::parse_rfc3339)]
+    pub from: Option<Time>,
+    /// Stations as they stand until this time, RFC 3339
+    #[arg(long, value_name = "TIME", value_parser = Time::parse_rfc3339)]
+    pub to: Option<Time>,
     /// Limits in place of those of the settings
     #[command(flatten)]
     pub limits: LimitArgs,
@@ -214,6 +220,8 @@ impl From<&CheckArgs> for Overrides {
 impl From<&PolygonsArgs> for Overrides {
     fn from(args: &PolygonsArgs) -> Self {
         Self {
+            from: args.from,
+            to: args.to,
             smallest_angle: args.limits.smallest_angle,
             longest_edge: args.limits.longest_edge,
             ..Self::default()
