@@ -160,6 +160,15 @@ fn a_nul_byte() {
     );
 }
 
+/// The station stands last: without it the row is short, not of a station without a name.
+#[test]
+fn a_row_cut_before_its_station() {
+    let text =
+        "time,direction,speed,station\n2031-06-14T00:00:00Z,270,5,A\n2031-06-14T00:10:00Z,270,5\n";
+    let run = Site::new(&[("r.csv", text.as_bytes())], "").check();
+    run.says(1, &["r.csv:3: the row has 3 columns (at least 4 expected)"]);
+}
+
 #[test]
 fn a_row_with_too_few_columns_and_a_quote_without_an_end() {
     one_bad_row(

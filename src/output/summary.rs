@@ -117,8 +117,30 @@ fn settings(settings: &Settings) -> Value {
     let reports: Vec<Value> = settings
         .reports
         .iter()
-        .map(|ReportSource { files, format }| json!({ "files": files, "form": format.form, "speed_unit": format.speed_unit.symbol() }))
+        .map(|ReportSource { files, format }| {
+            json!({
+                "files": files,
+                "form": format.form,
+                "speed_unit": format.speed_unit.symbol(),
+                "north": format.north,
+                "text": format.text,
+                "time": {
+                    "form": format!("{:?}", format.time.form),
+                    "zone": format!("{:?}", format.time.zone),
+                    "label": format!("{:?}", format.time.label),
+                    "averaging_s": format.time.averaging.as_secs_f64(),
+                },
+                "reference": format.reference.map(|t| t.to_string()),
+            })
+        })
         .collect();
+    let polygons = &settings.polygons;
+    let rings: Vec<Value> = polygons
+        .rings
+        .iter()
+        .map(|ring| json!({ "name": ring.name, "stations": ring.stations }))
+        .collect();
+    let regions: Vec<&str> = polygons.regions.iter().map(|r| r.name.as_str()).collect();
     json!({
         "station_file": settings.station_file,
         "stations": settings.catalogue,
@@ -133,6 +155,11 @@ fn settings(settings: &Settings) -> Value {
             "level": analysis.level,
         },
         "check": settings.range,
+        "polygons": {
+            "triangles": settings.polygons.triangles,
+            "rings": rings,
+            "regions": regions,
+        },
         "limits": settings.limits,
     })
 }

@@ -192,6 +192,9 @@ impl<'a> BlockReader<'a> {
     /// leaves the row, untouched, to the general way.
     fn quick_row(&mut self, rest: &[u8], line: u64) -> Option<usize> {
         let layout = self.layout;
+        if layout.roles.is_empty() {
+            return None;
+        }
         let (usual, time) = self.time.usual()?;
         let (station, name) = self.finder.expected()?;
         let (mut degrees, mut speed) = (None, None);
@@ -240,7 +243,12 @@ impl<'a> BlockReader<'a> {
         if matches!(self.values.columns.wind, WindColumns::Metar { .. }) {
             return self.metar_row(row, line);
         }
-        let last = layout.second.unwrap_or(0).max(layout.first);
+        let needed = [layout.station, layout.second, Some(layout.first)];
+        let needed = needed
+            .into_iter()
+            .flatten()
+            .chain(layout.time.iter().copied());
+        let last = needed.fold(0, usize::max);
         if row.len() <= last {
             let message = format!(
                 "the row has {} columns (at least {} expected)",
