@@ -3,8 +3,10 @@
 use std::fmt;
 use std::path::{Path, PathBuf};
 
+use serde::{Deserialize, Serialize};
+
 /// Where in an input something stands. Lines count from 1.
-#[derive(Debug, Clone, Default, PartialEq, Eq)]
+#[derive(Debug, Clone, Default, PartialEq, Eq, Serialize, Deserialize)]
 pub struct Place {
     /// The file as the user named it.
     pub file: String,
@@ -28,7 +30,7 @@ impl fmt::Display for Place {
 }
 
 /// One defect of an input: its place, and what is wrong with what is expected.
-#[derive(Debug, Clone, PartialEq, Eq)]
+#[derive(Debug, Clone, PartialEq, Eq, Serialize, Deserialize)]
 pub struct Problem {
     /// Where it stands.
     pub place: Place,
@@ -62,6 +64,8 @@ pub enum ErrorKind {
     Network,
     /// No usable report.
     Reports,
+    /// The reports are not in the order of time.
+    Order,
     /// A file could not be read.
     Read,
     /// A file could not be written.
@@ -83,6 +87,9 @@ pub enum Error {
     /// There is nothing to estimate from.
     #[error("{0}")]
     Reports(String),
+    /// Reports came after others of the same time had been worked on; they must be sorted first.
+    #[error("the reports are not in the order of time ({0})")]
+    NotInOrder(String),
     /// A file could not be read.
     #[error("cannot read {}: {source}", path.display())]
     Read {
@@ -122,6 +129,7 @@ impl Error {
             Self::Invalid(_) => ErrorKind::Settings,
             Self::Network(_) => ErrorKind::Network,
             Self::Reports(_) => ErrorKind::Reports,
+            Self::NotInOrder(_) => ErrorKind::Order,
             Self::Read { .. } => ErrorKind::Read,
             Self::Write { .. } => ErrorKind::Write,
             Self::SelfTest { .. } => ErrorKind::SelfTest,

@@ -2,6 +2,7 @@
 
 mod reading;
 mod run;
+mod windows;
 
 use std::path::{Path, PathBuf};
 
@@ -14,6 +15,7 @@ use crate::warning::Warning;
 
 pub use reading::Reading;
 pub use run::{Outcome, run};
+pub use windows::{Window, Windows};
 
 /// Settings and stations: all that reading the reports needs.
 #[derive(Debug)]
@@ -86,11 +88,6 @@ impl Setup {
                 // A misplaced station may be the reason.
                 let lines = warnings.iter().map(|warning| format!("\n  {warning}"));
                 return Err(Error::Network(message + &lines.collect::<String>()));
-            }
-            // A station that stands wrongly may be the reason.
-            Err(Error::Network(message)) if problems.is_empty() => {
-                let doubts = warnings.iter().map(|doubt| format!("\n  {doubt}"));
-                return Err(Error::Network(message + &doubts.collect::<String>()));
             }
             Err(error) if problems.is_empty() => return Err(error),
             Err(error) => {

@@ -2,6 +2,7 @@
 
 use std::fmt;
 use std::str::FromStr;
+use std::sync::LazyLock;
 use std::time::Duration;
 
 /// Unit of a wind speed in an input.
@@ -128,7 +129,7 @@ impl Wind {
     /// From speed and direction: u = −V sin d, v = −V cos d (CF `wind_from_direction`).
     #[must_use]
     pub fn blowing_from(speed: f64, from: FromDirection) -> Self {
-        let (sin, cos) = sin_cos_degrees(from.0);
+        let (sin, cos) = sin_cos_of_direction(from.0);
         Self {
             u: -speed * sin,
             v: -speed * cos,
@@ -177,6 +178,28 @@ pub fn sin_cos_degrees(degrees: f64) -> (f64, f64) {
     }
 }
 
+/// Directions are mostly whole tenths of a degree: each with its sine and cosine.
+static TENTHS: LazyLock<Vec<(f64, (f64, f64))>> = LazyLock::new(|| {
+    let degrees = (0..=3600).map(|k| f64::from(k) / 10.0);
+    degrees.map(|d| (d, sin_cos_degrees(d))).collect()
+});
+
+/// [`sin_cos_degrees`] of 0 to 360 degrees.
+#[inline]
+fn sin_cos_of_direction(degrees: f64) -> (f64, f64) {
+    #[expect(
+        clippy::cast_possible_truncation,
+        clippy::cast_sign_loss,
+        reason = "0 to 3600; a cast takes anything else to the ends, which are then not equal"
+    )]
+    let tenth = (degrees * 10.0 + 0.5) as usize;
+    match TENTHS.get(tenth) {
+        #[expect(clippy::float_cmp, reason = "the very same angle is looked for")]
+        Some(&(known, sin_cos)) if known == degrees => sin_cos,
+        _ => sin_cos_degrees(degrees),
+    }
+}
+
 /// Splits "5 min" into 5 and "min".
 fn number_and_unit(text: &str) -> Option<(f64, &str)> {
     let text = text.trim();
@@ -186,6 +209,37 @@ fn number_and_unit(text: &str) -> Option<(f64, &str)> {
     let (number, unit) = text.split_at(split);
     let number: f64 = number.parse().ok()?;
     number.is_finite().then(|| (number, unit.trim()))
+}
+
+/// Reads an amount of memory with its unit, such as `500 MiB`, into bytes.
+///
+/// # Errors
+/// Says what was found and what is expected.
+pub fn parse_memory(text: &str) -> Result<usize, String> {
+    let expected = || {
+        format!(
+            "`{text}` is not an amount of memory (number and unit expected, such as `500 MiB` or `2 GB`)"
+        )
+    };
+    let (number, unit) = number_and_unit(text).ok_or_else(expected)?;
+    let factor = match unit {
+        "kB" => 1e3,
+        "MB" => 1e6,
+        "GB" => 1e9,
+        "KiB" => 1024.0,
+        "MiB" => 1_048_576.0,
+        "GiB" => 1_073_741_824.0,
+        _ => return Err(expected()),
+    };
+    if number <= 0.0 {
+        return Err(expected());
+    }
+    #[expect(
+        clippy::cast_possible_truncation,
+        clippy::cast_sign_loss,
+        reason = "above 0; a cast takes what is too large to the largest"
+    )]
+    Ok((number * factor) as usize)
 }
 
 /// Reads a speed with its unit, such as `1 kt`, into m/s.
@@ -320,6 +374,13 @@ mod tests {
     }
 
     #[test]
+    fn tenths_of_a_degree_are_the_same_from_the_table() {
+        for degrees in [0.1, 45.0, 359.9, 273.4, 123.456, 360.0, 1e-9, 0.05] {
+            assert_eq!(sin_cos_of_direction(degrees), sin_cos_degrees(degrees));
+        }
+    }
+
+    #[test]
     fn directions_outside_the_circle_are_refused() {
         assert!(FromDirection::new(400.0).is_none());
         assert!(FromDirection::new(-1.0).is_none());
@@ -335,6 +396,9 @@ mod tests {
         assert!(parse_duration("-5 min").is_err());
         assert_eq!(parse_length("500 km").unwrap(), 500_000.0);
         assert_eq!(parse_area("10 km2").unwrap(), 1e7);
+        assert_eq!(parse_memory("1.5 KiB").unwrap(), 1536);
+        assert_eq!(parse_memory("2GB").unwrap(), 2_000_000_000);
+        assert!(parse_memory("0 MiB").is_err() && parse_memory("5").is_err());
         assert!(parse_speed("3 furlongs").is_err());
         assert!(parse_speed("-3 kt").is_err());
     }

@@ -8,7 +8,9 @@ use std::process::{Command, Output, Stdio};
 
 use flate2::Compression;
 use flate2::write::GzEncoder;
+use gyremesh::check::check_range;
 use gyremesh::pipeline::{Reading, Sources};
+use gyremesh::report::{ReportTable, read_reports};
 use gyremesh::settings::Overrides;
 use gyremesh::station::Network;
 use gyremesh::tally::Reason;
@@ -43,6 +45,8 @@ struct Site(TempDir);
 struct Found {
     network: Network,
     reading: Reading,
+    /// The reports, as the books are about them.
+    table: ReportTable,
 }
 
 impl Site {
@@ -65,11 +69,16 @@ impl Site {
     fn read(&self) -> Found {
         let sources = Sources::read(&self.path("network.toml"), &Overrides::default())
             .unwrap_or_else(|error| panic!("{error}"));
-        let reading = Reading::of(&sources.settings, &sources.network);
+        let reading = Reading::of(&sources.settings, &sources.network).unwrap();
+        let rows = read_reports(&sources.settings.reports, &sources.network).rows;
+        let (mut table, repeats) = ReportTable::new(&rows, sources.network.len());
+        assert_eq!(repeats, reading.repeats);
+        check_range(&mut table, &sources.settings.range);
         assert!(reading.rows.balances() && reading.repeats.balances());
         Found {
             network: sources.network,
             reading,
+            table,
         }
     }
 
@@ -102,7 +111,7 @@ impl Found {
         let shown = |x: Option<f64>| {
             x.map_or_else(|| "-".into(), |x| ((x * 1e6).round() / 1e6).to_string())
         };
-        let table = &self.reading.table;
+        let table = &self.table;
         let mut lines = Vec::new();
         for (s, station) in self.network.stations().iter().enumerate() {
             for i in table.of_station(s) {

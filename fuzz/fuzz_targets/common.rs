@@ -1,7 +1,7 @@
 //! What the targets that read reports share.
 #![allow(dead_code, reason = "each target uses a part of it")]
 
-use gyremesh::check::{check_range, summarise};
+use gyremesh::check::{StationSums, check_range};
 use gyremesh::report::{ReadOutcome, ReportTable, Rows};
 use gyremesh::settings::RangeLimits;
 use gyremesh::station::{Network, Position, Station};
@@ -51,7 +51,9 @@ pub fn balance(outcome: &ReadOutcome, network: &Network) -> ReportTable {
     check_range(&mut table, &RangeLimits::default());
     let mut reports = 0;
     for station in 0..network.len() {
-        reports += summarise(&table, station).reports;
+        let mut sums = StationSums::default();
+        sums.add(&table, station);
+        reports += sums.reading().reports;
         let of_station = table.of_station(station);
         assert!(table.times()[of_station.clone()].is_sorted());
         for i in of_station {

@@ -3,24 +3,41 @@
 //! A [`WindBlock`] holds the winds of a run of analysis times, station-major: all times of a station lie side by side,
 //! so that later stages work on whole columns.
 
+mod books;
 mod height;
 mod instrument;
 mod time;
 pub mod vector;
 
+use std::ops::Range;
+use std::sync::atomic::AtomicBool;
+use std::sync::atomic::Ordering::Relaxed;
+
+use rayon::prelude::*;
+
 use crate::check::Flag;
 use crate::report::{Content, ReportTable};
 use crate::settings::{AlignMethod, Analysis, SensorErrors};
-use crate::tally::{Reason, Tally};
+use crate::tally::Reason;
 use crate::time::{Time, micros_of};
 use crate::units::Wind;
 
+pub use books::{AlignBooks, Period};
 pub use height::{HeightReduction, Profile, height_factor};
 pub use instrument::{Covariance, instrument_covariance};
 pub use time::TimeGrid;
 
-/// Analysis times in one block. A triangle's columns then take about 30 kB: they stay in the first-level cache.
+/// Most analysis times in one block. A triangle's columns then take about 30 kB: they stay in the first-level cache.
 pub const BLOCK_TIMES: usize = 256;
+/// Values of all stations that a block should not exceed, so that a block of a large network is no longer in memory.
+const BLOCK_VALUES: usize = 1 << 17;
+
+/// Analysis times in one block of a network, a power of two.
+#[must_use]
+pub fn block_times(stations: usize) -> usize {
+    let fit = (BLOCK_VALUES / stations.max(1)).max(16);
+    BLOCK_TIMES.min(1 << fit.ilog2())
+}
 
 /// Winds of all stations at a run of analysis times.
 ///
@@ -76,6 +93,16 @@ impl WindBlock {
         self.age[cell] = value.age;
     }
 
+    /// For each station how many values it has.
+    #[must_use]
+    pub fn values(&self) -> Vec<u64> {
+        let there = |flags: &[Flag]| flags.iter().filter(|&&f| f != Flag::Missing).count() as u64;
+        self.flag
+            .chunks(self.times.len().max(1))
+            .map(there)
+            .collect()
+    }
+
     /// The cells of one station.
     #[must_use]
     pub fn of_station(&self, station: usize) -> std::ops::Range<usize> {
@@ -106,57 +133,55 @@ pub struct StationSensors {
     pub height_factors: Vec<Option<f64>>,
 }
 
-/// Aligns reports to analysis times, block by block in the order of time.
+/// Aligns the reports of a window to analysis times, block by block.
 pub struct Aligner<'a> {
     table: &'a ReportTable,
     method: AlignMethod,
     level: Option<f64>,
-    sensors: StationSensors,
+    sensors: &'a StationSensors,
     grid: TimeGrid,
-    next: usize,
-    /// Reports that carry a wind and did not fail, by station.
-    usable: Vec<u32>,
-    starts: Vec<usize>,
-    /// For each station the first report of `usable` that still matters.
-    cursor: Vec<usize>,
-    used: Vec<bool>,
-    values: Vec<u64>,
+    /// Reports that carry a wind and did not fail, for each station.
+    usable: Vec<Vec<u32>>,
+    /// For each report whether a value came of it.
+    used: Vec<AtomicBool>,
 }
 
 impl<'a> Aligner<'a> {
-    /// Prepares the analysis times, those of the period at which any station has a value.
+    /// Prepares the analysis times among `multiples` of the interval, those of the period at which any station has a
+    /// value.
     #[must_use]
-    pub fn new(table: &'a ReportTable, analysis: &Analysis, sensors: StationSensors) -> Self {
-        let mut usable = Vec::new();
-        let mut starts = vec![0];
-        for station in 0..table.stations() {
-            let reports = table.of_station(station);
+    pub fn new(
+        table: &'a ReportTable,
+        analysis: &Analysis,
+        sensors: &'a StationSensors,
+        multiples: Range<i64>,
+    ) -> Self {
+        // The usable reports of a station, and the analysis times that they serve.
+        let of_station = |station: usize| -> (Vec<u32>, Vec<(i64, i64)>) {
             let has_height = sensors
                 .height_factors
                 .get(station)
                 .is_none_or(Option::is_some);
-            let usable_here =
-                reports.filter(|&i| has_height && unusable(table, i, analysis.level).is_none());
-            usable.extend(usable_here.map(|i| u32::try_from(i).unwrap_or(u32::MAX)));
-            starts.push(usable.len());
-        }
-        let times = starts.windows(2).map(|w| {
-            usable[w[0]..w[1]]
-                .iter()
-                .map(|&i| table.times()[i as usize])
-        });
-        let grid = TimeGrid::covering(times, analysis);
+            let usable: Vec<u32> = table
+                .of_station(station)
+                .filter(|&i| has_height && unusable(table, i, analysis.level).is_none())
+                .map(|i| u32::try_from(i).unwrap_or(u32::MAX))
+                .collect();
+            let times = usable.iter().map(|&i| table.times()[i as usize]);
+            let runs = time::served_runs(times, analysis, &multiples);
+            (usable, runs)
+        };
+        let (usable, runs): (Vec<_>, Vec<_>) = (0..table.stations())
+            .into_par_iter()
+            .map(of_station)
+            .unzip();
         Self {
             method: analysis.method,
             level: analysis.level,
             sensors,
-            grid,
-            next: 0,
-            cursor: starts[..table.stations()].to_vec(),
-            used: vec![false; table.len()],
-            values: vec![0; table.stations()],
+            grid: TimeGrid::new(analysis, runs.concat()),
+            used: (0..table.len()).map(|_| AtomicBool::new(false)).collect(),
             usable,
-            starts,
             table,
         }
     }
@@ -167,13 +192,9 @@ impl<'a> Aligner<'a> {
         &self.grid
     }
 
-    /// The next block; `None` after the last.
-    pub fn next_block(&mut self) -> Option<WindBlock> {
-        let times: Vec<Time> = self.grid.times_from(self.next).take(BLOCK_TIMES).collect();
-        if times.is_empty() {
-            return None;
-        }
-        self.next += times.len();
+    /// The winds at the analysis times of one block.
+    #[must_use]
+    pub fn align(&self, times: Vec<Time>) -> WindBlock {
         let mut block = WindBlock::empty(times, self.table.stations());
         for station in 0..self.table.stations() {
             match self.method {
@@ -187,89 +208,115 @@ impl<'a> Aligner<'a> {
                     window,
                     least_reports,
                 } => {
-                    self.vector_mean(
-                        station,
-                        micros_of(window),
-                        least_reports as usize,
-                        &mut block,
-                    );
+                    let least = least_reports as usize;
+                    self.vector_mean(station, micros_of(window), least, &mut block);
                 }
             }
         }
-        Some(block)
+        block
     }
 
-    /// Time and index of the usable report `k` of all.
-    fn report(&self, k: usize) -> (i64, usize) {
-        let i = self.usable[k] as usize;
+    /// Marks reports of which a value came before.
+    pub fn mark_used(&self, reports: impl Iterator<Item = usize>) {
+        for i in reports {
+            self.mark(i);
+        }
+    }
+
+    fn mark(&self, i: usize) {
+        self.used[i].store(true, Relaxed);
+    }
+
+    /// True if a value came of report `i`.
+    #[must_use]
+    pub fn is_used(&self, i: usize) -> bool {
+        self.used[i].load(Relaxed)
+    }
+
+    /// Time and index of the usable report `k` of a station.
+    fn report(&self, station: usize, k: usize) -> (i64, usize) {
+        let i = self.usable[station][k] as usize;
         (self.table.times()[i].micros(), i)
     }
 
-    fn nearest(&mut self, station: usize, tolerance: i64, block: &mut WindBlock) {
-        let end = self.starts[station + 1];
-        let mut c = self.cursor[station];
+    /// The first usable report of a station from `time` on, μs.
+    fn first_from(&self, station: usize, time: i64) -> usize {
+        let times = self.table.times();
+        self.usable[station].partition_point(|&i| times[i as usize].micros() < time)
+    }
+
+    fn nearest(&self, station: usize, tolerance: i64, block: &mut WindBlock) {
+        let end = self.usable[station].len();
+        let Some(first) = block.times.first() else {
+            return;
+        };
+        let mut c = self.first_from(station, first.micros() - tolerance);
         if c == end {
             return;
         }
         for t in 0..block.times.len() {
             let at = block.times[t].micros();
-            let distance = |this: &Self, k: usize| (this.report(k).0 - at).abs();
-            while c + 1 < end && distance(self, c + 1) < distance(self, c) {
+            let distance = |k: usize| (self.report(station, k).0 - at).abs();
+            while c + 1 < end && distance(c + 1) < distance(c) {
                 c += 1;
             }
-            if distance(self, c) <= tolerance {
-                let (time, i) = self.report(c);
+            if distance(c) <= tolerance {
+                let (time, i) = self.report(station, c);
                 let mut value = self.value(station, i);
                 value.age = seconds(time - at);
                 block.set(station, t, &value);
-                self.used[i] = true;
-                self.values[station] += 1;
+                self.mark(i);
             }
         }
-        self.cursor[station] = c;
     }
 
-    fn linear(&mut self, station: usize, tolerance: i64, block: &mut WindBlock) {
-        let end = self.starts[station + 1];
-        let mut c = self.cursor[station];
+    fn linear(&self, station: usize, tolerance: i64, block: &mut WindBlock) {
+        let end = self.usable[station].len();
+        let Some(first) = block.times.first() else {
+            return;
+        };
+        let mut c = self.first_from(station, first.micros() - tolerance);
         for t in 0..block.times.len() {
             let at = block.times[t].micros();
-            while c + 1 < end && self.report(c + 1).0 <= at {
+            while c + 1 < end && self.report(station, c + 1).0 <= at {
                 c += 1;
             }
             let Some((before, i)) = (c < end)
-                .then(|| self.report(c))
+                .then(|| self.report(station, c))
                 .filter(|r| r.0 <= at && at - r.0 <= tolerance)
             else {
                 continue;
             };
             let mut value = self.value(station, i);
             if before < at {
-                let next = (c + 1 < end).then(|| self.report(c + 1));
+                let next = (c + 1 < end).then(|| self.report(station, c + 1));
                 let Some((after, k)) = next.filter(|r| r.0 - at <= tolerance) else {
                     continue;
                 };
                 let share = (at - before) as f64 / (after - before) as f64;
                 value = between(&value, &self.value(station, k), share);
                 value.age = seconds((at - before).max(after - at));
-                self.used[k] = true;
+                self.mark(k);
             }
             block.set(station, t, &value);
-            self.used[i] = true;
-            self.values[station] += 1;
+            self.mark(i);
         }
-        self.cursor[station] = c;
     }
 
-    fn vector_mean(&mut self, station: usize, window: i64, least: usize, block: &mut WindBlock) {
-        let end = self.starts[station + 1];
-        let mut low = self.cursor[station];
+    fn vector_mean(&self, station: usize, window: i64, least: usize, block: &mut WindBlock) {
+        let end = self.usable[station].len();
+        let Some(first) = block.times.first() else {
+            return;
+        };
+        let mut low = self.first_from(station, first.micros() - window);
         for t in 0..block.times.len() {
             let at = block.times[t].micros();
-            while low < end && self.report(low).0 <= at - window {
+            while low < end && self.report(station, low).0 <= at - window {
                 low += 1;
             }
-            let high = (low..end).find(|&k| self.report(k).0 > at).unwrap_or(end);
+            let high = (low..end)
+                .find(|&k| self.report(station, k).0 > at)
+                .unwrap_or(end);
             if high - low < least.max(1) {
                 continue;
             }
@@ -278,13 +325,13 @@ impl<'a> Aligner<'a> {
             let mut flag = Flag::NotEvaluated;
             let mut ages = 0.0;
             for k in low..high {
-                let (time, i) = self.report(k);
+                let (time, i) = self.report(station, k);
                 let value = self.value(station, i);
-                mean.add(value.wind);
+                mean.add(value.wind, value.wind.speed());
                 covariance.add(value.covariance);
                 flag = flag.worst(value.flag);
                 ages += seconds(at - time);
-                self.used[i] = true;
+                self.mark(i);
             }
             let count = (high - low) as f64;
             if let Some(wind) = mean.wind() {
@@ -300,10 +347,8 @@ impl<'a> Aligner<'a> {
                     age: (f64::from(ages) / count) as f32,
                 };
                 block.set(station, t, &value);
-                self.values[station] += 1;
             }
         }
-        self.cursor[station] = low;
     }
 
     fn value(&self, station: usize, i: usize) -> AlignedWind {
@@ -333,70 +378,6 @@ impl<'a> Aligner<'a> {
             age: 0.0,
         }
     }
-
-    /// Values of each station so far.
-    #[must_use]
-    pub fn values(&self) -> &[u64] {
-        &self.values
-    }
-
-    /// The books after the last block: each report was used, or was not for one reason.
-    #[must_use]
-    pub fn tally(&self) -> AlignTally {
-        let mut all = Tally::default();
-        let mut used = vec![0; self.table.stations()];
-        for (station, used) in used.iter_mut().enumerate() {
-            for i in self.table.of_station(station) {
-                if self.used[i] {
-                    *used += 1;
-                    all.pass(1);
-                } else {
-                    let reason = unusable(self.table, i, self.level)
-                        .unwrap_or_else(|| self.why_not_used(station, i));
-                    all.set_aside(reason, 1);
-                }
-            }
-        }
-        AlignTally { all, used }
-    }
-
-    fn why_not_used(&self, station: usize, i: usize) -> Reason {
-        if self
-            .sensors
-            .height_factors
-            .get(station)
-            .is_some_and(Option::is_none)
-        {
-            return Reason::NoHeightFactor;
-        }
-        let time = self.table.times()[i];
-        match self.method {
-            AlignMethod::Nearest { tolerance } | AlignMethod::Linear { tolerance }
-                if self.grid.distance(time) <= micros_of(tolerance) =>
-            {
-                return Reason::NotNearest;
-            }
-            AlignMethod::VectorMean { window, .. }
-                if self.grid.until_next(time) < micros_of(window) =>
-            {
-                return Reason::TooFewInWindow;
-            }
-            _ => {}
-        }
-        match (self.grid.first(), self.grid.last()) {
-            (Some(first), Some(last)) if (first..=last).contains(&time) => Reason::TooFarInTime,
-            _ => Reason::OutsidePeriod,
-        }
-    }
-}
-
-/// The books of the alignment.
-#[derive(Debug, Clone, PartialEq)]
-pub struct AlignTally {
-    /// All reports.
-    pub all: Tally,
-    /// Reports used, for each station.
-    pub used: Vec<u64>,
 }
 
 /// Seconds of a distance in time.

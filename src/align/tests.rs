@@ -10,6 +10,10 @@ const MINUTE: i64 = 60_000_000;
 
 /// One station; each report is (minute, speed, direction).
 fn table(reports: &[(f64, Option<f64>, Option<f64>)]) -> ReportTable {
+    ReportTable::new(&[rows(reports)], 1).0
+}
+
+fn rows(reports: &[(f64, Option<f64>, Option<f64>)]) -> Rows {
     let mut rows = Rows::default();
     for &(minute, speed, direction) in reports {
         #[expect(clippy::cast_possible_truncation, reason = "small test numbers")]
@@ -26,7 +30,7 @@ fn table(reports: &[(f64, Option<f64>, Option<f64>)]) -> ReportTable {
             place: (0, 1),
         });
     }
-    ReportTable::new(&[rows], 1).0
+    rows
 }
 
 fn analysis(minutes: u64, method: AlignMethod) -> Analysis {
@@ -43,18 +47,33 @@ fn nearest(minutes: u64) -> AlignMethod {
     }
 }
 
-fn run(table: &ReportTable, analysis: &Analysis) -> (WindBlock, AlignTally) {
-    let sensors = StationSensors {
+const ALL: Range<i64> = i64::MIN..i64::MAX;
+
+fn sensors(factor: Option<f64>) -> StationSensors {
+    StationSensors {
         errors: vec![SensorErrors::default()],
-        height_factors: vec![Some(1.0)],
-    };
-    let mut aligner = Aligner::new(table, analysis, sensors);
-    let block = aligner.next_block().unwrap_or_default();
-    assert!(aligner.next_block().is_none());
-    let tally = aligner.tally();
-    assert!(tally.all.balances());
-    assert_eq!(tally.all.received, table.len() as u64);
-    (block, tally)
+        height_factors: vec![factor],
+    }
+}
+
+/// The winds at all analysis times in one block, and the books.
+fn aligned(
+    table: &ReportTable,
+    analysis: &Analysis,
+    sensors: &StationSensors,
+) -> (WindBlock, AlignBooks) {
+    let aligner = Aligner::new(table, analysis, sensors, ALL);
+    let times = aligner.grid().blocks(BLOCK_TIMES).concat();
+    let block = aligner.align(times);
+    let mut books = AlignBooks::default();
+    books.add(&aligner, None);
+    assert!(books.all.balances());
+    assert_eq!(books.all.received, table.len() as u64);
+    (block, books)
+}
+
+fn run(table: &ReportTable, analysis: &Analysis) -> (WindBlock, AlignBooks) {
+    aligned(table, analysis, &sensors(Some(1.0)))
 }
 
 #[test]
@@ -175,18 +194,62 @@ fn linear_needs_a_report_on_both_sides() {
 #[test]
 fn values_know_their_age_and_height() {
     let reports = table(&[(1.0, Some(4.0), Some(270.0))]);
-    let sensors = |factor| StationSensors {
-        errors: vec![SensorErrors::default()],
-        height_factors: vec![factor],
-    };
     let analysis = analysis(5, nearest(2));
-    let block = Aligner::new(&reports, &analysis, sensors(Some(1.5)))
-        .next_block()
-        .unwrap();
+    let (block, _) = aligned(&reports, &analysis, &sensors(Some(1.5)));
     assert_eq!((block.u[0], block.age[0]), (6.0, 60.0));
     // 0.25 m/s along the wind, times the factor.
     assert!((block.var_u[0].sqrt() - 0.375).abs() < 1e-12);
-    let mut aligner = Aligner::new(&reports, &analysis, sensors(None));
-    assert!(aligner.next_block().is_none());
-    assert_eq!(aligner.tally().all.count(Reason::NoHeightFactor), 1);
+    let (block, books) = aligned(&reports, &analysis, &sensors(None));
+    assert!(block.times.is_empty());
+    assert_eq!(books.all.count(Reason::NoHeightFactor), 1);
+}
+
+/// Reports that come in two windows are aligned as in one.
+#[test]
+fn a_cut_between_windows_changes_nothing() {
+    let minutes = [1.0, 4.0, 9.0, 18.0, 21.0, 26.0, 58.0, 61.0, 70.0, 75.0];
+    let reports: Vec<(f64, Option<f64>, Option<f64>)> = minutes
+        .iter()
+        .zip([1.0, 2.0, 3.0, 4.0, 5.0, 6.0, 7.0, 8.0, 9.0, 10.0])
+        .map(|(&minute, speed)| (minute, Some(speed), Some(270.0)))
+        .collect();
+    let mean = AlignMethod::VectorMean {
+        window: Duration::from_mins(13),
+        least_reports: 2,
+    };
+    let linear = AlignMethod::Linear {
+        tolerance: Duration::from_mins(6),
+    };
+    for method in [nearest(5), nearest(2), linear, mean] {
+        let analysis = analysis(5, method);
+        let (whole, books) = run(&table(&reports), &analysis);
+        let sensors = sensors(Some(1.0));
+        for cut in 1..14_i64 {
+            // Analysis times before `cut` in the first window, which has all reports that matter to them.
+            let reach = 14.0;
+            let (end, carried) = ((cut * 5) as f64 + reach, (cut * 5) as f64 - reach);
+            let first: Vec<_> = reports.iter().copied().filter(|r| r.0 < end).collect();
+            let more: Vec<_> = reports.iter().copied().filter(|r| r.0 >= end).collect();
+            let first = table(&first);
+            #[expect(clippy::cast_possible_truncation, reason = "small test numbers")]
+            let from = Time::from_micros(carried as i64 * MINUTE);
+            let (second, _) = ReportTable::following(&[rows(&more)], 1, &first, from);
+            let mut cut_books = AlignBooks::default();
+            let one = Aligner::new(&first, &analysis, &sensors, i64::MIN..cut);
+            let mut u = one.align(one.grid().blocks(BLOCK_TIMES).concat()).u;
+            cut_books.add(&one, Some(from));
+            let two = Aligner::new(&second, &analysis, &sensors, cut..i64::MAX);
+            let again = first.of_station_from(0, from);
+            let used = second
+                .of_station(0)
+                .zip(again)
+                .filter(|&(_, i)| one.is_used(i));
+            two.mark_used(used.map(|(i, _)| i));
+            u.extend(two.align(two.grid().blocks(BLOCK_TIMES).concat()).u);
+            cut_books.add(&two, None);
+            assert_eq!(u, whole.u, "{method:?} {cut}");
+            assert_eq!(cut_books.all, books.all, "{method:?} {cut}");
+            assert_eq!(cut_books.period, books.period, "{method:?} {cut}");
+        }
+    }
 }

@@ -1,5 +1,7 @@
 //! Analysis times.
 
+use std::ops::Range;
+
 use crate::settings::{AlignMethod, Analysis};
 use crate::time::{Time, micros_of};
 
@@ -11,68 +13,87 @@ pub struct TimeGrid {
     interval: i64,
     /// Runs of multiples, first and last, in order and apart.
     runs: Vec<(i64, i64)>,
-    /// Times before each run.
-    before: Vec<usize>,
+}
+
+/// Runs of multiples of the interval, first and last, within `multiples` and the period, at which a station has a value
+/// whose reports have these times, in ascending order.
+pub(super) fn served_runs(
+    times: impl Iterator<Item = Time>,
+    analysis: &Analysis,
+    multiples: &Range<i64>,
+) -> Vec<(i64, i64)> {
+    let interval = interval_of(analysis);
+    // Spans of instants that a report at `time` serves, for a line together with the one `before` it.
+    let served = |before: Option<i64>, time: i64| match analysis.method {
+        AlignMethod::Nearest { tolerance } => {
+            let reach = micros_of(tolerance).min(interval / 2);
+            [Some((time - reach, time + reach)), None]
+        }
+        AlignMethod::Linear { tolerance } => {
+            let reach = micros_of(tolerance);
+            let between = before.map(|b| (b.max(time - reach), time.min(b + reach)));
+            [
+                between.filter(|(start, end)| start <= end),
+                Some((time, time)),
+            ]
+        }
+        // The window is open at its start: (t - window, t].
+        AlignMethod::VectorMean { window, .. } => {
+            let reach = micros_of(window).min(interval) - 1;
+            [Some((time, time + reach)), None]
+        }
+    };
+    let first = analysis
+        .from
+        .map_or(i64::MIN, |t| ceil_div(t.micros(), interval))
+        .max(multiples.start);
+    let last = analysis
+        .to
+        .map_or(i64::MAX, |t| t.micros().div_euclid(interval))
+        .min(multiples.end - 1);
+
+    let mut runs: Vec<(i64, i64)> = Vec::new();
+    let mut open: Option<(i64, i64)> = None;
+    let mut before = None;
+    for time in times.map(Time::micros) {
+        for (start, end) in served(before, time).into_iter().flatten() {
+            // The usual report serves the next multiple alone: no division.
+            if let Some((_, high)) = &mut open {
+                let next = (*high + 1) * interval;
+                if start > next - interval && start <= next && end >= next && end < next + interval
+                {
+                    *high += i64::from(*high < last);
+                    continue;
+                }
+            }
+            let low = ceil_div(start, interval).max(first);
+            let high = end.div_euclid(interval).min(last);
+            if low > high {
+                continue;
+            }
+            open = match open {
+                Some((start, end)) if low <= end + 1 => Some((start, end.max(high))),
+                Some(run) => {
+                    runs.push(run);
+                    Some((low, high))
+                }
+                None => Some((low, high)),
+            };
+        }
+        before = Some(time);
+    }
+    runs.extend(open);
+    runs
+}
+
+fn interval_of(analysis: &Analysis) -> i64 {
+    micros_of(analysis.interval).max(1)
 }
 
 impl TimeGrid {
-    /// Times that have a report of any station, whose times (ascending) are given for each station.
-    pub fn covering<S: Iterator<Item = Time>>(
-        stations: impl Iterator<Item = S>,
-        analysis: &Analysis,
-    ) -> Self {
-        let interval = micros_of(analysis.interval).max(1);
-        // Spans of instants that a report at `time` serves, for a line together with the one `before` it.
-        let served = |before: Option<i64>, time: i64| match analysis.method {
-            AlignMethod::Nearest { tolerance } => {
-                let reach = micros_of(tolerance).min(interval / 2);
-                [Some((time - reach, time + reach)), None]
-            }
-            AlignMethod::Linear { tolerance } => {
-                let reach = micros_of(tolerance);
-                let between = before.map(|b| (b.max(time - reach), time.min(b + reach)));
-                [
-                    between.filter(|(start, end)| start <= end),
-                    Some((time, time)),
-                ]
-            }
-            // The window is open at its start: (t - window, t].
-            AlignMethod::VectorMean { window, .. } => {
-                let reach = micros_of(window).min(interval) - 1;
-                [Some((time, time + reach)), None]
-            }
-        };
-        let first = analysis
-            .from
-            .map_or(i64::MIN, |t| ceil_div(t.micros(), interval));
-        let last = analysis
-            .to
-            .map_or(i64::MAX, |t| t.micros().div_euclid(interval));
-
-        let mut runs: Vec<(i64, i64)> = Vec::new();
-        for times in stations {
-            let mut open: Option<(i64, i64)> = None;
-            let mut before = None;
-            for time in times.map(Time::micros) {
-                for (start, end) in served(before, time).into_iter().flatten() {
-                    let low = ceil_div(start, interval).max(first);
-                    let high = end.div_euclid(interval).min(last);
-                    if low > high {
-                        continue;
-                    }
-                    open = match open {
-                        Some((start, end)) if low <= end + 1 => Some((start, end.max(high))),
-                        Some(run) => {
-                            runs.push(run);
-                            Some((low, high))
-                        }
-                        None => Some((low, high)),
-                    };
-                }
-                before = Some(time);
-            }
-            runs.extend(open);
-        }
+    /// The times of these runs of multiples, in any order, which may overlap.
+    pub(super) fn new(analysis: &Analysis, mut runs: Vec<(i64, i64)>) -> Self {
+        let interval = interval_of(analysis);
         runs.sort_unstable();
         let mut merged: Vec<(i64, i64)> = Vec::new();
         for (low, high) in runs {
@@ -81,30 +102,19 @@ impl TimeGrid {
                 _ => merged.push((low, high)),
             }
         }
-        let before = merged
-            .iter()
-            .scan(0_usize, |count, &(low, high)| {
-                let start = *count;
-                *count += usize::try_from(high - low + 1).unwrap_or(usize::MAX);
-                Some(start)
-            })
-            .collect();
         Self {
             interval,
             runs: merged,
-            before,
         }
     }
 
     /// Number of analysis times.
     #[must_use]
     pub fn len(&self) -> usize {
-        match (self.runs.last(), self.before.last()) {
-            (Some(&(low, high)), Some(before)) => {
-                before + usize::try_from(high - low + 1).unwrap_or(0)
-            }
-            _ => 0,
-        }
+        let lengths = self.runs.iter().map(|&(low, high)| high - low + 1);
+        lengths
+            .map(|n| usize::try_from(n).unwrap_or(usize::MAX))
+            .sum()
     }
 
     /// True if there is none.
@@ -134,19 +144,30 @@ impl TimeGrid {
             .sum()
     }
 
-    /// The times from number `start` on.
-    pub fn times_from(&self, start: usize) -> impl Iterator<Item = Time> + '_ {
-        let run = self
-            .before
-            .partition_point(|&b| b <= start)
-            .saturating_sub(1);
-        let skip = start - self.before.get(run).copied().unwrap_or(0);
-        self.runs
-            .iter()
-            .skip(run)
-            .flat_map(|&(low, high)| low..=high)
-            .skip(skip)
-            .map(|k| self.time(k))
+    /// The times, cut into blocks at multiples of `block_times` intervals since 1970.
+    #[must_use]
+    pub fn blocks(&self, block_times: usize) -> Vec<Vec<Time>> {
+        let block_times = i64::try_from(block_times.max(1)).unwrap_or(i64::MAX);
+        let mut blocks: Vec<Vec<Time>> = Vec::new();
+        let mut last = None;
+        for k in self.runs.iter().flat_map(|&(low, high)| low..=high) {
+            let number = k.div_euclid(block_times);
+            if last != Some(number) {
+                blocks.push(Vec::new());
+                last = Some(number);
+            }
+            if let Some(block) = blocks.last_mut() {
+                block.push(self.time(k));
+            }
+        }
+        blocks
+    }
+
+    /// How many multiples of the interval lie between two of them.
+    #[must_use]
+    pub fn steps_between(&self, before: Time, after: Time) -> u64 {
+        let steps = (after.micros() - before.micros()) / self.interval - 1;
+        u64::try_from(steps).unwrap_or(0)
     }
 
     /// From `time` to the nearest analysis time, μs.

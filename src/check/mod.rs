@@ -6,7 +6,7 @@ mod summary;
 use serde::Serialize;
 
 pub use range::check_range;
-pub use summary::{StationReading, summarise};
+pub use summary::{StationReading, StationSums};
 
 /// Quality flag with the values of IOOS QARTOD.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize)]

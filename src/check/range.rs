@@ -4,12 +4,14 @@ use crate::check::Flag;
 use crate::report::ReportTable;
 use crate::settings::RangeLimits;
 
-/// Flags every report: missing where there is no speed, fail or suspect beyond the limits, else pass.
+/// Flags every new report: missing where there is no speed, fail or suspect beyond the limits, else pass.
 ///
 /// - **Reference**: IOOS QARTOD, Manual for Real-Time Quality Control of Wind Data, test 4 (gross range).
 pub fn check_range(table: &mut ReportTable, limits: &RangeLimits) {
-    for i in 0..table.len() {
-        table.raise_flag(i, range_flag(table.speed(i), limits));
+    for station in 0..table.stations() {
+        for i in table.fresh(station) {
+            table.raise_flag(i, range_flag(table.speed(i), limits));
+        }
     }
 }
 

@@ -4,7 +4,7 @@ use std::collections::BTreeMap;
 
 use super::Flag;
 use crate::align::vector::VectorMean;
-use crate::report::{Content, ReportTable, Rounding, find_rounding};
+use crate::report::{Content, ReportTable, Rounding, RoundingFinder};
 use crate::time::Time;
 use crate::units::Wind;
 
@@ -41,85 +41,158 @@ pub struct StationReading {
     pub vector_mean: Option<Wind>,
 }
 
-/// Sums up the reports of a station.
-#[must_use]
-pub fn summarise(table: &ReportTable, station: usize) -> StationReading {
-    let reports = table.of_station(station);
-    let mut reading = StationReading {
-        reports: reports.len() as u64,
-        rounding: find_rounding(table, station),
-        ..StationReading::default()
+/// Sums up the reports of one station as they come, window after window.
+#[derive(Debug, Clone, Default)]
+pub struct StationSums {
+    /// Counts and times; the rest is filled in at the end.
+    counts: StationReading,
+    mean: VectorMean,
+    steps: Steps,
+    rounding: RoundingFinder,
+}
+
+impl StationSums {
+    /// Takes in the new reports of the station in a table.
+    pub fn add(&mut self, table: &ReportTable, station: usize) {
+        let reports = table.fresh(station);
+        let counts = &mut self.counts;
+        counts.reports += reports.len() as u64;
+        for i in reports.clone() {
+            match table.content(i) {
+                Content::Wind => counts.wind += 1,
+                Content::Calm => counts.calm += 1,
+                Content::SpeedOnly => counts.no_direction += 1,
+                Content::Nothing => counts.no_speed += 1,
+            }
+            match table.flag(i) {
+                Flag::Suspect => counts.suspect += 1,
+                Flag::Fail => counts.failed += 1,
+                _ => {}
+            }
+            if let Some(wind) = table.wind(i).filter(|_| table.flag(i) != Flag::Fail) {
+                self.mean.add(wind, table.speed(i).unwrap_or(0.0));
+            }
+        }
+        let mut of_interest = reports.clone();
+        while self.rounding.wants_more()
+            && let Some(i) = of_interest.next()
+        {
+            self.rounding.add(table.speed(i), table.direction(i));
+        }
+        for &time in &table.times()[reports] {
+            let (first, last) = counts.period.get_or_insert((time, time));
+            self.steps.add(time.micros() - last.micros());
+            (*first, *last) = (time.min(*first), time);
+        }
+    }
+
+    /// Steps of the station's reports, as far as they are known by now.
+    #[must_use]
+    pub fn rounding(&self) -> Rounding {
+        self.rounding.found()
+    }
+
+    /// What the reports come to.
+    #[must_use]
+    pub fn reading(&self) -> StationReading {
+        let mut reading = StationReading {
+            rounding: self.rounding.found(),
+            mean_speed: self.mean.scalar_mean_speed(),
+            vector_mean: self.mean.wind(),
+            interval: self.steps.usual(),
+            ..self.counts.clone()
+        };
+        if let Some(interval) = reading.interval {
+            for (step, n) in self.steps.longer_than(interval + interval / 2) {
+                reading.gaps += n;
+                // The nearest whole number of intervals, less the one that is there.
+                let missing = (2 * step + interval) / (2 * interval) - 1;
+                reading.missing_in_gaps += n * u64::try_from(missing).unwrap_or(0);
+            }
+        }
+        reading
+    }
+}
+
+/// Different times between reports that are told apart.
+const STEPS_KEPT: usize = 4096;
+
+/// How often each time between successive reports occurs, μs; reports on several levels at one time count once.
+#[derive(Debug, Clone, Default)]
+struct Steps {
+    counts: BTreeMap<i64, u64>,
+    /// The last step and how often it came in a row.
+    run: (i64, u64),
+}
+
+impl Steps {
+    fn add(&mut self, step: i64) {
+        if step == self.run.0 {
+            self.run.1 += 1;
+        } else if step > 0 {
+            put(&mut self.counts, self.run);
+            self.run = (step, 1);
+        }
+    }
+
+    fn all(&self) -> BTreeMap<i64, u64> {
+        let mut counts = self.counts.clone();
+        put(&mut counts, self.run);
+        counts
+    }
+
+    /// The most frequent; of several the shortest.
+    fn usual(&self) -> Option<i64> {
+        let counts = self.all();
+        let most = counts.values().copied().max()?;
+        let mut steps = counts.into_iter();
+        steps.find(|&(_, n)| n == most).map(|(step, _)| step)
+    }
+
+    fn longer_than(&self, shortest: i64) -> impl Iterator<Item = (i64, u64)> {
+        self.all()
+            .into_iter()
+            .filter(move |&(step, _)| step > shortest)
+    }
+}
+
+/// Counts a step `n` times; where there is no room for another step, with the next longer one, or the longest.
+fn put(counts: &mut BTreeMap<i64, u64>, (step, n): (i64, u64)) {
+    if n == 0 || step <= 0 {
+        return;
+    }
+    let known = if counts.len() < STEPS_KEPT || counts.contains_key(&step) {
+        step
+    } else {
+        let longer = counts.range(step..).next();
+        longer.or(counts.last_key_value()).map_or(step, |k| *k.0)
     };
-    let mut mean = VectorMean::default();
-    for i in reports.clone() {
-        match table.content(i) {
-            Content::Wind => reading.wind += 1,
-            Content::Calm => reading.calm += 1,
-            Content::SpeedOnly => reading.no_direction += 1,
-            Content::Nothing => reading.no_speed += 1,
-        }
-        match table.flag(i) {
-            Flag::Suspect => reading.suspect += 1,
-            Flag::Fail => reading.failed += 1,
-            _ => {}
-        }
-        if let Some(wind) = table.wind(i).filter(|_| table.flag(i) != Flag::Fail) {
-            mean.add(wind);
-        }
-    }
-    let times = &table.times()[reports];
-    reading.period = times.first().copied().zip(times.last().copied());
-    reading.interval = usual_interval(times);
-    if let Some(interval) = reading.interval {
-        for step in steps(times).filter(|step| 2 * step > 3 * interval) {
-            reading.gaps += 1;
-            // The nearest whole number of intervals, less the one that is there.
-            reading.missing_in_gaps +=
-                u64::try_from((2 * step + interval) / (2 * interval) - 1).unwrap_or(0);
-        }
-    }
-    reading.mean_speed = mean.scalar_mean_speed();
-    reading.vector_mean = mean.wind();
-    reading
-}
-
-/// Times between successive reports, μs; reports on several levels at one time count once.
-fn steps(times: &[Time]) -> impl Iterator<Item = i64> {
-    times
-        .windows(2)
-        .map(|pair| pair[1].micros() - pair[0].micros())
-        .filter(|&step| step > 0)
-}
-
-/// The most frequent time between reports; of several the shortest.
-fn usual_interval(times: &[Time]) -> Option<i64> {
-    let mut counts: BTreeMap<i64, u64> = BTreeMap::new();
-    for step in steps(times) {
-        *counts.entry(step).or_default() += 1;
-    }
-    let most = counts.values().copied().max()?;
-    counts
-        .into_iter()
-        .find(|&(_, n)| n == most)
-        .map(|(step, _)| step)
+    *counts.entry(known).or_default() += n;
 }
 
 #[cfg(test)]
 mod tests {
     use super::*;
 
-    fn at(minutes: &[i64]) -> Vec<Time> {
-        minutes
-            .iter()
-            .map(|m| Time::from_micros(m * 60_000_000))
-            .collect()
+    #[test]
+    fn the_usual_interval_and_the_gaps() {
+        let mut steps = Steps::default();
+        for step in [0, 5, 5, 15, 5, 0, 6] {
+            steps.add(step * 60_000_000);
+        }
+        assert_eq!(steps.usual(), Some(300_000_000));
+        let longer: Vec<(i64, u64)> = steps.longer_than(450_000_000).collect();
+        assert_eq!(longer, [(900_000_000, 1)]);
+        assert_eq!(Steps::default().usual(), None);
     }
 
     #[test]
-    fn the_usual_interval_and_the_gaps() {
-        let times = at(&[0, 5, 10, 25, 30, 30, 36]);
-        assert_eq!(usual_interval(&times), Some(300_000_000));
-        assert_eq!(usual_interval(&at(&[3])), None);
-        assert_eq!(steps(&times).collect::<Vec<_>>().len(), 5);
+    fn steps_of_any_number_take_no_more_room() {
+        let mut steps = Steps::default();
+        for step in 1..20_000 {
+            steps.add(step * 1_000);
+        }
+        assert!(steps.all().len() <= STEPS_KEPT + 1);
+        assert_eq!(steps.all().values().sum::<u64>(), 19_999);
     }
 }

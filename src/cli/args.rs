@@ -116,6 +116,10 @@ pub struct CheckArgs {
     /// Print JSON
     #[arg(long)]
     pub json: bool,
+    /// Memory that reports may take which are not in the order of time, such as 500MiB; the rest is sorted on disk
+    /// [default: 1GiB]
+    #[arg(long, value_name = "SIZE", value_parser = units::parse_memory)]
+    pub memory: Option<usize>,
     /// Threads [default: all processors]
     #[arg(long, value_name = "N")]
     pub threads: Option<usize>,
@@ -183,6 +187,10 @@ pub struct EstimateArgs {
     /// Threads; the results do not depend on it [default: all processors]
     #[arg(long, value_name = "N")]
     pub threads: Option<usize>,
+    /// Memory that reports may take which are not in the order of time, such as 500MiB; the rest is sorted on disk
+    /// [default: 1GiB]
+    #[arg(long, value_name = "SIZE", value_parser = units::parse_memory)]
+    pub memory: Option<usize>,
     /// Print no summary and no progress; warnings remain
     #[arg(long, short)]
     pub quiet: bool,
@@ -212,6 +220,7 @@ impl From<&CheckArgs> for Overrides {
     fn from(args: &CheckArgs) -> Self {
         Self {
             reports: args.reports.clone(),
+            memory: args.memory,
             ..Self::default()
         }
     }
@@ -240,6 +249,7 @@ impl From<&EstimateArgs> for Overrides {
             to: args.to,
             smallest_angle: args.limits.smallest_angle,
             longest_edge: args.limits.longest_edge,
+            memory: args.memory,
         }
     }
 }

@@ -98,15 +98,15 @@ fn short_reason(why: &Exclusion) -> String {
 /// The summary of `estimate`.
 pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -> String {
     let mut out = String::new();
-    let grid = &outcome.grid;
+    let period = &outcome.period;
     let built = &setup.built;
     let _ = writeln!(out, "{}", setup.settings.name);
-    if let (Some(first), Some(last)) = (grid.first(), grid.last()) {
+    if let Some((first, last)) = period.ends {
         let interval = setup.settings.analysis.interval.as_secs_f64() / 60.0;
         let _ = writeln!(
             out,
             "Period      {first} to {last}, {} times, every {interval} min",
-            grid.len()
+            period.times
         );
     }
     let reporting = outcome.values.iter().filter(|&&n| n > 0).count();
@@ -119,20 +119,20 @@ pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
         out,
         "Reports     {} rows read, {} used ({:.1} %)",
         outcome.reading.rows.received,
-        outcome.aligned.all.passed,
+        outcome.aligned.passed,
         100.0 * outcome.share_used()
     );
     for tally in [
         &outcome.reading.rows,
         &outcome.reading.repeats,
-        &outcome.aligned.all,
+        &outcome.aligned,
     ] {
         for (reason, n) in &tally.set_aside {
             let _ = writeln!(out, "            {n:>8} {}", reason.words());
         }
     }
     let values: u64 = outcome.extremes.values.iter().sum();
-    let possible = (grid.len() * built.polygons.len()).max(1) as f64;
+    let possible = (period.times * built.polygons.len() as u64).max(1) as f64;
     let _ = writeln!(
         out,
         "Polygons    {} used, {} left out; {:.1} % of their values are there",
@@ -193,7 +193,7 @@ fn peak_text(setup: &Setup, peak: Option<Peak>) -> String {
 
 /// Names the stations with the fewest values, if any is incomplete.
 fn least_reporting(out: &mut String, setup: &Setup, outcome: &Outcome) {
-    let times = outcome.grid.len() as u64;
+    let times = outcome.period.times;
     let mut order: Vec<usize> = (0..setup.network.len())
         .filter(|&s| outcome.values[s] < times)
         .collect();

@@ -11,12 +11,13 @@ use clap::Parser;
 use indicatif::{ProgressBar, ProgressStyle};
 
 use self::args::{Args, CheckArgs, Command, EstimateArgs, Format, PolygonsArgs};
-use crate::error::Error;
+use crate::error::{Error, ErrorKind};
 use crate::output::{
     Formats, OutputSet, mesh_csv, mesh_geojson, reading_json, series, stations_csv, summary_csv,
     summary_json,
 };
 use crate::pipeline::{self, Reading, Setup, Sources};
+use crate::report::InputOrder;
 use crate::settings::Overrides;
 
 /// How a run ended; the value is the exit status.
@@ -73,7 +74,7 @@ fn print(text: &str) -> Result<(), Error> {
 fn check(args: &CheckArgs) -> Result<Status, Error> {
     use_threads(args.threads);
     let sources = Sources::read(&args.network, &Overrides::from(args))?;
-    let reading = Reading::of(&sources.settings, &sources.network);
+    let reading = Reading::of(&sources.settings, &sources.network)?;
     for warning in sources.warnings.iter().chain(&reading.warnings) {
         message::say("warning", &warning.to_string());
     }
@@ -131,25 +132,32 @@ fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
         .out
         .clone()
         .unwrap_or_else(|| default_folder(&args.network));
-    let mut set = OutputSet::new(&folder)?;
     let formats = Formats {
         csv: !args.summary_only && args.format.contains(&Format::Csv),
         parquet: !args.summary_only && args.format.contains(&Format::Parquet),
     };
-    let (encoder, mut series_files) = series(&setup, formats, &mut set)?;
-
     let bar = progress_bar(args.quiet);
-    let outcome = pipeline::run(
-        &setup,
-        |block| encoder.encode(block),
-        |encoded| series_files.write(&mut set, encoded),
-        |done, of| {
-            bar.set_length(of as u64);
-            bar.set_position(done as u64);
-        },
-    );
+    let run = |order: InputOrder| {
+        let mut set = OutputSet::new(&folder)?;
+        let (encoder, mut series_files) = series(&setup, formats, &mut set)?;
+        let outcome = pipeline::run(
+            &setup,
+            order,
+            |block| encoder.encode(block),
+            |encoded| series_files.write(&mut set, encoded),
+            |rows| bar.set_position(rows),
+        )?;
+        Ok::<_, Error>((outcome, set, series_files))
+    };
+    let result = match run(InputOrder::first_try(&setup.settings.reports)) {
+        Err(error) if error.kind() == ErrorKind::Order => {
+            message::say("note", &format!("{error}: they are sorted first"));
+            run(InputOrder::Any)
+        }
+        result => result,
+    };
     bar.finish_and_clear();
-    let outcome = outcome?;
+    let (outcome, mut set, series_files) = result?;
 
     series_files.finish(&mut set)?;
     set.put("mesh.geojson", mesh_geojson(&setup).as_bytes())?;
@@ -192,8 +200,9 @@ fn progress_bar(quiet: bool) -> ProgressBar {
     if quiet {
         return ProgressBar::hidden();
     }
-    let bar = ProgressBar::no_length();
-    if let Ok(style) = ProgressStyle::with_template("{bar:40} {pos} of {len} times, {eta} left") {
+    let bar = ProgressBar::new_spinner();
+    if let Ok(style) = ProgressStyle::with_template("{spinner} {human_pos} reports read, {per_sec}")
+    {
         bar.set_style(style);
     }
     bar

@@ -47,7 +47,7 @@ pub(super) fn reading_text(settings: &Settings, network: &Network, reading: &Rea
     reasons(&mut out, &reading.repeats);
     contents(&mut out, network, reading);
     timing(&mut out, network, reading);
-    let conflicts = reading.table.conflicts();
+    let conflicts = &reading.conflicts;
     if !conflicts.is_empty() {
         let _ = writeln!(
             out,

@@ -3,7 +3,7 @@
 use std::io::{self, Read};
 
 /// Size of a block, bytes: large enough to make the cost of a block small, small enough to stay in the cache.
-const BLOCK: usize = 1 << 18;
+pub(crate) const BLOCK: usize = 1 << 18;
 /// A longer line is no row; it is skipped and counted.
 const LONGEST_LINE: usize = 1 << 20;
 
@@ -21,6 +21,7 @@ pub(crate) struct Block {
 /// Reads an input block by block.
 pub(crate) struct Blocks<R> {
     input: R,
+    size: usize,
     /// The start of a line whose end was not read yet.
     rest: Vec<u8>,
     /// Buffers given back.
@@ -32,9 +33,11 @@ pub(crate) struct Blocks<R> {
 }
 
 impl<R: Read> Blocks<R> {
-    pub(crate) fn new(input: R) -> Self {
+    /// Cuts an input into blocks of about `size` bytes.
+    pub(crate) fn new(input: R, size: usize) -> Self {
         Self {
             input,
+            size,
             rest: Vec::new(),
             spare: Vec::new(),
             line: 1,
@@ -48,12 +51,12 @@ impl<R: Read> Blocks<R> {
         let mut bytes = self.spare.pop().unwrap_or_default();
         bytes.clear();
         // One allocation for the whole block; the size never grows beyond it.
-        bytes.reserve_exact(BLOCK);
+        bytes.reserve_exact(self.size);
         bytes.append(&mut self.rest);
         loop {
             if !self.ended {
                 // A line longer than a block makes it grow, up to the longest line there may be.
-                let want = BLOCK.saturating_sub(bytes.len()).max(BLOCK / 4) as u64;
+                let want = self.size.saturating_sub(bytes.len()).max(self.size / 4) as u64;
                 match self.input.by_ref().take(want).read_to_end(&mut bytes) {
                     Ok(got) => self.ended = (got as u64) < want,
                     Err(error) => {
@@ -130,7 +133,7 @@ mod tests {
     use super::*;
 
     fn all(text: &[u8]) -> Vec<Block> {
-        let mut blocks = Blocks::new(text);
+        let mut blocks = Blocks::new(text, BLOCK);
         let mut out = Vec::new();
         while let Some(block) = blocks.next_block().unwrap() {
             out.push(block);

@@ -11,7 +11,7 @@ mod time;
 
 use serde::Serialize;
 
-pub(crate) use blocks::{Block, Blocks};
+pub(crate) use blocks::{BLOCK, Block, Blocks};
 pub(crate) use number::{parse_number, parse_number_with_comma, parse_short};
 pub(crate) use row::{Header, Row, Splitter, find_delimiter, find_separators, read_header};
 pub use source::open;

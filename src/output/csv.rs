@@ -138,7 +138,7 @@ pub fn stations_csv(setup: &Setup, outcome: &Outcome) -> String {
         "station,name,latitude,longitude,elevation_m,reports,calm,no_direction,no_speed,suspect,failed,used,values,\
          availability,first_report,last_report,mean_speed,vector_mean_speed,vector_mean_direction,interval_s,gaps,direction_step_deg,speed_step,speed_step_unit,height_factor\n",
     );
-    let times = outcome.grid.len().max(1) as f64;
+    let times = outcome.period.times.max(1) as f64;
     for (k, station) in setup.network.stations().iter().enumerate() {
         let reading = &outcome.reading.stations[k];
         let (first, last) = reading
@@ -158,7 +158,7 @@ pub fn stations_csv(setup: &Setup, outcome: &Outcome) -> String {
             reading.no_speed.to_string(),
             reading.suspect.to_string(),
             reading.failed.to_string(),
-            outcome.aligned.used[k].to_string(),
+            outcome.used[k].to_string(),
             outcome.values[k].to_string(),
             number(outcome.values[k] as f64 / times),
             first,

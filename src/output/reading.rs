@@ -46,8 +46,7 @@ pub fn reading_json(settings: &Settings, network: &Network, reading: &Reading) -
         json!({ "file": file, "line": line })
     };
     let conflicts: Vec<Value> = reading
-        .table
-        .conflicts()
+        .conflicts
         .iter()
         .map(|c| {
             json!({

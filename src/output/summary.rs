@@ -12,7 +12,8 @@ use crate::settings::{AlignMethod, ReportSource, Settings};
 /// The summary of a run, as JSON. It holds nothing that differs between two runs of the same input.
 #[must_use]
 pub fn summary_json(setup: &Setup, outcome: &Outcome) -> String {
-    let grid = &outcome.grid;
+    let period = &outcome.period;
+    let polygons = setup.built.polygons.len() as u64;
     let mut reasons: BTreeMap<&str, usize> = BTreeMap::new();
     for (_, why) in &setup.built.excluded {
         *reasons.entry(why.name()).or_default() += 1;
@@ -42,17 +43,17 @@ pub fn summary_json(setup: &Setup, outcome: &Outcome) -> String {
         "network": setup.settings.name,
         "settings": settings(&setup.settings),
         "period": {
-            "first": grid.first().map(|t| t.to_string()),
-            "last": grid.last().map(|t| t.to_string()),
-            "times": grid.len(),
-            "times_without_report": grid.empty_times(),
+            "first": period.ends.map(|ends| ends.0.to_string()),
+            "last": period.ends.map(|ends| ends.1.to_string()),
+            "times": period.times,
+            "times_without_report": period.empty_times,
         },
         "reports": {
             "rows": outcome.reading.rows,
             "files": files,
             "failures": failures,
             "repeats": outcome.reading.repeats,
-            "aligned": outcome.aligned.all,
+            "aligned": outcome.aligned,
             "share_used": outcome.share_used(),
         },
         "stations": setup.network.len(),
@@ -63,7 +64,7 @@ pub fn summary_json(setup: &Setup, outcome: &Outcome) -> String {
             "excluded_list": excluded,
             "flat_triangles": setup.built.flat,
             "values": extremes.values.iter().sum::<u64>(),
-            "values_possible": (grid.len() * setup.built.polygons.len()),
+            "values_possible": period.times * polygons,
         },
         "self_test": setup.self_test,
         "extremes": {

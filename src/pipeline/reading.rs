@@ -1,15 +1,16 @@
-//! Reads and checks the reports.
+//! What came of reading and checking the reports.
 
-use crate::check::{StationReading, check_range, summarise};
-use crate::error::Error;
-use crate::report::{FileOutcome, ReportTable, read_reports};
+use super::Windows;
+use crate::check::StationReading;
+use crate::error::{Error, ErrorKind};
+use crate::report::{Conflict, FileOutcome, InputOrder, ReportFiles};
 use crate::settings::Settings;
 use crate::station::Network;
 use crate::tally::Tally;
 use crate::warning::Warning;
 
-/// The reports, read, sorted and checked.
-#[derive(Debug)]
+/// The books of the reports: read, sorted and checked.
+#[derive(Debug, Default)]
 pub struct Reading {
     /// Rows of the files.
     pub rows: Tally,
@@ -17,8 +18,8 @@ pub struct Reading {
     pub files: Vec<FileOutcome>,
     /// Repeats taken out.
     pub repeats: Tally,
-    /// The reports.
-    pub table: ReportTable,
+    /// The first rows that say different things of the same station and time.
+    pub conflicts: Vec<Conflict>,
     /// What each station sent.
     pub stations: Vec<StationReading>,
     /// What the user should know.
@@ -28,22 +29,25 @@ pub struct Reading {
 }
 
 impl Reading {
-    /// Reads all report files and flags the reports.
-    #[must_use]
-    pub fn of(settings: &Settings, network: &Network) -> Self {
-        let outcome = read_reports(&settings.reports, network);
-        let (mut table, repeats) = ReportTable::new(&outcome.rows, network.len());
-        drop(outcome.rows);
-        check_range(&mut table, &settings.range);
-        let stations = (0..network.len()).map(|s| summarise(&table, s)).collect();
-        Self {
-            rows: outcome.tally,
-            files: outcome.files,
-            repeats,
-            table,
-            stations,
-            warnings: outcome.warnings,
-            failures: outcome.failures,
+    /// Reads all report files and checks the reports, in the order of time if the files have it, else sorted first.
+    ///
+    /// # Errors
+    /// The disk cannot take what does not fit into memory.
+    pub fn of(settings: &Settings, network: &Network) -> Result<Self, Error> {
+        let files = ReportFiles::new(&settings.reports, network);
+        let all = |order: InputOrder| -> Result<Self, Error> {
+            let mut windows = Windows::new(&files, settings, order);
+            let mut window = None;
+            loop {
+                match windows.after(window.as_ref())? {
+                    Some(next) => window = Some(next),
+                    None => return Ok(windows.reading()),
+                }
+            }
+        };
+        match all(InputOrder::first_try(&settings.reports)) {
+            Err(error) if error.kind() == ErrorKind::Order => all(InputOrder::Any),
+            result => result,
         }
     }
 

@@ -119,7 +119,7 @@ impl CodedReader<'_> {
 
     fn set_aside(&mut self, reason: Reason, entry: &CodedReport, message: &str) {
         let file = self.file;
-        self.outcome.set_aside(reason, || {
+        self.outcome.books.set_aside(reason, || {
             let place = Place {
                 file: file.into(),
                 line: Some(entry.line),
@@ -135,13 +135,15 @@ impl CodedReader<'_> {
 
     fn known(&mut self, known: &Known, entry: &CodedReport) {
         if known.nil {
-            self.outcome.tally.set_aside(Reason::Nil, 1);
+            self.outcome.books.tally.set_aside(Reason::Nil, 1);
             return;
         }
         let station = match self.names.find(known.station.as_bytes()) {
             Found::Station(station) => station,
             found => {
-                self.outcome.no_station(found, known.station.as_bytes());
+                self.outcome
+                    .books
+                    .no_station(found, known.station.as_bytes());
                 return;
             }
         };
@@ -151,7 +153,10 @@ impl CodedReader<'_> {
             return;
         };
         if !self.names.is_valid(station, time) {
-            self.outcome.tally.set_aside(Reason::OutsideValidity, 1);
+            self.outcome
+                .books
+                .tally
+                .set_aside(Reason::OutsideValidity, 1);
             return;
         }
         let (speed, direction, gust) = wind_of(known.wind.as_ref());
@@ -166,6 +171,6 @@ impl CodedReader<'_> {
             correction: known.correction,
             place: (self.number, entry.line),
         });
-        self.outcome.tally.pass(1);
+        self.outcome.books.tally.pass(1);
     }
 }

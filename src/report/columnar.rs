@@ -19,10 +19,8 @@ use std::fs::File;
 use std::io::{self, Read};
 use std::path::Path;
 
-use super::ReportFormat;
-use super::format::Columns;
-use super::names::Names;
 use super::read::PartOutcome;
+use super::values::ValueReader;
 use crate::error::Error;
 
 /// First bytes of Parquet and of Arrow IPC files (the format documents of Apache Parquet and Apache Arrow).
@@ -44,51 +42,83 @@ pub(super) fn is_columnar_file(path: &Path) -> bool {
     read.is_ok() && is_columnar(&start)
 }
 
-/// Reads a columnar table.
+/// A columnar table as it is read, some batches at a time.
 #[cfg(feature = "parquet")]
-pub(super) fn read_columnar(
-    path: &Path,
-    number: u32,
-    format: &ReportFormat,
-    columns: &Columns,
-    names: &Names,
-) -> Result<PartOutcome, Error> {
-    use super::values::ValueReader;
+pub(super) struct ColumnarFeed<'a> {
+    values: ValueReader<'a>,
+    layout: layout::Layout,
+    batches: open::Batches,
+    /// Rows read so far.
+    line: u64,
+}
 
-    let cannot_read = |error: io::Error| Error::read(path, error);
-    let file = path.display().to_string();
-    let table = open::guarded(|| open::Table::open(path)).map_err(cannot_read)?;
-    let layout = layout::Layout::new(table.schema(), &file, format, columns)?;
-    let mut batches = open::guarded(|| table.batches(&layout.wanted)).map_err(cannot_read)?;
-    let values = ValueReader::new(&file, number, format, columns, names);
-    let mut reader = batch::BatchReader::new(&values, &layout);
-    loop {
-        match open::guarded(|| batches.next_batch()) {
-            Ok(Some(batch)) => reader.read(&batch),
-            Ok(None) => return Ok(reader.outcome),
-            Err(error) if reader.outcome.tally.received == 0 => return Err(cannot_read(error)),
-            Err(error) => {
-                reader.outcome.ended_early(&file, &error);
-                return Ok(reader.outcome);
+#[cfg(feature = "parquet")]
+impl<'a> ColumnarFeed<'a> {
+    pub(super) fn open(path: &Path, values: ValueReader<'a>) -> Result<Self, Error> {
+        let cannot_read = |error: io::Error| Error::read(path, error);
+        let table = open::guarded(|| open::Table::open(path)).map_err(cannot_read)?;
+        let layout =
+            layout::Layout::new(table.schema(), values.file, values.format, values.columns)?;
+        let batches = open::guarded(|| table.batches(&layout.wanted)).map_err(cannot_read)?;
+        Ok(Self {
+            values,
+            layout,
+            batches,
+            line: 0,
+        })
+    }
+
+    /// Reads at most `at_once` batches. The second value tells whether the table has ended.
+    ///
+    /// # Errors
+    /// The table cannot be read at all; once rows have come, a failure ends the table and is counted.
+    pub(super) fn turn(
+        &mut self,
+        path: &Path,
+        at_once: usize,
+    ) -> Result<(PartOutcome, bool), Error> {
+        let mut reader = batch::BatchReader::new(&self.values, &self.layout, self.line);
+        let mut ended = false;
+        for _ in 0..at_once {
+            match open::guarded(|| self.batches.next_batch()) {
+                Ok(Some(batch)) => reader.read(&batch),
+                Ok(None) => ended = true,
+                Err(error) if reader.line == 0 => return Err(Error::read(path, error)),
+                Err(error) => {
+                    reader.outcome.books.ended_early(self.values.file, &error);
+                    ended = true;
+                }
+            }
+            if ended {
+                break;
             }
         }
+        self.line = reader.line;
+        Ok((reader.outcome, ended))
     }
 }
 
 /// Says that columnar tables are not read.
 #[cfg(not(feature = "parquet"))]
-pub(super) fn read_columnar(
-    path: &Path,
-    _number: u32,
-    _format: &ReportFormat,
-    _columns: &Columns,
-    _names: &Names,
-) -> Result<PartOutcome, Error> {
-    let message = "it is a Parquet or Arrow IPC file, and this program was built without the feature `parquet`";
-    Err(Error::read(
-        path,
-        io::Error::new(io::ErrorKind::Unsupported, message),
-    ))
+pub(super) struct ColumnarFeed<'a>(std::marker::PhantomData<&'a ()>);
+
+#[cfg(not(feature = "parquet"))]
+impl<'a> ColumnarFeed<'a> {
+    pub(super) fn open(path: &Path, _values: ValueReader<'a>) -> Result<Self, Error> {
+        let message = "it is a Parquet or Arrow IPC file, and this program was built without the feature `parquet`";
+        Err(Error::read(
+            path,
+            io::Error::new(io::ErrorKind::Unsupported, message),
+        ))
+    }
+
+    pub(super) fn turn(
+        &mut self,
+        _path: &Path,
+        _at_once: usize,
+    ) -> Result<(PartOutcome, bool), Error> {
+        Ok((PartOutcome::default(), true))
+    }
 }
 
 #[cfg(all(test, feature = "parquet"))]

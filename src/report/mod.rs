@@ -4,10 +4,13 @@
 //! order of the input; [`ReportTable`] sorts them by station and time, counts repeats, and is what all later stages
 //! see. No reader of tables allocates per row.
 
+mod build;
+mod chunk;
 mod coded;
 mod coded_file;
 mod columnar;
 mod direction;
+mod feed;
 mod format;
 mod layout;
 mod metar;
@@ -15,16 +18,21 @@ mod names;
 mod read;
 mod rounding;
 mod rows;
+mod spill;
+mod stream;
 mod synop;
 mod table;
 mod text;
 mod values;
 
+pub use build::CONFLICTS_KEPT;
 pub use coded::{CodeError, CodedDirection, CodedSpeed, CodedWind, DayTime, Entry};
+pub use feed::ReportFiles;
 pub use format::{Columns, ReportForm, ReportFormat, WindColumns};
 pub use metar::{Metar, Metars, metars, parse_metar};
 pub use read::{FileOutcome, ReadOutcome, read_bytes, read_reports};
-pub use rounding::{Rounding, SpeedStep, find_rounding};
+pub use rounding::{Rounding, RoundingFinder, SpeedStep};
 pub use rows::{Moving, Part, Report, Rows};
+pub use stream::{InputOrder, OrderedReports, ReportStream};
 pub use synop::{Synop, Synops, synops};
 pub use table::{Conflict, Content, ReportTable};

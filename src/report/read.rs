@@ -1,16 +1,16 @@
 //! Reads all report files.
 
 use std::collections::BTreeMap;
-use std::path::Path;
 
-use rayon::prelude::*;
+use serde::{Deserialize, Serialize};
 
-use super::format::ReportForm;
-use super::names::{Found, Names};
+use super::ReportFormat;
+use super::feed::ReportFiles;
+use super::names::Found;
 use super::rows::Rows;
-use super::{ReportFormat, coded_file, columnar, text};
+use super::stream::ReportStream;
 use crate::error::{Error, Place, Problem, nearest_name};
-use crate::input::{open, read_all, shown};
+use crate::input::shown;
 use crate::settings::ReportSource;
 use crate::station::Network;
 use crate::tally::{Reason, Tally};
@@ -49,30 +49,44 @@ pub struct FileOutcome {
 #[derive(Debug, Default)]
 pub(super) struct PartOutcome {
     pub(super) rows: Vec<Rows>,
+    pub(super) books: Books,
+}
+
+/// The books of a file.
+#[derive(Debug, Clone, Default, PartialEq, Serialize, Deserialize)]
+pub(super) struct Books {
     pub(super) tally: Tally,
     unusable: u64,
     problems: Vec<Problem>,
-    unknown: BTreeMap<Vec<u8>, u64>,
+    /// Why reading ended before the end of the file.
+    cut: Option<Problem>,
+    /// Names that the network does not have. They are bytes of any kind.
+    unknown: Vec<(Vec<u8>, u64)>,
 }
 
-impl PartOutcome {
-    /// Takes in what came of the following part.
+impl Books {
+    /// Takes in the books of the following part.
     pub(super) fn append(&mut self, later: Self) {
-        self.rows.extend(later.rows);
         self.tally += &later.tally;
         self.unusable += later.unusable;
         self.problems.extend(later.problems);
         self.problems.truncate(PROBLEMS_KEPT);
+        self.cut = self.cut.take().or(later.cut);
         for (name, n) in later.unknown {
             self.count_unknown(&name, n);
         }
     }
 
     fn count_unknown(&mut self, name: &[u8], n: u64) {
-        if let Some(count) = self.unknown.get_mut(name) {
-            *count += n;
-        } else if self.unknown.len() < UNKNOWN_KEPT {
-            self.unknown.insert(name.to_vec(), n);
+        match self
+            .unknown
+            .binary_search_by(|(known, _)| known.as_slice().cmp(name))
+        {
+            Ok(k) => self.unknown[k].1 += n, // found there
+            Err(k) if self.unknown.len() < UNKNOWN_KEPT => {
+                self.unknown.insert(k, (name.to_vec(), n));
+            }
+            Err(_) => {}
         }
     }
 
@@ -105,9 +119,7 @@ impl PartOutcome {
             file: file.into(),
             ..Place::default()
         };
-        let problem = Problem::new(place, format!("reading ended early: {error}"));
-        self.problems.insert(0, problem);
-        self.problems.truncate(PROBLEMS_KEPT);
+        self.cut = Some(Problem::new(place, format!("reading ended early: {error}")));
     }
 }
 
@@ -119,68 +131,53 @@ pub fn read_bytes(
     format: &ReportFormat,
     network: &Network,
 ) -> ReadOutcome {
-    let names = Names::new(network);
-    let part = match &format.form {
-        ReportForm::Table(columns) => text::read_table(bytes, name, 0, format, columns, &names),
-        ReportForm::Metar | ReportForm::Synop => Ok(coded_file::read_coded(
-            bytes.to_vec(),
-            name,
-            0,
-            format,
-            &names,
-        )),
-    };
-    gather(vec![(name.to_string(), part)], network)
+    let files = ReportFiles::of_bytes(bytes, name, format, network);
+    read_files(&files)
 }
 
-/// Reads all report files, several at a time; the result has the order of the settings.
+/// Reads all report files; the result has the order of the settings.
 #[must_use]
 pub fn read_reports(sources: &[ReportSource], network: &Network) -> ReadOutcome {
-    let names = Names::new(network);
-    let files: Vec<(u32, &Path, &ReportFormat)> = (0..)
-        .zip(
-            sources
-                .iter()
-                .flat_map(|s| s.files.iter().map(|f| (f.as_path(), &s.format))),
-        )
-        .map(|(number, (file, format))| (number, file, format))
-        .collect();
-    let parts: Vec<(String, Result<PartOutcome, Error>)> = files
-        .par_iter()
-        .map(|&(number, file, format)| {
-            (
-                file.display().to_string(),
-                read_file(file, number, format, &names),
-            )
-        })
-        .collect();
-    gather(parts, network)
+    read_files(&ReportFiles::new(sources, network))
 }
 
-/// Puts the parts together, in their order.
-fn gather(parts: Vec<(String, Result<PartOutcome, Error>)>, network: &Network) -> ReadOutcome {
+fn read_files(files: &ReportFiles) -> ReadOutcome {
+    let mut stream = ReportStream::in_file_order(files);
+    let mut rows = Vec::new();
+    while let Some(wave) = stream.next_wave(None) {
+        rows.extend(wave);
+    }
+    ReadOutcome {
+        rows,
+        ..stream.outcome()
+    }
+}
+
+/// Puts the books of the files together.
+pub(super) fn gather(parts: Vec<(String, Result<Books, Error>)>, network: &Network) -> ReadOutcome {
     let mut outcome = ReadOutcome::default();
     let mut unknown: BTreeMap<Vec<u8>, u64> = BTreeMap::new();
-    for (file, part) in parts {
-        let part = part.unwrap_or_else(|error| {
+    for (file, books) in parts {
+        let books = books.unwrap_or_else(|error| {
             outcome.failures.push(error);
-            PartOutcome::default()
+            Books::default()
         });
-        if part.unusable > 0 {
+        if books.unusable > 0 {
+            let mut first: Vec<Problem> = books.cut.into_iter().chain(books.problems).collect();
+            first.truncate(PROBLEMS_KEPT);
             outcome.warnings.push(Warning::UnusableRows {
                 file: file.clone(),
-                rows: part.unusable,
-                first: part.problems,
+                rows: books.unusable,
+                first,
             });
         }
-        for (name, n) in part.unknown {
+        for (name, n) in books.unknown {
             *unknown.entry(name).or_default() += n;
         }
-        outcome.rows.extend(part.rows);
-        outcome.tally += &part.tally;
+        outcome.tally += &books.tally;
         outcome.files.push(FileOutcome {
             file,
-            tally: part.tally,
+            tally: books.tally,
         });
     }
     for (name, rows) in unknown {
@@ -198,26 +195,4 @@ fn gather(parts: Vec<(String, Result<PartOutcome, Error>)>, network: &Network) -
         });
     }
     outcome
-}
-
-fn read_file(
-    path: &Path,
-    number: u32,
-    format: &ReportFormat,
-    names: &Names,
-) -> Result<PartOutcome, Error> {
-    let file = path.display().to_string();
-    match &format.form {
-        ReportForm::Table(columns) if columnar::is_columnar_file(path) => {
-            columnar::read_columnar(path, number, format, columns, names)
-        }
-        ReportForm::Table(columns) => {
-            let input = open(path).map_err(|e| Error::read(path, e))?;
-            text::read_table(input, &file, number, format, columns, names)
-        }
-        ReportForm::Metar | ReportForm::Synop => {
-            let bytes = read_all(path, coded_file::LARGEST).map_err(|e| Error::read(path, e))?;
-            Ok(coded_file::read_coded(bytes, &file, number, format, names))
-        }
-    }
 }

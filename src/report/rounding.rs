@@ -2,8 +2,7 @@
 
 use serde::Serialize;
 
-use super::table::ReportTable;
-use crate::units::SpeedUnit;
+use crate::units::{FromDirection, SpeedUnit};
 
 /// Steps of a station's reports; `None` where none was found or there are too few reports to tell.
 #[derive(Debug, Clone, Copy, Default, PartialEq, Serialize)]
@@ -41,7 +40,7 @@ fn symbol<S: serde::Serializer>(unit: &SpeedUnit, serializer: S) -> Result<S::Ok
 }
 
 /// Fewer values tell nothing: 20 directions of 10 degree steps fall on multiples of 90 with a chance of 9⁻²⁰.
-const FEWEST: usize = 20;
+const FEWEST: u32 = 20;
 /// Share of the values that must lie on the steps; the rest may come from another sensor or a correction.
 const SHARE: f64 = 0.99;
 /// Steps of directions that are looked for, degrees, and how far a value may be from them: points of the compass are
@@ -71,47 +70,88 @@ const SPEED_STEPS: [(f64, SpeedUnit); 10] = [
 /// How far a speed may be from a step, in steps: conversions are often written with few digits.
 const SPEED_SLACK: f64 = 0.01;
 
-/// Finds the steps of a station's reports: the coarsest on which nearly all values lie.
-#[must_use]
-pub fn find_rounding(table: &ReportTable, station: usize) -> Rounding {
-    let reports = table.of_station(station);
-    let directions: Vec<f64> = reports
-        .clone()
-        .filter_map(|i| table.direction(i))
-        .map(crate::units::FromDirection::degrees)
-        .collect();
-    // Calm lies on every step.
-    let speeds: Vec<f64> = reports
-        .filter_map(|i| table.speed(i))
-        .filter(|&speed| speed > 0.0)
-        .collect();
-    Rounding {
-        direction: DIRECTION_STEPS
-            .into_iter()
-            .find(|&(step, slack)| lies_on_steps(&directions, step, slack))
-            .map(|(step, _)| step),
-        speed: SPEED_STEPS
-            .into_iter()
-            .map(|(count, unit)| SpeedStep { count, unit })
-            .find(|step| {
-                let step = step.metres_per_second();
-                lies_on_steps(&speeds, step, SPEED_SLACK * step)
-            }),
+/// Values of a station that are looked at; later ones change nothing.
+const LOOKED_AT: u32 = 4096;
+
+/// Finds the steps of a station as its reports come: the coarsest on which nearly all values lie.
+#[derive(Debug, Clone, Default)]
+pub struct RoundingFinder {
+    directions: Counts<{ DIRECTION_STEPS.len() }>,
+    speeds: Counts<{ SPEED_STEPS.len() }>,
+}
+
+/// How many values were looked at, and how many of them lie on none of the multiples of each step.
+#[derive(Debug, Clone)]
+struct Counts<const N: usize> {
+    values: u32,
+    elsewhere: [u32; N],
+}
+
+impl<const N: usize> Default for Counts<N> {
+    fn default() -> Self {
+        Self {
+            values: 0,
+            elsewhere: [0; N],
+        }
     }
 }
 
-fn lies_on_steps(values: &[f64], step: f64, slack: f64) -> bool {
-    if values.len() < FEWEST {
-        return false;
-    }
-    // As soon as too many lie elsewhere, the rest need not be looked at.
-    let mut elsewhere = (1.0 - SHARE) * values.len() as f64;
-    values.iter().all(|&value| {
-        if (value - (value / step).round() * step).abs() > slack {
-            elsewhere -= 1.0;
+impl<const N: usize> Counts<N> {
+    fn add(&mut self, value: f64, steps: impl Iterator<Item = (f64, f64)>) {
+        self.values += 1;
+        for (elsewhere, (step, slack)) in self.elsewhere.iter_mut().zip(steps) {
+            *elsewhere += u32::from((value - (value / step).round() * step).abs() > slack);
         }
-        elsewhere >= 0.0
-    })
+    }
+
+    /// The number of the first step that fits.
+    fn found(&self) -> Option<usize> {
+        let most = (1.0 - SHARE) * f64::from(self.values);
+        let fits = |&elsewhere: &u32| f64::from(elsewhere) <= most;
+        (self.values >= FEWEST)
+            .then(|| self.elsewhere.iter().position(fits))
+            .flatten()
+    }
+}
+
+impl RoundingFinder {
+    /// True as long as more reports can tell more.
+    #[must_use]
+    pub fn wants_more(&self) -> bool {
+        self.directions.values < LOOKED_AT || self.speeds.values < LOOKED_AT
+    }
+
+    /// Looks at a report's speed, m/s, and direction.
+    pub fn add(&mut self, speed: Option<f64>, direction: Option<FromDirection>) {
+        if let Some(direction) = direction
+            && self.directions.values < LOOKED_AT
+        {
+            self.directions
+                .add(direction.degrees(), DIRECTION_STEPS.into_iter());
+        }
+        // Calm lies on every step.
+        if let Some(speed) = speed.filter(|&speed| speed > 0.0)
+            && self.speeds.values < LOOKED_AT
+        {
+            let steps = SPEED_STEPS.into_iter().map(|(count, unit)| {
+                let step = count * unit.in_metres_per_second();
+                (step, SPEED_SLACK * step)
+            });
+            self.speeds.add(speed, steps);
+        }
+    }
+
+    /// The steps found so far.
+    #[must_use]
+    pub fn found(&self) -> Rounding {
+        Rounding {
+            direction: self.directions.found().map(|k| DIRECTION_STEPS[k].0), // one of them
+            speed: self.speeds.found().map(|k| {
+                let (count, unit) = SPEED_STEPS[k]; // one of them
+                SpeedStep { count, unit }
+            }),
+        }
+    }
 }
 
 #[cfg(test)]
@@ -119,11 +159,9 @@ mod tests {
     use super::*;
 
     fn found(values: impl Iterator<Item = f64>) -> Option<(f64, SpeedUnit)> {
-        let values: Vec<f64> = values.collect();
-        SPEED_STEPS.into_iter().find(|&(count, unit)| {
-            let step = SpeedStep { count, unit }.metres_per_second();
-            lies_on_steps(&values, step, SPEED_SLACK * step)
-        })
+        let mut finder = RoundingFinder::default();
+        values.for_each(|value| finder.add(Some(value), None));
+        finder.found().speed.map(|step| (step.count, step.unit))
     }
 
     #[test]
@@ -144,12 +182,10 @@ mod tests {
 
     #[test]
     fn points_of_the_compass_in_whole_degrees() {
-        let points: Vec<f64> = (0..64)
-            .map(|k| (f64::from(k % 16) * 22.5).round())
-            .collect();
-        let step = DIRECTION_STEPS
-            .into_iter()
-            .find(|&(step, slack)| lies_on_steps(&points, step, slack));
-        assert_eq!(step.map(|s| s.0), Some(22.5));
+        let mut finder = RoundingFinder::default();
+        for k in 0..64 {
+            finder.add(None, FromDirection::new((f64::from(k % 16) * 22.5).round()));
+        }
+        assert_eq!(finder.found().direction, Some(22.5));
     }
 }

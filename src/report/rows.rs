@@ -170,6 +170,53 @@ impl Rows {
         }
     }
 
+    /// Adds a row of `other`, which has it.
+    pub(super) fn push_from(&mut self, other: &Self, row: usize) {
+        let before = self.len();
+        self.packed.push(other.packed[row]);
+        let gust = other.gust.get(row).copied().flatten();
+        put(&mut self.gust, before, gust, gust.is_some(), None);
+        let moving = other.moving.get(row).copied().flatten();
+        put(&mut self.moving, before, moving, moving.is_some(), None);
+        let correction = other.correction.get(row).copied().unwrap_or(0);
+        let corrected = correction > 0;
+        put(&mut self.correction, before, correction, corrected, 0);
+    }
+
+    /// First and last time.
+    #[must_use]
+    pub fn span(&self) -> Option<(Time, Time)> {
+        let first = self.packed.first()?.time;
+        let span = self.packed.iter().fold((first, first), |(low, high), row| {
+            (low.min(row.time), high.max(row.time))
+        });
+        Some(span)
+    }
+
+    /// Takes out the rows from `cut` on; both parts keep their order.
+    #[must_use]
+    pub fn split_off_from(&mut self, cut: Time) -> Self {
+        let stays: Vec<bool> = self.packed.iter().map(|row| row.time < cut).collect();
+        let part = |wanted: bool| Self {
+            packed: chosen(&self.packed, &stays, wanted),
+            gust: chosen(&self.gust, &stays, wanted),
+            moving: chosen(&self.moving, &stays, wanted),
+            correction: chosen(&self.correction, &stays, wanted),
+        };
+        let later = part(false);
+        *self = part(true);
+        later
+    }
+
+    /// Memory that the rows take, bytes.
+    #[must_use]
+    pub fn bytes(&self) -> usize {
+        self.packed.capacity() * size_of::<Packed>()
+            + self.gust.capacity() * size_of::<Option<f64>>()
+            + self.moving.capacity() * size_of::<Option<Moving>>()
+            + self.correction.capacity()
+    }
+
     /// How many there are.
     #[must_use]
     pub fn len(&self) -> usize {
@@ -181,6 +228,13 @@ impl Rows {
     pub fn is_empty(&self) -> bool {
         self.packed.is_empty()
     }
+}
+
+/// The values that are wanted; a column that is empty stays so.
+fn chosen<T: Copy>(column: &[T], stays: &[bool], wanted: bool) -> Vec<T> {
+    let pairs = column.iter().zip(stays);
+    let of_part = pairs.filter(|&(_, &stays)| stays == wanted);
+    of_part.map(|(&value, _)| value).collect()
 }
 
 /// Adds a value to a column that stays empty until a value `is_there`.

@@ -1,14 +1,15 @@
 //! Text tables, long (one row for each station and time) and wide (a column for each station).
 
-use std::io::Read;
+use std::io::{self, Read};
 use std::path::Path;
+use std::sync::{Mutex, PoisonError};
 
 use rayon::prelude::*;
 
-use super::format::{Columns, ReportFormat, WindColumns};
+use super::format::WindColumns;
 use super::layout::{Layout, Role};
 use super::metar::parse_metar;
-use super::names::{Finder, Found, Names};
+use super::names::{Finder, Found};
 use super::read::PartOutcome;
 use super::rows::{Moving, Rows};
 use super::values::{GivenWind, Unusable, Value, ValueReader, WindValue};
@@ -22,72 +23,83 @@ use crate::tally::Reason;
 use crate::time::Time;
 use crate::units::FromDirection;
 
-/// Blocks read ahead and then parsed in parallel, for each thread.
-const BLOCKS_PER_THREAD: usize = 2;
 /// A row is seldom shorter than this, bytes; for the first guess of how many there are.
 const SHORT_ROW: usize = 32;
 
-/// Reads a text table.
-pub(super) fn read_table(
-    input: impl Read,
-    file: &str,
-    number: u32,
-    format: &ReportFormat,
-    columns: &Columns,
-    names: &Names,
-) -> Result<PartOutcome, Error> {
-    let values = ValueReader::new(file, number, format, columns, names);
-    let mut blocks = Blocks::new(input);
-    let mut outcome = PartOutcome::default();
-    let mut layout: Option<Layout> = None;
-    let at_once = BLOCKS_PER_THREAD * rayon::current_num_threads();
-    loop {
-        let mut batch: Vec<Block> = Vec::with_capacity(at_once);
-        let mut failure = None;
-        while batch.len() < at_once {
-            match blocks.next_block() {
-                Ok(Some(block)) => batch.push(block),
-                Ok(None) => break,
-                Err(error) => {
-                    failure = Some(error);
-                    break;
-                }
+/// A text table as it is read, some blocks at a time.
+pub(super) struct TableFeed<'a> {
+    values: ValueReader<'a>,
+    blocks: Blocks<Box<dyn Read + Send + 'a>>,
+    layout: Layout,
+    /// The rest of the block that the header line stood in.
+    first: Option<Block>,
+}
+
+impl<'a> TableFeed<'a> {
+    /// Reads the header line, with blocks of about `block_size` bytes.
+    pub(super) fn open(
+        input: Box<dyn Read + Send + 'a>,
+        values: ValueReader<'a>,
+        block_size: usize,
+    ) -> Result<Self, Error> {
+        let mut blocks = Blocks::new(input, block_size);
+        let mut first = match blocks.next_block() {
+            Ok(Some(first)) => first,
+            Ok(None) => {
+                let wanted = values.columns.time.first().map_or("time", String::as_str);
+                let problem = missing_column(values.file, wanted, std::iter::empty());
+                return Err(Error::Invalid(vec![problem]));
             }
-        }
-        let layout = match &layout {
-            Some(layout) => layout,
-            None => match (batch.first_mut(), failure) {
-                (Some(first), error) => {
-                    failure = error;
-                    let line = read_header(first, format.text.skip_lines);
-                    layout.insert(Layout::new(&line, &values)?)
-                }
-                (None, Some(error)) => return Err(Error::read(Path::new(file), error)),
-                (None, None) => {
-                    let wanted = columns.time.first().map_or("time", String::as_str);
-                    let problem = missing_column(file, wanted, std::iter::empty());
-                    return Err(Error::Invalid(vec![problem]));
-                }
-            },
+            Err(error) => return Err(Error::read(Path::new(values.file), error)),
         };
-        let ended = batch.len() < at_once;
-        let parts: Vec<PartOutcome> = batch
-            .par_iter()
-            .map(|block| BlockReader::new(layout, &values, block.bytes.len()).read(block))
+        let line = read_header(&mut first, values.format.text.skip_lines);
+        Ok(Self {
+            layout: Layout::new(&line, &values)?,
+            values,
+            blocks,
+            first: Some(first),
+        })
+    }
+
+    /// Reads at most `at_once` blocks, several at a time: while one thread waits for the next block, the others read
+    /// theirs. The parts have the order of the input. The second value tells whether the input has ended.
+    pub(super) fn turn(&mut self, at_once: usize) -> (Vec<PartOutcome>, bool) {
+        let (layout, values) = (&self.layout, &self.values);
+        let source = Mutex::new((0_usize, self.first.take(), &mut self.blocks));
+        // The number of a block, the block; nothing at the end.
+        let next = || -> io::Result<Option<(usize, Block)>> {
+            let mut source = source.lock().unwrap_or_else(PoisonError::into_inner);
+            let (count, first, blocks) = &mut *source;
+            let block = match first.take() {
+                Some(block) => Some(block),
+                None => blocks.next_block()?,
+            };
+            *count += 1;
+            Ok(block.map(|block| (*count, block)))
+        };
+        let give_back = |bytes: Vec<u8>| {
+            let mut source = source.lock().unwrap_or_else(PoisonError::into_inner);
+            source.2.give_back(bytes);
+        };
+        let mut parts: Vec<(usize, PartOutcome, bool)> = (0..at_once)
+            .into_par_iter()
+            .map(|_| match next() {
+                Ok(Some((number, block))) => {
+                    let part = BlockReader::new(layout, values, block.bytes.len()).read(&block);
+                    give_back(block.bytes);
+                    (number, part, false)
+                }
+                Ok(None) => (usize::MAX, PartOutcome::default(), true),
+                Err(error) => {
+                    let mut part = PartOutcome::default();
+                    part.books.ended_early(values.file, &error);
+                    (usize::MAX - 1, part, true)
+                }
+            })
             .collect();
-        for part in parts {
-            outcome.append(part);
-        }
-        for block in batch {
-            blocks.give_back(block.bytes);
-        }
-        if let Some(error) = failure {
-            outcome.ended_early(file, &error);
-            return Ok(outcome);
-        }
-        if ended {
-            return Ok(outcome);
-        }
+        parts.sort_by_key(|part| part.0);
+        let ended = parts.iter().any(|part| part.2);
+        (parts.into_iter().map(|part| part.1).collect(), ended)
     }
 }
 
@@ -173,6 +185,7 @@ impl<'a> BlockReader<'a> {
         let values = self.values;
         let reason = unusable.reason;
         self.outcome
+            .books
             .set_aside(reason, || values.problem(unusable, line));
     }
 
@@ -234,7 +247,7 @@ impl<'a> BlockReader<'a> {
         self.finder.was_expected(station);
         let place = (self.values.number, line);
         self.rows.push_wind(station, time, speed, direction, place);
-        self.outcome.tally.pass(1);
+        self.outcome.books.tally.pass(1);
         Some(at + end)
     }
 
@@ -261,7 +274,7 @@ impl<'a> BlockReader<'a> {
         let station = match self.finder.find(name) {
             Found::Station(station) => station,
             found => {
-                self.outcome.no_station(found, name);
+                self.outcome.books.no_station(found, name);
                 return Ok(());
             }
         };
@@ -288,7 +301,7 @@ impl<'a> BlockReader<'a> {
             Err(unusable) => {
                 // The row holds a report of each station.
                 let more = layout.wide.len() as u64 - 1;
-                self.outcome.tally.set_aside(unusable.reason, more);
+                self.outcome.books.tally.set_aside(unusable.reason, more);
                 self.set_aside(unusable, line);
                 return;
             }
@@ -296,6 +309,7 @@ impl<'a> BlockReader<'a> {
         for entry in &layout.wide {
             let Found::Station(station) = entry.station else {
                 self.outcome
+                    .books
                     .no_station(entry.station, entry.name.as_bytes());
                 continue;
             };
@@ -332,7 +346,7 @@ impl<'a> BlockReader<'a> {
         let station = match self.finder.find(name) {
             Found::Station(station) => station,
             found => {
-                self.outcome.no_station(found, name);
+                self.outcome.books.no_station(found, name);
                 return Ok(());
             }
         };
@@ -348,7 +362,7 @@ impl<'a> BlockReader<'a> {
             self.time(row)?
         };
         if metar.nil {
-            self.outcome.tally.set_aside(Reason::Nil, 1);
+            self.outcome.books.tally.set_aside(Reason::Nil, 1);
             return Ok(());
         }
         let (speed, direction, gust) = super::coded_file::wind_of(metar.wind.as_ref());
@@ -373,9 +387,13 @@ impl<'a> BlockReader<'a> {
         match self.values.report(station, time, wind, moving, line) {
             Some(report) => {
                 self.rows.push(&report);
-                self.outcome.tally.pass(1);
+                self.outcome.books.tally.pass(1);
             }
-            None => self.outcome.tally.set_aside(Reason::OutsideValidity, 1),
+            None => self
+                .outcome
+                .books
+                .tally
+                .set_aside(Reason::OutsideValidity, 1),
         }
     }
 

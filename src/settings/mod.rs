@@ -40,7 +40,12 @@ pub struct Settings {
     pub polygons: PolygonChoice,
     /// Which polygons are left out.
     pub limits: PolygonLimits,
+    /// Memory that sorting the reports may take, bytes; what does not fit is put on disk.
+    pub memory: usize,
 }
+
+/// Default of [`Settings::memory`]: 1 GiB.
+pub const MEMORY: usize = 1 << 30;
 
 /// A group of report files of one format.
 #[derive(Debug, Clone, PartialEq)]

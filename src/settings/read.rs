@@ -7,8 +7,8 @@ use super::path::expand_path;
 use super::reports::{reports, text_format};
 use super::section::{Document, Section};
 use super::{
-    AlignMethod, Analysis, PolygonChoice, PolygonLimits, RangeLimits, RegionParts, RegionSettings,
-    RingSettings, SensorErrors, Settings,
+    AlignMethod, Analysis, MEMORY, PolygonChoice, PolygonLimits, RangeLimits, RegionParts,
+    RegionSettings, RingSettings, SensorErrors, Settings,
 };
 use crate::align::{HeightReduction, Profile};
 use crate::error::{Error, Problem};
@@ -35,6 +35,8 @@ pub struct Overrides {
     pub smallest_angle: Option<f64>,
     /// `limits.longest_edge`, m
     pub longest_edge: Option<f64>,
+    /// Memory that sorting the reports may take, bytes
+    pub memory: Option<usize>,
 }
 
 /// Reads a settings file. The settings come back even where there are defects, with defaults in their place, so that
@@ -78,6 +80,7 @@ fn parse_settings(
         analysis: analysis(root.section("analysis"), overrides),
         range: range(root.section("check")),
         limits: limits(root.section("limits"), overrides),
+        memory: overrides.memory.unwrap_or(MEMORY),
         polygons: polygons(root.section("polygons")),
     };
     root.finish();

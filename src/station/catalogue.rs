@@ -5,7 +5,7 @@ use std::path::Path;
 
 use super::{StationList, features, table};
 use crate::error::{Error, Place, Problem, nearest_name};
-use crate::input::{Blocks, TextFormat, open};
+use crate::input::{BLOCK, Blocks, TextFormat, open};
 
 /// A list in GeoJSON is read as a whole; a larger one is a slip.
 const LARGEST_GEOJSON: u64 = 1 << 30;
@@ -114,7 +114,7 @@ fn read_list(
     let is_geojson = text.trim_ascii_start().starts_with(b"{");
     let mut input = start.chain(input);
     if !is_geojson {
-        return table::read_table(file, Blocks::new(input), catalogue);
+        return table::read_table(file, Blocks::new(input, BLOCK), catalogue);
     }
     let mut bytes = Vec::new();
     input

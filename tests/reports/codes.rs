@@ -32,7 +32,7 @@ fn metar_in_bulletins_and_one_a_line() {
         assert!(found.reading.is_complete(), "{:?}", found.reading.warnings);
         assert_eq!(found.lines(), metar_winds(), "{text}");
         // 22 kt, exactly.
-        let gust = found.reading.table.gust(0).unwrap();
+        let gust = found.table.gust(0).unwrap();
         assert!((gust - 22.0 * 1852.0 / 3600.0).abs() < 1e-12, "{gust}");
     }
 }
@@ -56,7 +56,7 @@ fn a_corrected_metar_replaces_the_first_wherever_it_stands() {
         let found = read("metar", &text);
         assert_eq!(found.lines(), metar_winds()[..1]);
         assert_eq!(found.repeats(Reason::Corrected), 1);
-        assert!(found.reading.table.conflicts().is_empty());
+        assert!(found.reading.conflicts.is_empty());
     }
 }
 

@@ -46,7 +46,7 @@ fn magnetic_directions_with_a_stated_declination() {
         "columns = { declination = \"d\" }\n[[reports]]\nfiles = [\"r.csv\"]\nnorth = \"magnetic\"";
     let found = Site::new(&stations, settings, &[("r.csv", TABLE.as_bytes())]).read();
     let directions: Vec<f64> = (0..3)
-        .map(|i| found.reading.table.direction(i).unwrap().degrees())
+        .map(|i| found.table.direction(i).unwrap().degrees())
         .collect();
     // Sums of numbers that are exact in binary.
     assert_eq!(directions, [250.0, 286.0, 10.0]);
@@ -62,7 +62,7 @@ fn north_of_a_single_station() {
     };
     let found = with(["-20,magnetic", "5.5,true", "120,"]).read();
     let directions: Vec<f64> = (0..3)
-        .map(|i| found.reading.table.direction(i).unwrap().degrees())
+        .map(|i| found.table.direction(i).unwrap().degrees())
         .collect();
     assert_eq!(directions, [250.0, 280.5, 250.0]);
 }
@@ -74,7 +74,7 @@ fn magnetic_directions_by_the_model() {
         "time,station,direction,speed\n2025-03-01T00:00:00Z,A,10,5\n2025-11-01T00:00:00Z,B,5,5\n";
     let found = read("north = \"magnetic\"", text);
     for (i, expected) in [10.0 - 9.4163, 365.0 - 9.3027].into_iter().enumerate() {
-        let direction = found.reading.table.direction(i).unwrap().degrees();
+        let direction = found.table.direction(i).unwrap().degrees();
         // Single precision of the model, and the middle of the year to a day.
         assert!(
             (direction - expected).abs() < 0.003,
@@ -156,7 +156,7 @@ fn positions_and_levels_of_their_own_are_kept() {
     let format = "level_unit = \"hPa\"\ncolumns = { direction = \"direction\", speed = \"speed\", latitude = \"lat\", \
                   longitude = \"lon\", level = \"p\" }";
     let found = read(format, text);
-    let table = &found.reading.table;
+    let table = &found.table;
     assert_eq!(found.repeats(Reason::Repeated), 1);
     assert_eq!(table.len(), 3);
     let own: Vec<_> = (0..3).map(|i| table.moving(i)).collect();
@@ -189,7 +189,7 @@ fn rows_in_any_order_and_repeats_that_agree() {
     let earlier = "B 2031-06-13T23:50:00Z 281 6";
     assert_eq!(found.lines(), [WINDS[0], earlier, WINDS[1], WINDS[2]]);
     assert_eq!(found.repeats(Reason::Repeated), 1);
-    assert!(found.reading.table.conflicts().is_empty());
+    assert!(found.reading.conflicts.is_empty());
     assert!(found.reading.is_complete());
 }
 
@@ -199,7 +199,7 @@ fn of_repeats_that_disagree_the_later_holds_and_both_are_named() {
     let found = read("", &text);
     assert_eq!(found.lines(), WINDS);
     assert_eq!(found.repeats(Reason::Replaced), 1);
-    let [conflict] = found.reading.table.conflicts() else {
+    let [conflict] = &found.reading.conflicts[..] else {
         panic!("one conflict expected");
     };
     assert_eq!((conflict.set_aside, conflict.holds), ((0, 2), (0, 5)));
@@ -219,7 +219,7 @@ fn the_later_file_holds_where_two_disagree() {
     let found = Site::new(STATIONS, settings, &files).read();
     assert_eq!(found.lines(), WINDS);
     assert_eq!(found.repeats(Reason::Repeated), 2);
-    let conflict = found.reading.table.conflicts()[0];
+    let conflict = found.reading.conflicts[0];
     assert_eq!((conflict.set_aside, conflict.holds), ((0, 4), (1, 4)));
 }
 

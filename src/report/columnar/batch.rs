@@ -24,7 +24,7 @@ pub(super) struct BatchReader<'a> {
     finder: Finder<'a>,
     times: Times<'a>,
     /// Rows read so far.
-    line: u64,
+    pub(super) line: u64,
     name: Vec<u8>,
     rows: Rows,
     pub(super) outcome: PartOutcome,
@@ -70,13 +70,14 @@ impl<'b> Columns<'b> {
 }
 
 impl<'a> BatchReader<'a> {
-    pub(super) fn new(values: &'a ValueReader<'a>, layout: &'a Layout) -> Self {
+    /// A reader that has `line` rows of the table behind it.
+    pub(super) fn new(values: &'a ValueReader<'a>, layout: &'a Layout, line: u64) -> Self {
         Self {
             values,
             layout,
             finder: Finder::new(values.names),
             times: Times::new(&layout.time_kinds, &values.format.time, &layout.clock),
-            line: 0,
+            line,
             name: Vec::new(),
             rows: Rows::default(),
             outcome: PartOutcome::default(),
@@ -98,6 +99,7 @@ impl<'a> BatchReader<'a> {
             if let Err(unusable) = result {
                 let (values, line) = (self.values, self.line);
                 self.outcome
+                    .books
                     .set_aside(unusable.reason, || values.problem(unusable, line));
             }
         }
@@ -173,9 +175,13 @@ impl<'a> BatchReader<'a> {
         match self.values.report(station, time, wind, moving, self.line) {
             Some(report) => {
                 self.rows.push(&report);
-                self.outcome.tally.pass(1);
+                self.outcome.books.tally.pass(1);
             }
-            None => self.outcome.tally.set_aside(Reason::OutsideValidity, 1),
+            None => self
+                .outcome
+                .books
+                .tally
+                .set_aside(Reason::OutsideValidity, 1),
         }
     }
 
@@ -202,7 +208,7 @@ impl<'a> BatchReader<'a> {
         if let Found::Station(station) = found {
             return Some(station);
         }
-        self.outcome.no_station(found, name);
+        self.outcome.books.no_station(found, name);
         None
     }
 

@@ -62,7 +62,7 @@ impl Table {
 
     /// The rows, with the wanted columns alone, in the order of the table.
     pub(super) fn batches(self, wanted: &[usize]) -> io::Result<Batches> {
-        let source: Box<dyn Iterator<Item = io::Result<RecordBatch>>> = match self {
+        let source: Box<dyn Iterator<Item = io::Result<RecordBatch>> + Send> = match self {
             Self::Parquet(builder) => {
                 let columns =
                     ProjectionMask::roots(builder.parquet_schema(), wanted.iter().copied());
@@ -84,7 +84,7 @@ impl Table {
 
 /// The rows of a table.
 pub(super) struct Batches {
-    source: Box<dyn Iterator<Item = io::Result<RecordBatch>>>,
+    source: Box<dyn Iterator<Item = io::Result<RecordBatch>> + Send>,
     /// Rows of the file's own batch that are still to come.
     batch: Option<RecordBatch>,
 }
