@@ -1,4 +1,5 @@
 //! Timing: the median of several runs, stated as a ratio to a baseline timed in turn with it.
+#![allow(dead_code, reason = "each bench uses a part of it")]
 
 use std::time::Instant;
 
@@ -28,7 +29,7 @@ pub fn against<T, U>(
     (median(a), median(b), median(ratio))
 }
 
-fn median(mut values: Vec<f64>) -> f64 {
+pub fn median(mut values: Vec<f64>) -> f64 {
     values.sort_by(f64::total_cmp);
     values[values.len() / 2]
 }

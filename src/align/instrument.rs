@@ -40,31 +40,87 @@ impl Covariance {
 /// - **Reference**: `methods.md` 1.4 (full form) and 8; rounding: variance of a uniform distribution, common practice.
 #[must_use]
 pub fn instrument_covariance(wind: Wind, calm: bool, sensor: &SensorErrors) -> Covariance {
-    let calm_variance = 0.25 * sensor.calm_below * sensor.calm_below;
-    let squared = wind.u * wind.u + wind.v * wind.v;
-    if calm || squared <= 0.0 {
-        return Covariance {
-            uu: calm_variance,
-            uv: 0.0,
-            vv: calm_variance,
-        };
+    SensorVariances::of(sensor).covariance(wind, calm)
+}
+
+/// The errors of a sensor, squared once for all its reports.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub(super) struct SensorVariances {
+    /// Of the components in a calm, m²/s².
+    calm: f64,
+    /// Of the speed at low speed, m²/s².
+    speed: f64,
+    /// Of the speed as a share of its square.
+    speed_share: f64,
+    /// Of the speed by rounding, m²/s².
+    speed_step: f64,
+    /// Of the direction, rounding included, rad².
+    direction: f64,
+}
+
+impl SensorVariances {
+    pub(super) fn of(sensor: &SensorErrors) -> Self {
+        let speed_step = sensor.speed_step.unwrap_or(0.0);
+        let direction_step = sensor.direction_step.unwrap_or(0.0).to_radians();
+        let direction = sensor.direction_sd.to_radians();
+        Self {
+            calm: 0.25 * sensor.calm_below * sensor.calm_below,
+            speed: sensor.speed_sd * sensor.speed_sd,
+            speed_share: sensor.speed_sd_share * sensor.speed_sd_share,
+            speed_step: speed_step * speed_step / 12.0,
+            direction: direction * direction + direction_step * direction_step / 12.0,
+        }
     }
-    let speed_step = sensor.speed_step.unwrap_or(0.0);
-    let share = sensor.speed_sd_share * sensor.speed_sd_share * squared;
-    let along = (sensor.speed_sd * sensor.speed_sd).max(share) + speed_step * speed_step / 12.0;
-    let step = sensor.direction_step.unwrap_or(0.0).to_radians();
-    let direction = sensor.direction_sd.to_radians();
-    let across = squared * (direction * direction + step * step / 12.0);
-    // e eᵀ and n nᵀ from the components themselves: no square root, no angle.
-    let (ee_uu, ee_uv, ee_vv) = (
-        wind.u * wind.u / squared,
-        wind.u * wind.v / squared,
-        wind.v * wind.v / squared,
-    );
-    Covariance {
-        uu: along * ee_uu + across * ee_vv,
-        uv: (along - across) * ee_uv,
-        vv: along * ee_vv + across * ee_uu,
+
+    /// Covariances of a column of winds; calm is a wind of 0.
+    pub(super) fn fill(&self, u: &[f64], v: &[f64], out: [&mut [f64]; 3]) {
+        // With the widest vectors that the processor has.
+        pulp::Arch::new().dispatch(|| self.fill_columns(u, v, out));
+    }
+
+    #[expect(
+        clippy::inline_always,
+        reason = "it must become part of the caller's vector code"
+    )]
+    #[inline(always)]
+    fn fill_columns(&self, u: &[f64], v: &[f64], [uu, uv, vv]: [&mut [f64]; 3]) {
+        let out = uu.iter_mut().zip(uv).zip(vv);
+        for ((&u, &v), ((uu, uv), vv)) in u.iter().zip(v).zip(out) {
+            let covariance = self.covariance(Wind { u, v }, false);
+            *uu = covariance.uu;
+            *uv = covariance.uv;
+            *vv = covariance.vv;
+        }
+    }
+
+    #[expect(
+        clippy::inline_always,
+        reason = "it must become part of the caller's vector code"
+    )]
+    #[inline(always)]
+    pub(super) fn covariance(&self, wind: Wind, calm: bool) -> Covariance {
+        let squared = wind.u * wind.u + wind.v * wind.v;
+        let calm = calm || squared <= 0.0;
+        let share = self.speed_share * squared;
+        let larger = if share > self.speed {
+            share
+        } else {
+            self.speed
+        };
+        let along = larger + self.speed_step;
+        let across = squared * self.direction;
+        // e eᵀ and n nᵀ from the components themselves: no square root, no angle.
+        let (ee_uu, ee_uv, ee_vv) = (
+            wind.u * wind.u / squared,
+            wind.u * wind.v / squared,
+            wind.v * wind.v / squared,
+        );
+        let or_calm = |value: f64, in_calm: f64| if calm { in_calm } else { value };
+        Covariance {
+            uu: or_calm(along * ee_uu + across * ee_vv, self.calm),
+            uv: or_calm((along - across) * ee_uv, 0.0),
+            vv: or_calm(along * ee_vv + across * ee_uu, self.calm),
+        }
     }
 }
 

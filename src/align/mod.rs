@@ -6,15 +6,16 @@
 mod books;
 mod height;
 mod instrument;
+mod marks;
 mod time;
 pub mod vector;
 
 use std::ops::Range;
-use std::sync::atomic::AtomicBool;
-use std::sync::atomic::Ordering::Relaxed;
 
 use rayon::prelude::*;
 
+use self::instrument::SensorVariances;
+use self::marks::Marks;
 use crate::check::Flag;
 use crate::report::{Content, ReportTable};
 use crate::settings::{AlignMethod, Analysis, SensorErrors};
@@ -141,9 +142,45 @@ pub struct Aligner<'a> {
     sensors: &'a StationSensors,
     grid: TimeGrid,
     /// Reports that carry a wind and did not fail, for each station.
-    usable: Vec<Vec<u32>>,
+    usable: Vec<Usable>,
+    /// Error variances of each station's sensor.
+    variances: Vec<SensorVariances>,
     /// For each report whether a value came of it.
-    used: Vec<AtomicBool>,
+    used: Marks,
+}
+
+/// The usable reports of a station.
+enum Usable {
+    /// All of them.
+    All(Range<usize>),
+    /// These.
+    Some(Vec<u32>),
+}
+
+impl Usable {
+    fn len(&self) -> usize {
+        match self {
+            Self::All(range) => range.len(),
+            Self::Some(reports) => reports.len(),
+        }
+    }
+
+    /// Number `k` of them, below the length.
+    fn get(&self, k: usize) -> usize {
+        match self {
+            Self::All(range) => range.start + k,
+            Self::Some(reports) => reports[k] as usize,
+        }
+    }
+
+    /// How many of them, from the first on, stand before `time` (μs).
+    fn before(&self, table: &ReportTable, time: i64) -> usize {
+        let times = table.times();
+        match self {
+            Self::All(range) => times[range.clone()].partition_point(|t| t.micros() < time),
+            Self::Some(reports) => reports.partition_point(|&i| times[i as usize].micros() < time),
+        }
+    }
 }
 
 impl<'a> Aligner<'a> {
@@ -157,17 +194,22 @@ impl<'a> Aligner<'a> {
         multiples: Range<i64>,
     ) -> Self {
         // The usable reports of a station, and the analysis times that they serve.
-        let of_station = |station: usize| -> (Vec<u32>, Vec<(i64, i64)>) {
+        let of_station = |station: usize| -> (Usable, Vec<(i64, i64)>) {
             let has_height = sensors
                 .height_factors
                 .get(station)
                 .is_none_or(Option::is_some);
-            let usable: Vec<u32> = table
-                .of_station(station)
-                .filter(|&i| has_height && unusable(table, i, analysis.level).is_none())
-                .map(|i| u32::try_from(i).unwrap_or(u32::MAX))
-                .collect();
-            let times = usable.iter().map(|&i| table.times()[i as usize]);
+            let reports = table.of_station(station);
+            let usable =
+                if has_height && analysis.level.is_none() && table.all_usable(reports.clone()) {
+                    Usable::All(reports)
+                } else {
+                    let is_usable =
+                        |&i: &usize| has_height && unusable(table, i, analysis.level).is_none();
+                    let index = |i: usize| u32::try_from(i).unwrap_or(u32::MAX);
+                    Usable::Some(reports.filter(is_usable).map(index).collect())
+                };
+            let times = (0..usable.len()).map(|k| table.times()[usable.get(k)]);
             let runs = time::served_runs(times, analysis, &multiples);
             (usable, runs)
         };
@@ -180,7 +222,8 @@ impl<'a> Aligner<'a> {
             level: analysis.level,
             sensors,
             grid: TimeGrid::new(analysis, runs.concat()),
-            used: (0..table.len()).map(|_| AtomicBool::new(false)).collect(),
+            variances: sensors.errors.iter().map(SensorVariances::of).collect(),
+            used: Marks::new(table.len()),
             usable,
             table,
         }
@@ -218,64 +261,102 @@ impl<'a> Aligner<'a> {
 
     /// Marks reports of which a value came before.
     pub fn mark_used(&self, reports: impl Iterator<Item = usize>) {
-        for i in reports {
-            self.mark(i);
-        }
-    }
-
-    fn mark(&self, i: usize) {
-        self.used[i].store(true, Relaxed);
+        let mut pen = self.used.pen();
+        reports.for_each(|i| pen.mark(i));
     }
 
     /// True if a value came of report `i`.
     #[must_use]
     pub fn is_used(&self, i: usize) -> bool {
-        self.used[i].load(Relaxed)
+        self.used.is_marked(i)
     }
 
     /// Time and index of the usable report `k` of a station.
     fn report(&self, station: usize, k: usize) -> (i64, usize) {
-        let i = self.usable[station][k] as usize;
+        let i = self.usable[station].get(k);
         (self.table.times()[i].micros(), i)
     }
 
-    /// The first usable report of a station from `time` on, μs.
-    fn first_from(&self, station: usize, time: i64) -> usize {
-        let times = self.table.times();
-        self.usable[station].partition_point(|&i| times[i as usize].micros() < time)
-    }
-
     fn nearest(&self, station: usize, tolerance: i64, block: &mut WindBlock) {
-        let end = self.usable[station].len();
+        let usable = &self.usable[station];
+        let end = usable.len();
+        let mut pen = self.used.pen();
         let Some(first) = block.times.first() else {
             return;
         };
-        let mut c = self.first_from(station, first.micros() - tolerance);
+        let mut c = usable.before(self.table, first.micros() - tolerance);
         if c == end {
             return;
         }
-        for t in 0..block.times.len() {
-            let at = block.times[t].micros();
-            let distance = |k: usize| (self.report(station, k).0 - at).abs();
-            while c + 1 < end && distance(c + 1) < distance(c) {
+        let times = self.table.times();
+        let winds = self.table.winds();
+        let time_of = |k: usize| times[usable.get(k)].micros();
+        let cells = block.of_station(station);
+        let columns = block.times.iter().zip(&mut block.u[cells.clone()]);
+        let columns = columns.zip(&mut block.v[cells.clone()]);
+        let columns = columns.zip(&mut block.flag[cells.clone()]);
+        let columns = columns.zip(&mut block.age[cells.clone()]);
+        for ((((at, u), v), flag), age) in columns {
+            let at = at.micros();
+            let mut distance = (time_of(c) - at).abs();
+            while distance > 0 && c + 1 < end {
+                let next = (time_of(c + 1) - at).abs();
+                if next >= distance {
+                    break;
+                }
                 c += 1;
+                distance = next;
             }
-            if distance(c) <= tolerance {
-                let (time, i) = self.report(station, c);
-                let mut value = self.value(station, i);
-                value.age = seconds(time - at);
-                block.set(station, t, &value);
-                self.mark(i);
+            if distance <= tolerance {
+                let i = usable.get(c);
+                (*u, *v) = (winds[i].u, winds[i].v);
+                (*flag, *age) = (self.table.flag(i), seconds(distance));
+                pen.mark(i);
+            }
+        }
+        self.finish_column(station, block);
+    }
+
+    /// Covariances and height of the winds of a station, which stand in the block as reported.
+    fn finish_column(&self, station: usize, block: &mut WindBlock) {
+        let cells = block.of_station(station);
+        let (u, v) = (&mut block.u[cells.clone()], &mut block.v[cells.clone()]);
+        let covariances = [
+            &mut block.var_u[cells.clone()],
+            &mut block.cov_uv[cells.clone()],
+            &mut block.var_v[cells.clone()],
+        ];
+        self.variances[station].fill(u, v, covariances);
+        // Every station with usable reports has a factor.
+        let factor = self.sensors.height_factors[station].unwrap_or(1.0);
+        #[expect(clippy::float_cmp, reason = "a factor of 1 is stated, not computed")]
+        if factor != 1.0 {
+            u.iter_mut().chain(v).for_each(|value| *value *= factor);
+            for column in [&mut block.var_u, &mut block.cov_uv, &mut block.var_v] {
+                let column = &mut column[cells.clone()];
+                for value in column {
+                    *value *= factor * factor;
+                }
+            }
+        }
+        if block.flag[cells.clone()].contains(&Flag::Missing) {
+            for cell in cells {
+                if block.flag[cell] == Flag::Missing {
+                    block.var_u[cell] = 0.0;
+                    block.cov_uv[cell] = 0.0;
+                    block.var_v[cell] = 0.0;
+                }
             }
         }
     }
 
     fn linear(&self, station: usize, tolerance: i64, block: &mut WindBlock) {
         let end = self.usable[station].len();
+        let mut pen = self.used.pen();
         let Some(first) = block.times.first() else {
             return;
         };
-        let mut c = self.first_from(station, first.micros() - tolerance);
+        let mut c = self.usable[station].before(self.table, first.micros() - tolerance);
         for t in 0..block.times.len() {
             let at = block.times[t].micros();
             while c + 1 < end && self.report(station, c + 1).0 <= at {
@@ -296,19 +377,20 @@ impl<'a> Aligner<'a> {
                 let share = (at - before) as f64 / (after - before) as f64;
                 value = between(&value, &self.value(station, k), share);
                 value.age = seconds((at - before).max(after - at));
-                self.mark(k);
+                pen.mark(k);
             }
             block.set(station, t, &value);
-            self.mark(i);
+            pen.mark(i);
         }
     }
 
     fn vector_mean(&self, station: usize, window: i64, least: usize, block: &mut WindBlock) {
         let end = self.usable[station].len();
+        let mut pen = self.used.pen();
         let Some(first) = block.times.first() else {
             return;
         };
-        let mut low = self.first_from(station, first.micros() - window);
+        let mut low = self.usable[station].before(self.table, first.micros() - window);
         for t in 0..block.times.len() {
             let at = block.times[t].micros();
             while low < end && self.report(station, low).0 <= at - window {
@@ -331,7 +413,7 @@ impl<'a> Aligner<'a> {
                 covariance.add(value.covariance);
                 flag = flag.worst(value.flag);
                 ages += seconds(at - time);
-                self.mark(i);
+                pen.mark(i);
             }
             let count = (high - low) as f64;
             if let Some(wind) = mean.wind() {
@@ -351,29 +433,18 @@ impl<'a> Aligner<'a> {
         }
     }
 
+    #[inline]
     fn value(&self, station: usize, i: usize) -> AlignedWind {
-        // Every index in `usable` has a wind, and its station a factor.
-        let wind = self.table.wind(i).unwrap_or_default();
-        let factor = self
-            .sensors
-            .height_factors
-            .get(station)
-            .copied()
-            .flatten()
-            .unwrap_or(1.0);
-        let calm = self.table.content(i) == Content::Calm;
-        let errors = self
-            .sensors
-            .errors
-            .get(station)
-            .copied()
-            .unwrap_or_default();
+        // Every usable report has a wind, and its station a factor and variances.
+        let wind = self.table.winds()[i];
+        let factor = self.sensors.height_factors[station].unwrap_or(1.0);
+        let covariance = self.variances[station].covariance(wind, false);
         AlignedWind {
             wind: Wind {
                 u: wind.u * factor,
                 v: wind.v * factor,
             },
-            covariance: instrument_covariance(wind, calm, &errors).scaled(factor * factor),
+            covariance: covariance.scaled(factor * factor),
             flag: self.table.flag(i),
             age: 0.0,
         }

@@ -69,8 +69,10 @@ impl StationSums {
                 Flag::Fail => counts.failed += 1,
                 _ => {}
             }
-            if let Some(wind) = table.wind(i).filter(|_| table.flag(i) != Flag::Fail) {
-                self.mean.add(wind, table.speed(i).unwrap_or(0.0));
+            let is_wind = matches!(table.content(i), Content::Wind | Content::Calm);
+            if is_wind && table.flag(i) != Flag::Fail {
+                self.mean
+                    .add(table.winds()[i], table.speed(i).unwrap_or(0.0));
             }
         }
         let mut of_interest = reports.clone();

@@ -116,6 +116,9 @@ pub struct CheckArgs {
     /// Print JSON
     #[arg(long)]
     pub json: bool,
+    /// Keep the reports, once read, in this file, and take them from it as long as neither they nor the settings change
+    #[arg(long, value_name = "FILE")]
+    pub cache: Option<PathBuf>,
     /// Memory that reports may take which are not in the order of time, such as 500MiB; the rest is sorted on disk
     /// [default: 1GiB]
     #[arg(long, value_name = "SIZE", value_parser = units::parse_memory)]
@@ -184,9 +187,15 @@ pub struct EstimateArgs {
     /// Write no series, only the summary of each polygon
     #[arg(long)]
     pub summary_only: bool,
+    /// Take all reports as they are, without checks
+    #[arg(long)]
+    pub no_screen: bool,
     /// Threads; the results do not depend on it [default: all processors]
     #[arg(long, value_name = "N")]
     pub threads: Option<usize>,
+    /// Keep the reports, once read, in this file, and take them from it as long as neither they nor the settings change
+    #[arg(long, value_name = "FILE")]
+    pub cache: Option<PathBuf>,
     /// Memory that reports may take which are not in the order of time, such as 500MiB; the rest is sorted on disk
     /// [default: 1GiB]
     #[arg(long, value_name = "SIZE", value_parser = units::parse_memory)]
@@ -221,6 +230,7 @@ impl From<&CheckArgs> for Overrides {
         Self {
             reports: args.reports.clone(),
             memory: args.memory,
+            cache: args.cache.clone(),
             ..Self::default()
         }
     }
@@ -250,6 +260,8 @@ impl From<&EstimateArgs> for Overrides {
             smallest_angle: args.limits.smallest_angle,
             longest_edge: args.limits.longest_edge,
             memory: args.memory,
+            cache: args.cache.clone(),
+            no_screen: args.no_screen,
         }
     }
 }

@@ -1,6 +1,6 @@
 //! Strongest values of a run.
 
-use super::EstimateBlock;
+use super::{EstimateBlock, lanes};
 use crate::check::Flag;
 use crate::time::Time;
 
@@ -17,7 +17,7 @@ pub struct Peak {
     pub error: f64,
 }
 
-/// Strongest values among those that passed all checks, and how many values there are.
+/// Strongest values among those that no check found fault with, and how many values there are.
 #[derive(Debug, Clone, Default, PartialEq)]
 pub struct Extremes {
     /// Most negative divergence.
@@ -36,36 +36,48 @@ impl Extremes {
     /// Those of a block; `planetary` holds the planetary vorticity of each polygon.
     #[must_use]
     pub fn of(block: &EstimateBlock, planetary: &[f64]) -> Self {
+        // With the widest vectors that the processor has.
+        pulp::Arch::new().dispatch(|| Self::of_columns(block, planetary))
+    }
+
+    #[expect(
+        clippy::inline_always,
+        reason = "it must become part of the caller's vector code"
+    )]
+    #[inline(always)]
+    fn of_columns(block: &EstimateBlock, planetary: &[f64]) -> Self {
         let n = block.times.len();
         let mut extremes = Self {
             values: vec![0; planetary.len()],
             ..Self::default()
         };
         for (polygon, &f) in planetary.iter().enumerate() {
-            for t in 0..n {
-                let cell = polygon * n + t;
-                if block.flag[cell] == Flag::Missing {
-                    continue;
-                }
-                extremes.values[polygon] += 1;
-                if block.flag[cell] != Flag::Pass {
-                    continue;
-                }
-                let peak = |value: &[f64], error: &[f64]| Peak {
+            let cells = polygon * n..(polygon + 1) * n;
+            let flags = &block.flag[cells.clone()];
+            let there = flags.iter().filter(|&&flag| flag != Flag::Missing);
+            extremes.values[polygon] += there.count() as u64;
+            let faultless = flags.iter().all(|&flag| flag <= Flag::Pass);
+            let peak = |values: &[f64], errors: &[f64], sign: f64| {
+                let t = if faultless {
+                    lanes::strongest(&values[cells.clone()], sign)?.1
+                } else {
+                    strongest(&values[cells.clone()], flags, sign)?
+                };
+                Some(Peak {
                     polygon,
                     time: block.times[t],
-                    value: value[cell],
-                    error: error[cell],
-                };
-                let d = peak(&block.divergence, &block.divergence_se);
-                raise(&mut extremes.convergence, d, -1.0);
-                raise(&mut extremes.divergence, d, 1.0);
-                let z = peak(&block.vorticity, &block.vorticity_se);
-                // On the equator nothing is cyclonic.
-                if f.abs() > 0.0 {
-                    raise(&mut extremes.cyclonic, z, f.signum());
-                    raise(&mut extremes.anticyclonic, z, -f.signum());
-                }
+                    value: values[cells.start + t],
+                    error: errors[cells.start + t],
+                })
+            };
+            let d = |sign| peak(&block.divergence, &block.divergence_se, sign);
+            raise(&mut extremes.convergence, d(-1.0), -1.0);
+            raise(&mut extremes.divergence, d(1.0), 1.0);
+            // On the equator nothing is cyclonic.
+            if f.abs() > 0.0 {
+                let z = |sign| peak(&block.vorticity, &block.vorticity_se, sign);
+                raise(&mut extremes.cyclonic, z(f.signum()), f.signum());
+                raise(&mut extremes.anticyclonic, z(-f.signum()), -f.signum());
             }
         }
         extremes
@@ -79,9 +91,7 @@ impl Extremes {
             (&mut self.cyclonic, later.cyclonic),
             (&mut self.anticyclonic, later.anticyclonic),
         ] {
-            if let Some(peak) = peak {
-                raise(slot, peak, peak.value.signum());
-            }
+            raise(slot, peak, peak.map_or(1.0, |peak| peak.value.signum()));
         }
         if self.values.is_empty() {
             self.values.clone_from(&later.values);
@@ -93,11 +103,25 @@ impl Extremes {
     }
 }
 
+/// The first of the strongest values in the sense of `sign`, among those that no check found fault with.
+fn strongest(values: &[f64], flags: &[Flag], sign: f64) -> Option<usize> {
+    let mut best = (0.0, None);
+    for (t, (&value, &flag)) in values.iter().zip(flags).enumerate() {
+        let strength = value * sign;
+        if strength > best.0 && flag <= Flag::Pass {
+            best = (strength, Some(t));
+        }
+    }
+    best.1
+}
+
 /// Takes `peak` if it is stronger in the sense of `sign`; a value of the other sign is no peak.
-fn raise(slot: &mut Option<Peak>, peak: Peak, sign: f64) {
+fn raise(slot: &mut Option<Peak>, peak: Option<Peak>, sign: f64) {
+    let Some(peak) = peak else {
+        return;
+    };
     let strength = peak.value * sign;
-    let stronger = strength > 0.0 && slot.is_none_or(|old| strength > old.value.abs());
-    if stronger {
+    if strength > 0.0 && slot.is_none_or(|old| strength > old.value.abs()) {
         *slot = Some(peak);
     }
 }

@@ -4,6 +4,7 @@
 
 mod earth;
 mod extremes;
+mod lanes;
 mod statistics;
 
 use crate::align::WindBlock;
@@ -44,6 +45,16 @@ pub struct EstimateBlock {
 /// - **Missing**: a polygon without one of its stations has no value at that time.
 #[must_use]
 pub fn estimate(polygons: &[StationPolygon], winds: &WindBlock) -> EstimateBlock {
+    // With the widest vectors that the processor has; every step is the same in each, so the bytes are too.
+    pulp::Arch::new().dispatch(|| estimate_columns(polygons, winds))
+}
+
+#[expect(
+    clippy::inline_always,
+    reason = "it must become part of the caller's vector code"
+)]
+#[inline(always)]
+fn estimate_columns(polygons: &[StationPolygon], winds: &WindBlock) -> EstimateBlock {
     let n = winds.times.len();
     let cells = polygons.len() * n;
     let mut out = EstimateBlock {
@@ -94,6 +105,11 @@ pub fn estimate(polygons: &[StationPolygon], winds: &WindBlock) -> EstimateBlock
 }
 
 /// Adds the linear forms; the loop over times has no branch and vectorises.
+#[expect(
+    clippy::inline_always,
+    reason = "it must become part of the caller's vector code"
+)]
+#[inline(always)]
 fn add_values(
     row: &CoefficientRow,
     winds: &WindBlock,
@@ -116,6 +132,11 @@ fn add_values(
 }
 
 /// Adds the quadratic forms wᵀ C w.
+#[expect(
+    clippy::inline_always,
+    reason = "it must become part of the caller's vector code"
+)]
+#[inline(always)]
 fn add_variances(
     row: &CoefficientRow,
     winds: &WindBlock,

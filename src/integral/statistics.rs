@@ -1,6 +1,6 @@
 //! What a polygon's values come to over a run.
 
-use super::EstimateBlock;
+use super::{EstimateBlock, lanes};
 use crate::check::Flag;
 use crate::time::Time;
 
@@ -27,19 +27,34 @@ pub struct Statistics {
 const SIGNIFICANT: f64 = 1.96;
 
 impl Statistics {
-    fn add(&mut self, value: f64, error: f64, time: Time) {
-        self.count += 1;
-        // Welford 1962, Technometrics 4, 419: no cancellation.
-        let before = value - self.mean;
-        self.mean += before / self.count as f64;
-        self.squares += before * (value - self.mean);
-        self.errors += error * error;
-        self.significant += u64::from(value.abs() > SIGNIFICANT * error);
-        if self.smallest.is_none_or(|(smallest, _)| value < smallest) {
-            self.smallest = Some((value, time));
+    /// Those of values with their errors and times, all of one length.
+    #[expect(
+        clippy::inline_always,
+        reason = "it must become part of the caller's vector code"
+    )]
+    #[inline(always)]
+    #[must_use]
+    pub fn of(values: &[f64], errors: &[f64], times: &[Time]) -> Self {
+        let count = values.len() as f64;
+        let (Some((least, first)), Some((most, last))) = (
+            lanes::strongest(values, -1.0),
+            lanes::strongest(values, 1.0),
+        ) else {
+            return Self::default();
+        };
+        let mean = lanes::sum(values, |value| value) / count;
+        let mut significant = 0;
+        for (value, error) in values.iter().zip(errors) {
+            significant += u64::from(value.abs() > SIGNIFICANT * error);
         }
-        if self.largest.is_none_or(|(largest, _)| value > largest) {
-            self.largest = Some((value, time));
+        Self {
+            count: values.len() as u64,
+            mean,
+            squares: lanes::sum(values, |value| (value - mean) * (value - mean)),
+            errors: lanes::sum(errors, |error| error * error),
+            significant,
+            smallest: times.get(first).map(|&time| (-least, time)),
+            largest: times.get(last).map(|&time| (most, time)),
         }
     }
 
@@ -80,6 +95,13 @@ impl Statistics {
     }
 }
 
+/// Those of a column that are not flagged worse than suspect.
+fn good<T: Copy>(column: &[T], flags: &[Flag]) -> Vec<T> {
+    let pairs = column.iter().zip(flags);
+    let good = pairs.filter(|&(_, &flag)| flag < Flag::Fail);
+    good.map(|(&value, _)| value).collect()
+}
+
 /// Statistics of all polygons: vorticity and divergence of the values that passed or were not flagged worse than
 /// suspect.
 #[derive(Debug, Clone, Default, PartialEq)]
@@ -94,25 +116,41 @@ impl RunStatistics {
     /// Those of a block.
     #[must_use]
     pub fn of(block: &EstimateBlock, polygons: usize) -> Self {
+        // With the widest vectors that the processor has.
+        pulp::Arch::new().dispatch(|| Self::of_columns(block, polygons))
+    }
+
+    #[expect(
+        clippy::inline_always,
+        reason = "it must become part of the caller's vector code"
+    )]
+    #[inline(always)]
+    fn of_columns(block: &EstimateBlock, polygons: usize) -> Self {
         let n = block.times.len();
-        let of = |values: &[f64], errors: &[f64]| -> Vec<Statistics> {
-            (0..polygons)
-                .map(|polygon| {
-                    let mut statistics = Statistics::default();
-                    for (t, &time) in block.times.iter().enumerate() {
-                        let cell = polygon * n + t;
-                        if block.flag[cell] < Flag::Fail {
-                            statistics.add(values[cell], errors[cell], time);
-                        }
-                    }
-                    statistics
-                })
-                .collect()
+        let mut out = Self {
+            vorticity: Vec::with_capacity(polygons),
+            divergence: Vec::with_capacity(polygons),
         };
-        Self {
-            vorticity: of(&block.vorticity, &block.vorticity_se),
-            divergence: of(&block.divergence, &block.divergence_se),
+        for polygon in 0..polygons {
+            let cells = polygon * n..(polygon + 1) * n;
+            let flags = &block.flag[cells.clone()];
+            let of = |values: &[f64], errors: &[f64]| {
+                let (values, errors) = (&values[cells.clone()], &errors[cells.clone()]);
+                if flags.iter().all(|&flag| flag < Flag::Fail) {
+                    return Statistics::of(values, errors, &block.times);
+                }
+                Statistics::of(
+                    &good(values, flags),
+                    &good(errors, flags),
+                    &good(&block.times, flags),
+                )
+            };
+            out.vorticity
+                .push(of(&block.vorticity, &block.vorticity_se));
+            out.divergence
+                .push(of(&block.divergence, &block.divergence_se));
         }
+        out
     }
 
     /// Takes in those of a later block.
@@ -137,16 +175,14 @@ mod tests {
     #[test]
     fn merged_parts_equal_the_whole() {
         let values = [3.0, 1.0, 4.0, 1.0, 5.0, 9.0, 2.0, 6.0].map(|x| x * 1e-5);
-        let mut whole = Statistics::default();
+        let errors = [2e-5; 8];
+        let times: Vec<Time> = (0..8).map(Time::from_micros).collect();
+        let whole = Statistics::of(&values, &errors, &times);
         let mut merged = Statistics::default();
-        for (k, chunk) in values.chunks(3).enumerate() {
-            let mut part = Statistics::default();
-            for (i, &value) in chunk.iter().enumerate() {
-                let time = Time::from_micros(i64::try_from(3 * k + i).unwrap());
-                part.add(value, 2e-5, time);
-                whole.add(value, 2e-5, time);
-            }
-            merged.merge(&part);
+        for start in [0, 3, 6] {
+            let part = start..8.min(start + 3);
+            let later = Statistics::of(&values[part.clone()], &errors[part.clone()], &times[part]);
+            merged.merge(&later);
         }
         assert!((merged.mean - 3.875e-5).abs() < 1e-18);
         let deviation = merged.standard_deviation().unwrap();

@@ -8,6 +8,8 @@ mod parquet;
 mod reading;
 mod series;
 mod summary;
+#[cfg(feature = "parquet")]
+mod template;
 
 pub use csv::{PolygonRows, mesh_csv, stations_csv, summary_csv};
 pub use file::OutputSet;

@@ -10,38 +10,41 @@ use arrow_array::{
     ArrayRef, DictionaryArray, Float32Array, Float64Array, Int32Array, StringArray,
     TimestampMicrosecondArray, UInt8Array,
 };
+use arrow_buffer::NullBuffer;
 use arrow_schema::{DataType, Field, Schema, SchemaRef, TimeUnit};
 use parquet::arrow::ArrowWriter;
 use parquet::arrow::arrow_writer::{ArrowColumnChunk, ArrowRowGroupWriterFactory, compute_leaves};
-use parquet::basic::{Compression, ZstdLevel};
+use parquet::basic::{Compression, Encoding, ZstdLevel};
 use parquet::errors::Result;
 use parquet::file::metadata::KeyValue;
-use parquet::file::properties::WriterProperties;
+use parquet::file::properties::{EnabledStatistics, WriterProperties};
 use parquet::file::writer::SerializedFileWriter;
 
-use super::csv::station_list;
+use super::template::{FixedColumns, Template};
 use crate::check::Flag;
 use crate::integral::{EstimateBlock, Sense};
 use crate::pipeline::Setup;
 
-/// Columns that hold new numbers in every row: a dictionary of them would only cost time.
-const NUMBERS: [&str; 5] = [
+/// Columns of numbers that differ from row to row: a dictionary of them would only cost time, their bytes side by side
+/// compress best.
+const NUMBERS: [&str; 6] = [
     "vorticity",
     "vorticity_se",
     "divergence",
     "divergence_se",
     "absolute_vorticity",
+    "age_s",
 ];
+/// Columns of integers that change little from row to row.
+const STEPS: [&str; 2] = ["time", "flag"];
 
 /// Encodes blocks of estimates as row groups.
 pub struct ParquetRows {
     schema: SchemaRef,
     factory: ArrowRowGroupWriterFactory,
-    polygons: ArrayRef,
-    stations: ArrayRef,
     senses: ArrayRef,
-    area: Vec<f64>,
     planetary: Vec<f64>,
+    fixed: FixedColumns,
 }
 
 /// The file that the row groups become.
@@ -49,18 +52,26 @@ pub struct ParquetFile {
     writer: SerializedFileWriter<Vec<u8>>,
 }
 
-/// An encoded block.
-pub struct RowGroup(Vec<ArrowColumnChunk>);
+/// An encoded block: its columns in the order of the schema.
+pub struct RowGroup(Vec<EncodedColumn>);
+
+enum EncodedColumn {
+    Own(Box<ArrowColumnChunk>),
+    /// Column `k` of a template.
+    Fixed(Arc<Template>, usize),
+}
 
 /// Starts a file for the series of a network.
 ///
 /// # Errors
 /// The library's refusal.
 pub fn parquet_series(setup: &Setup) -> Result<(ParquetRows, ParquetFile)> {
-    let polygons = &setup.built.polygons;
     let schema = Arc::new(schema());
     let mut properties = WriterProperties::builder()
         .set_compression(Compression::ZSTD(ZstdLevel::try_new(1)?))
+        .set_statistics_enabled(EnabledStatistics::Chunk)
+        // The copied columns have none, and all columns must be alike.
+        .set_offset_index_disabled(true)
         .set_key_value_metadata(Some(vec![
             KeyValue::new(
                 "program".into(),
@@ -70,25 +81,27 @@ pub fn parquet_series(setup: &Setup) -> Result<(ParquetRows, ParquetFile)> {
             KeyValue::new("caution".into(), super::CAUTION.to_string()),
             KeyValue::new("error_bars".into(), super::ERROR_BARS.to_string()),
         ]));
-    for name in NUMBERS {
-        properties = properties.set_column_dictionary_enabled(name.into(), false);
+    for (names, encoding) in [
+        (NUMBERS.as_slice(), Encoding::BYTE_STREAM_SPLIT),
+        (STEPS.as_slice(), Encoding::DELTA_BINARY_PACKED),
+    ] {
+        for &name in names {
+            properties = properties
+                .set_column_dictionary_enabled(name.into(), false)
+                .set_column_encoding(name.into(), encoding);
+        }
     }
-    let writer = ArrowWriter::try_new(Vec::new(), Arc::clone(&schema), Some(properties.build()))?;
+    let properties = properties.build();
+    let writer = ArrowWriter::try_new(Vec::new(), Arc::clone(&schema), Some(properties.clone()))?;
     let (writer, factory) = writer.into_serialized_writer()?;
     let rows = ParquetRows {
+        fixed: FixedColumns::new(setup, &schema, properties),
         schema,
         factory,
-        polygons: Arc::new(StringArray::from_iter_values(
-            polygons.iter().map(|p| &p.id),
-        )),
-        stations: Arc::new(StringArray::from_iter_values(
-            polygons.iter().map(|p| station_list(p, &setup.network)),
-        )),
         senses: Arc::new(StringArray::from(vec![
             Sense::Cyclonic.name(),
             Sense::Anticyclonic.name(),
         ])),
-        area: polygons.iter().map(|p| p.shape.area / 1e6).collect(),
         planetary: setup.planetary.clone(),
     };
     Ok((rows, ParquetFile { writer }))
@@ -131,70 +144,92 @@ impl ParquetRows {
     /// # Errors
     /// The library's refusal.
     pub fn encode(&self, block: &EstimateBlock) -> Result<RowGroup> {
+        let template = self.fixed.of_times(block.times.len())?;
         let columns = self.columns(block)?;
-        let mut writers = self.factory.create_column_writers(0)?.into_iter();
-        let mut chunks = Vec::with_capacity(columns.len());
-        for (field, column) in self.schema.fields().iter().zip(&columns) {
+        let writers = self.factory.create_column_writers(0)?;
+        let mut encoded = Vec::with_capacity(columns.len());
+        // Every column of the schema is one leaf.
+        for (k, ((field, column), mut writer)) in self
+            .schema
+            .fields()
+            .iter()
+            .zip(&columns)
+            .zip(writers)
+            .enumerate()
+        {
+            let Some(column) = column else {
+                encoded.push(EncodedColumn::Fixed(Arc::clone(&template), k));
+                continue;
+            };
             for leaf in compute_leaves(field, column)? {
-                // There is a writer for each leaf of the schema.
-                if let Some(mut writer) = writers.next() {
-                    writer.write(&leaf)?;
-                    chunks.push(writer.close()?);
-                }
+                writer.write(&leaf)?;
             }
+            encoded.push(EncodedColumn::Own(Box::new(writer.close()?)));
         }
-        Ok(RowGroup(chunks))
+        Ok(RowGroup(encoded))
     }
 
-    fn columns(&self, block: &EstimateBlock) -> Result<Vec<ArrayRef>> {
-        let (n, polygons) = (block.times.len(), self.area.len());
-        let cells = || (0..n).flat_map(move |t| (0..polygons).map(move |p| (t, p, p * n + t)));
-        let there = |cell: usize| block.flag[cell] != Flag::Missing;
-        let values = |column: &[f64]| -> ArrayRef {
-            let values = cells().map(|(_, _, cell)| there(cell).then(|| column[cell]));
-            Arc::new(values.collect::<Float64Array>())
+    /// The columns of a block; `None` for those that are the same in every block.
+    fn columns(&self, block: &EstimateBlock) -> Result<Vec<Option<ArrayRef>>> {
+        let (n, polygons) = (block.times.len(), self.planetary.len());
+        let there: Option<NullBuffer> = block
+            .flag
+            .contains(&Flag::Missing)
+            .then(|| by_time(&block.flag, n, |&flag, _| flag != Flag::Missing).into());
+        let values = |column: &[f64]| -> Option<ArrayRef> {
+            let values = by_time(column, n, |&value, _| value);
+            Some(Arc::new(Float64Array::new(values.into(), there.clone())))
         };
-        let fixed = |column: &[f64]| -> ArrayRef {
-            Arc::new(Float64Array::from_iter_values(
-                cells().map(|(_, p, _)| column[p]),
-            ))
-        };
-        let keys: Int32Array = cells().map(|(_, p, _)| i32::try_from(p).ok()).collect();
-        let named = |keys: Int32Array, names: &ArrayRef| -> Result<ArrayRef> {
-            Ok(Arc::new(DictionaryArray::<Int32Type>::try_new(
-                keys,
-                Arc::clone(names),
-            )?))
-        };
-        let times = cells().map(|(t, _, _)| block.times[t].micros());
-        let absolute = cells()
-            .map(|(_, p, cell)| there(cell).then(|| block.vorticity[cell] + self.planetary[p]));
-        let sense: Int32Array = cells()
-            .map(|(_, p, cell)| {
-                let sense = Sense::of(block.vorticity[cell], self.planetary[p]);
-                sense
-                    .filter(|_| there(cell))
-                    .map(|s| i32::from(s == Sense::Anticyclonic))
+        let absolute = by_time(&block.vorticity, n, |&vorticity, polygon| {
+            vorticity + self.planetary[polygon]
+        });
+        let sense = by_time(&block.vorticity, n, |&vorticity, polygon| {
+            Sense::of(vorticity, self.planetary[polygon])
+        });
+        let sense: Int32Array = sense
+            .into_iter()
+            .enumerate()
+            .map(|(row, sense)| {
+                let is_there = there.as_ref().is_none_or(|there| there.is_valid(row));
+                let sense = sense.filter(|_| is_there);
+                sense.map(|s| i32::from(s == Sense::Anticyclonic))
             })
             .collect();
-        let age = cells().map(|(_, _, cell)| there(cell).then(|| block.age[cell]));
-        let flag = cells().map(|(_, _, cell)| block.flag[cell].value());
+        let times = block.times.iter().map(|time| time.micros());
+        let times = times.flat_map(|time| std::iter::repeat_n(time, polygons));
+        let age = by_time(&block.age, n, |&age, _| age);
+        let flag = by_time(&block.flag, n, |flag, _| flag.value());
         Ok(vec![
-            Arc::new(TimestampMicrosecondArray::from_iter_values(times).with_timezone("UTC")),
-            named(keys.clone(), &self.polygons)?,
-            named(keys, &self.stations)?,
-            fixed(&self.area),
+            Some(Arc::new(
+                TimestampMicrosecondArray::from_iter_values(times).with_timezone("UTC"),
+            )),
+            None,
+            None,
+            None,
             values(&block.vorticity),
             values(&block.vorticity_se),
             values(&block.divergence),
             values(&block.divergence_se),
-            fixed(&self.planetary),
-            Arc::new(absolute.collect::<Float64Array>()),
-            Arc::new(UInt8Array::from_iter_values(flag)),
-            named(sense, &self.senses)?,
-            Arc::new(age.collect::<Float32Array>()),
+            None,
+            Some(Arc::new(Float64Array::new(absolute.into(), there.clone()))),
+            Some(Arc::new(UInt8Array::from(flag))),
+            Some(Arc::new(DictionaryArray::<Int32Type>::try_new(
+                sense,
+                Arc::clone(&self.senses),
+            )?)),
+            Some(Arc::new(Float32Array::new(age.into(), there.clone()))),
         ])
     }
+}
+
+/// A column of a block, which stands by polygon, by time: what `of` makes of each value and the number of its polygon.
+fn by_time<T, U>(column: &[T], times: usize, of: impl Fn(&T, usize) -> U) -> Vec<U> {
+    let polygons = column.len() / times.max(1);
+    let mut out = Vec::with_capacity(column.len());
+    for t in 0..times {
+        out.extend((0..polygons).map(|polygon| of(&column[polygon * times + t], polygon)));
+    }
+    out
 }
 
 impl ParquetFile {
@@ -204,8 +239,11 @@ impl ParquetFile {
     /// The library's refusal.
     pub fn append(&mut self, group: RowGroup) -> Result<Vec<u8>> {
         let mut row_group = self.writer.next_row_group()?;
-        for chunk in group.0 {
-            chunk.append_to_row_group(&mut row_group)?;
+        for column in group.0 {
+            match column {
+                EncodedColumn::Own(chunk) => chunk.append_to_row_group(&mut row_group)?,
+                EncodedColumn::Fixed(template, k) => template.append(k, &mut row_group)?,
+            }
         }
         row_group.close()?;
         Ok(std::mem::take(self.writer.inner_mut()))

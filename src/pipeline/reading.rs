@@ -36,7 +36,7 @@ impl Reading {
     pub fn of(settings: &Settings, network: &Network) -> Result<Self, Error> {
         let files = ReportFiles::new(&settings.reports, network);
         let all = |order: InputOrder| -> Result<Self, Error> {
-            let mut windows = Windows::new(&files, settings, order);
+            let mut windows = Windows::new(&files, settings, order)?;
             let mut window = None;
             loop {
                 match windows.after(window.as_ref())? {

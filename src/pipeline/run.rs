@@ -51,7 +51,7 @@ impl Outcome {
 /// `write` takes; blocks are encoded in parallel and written in the order of time, so the output depends neither on the
 /// number of threads nor on how the reports were read. `progress` hears how many rows have been read.
 ///
-/// While one window of time is estimated, the next one is read.
+/// While one window of time is estimated, the next one is read and the results of the one before are written.
 ///
 /// # Errors
 /// No usable report; reports on levels without a level asked for; reports that are not in the order that they should
@@ -61,23 +61,32 @@ pub fn run<T: Send>(
     setup: &Setup,
     order: InputOrder,
     encode: impl Fn(&EstimateBlock) -> T + Sync,
-    mut write: impl FnMut(T) -> Result<(), Error>,
+    mut write: impl FnMut(T) -> Result<(), Error> + Send,
     mut progress: impl FnMut(u64),
 ) -> Result<Outcome, Error> {
     let files = ReportFiles::new(&setup.settings.reports, &setup.network);
-    let mut windows = Windows::new(&files, &setup.settings, order);
+    let mut windows = Windows::new(&files, &setup.settings, order)?;
     let mut estimation = Estimation::new(setup);
     let mut current = windows.after(None)?;
+    let mut encoded = Vec::new();
     while let Some(window) = current {
         levels_agree(&window.table, &setup.settings)?;
-        let (next, encoded) = rayon::join(
+        let before = std::mem::take(&mut encoded);
+        let (next, (results, written)) = rayon::join(
             || windows.after(Some(&window)),
-            || estimation.window(&window, &encode),
+            || {
+                rayon::join(
+                    || estimation.window(&window, &encode),
+                    || before.into_iter().try_for_each(&mut write),
+                )
+            },
         );
-        encoded.into_iter().try_for_each(&mut write)?;
+        written?;
+        encoded = results;
         current = next?;
         progress(windows.rows());
     }
+    encoded.into_iter().try_for_each(&mut write)?;
     let mut reading = windows.reading();
     if !estimation.any_moving && setup.settings.analysis.level.is_some() {
         return Err(Error::Reports(

@@ -16,7 +16,7 @@ use crate::tally::Tally;
 use crate::time::{Time, micros_of};
 
 /// Blocks of analysis times in a window: enough for several threads, few enough to stay small.
-const WINDOW_BLOCKS: usize = 8;
+const WINDOW_BLOCKS: usize = 4;
 
 /// The reports of a run of analysis times, with those before and after it that matter to these times.
 ///
@@ -54,12 +54,19 @@ pub struct Windows<'f> {
 
 impl<'f> Windows<'f> {
     /// Windows of the reports of these files.
-    #[must_use]
-    pub fn new(files: &'f ReportFiles<'f>, settings: &'f Settings, order: InputOrder) -> Self {
+    ///
+    /// # Errors
+    /// The cache cannot be written.
+    pub fn new(
+        files: &'f ReportFiles<'f>,
+        settings: &'f Settings,
+        order: InputOrder,
+    ) -> Result<Self, Error> {
         let stations = files.network().len();
         let times = WINDOW_BLOCKS * block_times(stations);
-        Self {
-            reports: OrderedReports::new(files, order, settings.memory),
+        let cache = settings.cache.as_deref();
+        Ok(Self {
+            reports: OrderedReports::new(files, order, settings.memory, cache)?,
             files,
             settings,
             order,
@@ -70,7 +77,7 @@ impl<'f> Windows<'f> {
             repeats: Tally::default(),
             conflicts: Vec::new(),
             rows: 0,
-        }
+        })
     }
 
     /// The window after `before`; `None` after the last.
@@ -127,7 +134,9 @@ impl<'f> Windows<'f> {
         self.repeats += &repeats;
         self.conflicts.extend_from_slice(table.conflicts());
         self.conflicts.truncate(CONFLICTS_KEPT);
-        check_range(&mut table, &self.settings.range);
+        if self.settings.screen {
+            check_range(&mut table, &self.settings.range);
+        }
         self.sums
             .par_iter_mut()
             .enumerate()

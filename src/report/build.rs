@@ -8,6 +8,7 @@ use super::table::{Conflict, ReportTable, TableColumns};
 use crate::check::Flag;
 use crate::tally::{Reason, Tally};
 use crate::time::Time;
+use crate::units::{FromDirection, Wind};
 
 /// Conflicts that are kept with their places; the others are only counted.
 pub const CONFLICTS_KEPT: usize = 100;
@@ -72,6 +73,7 @@ fn straight(
         time: vec![Time::default(); total],
         speed: vec![0.0; total],
         direction: vec![0.0; total],
+        wind: vec![Wind::default(); total],
         kind: vec![0; total],
         file: vec![0; total],
         line: vec![0; total],
@@ -84,6 +86,7 @@ fn straight(
         out.time[to.clone()].copy_from_slice(&columns.time[from.clone()]);
         out.speed[to.clone()].copy_from_slice(&columns.speed[from.clone()]);
         out.direction[to.clone()].copy_from_slice(&columns.direction[from.clone()]);
+        out.wind[to.clone()].copy_from_slice(&columns.wind[from.clone()]);
         out.kind[to.clone()].copy_from_slice(&columns.kind[from.clone()]);
         out.file[to.clone()].copy_from_slice(&columns.file[from.clone()]);
         out.line[to.clone()].copy_from_slice(&columns.line[from.clone()]);
@@ -102,6 +105,7 @@ fn straight(
         out.time[k] = report.time;
         out.speed[k] = report.speed;
         out.direction[k] = report.direction;
+        out.wind[k] = wind_of(report.kind, report.speed, report.direction);
         out.kind[k] = report.kind;
         out.file[k] = report.file;
         out.line[k] = report.line;
@@ -169,6 +173,15 @@ fn sorted(
     (table, builder.tally)
 }
 
+/// The wind of a report; 0 where there is none.
+fn wind_of(kind: u8, speed: f64, degrees: f64) -> Wind {
+    let both = kind::SPEED | kind::DIRECTION;
+    if kind & both != both || speed <= 0.0 {
+        return Wind::default();
+    }
+    FromDirection::new(degrees).map_or_else(Wind::default, |from| Wind::blowing_from(speed, from))
+}
+
 impl TableColumns {
     /// Appends reports of another table.
     fn append(&mut self, other: &Self, range: Range<usize>) {
@@ -177,6 +190,7 @@ impl TableColumns {
         self.speed.extend_from_slice(&other.speed[range.clone()]);
         self.direction
             .extend_from_slice(&other.direction[range.clone()]);
+        self.wind.extend_from_slice(&other.wind[range.clone()]);
         self.kind.extend_from_slice(&other.kind[range.clone()]);
         self.file.extend_from_slice(&other.file[range.clone()]);
         self.line.extend_from_slice(&other.line[range.clone()]);
@@ -341,6 +355,7 @@ impl TableBuilder<'_> {
         out.time.push(report.time);
         out.speed.push(report.speed);
         out.direction.push(degrees);
+        out.wind.push(wind_of(kind, report.speed, degrees));
         out.kind.push(kind & (kind::SPEED | kind::DIRECTION));
         out.file.push(report.file);
         out.line.push(report.line);

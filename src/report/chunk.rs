@@ -95,7 +95,7 @@ pub(super) fn decode(bytes: &[u8]) -> io::Result<Rows> {
     let numbers = times.iter().zip(speeds).zip(directions);
     let names = stations.iter().zip(lines).zip(files).zip(kinds);
     for (((time, speed), direction), (((station, line), file), [kind])) in numbers.zip(names) {
-        rows.packed.push(Packed {
+        rows.push_packed(Packed {
             time: Time::from_micros(i64::from_le_bytes(*time)),
             speed: f64::from_le_bytes(*speed),
             direction: f64::from_le_bytes(*direction),

@@ -95,6 +95,15 @@ impl<'a> ReportFiles<'a> {
         })
     }
 
+    /// How the files are read, and the stations that they are read for, in words.
+    pub(super) fn meaning(&self) -> String {
+        let network = self.names.network;
+        let mut not_asked_for: Vec<&str> = network.not_asked_for().collect();
+        not_asked_for.sort_unstable();
+        let formats: Vec<&ReportFormat> = self.files.iter().map(|file| file.format).collect();
+        format!("{formats:?} {:?} {not_asked_for:?}", network.stations())
+    }
+
     /// The paths of the files.
     pub(super) fn paths(&self) -> impl Iterator<Item = &'a Path> {
         self.files.iter().filter_map(|file| match file.content {

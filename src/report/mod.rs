@@ -5,6 +5,7 @@
 //! see. No reader of tables allocates per row.
 
 mod build;
+mod cache;
 mod chunk;
 mod coded;
 mod coded_file;

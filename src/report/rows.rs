@@ -73,6 +73,8 @@ pub(super) struct Packed {
 #[derive(Debug, Clone, Default, PartialEq)]
 pub struct Rows {
     pub(super) packed: Vec<Packed>,
+    /// First and last time.
+    span: Option<(Time, Time)>,
     pub(super) gust: Vec<Option<f64>>,
     pub(super) moving: Vec<Option<Moving>>,
     pub(super) correction: Vec<u8>,
@@ -107,7 +109,7 @@ impl Rows {
         } else {
             0
         };
-        self.packed.push(Packed {
+        self.push_packed(Packed {
             time: report.time,
             speed: report.speed.unwrap_or(0.0),
             direction: report.direction.map_or(0.0, FromDirection::degrees),
@@ -149,7 +151,7 @@ impl Rows {
         direction: FromDirection,
         place: (u32, u64),
     ) {
-        self.packed.push(Packed {
+        self.push_packed(Packed {
             time,
             speed,
             direction: direction.degrees(),
@@ -173,7 +175,7 @@ impl Rows {
     /// Adds a row of `other`, which has it.
     pub(super) fn push_from(&mut self, other: &Self, row: usize) {
         let before = self.len();
-        self.packed.push(other.packed[row]);
+        self.push_packed(other.packed[row]);
         let gust = other.gust.get(row).copied().flatten();
         put(&mut self.gust, before, gust, gust.is_some(), None);
         let moving = other.moving.get(row).copied().flatten();
@@ -186,22 +188,37 @@ impl Rows {
     /// First and last time.
     #[must_use]
     pub fn span(&self) -> Option<(Time, Time)> {
-        let first = self.packed.first()?.time;
-        let span = self.packed.iter().fold((first, first), |(low, high), row| {
-            (low.min(row.time), high.max(row.time))
+        self.span
+    }
+
+    /// Adds what every report has.
+    #[inline]
+    pub(super) fn push_packed(&mut self, packed: Packed) {
+        let time = packed.time;
+        self.span = Some(match self.span {
+            Some((first, last)) => (first.min(time), last.max(time)),
+            None => (time, time),
         });
-        Some(span)
+        self.packed.push(packed);
     }
 
     /// Takes out the rows from `cut` on; both parts keep their order.
     #[must_use]
     pub fn split_off_from(&mut self, cut: Time) -> Self {
         let stays: Vec<bool> = self.packed.iter().map(|row| row.time < cut).collect();
-        let part = |wanted: bool| Self {
-            packed: chosen(&self.packed, &stays, wanted),
-            gust: chosen(&self.gust, &stays, wanted),
-            moving: chosen(&self.moving, &stays, wanted),
-            correction: chosen(&self.correction, &stays, wanted),
+        let part = |wanted: bool| {
+            let packed = chosen(&self.packed, &stays, wanted);
+            let mut times = packed.iter().map(|row| row.time);
+            let first = times.next();
+            Self {
+                span: first.map(|first| {
+                    times.fold((first, first), |(a, b), time| (a.min(time), b.max(time)))
+                }),
+                packed,
+                gust: chosen(&self.gust, &stays, wanted),
+                moving: chosen(&self.moving, &stays, wanted),
+                correction: chosen(&self.correction, &stays, wanted),
+            }
         };
         let later = part(false);
         *self = part(true);

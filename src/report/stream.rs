@@ -1,9 +1,12 @@
 //! The rows of all report files, wave by wave: in the order of the files, or in that of time.
 
+use std::path::Path;
+
 use rayon::prelude::*;
 
+use super::cache::{Cache, CacheReader, CacheWriter};
 use super::feed::{Feed, ReportFiles};
-use super::read::{ReadOutcome, gather};
+use super::read::{Books, ReadOutcome, gather};
 use super::rows::Rows;
 use super::spill::{Runs, Sorter};
 use crate::error::Error;
@@ -39,6 +42,22 @@ impl<'f> ReportStream<'f> {
             feeds,
             by_time: false,
         }
+    }
+
+    /// No files at all.
+    fn nothing(files: &'f ReportFiles<'f>) -> Self {
+        Self {
+            files,
+            feeds: Vec::new(),
+            held: Vec::new(),
+            by_time: false,
+        }
+    }
+
+    /// The books so far; `None` if a file could not be read.
+    fn books(&self) -> Option<Vec<Books>> {
+        let books = self.feeds.iter().map(|feed| feed.books.as_ref().ok());
+        books.map(Option::<&Books>::cloned).collect()
     }
 
     /// Rows of all files together in the order of time, as far as each file has it: always the files that are furthest
@@ -120,15 +139,15 @@ impl<'f> ReportStream<'f> {
     /// The books of all files; no rows.
     #[must_use]
     pub fn outcome(self) -> ReadOutcome {
-        let files = self.files;
-        let books = files.files.iter().zip(self.feeds);
-        gather(
-            books
-                .map(|(file, feed)| (file.name.clone(), feed.books))
-                .collect(),
-            files.names.network,
-        )
+        let books = self.feeds.into_iter().map(|feed| feed.books);
+        gathered(self.files, books)
     }
+}
+
+fn gathered(files: &ReportFiles, books: impl Iterator<Item = Result<Books, Error>>) -> ReadOutcome {
+    let named = files.files.iter().zip(books);
+    let named = named.map(|(file, books)| (file.name.clone(), books));
+    gather(named.collect(), files.names.network)
 }
 
 /// How the order of time is come by.
@@ -155,26 +174,57 @@ impl InputOrder {
 
 /// Reports in the order of time.
 pub struct OrderedReports<'f> {
-    stream: ReportStream<'f>,
-    order: InputOrder,
-    memory: usize,
-    runs: Option<Runs>,
+    files: &'f ReportFiles<'f>,
+    source: Source<'f>,
+    /// What comes is kept here for another run.
+    keep: Option<Box<CacheWriter>>,
+}
+
+enum Source<'f> {
+    /// Files that have the order of time.
+    Files(ReportStream<'f>),
+    /// Files in any order, with the memory that sorting may take.
+    Unsorted(ReportStream<'f>, usize),
+    Sorted(ReportStream<'f>, Runs),
+    Kept(Box<CacheReader>),
 }
 
 impl<'f> OrderedReports<'f> {
     /// The rows of these files. To sort them takes at most about `memory` bytes; what does not fit is put on disk, in
-    /// the system's folder for temporary files.
-    #[must_use]
-    pub fn new(files: &'f ReportFiles<'f>, order: InputOrder, memory: usize) -> Self {
-        Self {
-            stream: match order {
-                InputOrder::ByTime => ReportStream::in_time_order(files),
-                InputOrder::Any => ReportStream::in_file_order(files),
-            },
-            order,
-            memory,
-            runs: None,
-        }
+    /// the system's folder for temporary files. If the rows were kept at `cache`, they come from there; if not, they
+    /// will be.
+    ///
+    /// # Errors
+    /// The cache cannot be written.
+    pub fn new(
+        files: &'f ReportFiles<'f>,
+        order: InputOrder,
+        memory: usize,
+        cache: Option<&Path>,
+    ) -> Result<Self, Error> {
+        let cache = match cache {
+            Some(path) => Cache::open(path, files)?,
+            None => None,
+        };
+        let (source, keep) = match (cache, order) {
+            (Some(Cache::Old(reader)), _) => (Source::Kept(reader), None),
+            (cache, order) => {
+                let source = match order {
+                    InputOrder::ByTime => Source::Files(ReportStream::in_time_order(files)),
+                    InputOrder::Any => Source::Unsorted(ReportStream::in_file_order(files), memory),
+                };
+                let keep = match cache {
+                    Some(Cache::New(writer)) => Some(writer),
+                    _ => None,
+                };
+                (source, keep)
+            }
+        };
+        Ok(Self {
+            files,
+            source,
+            keep,
+        })
     }
 
     /// The next rows; `None` at the end. No row comes before [`Self::reached`] any more, as far as the files keep their
@@ -183,40 +233,71 @@ impl<'f> OrderedReports<'f> {
     /// # Errors
     /// The disk cannot take what does not fit into memory; too many files would be open at once.
     pub fn next_wave(&mut self, until: Time) -> Result<Option<Vec<Rows>>, Error> {
-        if self.order == InputOrder::ByTime {
-            let wave = self.stream.next_wave(Some(until));
-            if self.stream.too_many_open() {
-                let message = format!("more than {MOST_OPEN} files have reports of one time");
-                return Err(Error::NotInOrder(message));
+        let wave = self.wave(until)?;
+        let reached = self.reached();
+        match (&mut self.keep, &wave) {
+            (Some(keep), Some(wave)) => keep.put(wave, reached)?,
+            (Some(_), None) => {
+                let books = match &self.source {
+                    Source::Files(stream) | Source::Sorted(stream, _) => stream.books(),
+                    _ => None,
+                };
+                // A file that could not be read may be there the next time.
+                if let (Some(keep), Some(books)) = (self.keep.take(), books) {
+                    keep.finish(&books)?;
+                }
             }
-            return Ok(wave);
+            (None, _) => {}
         }
-        if self.runs.is_none() {
-            let mut sorter = Sorter::new(self.memory);
-            while let Some(wave) = self.stream.next_wave(None) {
+        Ok(wave)
+    }
+
+    fn wave(&mut self, until: Time) -> Result<Option<Vec<Rows>>, Error> {
+        if let Source::Unsorted(stream, memory) = &mut self.source {
+            let mut sorter = Sorter::new(*memory);
+            while let Some(wave) = stream.next_wave(None) {
                 sorter.push(wave)?;
             }
-            self.runs = Some(sorter.finish());
+            let read = std::mem::replace(stream, ReportStream::nothing(self.files));
+            self.source = Source::Sorted(read, sorter.finish());
         }
-        match &mut self.runs {
-            Some(runs) => runs.next_wave(until),
-            None => Ok(None),
+        match &mut self.source {
+            Source::Files(stream) => {
+                let wave = stream.next_wave(Some(until));
+                if stream.too_many_open() {
+                    let message = format!("more than {MOST_OPEN} files have reports of one time");
+                    return Err(Error::NotInOrder(message));
+                }
+                Ok(wave)
+            }
+            Source::Sorted(_, runs) => runs.next_wave(until),
+            Source::Kept(reader) => reader.next_wave(),
+            Source::Unsorted(..) => Ok(None),
         }
     }
 
     /// The time before which no row comes any more; `None` before the first wave and after the end.
     #[must_use]
     pub fn reached(&self) -> Option<Time> {
-        match (&self.runs, self.order) {
-            (Some(runs), _) => runs.reached(),
-            (None, InputOrder::Any) => None,
-            (None, InputOrder::ByTime) => self.stream.reached(),
+        match &self.source {
+            Source::Files(stream) => stream.reached(),
+            Source::Unsorted(..) => None,
+            Source::Sorted(_, runs) => runs.reached(),
+            Source::Kept(reader) => reader.reached(),
         }
     }
 
     /// The books of all files; no rows.
     #[must_use]
     pub fn outcome(self) -> ReadOutcome {
-        self.stream.outcome()
+        match self.source {
+            Source::Files(stream) | Source::Unsorted(stream, _) | Source::Sorted(stream, _) => {
+                stream.outcome()
+            }
+            Source::Kept(reader) => {
+                let books = reader.books.unwrap_or_default();
+                gathered(self.files, books.into_iter().map(Ok))
+            }
+        }
     }
 }

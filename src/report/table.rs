@@ -55,6 +55,8 @@ pub(super) struct TableColumns {
     pub(super) speed: Vec<f64>,
     /// Degrees; 0 where there is none.
     pub(super) direction: Vec<f64>,
+    /// The wind; 0 where there is none.
+    pub(super) wind: Vec<Wind>,
     pub(super) kind: Vec<u8>,
     pub(super) file: Vec<u16>,
     pub(super) line: Vec<u32>,
@@ -171,11 +173,23 @@ impl ReportTable {
     #[must_use]
     pub fn wind(&self, i: usize) -> Option<Wind> {
         match self.content(i) {
-            Content::Calm => Some(Wind::default()),
-            Content::Wind => FromDirection::new(self.columns.direction[i])
-                .map(|from| Wind::blowing_from(self.columns.speed[i], from)),
+            Content::Calm | Content::Wind => Some(self.columns.wind[i]),
             Content::SpeedOnly | Content::Nothing => None,
         }
+    }
+
+    /// Wind vectors of all reports; 0 where there is none.
+    #[must_use]
+    pub fn winds(&self) -> &[Wind] {
+        &self.columns.wind
+    }
+
+    /// True if every report of the range has speed and direction and did not fail a check.
+    #[must_use]
+    pub fn all_usable(&self, range: std::ops::Range<usize>) -> bool {
+        let both = kind::SPEED | kind::DIRECTION;
+        self.columns.kind[range.clone()].iter().all(|&k| k == both)
+            && self.columns.flag[range].iter().all(|&f| f < Flag::Fail)
     }
 
     /// Gust of report `i`, m/s.

@@ -40,8 +40,12 @@ pub struct Settings {
     pub polygons: PolygonChoice,
     /// Which polygons are left out.
     pub limits: PolygonLimits,
+    /// Whether the reports are checked at all.
+    pub screen: bool,
     /// Memory that sorting the reports may take, bytes; what does not fit is put on disk.
     pub memory: usize,
+    /// Where the reports, once read, are kept for another run.
+    pub cache: Option<PathBuf>,
 }
 
 /// Default of [`Settings::memory`]: 1 GiB.

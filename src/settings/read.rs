@@ -37,6 +37,10 @@ pub struct Overrides {
     pub longest_edge: Option<f64>,
     /// Memory that sorting the reports may take, bytes
     pub memory: Option<usize>,
+    /// Where the reports are kept for another run
+    pub cache: Option<PathBuf>,
+    /// Take the reports unchecked
+    pub no_screen: bool,
 }
 
 /// Reads a settings file. The settings come back even where there are defects, with defaults in their place, so that
@@ -80,6 +84,8 @@ fn parse_settings(
         analysis: analysis(root.section("analysis"), overrides),
         range: range(root.section("check")),
         limits: limits(root.section("limits"), overrides),
+        screen: !overrides.no_screen,
+        cache: overrides.cache.clone(),
         memory: overrides.memory.unwrap_or(MEMORY),
         polygons: polygons(root.section("polygons")),
     };
