@@ -1,4 +1,5 @@
 //! A made-up archive of reports: any number of stations, days and minutes, the same for the same seed.
+#![allow(dead_code, reason = "each bench uses a part of it")]
 
 use std::fs::File;
 use std::io::{BufWriter, Write};
