@@ -72,6 +72,7 @@ pub mod polygon;
 pub mod report;
 pub mod settings;
 pub mod station;
+pub mod structure;
 pub mod sum;
 pub mod tally;
 pub mod time;

@@ -2,8 +2,11 @@
 //!
 //! Circulation and outward flux are the values times the polygon's area.
 
+mod boundary;
+mod budget;
 mod earth;
 mod extremes;
+mod sampling;
 mod statistics;
 
 use crate::align::WindBlock;
@@ -11,8 +14,11 @@ use crate::check::Flag;
 use crate::polygon::{CoefficientRow, StationPolygon};
 use crate::time::Time;
 
+pub use boundary::Segment;
+pub use budget::{ErrorBudget, ErrorParts, complete_errors, error_covariance, station_covariance};
 pub use earth::{OMEGA, SelfTest, earth_rotation, planetary_vorticity, self_test};
 pub use extremes::{Extremes, Peak};
+pub use sampling::{PairCovariance, Sampling, SamplingConstants};
 pub use statistics::{RunStatistics, Statistics};
 
 /// Estimates of all polygons at a run of analysis times.

@@ -1,0 +1,124 @@
+//! The structure function at each time of a run, from a trailing window.
+
+use std::collections::VecDeque;
+
+use super::fit::fit;
+use super::function::{StructureFunction, StructureSettings};
+use super::geometry::NetworkGeometry;
+use super::sums::{BlockSums, StructureSums};
+use crate::time::Time;
+
+/// Parts of the window; the window moves by one of them at a time.
+const BINS: i64 = 24;
+
+/// Sums of the trailing window, taken in in the order of time.
+///
+/// Bins are cut by absolute time, so the result does not depend on how the run is cut into blocks; a run that starts
+/// later agrees once it has a window's length behind it (to e^(−window/memory) in the weights of the last hours).
+#[derive(Debug, Clone)]
+pub struct StructureWindow {
+    settings: StructureSettings,
+    /// Number of a bin and its sums, ascending.
+    bins: VecDeque<(i64, StructureSums)>,
+    /// Sum of all bins but the last.
+    whole: StructureSums,
+    recent: StructureSums,
+    last: Option<Time>,
+    current: StructureFunction,
+}
+
+impl StructureWindow {
+    /// An empty window: the prior.
+    #[must_use]
+    pub fn new(geometry: &NetworkGeometry, settings: StructureSettings) -> Self {
+        Self {
+            settings,
+            bins: VecDeque::new(),
+            whole: StructureSums::default(),
+            recent: StructureSums::default(),
+            last: None,
+            current: settings.prior(geometry.spacing),
+        }
+    }
+
+    /// The structure function as it stands.
+    #[must_use]
+    pub fn current(&self) -> &StructureFunction {
+        &self.current
+    }
+
+    /// Sums of the whole window, for tables.
+    #[must_use]
+    pub fn sums(&self) -> StructureSums {
+        let mut sums = self.whole;
+        if let Some((_, last)) = self.bins.back() {
+            sums.add(last, 1.0);
+        }
+        sums
+    }
+
+    /// Takes in the sums of a block and gives the structure function at each of `times` (ascending, those of the
+    /// block): from the sums at and before the time. Sums that are not later than those before them are not taken in
+    /// again.
+    pub fn advance(
+        &mut self,
+        geometry: &NetworkGeometry,
+        sums: &BlockSums,
+        times: &[Time],
+    ) -> Vec<StructureFunction> {
+        let mut next = sums.at.iter().peekable();
+        times
+            .iter()
+            .map(|&time| {
+                let mut changed = false;
+                while let Some((at, of_time)) = next.next_if(|(at, _)| *at <= time) {
+                    changed |= self.take_in(*at, of_time);
+                }
+                if changed {
+                    self.current = fit(geometry, &self.settings, &self.sums(), &self.recent);
+                }
+                self.current
+            })
+            .collect()
+    }
+
+    fn take_in(&mut self, time: Time, sums: &StructureSums) -> bool {
+        let since = match self.last {
+            Some(last) if last >= time => return false,
+            Some(last) => time.micros().saturating_sub(last.micros()) as f64 * 1e-6,
+            None => f64::INFINITY,
+        };
+        self.last = Some(time);
+        // Times that follow each other closely say nearly the same.
+        let mut sums = *sums;
+        sums.independent *= (since / self.settings.independent_after).min(1.0);
+        self.recent = self.recent.scaled((-since / self.settings.memory).exp());
+        self.recent.add(&sums, 1.0);
+
+        let bin = time.micros().div_euclid(self.bin_length());
+        match self.bins.back_mut() {
+            Some((last, of_bin)) if *last == bin => of_bin.add(&sums, 1.0),
+            _ => {
+                while self.bins.front().is_some_and(|b| b.0 <= bin - BINS) {
+                    self.bins.pop_front();
+                }
+                self.whole = StructureSums::default();
+                for (_, of_bin) in &self.bins {
+                    self.whole.add(of_bin, 1.0);
+                }
+                self.bins.push_back((bin, sums));
+            }
+        }
+        true
+    }
+
+    /// μs
+    fn bin_length(&self) -> i64 {
+        #[expect(
+            clippy::cast_possible_truncation,
+            reason = "saturates, and windows are far below 2^63 µs"
+        )]
+        let length = (self.settings.window / BINS as f64 * 1e6) as i64;
+        length.max(1)
+    }
+}
