@@ -58,9 +58,17 @@ pub(super) fn fit(
     let mut scales = pair_scales(geometry, &window.pairs, values);
     let raw = power_law(&mut scales);
     let weight = values / (values + settings.prior_exponent_values);
-    let exponent = match raw {
+    let from_pairs = match raw {
         Some(law) => shrunk_exponent(law.exponent, prior.exponent, weight),
         None => prior.exponent,
+    };
+    let exponent = match plane_exponent(geometry, window) {
+        Some((found, values)) => shrunk_exponent(
+            found,
+            from_pairs,
+            values / (values + settings.pair_exponent_values),
+        ),
+        None => from_pairs,
     };
     let flat = raw.is_some_and(|law| law.exponent == Exponent::SMALLEST);
     let site = if flat {
@@ -249,6 +257,40 @@ fn plane_amplitude(
     }
     let values = sums.independent * (count / sums.winds.max(1.0)).min(1.0);
     (expected > 0.0 && values > 0.0).then(|| (found / expected, values))
+}
+
+/// Exponent from the planes of different sizes, and the independent values behind it: least squares with weights from
+/// the relative error of each class.
+fn plane_exponent(geometry: &NetworkGeometry, sums: &StructureSums) -> Option<(Exponent, f64)> {
+    let classes: Vec<(usize, f64, f64)> = (0..CLASSES)
+        .filter(|&k| sums.planes[k].count > 0.0)
+        .map(|k| {
+            let class = &sums.planes[k];
+            let value = class.squares / class.count;
+            let error = value.abs() + class.noise / class.count;
+            (k, value, class.count / (error * error))
+        })
+        .collect();
+    let least = |&(k, _, _): &(usize, f64, f64)| sums.planes[k].count / sums.winds.max(1.0);
+    // The second largest class limits what is known of the slope.
+    let mut shares: Vec<f64> = classes.iter().map(|c| least(c).min(1.0)).collect();
+    shares.sort_by(f64::total_cmp);
+    let values = sums.independent * shares.len().checked_sub(2).map_or(0.0, |k| shares[k]);
+    let mut best: Option<(f64, Exponent)> = None;
+    for exponent in Exponent::all().take(Exponent::LARGEST_FITTED.index() + 1) {
+        let (mut xy, mut xx, mut yy) = (0.0, 0.0, 0.0);
+        for &(k, value, w) in &classes {
+            let x = geometry.plane_growth[k][exponent.index()];
+            xy += w * x * value;
+            xx += w * x * x;
+            yy += w * value * value;
+        }
+        let misfit = yy - xy * xy / xx;
+        if xy > 0.0 && best.is_none_or(|(least, _)| misfit < least) {
+            best = Some((misfit, exponent));
+        }
+    }
+    best.filter(|_| values > 0.0).map(|(_, exponent)| (exponent, values))
 }
 
 /// `c_T`/`c_L` over the scales that follow the law.

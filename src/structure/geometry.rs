@@ -16,6 +16,10 @@ const PAIRS_IN_CLASS: usize = 2;
 /// Stations that a plane is laid through, at first; more where they stand badly.
 const PLANE_STATIONS: usize = 5;
 const MOST_PLANE_STATIONS: usize = 8;
+/// Stations of wide planes are this many spacings away, give or take [`WIDE_BY`], in so many sixths of the horizon.
+const WIDE: f64 = 1.8;
+const WIDE_BY: f64 = 0.6;
+const LEAST_SECTORS: usize = 4;
 /// A plane of which the value at the station has more than this times the variance of one wind is no comparison.
 const LARGEST_SQUARED_WEIGHTS: f64 = 2.0;
 /// Planes of one class whose constants are computed; the mean over more of them is the same.
@@ -86,7 +90,8 @@ impl NetworkGeometry {
         for station in 0..positions.len() {
             let around = near.some_around(station);
             geometry.add_pairs(station, &around, &positions, &geodesic);
-            geometry.add_plane(station, &around, &positions);
+            geometry.add_near_plane(station, &around, &positions);
+            geometry.add_wide_plane(station, &around, &positions);
         }
         geometry.plane_constants(&positions);
         geometry
@@ -133,39 +138,75 @@ impl NetworkGeometry {
         }
     }
 
-    fn add_plane(&mut self, station: usize, around: &[(usize, f64)], positions: &[Position]) {
+    /// The plane through the nearest stations, of more of them where they stand badly.
+    fn add_near_plane(&mut self, station: usize, around: &[(usize, f64)], positions: &[Position]) {
+        for count in PLANE_STATIONS.min(around.len())..=MOST_PLANE_STATIONS.min(around.len()) {
+            if self.add_plane(station, &around[..count], positions) {
+                return;
+            }
+        }
+    }
+
+    /// The plane through stations farther away, one in each sixth of the horizon: the same comparison at a larger
+    /// scale, from which the exponent is found.
+    fn add_wide_plane(&mut self, station: usize, around: &[(usize, f64)], positions: &[Position]) {
         let here = positions[station];
         let plane = LocalPlane::at((here.latitude(), here.longitude()));
-        for count in PLANE_STATIONS.min(around.len())..=MOST_PLANE_STATIONS.min(around.len()) {
-            let chosen = &around[..count];
-            let points: Vec<[f64; 2]> = chosen
-                .iter()
-                .map(|&(other, _)| plane.place(positions[other]).at)
-                .collect();
-            let Some(weights) = value_of_plane(&points) else {
-                continue;
-            };
-            if weights.iter().map(|w| w * w).sum::<f64>() > LARGEST_SQUARED_WEIGHTS {
-                continue;
+        let off = |d: f64| (d / self.spacing - WIDE).abs();
+        let mut sectors: [Option<(usize, f64)>; 6] = [None; 6];
+        for &(other, d) in around.iter().filter(|c| off(c.1) < WIDE_BY) {
+            let [x, y] = plane.place(positions[other]).at;
+            let sixth = y.atan2(x).rem_euclid(std::f64::consts::TAU) / std::f64::consts::FRAC_PI_3;
+            #[expect(
+                clippy::cast_possible_truncation,
+                clippy::cast_sign_loss,
+                reason = "0 to 6"
+            )]
+            let best = &mut sectors[(sixth as usize).min(5)];
+            if best.is_none_or(|(_, held)| off(d) < off(held)) {
+                *best = Some((other, d));
             }
-            let mean_distance = chosen.iter().map(|c| c.1).sum::<f64>() / count as f64;
-            let Some(class) = class_of((mean_distance / self.spacing).min(2.0)) else {
-                return;
-            };
-            let mut all = vec![(station, 1.0)];
-            all.extend(chosen.iter().zip(weights).map(|(c, w)| (c.0, -w)));
-            let mut ends = vec![[0.0; 2]];
-            ends.extend(points);
-            let variance = self.variance_of_difference(&all, &ends, 2.0 / 3.0);
-            if variance > 0.0 {
-                self.planes.push(PlaneDifference {
-                    weights: all,
-                    class,
-                    to_unit: 1.0 / variance,
-                });
-            }
-            return;
         }
+        let chosen: Vec<(usize, f64)> = sectors.into_iter().flatten().collect();
+        if chosen.len() >= LEAST_SECTORS {
+            self.add_plane(station, &chosen, positions);
+        }
+    }
+
+    fn add_plane(
+        &mut self,
+        station: usize,
+        chosen: &[(usize, f64)],
+        positions: &[Position],
+    ) -> bool {
+        let here = positions[station];
+        let plane = LocalPlane::at((here.latitude(), here.longitude()));
+        let points: Vec<[f64; 2]> = chosen
+            .iter()
+            .map(|&(other, _)| plane.place(positions[other]).at)
+            .collect();
+        let Some(weights) = value_of_plane(&points)
+            .filter(|w| w.iter().map(|w| w * w).sum::<f64>() <= LARGEST_SQUARED_WEIGHTS)
+        else {
+            return false;
+        };
+        let mean_distance = chosen.iter().map(|c| c.1).sum::<f64>() / chosen.len() as f64;
+        let Some(class) = class_of((mean_distance / self.spacing).min(2.0)) else {
+            return false;
+        };
+        let mut all = vec![(station, 1.0)];
+        all.extend(chosen.iter().zip(weights).map(|(c, w)| (c.0, -w)));
+        let mut ends = vec![[0.0; 2]];
+        ends.extend(points);
+        let variance = self.variance_of_difference(&all, &ends, 2.0 / 3.0);
+        if variance > 0.0 {
+            self.planes.push(PlaneDifference {
+                weights: all,
+                class,
+                to_unit: 1.0 / variance,
+            });
+        }
+        variance > 0.0
     }
 
     /// −½ ΣΣ λ λ (r/r0)^p.

@@ -5,6 +5,7 @@ mod function;
 mod geometry;
 mod neighbours;
 mod plane;
+mod predict;
 mod sums;
 mod window;
 
@@ -12,5 +13,6 @@ pub use function::{Exponent, StructureFunction, StructureSettings, TemporalFunct
 pub use geometry::{CLASSES, NetworkGeometry};
 pub use neighbours::typical_spacing;
 pub use plane::{LocalPlane, PlanePoint};
+pub use predict::{Prediction, Predictor};
 pub use sums::{BlockSums, LAGS, LagSum, PairSum, PlaneSum, StructureSums};
 pub use window::StructureWindow;

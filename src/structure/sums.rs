@@ -30,6 +30,8 @@ pub struct PlaneSum {
     /// Squared differences of both components, less the instrument variances, in units of what `c_L` + `c_T` =
     /// 1 m²/s² gives with an exponent of 2/3.
     pub squares: f64,
+    /// Instrument variances taken off, in the same units.
+    pub noise: f64,
 }
 
 /// Sums of the differences of each station with itself over one lag.
@@ -74,6 +76,7 @@ impl StructureSums {
         for (a, b) in self.planes.iter_mut().zip(&other.planes) {
             a.count += weight * b.count;
             a.squares += weight * b.squares;
+            a.noise += weight * b.noise;
         }
         for (a, b) in self.lags.iter_mut().zip(&other.lags) {
             a.count += weight * b.count;
@@ -303,6 +306,7 @@ impl Columns {
                 let squares = plane.to_unit * (u[t] * u[t] + v[t] * v[t] - noise[t]);
                 sum.planes[plane.class].count += present[t];
                 sum.planes[plane.class].squares += present[t] * squares;
+                sum.planes[plane.class].noise += present[t] * plane.to_unit * noise[t];
             }
         }
     }
