@@ -74,7 +74,7 @@ fn count(
         .collect();
     edges.sort_by(f64::total_cmp);
     let spacing = edges[edges.len() / 2];
-    let geometry = NetworkGeometry::new(&simulation.network, spacing);
+    let geometry = NetworkGeometry::new(&simulation.network, spacing, &[]);
     let mut window = StructureWindow::new(&geometry, settings);
     let sums = BlockSums::of(&geometry, &settings, 3600.0, None, winds);
     let models = window.advance(&geometry, &sums, &winds.times);
@@ -168,19 +168,21 @@ fn every_class() {
 #[ignore = "explores"]
 fn explore() {
     for slope in SLOPES {
-        for (side, outer) in [(7, 4.0), (7, 2.0), (7, 100.0), (4, 20.0), (3, 20.0), (2, 20.0)] {
+        for (side, outer, rms, noise) in [(7, 20.0, 5.0, 0.1), (7, 20.0, 1.0, 1.0), (7, 4.0, 2.0, 0.3), (7, 2.0, 2.0, 0.3), (4, 20.0, 2.0, 0.3), (3, 20.0, 2.0, 0.3), (2, 20.0, 2.0, 0.3)] {
             for layout in [Layout::Jittered, Layout::Clustered] {
+              for dropouts in [0.0, 0.1] {
                 let class = Class {
                     slope,
                     layout,
                     side,
-                    outer,
+                    outer, rms, noise, dropouts,
                     ..Class::default()
                 };
                 let runs = 8 * 49 / (side * side) as u64;
                 let found = coverage(class, runs, std::env::var("TRACE").is_ok());
                 println!("side {side} {}", line(&class, &found));
             }
+          }
         }
     }
 }

@@ -161,10 +161,6 @@ pub struct StructureSettings {
     /// has an error of about 2/√N; 16 of them are as sure as "1/3 to 2, most often 2/3 or 1", a standard deviation of
     /// 0.5.
     pub prior_exponent_values: f64,
-    /// Independent values of planes at which their exponent and that of the pairs weigh alike. 100: the planes have half
-    /// the range of scales and fewer stations, so a slope from them is less sure by a factor of 2 to 3, but it is that
-    /// of the wind's curvature, which is what an area mean misses.
-    pub pair_exponent_values: f64,
     /// Independent values at which the last hours and the whole window weigh alike in the amplitude. 30.
     pub window_values: f64,
     /// Time after which another value of a station counts as independent, s. 1 h.
@@ -183,7 +179,6 @@ impl Default for StructureSettings {
             prior_speed: 5.0,
             prior_values: 10.0,
             prior_exponent_values: 16.0,
-            pair_exponent_values: 100.0,
             window_values: 30.0,
             independent_after: 3600.0,
         }

@@ -21,7 +21,9 @@ const WIDE: f64 = 1.8;
 const WIDE_BY: f64 = 0.6;
 const LEAST_SECTORS: usize = 4;
 /// A plane of which the value at the station has more than this times the variance of one wind is no comparison.
-const LARGEST_SQUARED_WEIGHTS: f64 = 2.0;
+const LARGEST_SQUARED_WEIGHTS: f64 = 4.0;
+/// Stations of planes report at least this share of the times.
+const OFTEN: f64 = 0.5;
 /// Planes of one class whose constants are computed; the mean over more of them is the same.
 const PLANES_FOR_CONSTANTS: usize = 200;
 
@@ -68,8 +70,12 @@ impl NetworkGeometry {
     ///
     /// `spacing` is the median edge of the triangles, or [`super::typical_spacing`], m. Stations at one place make no
     /// pair. The number of pairs grows with the number of stations, not with its square.
+    ///
+    /// `reports` says how much each station reports, relative to one that always does: planes are laid through stations
+    /// with half or more, since one that is missing costs the whole plane, and pairs need more than nothing. A station
+    /// without an entry reports always.
     #[must_use]
-    pub fn new(network: &Network, spacing: f64) -> Self {
+    pub fn new(network: &Network, spacing: f64, reports: &[f64]) -> Self {
         let positions: Vec<Position> = network.stations().iter().map(|s| s.position).collect();
         let spacing = if spacing.is_finite() && spacing > 1.0 {
             spacing
@@ -88,10 +94,17 @@ impl NetworkGeometry {
         };
         let geodesic = Geodesic::wgs84();
         for station in 0..positions.len() {
-            let around = near.some_around(station);
-            geometry.add_pairs(station, &around, &positions, &geodesic);
-            geometry.add_near_plane(station, &around, &positions);
-            geometry.add_wide_plane(station, &around, &positions);
+            let share = |station: usize| reports.get(station).copied().unwrap_or(1.0);
+            let mut around = near.some_around(station);
+            around.retain(|&(other, _)| share(other) > 0.0);
+            if share(station) > 0.0 {
+                geometry.add_pairs(station, &around, &positions, &geodesic);
+            }
+            around.retain(|&(other, _)| share(other) >= OFTEN);
+            if share(station) >= OFTEN {
+                geometry.add_near_plane(station, &around, &positions);
+                geometry.add_wide_plane(station, &around, &positions);
+            }
         }
         geometry.plane_constants(&positions);
         geometry

@@ -6,6 +6,7 @@ mod geometry;
 mod neighbours;
 mod plane;
 mod predict;
+mod shape;
 mod sums;
 mod window;
 

@@ -5,11 +5,15 @@ use std::collections::VecDeque;
 use super::fit::fit;
 use super::function::{StructureFunction, StructureSettings};
 use super::geometry::NetworkGeometry;
+use super::shape::Shape;
 use super::sums::{BlockSums, StructureSums};
 use crate::time::Time;
 
 /// Parts of the window; the window moves by one of them at a time.
 const BINS: i64 = 24;
+
+/// The shape is found anew with each bin, and at each of the first times of a run.
+const FIRST_TIMES: u64 = 8;
 
 /// Sums of the trailing window, taken in in the order of time.
 ///
@@ -24,6 +28,9 @@ pub struct StructureWindow {
     whole: StructureSums,
     recent: StructureSums,
     last: Option<Time>,
+    /// Times taken in.
+    taken: u64,
+    shape: Shape,
     current: StructureFunction,
 }
 
@@ -37,6 +44,8 @@ impl StructureWindow {
             whole: StructureSums::default(),
             recent: StructureSums::default(),
             last: None,
+            taken: 0,
+            shape: Shape::prior(&settings),
             current: settings.prior(geometry.spacing),
         }
     }
@@ -70,21 +79,17 @@ impl StructureWindow {
         times
             .iter()
             .map(|&time| {
-                let mut changed = false;
                 while let Some((at, of_time)) = next.next_if(|(at, _)| *at <= time) {
-                    changed |= self.take_in(*at, of_time);
-                }
-                if changed {
-                    self.current = fit(geometry, &self.settings, &self.sums(), &self.recent);
+                    self.take_in(geometry, *at, of_time);
                 }
                 self.current
             })
             .collect()
     }
 
-    fn take_in(&mut self, time: Time, sums: &StructureSums) -> bool {
+    fn take_in(&mut self, geometry: &NetworkGeometry, time: Time, sums: &StructureSums) {
         let since = match self.last {
-            Some(last) if last >= time => return false,
+            Some(last) if last >= time => return,
             Some(last) => time.micros().saturating_sub(last.micros()) as f64 * 1e-6,
             None => f64::INFINITY,
         };
@@ -96,6 +101,7 @@ impl StructureWindow {
         self.recent.add(&sums, 1.0);
 
         let bin = time.micros().div_euclid(self.bin_length());
+        let new_bin = self.bins.back().is_none_or(|b| b.0 != bin);
         match self.bins.back_mut() {
             Some((last, of_bin)) if *last == bin => of_bin.add(&sums, 1.0),
             _ => {
@@ -109,7 +115,13 @@ impl StructureWindow {
                 self.bins.push_back((bin, sums));
             }
         }
-        true
+        let window = self.sums();
+        if new_bin || self.taken < FIRST_TIMES {
+            self.shape = Shape::of(geometry, &self.settings, &window);
+        }
+        self.taken += 1;
+        let found = fit(geometry, &self.settings, &self.shape, &window, &self.recent);
+        self.current = found;
     }
 
     /// μs
