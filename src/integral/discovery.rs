@@ -12,6 +12,12 @@ pub fn chance_of(value: f64, se: f64) -> f64 {
     libm::erfc(z * std::f64::consts::FRAC_1_SQRT_2)
 }
 
+/// Probability of a χ² at least as large, with two degrees of freedom: exp(−χ²/2).
+#[must_use]
+pub fn chance_of_square(square: f64) -> f64 {
+    (-0.5 * square).exp()
+}
+
 /// Benjamini-Hochberg adjusted probabilities: calling all values with an adjusted probability of at most q different
 /// from zero makes on average no more than a share q of false calls.
 ///

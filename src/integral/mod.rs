@@ -4,9 +4,12 @@
 
 mod boundary;
 mod budget;
+mod discovery;
 mod earth;
 mod extremes;
+mod mean_error;
 mod sampling;
+mod second_opinion;
 mod statistics;
 
 use crate::align::WindBlock;
@@ -16,9 +19,12 @@ use crate::time::Time;
 
 pub use boundary::Segment;
 pub use budget::{ErrorBudget, ErrorParts, complete_errors, error_covariance, station_covariance};
+pub use discovery::{adjusted, adjusted_for_any_dependence, chance_of, chance_of_square};
 pub use earth::{OMEGA, SelfTest, earth_rotation, planetary_vorticity, self_test};
 pub use extremes::{Extremes, Peak};
+pub use mean_error::MeanError;
 pub use sampling::{PairCovariance, Sampling, SamplingConstants};
+pub use second_opinion::{Comparison, NoQuadratic, SecondOpinion, quadratic, slopes_of_plane};
 pub use statistics::{RunStatistics, Statistics};
 
 /// Estimates of all polygons at a run of analysis times.

@@ -170,6 +170,23 @@ impl Sampling {
         self.outlines[polygon].mean_edge
     }
 
+    /// The reference distance, m.
+    #[must_use]
+    pub fn reference(&self) -> f64 {
+        self.reference
+    }
+
+    pub(super) fn position(&self, station: usize) -> Position {
+        self.positions[station]
+    }
+
+    /// The outline of a polygon in its plane, in units of the reference, and the plane.
+    pub(super) fn in_plane(&self, polygon: usize) -> (Vec<Segment>, LocalPlane) {
+        let outline = &self.outlines[polygon];
+        let plane = LocalPlane::at(outline.middle);
+        (self.segments(outline, outline.middle), plane)
+    }
+
     /// Covariance of the sampling errors of two polygons, which may share stations, sides, or lie apart.
     #[must_use]
     pub fn covariance(&self, p: usize, q: usize, structure: &StructureFunction) -> PairCovariance {

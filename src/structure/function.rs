@@ -139,7 +139,7 @@ impl TemporalFunction {
 pub struct StructureSettings {
     /// Length of the trailing window, s. 24 h: a day has all its hours in it.
     pub window: f64,
-    /// Memory of the amplitude within the window, s: a time ago its weight is 1/e. 3 h, the life of a mesoscale
+    /// Memory of the amplitude within the window, s: a time ago its weight is 1/e. 1 h, the life of a convective
     /// system.
     pub memory: f64,
     /// Shortest time between the times used, s. 15 min: nearer ones say nearly the same of the wind's structure.
@@ -161,7 +161,7 @@ pub struct StructureSettings {
     /// has an error of about 2/√N; 16 of them are as sure as "1/3 to 2, most often 2/3 or 1", a standard deviation of
     /// 0.5.
     pub prior_exponent_values: f64,
-    /// Independent values at which the last hours and the whole window weigh alike in the amplitude. 30.
+    /// Independent values at which the last hours and the whole window weigh alike in the amplitude. 10, as for the prior.
     pub window_values: f64,
     /// Time after which another value of a station counts as independent, s. 1 h.
     pub independent_after: f64,
@@ -171,7 +171,7 @@ impl Default for StructureSettings {
     fn default() -> Self {
         Self {
             window: 86_400.0,
-            memory: 3.0 * 3600.0,
+            memory: 3600.0,
             step: 900.0,
             prior_exponent: 2.0 / 3.0,
             prior_difference: 4.5,
@@ -179,7 +179,7 @@ impl Default for StructureSettings {
             prior_speed: 5.0,
             prior_values: 10.0,
             prior_exponent_values: 16.0,
-            window_values: 30.0,
+            window_values: 10.0,
             independent_after: 3600.0,
         }
     }

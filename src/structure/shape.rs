@@ -9,8 +9,9 @@ use super::sums::StructureSums;
 /// can.
 const PAIR_VALUES: f64 = 100.0;
 
-/// Misfit by which a site variance must better the fit to be believed: two standard errors of one parameter.
-const BELIEVED: f64 = 4.0;
+/// Misfit by which a site variance must better the fit to be believed: that of one more parameter (Akaike 1974, IEEE
+/// Trans. Autom. Control 19, 716).
+const BELIEVED: f64 = 2.0;
 
 /// A class this many standard errors below the law of the classes inside it has saturated.
 const SATURATED: f64 = 2.0;
@@ -75,7 +76,7 @@ impl Shape {
     ///   little. The classes are the pairs, by distance out to twice the spacing, with 4 n + s r^p + b r² (b for a wind
     ///   that varies linearly), and the planes of different sizes, with their variances under r^p and n. The prior of
     ///   the exponent is a normal one of standard deviation 2/√`prior_exponent_values`.
-    /// - **Site variance** n: 0, unless it betters the fit by two standard errors.
+    /// - **Site variance** n: 0, unless it betters the fit by more than one parameter must (Akaike 1974).
     /// - **Saturation**: pairs at large distance differ by no more than twice the variance of the wind, which would make
     ///   the exponent too small. The outermost class is left out if it lies more than 2 standard errors below the
     ///   law of those inside it, then the next.

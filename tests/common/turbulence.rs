@@ -181,6 +181,12 @@ impl Simulation {
         }
     }
 
+    /// Takes other polygons of the same stations.
+    pub fn rebuild(&mut self, built: BuiltPolygons) {
+        self.lines = built.edges.edges().iter().map(|e| [e.from, e.to]).collect();
+        self.built = built;
+    }
+
     /// Fields of `times` hours, each drawn anew: the winds as reported, and for each time and polygon the true
     /// vorticity and divergence. `report` makes a report of a true wind.
     pub fn run(
