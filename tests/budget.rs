@@ -1,9 +1,10 @@
 //! The error budget against tables, laws and simulated winds.
 #![allow(
+    clippy::needless_range_loop,
     clippy::unwrap_used,
     clippy::panic,
     clippy::print_stdout,
-    reason = "tests may panic and print"
+    reason = "tests may panic and print; polygons and times index several columns"
 )]
 
 mod common;
@@ -100,21 +101,33 @@ fn lopsided(reference: f64) -> StructureFunction {
 /// the region, with what the inner sides miss cancelled.
 #[test]
 fn parts_of_a_region_have_its_variance() {
-    let simulation = Simulation::new(Class { side: 4, ..Class::default() }, 3);
+    let simulation = Simulation::new(
+        Class {
+            side: 4,
+            ..Class::default()
+        },
+        3,
+    );
     let network = &simulation.network;
     let all = common::region("all", RegionParts::AllTriangles);
     let built = common::build(network, true, vec![], vec![all]).unwrap();
     let (winds, _) = simulation.noisy(1, 5);
     let structure = lopsided(30e3);
     let sampling = Sampling::new(&built.polygons, &built.edges, &positions(network), 30e3);
-    let covariance = |p, q| error_covariance(&built.polygons, &sampling, &winds, 0, &structure, (p, q));
+    let covariance =
+        |p, q| error_covariance(&built.polygons, &sampling, &winds, 0, &structure, (p, q));
     let region = built.polygons.len() - 1;
     let area = |p: usize| built.polygons[p].shape.area / built.polygons[region].shape.area;
     let mut sums = [0.0; 4];
     for p in 0..region {
         for q in 0..region {
             let c = covariance(p, q);
-            let parts = [c.vorticity, c.divergence, c.vorticity_divergence, c.divergence_vorticity];
+            let parts = [
+                c.vorticity,
+                c.divergence,
+                c.vorticity_divergence,
+                c.divergence_vorticity,
+            ];
             for (sum, part) in sums.iter_mut().zip(parts) {
                 *sum += area(p) * area(q) * part;
             }
@@ -122,14 +135,19 @@ fn parts_of_a_region_have_its_variance() {
     }
     let whole = covariance(region, region);
     // Each polygon is laid out in a plane of its own: 100 km wide, they differ by some 1e-4 of the largest terms.
-    let terms: f64 = (0..region).map(|p| area(p).powi(2) * covariance(p, p).vorticity).sum();
+    let terms: f64 = (0..region)
+        .map(|p| area(p).powi(2) * covariance(p, p).vorticity)
+        .sum();
     for (found, expected) in sums.iter().zip([
         whole.vorticity,
         whole.divergence,
         whole.vorticity_divergence,
         whole.divergence_vorticity,
     ]) {
-        assert!(close(*found, expected, 2e-3 * terms), "{found:e} {expected:e} {terms:e}");
+        assert!(
+            close(*found, expected, 2e-3 * terms),
+            "{found:e} {expected:e} {terms:e}"
+        );
     }
     // The independent sum would be far from it.
     assert!(terms > 1.5 * whole.vorticity);
@@ -139,17 +157,37 @@ fn parts_of_a_region_have_its_variance() {
     complete_errors(&built.polygons, &sampling, &winds, &[structure], &mut block);
     for p in [0, 3, region] {
         let c = covariance(p, p);
-        assert!(close(block.vorticity_se[p].powi(2), c.vorticity, 1e-4 * c.vorticity));
-        assert!(close(block.divergence_se[p].powi(2), c.divergence, 1e-4 * c.divergence));
+        assert!(close(
+            block.vorticity_se[p].powi(2),
+            c.vorticity,
+            1e-4 * c.vorticity
+        ));
+        assert!(close(
+            block.divergence_se[p].powi(2),
+            c.divergence,
+            1e-4 * c.divergence
+        ));
     }
 }
 
 #[test]
 fn the_parts_add_up_and_age_adds_to_them() {
-    let simulation = Simulation::new(Class { side: 3, dropouts: 0.1, ..Class::default() }, 4);
+    let simulation = Simulation::new(
+        Class {
+            side: 3,
+            dropouts: 0.1,
+            ..Class::default()
+        },
+        4,
+    );
     let (mut winds, _) = simulation.noisy(12, 6);
     let polygons = &simulation.built.polygons;
-    let sampling = Sampling::new(polygons, &simulation.built.edges, &positions(&simulation.network), 30e3);
+    let sampling = Sampling::new(
+        polygons,
+        &simulation.built.edges,
+        &positions(&simulation.network),
+        30e3,
+    );
     let complete = |winds: &WindBlock, models: &[StructureFunction]| {
         let mut block = estimate(polygons, winds);
         let parts = complete_errors(polygons, &sampling, winds, models, &mut block);
@@ -184,7 +222,14 @@ fn the_parts_add_up_and_age_adds_to_them() {
 /// The same structure functions however the run is cut into blocks.
 #[test]
 fn blocks_may_be_cut_anywhere() {
-    let simulation = Simulation::new(Class { side: 4, dropouts: 0.2, ..Class::default() }, 8);
+    let simulation = Simulation::new(
+        Class {
+            side: 4,
+            dropouts: 0.2,
+            ..Class::default()
+        },
+        8,
+    );
     let (whole, _) = simulation.noisy(40, 9);
     let settings = StructureSettings::default();
     let geometry = NetworkGeometry::new(&simulation.network, 30e3, &[]);
@@ -217,7 +262,10 @@ fn part(block: &WindBlock, from: usize, to: usize, stations: usize) -> WindBlock
     for s in 0..stations {
         for t in from..to {
             let cell = s * n + t;
-            let wind = Wind { u: block.u[cell], v: block.v[cell] };
+            let wind = Wind {
+                u: block.u[cell],
+                v: block.v[cell],
+            };
             let covariance = Covariance {
                 uu: block.var_u[cell],
                 uv: block.cov_uv[cell],
@@ -237,7 +285,10 @@ fn part(block: &WindBlock, from: usize, to: usize, stations: usize) -> WindBlock
 fn second_opinion_disagrees_as_often_as_it_says() {
     let (mut squares, mut fit_squares, mut count, mut few) = (0.0, 0.0, 0.0, 0.0);
     for seed in 0..3 {
-        let class = Class { side: 4, ..Class::default() };
+        let class = Class {
+            side: 4,
+            ..Class::default()
+        };
         let mut simulation = Simulation::new(class, 40 + seed);
         let rings = [
             ring("a", &[0, 4, 8, 13, 10, 6, 2, 1]),
@@ -253,9 +304,15 @@ fn second_opinion_disagrees_as_often_as_it_says() {
         let settings = StructureSettings::default();
         let geometry = NetworkGeometry::new(&simulation.network, spacing, &[]);
         let sums = BlockSums::of(&geometry, &settings, 3600.0, None, &winds);
-        let models = StructureWindow::new(&geometry, settings).advance(&geometry, &sums, &winds.times);
+        let models =
+            StructureWindow::new(&geometry, settings).advance(&geometry, &sums, &winds.times);
         let polygons = &simulation.built.polygons;
-        let sampling = Sampling::new(polygons, &simulation.built.edges, &positions(&simulation.network), spacing);
+        let sampling = Sampling::new(
+            polygons,
+            &simulation.built.edges,
+            &positions(&simulation.network),
+            spacing,
+        );
         let estimates: EstimateBlock = estimate(polygons, &winds);
         for (p, polygon) in polygons.iter().enumerate() {
             let second = SecondOpinion::new(polygon, p, &sampling).unwrap();
@@ -277,7 +334,12 @@ fn second_opinion_disagrees_as_often_as_it_says() {
             }
         }
     }
-    println!("{} {} {} of {count}", squares / count, fit_squares / count, 2.0 * few / count);
+    println!(
+        "{} {} {} of {count}",
+        squares / count,
+        fit_squares / count,
+        2.0 * few / count
+    );
     assert!(count > 300.0);
     assert!((0.85..1.15).contains(&(squares / count)));
     assert!((0.85..1.15).contains(&(fit_squares / count)));

@@ -1,18 +1,21 @@
 //! Do the intervals hold what they claim? Winds that are known everywhere, estimated as the program does it.
 #![allow(
+    clippy::needless_range_loop,
     clippy::unwrap_used,
     clippy::panic,
     clippy::print_stdout,
-    reason = "tests may panic and print"
+    reason = "tests may panic and print; polygons and times index several columns"
 )]
 
 mod common;
 
 use common::turbulence::{Class, Layout, Simulation};
-use gyremesh::align::WindBlock;
+use gyremesh::align::{WindBlock, instrument_covariance};
 use gyremesh::check::Flag;
 use gyremesh::integral::{Sampling, complete_errors, estimate};
+use gyremesh::settings::SensorErrors;
 use gyremesh::structure::{BlockSums, NetworkGeometry, StructureSettings, StructureWindow};
+use gyremesh::units::Wind;
 
 /// Hours of one realisation; values of the second half are counted, when the window holds twelve hours or more.
 const HOURS: usize = 24;
@@ -46,13 +49,14 @@ impl Coverage {
     }
 }
 
-/// Vorticity and divergence.
-fn coverage(class: Class, realisations: u64, trace: bool) -> [Coverage; 2] {
+/// Coverage of vorticity and divergence. Each class has fields of its own: `number` sets the random numbers.
+fn coverage(class: Class, realisations: u64, number: u64) -> [Coverage; 2] {
     let mut all = [Coverage::default(); 2];
-    for seed in 0..realisations {
+    for k in 0..realisations {
+        let seed = 1000 * number + k;
         let simulation = Simulation::new(class, seed);
-        let (winds, truth) = simulation.noisy(HOURS, 1000 + seed);
-        count(&simulation, &winds, &truth, &mut all, trace);
+        let (winds, truth) = simulation.noisy(HOURS, 1_000_000 + seed);
+        count(&simulation, &winds, &truth, &mut all, HOURS / 2..HOURS);
     }
     all
 }
@@ -62,7 +66,7 @@ fn count(
     winds: &WindBlock,
     truth: &[Vec<[f64; 2]>],
     all: &mut [Coverage; 2],
-    trace: bool,
+    hours: std::ops::Range<usize>,
 ) {
     let settings = StructureSettings::default();
     let mut edges: Vec<f64> = simulation
@@ -78,9 +82,6 @@ fn count(
     let mut window = StructureWindow::new(&geometry, settings);
     let sums = BlockSums::of(&geometry, &settings, 3600.0, None, winds);
     let models = window.advance(&geometry, &sums, &winds.times);
-    if trace {
-        println!("{:?} {spacing}", models.last().unwrap());
-    }
     let polygons = &simulation.built.polygons;
     let sampling = Sampling::new(
         polygons,
@@ -92,7 +93,7 @@ fn count(
     complete_errors(polygons, &sampling, winds, &models, &mut block);
     let n = winds.times.len();
     for p in 0..polygons.len() {
-        for t in n / 2..n {
+        for t in hours.clone() {
             let cell = p * n + t;
             if block.flag[cell] < Flag::Fail {
                 let [z, d] = truth[t][p];
@@ -127,13 +128,43 @@ fn line(class: &Class, [z, d]: &[Coverage; 2]) -> String {
 const SLOPES: [f64; 3] = [5.0 / 3.0, 2.0, 3.0];
 const LAYOUTS: [Layout; 3] = [Layout::Regular, Layout::Jittered, Layout::Clustered];
 
-/// All classes of spectrum, divergent share, strength, spacing, layout, sensor noise and dropouts. Values of one class:
-/// 8 realisations × 12 hours × some 70 triangles of 49 stations; the errors of 49 stations and 130 sides are
-/// independent, so the 70 triangles are worth no less than 30: 2,900 independent values.
+/// A few classes of [`every_class`].
 #[test]
-#[ignore = "takes a minute when optimised, half an hour when not; run by .ci/run"]
+fn some_classes() {
+    for (number, (slope, divergent, layout, noise, dropouts)) in [
+        (5.0 / 3.0, 0.0, Layout::Regular, 0.1, 0.0),
+        (5.0 / 3.0, 0.5, Layout::Clustered, 1.0, 0.0),
+        (2.0, 1.0, Layout::Jittered, 0.3, 0.1),
+        (3.0, 0.5, Layout::Jittered, 0.3, 0.0),
+    ]
+    .into_iter()
+    .enumerate()
+    {
+        let class = Class {
+            slope,
+            divergent,
+            layout,
+            noise,
+            dropouts,
+            ..Class::default()
+        };
+        let found = coverage(class, 6, 900 + number as u64);
+        println!("{}", line(&class, &found));
+        assert!(
+            found.iter().all(Coverage::holds),
+            "{}",
+            line(&class, &found)
+        );
+    }
+}
+
+/// All classes of spectrum, divergent share, strength, spacing, layout, sensor noise and dropouts. Values of one class:
+/// 10 realisations × 12 hours × some 70 triangles of 49 stations; the errors of 49 stations and 130 sides are
+/// independent, so the 70 triangles are worth no less than 30: 3,600 independent values.
+#[test]
+#[ignore = "takes two minutes when optimised, an hour when not; run by .ci/run"]
 fn every_class() {
-    let mut failed = Vec::new();
+    let (mut failed, mut number) = (Vec::new(), 0);
     for slope in SLOPES {
         for divergent in [0.0, 0.5, 1.0] {
             for layout in LAYOUTS {
@@ -150,7 +181,8 @@ fn every_class() {
                                 dropouts,
                                 ..Class::default()
                             };
-                            let found = coverage(class, 8, false);
+                            let found = coverage(class, 10, number);
+                            number += 1;
                             println!("{}", line(&class, &found));
                             if !found.iter().all(Coverage::holds) {
                                 failed.push(line(&class, &found));
@@ -161,28 +193,127 @@ fn every_class() {
             }
         }
     }
-    assert!(failed.is_empty(), "{}\n{}", failed.len(), failed.join("\n"));
+    let report = failed.join("\n");
+    assert!(failed.is_empty(), "{} of {number}\n{report}", failed.len());
 }
 
+/// Where the method is known to be weak, with bounds on the mean squared standardised error (1 if it were right):
+///
+/// - the longest waves are 4 or 2 spacings long: no pair and no plane is small against them, so the smooth wind between
+///   the stations looks rough (4) or what the stations miss is larger than any law of theirs says (2);
+/// - a steep spectrum over 16 stations or fewer: the prior exponent of 2/3 still counts;
+/// - the first hours after a start, and winds that grow fourfold in a day: the amplitude lags by its memory.
 #[test]
-#[ignore = "explores"]
-fn explore() {
+#[ignore = "takes a minute when optimised; run by .ci/run"]
+fn weak_classes() {
+    let base = Class::default();
+    let mut outside = Vec::new();
+    let mut number = 2000;
     for slope in SLOPES {
-        for (side, outer, rms, noise) in [(7, 20.0, 5.0, 0.1), (7, 20.0, 1.0, 1.0), (7, 4.0, 2.0, 0.3), (7, 2.0, 2.0, 0.3), (4, 20.0, 2.0, 0.3), (3, 20.0, 2.0, 0.3), (2, 20.0, 2.0, 0.3)] {
-            for layout in [Layout::Jittered, Layout::Clustered] {
-              for dropouts in [0.0, 0.1] {
-                let class = Class {
-                    slope,
-                    layout,
-                    side,
-                    outer, rms, noise, dropouts,
-                    ..Class::default()
-                };
-                let runs = 8 * 49 / (side * side) as u64;
-                let found = coverage(class, runs, std::env::var("TRACE").is_ok());
-                println!("side {side} {}", line(&class, &found));
+        for (name, class, bounds) in [
+            (
+                "waves of 4 spacings",
+                Class { outer: 4.0, ..base },
+                0.5..1.1,
+            ),
+            (
+                "waves of 2 spacings",
+                Class { outer: 2.0, ..base },
+                0.9..1.4,
+            ),
+            ("16 stations", Class { side: 4, ..base }, 0.75..1.1),
+            ("9 stations", Class { side: 3, ..base }, 0.65..1.15),
+            ("4 stations", Class { side: 2, ..base }, 0.65..1.2),
+            (
+                "9 clustered",
+                Class {
+                    side: 3,
+                    layout: Layout::Clustered,
+                    ..base
+                },
+                0.75..1.15,
+            ),
+            (
+                "growing winds",
+                Class {
+                    growth: 4.0,
+                    ..base
+                },
+                0.85..1.2,
+            ),
+        ] {
+            let class = Class { slope, ..class };
+            let runs = 6 * 49 / (class.side * class.side) as u64;
+            let found = coverage(class, runs, number);
+            number += 1;
+            println!("{name:20} {}", line(&class, &found));
+            for c in found {
+                if !bounds.contains(&c.shares()[2]) {
+                    outside.push(format!("{name} {}", line(&class, &found)));
+                }
             }
-          }
         }
+        for (hours, bounds) in [(0..1, 0.7..1.3), (1..4, 0.8..1.2)] {
+            let class = Class { slope, ..base };
+            let mut found = [Coverage::default(); 2];
+            for seed in 0..20 {
+                let simulation = Simulation::new(class, 9000 + seed);
+                let (winds, truth) = simulation.noisy(4, 9100 + seed);
+                count(&simulation, &winds, &truth, &mut found, hours.clone());
+            }
+            println!("hours {hours:?}           {}", line(&class, &found));
+            for c in found {
+                if !bounds.contains(&c.shares()[2]) {
+                    outside.push(format!("{hours:?} {}", line(&class, &found)));
+                }
+            }
+        }
+    }
+    assert!(outside.is_empty(), "{}", outside.join("\n"));
+}
+
+/// Winds reported in steps of 10 degrees and 1 kt, without any other error.
+#[test]
+fn rounded_reports() {
+    let coded = SensorErrors {
+        speed_sd: 0.0,
+        speed_sd_share: 0.0,
+        direction_sd: 0.0,
+        speed_step: Some(1852.0 / 3600.0),
+        direction_step: Some(10.0),
+        calm_below: 0.5,
+    };
+    let class = Class {
+        spacing: 3e3,
+        rms: 1.5,
+        noise: 0.0,
+        ..Class::default()
+    };
+    let mut all = [Coverage::default(); 2];
+    for seed in 0..6 {
+        let simulation = Simulation::new(class, 700 + seed);
+        let (winds, truth) = simulation.run(HOURS, 710 + seed, |(u, v), _| {
+            // Over a wind of 7 m/s, which differs from no station to another.
+            let wind = rounded(Wind {
+                u: u + 6.0,
+                v: v + 3.6,
+            });
+            (wind, instrument_covariance(wind, false, &coded))
+        });
+        count(&simulation, &winds, &truth, &mut all, HOURS / 2..HOURS);
+    }
+    println!("{}", line(&class, &all));
+    assert!(all.iter().all(Coverage::holds), "{}", line(&class, &all));
+}
+
+/// As reported in whole knots and tens of degrees.
+fn rounded(wind: Wind) -> Wind {
+    let knot = 1852.0 / 3600.0;
+    let speed = (wind.u.hypot(wind.v) / knot).round() * knot;
+    let direction = (wind.v.atan2(wind.u).to_degrees() / 10.0).round() * 10.0;
+    let (sin, cos) = direction.to_radians().sin_cos();
+    Wind {
+        u: speed * cos,
+        v: speed * sin,
     }
 }

@@ -55,10 +55,7 @@ pub fn complete_errors(
         parts.timing = vec![0.0; cells];
     }
     let Some(last) = models.last() else {
-        budget
-            .vorticity
-            .instrument
-            .clone_from(&block.vorticity_se);
+        budget.vorticity.instrument.clone_from(&block.vorticity_se);
         budget
             .divergence
             .instrument
@@ -78,7 +75,10 @@ pub fn complete_errors(
         if let Some(aged) = &aged {
             add_timing(&polygon.row, winds, aged, &mut timing);
         }
-        for (times, of_run) in runs.iter().map(|(times, e)| (times, sampling.constants(*e))) {
+        for (times, of_run) in runs
+            .iter()
+            .map(|(times, e)| (times, sampling.constants(*e)))
+        {
             let SamplingConstants { along, across, .. } = of_run[p];
             for t in times.clone() {
                 let cell = p * n + t;

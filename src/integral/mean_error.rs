@@ -100,12 +100,12 @@ mod tests {
 
     #[test]
     fn equals_the_double_sum_however_it_is_cut() {
-        let values = [(0, 2.0), (600, 1.0), (1200, 3.0), (9000, 1.5), (9600, 0.5)];
+        let values: [(i32, f64); 5] = [(0, 2.0), (600, 1.0), (1200, 3.0), (9000, 1.5), (9600, 0.5)];
         let t = 1800.0_f64;
         let mut double = 0.0;
         for (a, x) in values {
             for (b, y) in values {
-                double += x * y * (-f64::from((a - b as i32).abs()) / t).exp();
+                double += x * y * (-f64::from((a - b).abs()) / t).exp();
             }
         }
         let persistent: f64 = 0.7;

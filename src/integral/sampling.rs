@@ -211,8 +211,12 @@ impl Sampling {
         }
         // Lengths are in units of the reference, areas in m².
         let scale = self.reference * self.reference / (first.area * second.area);
-        let [vorticity, divergence, vorticity_divergence, divergence_vorticity] = sums
-            .map(|[l, t]| scale * (structure.longitudinal * l + structure.transverse * t));
+        let [
+            vorticity,
+            divergence,
+            vorticity_divergence,
+            divergence_vorticity,
+        ] = sums.map(|[l, t]| scale * (structure.longitudinal * l + structure.transverse * t));
         PairCovariance {
             vorticity,
             divergence,

@@ -50,7 +50,10 @@ impl std::fmt::Display for NoQuadratic {
     fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
         match self {
             Self::TooFew(n) => {
-                write!(f, "{n} stations, {QUADRATIC_STATIONS} needed for a quadratic fit")
+                write!(
+                    f,
+                    "{n} stations, {QUADRATIC_STATIONS} needed for a quadratic fit"
+                )
             }
             Self::OnConic(condition) => write!(
                 f,
@@ -99,10 +102,9 @@ impl SecondOpinion {
         for e in &segments {
             for station in e.stations {
                 if let Some(k) = stations.iter().position(|s| s.0 == station) {
-                    for axis in 0..2 {
-                        line[k][axis] +=
-                            0.5 * e.length * reference * e.tangent[axis] / polygon.shape.area;
-                    }
+                    let factor = 0.5 * e.length * reference / polygon.shape.area;
+                    line[k][0] += factor * e.tangent[0];
+                    line[k][1] += factor * e.tangent[1];
                 }
             }
         }
@@ -193,9 +195,8 @@ impl SecondOpinion {
         let both = |[along, across]: [f64; 2]| {
             [l * along + c * across, l * across + c * along].map(|v: f64| v.max(0.0))
         };
-        let of_stations = |row: &CoefficientRow| {
-            super::station_covariance(row, row, winds, t, structure)
-        };
+        let of_stations =
+            |row: &CoefficientRow| super::station_covariance(row, row, winds, t, structure);
         let own = of_stations(&self.linear);
         let sampled = both(fitted);
         let apart = of_stations(&self.local_difference);
@@ -372,7 +373,10 @@ mod tests {
                 [3e4 * cos + 1e4 * sin, 2e4 * sin]
             })
             .collect();
-        assert!(matches!(quadratic(&ellipse, [0.0; 2]), Err(NoQuadratic::OnConic(_))));
+        assert!(matches!(
+            quadratic(&ellipse, [0.0; 2]),
+            Err(NoQuadratic::OnConic(_))
+        ));
         assert_eq!(quadratic(&PENTAGON, [0.0; 2]), Err(NoQuadratic::TooFew(5)));
         let mut inside = ellipse;
         inside.push([2e3, -1e3]);
@@ -383,6 +387,9 @@ mod tests {
             .zip(&inside)
             .map(|(w, p)| w[0] * 1e-9 * p[0] * p[1] + w[1] * 1e-9 * p[0] * p[0])
             .sum();
-        assert!((vorticity - (2.0 - 1.0) * 1e-9 * 4e3).abs() < 1e-15, "{vorticity}");
+        assert!(
+            (vorticity - (2.0 - 1.0) * 1e-9 * 4e3).abs() < 1e-15,
+            "{vorticity}"
+        );
     }
 }

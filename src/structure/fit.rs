@@ -45,9 +45,7 @@ pub(super) fn fit(
     });
     let bound = 1.0 + exponent.value();
     let ratio = transverse_ratio(&window.pairs, shape)
-        .map_or(1.0, |r| {
-            r.powf(values / (values + settings.prior_values))
-        })
+        .map_or(1.0, |r| r.powf(values / (values + settings.prior_values)))
         .clamp(1.0 / bound, bound);
     let share = |known: f64| known / (values + known);
     let mut found = StructureFunction {
@@ -165,7 +163,12 @@ fn temporal(
     let constant = (law.constant - noise).max(0.0);
     TemporalFunction {
         reference,
-        amplitude: shrunk(law.amplitude + constant, known, values, settings.prior_values),
+        amplitude: shrunk(
+            law.amplitude + constant,
+            known,
+            values,
+            settings.prior_values,
+        ),
         exponent: law.exponent,
         prior_share: settings.prior_values / (values + settings.prior_values),
     }

@@ -158,8 +158,8 @@ pub struct StructureSettings {
     /// mild statement.
     pub prior_values: f64,
     /// Independent values that the prior exponent is worth. The slope from N values at distances within a factor of 3
-    /// has an error of about 2/√N; 16 of them are as sure as "1/3 to 2, most often 2/3 or 1", a standard deviation of
-    /// 0.5.
+    /// has an error of about 2/√N; 8 of them are as sure as "anything from 1/3 to 2, most often 2/3 or 1", a standard
+    /// deviation of 0.7.
     pub prior_exponent_values: f64,
     /// Independent values at which the last hours and the whole window weigh alike in the amplitude. 10, as for the prior.
     pub window_values: f64,
@@ -178,7 +178,7 @@ impl Default for StructureSettings {
             prior_distance: 30e3,
             prior_speed: 5.0,
             prior_values: 10.0,
-            prior_exponent_values: 16.0,
+            prior_exponent_values: 8.0,
             window_values: 10.0,
             independent_after: 3600.0,
         }

@@ -1,5 +1,7 @@
 //! The differences of winds that a network offers: pairs of stations, and stations against a plane through others.
 
+use std::f64::consts::{FRAC_PI_2, FRAC_PI_4, TAU};
+
 use geographiclib_rs::{Geodesic, InverseGeodesic};
 
 use super::function::Exponent;
@@ -14,12 +16,11 @@ pub const CLASSES: usize = 8;
 /// Pairs of one station in one class, at most, with stations that come later in the network.
 const PAIRS_IN_CLASS: usize = 2;
 /// Stations that a plane is laid through, at first; more where they stand badly.
-const PLANE_STATIONS: usize = 5;
+const PLANE_STATIONS: usize = 4;
 const MOST_PLANE_STATIONS: usize = 8;
-/// Stations of wide planes are this many spacings away, give or take [`WIDE_BY`], in so many sixths of the horizon.
+/// Stations of wide planes are this many spacings away, give or take [`WIDE_BY`], one in each quarter of the horizon.
 const WIDE: f64 = 1.8;
 const WIDE_BY: f64 = 0.6;
-const LEAST_SECTORS: usize = 4;
 /// A plane of which the value at the station has more than this times the variance of one wind is no comparison.
 const LARGEST_SQUARED_WEIGHTS: f64 = 4.0;
 /// Stations of planes report at least this share of the times.
@@ -88,7 +89,7 @@ impl NetworkGeometry {
             stations: positions.len(),
             pairs: Vec::new(),
             planes: Vec::new(),
-            class_distance: std::array::from_fn(|k| middle_of_class(k)),
+            class_distance: std::array::from_fn(middle_of_class),
             plane_growth: vec![[0.0; Exponent::COUNT]; CLASSES],
             plane_noise: [0.0; CLASSES],
         };
@@ -103,7 +104,7 @@ impl NetworkGeometry {
             around.retain(|&(other, _)| share(other) >= OFTEN);
             if share(station) >= OFTEN {
                 geometry.add_near_plane(station, &around, &positions);
-                geometry.add_wide_plane(station, &around, &positions);
+                geometry.add_wide_planes(station, &around, &positions);
             }
         }
         geometry.plane_constants(&positions);
@@ -126,9 +127,7 @@ impl NetworkGeometry {
         for class in 0..CLASSES {
             let inside: Vec<usize> = around
                 .iter()
-                .filter(|&&(other, d)| {
-                    other > station && class_of(d / self.spacing) == Some(class)
-                })
+                .filter(|&&(other, d)| other > station && class_of(d / self.spacing) == Some(class))
                 .map(|&(other, _)| other)
                 .collect();
             let step = inside.len().div_ceil(PAIRS_IN_CLASS).max(1);
@@ -160,29 +159,35 @@ impl NetworkGeometry {
         }
     }
 
-    /// The plane through stations farther away, one in each sixth of the horizon: the same comparison at a larger
-    /// scale, from which the exponent is found.
-    fn add_wide_plane(&mut self, station: usize, around: &[(usize, f64)], positions: &[Position]) {
+    /// Planes through four stations farther away, one in each quarter of the horizon, for two ways of quartering it: the
+    /// same comparison at a larger scale, from which the exponent is found.
+    fn add_wide_planes(&mut self, station: usize, around: &[(usize, f64)], positions: &[Position]) {
         let here = positions[station];
         let plane = LocalPlane::at((here.latitude(), here.longitude()));
-        let off = |d: f64| (d / self.spacing - WIDE).abs();
-        let mut sectors: [Option<(usize, f64)>; 6] = [None; 6];
-        for &(other, d) in around.iter().filter(|c| off(c.1) < WIDE_BY) {
-            let [x, y] = plane.place(positions[other]).at;
-            let sixth = y.atan2(x).rem_euclid(std::f64::consts::TAU) / std::f64::consts::FRAC_PI_3;
-            #[expect(
-                clippy::cast_possible_truncation,
-                clippy::cast_sign_loss,
-                reason = "0 to 6"
-            )]
-            let best = &mut sectors[(sixth as usize).min(5)];
-            if best.is_none_or(|(_, held)| off(d) < off(held)) {
-                *best = Some((other, d));
+        let spacing = self.spacing;
+        let off = |d: f64| (d / spacing - WIDE).abs();
+        let mut first = Vec::new();
+        for turn in [0.0, FRAC_PI_4] {
+            let mut quarters: [Option<(usize, f64)>; 4] = [None; 4];
+            for &(other, d) in around.iter().filter(|c| off(c.1) < WIDE_BY) {
+                let [x, y] = plane.place(positions[other]).at;
+                let quarter = (y.atan2(x) + turn).rem_euclid(TAU) / FRAC_PI_2;
+                #[expect(
+                    clippy::cast_possible_truncation,
+                    clippy::cast_sign_loss,
+                    reason = "0 to 4"
+                )]
+                let best = &mut quarters[(quarter as usize).min(3)];
+                if best.is_none_or(|(_, held)| off(d) < off(held)) {
+                    *best = Some((other, d));
+                }
             }
-        }
-        let chosen: Vec<(usize, f64)> = sectors.into_iter().flatten().collect();
-        if chosen.len() >= LEAST_SECTORS {
-            self.add_plane(station, &chosen, positions);
+            let mut chosen: Vec<(usize, f64)> = quarters.into_iter().flatten().collect();
+            chosen.sort_unstable_by_key(|c| c.0);
+            if chosen.len() == 4 && chosen != first {
+                self.add_plane(station, &chosen, positions);
+                first = chosen;
+            }
         }
     }
 
@@ -257,8 +262,8 @@ impl NetworkGeometry {
                     growth[p.index()] += difference.to_unit
                         * self.variance_of_difference(&difference.weights, &points, p.value());
                 }
-                noise += difference.to_unit
-                    * difference.weights.iter().map(|w| w.1 * w.1).sum::<f64>();
+                noise +=
+                    difference.to_unit * difference.weights.iter().map(|w| w.1 * w.1).sum::<f64>();
                 count += 1.0;
             }
             if count > 0.0 {
@@ -339,7 +344,13 @@ mod tests {
 
     #[test]
     fn a_plane_is_met_by_its_own_values() {
-        let points = [[1.0, 0.5], [-1.0, 0.7], [0.2, -1.0], [0.9, 1.3], [-0.4, 0.1]];
+        let points = [
+            [1.0, 0.5],
+            [-1.0, 0.7],
+            [0.2, -1.0],
+            [0.9, 1.3],
+            [-0.4, 0.1],
+        ];
         let weights = value_of_plane(&points).unwrap_or_default();
         let value = |p: &[f64; 2]| 3.0 - 2.0 * p[0] + 5.0 * p[1];
         let found: f64 = points.iter().zip(&weights).map(|(p, w)| w * value(p)).sum();

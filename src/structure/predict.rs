@@ -129,7 +129,10 @@ impl Group {
         let n = winds.times.len();
         let cell = |station: usize| station * n + t;
         let usable = |s: &&(usize, PlanePoint)| winds.flag[cell(s.0)] < Flag::Fail;
-        let predicted = self.stations[..self.predicted].iter().filter(usable).count();
+        let predicted = self.stations[..self.predicted]
+            .iter()
+            .filter(usable)
+            .count();
         let present: Vec<&(usize, PlanePoint)> = self.stations.iter().filter(usable).collect();
         if predicted == 0 || present.len() < 2 {
             return;
@@ -241,9 +244,7 @@ fn in_plane(c: Covariance, point: &PlanePoint) -> [f64; 3] {
 fn turned(c: Matrix2<f64>, point: &PlanePoint) -> Covariance {
     let (e, n) = (point.to_local([1.0, 0.0]), point.to_local([0.0, 1.0]));
     let entry = |p: usize, q: usize| {
-        c[(0, 0)] * e[p] * e[q]
-            + c[(0, 1)] * (e[p] * n[q] + n[p] * e[q])
-            + c[(1, 1)] * n[p] * n[q]
+        c[(0, 0)] * e[p] * e[q] + c[(0, 1)] * (e[p] * n[q] + n[p] * e[q]) + c[(1, 1)] * n[p] * n[q]
     };
     Covariance {
         uu: entry(0, 0),

@@ -1,5 +1,7 @@
 //! Which power law: exponent and site variance.
 
+use nalgebra::{Matrix3, Vector3};
+
 use super::function::{Exponent, StructureSettings};
 use super::geometry::{CLASSES, NetworkGeometry};
 use super::sums::StructureSums;
@@ -7,7 +9,7 @@ use super::sums::StructureSums;
 /// What the pairs say of the exponent counts as this many independent values at most: they cannot tell a wind that
 /// varies linearly over the network, in which the line integral makes no error, from one that is rough. The planes
 /// can.
-const PAIR_VALUES: f64 = 100.0;
+const PAIR_VALUES: f64 = 30.0;
 
 /// Misfit by which a site variance must better the fit to be believed: that of one more parameter (Akaike 1974, IEEE
 /// Trans. Autom. Control 19, 716).
@@ -21,6 +23,15 @@ const KEPT: usize = 3;
 
 /// Passes of the reweighted least squares; the fourth changes nothing that matters.
 const PASSES: usize = 3;
+
+/// A law of the pairs with its misfit and that of the planes and the prior; for the choice of the exponent, and with
+/// the pairs at their full weight, for the choice whether sites add anything: of this the planes say little.
+#[derive(Debug, Clone, Copy)]
+struct Candidate {
+    law: Law,
+    misfit: f64,
+    full_misfit: f64,
+}
 
 /// The shape of the structure function.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -75,7 +86,8 @@ impl Shape {
     ///   Nelder 1989, section 8.3.4; from memory): classes count by relative error and one that is poorly filled by
     ///   little. The classes are the pairs, by distance out to twice the spacing, with 4 n + s r^p + b r² (b for a wind
     ///   that varies linearly), and the planes of different sizes, with their variances under r^p and n. The prior of
-    ///   the exponent is a normal one of standard deviation 2/√`prior_exponent_values`.
+    ///   the exponent is a normal one of standard deviation 2/√`prior_exponent_values`. For the choice of the exponent
+    ///   the pairs weigh as 30 values at most.
     /// - **Site variance** n: 0, unless it betters the fit by more than one parameter must (Akaike 1974).
     /// - **Saturation**: pairs at large distance differ by no more than twice the variance of the wind, which would make
     ///   the exponent too small. The outermost class is left out if it lies more than 2 standard errors below the
@@ -106,7 +118,7 @@ impl Shape {
         let saturated = leave_out_saturated(&mut pairs, settings);
         let scales: Vec<Scale> = pairs.iter().map(|p| p.1).collect();
         let planes = plane_scales(window);
-        let mut best: [Option<(f64, Law)>; 2] = [None; 2];
+        let mut best: [Option<Candidate>; 2] = [None; 2];
         for exponent in Exponent::all().take(Exponent::LARGEST_FITTED.index() + 1) {
             let off = exponent.value() - settings.prior_exponent;
             let prior = off * off * settings.prior_exponent_values / 4.0;
@@ -114,17 +126,22 @@ impl Shape {
                 let Some(law) = law_of(&scales, exponent, k == 1, true) else {
                     continue;
                 };
-                let misfit =
-                    law.misfit + prior + plane_misfit(geometry, &planes, exponent, law.constant);
-                if best.is_none_or(|(least, _)| misfit < least) {
-                    *best = Some((misfit, law));
+                let others = prior + plane_misfit(geometry, &planes, exponent, law.constant);
+                let candidate = Candidate {
+                    law,
+                    misfit: law.misfit + others,
+                    full_misfit: law.misfit * window.independent / values + others,
+                };
+                if best.is_none_or(|b| candidate.misfit < b.misfit) {
+                    *best = Some(candidate);
                 }
             }
         }
         let law = match best {
-            [Some(without), Some(with)] if with.0 + BELIEVED < without.0 => with.1,
-            [Some(without), _] => without.1,
-            [None, Some(with)] => with.1,
+            [Some(without), Some(with)] if with.full_misfit + BELIEVED < without.full_misfit => {
+                with.law
+            }
+            [Some(found), _] | [None, Some(found)] => found.law,
             [None, None] => return Self::prior(settings),
         };
         Self {
@@ -217,7 +234,11 @@ fn law_of(scales: &[Scale], exponent: Exponent, constant: bool, linear: bool) ->
             *m = law.at(s.at) + s.noise;
         }
     }
-    law.misfit = scales.iter().zip(&model).map(|(s, &m)| deviance(s, m)).sum();
+    law.misfit = scales
+        .iter()
+        .zip(&model)
+        .map(|(s, &m)| deviance(s, m))
+        .sum();
     law.misfit.is_finite().then_some(law)
 }
 
@@ -248,38 +269,25 @@ fn not_negative(normal: &[[f64; 3]; 3], right: &[f64; 3], used: [bool; 3]) -> [f
     best
 }
 
-/// Solves the normal equations of the chosen terms by elimination; they are symmetric and positive.
+/// Solves the normal equations of the chosen terms; `None` if they cannot be told apart.
 fn solve(normal: &[[f64; 3]; 3], right: &[f64; 3], chosen: [bool; 3]) -> Option<[f64; 3]> {
-    let mut m = *normal;
-    let mut y = *right;
-    for k in 0..3 {
-        if !chosen[k] {
-            for i in 0..3 {
-                m[k][i] = 0.0;
-                m[i][k] = 0.0;
-            }
-            (m[k][k], y[k]) = (1.0, 0.0);
+    // A term left out has a row of its own that says it is 0.
+    let entry = |i: usize, j: usize| {
+        if chosen[i] && chosen[j] {
+            normal[i][j]
+        } else if i == j {
+            1.0
+        } else {
+            0.0
         }
-    }
-    let diagonal = [m[0][0], m[1][1], m[2][2]];
-    for k in 0..3 {
-        // Terms that are the same but for rounding cannot be told apart.
-        if m[k][k] <= 1e-10 * diagonal[k] {
-            return None;
-        }
-        for i in k + 1..3 {
-            let factor = m[i][k] / m[k][k];
-            for j in k..3 {
-                m[i][j] -= factor * m[k][j];
-            }
-            y[i] -= factor * y[k];
-        }
-    }
-    let z = y[2] / m[2][2];
-    let v = (y[1] - m[1][2] * z) / m[1][1];
-    let u = (y[0] - m[0][1] * v - m[0][2] * z) / m[0][0];
-    let found = [u, v, z];
-    found.iter().all(|x| x.is_finite()).then_some(found)
+    };
+    let m: Matrix3<f64> = Matrix3::from_fn(entry);
+    let y: Vector3<f64> = Vector3::from_fn(|i, _| if chosen[i] { right[i] } else { 0.0 });
+    // Cholesky's pivots are what is left of a term when the others are taken off: its share must not be rounding.
+    let cholesky = m.cholesky()?;
+    let told = (0..3).all(|k| cholesky.l_dirty()[(k, k)].powi(2) > 1e-10 * m[(k, k)]);
+    let x = cholesky.solve(&y);
+    (told && x.iter().all(|v| v.is_finite())).then(|| x.into())
 }
 
 /// Planes by class; `at` is not used.
@@ -318,10 +326,18 @@ fn plane_misfit(
             xy += w * growth(*k) * (s.total - fixed(*k, s));
             xx += w * growth(*k) * growth(*k);
         }
-        amplitude = if xx > 0.0 { (xy / xx).max(0.0) } else { amplitude };
+        amplitude = if xx > 0.0 {
+            (xy / xx).max(0.0)
+        } else {
+            amplitude
+        };
         for ((k, s), m) in planes.iter().zip(&mut model) {
             *m = fixed(*k, s) + amplitude * growth(*k);
         }
     }
-    planes.iter().zip(&model).map(|((_, s), &m)| deviance(s, m)).sum()
+    planes
+        .iter()
+        .zip(&model)
+        .map(|((_, s), &m)| deviance(s, m))
+        .sum()
 }

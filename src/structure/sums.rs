@@ -173,10 +173,7 @@ fn lag_sum(later: (&WindBlock, usize), earlier: (&WindBlock, usize), lag: i64, n
         let usable = later.0.flag[a] < Flag::Fail && earlier.0.flag[b] < Flag::Fail;
         let ages = f64::from(later.0.age[a]) + f64::from(earlier.0.age[b]);
         if usable && ages < 0.5 * seconds {
-            let (du, dv) = (
-                later.0.u[a] - earlier.0.u[b],
-                later.0.v[a] - earlier.0.v[b],
-            );
+            let (du, dv) = (later.0.u[a] - earlier.0.u[b], later.0.v[a] - earlier.0.v[b]);
             sum.count += 1.0;
             sum.squares += du * du + dv * dv;
             sum.noise += later.0.var_u[a] + later.0.var_v[a];

@@ -34,6 +34,24 @@ pub struct StructureWindow {
     current: StructureFunction,
 }
 
+/// Mean squared differences of one class of distance.
+#[derive(Debug, Clone, Copy, PartialEq, serde::Serialize)]
+pub struct StructureRow {
+    /// The distance that stands for the class, m.
+    pub distance: f64,
+    /// Pairs, each counted at every time.
+    pub pairs: f64,
+    /// Along the line between the stations, less instrument variances, m²/s²; below 0 where these are stated too large.
+    pub longitudinal: f64,
+    /// Across it, m²/s².
+    pub transverse: f64,
+    /// The structure function there, m²/s².
+    pub fitted_longitudinal: f64,
+    /// The structure function there, m²/s². It follows the last hours, and what a wind that varies linearly adds to the
+    /// differences is not in it.
+    pub fitted_transverse: f64,
+}
+
 impl StructureWindow {
     /// An empty window: the prior.
     #[must_use]
@@ -64,6 +82,28 @@ impl StructureWindow {
             sums.add(last, 1.0);
         }
         sums
+    }
+
+    /// The mean squared differences of the window by class of distance, and the law beside them; classes without pairs
+    /// are left out.
+    #[must_use]
+    pub fn table(&self, geometry: &NetworkGeometry) -> Vec<StructureRow> {
+        let sums = self.sums();
+        let filled = sums.pairs.iter().enumerate().filter(|(_, c)| c.count > 0.0);
+        let rows = filled.map(|(k, class)| {
+            let distance = geometry.class_distance[k] * geometry.spacing;
+            let [along, across] = self.current.at(distance);
+            let sites = 2.0 * self.current.site_variance;
+            StructureRow {
+                distance,
+                pairs: class.count,
+                longitudinal: class.along / class.count,
+                transverse: class.across / class.count,
+                fitted_longitudinal: sites + along,
+                fitted_transverse: sites + across,
+            }
+        });
+        rows.collect::<Vec<_>>().into_iter().rev().collect()
     }
 
     /// Takes in the sums of a block and gives the structure function at each of `times` (ascending, those of the

@@ -41,6 +41,8 @@ pub struct Class {
     pub outer: f64,
     /// Stations on a side of the network.
     pub side: usize,
+    /// What the winds grow by in a day.
+    pub growth: f64,
 }
 
 impl Default for Class {
@@ -55,6 +57,7 @@ impl Default for Class {
             dropouts: 0.0,
             outer: 20.0,
             side: 7,
+            growth: 1.0,
         }
     }
 }
@@ -82,8 +85,7 @@ impl Field {
             (std::f64::consts::TAU / (class.outer * class.spacing)).ln(),
             (std::f64::consts::TAU / (INNER * class.spacing)).ln(),
         );
-        let wavenumber =
-            |j: usize| (low + (high - low) * (j as f64 + 0.5) / MODES as f64).exp();
+        let wavenumber = |j: usize| (low + (high - low) * (j as f64 + 0.5) / MODES as f64).exp();
         // Of the variance, E(k) dk = k^(1 − slope) d ln k; either component has half of a mode's.
         let variance = |j: usize| wavenumber(j).powf(1.0 - class.slope);
         let total: f64 = (0..MODES).map(variance).sum();
@@ -196,11 +198,16 @@ impl Simulation {
         mut report: impl FnMut((f64, f64), &mut ChaCha8Rng) -> (Wind, Covariance),
     ) -> (WindBlock, Vec<Vec<[f64; 2]>>) {
         let mut random = ChaCha8Rng::seed_from_u64(seed);
-        let hours = (0..i64::try_from(times).unwrap()).map(|k| Time::from_micros(k * 3_600_000_000));
+        let hours =
+            (0..i64::try_from(times).unwrap()).map(|k| Time::from_micros(k * 3_600_000_000));
         let mut block = WindBlock::empty(hours.collect(), self.places.len());
         let mut truth = Vec::new();
         for t in 0..times {
-            let field = Field::new(&self.class, &mut random);
+            let class = Class {
+                rms: self.class.rms * self.class.growth.powf(t as f64 / 24.0),
+                ..self.class
+            };
+            let field = Field::new(&class, &mut random);
             let (winds, integrals) = field.sample(&self.places, &self.lines);
             truth.push(
                 self.built
