@@ -15,7 +15,7 @@ use gyremesh::align::{Covariance, WindBlock};
 use gyremesh::check::Flag;
 use gyremesh::integral::{
     EstimateBlock, Sampling, SecondOpinion, adjusted, adjusted_for_any_dependence, chance_of,
-    complete_errors, error_covariance, estimate, quadratic, slopes_of_plane,
+    complete_errors, error_covariance, estimate, expected_errors, quadratic, slopes_of_plane,
 };
 use gyremesh::settings::RegionParts;
 use gyremesh::structure::{
@@ -212,6 +212,27 @@ fn the_parts_add_up_and_age_adds_to_them() {
         assert!(close(p.timing[cell].powi(2), timing, 1e-12 * timing));
         let grown = late.divergence_se[cell].powi(2) - fresh.divergence_se[cell].powi(2);
         assert!(close(grown, timing, 1e-9 * sum));
+    }
+    // What is expected without reports is what comes of reports with that error.
+    let constants = sampling.constants(structure.exponent);
+    for cell in (0..fresh.flag.len()).filter(|&c| fresh.flag[c] < Flag::Missing) {
+        let p = cell / n;
+        let expected = expected_errors(
+            &polygons[p],
+            &constants[p],
+            &structure,
+            simulation.class.noise,
+        );
+        assert!(close(
+            expected.total[0],
+            fresh.vorticity_se[cell],
+            1e-9 * expected.total[0]
+        ));
+        assert!(close(
+            expected.total[1],
+            fresh.divergence_se[cell],
+            1e-9 * expected.total[1]
+        ));
     }
     // Without a model the instruments are all there is.
     let (bare, parts) = complete(&winds, &[]);

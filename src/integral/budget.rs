@@ -112,6 +112,41 @@ pub fn complete_errors(
     budget
 }
 
+/// Errors to expect of a polygon before any report is read.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct ExpectedErrors {
+    /// Part of sensors and sites in vorticity and in divergence, 1/s.
+    pub instrument: f64,
+    /// Sampling part of vorticity and of divergence, 1/s.
+    pub sampling: [f64; 2],
+    /// Standard errors of vorticity and of divergence, 1/s.
+    pub total: [f64; 2],
+}
+
+/// What a polygon can resolve with sensors of a stated error and a stated or past structure function: errors with
+/// `sensor_sd`, m/s, in either component of every wind and all reports at the analysis time.
+///
+/// - **Reference**: `methods.md` 1.4 (noise factor: Davies-Jones 1993, MWR 121, 713), [`SamplingConstants::of`].
+#[must_use]
+pub fn expected_errors(
+    polygon: &StationPolygon,
+    constants: &SamplingConstants,
+    structure: &StructureFunction,
+    sensor_sd: f64,
+) -> ExpectedErrors {
+    let factor = polygon.shape.noise_factor;
+    let instrument = factor * factor * (sensor_sd * sensor_sd + structure.site_variance);
+    let [vorticity, divergence, _] = constants.variances(structure);
+    ExpectedErrors {
+        instrument: instrument.sqrt(),
+        sampling: [vorticity.sqrt(), divergence.sqrt()],
+        total: [
+            (instrument + vorticity).sqrt(),
+            (instrument + divergence).sqrt(),
+        ],
+    }
+}
+
 /// Runs of times with one exponent.
 fn runs_of_exponent(
     model: &[&StructureFunction],

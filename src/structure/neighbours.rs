@@ -7,8 +7,9 @@ use crate::station::{Network, ONE_PLACE, Position};
 /// Mean radius of the Earth, m (IUGG 1980, from memory). Distances found here only choose stations.
 const EARTH_RADIUS: f64 = 6_371_008.8;
 
-/// Stations considered around one, at most: the nearest of those in the cells about it.
-const CONSIDERED: usize = 96;
+/// Of the stations around one, the nearest so many are all considered, and of the others so many at even steps.
+const NEAREST: usize = 32;
+const OTHERS: usize = 64;
 
 /// Finds stations near each other by cells of space.
 pub(super) struct Neighbours {
@@ -55,11 +56,13 @@ impl Neighbours {
         found
     }
 
-    /// As [`Self::around`], thinned evenly where there are very many.
+    /// As [`Self::around`], thinned where there are very many.
     pub(super) fn some_around(&self, k: usize) -> Vec<(usize, f64)> {
-        let found = self.around(k);
-        let step = found.len().div_ceil(CONSIDERED).max(1);
-        found.into_iter().step_by(step).collect()
+        let mut found = self.around(k);
+        let others = found.split_off(NEAREST.min(found.len()));
+        let step = others.len().div_ceil(OTHERS).max(1);
+        found.extend(others.into_iter().step_by(step));
+        found
     }
 }
 

@@ -15,6 +15,10 @@ const PAIR_VALUES: f64 = 30.0;
 /// Trans. Autom. Control 19, 716).
 const BELIEVED: f64 = 2.0;
 
+/// A site variance makes at least this share of the differences at one spacing: a smaller one cannot be told from winds
+/// that do not quite follow a power law, of which there are more and more values.
+const LEAST_SITES: f64 = 0.1;
+
 /// A class this many standard errors below the law of the classes inside it has saturated.
 const SATURATED: f64 = 2.0;
 
@@ -88,7 +92,8 @@ impl Shape {
     ///   that varies linearly), and the planes of different sizes, with their variances under r^p and n. The prior of
     ///   the exponent is a normal one of standard deviation 2/√`prior_exponent_values`. For the choice of the exponent
     ///   the pairs weigh as 30 values at most.
-    /// - **Site variance** n: 0, unless it betters the fit by more than one parameter must (Akaike 1974).
+    /// - **Site variance** n: 0, unless it betters the fit by more than one parameter must (Akaike 1974), and makes a tenth of the
+    ///   differences at one spacing.
     /// - **Saturation**: pairs at large distance differ by no more than twice the variance of the wind, which would make
     ///   the exponent too small. The outermost class is left out if it lies more than 2 standard errors below the
     ///   law of those inside it, then the next.
@@ -138,7 +143,10 @@ impl Shape {
             }
         }
         let law = match best {
-            [Some(without), Some(with)] if with.full_misfit + BELIEVED < without.full_misfit => {
+            [Some(without), Some(with)]
+                if with.full_misfit + BELIEVED < without.full_misfit
+                    && with.law.constant >= LEAST_SITES * with.law.at(1.0) =>
+            {
                 with.law
             }
             [Some(found), _] | [None, Some(found)] => found.law,
