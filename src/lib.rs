@@ -46,6 +46,7 @@
 //! - [`input`], [`report`]: files of many forms, wind reports into columns.
 //! - [`check`]: flags of the reports.
 //! - [`align`]: winds of all stations at analysis times, with their instrument errors.
+//! - [`structure`]: how winds differ with distance and time; what the error bars contain.
 //! - [`polygon`]: triangles, rings, regions; shape and coefficient rows.
 //! - [`integral`]: area means with their errors.
 //! - [`pipeline`]: joins them; [`output`] writes; [`cli`] speaks.
@@ -72,6 +73,7 @@ pub mod polygon;
 pub mod report;
 pub mod settings;
 pub mod station;
+pub mod structure;
 pub mod sum;
 pub mod tally;
 pub mod time;

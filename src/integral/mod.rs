@@ -1,10 +1,21 @@
 //! From coefficient rows and winds to area-mean vorticity and divergence with their errors.
 //!
 //! Circulation and outward flux are the values times the polygon's area.
+//!
+//! [`estimate`] gives the values with the errors of the instruments, [`complete_errors`] adds what the stations do not
+//! see and what comes of late reports ([`crate::structure`] says what an interval contains), [`error_covariance`] is for
+//! differences and means of polygons, [`MeanError`] for means over time, [`adjusted`] for what differs from zero among
+//! many, [`SecondOpinion`] for polygons of more than three stations.
 
+mod boundary;
+mod budget;
+mod discovery;
 mod earth;
 mod extremes;
 mod lanes;
+mod mean_error;
+mod sampling;
+mod second_opinion;
 mod statistics;
 
 use crate::align::WindBlock;
@@ -12,8 +23,17 @@ use crate::check::Flag;
 use crate::polygon::{CoefficientRow, StationPolygon};
 use crate::time::Time;
 
+pub use boundary::Segment;
+pub use budget::{
+    ErrorBudget, ErrorParts, ExpectedErrors, complete_errors, error_covariance, expected_errors,
+    station_covariance,
+};
+pub use discovery::{adjusted, adjusted_for_any_dependence, chance_of, chance_of_square};
 pub use earth::{OMEGA, SelfTest, earth_rotation, planetary_vorticity, self_test};
 pub use extremes::{Extremes, Peak};
+pub use mean_error::MeanError;
+pub use sampling::{PairCovariance, Sampling, SamplingConstants};
+pub use second_opinion::{Comparison, NoQuadratic, SecondOpinion, quadratic, slopes_of_plane};
 pub use statistics::{RunStatistics, Statistics};
 
 /// Estimates of all polygons at a run of analysis times.
@@ -40,7 +60,7 @@ pub struct EstimateBlock {
 
 /// Estimates every polygon at every time of a block, in one pass over the columns of its stations.
 ///
-/// - **Error**: instrument errors only, independent between stations: var ζ = Σ wᵀ C w with the 2×2 covariance C of
+/// - **Error**: instrument errors only ([`complete_errors`] adds the others), independent between stations: var ζ = Σ wᵀ C w with the 2×2 covariance C of
 ///   each report (`methods.md` 1.4, full form; Davies-Jones 1993, MWR 121, 713).
 /// - **Missing**: a polygon without one of its stations has no value at that time.
 #[must_use]

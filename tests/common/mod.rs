@@ -3,6 +3,7 @@
 #![allow(clippy::unwrap_used, clippy::panic, reason = "tests may panic")]
 
 pub mod hard;
+pub mod turbulence;
 
 use geographiclib_rs::{DirectGeodesic, Geodesic};
 use gyremesh::error::{Error, Place};

@@ -1,0 +1,316 @@
+//! Winds that are known everywhere: sums of random Fourier modes with a power-law spectrum.
+
+use gyremesh::align::{Covariance, WindBlock};
+use gyremesh::check::Flag;
+use gyremesh::polygon::{BuiltPolygons, StationPolygon, build_polygons};
+use gyremesh::settings::{PolygonChoice, PolygonLimits};
+use gyremesh::station::Network;
+use gyremesh::time::Time;
+use gyremesh::units::Wind;
+use rand::{Rng, RngExt, SeedableRng};
+use rand_chacha::ChaCha8Rng;
+use rand_distr::{Distribution, StandardNormal};
+
+use super::{Plane, network, set};
+
+/// How the stations stand.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Layout {
+    Regular,
+    Jittered,
+    Clustered,
+}
+
+/// What is simulated.
+#[derive(Debug, Clone, Copy)]
+pub struct Class {
+    /// The spectrum falls as k^(−slope).
+    pub slope: f64,
+    /// Share of the variance in winds without vorticity; the rest is without divergence.
+    pub divergent: f64,
+    /// Root mean square of either component, m/s.
+    pub rms: f64,
+    /// Distance between stations, m.
+    pub spacing: f64,
+    pub layout: Layout,
+    /// Standard deviation of the sensors' errors of either component, m/s.
+    pub noise: f64,
+    /// Share of the reports that are missing.
+    pub dropouts: f64,
+    /// Longest wave, in spacings.
+    pub outer: f64,
+    /// Stations on a side of the network.
+    pub side: usize,
+    /// What the winds grow by in a day.
+    pub growth: f64,
+}
+
+impl Default for Class {
+    fn default() -> Self {
+        Self {
+            slope: 5.0 / 3.0,
+            divergent: 0.5,
+            rms: 2.0,
+            spacing: 30e3,
+            layout: Layout::Jittered,
+            noise: 0.3,
+            dropouts: 0.0,
+            outer: 20.0,
+            side: 7,
+            growth: 1.0,
+        }
+    }
+}
+
+/// Shortest wave, in spacings: what is shorter has next to no part in the variance between stations.
+const INNER: f64 = 0.1;
+/// Wavenumbers, evenly spaced in their logarithm.
+const MODES: usize = 120;
+
+/// One wave: V(x) = direction · (a cos k·x + b sin k·x).
+struct Wave {
+    k: [f64; 2],
+    direction: [f64; 2],
+    a: f64,
+    b: f64,
+}
+
+/// A Gaussian random wind field in the plane.
+pub struct Field(Vec<Wave>);
+
+impl Field {
+    pub fn new(class: &Class, random: &mut impl Rng) -> Self {
+        let normal = |random: &mut _| -> f64 { StandardNormal.sample(random) };
+        let (low, high) = (
+            (std::f64::consts::TAU / (class.outer * class.spacing)).ln(),
+            (std::f64::consts::TAU / (INNER * class.spacing)).ln(),
+        );
+        let wavenumber = |j: usize| (low + (high - low) * (j as f64 + 0.5) / MODES as f64).exp();
+        // Of the variance, E(k) dk = k^(1 − slope) d ln k; either component has half of a mode's.
+        let variance = |j: usize| wavenumber(j).powf(1.0 - class.slope);
+        let total: f64 = (0..MODES).map(variance).sum();
+        let mut waves = Vec::new();
+        for j in 0..MODES {
+            for (share, along) in [(class.divergent, true), (1.0 - class.divergent, false)] {
+                if share <= 0.0 {
+                    continue;
+                }
+                let (sin, cos) = random.random_range(0.0..std::f64::consts::TAU).sin_cos();
+                let k = wavenumber(j);
+                let sd = class.rms * (2.0 * share * variance(j) / total).sqrt();
+                waves.push(Wave {
+                    k: [k * cos, k * sin],
+                    direction: if along { [cos, sin] } else { [-sin, cos] },
+                    a: sd * normal(random),
+                    b: sd * normal(random),
+                });
+            }
+        }
+        Self(waves)
+    }
+
+    /// Winds at the places, and the integral of the wind, m²/s, along straight lines between numbered places.
+    pub fn sample(
+        &self,
+        places: &[(f64, f64)],
+        lines: &[[usize; 2]],
+    ) -> (Vec<(f64, f64)>, Vec<[f64; 2]>) {
+        let mut winds = vec![(0.0, 0.0); places.len()];
+        let mut integrals = vec![[0.0; 2]; lines.len()];
+        let mut phases = vec![(0.0, 0.0, 0.0); places.len()];
+        for wave in &self.0 {
+            for ((phase, wind), &(x, y)) in phases.iter_mut().zip(&mut winds).zip(places) {
+                let angle = wave.k[0] * x + wave.k[1] * y;
+                let (sin, cos) = angle.sin_cos();
+                *phase = (angle, sin, cos);
+                let value = wave.a * cos + wave.b * sin;
+                wind.0 += value * wave.direction[0];
+                wind.1 += value * wave.direction[1];
+            }
+            for (integral, &[i, j]) in integrals.iter_mut().zip(lines) {
+                let ((p, sin_p, cos_p), (q, sin_q, cos_q)) = (phases[i], phases[j]);
+                let along = q - p;
+                let mean = if along.abs() > 1e-4 {
+                    (wave.a * (sin_q - sin_p) - wave.b * (cos_q - cos_p)) / along
+                } else {
+                    0.5 * (wave.a * (cos_p + cos_q) + wave.b * (sin_p + sin_q))
+                };
+                integral[0] += mean * wave.direction[0];
+                integral[1] += mean * wave.direction[1];
+            }
+        }
+        for (integral, &[i, j]) in integrals.iter_mut().zip(lines) {
+            let length = (places[j].0 - places[i].0).hypot(places[j].1 - places[i].1);
+            *integral = integral.map(|m| m * length);
+        }
+        (winds, integrals)
+    }
+}
+
+/// A simulated network with its polygons.
+pub struct Simulation {
+    pub class: Class,
+    pub places: Vec<(f64, f64)>,
+    pub plane: Plane,
+    pub network: Network,
+    pub built: BuiltPolygons,
+    lines: Vec<[usize; 2]>,
+}
+
+impl Simulation {
+    pub fn new(class: Class, seed: u64) -> Self {
+        let mut random = ChaCha8Rng::seed_from_u64(seed);
+        let places = layout(&class, &mut random);
+        let plane = Plane {
+            origin: (47.0, 8.0),
+            shrink: 1.0,
+        };
+        let network = network(&plane.place(&places));
+        let choice = PolygonChoice {
+            triangles: true,
+            rings: vec![],
+            regions: vec![],
+        };
+        let built = build_polygons(&network, &choice, &PolygonLimits::default()).unwrap();
+        let lines = built.edges.edges().iter().map(|e| [e.from, e.to]).collect();
+        Self {
+            class,
+            places,
+            plane,
+            network,
+            built,
+            lines,
+        }
+    }
+
+    /// Takes other polygons of the same stations.
+    pub fn rebuild(&mut self, built: BuiltPolygons) {
+        self.lines = built.edges.edges().iter().map(|e| [e.from, e.to]).collect();
+        self.built = built;
+    }
+
+    /// Fields of `times` hours, each drawn anew: the winds as reported, and for each time and polygon the true
+    /// vorticity and divergence. `report` makes a report of a true wind.
+    pub fn run(
+        &self,
+        times: usize,
+        seed: u64,
+        mut report: impl FnMut((f64, f64), &mut ChaCha8Rng) -> (Wind, Covariance),
+    ) -> (WindBlock, Vec<Vec<[f64; 2]>>) {
+        let mut random = ChaCha8Rng::seed_from_u64(seed);
+        let hours =
+            (0..i64::try_from(times).unwrap()).map(|k| Time::from_micros(k * 3_600_000_000));
+        let mut block = WindBlock::empty(hours.collect(), self.places.len());
+        let mut truth = Vec::new();
+        for t in 0..times {
+            let class = Class {
+                rms: self.class.rms * self.class.growth.powf(t as f64 / 24.0),
+                ..self.class
+            };
+            let field = Field::new(&class, &mut random);
+            let (winds, integrals) = field.sample(&self.places, &self.lines);
+            truth.push(
+                self.built
+                    .polygons
+                    .iter()
+                    .map(|p| self.truth(p, &integrals))
+                    .collect(),
+            );
+            let local = self.plane.turn(&self.places, &winds);
+            for (station, &wind) in local.iter().enumerate() {
+                if random.random_range(0.0..1.0) < self.class.dropouts {
+                    continue;
+                }
+                let (wind, covariance) = report(wind, &mut random);
+                set(&mut block, station, t, wind, covariance, Flag::Pass);
+            }
+        }
+        (block, truth)
+    }
+
+    /// [`Self::run`] with Gaussian sensor errors of the class.
+    pub fn noisy(&self, times: usize, seed: u64) -> (WindBlock, Vec<Vec<[f64; 2]>>) {
+        let sd = self.class.noise;
+        let covariance = Covariance {
+            uu: sd * sd,
+            uv: 0.0,
+            vv: sd * sd,
+        };
+        self.run(times, seed, |(u, v), random| {
+            let mut error = || -> f64 {
+                let e: f64 = StandardNormal.sample(random);
+                sd * e
+            };
+            let wind = Wind {
+                u: u + error(),
+                v: v + error(),
+            };
+            (wind, covariance)
+        })
+    }
+
+    fn truth(&self, polygon: &StationPolygon, integrals: &[[f64; 2]]) -> [f64; 2] {
+        let (mut circulation, mut flux, mut area) = (0.0, 0.0, 0.0);
+        for &directed in &polygon.path {
+            let (from, to, _) = self.built.edges.ends(directed);
+            let (a, b) = (self.places[from], self.places[to]);
+            let (dx, dy) = (b.0 - a.0, b.1 - a.1);
+            let length = dx.hypot(dy);
+            let [u, v] = integrals[directed.edge];
+            circulation += (u * dx + v * dy) / length;
+            flux += (u * dy - v * dx) / length;
+            area += 0.5 * (a.0 * b.1 - b.0 * a.1);
+        }
+        [circulation / area, flux / area]
+    }
+}
+
+/// Places of side² stations, m; none nearer to another than an eighth of the spacing.
+fn layout(class: &Class, random: &mut ChaCha8Rng) -> Vec<(f64, f64)> {
+    let (n, middle) = (class.side, 0.5 * (class.side as f64 - 1.0));
+    let scatter = |random: &mut ChaCha8Rng, by: f64| -> [f64; 2] {
+        [random.random_range(-by..by), random.random_range(-by..by)]
+    };
+    let mut places: Vec<[f64; 2]> = Vec::new();
+    let apart = |places: &[[f64; 2]], p: [f64; 2]| {
+        places
+            .iter()
+            .all(|q| (p[0] - q[0]).hypot(p[1] - q[1]) > 0.125)
+    };
+    match class.layout {
+        Layout::Regular | Layout::Jittered => {
+            let by = if class.layout == Layout::Regular {
+                0.01
+            } else {
+                0.35
+            };
+            for i in 0..n {
+                for j in 0..n {
+                    let [x, y] = scatter(random, by);
+                    places.push([i as f64 - middle + x, j as f64 - middle + y]);
+                }
+            }
+        }
+        Layout::Clustered => {
+            let mut centres: Vec<[f64; 2]> = Vec::new();
+            for _ in 0..n {
+                centres.push(scatter(random, 0.5 * n as f64));
+            }
+            while places.len() < n * n {
+                let [x, y] = centres[random.random_range(0..n)];
+                let mut offset = || -> f64 {
+                    let e: f64 = StandardNormal.sample(random);
+                    0.8 * e
+                };
+                let p = [x + offset(), y + offset()];
+                if apart(&places, p) {
+                    places.push(p);
+                }
+            }
+        }
+    }
+    places
+        .iter()
+        .map(|[x, y]| (x * class.spacing, y * class.spacing))
+        .collect()
+}
