@@ -1,5 +1,6 @@
 //! Joins the stages: settings and stations, reports, checks, alignment, estimates.
 
+mod estimation;
 mod reading;
 mod run;
 mod windows;
@@ -14,7 +15,7 @@ use crate::station::{Network, Period, Position, doubts, read_catalogue};
 use crate::warning::Warning;
 
 pub use reading::Reading;
-pub use run::{Outcome, run};
+pub use run::{Outcome, StructureReport, run};
 pub use windows::{Window, Windows};
 
 /// Settings and stations: all that reading the reports needs.

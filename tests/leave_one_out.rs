@@ -12,9 +12,10 @@ mod common;
 use std::path::Path;
 
 use common::turbulence::{Class, Layout, Simulation};
-use gyremesh::align::{Aligner, StationSensors, WindBlock};
-use gyremesh::pipeline::{Reading, Setup};
-use gyremesh::report::SpeedStep;
+use gyremesh::align::{Aligner, BLOCK_TIMES, StationSensors, WindBlock};
+use gyremesh::check::{StationSums, check_range};
+use gyremesh::pipeline::Setup;
+use gyremesh::report::{ReportTable, SpeedStep, read_reports};
 use gyremesh::settings::{Overrides, SensorErrors};
 use gyremesh::station::Network;
 use gyremesh::structure::{
@@ -118,36 +119,39 @@ fn real(name: &str) -> (Errors, Network) {
     let path = Path::new(env!("CARGO_MANIFEST_DIR"))
         .join(format!("tests/data/networks/{name}/network.toml"));
     let setup = Setup::read(&path, &Overrides::default()).unwrap();
-    let reading = Reading::of(&setup.settings, &setup.network);
+    let rows = read_reports(&setup.settings.reports, &setup.network).rows;
+    let (mut table, _) = ReportTable::new(&rows, setup.network.len());
+    check_range(&mut table, &setup.settings.range);
+    let stations = 0..setup.network.len();
     let count = |s: usize| {
-        reading
-            .table
-            .of_station(s)
-            .filter(|&i| reading.table.wind(i).is_some())
-            .count() as f64
+        let reports = table.of_station(s);
+        reports.filter(|&i| table.wind(i).is_some()).count() as f64
     };
-    let counts: Vec<f64> = (0..setup.network.len()).map(count).collect();
+    let counts: Vec<f64> = stations.clone().map(count).collect();
     let most = counts.iter().copied().fold(1.0, f64::max);
     let reports: Vec<f64> = counts.iter().map(|c| c / most).collect();
     let stated = setup.settings.sensor;
-    let errors = reading
-        .stations
-        .iter()
-        .map(|s| SensorErrors {
+    let errors = stations.map(|s| {
+        let mut sums = StationSums::default();
+        sums.add(&table, s);
+        let found = sums.rounding();
+        SensorErrors {
             speed_step: stated
                 .speed_step
-                .or(s.rounding.speed.map(SpeedStep::metres_per_second)),
-            direction_step: stated.direction_step.or(s.rounding.direction),
+                .or(found.speed.map(SpeedStep::metres_per_second)),
+            direction_step: stated.direction_step.or(found.direction),
             ..stated
-        })
-        .collect();
+        }
+    });
     let sensors = StationSensors {
-        errors,
+        errors: errors.collect(),
         height_factors: vec![Some(1.0); setup.network.len()],
     };
-    let mut aligner = Aligner::new(&reading.table, &setup.settings.analysis, sensors);
+    let analysis = &setup.settings.analysis;
+    let aligner = Aligner::new(&table, analysis, &sensors, i64::MIN..i64::MAX);
     let interval = setup.settings.analysis.interval.as_secs_f64();
-    let blocks = std::iter::from_fn(|| aligner.next_block());
+    let blocks = aligner.grid().blocks(BLOCK_TIMES).into_iter();
+    let blocks = blocks.map(|times| aligner.align(times));
     let (errors, _) = leave_one_out(&setup.network, &reports, interval, blocks);
     (errors, setup.network)
 }

@@ -97,6 +97,8 @@ label: start, middle or end of the window [end], averaging
   [analysis]  interval [10 min], method: nearest, linear or mean [nearest], tolerance [half the interval],
               window [the interval], least_reports [1], from, to [all]
               height (common height), profile: log or power [log], exponent [1/7]; level, such as 850 hPa
+  [errors]    parts: all or instrument [all]; false_discovery_rate [0.05]; window [24 h] and memory [1 h] of the
+              structure function; prior_difference [4.5 m2/s2], prior_distance [30 km], prior_exponent [2/3]
   [check]     speed_suspect [75 m/s], speed_fail [100 m/s]
   [polygons]  triangles [true]
   [[polygons.ring]]    name, stations in order
@@ -187,6 +189,9 @@ pub struct EstimateArgs {
     /// Write no series, only the summary of each polygon
     #[arg(long)]
     pub summary_only: bool,
+    /// What the errors hold: the sensors and sites, the wind between the stations, and late reports; or the sensors alone
+    #[arg(long, value_name = "PARTS", default_value = "all")]
+    pub errors: Parts,
     /// Take all reports as they are, without checks
     #[arg(long)]
     pub no_screen: bool,
@@ -203,6 +208,15 @@ pub struct EstimateArgs {
     /// Print no summary and no progress; warnings remain
     #[arg(long, short)]
     pub quiet: bool,
+}
+
+/// Parts of the errors.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, clap::ValueEnum)]
+pub enum Parts {
+    /// As the settings say: all, if they say nothing
+    All,
+    /// The sensors and their rounding alone
+    Instrument,
 }
 
 /// A format of the series.
@@ -262,6 +276,7 @@ impl From<&EstimateArgs> for Overrides {
             memory: args.memory,
             cache: args.cache.clone(),
             no_screen: args.no_screen,
+            instrument_errors: args.errors == Parts::Instrument,
         }
     }
 }

@@ -4,7 +4,7 @@ use std::fmt::Write as _;
 use std::path::PathBuf;
 
 use crate::integral::Peak;
-use crate::output::{CAUTION, ERROR_BARS};
+use crate::output::{CAUTION, error_bars, significant_share};
 use crate::pipeline::{Outcome, Setup};
 use crate::polygon::{Exclusion, StationPolygon};
 
@@ -145,6 +145,7 @@ pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
         "Self-test   {:.0e} of 2 Omega on {} polygons",
         setup.self_test.largest_difference, setup.self_test.polygons
     );
+    significance(&mut out, setup, outcome);
     let _ = writeln!(out, "\nStrongest, in 1e-5 /s:");
     let extremes = &outcome.extremes;
     for (what, peak) in [
@@ -155,7 +156,11 @@ pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
         let _ = writeln!(out, "  {what:<17} {}", peak_text(setup, peak));
     }
     least_reporting(&mut out, setup, outcome);
-    let _ = writeln!(out, "\n{}", wrapped(&format!("Errors: {ERROR_BARS}.")));
+    let _ = writeln!(
+        out,
+        "\n{}",
+        wrapped(&format!("Errors: {}.", error_bars(&setup.settings.errors)))
+    );
     let _ = writeln!(out, "{}", wrapped(CAUTION));
     let names: Vec<String> = files
         .iter()
@@ -170,6 +175,36 @@ pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
         );
     }
     out
+}
+
+/// How many values differ from zero, and how the winds differ from place to place.
+fn significance(out: &mut String, setup: &Setup, outcome: &Outcome) {
+    let statistics = &outcome.statistics;
+    let shares =
+        significant_share(&statistics.vorticity).zip(significant_share(&statistics.divergence));
+    if let Some((vorticity, divergence)) = shares {
+        let _ = writeln!(
+            out,
+            "Not zero    {:.1} % of vorticities, {:.1} % of divergences ({} % false)",
+            100.0 * vorticity,
+            100.0 * divergence,
+            100.0 * setup.settings.errors.false_discovery_rate
+        );
+    }
+    if let Some(report) = outcome.structure.last() {
+        let f = &report.function;
+        let [along, across] = f.at(f.reference);
+        let _ = writeln!(
+            out,
+            "Winds       {:.0} km apart differ by {:.1} m/s (each component, last hours;\n            \
+             exponent {:.2}, sites {:.1} m/s, prior {:.0} %)",
+            f.reference / 1e3,
+            (0.5 * (along + across)).sqrt(),
+            f.exponent.value(),
+            f.site_variance.sqrt(),
+            100.0 * f.prior_share
+        );
+    }
 }
 
 fn peak_text(setup: &Setup, peak: Option<Peak>) -> String {

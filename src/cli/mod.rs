@@ -13,8 +13,8 @@ use indicatif::{ProgressBar, ProgressStyle};
 use self::args::{Args, CheckArgs, Command, EstimateArgs, Format, PolygonsArgs};
 use crate::error::{Error, ErrorKind};
 use crate::output::{
-    Formats, OutputSet, mesh_csv, mesh_geojson, reading_json, series, stations_csv, summary_csv,
-    summary_json,
+    Formats, OutputSet, mesh_csv, mesh_geojson, reading_json, series, stations_csv, structure_csv,
+    summary_csv, summary_json,
 };
 use crate::pipeline::{self, Reading, Setup, Sources};
 use crate::report::InputOrder;
@@ -166,6 +166,9 @@ fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
         "polygon_summary.csv",
         summary_csv(&setup, &outcome).as_bytes(),
     )?;
+    if setup.settings.errors.complete {
+        set.put("structure.csv", structure_csv(&outcome).as_bytes())?;
+    }
     set.put("summary.json", summary_json(&setup, &outcome).as_bytes())?;
     let files = set.commit()?;
 

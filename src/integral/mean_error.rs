@@ -9,7 +9,8 @@ use crate::time::Time;
 ///   are correlated by exp(−Δ/T), T from [`crate::structure::StructureFunction::decorrelation_time`] at the length of
 ///   the polygon's edges.
 ///
-/// Neither is the naive σ/√n. Values come in the order of time; two accumulators of successive periods can be merged.
+/// Neither is the naive σ/√n. Values come in the order of time; two accumulators of successive periods can be merged,
+/// each with its own T.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct MeanError {
     /// T, s.
@@ -24,6 +25,12 @@ pub struct MeanError {
     head: f64,
     first: Option<Time>,
     last: Option<Time>,
+}
+
+impl Default for MeanError {
+    fn default() -> Self {
+        Self::new(1.0)
+    }
 }
 
 impl MeanError {
@@ -53,6 +60,39 @@ impl MeanError {
         self.merge(&one);
     }
 
+    /// Takes in a column of values' standard errors; the passing ones given as root of the sum of squares of two parts.
+    #[must_use]
+    pub fn of_column(
+        lasting: f64,
+        times: &[Time],
+        persistent: &[f64],
+        passing: [&[f64]; 2],
+    ) -> Self {
+        let mut sum = Self::new(lasting);
+        (sum.first, sum.last) = (times.first().copied(), times.last().copied());
+        // Most times follow at one interval: its decay is found once.
+        let (mut interval, mut decay, mut since_first) = (0, 1.0, 1.0);
+        let mut before = sum.first.map_or(0, Time::micros);
+        let parts = passing[0].iter().zip(passing[1]);
+        for ((time, &lasts), (&a, &b)) in times.iter().zip(persistent).zip(parts) {
+            let step = time.micros() - before;
+            before = time.micros();
+            if step != interval {
+                interval = step;
+                decay = (-(step as f64) * 1e-6 / sum.lasting).exp();
+            }
+            let passes = if b > 0.0 { (a * a + b * b).sqrt() } else { a };
+            since_first *= decay;
+            sum.tail *= decay;
+            sum.double += passes * (passes + 2.0 * sum.tail);
+            sum.tail += passes;
+            sum.head += since_first * passes;
+            sum.persistent += lasts;
+            sum.count += 1.0;
+        }
+        sum
+    }
+
     /// Takes in later values.
     pub fn merge(&mut self, later: &Self) {
         let decay = |from: Option<Time>, to: Option<Time>| match (from, to) {
@@ -77,6 +117,7 @@ impl MeanError {
         self.persistent += later.persistent;
         self.first = self.first.or(later.first);
         self.last = later.last.or(self.last);
+        self.lasting = later.lasting;
     }
 
     /// Standard error of the mean, 1/s; `None` without values.

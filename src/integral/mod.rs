@@ -28,7 +28,10 @@ pub use budget::{
     ErrorBudget, ErrorParts, ExpectedErrors, complete_errors, error_covariance, expected_errors,
     station_covariance,
 };
-pub use discovery::{adjusted, adjusted_for_any_dependence, chance_of, chance_of_square};
+pub use discovery::{
+    FalseDiscovery, adjusted, adjusted_for_any_dependence, chance_of, chance_of_square,
+    find_significant,
+};
 pub use earth::{OMEGA, SelfTest, earth_rotation, planetary_vorticity, self_test};
 pub use extremes::{Extremes, Peak};
 pub use mean_error::MeanError;
@@ -56,6 +59,11 @@ pub struct EstimateBlock {
     pub flag: Vec<Flag>,
     /// Largest age of the stations' values, s.
     pub age: Vec<f32>,
+    /// What the standard errors are made of; empty before [`complete_errors`].
+    pub budget: ErrorBudget,
+    /// Whether vorticity and divergence differ from zero, among all polygons of a time; empty before
+    /// [`find_significant`].
+    pub significant: [Vec<bool>; 2],
 }
 
 /// Estimates every polygon at every time of a block, in one pass over the columns of its stations.
@@ -85,6 +93,7 @@ fn estimate_columns(polygons: &[StationPolygon], winds: &WindBlock) -> EstimateB
         divergence_se: vec![0.0; cells],
         flag: vec![Flag::NotEvaluated; cells],
         age: vec![0.0; cells],
+        ..EstimateBlock::default()
     };
     if n == 0 {
         return out;

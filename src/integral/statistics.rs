@@ -1,6 +1,6 @@
 //! What a polygon's values come to over a run.
 
-use super::{EstimateBlock, lanes};
+use super::{ErrorParts, EstimateBlock, MeanError, lanes};
 use crate::check::Flag;
 use crate::time::Time;
 
@@ -13,9 +13,9 @@ pub struct Statistics {
     pub mean: f64,
     /// Sum of the squared differences from the mean, 1/s².
     squares: f64,
-    /// Sum of the squared standard errors, 1/s².
-    errors: f64,
-    /// Values beyond 1.96 standard errors from 0.
+    /// What the errors of the values come to.
+    pub error: MeanError,
+    /// Values called different from 0.
     pub significant: u64,
     /// Smallest value and its time.
     pub smallest: Option<(f64, Time)>,
@@ -23,18 +23,15 @@ pub struct Statistics {
     pub largest: Option<(f64, Time)>,
 }
 
-/// Two-sided 95 % of the normal distribution.
-const SIGNIFICANT: f64 = 1.96;
-
 impl Statistics {
-    /// Those of values with their errors and times, all of one length.
+    /// Those of values with their times, all of one length.
     #[expect(
         clippy::inline_always,
         reason = "it must become part of the caller's vector code"
     )]
     #[inline(always)]
     #[must_use]
-    pub fn of(values: &[f64], errors: &[f64], times: &[Time]) -> Self {
+    pub fn of(values: &[f64], times: &[Time], significant: u64, error: MeanError) -> Self {
         let count = values.len() as f64;
         let (Some((least, first)), Some((most, last))) = (
             lanes::strongest(values, -1.0),
@@ -43,15 +40,11 @@ impl Statistics {
             return Self::default();
         };
         let mean = lanes::sum(values, |value| value) / count;
-        let mut significant = 0;
-        for (value, error) in values.iter().zip(errors) {
-            significant += u64::from(value.abs() > SIGNIFICANT * error);
-        }
         Self {
             count: values.len() as u64,
             mean,
             squares: lanes::sum(values, |value| (value - mean) * (value - mean)),
-            errors: lanes::sum(errors, |error| error * error),
+            error,
             significant,
             smallest: times.get(first).map(|&time| (-least, time)),
             largest: times.get(last).map(|&time| (most, time)),
@@ -68,7 +61,7 @@ impl Statistics {
         let difference = later.mean - self.mean;
         self.mean += difference * b / (a + b);
         self.squares += later.squares + difference * difference * a * b / (a + b);
-        self.errors += later.errors;
+        self.error.merge(&later.error);
         self.count += later.count;
         self.significant += later.significant;
         self.smallest = match (self.smallest, later.smallest) {
@@ -87,11 +80,10 @@ impl Statistics {
         (self.count > 1).then(|| (self.squares / (self.count - 1) as f64).sqrt())
     }
 
-    /// Standard error of the mean, 1/s: the root mean square of the values' own errors. The errors of a sensor persist,
-    /// so a mean over time is no better than its values.
+    /// Standard error of the mean, 1/s ([`MeanError`]).
     #[must_use]
     pub fn mean_error(&self) -> Option<f64> {
-        (self.count > 0).then(|| (self.errors / self.count as f64).sqrt())
+        self.error.standard_error()
     }
 }
 
@@ -113,11 +105,12 @@ pub struct RunStatistics {
 }
 
 impl RunStatistics {
-    /// Those of a block.
+    /// Those of a block, whose errors are complete. `lasting` says for each polygon how long the errors of sampling and
+    /// timing last, s.
     #[must_use]
-    pub fn of(block: &EstimateBlock, polygons: usize) -> Self {
+    pub fn of(block: &EstimateBlock, lasting: &[f64]) -> Self {
         // With the widest vectors that the processor has.
-        pulp::Arch::new().dispatch(|| Self::of_columns(block, polygons))
+        pulp::Arch::new().dispatch(|| Self::of_columns(block, lasting))
     }
 
     #[expect(
@@ -125,30 +118,35 @@ impl RunStatistics {
         reason = "it must become part of the caller's vector code"
     )]
     #[inline(always)]
-    fn of_columns(block: &EstimateBlock, polygons: usize) -> Self {
+    fn of_columns(block: &EstimateBlock, lasting: &[f64]) -> Self {
         let n = block.times.len();
-        let mut out = Self {
-            vorticity: Vec::with_capacity(polygons),
-            divergence: Vec::with_capacity(polygons),
-        };
-        for polygon in 0..polygons {
+        let mut out = Self::default();
+        let [vorticity, divergence] = &block.significant;
+        for (polygon, &lasting) in lasting.iter().enumerate() {
             let cells = polygon * n..(polygon + 1) * n;
             let flags = &block.flag[cells.clone()];
-            let of = |values: &[f64], errors: &[f64]| {
-                let (values, errors) = (&values[cells.clone()], &errors[cells.clone()]);
-                if flags.iter().all(|&flag| flag < Flag::Fail) {
-                    return Statistics::of(values, errors, &block.times);
+            let all_good = flags.iter().all(|&flag| flag < Flag::Fail);
+            let of = |values: &[f64], parts: &ErrorParts, significant: &[bool]| {
+                let called = significant[cells.clone()].iter().map(|&s| u64::from(s));
+                let called = called.sum();
+                let columns = [values, &parts.instrument, &parts.sampling, &parts.timing];
+                let columns = columns.map(|column| &column[cells.clone()]);
+                let statistics = |[values, own, sampling, timing]: [&[f64]; 4], times: &[Time]| {
+                    let error = MeanError::of_column(lasting, times, own, [sampling, timing]);
+                    Statistics::of(values, times, called, error)
+                };
+                if all_good {
+                    return statistics(columns, &block.times);
                 }
-                Statistics::of(
-                    &good(values, flags),
-                    &good(errors, flags),
-                    &good(&block.times, flags),
-                )
+                let columns = columns.map(|column| good(column, flags));
+                let columns: [&[f64]; 4] = std::array::from_fn(|k| columns[k].as_slice());
+                statistics(columns, &good(&block.times, flags))
             };
+            let budget = &block.budget;
             out.vorticity
-                .push(of(&block.vorticity, &block.vorticity_se));
+                .push(of(&block.vorticity, &budget.vorticity, vorticity));
             out.divergence
-                .push(of(&block.divergence, &block.divergence_se));
+                .push(of(&block.divergence, &budget.divergence, divergence));
         }
         out
     }
@@ -175,14 +173,18 @@ mod tests {
     #[test]
     fn merged_parts_equal_the_whole() {
         let values = [3.0, 1.0, 4.0, 1.0, 5.0, 9.0, 2.0, 6.0].map(|x| x * 1e-5);
-        let errors = [2e-5; 8];
-        let times: Vec<Time> = (0..8).map(Time::from_micros).collect();
-        let whole = Statistics::of(&values, &errors, &times);
+        let times: Vec<Time> = (0..8).map(|k| Time::from_micros(k * 1_000_000)).collect();
+        let of = |part: std::ops::Range<usize>| {
+            let errors = vec![2e-5; part.len()];
+            let passing = vec![1e-5; part.len()];
+            let times = &times[part.clone()];
+            let error = MeanError::of_column(3.0, times, &errors, [&passing, &passing]);
+            Statistics::of(&values[part.clone()], times, part.len() as u64 / 2, error)
+        };
+        let whole = of(0..8);
         let mut merged = Statistics::default();
-        for start in [0, 3, 6] {
-            let part = start..8.min(start + 3);
-            let later = Statistics::of(&values[part.clone()], &errors[part.clone()], &times[part]);
-            merged.merge(&later);
+        for part in [0..2, 2..6, 6..8] {
+            merged.merge(&of(part));
         }
         assert!((merged.mean - 3.875e-5).abs() < 1e-18);
         let deviation = merged.standard_deviation().unwrap();
@@ -191,7 +193,9 @@ mod tests {
             "{deviation:e}"
         );
         assert!((whole.standard_deviation().unwrap() - deviation).abs() < 1e-18);
-        assert!((merged.mean_error().unwrap() - 2e-5).abs() < 1e-18);
+        let (parts, one) = (merged.mean_error().unwrap(), whole.mean_error().unwrap());
+        assert!((parts - one).abs() < 1e-15, "{parts:e} {one:e}");
+        assert!(one > 2e-5 && one < 3e-5, "{one:e}");
         assert_eq!((merged.count, merged.significant), (8, 4));
         assert_eq!(merged.smallest.unwrap().1.micros(), 1);
         assert_eq!(merged.largest.unwrap().1.micros(), 5);

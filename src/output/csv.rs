@@ -10,7 +10,10 @@ use crate::station::Network;
 
 /// Header of `polygons.csv`: the first eleven columns are the contract of the format.
 const POLYGON_COLUMNS: &str = "time,polygon,stations,area_km2,vorticity,vorticity_se,divergence,divergence_se,\
-                               planetary_vorticity,absolute_vorticity,flag,sense,age_s\n";
+                               planetary_vorticity,absolute_vorticity,flag,sense,age_s,\
+                               vorticity_se_instrument,vorticity_se_sampling,vorticity_se_timing,\
+                               divergence_se_instrument,divergence_se_sampling,divergence_se_timing,\
+                               vorticity_significant,divergence_significant\n";
 
 /// Writes rows of `polygons.csv`, one for each time and polygon.
 pub struct PolygonRows {
@@ -18,6 +21,7 @@ pub struct PolygonRows {
     fixed: Vec<String>,
     planetary: Vec<f64>,
     planetary_text: Vec<String>,
+    complete: bool,
 }
 
 impl PolygonRows {
@@ -41,6 +45,7 @@ impl PolygonRows {
             fixed,
             planetary_text: setup.planetary.iter().map(|&f| number(f)).collect(),
             planetary: setup.planetary.clone(),
+            complete: setup.settings.errors.complete,
         }
     }
 
@@ -91,10 +96,41 @@ impl PolygonRows {
                 if !missing {
                     out.extend_from_slice(buffer.format(block.age[cell]).as_bytes());
                 }
+                self.errors(&mut out, &mut buffer, block, cell);
                 out.push(b'\n');
             }
         }
         out
+    }
+}
+
+impl PolygonRows {
+    /// The parts of the errors, and what differs from zero.
+    fn errors(&self, out: &mut Vec<u8>, buffer: &mut Buffer, block: &EstimateBlock, cell: usize) {
+        let missing = block.flag[cell] == Flag::Missing;
+        for parts in [&block.budget.vorticity, &block.budget.divergence] {
+            for (part, asked_for) in [
+                (&parts.instrument, true),
+                (&parts.sampling, self.complete),
+                (&parts.timing, self.complete),
+            ] {
+                out.push(b',');
+                if asked_for && !missing {
+                    #[expect(
+                        clippy::cast_possible_truncation,
+                        reason = "seven digits are enough for a part of an error"
+                    )]
+                    let part = part[cell] as f32;
+                    out.extend_from_slice(buffer.format(part).as_bytes());
+                }
+            }
+        }
+        for significant in &block.significant {
+            out.push(b',');
+            if !missing {
+                out.push(b'0' + u8::from(significant[cell]));
+            }
+        }
     }
 }
 
@@ -123,7 +159,7 @@ fn quoted(text: &str) -> String {
     }
 }
 
-fn number(value: f64) -> String {
+pub(super) fn number(value: f64) -> String {
     Buffer::new().format(value).to_string()
 }
 

@@ -7,6 +7,7 @@ mod geojson;
 mod parquet;
 mod reading;
 mod series;
+mod structure;
 mod summary;
 #[cfg(feature = "parquet")]
 mod template;
@@ -16,12 +17,23 @@ pub use file::OutputSet;
 pub use geojson::{mesh_geojson, outline_geometry};
 pub use reading::reading_json;
 pub use series::{Formats, SeriesEncoder, SeriesFiles, series};
+pub use structure::structure_csv;
+pub(crate) use summary::significant_share;
 pub use summary::summary_json;
+
+use crate::settings::ErrorSettings;
 
 /// What a polygon's estimate is not, wherever results are shown.
 pub const CAUTION: &str = "These are estimates, not warnings. For severe weather, turbines and aviation follow the national \
                            weather service, site safety rules, local codes and licensed practice.";
 
-/// What the error bars hold so far.
-pub const ERROR_BARS: &str = "one standard error, from instrument errors and rounding only; the wind between the stations \
-                              is not in it";
+/// What the error bars hold.
+#[must_use]
+pub fn error_bars(errors: &ErrorSettings) -> &'static str {
+    if errors.complete {
+        "one standard error: sensors and sites, the wind between the stations, and reports beside the analysis time; \
+         a sensor that is turned or mis-scaled is not in it"
+    } else {
+        "one standard error, from instrument errors and rounding only; the wind between the stations is not in it"
+    }
+}

@@ -7,8 +7,8 @@ use std::sync::Arc;
 
 use arrow_array::types::Int32Type;
 use arrow_array::{
-    ArrayRef, DictionaryArray, Float32Array, Float64Array, Int32Array, StringArray,
-    TimestampMicrosecondArray, UInt8Array,
+    ArrayRef, BooleanArray, DictionaryArray, Float32Array, Float64Array, Int32Array, StringArray,
+    TimestampMicrosecondArray, UInt8Array, new_null_array,
 };
 use arrow_buffer::NullBuffer;
 use arrow_schema::{DataType, Field, Schema, SchemaRef, TimeUnit};
@@ -27,13 +27,19 @@ use crate::pipeline::Setup;
 
 /// Columns of numbers that differ from row to row: a dictionary of them would only cost time, their bytes side by side
 /// compress best.
-const NUMBERS: [&str; 6] = [
+const NUMBERS: [&str; 12] = [
     "vorticity",
     "vorticity_se",
     "divergence",
     "divergence_se",
     "absolute_vorticity",
     "age_s",
+    "vorticity_se_instrument",
+    "vorticity_se_sampling",
+    "vorticity_se_timing",
+    "divergence_se_instrument",
+    "divergence_se_sampling",
+    "divergence_se_timing",
 ];
 /// Columns of integers that change little from row to row.
 const STEPS: [&str; 2] = ["time", "flag"];
@@ -45,6 +51,7 @@ pub struct ParquetRows {
     senses: ArrayRef,
     planetary: Vec<f64>,
     fixed: FixedColumns,
+    complete: bool,
 }
 
 /// The file that the row groups become.
@@ -79,7 +86,10 @@ pub fn parquet_series(setup: &Setup) -> Result<(ParquetRows, ParquetFile)> {
             ),
             KeyValue::new("network".into(), setup.settings.name.clone()),
             KeyValue::new("caution".into(), super::CAUTION.to_string()),
-            KeyValue::new("error_bars".into(), super::ERROR_BARS.to_string()),
+            KeyValue::new(
+                "error_bars".into(),
+                super::error_bars(&setup.settings.errors).to_string(),
+            ),
         ]));
     for (names, encoding) in [
         (NUMBERS.as_slice(), Encoding::BYTE_STREAM_SPLIT),
@@ -103,6 +113,7 @@ pub fn parquet_series(setup: &Setup) -> Result<(ParquetRows, ParquetFile)> {
             Sense::Anticyclonic.name(),
         ])),
         planetary: setup.planetary.clone(),
+        complete: setup.settings.errors.complete,
     };
     Ok((rows, ParquetFile { writer }))
 }
@@ -120,6 +131,7 @@ fn schema() -> Schema {
     };
     let number =
         |name: &str, nullable: bool, units: &str| field(name, DataType::Float64, nullable, units);
+    let part = |name: &str| field(name, DataType::Float32, true, "s-1");
     let time = DataType::Timestamp(TimeUnit::Microsecond, Some("UTC".into()));
     Schema::new(vec![
         field("time", time, false, ""),
@@ -135,6 +147,14 @@ fn schema() -> Schema {
         field("flag", DataType::UInt8, false, ""),
         field("sense", dictionary(), true, ""),
         field("age_s", DataType::Float32, true, "s"),
+        part("vorticity_se_instrument"),
+        part("vorticity_se_sampling"),
+        part("vorticity_se_timing"),
+        part("divergence_se_instrument"),
+        part("divergence_se_sampling"),
+        part("divergence_se_timing"),
+        field("vorticity_significant", DataType::Boolean, true, ""),
+        field("divergence_significant", DataType::Boolean, true, ""),
     ])
 }
 
@@ -199,6 +219,22 @@ impl ParquetRows {
         let times = times.flat_map(|time| std::iter::repeat_n(time, polygons));
         let age = by_time(&block.age, n, |&age, _| age);
         let flag = by_time(&block.flag, n, |flag, _| flag.value());
+        let part = |column: &[f64], asked_for: bool| -> Option<ArrayRef> {
+            if !asked_for {
+                return Some(new_null_array(&DataType::Float32, column.len()));
+            }
+            #[expect(
+                clippy::cast_possible_truncation,
+                reason = "seven digits are enough for a part of an error"
+            )]
+            let values = by_time(column, n, |&value, _| value as f32);
+            Some(Arc::new(Float32Array::new(values.into(), there.clone())))
+        };
+        let called = |column: &[bool]| -> Option<ArrayRef> {
+            let values = by_time(column, n, |&value, _| value);
+            Some(Arc::new(BooleanArray::new(values.into(), there.clone())))
+        };
+        let (z, d) = (&block.budget.vorticity, &block.budget.divergence);
         Ok(vec![
             Some(Arc::new(
                 TimestampMicrosecondArray::from_iter_values(times).with_timezone("UTC"),
@@ -218,6 +254,14 @@ impl ParquetRows {
                 Arc::clone(&self.senses),
             )?)),
             Some(Arc::new(Float32Array::new(age.into(), there.clone()))),
+            part(&z.instrument, true),
+            part(&z.sampling, self.complete),
+            part(&z.timing, self.complete),
+            part(&d.instrument, true),
+            part(&d.sampling, self.complete),
+            part(&d.timing, self.complete),
+            called(&block.significant[0]),
+            called(&block.significant[1]),
         ])
     }
 }

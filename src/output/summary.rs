@@ -4,8 +4,8 @@ use std::collections::BTreeMap;
 
 use serde_json::{Value, json};
 
-use super::{CAUTION, ERROR_BARS};
-use crate::integral::Peak;
+use super::{CAUTION, error_bars};
+use crate::integral::{Peak, Statistics};
 use crate::pipeline::{Outcome, Setup};
 use crate::settings::{AlignMethod, ReportSource, Settings};
 
@@ -67,6 +67,16 @@ pub fn summary_json(setup: &Setup, outcome: &Outcome) -> String {
             "values_possible": period.times * polygons,
         },
         "self_test": setup.self_test,
+        "significance": {
+            "false_discovery_rate": setup.settings.errors.false_discovery_rate,
+            "vorticity_share": significant_share(&outcome.statistics.vorticity),
+            "divergence_share": significant_share(&outcome.statistics.divergence),
+        },
+        "structure": outcome.structure.last().map(|report| json!({
+            "time": report.time.to_string(),
+            "function": report.function,
+            "by_distance": report.rows,
+        })),
         "extremes": {
             "convergence": peak(setup, extremes.convergence),
             "divergence": peak(setup, extremes.divergence),
@@ -77,12 +87,19 @@ pub fn summary_json(setup: &Setup, outcome: &Outcome) -> String {
         "units": {
             "vorticity": "s-1", "divergence": "s-1", "speed": "m s-1", "area_km2": "km2", "time": "RFC 3339 UTC",
         },
-        "error_bars": ERROR_BARS,
+        "error_bars": error_bars(&setup.settings.errors),
         "caution": CAUTION,
     });
     let mut text = format!("{summary:#}");
     text.push('\n');
     text
+}
+
+/// Share of the values that differ from zero at the false-discovery rate.
+pub(crate) fn significant_share(statistics: &[Statistics]) -> Option<f64> {
+    let values: u64 = statistics.iter().map(|s| s.count).sum();
+    let significant: u64 = statistics.iter().map(|s| s.significant).sum();
+    (values > 0).then(|| significant as f64 / values as f64)
 }
 
 fn peak(setup: &Setup, peak: Option<Peak>) -> Option<Value> {
@@ -155,6 +172,7 @@ fn settings(settings: &Settings) -> Value {
             "height_m": analysis.height.map(|h| h.height),
             "level": analysis.level,
         },
+        "errors": settings.errors,
         "check": settings.screen.then_some(settings.range),
         "polygons": {
             "triangles": settings.polygons.triangles,

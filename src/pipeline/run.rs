@@ -2,17 +2,17 @@
 
 use std::fmt::Write;
 
-use rayon::prelude::*;
-
-use super::{Reading, Setup, Window, Windows};
-use crate::align::{AlignBooks, Aligner, Period, StationSensors, block_times, height_factor};
+use super::estimation::Estimation;
+use super::{Reading, Setup, Windows};
+use crate::align::Period;
 use crate::error::Error;
-use crate::integral::{EstimateBlock, Extremes, RunStatistics, estimate};
+use crate::integral::{EstimateBlock, Extremes, RunStatistics};
 use crate::polygon::StationPolygon;
-use crate::report::{InputOrder, ReportFiles, ReportTable, Rounding, SpeedStep};
-use crate::settings::{SensorErrors, Settings};
-use crate::station::Station;
+use crate::report::{InputOrder, ReportFiles, ReportTable};
+use crate::settings::Settings;
+use crate::structure::{StructureFunction, StructureRow};
 use crate::tally::Tally;
+use crate::time::Time;
 use crate::warning::Warning;
 
 /// What came of a run.
@@ -34,6 +34,8 @@ pub struct Outcome {
     pub extremes: Extremes,
     /// Statistics of each polygon.
     pub statistics: RunStatistics,
+    /// The structure function at the end of each day and of the run; empty where it was not asked for.
+    pub structure: Vec<StructureReport>,
     /// What the user should know of all stages.
     pub warnings: Vec<Warning>,
 }
@@ -45,6 +47,17 @@ impl Outcome {
         let read = self.reading.rows.passed.max(1);
         self.aligned.passed as f64 / read as f64
     }
+}
+
+/// The structure function at one time.
+#[derive(Debug, Clone)]
+pub struct StructureReport {
+    /// The last analysis time that is in it.
+    pub time: Time,
+    /// What was found.
+    pub function: StructureFunction,
+    /// The mean squared differences of the window by distance.
+    pub rows: Vec<StructureRow>,
 }
 
 /// Runs the main job on reports in the order of time, or in any order. `encode` turns a block of estimates into what
@@ -114,88 +127,8 @@ pub fn run<T: Send>(
         height_factors: estimation.sensors.height_factors,
         extremes: estimation.extremes,
         statistics: estimation.statistics,
+        structure: estimation.structure.reports,
     })
-}
-
-/// The estimates of window after window.
-struct Estimation<'a> {
-    setup: &'a Setup,
-    sensors: StationSensors,
-    warnings: Vec<Warning>,
-    books: AlignBooks,
-    /// For the reports that the last window hands on whether a value came of them, by station and time.
-    carried: Vec<bool>,
-    any_moving: bool,
-    values: Vec<u64>,
-    extremes: Extremes,
-    statistics: RunStatistics,
-}
-
-impl<'a> Estimation<'a> {
-    fn new(setup: &'a Setup) -> Self {
-        let (height_factors, warnings) = height_factors(setup);
-        Self {
-            sensors: StationSensors {
-                errors: Vec::new(),
-                height_factors,
-            },
-            warnings,
-            books: AlignBooks::default(),
-            carried: Vec::new(),
-            any_moving: false,
-            values: vec![0; setup.network.len()],
-            extremes: Extremes::default(),
-            statistics: RunStatistics::default(),
-            setup,
-        }
-    }
-
-    /// Estimates all polygons at the analysis times of a window; the encoded blocks in the order of time.
-    fn window<T: Send>(
-        &mut self,
-        window: &Window,
-        encode: &(impl Fn(&EstimateBlock) -> T + Sync),
-    ) -> Vec<T> {
-        let setup = self.setup;
-        let (table, polygons) = (&window.table, &setup.built.polygons);
-        let stations = table.stations();
-        self.any_moving |= table.has_moving();
-        self.sensors.errors = sensor_errors(&setup.settings.sensor, &window.rounding);
-        let analysis = &setup.settings.analysis;
-        let aligner = Aligner::new(table, analysis, &self.sensors, window.multiples.clone());
-        let handed_on = (0..stations).flat_map(|s| table.of_station(s).start..table.fresh(s).start);
-        let used = handed_on.zip(&self.carried).filter(|&(_, &used)| used);
-        aligner.mark_used(used.map(|(i, _)| i));
-        let blocks = aligner.grid().blocks(block_times(stations));
-        let results: Vec<(Vec<u64>, Extremes, RunStatistics, T)> = blocks
-            .into_par_iter()
-            .map(|times| {
-                let winds = aligner.align(times);
-                let block = estimate(polygons, &winds);
-                let peaks = Extremes::of(&block, &setup.planetary);
-                let sums = RunStatistics::of(&block, polygons.len());
-                (winds.values(), peaks, sums, encode(&block))
-            })
-            .collect();
-        let mut encoded = Vec::with_capacity(results.len());
-        for (values, peaks, sums, result) in results {
-            for (sum, n) in self.values.iter_mut().zip(values) {
-                *sum += n;
-            }
-            self.extremes.merge(&peaks);
-            self.statistics.merge(&sums);
-            encoded.push(result);
-        }
-        self.books.add(&aligner, window.carried_from);
-        self.carried = match window.carried_from {
-            Some(from) => (0..stations)
-                .flat_map(|s| table.of_station_from(s, from))
-                .map(|i| aligner.is_used(i))
-                .collect(),
-            None => Vec::new(),
-        };
-        encoded
-    }
 }
 
 /// Stations without any value, if they cost polygons.
@@ -212,42 +145,6 @@ fn never_reported(setup: &Setup, values: &[u64]) -> Vec<Warning> {
         first: silent.iter().take(3).map(id).collect(),
         polygons,
     }]
-}
-
-/// Errors of each station's sensor: as stated, with the steps that were found in its reports.
-fn sensor_errors(stated: &SensorErrors, rounding: &[Rounding]) -> Vec<SensorErrors> {
-    rounding
-        .iter()
-        .map(|found| SensorErrors {
-            speed_step: stated
-                .speed_step
-                .or(found.speed.map(SpeedStep::metres_per_second)),
-            direction_step: stated.direction_step.or(found.direction),
-            ..*stated
-        })
-        .collect()
-}
-
-/// Height factors of the stations; those whose speeds cannot be reduced are named.
-fn height_factors(setup: &Setup) -> (Vec<Option<f64>>, Vec<Warning>) {
-    let mut warnings = Vec::new();
-    let factor = |station: &Station| {
-        let Some(reduction) = setup.settings.analysis.height else {
-            return Some(1.0);
-        };
-        match height_factor(&station.site, &reduction) {
-            Ok(factor) => Some(factor),
-            Err(reason) => {
-                warnings.push(Warning::NoHeightFactor {
-                    station: station.id.clone(),
-                    reason,
-                });
-                None
-            }
-        }
-    };
-    let factors = setup.network.stations().iter().map(factor).collect();
-    (factors, warnings)
 }
 
 /// Reports on levels need a level to be asked for.

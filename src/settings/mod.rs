@@ -3,6 +3,8 @@
 //! One TOML file per network, `networks/<name>/network.toml`. Paths in it are relative to it. All defects of the file
 //! are listed at once, each with its line; an unknown key is a defect.
 
+mod analysis;
+mod errors;
 mod path;
 mod read;
 mod reports;
@@ -15,6 +17,7 @@ use crate::align::HeightReduction;
 use crate::error::Place;
 use crate::report::ReportFormat;
 use crate::station::Catalogue;
+use crate::structure::StructureSettings;
 use crate::time::Time;
 
 pub use read::{Overrides, read_settings};
@@ -34,6 +37,8 @@ pub struct Settings {
     pub sensor: SensorErrors,
     /// Analysis times.
     pub analysis: Analysis,
+    /// What the errors hold.
+    pub errors: ErrorSettings,
     /// Limits of the range check.
     pub range: RangeLimits,
     /// Which polygons are built.
@@ -89,6 +94,27 @@ impl Default for SensorErrors {
             speed_step: None,
             direction_step: None,
             calm_below: 0.5,
+        }
+    }
+}
+
+/// What the errors of the estimates hold, and how they are found.
+#[derive(Debug, Clone, Copy, PartialEq, serde::Serialize)]
+pub struct ErrorSettings {
+    /// True for all parts, false for the instruments alone.
+    pub complete: bool,
+    /// Share of false calls among the values called different from zero. Default 5 %, common practice.
+    pub false_discovery_rate: f64,
+    /// How winds differ with distance and time.
+    pub structure: StructureSettings,
+}
+
+impl Default for ErrorSettings {
+    fn default() -> Self {
+        Self {
+            complete: true,
+            false_discovery_rate: 0.05,
+            structure: StructureSettings::default(),
         }
     }
 }
