@@ -92,7 +92,7 @@ impl Site {
     fn estimate(&self, file: &str, column: &str) -> Vec<f64> {
         let out = self.path("out");
         let output = self
-            .run("estimate", &["--quiet", "--out"])
+            .run("estimate", &["--quiet", "--errors", "instrument", "--out"])
             .arg(&out)
             .output();
         let Output { status, stderr, .. } = output.unwrap();

@@ -83,6 +83,10 @@ impl Site {
 
     /// The results on these files, and what was said.
     fn run(&self, files: &[PathBuf], options: &[&str]) -> (Results, String) {
+        self.run_with(files, &[&["--errors", "instrument"], options].concat())
+    }
+
+    fn run_with(&self, files: &[PathBuf], options: &[&str]) -> (Results, String) {
         let out = self.path("out");
         let output = Command::new(env!("CARGO_BIN_EXE_gyremesh"))
             .arg("estimate")
@@ -157,6 +161,12 @@ fn the_order_and_number_of_files_change_nothing() {
         expected,
         "a file for each station"
     );
+
+    // With the structure function, which follows the run.
+    let (complete, _) = site.run_with(std::slice::from_ref(&whole), &[]);
+    let (found, _) = site.run_with(&stations, &["--threads", "1"]);
+    assert_ne!(complete.polygons, expected.polygons);
+    assert_eq!(found, complete, "complete errors");
 
     let days: Vec<PathBuf> = site
         .rows
