@@ -9,7 +9,7 @@ use super::sums::StructureSums;
 /// What the pairs say of the exponent counts as this many independent values at most: they cannot tell a wind that
 /// varies linearly over the network, in which the line integral makes no error, from one that is rough. The planes
 /// can.
-const PAIR_VALUES: f64 = 30.0;
+const PAIR_VALUES: f64 = 20.0;
 
 /// Misfit by which a site variance must better the fit to be believed: that of one more parameter (Akaike 1974, IEEE
 /// Trans. Autom. Control 19, 716).
@@ -91,7 +91,7 @@ impl Shape {
     ///   little. The classes are the pairs, by distance out to twice the spacing, with 4 n + s r^p + b r² (b for a wind
     ///   that varies linearly), and the planes of different sizes, with their variances under r^p and n. The prior of
     ///   the exponent is a normal one of standard deviation 2/√`prior_exponent_values`. For the choice of the exponent
-    ///   the pairs weigh as 30 values at most.
+    ///   the pairs weigh as 20 values at most.
     /// - **Site variance** n: 0, unless it betters the fit by more than one parameter must (Akaike 1974), and makes a tenth of the
     ///   differences at one spacing.
     /// - **Saturation**: pairs at large distance differ by no more than twice the variance of the wind, which would make
