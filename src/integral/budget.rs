@@ -68,6 +68,11 @@ pub fn complete_errors(
     let model: Vec<&StructureFunction> = (0..n).map(|t| models.get(t).unwrap_or(last)).collect();
     let runs = runs_of_exponent(&model);
     let aged = changes_with_age(winds, &model);
+    let column =
+        |of: fn(&StructureFunction) -> f64| -> Vec<f64> { model.iter().map(|m| of(m)).collect() };
+    let sites = column(|m| m.site_variance);
+    let longitudinal = column(|m| m.longitudinal);
+    let transverse = column(|m| m.transverse);
     let mut timing = vec![0.0; n];
     for (p, polygon) in polygons.iter().enumerate() {
         let squared_weights: f64 = polygon.row.weights.iter().map(|[x, y]| x * x + y * y).sum();
@@ -75,36 +80,36 @@ pub fn complete_errors(
         if let Some(aged) = &aged {
             add_timing(&polygon.row, winds, aged, &mut timing);
         }
-        for (times, of_run) in runs
-            .iter()
-            .map(|(times, e)| (times, sampling.constants(*e)))
-        {
-            let SamplingConstants { along, across, .. } = of_run[p];
-            for t in times.clone() {
-                let cell = p * n + t;
-                if block.flag[cell] == Flag::Missing {
-                    continue;
+        let cells = p * n..(p + 1) * n;
+        let of_quantity = [
+            (&mut budget.vorticity, &mut block.vorticity_se, false),
+            (&mut budget.divergence, &mut block.divergence_se, true),
+        ];
+        for (parts, se, swapped) in of_quantity {
+            let se = &mut se[cells.clone()];
+            let instrument = &mut parts.instrument[cells.clone()];
+            let sampled = &mut parts.sampling[cells.clone()];
+            let timed = &mut parts.timing[cells.clone()];
+            for (times, exponent) in &runs {
+                let SamplingConstants { along, across, .. } = sampling.constants(*exponent)[p];
+                let (of_l, of_t) = if swapped {
+                    (across, along)
+                } else {
+                    (along, across)
+                };
+                // No branch in here, so that it vectorises.
+                for t in times.clone() {
+                    let own = se[t] * se[t] + squared_weights * sites[t];
+                    let between = longitudinal[t] * of_l + transverse[t] * of_t;
+                    instrument[t] = own.sqrt();
+                    sampled[t] = between.sqrt();
+                    timed[t] = timing[t].sqrt();
+                    se[t] = (own + between + timing[t]).sqrt();
                 }
-                let m = model[t];
-                let sites = squared_weights * m.site_variance;
-                let of_quantity = [
-                    (
-                        &mut budget.vorticity,
-                        &mut block.vorticity_se[cell],
-                        m.longitudinal * along + m.transverse * across,
-                    ),
-                    (
-                        &mut budget.divergence,
-                        &mut block.divergence_se[cell],
-                        m.longitudinal * across + m.transverse * along,
-                    ),
-                ];
-                for (parts, se, sampled) in of_quantity {
-                    let instrument = *se * *se + sites;
-                    parts.instrument[cell] = instrument.sqrt();
-                    parts.sampling[cell] = sampled.sqrt();
-                    parts.timing[cell] = timing[t].sqrt();
-                    *se = (instrument + sampled + timing[t]).sqrt();
+            }
+            for (t, flag) in block.flag[cells.clone()].iter().enumerate() {
+                if *flag == Flag::Missing {
+                    (se[t], instrument[t], sampled[t], timed[t]) = (0.0, 0.0, 0.0, 0.0);
                 }
             }
         }
