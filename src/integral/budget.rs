@@ -1,13 +1,11 @@
 //! The error budget: variances of vorticity and divergence by their causes.
 
-use std::ops::Range;
-
 use super::EstimateBlock;
 use super::sampling::{PairCovariance, Sampling, SamplingConstants};
 use crate::align::WindBlock;
 use crate::check::Flag;
 use crate::polygon::{CoefficientRow, StationPolygon};
-use crate::structure::{Exponent, StructureFunction};
+use crate::structure::StructureFunction;
 
 /// Standard errors of one quantity by cause, 1/s, in columns like those of [`EstimateBlock`]; the total is the root of
 /// the sum of their squares.
@@ -68,51 +66,57 @@ pub fn complete_errors(
         return budget;
     }
     let model: Vec<&StructureFunction> = (0..n).map(|t| models.get(t).unwrap_or(last)).collect();
+    let runs = runs_of_exponent(&model);
+    let aged = changes_with_age(winds, &model);
     let column =
         |of: fn(&StructureFunction) -> f64| -> Vec<f64> { model.iter().map(|m| of(m)).collect() };
-    let at_times = AtTimes {
-        longitudinal: column(|m| m.longitudinal),
-        transverse: column(|m| m.transverse),
-        site_variance: column(|m| m.site_variance),
-        aged: changes_with_age(winds, &model),
-        runs: runs_of_exponent(&model),
-    };
+    let sites = column(|m| m.site_variance);
+    let longitudinal = column(|m| m.longitudinal);
+    let transverse = column(|m| m.transverse);
     // With the widest vectors that the processor has.
     pulp::Arch::new().dispatch(|| {
+        let mut timing = vec![0.0; n];
         for (p, polygon) in polygons.iter().enumerate() {
-            let constants = |exponent| sampling.constants(exponent)[p];
+            let squared_weights: f64 = polygon.row.weights.iter().map(|[x, y]| x * x + y * y).sum();
+            timing.fill(0.0);
+            if let Some(aged) = &aged {
+                add_timing(&polygon.row, winds, aged, &mut timing);
+            }
             let cells = p * n..(p + 1) * n;
-            let timing = at_times.timing(&polygon.row, winds);
-            at_times.complete(
-                Quantity::Vorticity,
-                polygon,
-                constants,
-                &timing,
-                &mut block.vorticity_se[cells.clone()],
-                &mut budget.vorticity,
-                cells.clone(),
-            );
-            at_times.complete(
-                Quantity::Divergence,
-                polygon,
-                constants,
-                &timing,
-                &mut block.divergence_se[cells.clone()],
-                &mut budget.divergence,
-                cells,
-            );
-        }
-    });
-    if block.flag.contains(&Flag::Missing) {
-        for cell in (0..cells).filter(|&cell| block.flag[cell] == Flag::Missing) {
-            (block.vorticity_se[cell], block.divergence_se[cell]) = (0.0, 0.0);
-            for parts in [&mut budget.vorticity, &mut budget.divergence] {
-                parts.instrument[cell] = 0.0;
-                parts.sampling[cell] = 0.0;
-                parts.timing[cell] = 0.0;
+            let of_quantity = [
+                (&mut budget.vorticity, &mut block.vorticity_se, false),
+                (&mut budget.divergence, &mut block.divergence_se, true),
+            ];
+            for (parts, se, swapped) in of_quantity {
+                let se = &mut se[cells.clone()];
+                let instrument = &mut parts.instrument[cells.clone()];
+                let sampled = &mut parts.sampling[cells.clone()];
+                let timed = &mut parts.timing[cells.clone()];
+                for (times, exponent) in &runs {
+                    let SamplingConstants { along, across, .. } = sampling.constants(*exponent)[p];
+                    let (of_l, of_t) = if swapped {
+                        (across, along)
+                    } else {
+                        (along, across)
+                    };
+                    // No branch in here, so that it vectorises.
+                    for t in times.clone() {
+                        let own = se[t] * se[t] + squared_weights * sites[t];
+                        let between = longitudinal[t] * of_l + transverse[t] * of_t;
+                        instrument[t] = own.sqrt();
+                        sampled[t] = between.sqrt();
+                        timed[t] = timing[t].sqrt();
+                        se[t] = (own + between + timing[t]).sqrt();
+                    }
+                }
+                for (t, flag) in block.flag[cells.clone()].iter().enumerate() {
+                    if *flag == Flag::Missing {
+                        (se[t], instrument[t], sampled[t], timed[t]) = (0.0, 0.0, 0.0, 0.0);
+                    }
+                }
             }
         }
-    }
+    });
     budget
 }
 
@@ -151,86 +155,11 @@ pub fn expected_errors(
     }
 }
 
-#[derive(Clone, Copy)]
-enum Quantity {
-    Vorticity,
-    Divergence,
-}
-
-/// The structure function at the times of a block, in columns.
-struct AtTimes {
-    longitudinal: Vec<f64>,
-    transverse: Vec<f64>,
-    site_variance: Vec<f64>,
-    /// What the age of every value adds, stations × times; `None` if none has an age.
-    aged: Option<Vec<f64>>,
-    /// Runs of times with one exponent.
-    runs: Vec<(Range<usize>, Exponent)>,
-}
-
-impl AtTimes {
-    /// Timing variance of a polygon at each time.
-    fn timing(&self, row: &CoefficientRow, winds: &WindBlock) -> Vec<f64> {
-        let mut timing = vec![0.0; self.longitudinal.len()];
-        if let Some(aged) = &self.aged {
-            add_timing(row, winds, aged, &mut timing);
-        }
-        timing
-    }
-
-    /// Completes the errors of one quantity of one polygon: `se` holds those of the instruments and becomes the total.
-    #[expect(
-        clippy::inline_always,
-        reason = "it must become part of the caller's vector code"
-    )]
-    #[expect(clippy::too_many_arguments, reason = "the columns of one loop")]
-    #[inline(always)]
-    fn complete(
-        &self,
-        quantity: Quantity,
-        polygon: &StationPolygon,
-        constants: impl Fn(Exponent) -> SamplingConstants,
-        timing: &[f64],
-        se: &mut [f64],
-        parts: &mut ErrorParts,
-        cells: Range<usize>,
-    ) {
-        let squared_weights: f64 = polygon.row.weights.iter().map(|[x, y]| x * x + y * y).sum();
-        let instrument = &mut parts.instrument[cells.clone()];
-        let sampled = &mut parts.sampling[cells.clone()];
-        let timed = &mut parts.timing[cells];
-        for (times, exponent) in &self.runs {
-            let SamplingConstants { along, across, .. } = constants(*exponent);
-            // What the longitudinal function is to the circulation, the transverse one is to the flux.
-            let (of_l, of_t) = match quantity {
-                Quantity::Vorticity => (along, across),
-                Quantity::Divergence => (across, along),
-            };
-            let models = self.longitudinal[times.clone()]
-                .iter()
-                .zip(&self.transverse[times.clone()])
-                .zip(&self.site_variance[times.clone()])
-                .zip(&timing[times.clone()]);
-            let out = se[times.clone()]
-                .iter_mut()
-                .zip(&mut instrument[times.clone()])
-                .zip(&mut sampled[times.clone()])
-                .zip(&mut timed[times.clone()]);
-            for ((((&l, &t), &n), &late), (((se, own), unseen), aged)) in models.zip(out) {
-                let station = *se * *se + squared_weights * n;
-                let between = l * of_l + t * of_t;
-                *own = station.sqrt();
-                *unseen = between.sqrt();
-                *aged = late.sqrt();
-                *se = (station + between + late).sqrt();
-            }
-        }
-    }
-}
-
 /// Runs of times with one exponent.
-fn runs_of_exponent(model: &[&StructureFunction]) -> Vec<(Range<usize>, Exponent)> {
-    let mut runs: Vec<(Range<usize>, Exponent)> = Vec::new();
+fn runs_of_exponent(
+    model: &[&StructureFunction],
+) -> Vec<(std::ops::Range<usize>, crate::structure::Exponent)> {
+    let mut runs: Vec<(std::ops::Range<usize>, crate::structure::Exponent)> = Vec::new();
     for (t, m) in model.iter().enumerate() {
         match runs.last_mut() {
             Some((times, exponent)) if *exponent == m.exponent => times.end = t + 1,

@@ -24,6 +24,25 @@
 //! height. Simulated winds with spectra from k^(−5/3) to k^(−3) bear this out within 2 % (`tests/coverage.rs`), and
 //! stations left out and predicted from the others within the model's own error (`tests/leave_one_out.rs`).
 //!
+//! Shares of simulated true values within the intervals, least, mean and largest of 72 classes each (divergent share 0 to
+//! 1, 1 and 5 m/s, spacing 3 to 150 km, sensor errors 0.1 and 1 m/s, none or a tenth of the reports missing; vorticity and
+//! divergence; 49 stations, a day of data):
+//!
+//! | Spectrum | Stations | 68 % interval | 95 % interval |
+//! |---|---|---|---|
+//! | k^(−5/3) | regular | 65.6, 68.0, 70.0 | 93.7, 94.9, 96.1 |
+//! | | jittered | 65.7, 67.9, 69.5 | 93.4, 94.9, 95.6 |
+//! | | clustered | 66.3, 67.8, 69.2 | 93.7, 94.9, 95.6 |
+//! | k^(−2) | regular | 65.8, 68.2, 69.8 | 93.9, 95.0, 95.8 |
+//! | | jittered | 65.7, 68.1, 69.7 | 93.8, 95.0, 95.9 |
+//! | | clustered | 66.4, 68.0, 69.4 | 93.9, 94.9, 95.5 |
+//! | k^(−3) | regular | 67.5, 69.0, 71.2 | 94.8, 95.4, 96.3 |
+//! | | jittered | 67.6, 68.9, 70.7 | 94.7, 95.4, 96.1 |
+//! | | clustered | 67.6, 68.8, 70.3 | 94.6, 95.3, 96.1 |
+//!
+//! Weaker (mean squared standardised error, 1 if right): waves no longer than 4 spacings 0.7 to 0.96, no longer than 2
+//! spacings 1.05 to 1.2; k^(−3) seen by 16 stations or fewer 0.8 to 0.9; winds that grow fourfold in a day 1.04 to 1.16.
+//!
 //! # What it does not contain
 //!
 //! - A sensor that is turned, mis-scaled, or stated to be better than it is; a wrong position.

@@ -9,7 +9,7 @@ use super::sums::StructureSums;
 /// What the pairs say of the exponent counts as this many independent values at most: they cannot tell a wind that
 /// varies linearly over the network, in which the line integral makes no error, from one that is rough. The planes
 /// can.
-const PAIR_VALUES: f64 = 30.0;
+const PAIR_VALUES: f64 = 20.0;
 
 /// Misfit by which a site variance must better the fit to be believed: that of one more parameter (Akaike 1974, IEEE
 /// Trans. Autom. Control 19, 716).
@@ -33,7 +33,6 @@ const PASSES: usize = 3;
 #[derive(Debug, Clone, Copy)]
 struct Candidate {
     law: Law,
-    misfit: f64,
     full_misfit: f64,
 }
 
@@ -91,7 +90,7 @@ impl Shape {
     ///   little. The classes are the pairs, by distance out to twice the spacing, with 4 n + s r^p + b r² (b for a wind
     ///   that varies linearly), and the planes of different sizes, with their variances under r^p and n. The prior of
     ///   the exponent is a normal one of standard deviation 2/√`prior_exponent_values`. For the choice of the exponent
-    ///   the pairs weigh as 30 values at most.
+    ///   the pairs weigh as 20 values at most.
     /// - **Site variance** n: 0, unless it betters the fit by more than one parameter must (Akaike 1974), and makes a tenth of the
     ///   differences at one spacing.
     /// - **Saturation**: pairs at large distance differ by no more than twice the variance of the wind, which would make
@@ -123,25 +122,19 @@ impl Shape {
         let saturated = leave_out_saturated(&mut pairs, settings);
         let scales: Vec<Scale> = pairs.iter().map(|p| p.1).collect();
         let planes = plane_scales(window);
-        let mut best: [Option<Candidate>; 2] = [None; 2];
-        for exponent in Exponent::all().take(Exponent::LARGEST_FITTED.index() + 1) {
-            let off = exponent.value() - settings.prior_exponent;
-            let prior = off * off * settings.prior_exponent_values / 4.0;
-            for (k, best) in best.iter_mut().enumerate() {
-                let Some(law) = law_of(&scales, exponent, k == 1, true) else {
-                    continue;
-                };
+        let best = [false, true].map(|constant| {
+            least_misfit(|exponent| {
+                let off = exponent.value() - settings.prior_exponent;
+                let prior = off * off * settings.prior_exponent_values / 4.0;
+                let law = law_of(&scales, exponent, constant, true)?;
                 let others = prior + plane_misfit(geometry, &planes, exponent, law.constant);
                 let candidate = Candidate {
                     law,
-                    misfit: law.misfit + others,
                     full_misfit: law.misfit * window.independent / values + others,
                 };
-                if best.is_none_or(|b| candidate.misfit < b.misfit) {
-                    *best = Some(candidate);
-                }
-            }
-        }
+                Some((law.misfit + others, candidate))
+            })
+        });
         let law = match best {
             [Some(without), Some(with)]
                 if with.full_misfit + BELIEVED < without.full_misfit
@@ -180,24 +173,40 @@ fn leave_out_saturated(pairs: &mut Vec<(usize, Scale)>, settings: &StructureSett
     pairs.first().map_or(0, |p| p.0)
 }
 
+/// What belongs to the exponent of least misfit: every fifth of the grid is tried, then those about the best.
+fn least_misfit<T: Copy>(of: impl Fn(Exponent) -> Option<(f64, T)>) -> Option<T> {
+    let grid: Vec<Exponent> = Exponent::all()
+        .take(Exponent::LARGEST_FITTED.index() + 1)
+        .collect();
+    let best = |members: &mut dyn Iterator<Item = &Exponent>| {
+        let mut best: Option<(f64, usize, T)> = None;
+        for exponent in members {
+            if let Some((misfit, found)) = of(*exponent)
+                && best.is_none_or(|(least, _, _)| misfit < least)
+            {
+                best = Some((misfit, exponent.index(), found));
+            }
+        }
+        best
+    };
+    let (_, about, _) = best(&mut grid.iter().step_by(5).chain(grid.last()))?;
+    let near = about.saturating_sub(4)..(about + 5).min(grid.len());
+    best(&mut grid[near].iter()).map(|(_, _, found)| found)
+}
+
 /// The most likely power law through scales, with a constant if it is believed, and no linear part.
 pub(super) fn best_law(scales: &[Scale], prior: Exponent, prior_values: f64) -> Option<Law> {
     if scales.len() < 2 {
         return None;
     }
-    let mut best: [Option<(f64, Law)>; 2] = [None; 2];
-    for exponent in Exponent::all().take(Exponent::LARGEST_FITTED.index() + 1) {
-        let off = exponent.value() - prior.value();
-        for (k, best) in best.iter_mut().enumerate() {
-            let Some(law) = law_of(scales, exponent, k == 1, false) else {
-                continue;
-            };
+    let best = [false, true].map(|constant| {
+        least_misfit(|exponent| {
+            let off = exponent.value() - prior.value();
+            let law = law_of(scales, exponent, constant, false)?;
             let misfit = law.misfit + off * off * prior_values / 4.0;
-            if best.is_none_or(|(least, _)| misfit < least) {
-                *best = Some((misfit, law));
-            }
-        }
-    }
+            Some((misfit, (misfit, law)))
+        })
+    });
     match best {
         [Some(without), Some(with)] if with.0 + BELIEVED < without.0 => Some(with.1),
         [Some((_, law)), _] | [None, Some((_, law))] => Some(law),

@@ -12,7 +12,9 @@ use crate::time::Time;
 /// Parts of the window; the window moves by one of them at a time.
 const BINS: i64 = 24;
 
-/// The shape is found anew with each bin, and at each of the first times of a run.
+/// The shape is found anew after so many bins, and at each of the first times of a run: it is that of a whole day, and
+/// takes longer to find than all else.
+const BINS_PER_SHAPE: i64 = 3;
 const FIRST_TIMES: u64 = 8;
 
 /// Sums of the trailing window, taken in in the order of time.
@@ -141,7 +143,8 @@ impl StructureWindow {
         self.recent.add(&sums, 1.0);
 
         let bin = time.micros().div_euclid(self.bin_length());
-        let new_bin = self.bins.back().is_none_or(|b| b.0 != bin);
+        let period = |bin: i64| bin.div_euclid(BINS_PER_SHAPE);
+        let new_period = self.bins.back().is_none_or(|b| period(b.0) != period(bin));
         match self.bins.back_mut() {
             Some((last, of_bin)) if *last == bin => of_bin.add(&sums, 1.0),
             _ => {
@@ -156,7 +159,7 @@ impl StructureWindow {
             }
         }
         let window = self.sums();
-        if new_bin || self.taken < FIRST_TIMES {
+        if new_period || self.taken < FIRST_TIMES {
             self.shape = Shape::of(geometry, &self.settings, &window);
         }
         self.taken += 1;
