@@ -112,7 +112,7 @@ fn parquet_holds_what_the_csv_holds() {
 }
 
 /// A value of the series.
-struct Value {
+struct Divergence {
     value: f64,
     error: f64,
     /// Of the error: sensors and sites, the wind between the stations, late reports.
@@ -122,18 +122,21 @@ struct Value {
 }
 
 /// The divergences of each polygon.
-fn divergences(folder: &Path) -> BTreeMap<String, Vec<Value>> {
-    let mut series: BTreeMap<String, Vec<Value>> = BTreeMap::new();
+fn divergences(folder: &Path) -> BTreeMap<String, Vec<Divergence>> {
+    let mut series: BTreeMap<String, Vec<Divergence>> = BTreeMap::new();
     for row in rows(&folder.join("polygons.csv")) {
         let number = |k: usize| row[k].parse::<f64>();
         if let (Ok(value), Ok(error)) = (number(6), number(7)) {
-            series.entry(row[1].to_string()).or_default().push(Value {
-                value,
-                error,
-                parts: [16, 17, 18].map(|k| number(k).unwrap()),
-                significant: &row[20] == "1",
-                time: row[0].to_string(),
-            });
+            series
+                .entry(row[1].to_string())
+                .or_default()
+                .push(Divergence {
+                    value,
+                    error,
+                    parts: [16, 17, 18].map(|k| number(k).unwrap()),
+                    significant: &row[20] == "1",
+                    time: row[0].to_string(),
+                });
         }
     }
     series
@@ -145,7 +148,7 @@ fn divergences(folder: &Path) -> BTreeMap<String, Vec<Value>> {
 fn errors_have_their_parts_and_calls_their_rate() {
     let out = tempfile::tempdir().unwrap();
     estimate(out.path(), &[]);
-    let mut times: BTreeMap<String, Vec<Value>> = BTreeMap::new();
+    let mut times: BTreeMap<String, Vec<Divergence>> = BTreeMap::new();
     let mut sampled = 0;
     for value in divergences(out.path()).into_values().flatten() {
         let whole = value
@@ -162,7 +165,7 @@ fn errors_have_their_parts_and_calls_their_rate() {
     assert!(sampled > 10_000, "{sampled}");
     let mut called = 0;
     for values in times.values() {
-        let z = |v: &Value| (v.value / v.error).abs();
+        let z = |v: &Divergence| (v.value / v.error).abs();
         let chances: Vec<f64> = values.iter().map(|v| chance_of(z(v), 1.0)).collect();
         for (value, p) in values.iter().zip(adjusted(&chances)) {
             assert_eq!(value.significant, p <= 0.05, "{} {p}", value.time);
