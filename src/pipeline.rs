@@ -128,6 +128,17 @@ impl Setup {
     }
 }
 
+impl Setup {
+    /// Median length of the edges of all polygons, m.
+    #[must_use]
+    pub fn median_edge(&self) -> Option<f64> {
+        let edges = self.built.edges.edges().iter();
+        let mut lengths: Vec<f64> = edges.map(|edge| edge.length).collect();
+        lengths.sort_by(f64::total_cmp);
+        lengths.get(lengths.len() / 2).copied()
+    }
+}
+
 /// Settings and stations with the defects of the settings. Without `one_place`, a station that moved is taken at its
 /// last place.
 fn read_sources(

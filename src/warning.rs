@@ -82,6 +82,15 @@ pub enum Warning {
         /// Polygons that have no value for it.
         polygons: usize,
     },
+    /// Line integral and linear fit of a polygon disagree beyond their errors.
+    FitDisagrees {
+        /// Which.
+        polygon: String,
+        /// Share of the times at which they do.
+        share: f64,
+        /// Times compared.
+        times: u64,
+    },
     /// The speeds of a station cannot be reduced to the common height.
     NoHeightFactor {
         /// Which.
@@ -250,6 +259,16 @@ impl fmt::Display for Warning {
                     names.join(", ")
                 )
             }
+            Self::FitDisagrees {
+                polygon,
+                share,
+                times,
+            } => write!(
+                f,
+                "{polygon}: line integral and linear fit disagree beyond their errors at {:.0} % of {times} times (1 % \
+                 expected); a wind of one of its stations may be wrong, or the weather smaller than the polygon",
+                100.0 * share
+            ),
             Self::NoHeightFactor { station, reason } => write!(
                 f,
                 "station `{station}` is left out, its speeds cannot be reduced to the common height: {reason}"

@@ -55,7 +55,8 @@ const POLYGONS_HELP: &str = "\
 Reads:   settings, station list.
 Prints:  a line for each polygon: area, longest edge, smallest angle, shape quality (1 = regular), the error of \
 vorticity or divergence for an error of 1 m/s in each wind component (1e-5 /s), and why it is left out.
-Writes:  with --out: mesh.geojson (RFC 7946) and mesh.csv.
+With --expect: the errors to expect, by sensors and by the wind that no station sees.
+Writes:  with --out: mesh.geojson (RFC 7946), mesh.csv, and with --expect expected.csv.
 
 Example: gyremesh polygons networks/ostrin/network.toml";
 
@@ -147,6 +148,31 @@ pub struct PolygonsArgs {
     /// Limits in place of those of the settings
     #[command(flatten)]
     pub limits: LimitArgs,
+    /// Show the errors to expect of vorticity and divergence: what can this network resolve?
+    #[arg(long)]
+    pub expect: bool,
+    /// With --expect: error of either wind component of a sensor, such as 0.3m/s [default: of the settings at 5 m/s]
+    #[arg(long, value_name = "SPEED", value_parser = units::parse_speed, requires = "expect")]
+    pub sensor_error: Option<f64>,
+    /// With --expect: how much either component of the wind differs over --distance (root mean square)
+    #[arg(long, value_name = "SPEED", value_parser = units::parse_speed, requires = "expect")]
+    pub difference: Option<f64>,
+    /// With --expect: the distance of --difference
+    #[arg(long, value_name = "LENGTH", value_parser = units::parse_length, requires = "expect")]
+    pub distance: Option<f64>,
+    /// With --expect: exponent by which squared differences grow with distance, 1/3 to 2
+    #[arg(long, value_name = "NUMBER", value_parser = exponent, requires = "expect")]
+    pub exponent: Option<f64>,
+    /// With --expect: take the structure function found by a run, from its summary.json
+    #[arg(long, value_name = "FILE", requires = "expect", conflicts_with_all = ["difference", "distance", "exponent"])]
+    pub past: Option<PathBuf>,
+}
+
+fn exponent(text: &str) -> Result<f64, String> {
+    let found: Option<f64> = text.parse().ok();
+    found
+        .filter(|p| (1.0 / 3.0..=1.97).contains(p))
+        .ok_or_else(|| format!("`{text}` is no exponent (1/3 to 1.97 expected, such as 0.67)"))
 }
 
 /// Options of `estimate`.

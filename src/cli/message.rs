@@ -251,7 +251,7 @@ fn least_reporting(out: &mut String, setup: &Setup, outcome: &Outcome) {
 }
 
 /// Text in lines of at most the width.
-fn wrapped(text: &str) -> String {
+pub(super) fn wrapped(text: &str) -> String {
     let mut out = String::new();
     let mut width = 0;
     for word in text.split_whitespace() {

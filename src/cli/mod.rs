@@ -1,6 +1,7 @@
 //! The command line: one function for each command, no physics.
 
 pub mod args;
+mod expect;
 mod message;
 mod reading;
 
@@ -11,6 +12,7 @@ use clap::Parser;
 use indicatif::{ProgressBar, ProgressStyle};
 
 use self::args::{Args, CheckArgs, Command, EstimateArgs, Format, PolygonsArgs};
+use self::expect::Expectation;
 use crate::error::{Error, ErrorKind};
 use crate::output::{
     Formats, OutputSet, mesh_csv, mesh_geojson, reading_json, series, stations_csv, structure_csv,
@@ -109,13 +111,24 @@ fn polygons(args: &PolygonsArgs) -> Result<Status, Error> {
     for warning in &setup.built.warnings {
         message::say("warning", &warning.to_string());
     }
+    let expectation = if args.expect {
+        Some(Expectation::of(&setup, args)?)
+    } else {
+        None
+    };
     if let Some(folder) = &args.out {
         let mut set = OutputSet::new(folder)?;
         set.put("mesh.geojson", mesh_geojson(&setup).as_bytes())?;
         set.put("mesh.csv", mesh_csv(&setup).as_bytes())?;
+        if let Some(expectation) = &expectation {
+            set.put("expected.csv", expectation.csv(&setup).as_bytes())?;
+        }
         set.commit()?;
     }
-    print(&message::polygon_table(&setup))?;
+    print(&match expectation {
+        Some(expectation) => expectation.text(&setup),
+        None => message::polygon_table(&setup),
+    })?;
     Ok(Status::Complete)
 }
 

@@ -12,6 +12,7 @@ mod budget;
 mod discovery;
 mod earth;
 mod extremes;
+mod fit_books;
 mod lanes;
 mod mean_error;
 mod sampling;
@@ -34,6 +35,7 @@ pub use discovery::{
 };
 pub use earth::{OMEGA, SelfTest, earth_rotation, planetary_vorticity, self_test};
 pub use extremes::{Extremes, Peak};
+pub use fit_books::{FitBook, FitBooks};
 pub use mean_error::MeanError;
 pub use sampling::{PairCovariance, Sampling, SamplingConstants};
 pub use second_opinion::{Comparison, NoQuadratic, SecondOpinion, quadratic, slopes_of_plane};
@@ -64,6 +66,17 @@ pub struct EstimateBlock {
     /// Whether vorticity and divergence differ from zero, among all polygons of a time; empty before
     /// [`find_significant`].
     pub significant: [Vec<bool>; 2],
+    /// Linear fits beside the line integrals of the polygons with more than three stations; empty before they are made.
+    pub fits: Vec<FitColumn>,
+}
+
+/// The linear fit of one polygon at the times of a block.
+#[derive(Debug, Clone, PartialEq)]
+pub struct FitColumn {
+    /// Number of the polygon.
+    pub polygon: usize,
+    /// At each time; `None` where a wind is missing.
+    pub at: Vec<Option<Comparison>>,
 }
 
 /// Estimates every polygon at every time of a block, in one pass over the columns of its stations.

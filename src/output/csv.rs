@@ -151,7 +151,7 @@ pub(super) fn station_list(polygon: &StationPolygon, network: &Network) -> Strin
 }
 
 /// A field, quoted where it must be (RFC 4180).
-fn quoted(text: &str) -> String {
+pub(crate) fn quoted(text: &str) -> String {
     if text.contains([',', '"', '\n', '\r']) {
         format!("\"{}\"", text.replace('"', "\"\""))
     } else {

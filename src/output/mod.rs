@@ -2,6 +2,7 @@
 
 mod csv;
 mod file;
+mod fits;
 mod geojson;
 #[cfg(feature = "parquet")]
 mod parquet;
@@ -12,6 +13,7 @@ mod summary;
 #[cfg(feature = "parquet")]
 mod template;
 
+pub(crate) use csv::quoted;
 pub use csv::{PolygonRows, mesh_csv, stations_csv, summary_csv};
 pub use file::OutputSet;
 pub use geojson::{mesh_geojson, outline_geometry};

@@ -4,6 +4,7 @@ use std::path::Path;
 
 use super::csv::PolygonRows;
 use super::file::OutputSet;
+use super::fits::FitRows;
 #[cfg(feature = "parquet")]
 use super::parquet::{ParquetFile, ParquetRows, RowGroup, parquet_series};
 use crate::error::Error;
@@ -22,6 +23,7 @@ pub struct Formats {
 /// Turns blocks of estimates into bytes; shared by all threads.
 pub struct SeriesEncoder {
     csv: Option<PolygonRows>,
+    fits: Option<FitRows>,
     #[cfg(feature = "parquet")]
     parquet: Option<ParquetRows>,
 }
@@ -29,6 +31,7 @@ pub struct SeriesEncoder {
 /// The files that the bytes go to, in the order of time.
 pub struct SeriesFiles {
     csv: Option<usize>,
+    fits: Option<usize>,
     #[cfg(feature = "parquet")]
     parquet: Option<(usize, ParquetFile)>,
 }
@@ -36,6 +39,7 @@ pub struct SeriesFiles {
 /// An encoded block.
 pub struct EncodedBlock {
     csv: Option<Vec<u8>>,
+    fits: Option<Vec<u8>>,
     #[cfg(feature = "parquet")]
     parquet: Option<parquet::errors::Result<RowGroup>>,
 }
@@ -56,6 +60,17 @@ pub fn series(
     } else {
         None
     };
+    // Where there are polygons with more than three stations, and a series at all.
+    let with_fits = setup.settings.errors.complete
+        && (formats.csv || formats.parquet)
+        && setup.built.polygons.iter().any(|p| p.size() > 3);
+    let fits_file = if with_fits {
+        let file = set.create("fits.csv")?;
+        set.write(file, FitRows::header().as_bytes())?;
+        Some(file)
+    } else {
+        None
+    };
     #[cfg(not(feature = "parquet"))]
     if formats.parquet {
         let reason = std::io::Error::other("this program was built without the feature `parquet`");
@@ -71,11 +86,13 @@ pub fn series(
     };
     let encoder = SeriesEncoder {
         csv: formats.csv.then(|| PolygonRows::new(setup)),
+        fits: with_fits.then(|| FitRows::new(setup)),
         #[cfg(feature = "parquet")]
         parquet: parquet_rows,
     };
     let files = SeriesFiles {
         csv: csv_file,
+        fits: fits_file,
         #[cfg(feature = "parquet")]
         parquet: parquet_file,
     };
@@ -96,6 +113,7 @@ impl SeriesEncoder {
     pub fn encode(&self, block: &EstimateBlock) -> EncodedBlock {
         EncodedBlock {
             csv: self.csv.as_ref().map(|rows| rows.encode(block)),
+            fits: self.fits.as_ref().map(|rows| rows.encode(block)),
             #[cfg(feature = "parquet")]
             parquet: self.parquet.as_ref().map(|rows| rows.encode(block)),
         }
@@ -109,6 +127,9 @@ impl SeriesFiles {
     /// The system's refusal, a full disk for one.
     pub fn write(&mut self, set: &mut OutputSet, block: EncodedBlock) -> Result<(), Error> {
         if let (Some(file), Some(bytes)) = (self.csv, &block.csv) {
+            set.write(file, bytes)?;
+        }
+        if let (Some(file), Some(bytes)) = (self.fits, &block.fits) {
             set.write(file, bytes)?;
         }
         #[cfg(feature = "parquet")]

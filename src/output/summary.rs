@@ -72,6 +72,14 @@ pub fn summary_json(setup: &Setup, outcome: &Outcome) -> String {
             "vorticity_share": significant_share(&outcome.statistics.vorticity),
             "divergence_share": significant_share(&outcome.statistics.divergence),
         },
+        "fits": outcome.fits.0.iter().map(|book| json!({
+            "polygon": setup.built.polygons[book.polygon].id,
+            "times": book.times,
+            "disagreeing_share": book.share(),
+            "vorticity_difference": book.difference()[0],
+            "divergence_difference": book.difference()[1],
+            "residual": book.residual(),
+        })).collect::<Vec<Value>>(),
         "structure": outcome.structure.last().map(|report| json!({
             "time": report.time.to_string(),
             "function": report.function,

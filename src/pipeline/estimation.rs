@@ -5,13 +5,14 @@ use rayon::prelude::*;
 use super::run::StructureReport;
 use super::{Setup, Window};
 use crate::align::{AlignBooks, Aligner, StationSensors, WindBlock, block_times, height_factor};
+use crate::check::Flag;
 use crate::integral::{
-    ErrorBudget, ErrorParts, EstimateBlock, Extremes, FalseDiscovery, RunStatistics, Sampling,
-    complete_errors, estimate, find_significant,
+    ErrorBudget, ErrorParts, EstimateBlock, Extremes, FalseDiscovery, FitBooks, FitColumn,
+    RunStatistics, Sampling, SecondOpinion, complete_errors, estimate, find_significant,
 };
 use crate::report::{Rounding, SpeedStep};
 use crate::settings::{ErrorSettings, SensorErrors};
-use crate::station::{Position, Station};
+use crate::station::{Network, Position, Station};
 use crate::structure::{
     BlockSums, NetworkGeometry, StructureFunction, StructureWindow, typical_spacing,
 };
@@ -30,6 +31,7 @@ pub(super) struct Estimation<'a> {
     pub(super) values: Vec<u64>,
     pub(super) extremes: Extremes,
     pub(super) statistics: RunStatistics,
+    pub(super) fits: FitBooks,
     pub(super) structure: StructureState,
     rule: FalseDiscovery,
 }
@@ -49,6 +51,7 @@ impl<'a> Estimation<'a> {
             values: vec![0; setup.network.len()],
             extremes: Extremes::default(),
             statistics: RunStatistics::default(),
+            fits: FitBooks::default(),
             structure: StructureState::new(setup),
             rule: FalseDiscovery::new(
                 setup.settings.errors.false_discovery_rate,
@@ -82,14 +85,14 @@ impl<'a> Estimation<'a> {
             .collect();
         let models = self.structure.advance(&winds);
         let (structure, rule) = (&self.structure, &self.rule);
-        let results: Vec<(Extremes, RunStatistics, T)> = winds
+        let results: Vec<(Extremes, RunStatistics, FitBooks, T)> = winds
             .par_iter()
             .zip(models)
             .map(|(winds, models)| {
                 let block = estimate_complete(setup, structure, rule, winds, &models);
                 let peaks = Extremes::of(&block, &setup.planetary);
                 let sums = RunStatistics::of(&block, &structure.lasting(&models));
-                (peaks, sums, encode(&block))
+                (peaks, sums, FitBooks::of(&block), encode(&block))
             })
             .collect();
 
@@ -100,9 +103,10 @@ impl<'a> Estimation<'a> {
         }
         self.structure.keep_last(winds);
         let mut encoded = Vec::with_capacity(results.len());
-        for (peaks, sums, result) in results {
+        for (peaks, sums, fits, result) in results {
             self.extremes.merge(&peaks);
             self.statistics.merge(&sums);
+            self.fits.merge(&fits);
             encoded.push(result);
         }
         self.books.add(&aligner, window.carried_from);
@@ -145,6 +149,9 @@ fn estimate_complete(
         }
     };
     find_significant(&mut block, rule);
+    if let Some(model) = &structure.model {
+        block.fits = model.fits(winds, models, &block);
+    }
     block
 }
 
@@ -169,7 +176,9 @@ struct Model {
     reporting: Vec<u8>,
     window: StructureWindow,
     sampling: Sampling,
-    network: crate::station::Network,
+    network: Network,
+    /// For each polygon with more than three stations.
+    opinions: Vec<(usize, SecondOpinion)>,
 }
 
 const DAY: i64 = 86_400_000_000;
@@ -178,16 +187,21 @@ impl StructureState {
     fn new(setup: &Setup) -> Self {
         let settings = setup.settings.errors;
         let network = &setup.network;
-        let spacing = median_edge(setup).or_else(|| typical_spacing(network));
+        let spacing = setup.median_edge().or_else(|| typical_spacing(network));
         let model = spacing.filter(|_| settings.complete).map(|spacing| {
             let positions: Vec<Position> = network.stations().iter().map(|s| s.position).collect();
             let (polygons, edges) = (&setup.built.polygons, &setup.built.edges);
             let geometry = NetworkGeometry::new(network, spacing, &[]);
+            let sampling = Sampling::new(polygons, edges, &positions, spacing);
+            let opinions = polygons.iter().enumerate();
+            let opinions = opinions
+                .filter_map(|(p, polygon)| Some((p, SecondOpinion::new(polygon, p, &sampling)?)));
             Model {
+                opinions: opinions.collect(),
                 window: StructureWindow::new(&geometry, settings.structure),
                 geometry,
                 reporting: vec![OFTEN; network.len()],
-                sampling: Sampling::new(polygons, edges, &positions, spacing),
+                sampling,
                 network: network.clone(),
             }
         });
@@ -296,6 +310,30 @@ impl Model {
         }
     }
 
+    /// The linear fits of a block.
+    fn fits(
+        &self,
+        winds: &WindBlock,
+        models: &[StructureFunction],
+        block: &EstimateBlock,
+    ) -> Vec<FitColumn> {
+        let n = block.times.len();
+        let column = |(p, opinion): &(usize, SecondOpinion)| {
+            let at = models.iter().enumerate().map(|(t, structure)| {
+                let is_there = block.flag[p * n + t] < Flag::Fail;
+                is_there.then(|| {
+                    let edges = &self.sampling.constants(structure.exponent)[*p];
+                    opinion.compare(winds, t, structure, edges)
+                })
+            });
+            FitColumn {
+                polygon: *p,
+                at: at.collect(),
+            }
+        };
+        self.opinions.iter().map(column).collect()
+    }
+
     fn report(&self, time: Time) -> StructureReport {
         StructureReport {
             time,
@@ -307,14 +345,6 @@ impl Model {
 
 fn day_of(time: Time) -> i64 {
     time.micros().div_euclid(DAY)
-}
-
-/// Median length of the edges of the triangles, m.
-fn median_edge(setup: &Setup) -> Option<f64> {
-    let edges = setup.built.edges.edges().iter();
-    let mut lengths: Vec<f64> = edges.map(|edge| edge.length).collect();
-    lengths.sort_by(f64::total_cmp);
-    lengths.get(lengths.len() / 2).copied()
 }
 
 /// Errors of each station's sensor: as stated, with the steps that were found in its reports.

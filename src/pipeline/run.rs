@@ -6,7 +6,7 @@ use super::estimation::Estimation;
 use super::{Reading, Setup, Windows};
 use crate::align::Period;
 use crate::error::Error;
-use crate::integral::{EstimateBlock, Extremes, RunStatistics};
+use crate::integral::{EstimateBlock, Extremes, FitBook, FitBooks, RunStatistics};
 use crate::polygon::StationPolygon;
 use crate::report::{InputOrder, ReportFiles, ReportTable};
 use crate::settings::Settings;
@@ -34,6 +34,8 @@ pub struct Outcome {
     pub extremes: Extremes,
     /// Statistics of each polygon.
     pub statistics: RunStatistics,
+    /// Linear fits beside the line integrals of polygons with more than three stations.
+    pub fits: FitBooks,
     /// The structure function at the end of each day and of the run; empty where it was not asked for.
     pub structure: Vec<StructureReport>,
     /// What the user should know of all stages.
@@ -110,12 +112,14 @@ pub fn run<T: Send>(
         return Err(no_usable_report(&mut reading));
     }
     let silent = never_reported(setup, &estimation.values);
+    let doubtful = doubtful_fits(setup, &estimation.fits);
     let warnings = [
         &setup.warnings,
         &setup.built.warnings,
         &reading.warnings,
         &estimation.warnings,
         &silent,
+        &doubtful,
     ];
     Ok(Outcome {
         warnings: warnings.into_iter().flatten().cloned().collect(),
@@ -127,6 +131,7 @@ pub fn run<T: Send>(
         height_factors: estimation.sensors.height_factors,
         extremes: estimation.extremes,
         statistics: estimation.statistics,
+        fits: estimation.fits,
         structure: estimation.structure.reports,
     })
 }
@@ -160,6 +165,17 @@ fn levels_agree(table: &ReportTable, settings: &Settings) -> Result<(), Error> {
         ))),
         None => Ok(()),
     }
+}
+
+/// Polygons whose line integral and linear fit disagree.
+fn doubtful_fits(setup: &Setup, fits: &FitBooks) -> Vec<Warning> {
+    let doubtful = fits.0.iter().filter(|book| book.is_doubtful());
+    let warning = |book: &FitBook| Warning::FitDisagrees {
+        polygon: setup.built.polygons[book.polygon].id.clone(),
+        share: book.share(),
+        times: book.times,
+    };
+    doubtful.map(warning).collect()
 }
 
 /// Why there is nothing to estimate from, in the words of what was read.

@@ -54,7 +54,7 @@ pub(super) fn fit(
         exponent,
         site_variance: site,
         prior_share: share(settings.prior_values),
-        exponent_prior_share: share(settings.prior_exponent_values),
+        exponent_prior_share: shape.prior_share,
         ..prior
     };
     found.temporal = temporal(&found, settings, window);

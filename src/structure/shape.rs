@@ -40,6 +40,8 @@ struct Candidate {
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub(super) struct Shape {
     pub(super) exponent: Exponent,
+    /// Share of the prior in what is known of it, 0 to 1.
+    pub(super) prior_share: f64,
     /// m²/s²
     pub(super) site_variance: f64,
     /// What a wind that varies linearly adds to `D_L` + `D_T` of the pairs at one spacing, m²/s².
@@ -76,6 +78,7 @@ impl Shape {
     pub(super) fn prior(settings: &StructureSettings) -> Self {
         Self {
             exponent: Exponent::nearest(settings.prior_exponent),
+            prior_share: 1.0,
             site_variance: 0.0,
             linear: 0.0,
             saturated: 0,
@@ -122,19 +125,19 @@ impl Shape {
         let saturated = leave_out_saturated(&mut pairs, settings);
         let scales: Vec<Scale> = pairs.iter().map(|p| p.1).collect();
         let planes = plane_scales(window);
-        let best = [false, true].map(|constant| {
-            least_misfit(|exponent| {
-                let off = exponent.value() - settings.prior_exponent;
-                let prior = off * off * settings.prior_exponent_values / 4.0;
-                let law = law_of(&scales, exponent, constant, true)?;
-                let others = prior + plane_misfit(geometry, &planes, exponent, law.constant);
-                let candidate = Candidate {
-                    law,
-                    full_misfit: law.misfit * window.independent / values + others,
-                };
-                Some((law.misfit + others, candidate))
-            })
-        });
+        let misfit = |exponent: Exponent, constant: bool| {
+            let off = exponent.value() - settings.prior_exponent;
+            let prior = off * off * settings.prior_exponent_values / 4.0;
+            let law = law_of(&scales, exponent, constant, true)?;
+            let others = prior + plane_misfit(geometry, &planes, exponent, law.constant);
+            let candidate = Candidate {
+                law,
+                full_misfit: law.misfit * window.independent / values + others,
+            };
+            Some((law.misfit + others, candidate))
+        };
+        let best =
+            [false, true].map(|constant| least_misfit(|exponent| misfit(exponent, constant)));
         let law = match best {
             [Some(without), Some(with)]
                 if with.full_misfit + BELIEVED < without.full_misfit
@@ -145,8 +148,13 @@ impl Shape {
             [Some(found), _] | [None, Some(found)] => found.law,
             [None, None] => return Self::prior(settings),
         };
+        let constant = law.constant > 0.0;
+        let curvature = curvature(law.exponent, |exponent| Some(misfit(exponent, constant)?.0));
         Self {
             exponent: law.exponent,
+            prior_share: curvature.map_or(1.0, |all| {
+                (0.5 * settings.prior_exponent_values / all).clamp(0.0, 1.0)
+            }),
             site_variance: 0.25 * law.constant,
             linear: law.linear,
             saturated,
@@ -171,6 +179,19 @@ fn leave_out_saturated(pairs: &mut Vec<(usize, Scale)>, settings: &StructureSett
         pairs.remove(0);
     }
     pairs.first().map_or(0, |p| p.0)
+}
+
+/// Second derivative of a misfit at an exponent, or as near to it as the grid goes: what the data and the prior know of
+/// it together. `None` if it is not one of a minimum.
+fn curvature(at: Exponent, misfit: impl Fn(Exponent) -> Option<f64>) -> Option<f64> {
+    const STEPS: usize = 3;
+    let grid: Vec<Exponent> = Exponent::all().collect();
+    let middle = at.index().clamp(STEPS, Exponent::COUNT - 1 - STEPS);
+    let value = |k: usize| misfit(*grid.get(k)?);
+    let (low, high) = (value(middle - STEPS)?, value(middle + STEPS)?);
+    let step = STEPS as f64 / 30.0;
+    let second = (low - 2.0 * value(middle)? + high) / (step * step);
+    (second > 0.0).then_some(second)
 }
 
 /// What belongs to the exponent of least misfit: every fifth of the grid is tried, then those about the best.
