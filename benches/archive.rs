@@ -38,7 +38,7 @@ fn estimate(network: &Path, out: &Path, options: &[&str]) -> Command {
     command
 }
 
-/// The data-frame engine's mere parse, if it is there.
+/// The data-frame engine's mere parse of times, names and numbers, if it is there.
 fn data_frame(reports: &Path) -> Option<Command> {
     let python = std::env::var("GYREMESH_PYTHON").unwrap_or_else(|_| "python3".into());
     let there = Command::new(&python)
@@ -47,7 +47,7 @@ fn data_frame(reports: &Path) -> Option<Command> {
         .status();
     there.ok().filter(std::process::ExitStatus::success)?;
     let mut command = Command::new(python);
-    let parse = "import sys, polars\nframe = polars.read_csv(sys.argv[1])\nassert frame.height > 0";
+    let parse = "import sys, polars\nframe = polars.read_csv(sys.argv[1], try_parse_dates=True)\nassert frame.height > 0";
     command.args(["-c", parse]).arg(reports);
     Some(command)
 }
@@ -78,15 +78,30 @@ fn main() {
         archive.reports() as f64 / 1e6,
         std::fs::metadata(&reports).unwrap().len() as f64 / 1e6
     );
-    let jobs: [(&str, &[&str]); 5] = [
-        ("summary", &["--summary-only"]),
-        ("summary, one thread", &["--summary-only", "--threads", "1"]),
-        ("Parquet", &["--format", "parquet"]),
+    let jobs: [(&str, &[&str]); 7] = [
+        ("summary", &["--summary-only", "--errors", "instrument"]),
+        (
+            "summary, one thread",
+            &["--summary-only", "--errors", "instrument", "--threads", "1"],
+        ),
+        ("summary, complete errors", &["--summary-only"]),
+        (
+            "Parquet",
+            &["--format", "parquet", "--errors", "instrument"],
+        ),
         (
             "Parquet, one thread",
-            &["--format", "parquet", "--threads", "1"],
+            &[
+                "--format",
+                "parquet",
+                "--errors",
+                "instrument",
+                "--threads",
+                "1",
+            ],
         ),
-        ("CSV", &["--format", "csv"]),
+        ("Parquet, complete errors", &["--format", "parquet"]),
+        ("CSV, complete errors", &["--format", "csv"]),
     ];
     let mut parse = data_frame(&reports);
     let mut parses = Vec::new();
@@ -113,9 +128,9 @@ fn main() {
             ratios.push((took / bare, parse.map(|parse| took / parse)));
         }
     }
-    println!("  {:<22} {:>7.2} s", "bare csv record loop", median(bares));
+    println!("  {:<25} {:>7.2} s", "bare csv record loop", median(bares));
     if !parses.is_empty() {
-        println!("  {:<22} {:>7.2} s", "data-frame parse", median(parses));
+        println!("  {:<25} {:>7.2} s", "data-frame parse", median(parses));
     }
     for ((name, _), (seconds, memory, ratios)) in jobs.iter().zip(results) {
         let to_bare = median(ratios.iter().map(|r| r.0).collect());
@@ -126,7 +141,7 @@ fn main() {
             format!(", {:.2} of the data-frame parse", median(to_parse))
         };
         println!(
-            "  {name:<22} {:>7.2} s, {:>4.0} MiB, {to_bare:.2} of the record loop{to_parse}",
+            "  {name:<25} {:>7.2} s, {:>4.0} MiB, {to_bare:.2} of the record loop{to_parse}",
             median(seconds),
             median(memory)
         );

@@ -189,7 +189,7 @@ impl ParquetRows {
         Ok(RowGroup(encoded))
     }
 
-    /// The columns of a block; `None` for those that are the same in every block.
+    /// The columns of a block; `None` for those that are the same in every block of as many times.
     fn columns(&self, block: &EstimateBlock) -> Result<Vec<Option<ArrayRef>>> {
         let (n, polygons) = (block.times.len(), self.planetary.len());
         let there: Option<NullBuffer> = block
@@ -230,6 +230,14 @@ impl ParquetRows {
             let values = by_time(column, n, |&value, _| value as f32);
             Some(Arc::new(Float32Array::new(values.into(), there.clone())))
         };
+        let no_ages = self.complete && there.is_none() && block.age.iter().all(|&age| age <= 0.0);
+        let timing = |column: &[f64]| {
+            if no_ages {
+                None
+            } else {
+                part(column, self.complete)
+            }
+        };
         let called = |column: &[bool]| -> Option<ArrayRef> {
             let values = by_time(column, n, |&value, _| value);
             Some(Arc::new(BooleanArray::new(values.into(), there.clone())))
@@ -256,10 +264,10 @@ impl ParquetRows {
             Some(Arc::new(Float32Array::new(age.into(), there.clone()))),
             part(&z.instrument, true),
             part(&z.sampling, self.complete),
-            part(&z.timing, self.complete),
+            timing(&z.timing),
             part(&d.instrument, true),
             part(&d.sampling, self.complete),
-            part(&d.timing, self.complete),
+            timing(&d.timing),
             called(&block.significant[0]),
             called(&block.significant[1]),
         ])

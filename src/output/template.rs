@@ -5,7 +5,8 @@ use std::sync::{Arc, Mutex, PoisonError};
 
 use arrow_array::types::Int32Type;
 use arrow_array::{
-    ArrayRef, DictionaryArray, Float64Array, Int32Array, RecordBatch, StringArray, new_null_array,
+    ArrayRef, DictionaryArray, Float32Array, Float64Array, Int32Array, RecordBatch, StringArray,
+    new_null_array,
 };
 use arrow_schema::{Schema, SchemaRef};
 use bytes::Bytes;
@@ -43,7 +44,14 @@ impl FixedColumns {
         let names = |names: Vec<String>| -> ArrayRef { Arc::new(StringArray::from(names)) };
         // The columns that are not of use may be null here.
         let nullable = schema.fields().iter().map(|f| f.as_ref().clone());
-        let used = ["polygon", "stations", "area_km2", "planetary_vorticity"];
+        let used = [
+            "polygon",
+            "stations",
+            "area_km2",
+            "planetary_vorticity",
+            "vorticity_se_timing",
+            "divergence_se_timing",
+        ];
         let nullable = nullable.map(|f| {
             let is_used = used.contains(&f.name().as_str());
             let may_be_null = f.is_nullable() || !is_used;
@@ -100,6 +108,10 @@ impl FixedColumns {
                 "stations" => named(&self.stations)?,
                 "area_km2" => numbers(&self.area),
                 "planetary_vorticity" => numbers(&self.planetary),
+                // Where every report stands at its analysis time.
+                "vorticity_se_timing" | "divergence_se_timing" => {
+                    Arc::new(Float32Array::from(vec![0.0; rows]))
+                }
                 _ => new_null_array(field.data_type(), rows),
             })
         });

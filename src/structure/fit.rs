@@ -9,7 +9,8 @@ use super::sums::{LAGS, LagSum, PairSum, StructureSums};
 /// the instruments' errors is not 0.
 const LEAST_SHARE: f64 = 0.01;
 
-/// Amplitudes at a given shape; `recent` are the sums of the window's last hours, weighted.
+/// Amplitudes at a given shape; `recent` are the sums of the window's last hours, weighted. The law in time is that of
+/// `before`, if it is given: that of a whole day changes slowly.
 ///
 /// - **`c_L` + `c_T`**, from the differences of stations with planes through their neighbours, which do not see a wind
 ///   that varies linearly, as the line integral makes no error in it (generalised increments of order 1: Matheron
@@ -24,6 +25,7 @@ pub(super) fn fit(
     shape: &Shape,
     window: &StructureSums,
     recent: &StructureSums,
+    before: Option<TemporalFunction>,
 ) -> StructureFunction {
     let prior = settings.prior(geometry.spacing);
     let values = window.independent;
@@ -57,7 +59,7 @@ pub(super) fn fit(
         exponent_prior_share: shape.prior_share,
         ..prior
     };
-    found.temporal = temporal(&found, settings, window);
+    found.temporal = before.unwrap_or_else(|| temporal(&found, settings, window));
     found
 }
 

@@ -251,14 +251,16 @@ fn law_of(scales: &[Scale], exponent: Exponent, constant: bool, linear: bool) ->
         misfit: 0.0,
     };
     let used = [constant, true, linear];
-    let terms = |s: &Scale| [1.0, s.at.powf(exponent.value()), s.at * s.at];
+    let terms: Vec<[f64; 3]> = scales
+        .iter()
+        .map(|s| [1.0, s.at.powf(exponent.value()), s.at * s.at])
+        .collect();
     let mut model: Vec<f64> = scales.iter().map(|s| s.total).collect();
     for _ in 0..PASSES {
         let mut normal = [[0.0; 3]; 3];
         let mut right = [0.0; 3];
-        for (s, m) in scales.iter().zip(&model) {
+        for ((s, m), x) in scales.iter().zip(&model).zip(&terms) {
             let w = s.values / m.max(1e-12).powi(2);
-            let x = terms(s);
             for i in 0..3 {
                 right[i] += w * x[i] * (s.total - s.noise);
                 for j in 0..3 {
@@ -268,8 +270,8 @@ fn law_of(scales: &[Scale], exponent: Exponent, constant: bool, linear: bool) ->
         }
         let [c, a, b] = not_negative(&normal, &right, used);
         (law.constant, law.amplitude, law.linear) = (c, a, b);
-        for (s, m) in scales.iter().zip(&mut model) {
-            *m = law.at(s.at) + s.noise;
+        for ((s, m), x) in scales.iter().zip(&mut model).zip(&terms) {
+            *m = c + a * x[1] + b * x[2] + s.noise;
         }
     }
     law.misfit = scales

@@ -13,7 +13,7 @@ use crate::time::Time;
 const BINS: i64 = 24;
 
 /// The shape is found anew after so many bins, and at each of the first times of a run: it is that of a whole day, and
-/// takes longer to find than all else.
+/// takes longer to find than all else. So is the law in time, which is found anew with each bin.
 const BINS_PER_SHAPE: i64 = 3;
 const FIRST_TIMES: u64 = 8;
 
@@ -145,6 +145,7 @@ impl StructureWindow {
         let bin = time.micros().div_euclid(self.bin_length());
         let period = |bin: i64| bin.div_euclid(BINS_PER_SHAPE);
         let new_period = self.bins.back().is_none_or(|b| period(b.0) != period(bin));
+        let new_bin = self.bins.back().is_none_or(|b| b.0 != bin);
         match self.bins.back_mut() {
             Some((last, of_bin)) if *last == bin => of_bin.add(&sums, 1.0),
             _ => {
@@ -162,9 +163,10 @@ impl StructureWindow {
         if new_period || self.taken < FIRST_TIMES {
             self.shape = Shape::of(geometry, &self.settings, &window);
         }
+        let temporal = (!new_bin && self.taken >= FIRST_TIMES).then_some(self.current.temporal);
         self.taken += 1;
-        let found = fit(geometry, &self.settings, &self.shape, &window, &self.recent);
-        self.current = found;
+        let (settings, shape) = (&self.settings, &self.shape);
+        self.current = fit(geometry, settings, shape, &window, &self.recent, temporal);
     }
 
     /// μs
