@@ -43,12 +43,6 @@ impl Coverage {
         [self.in_68, self.in_95, self.squares].map(|c| c / self.values)
     }
 
-    /// 68 % intervals hold up to 72 %.
-    fn nearly_holds(&self) -> bool {
-        let [c68, c95, _] = self.shares();
-        (0.65..=0.72).contains(&c68) && (0.93..=0.97).contains(&c95)
-    }
-
     fn holds(&self) -> bool {
         let [c68, c95, _] = self.shares();
         (0.65..=0.71).contains(&c68) && (0.93..=0.97).contains(&c95)
@@ -59,7 +53,8 @@ impl Coverage {
 fn coverage(class: Class, realisations: u64, number: u64) -> [Coverage; 2] {
     let mut all = [Coverage::default(); 2];
     for k in 0..realisations {
-        let seed = 1000 * number + k;
+        // Not the seeds with which the constants of the method were chosen.
+        let seed = 7_000_000 + 1000 * number + k;
         let simulation = Simulation::new(class, seed);
         let (winds, truth) = simulation.noisy(HOURS, 1_000_000 + seed);
         count(&simulation, &winds, &truth, &mut all, HOURS / 2..HOURS);
@@ -189,14 +184,16 @@ fn every_class() {
                                 dropouts,
                                 ..Class::default()
                             };
-                            let found = coverage(class, 16, number);
+                            let mut found = coverage(class, 16, number);
                             number += 1;
                             println!("{}", line(&class, &found));
-                            // Steep spectra on a grid whose distances are nearly all one or two spacings, with few
-                            // planes whole: the exponent is a little too small, errors are a little too large.
-                            let weak = slope > 2.5 && layout == Layout::Regular && dropouts > 0.0;
-                            let holds = |c: &Coverage| c.holds() || (weak && c.nearly_holds());
-                            if !found.iter().all(holds) {
+                            // 16 realisations have 16 amplitudes: where they do not hold, three times as many others
+                            // decide alone.
+                            if !found.iter().all(Coverage::holds) {
+                                found = coverage(class, 48, 10_000 + number);
+                                println!("{} again", line(&class, &found));
+                            }
+                            if !found.iter().all(Coverage::holds) {
                                 failed.push(line(&class, &found));
                             }
                         }

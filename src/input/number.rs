@@ -48,8 +48,54 @@ pub(crate) fn parse_number(text: &[u8]) -> Option<f64> {
 
 /// Reads the short decimal number without a sign that a text begins with, the usual case, and its length; `None` sends
 /// anything else to [`parse_number`].
+///
+/// Eight bytes are looked at as one word, without a branch on how many digits there are.
 #[inline]
 pub(crate) fn parse_short(text: &[u8]) -> Option<(f64, usize)> {
+    const ONES: u64 = 0x0101_0101_0101_0101;
+    let Some(bytes) = text.first_chunk::<8>() else {
+        return parse_at_end(text);
+    };
+    // Digits become 0 to 9.
+    let word = u64::from_le_bytes(*bytes) ^ (ONES * u64::from(b'0'));
+    // The high bit of every byte that is no digit.
+    let others = (((word & (ONES * 0x7f)) + ONES * 0x76) | word) & (ONES * 0x80);
+    let whole = others.trailing_zeros() / 8;
+    let (digits, count, decimals, length) = if bytes.get(whole as usize) == Some(&b'.') {
+        // The next byte that is no digit ends the number.
+        let length = (others & (others - 1)).trailing_zeros() / 8;
+        let low = word & ((1 << (8 * whole)) - 1);
+        // Two shifts: the point may be the last byte.
+        let high = (word >> (8 * whole) >> 8) << (8 * whole);
+        (low | high, length - 1, length - 1 - whole, length)
+    } else {
+        (word, whole, 0, whole)
+    };
+    if length > 7 || count == 0 {
+        // Longer than the word, or no number.
+        return if length > 7 { parse_at_end(text) } else { None };
+    }
+    // To the end of the word, with zeros before them.
+    let digits = digits << (8 * (8 - count));
+    let pairs = (digits * 10 + (digits >> 8)) & 0x00ff_00ff_00ff_00ff;
+    let fours = (pairs * 100 + (pairs >> 16)) & 0x0000_ffff_0000_ffff;
+    let mantissa = (fours * 10_000 + (fours >> 32)) & 0xffff_ffff;
+    let number = value_of(mantissa as u32, decimals as usize)?;
+    Some((number, length as usize))
+}
+
+/// The number of a mantissa of few digits.
+#[inline]
+fn value_of(mantissa: u32, decimals: usize) -> Option<f64> {
+    match decimals {
+        0 => Some(f64::from(mantissa)),
+        1 if (mantissa as usize) < TENTHS.len() => TENTHS.get(mantissa as usize).copied(),
+        _ => Some(f64::from(mantissa) / POWERS.get(decimals)?),
+    }
+}
+
+/// The same byte by byte, where fewer than eight are left or the number has as many.
+fn parse_at_end(text: &[u8]) -> Option<(f64, usize)> {
     let mut mantissa = 0_u32;
     let (mut length, mut decimals, mut after_point) = (0, 0, 0);
     for &byte in text {
@@ -68,14 +114,11 @@ pub(crate) fn parse_short(text: &[u8]) -> Option<(f64, usize)> {
             return None;
         }
     }
-    let number = match decimals {
-        // A point alone is no number.
-        0 if length > after_point => f64::from(mantissa),
-        0 => return None,
-        1 if (mantissa as usize) < TENTHS.len() => *TENTHS.get(mantissa as usize)?,
-        _ => f64::from(mantissa) / POWERS.get(decimals)?,
-    };
-    Some((number, length))
+    // A point alone is no number.
+    if length <= after_point {
+        return None;
+    }
+    Some((value_of(mantissa, decimals)?, length))
 }
 
 fn parse_any(text: &[u8]) -> Option<f64> {
@@ -115,6 +158,15 @@ mod tests {
             {
                 prop_assert_eq!(Some(short), expected);
             }
+        }
+    }
+
+    proptest! {
+        #[test]
+        fn a_word_at_once_is_as_byte_by_byte(text in "[0-9]{0,9}(\\.[0-9]{0,6})?[-,;. e\n]?", rest in "[0-9a-z.,]{8}") {
+            let whole = text.clone() + &rest;
+            prop_assert_eq!(parse_short(whole.as_bytes()), parse_at_end(whole.as_bytes()));
+            prop_assert_eq!(parse_short(text.as_bytes()), parse_at_end(text.as_bytes()));
         }
     }
 

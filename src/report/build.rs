@@ -71,12 +71,10 @@ fn straight(
     }
     let mut out = TableColumns {
         time: vec![Time::default(); total],
-        speed: vec![0.0; total],
-        direction: vec![0.0; total],
+        given: vec![[0.0; 2]; total],
         wind: vec![Wind::default(); total],
         kind: vec![0; total],
-        file: vec![0; total],
-        line: vec![0; total],
+        origin: vec![(0, 0); total],
         flag: vec![Flag::NotEvaluated; total],
         ..TableColumns::default()
     };
@@ -84,12 +82,10 @@ fn straight(
         let (to, from) = (start..start + carried.len(), carried.clone());
         let columns = &before.columns;
         out.time[to.clone()].copy_from_slice(&columns.time[from.clone()]);
-        out.speed[to.clone()].copy_from_slice(&columns.speed[from.clone()]);
-        out.direction[to.clone()].copy_from_slice(&columns.direction[from.clone()]);
+        out.given[to.clone()].copy_from_slice(&columns.given[from.clone()]);
         out.wind[to.clone()].copy_from_slice(&columns.wind[from.clone()]);
         out.kind[to.clone()].copy_from_slice(&columns.kind[from.clone()]);
-        out.file[to.clone()].copy_from_slice(&columns.file[from.clone()]);
-        out.line[to.clone()].copy_from_slice(&columns.line[from.clone()]);
+        out.origin[to.clone()].copy_from_slice(&columns.origin[from.clone()]);
         out.flag[to].copy_from_slice(&columns.flag[from]);
     }
     let mut next: Vec<(usize, Time)> = fresh
@@ -103,12 +99,10 @@ fn straight(
         }
         next[report.station as usize] = (k + 1, report.time);
         out.time[k] = report.time;
-        out.speed[k] = report.speed;
-        out.direction[k] = report.direction;
+        out.given[k] = [report.speed, report.direction];
         out.wind[k] = wind_of(report.kind, report.speed, report.direction);
         out.kind[k] = report.kind;
-        out.file[k] = report.file;
-        out.line[k] = report.line;
+        out.origin[k] = (report.line, report.file);
     }
     let mut tally = Tally::default();
     tally.pass(counts.iter().sum::<usize>() as u64);
@@ -187,13 +181,10 @@ impl TableColumns {
     fn append(&mut self, other: &Self, range: Range<usize>) {
         let before = self.time.len();
         self.time.extend_from_slice(&other.time[range.clone()]);
-        self.speed.extend_from_slice(&other.speed[range.clone()]);
-        self.direction
-            .extend_from_slice(&other.direction[range.clone()]);
+        self.given.extend_from_slice(&other.given[range.clone()]);
         self.wind.extend_from_slice(&other.wind[range.clone()]);
         self.kind.extend_from_slice(&other.kind[range.clone()]);
-        self.file.extend_from_slice(&other.file[range.clone()]);
-        self.line.extend_from_slice(&other.line[range.clone()]);
+        self.origin.extend_from_slice(&other.origin[range.clone()]);
         self.flag.extend_from_slice(&other.flag[range.clone()]);
         // A column that one of the tables has and the other has not is filled up.
         if !other.gust.is_empty() || !self.gust.is_empty() {
@@ -353,12 +344,10 @@ impl TableBuilder<'_> {
         let out = &mut self.out;
         let before = out.time.len();
         out.time.push(report.time);
-        out.speed.push(report.speed);
-        out.direction.push(degrees);
+        out.given.push([report.speed, degrees]);
         out.wind.push(wind_of(kind, report.speed, degrees));
         out.kind.push(kind & (kind::SPEED | kind::DIRECTION));
-        out.file.push(report.file);
-        out.line.push(report.line);
+        out.origin.push((report.line, report.file));
         out.flag.push(Flag::NotEvaluated);
         // A column that one part has and another has not is filled up.
         if !rows.gust.is_empty() || !out.gust.is_empty() {

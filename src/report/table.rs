@@ -51,15 +51,13 @@ pub struct ReportTable {
 #[derive(Debug, Default)]
 pub(super) struct TableColumns {
     pub(super) time: Vec<Time>,
-    /// m/s; 0 where there is none.
-    pub(super) speed: Vec<f64>,
-    /// Degrees; 0 where there is none.
-    pub(super) direction: Vec<f64>,
+    /// Speed, m/s, and direction, degrees; 0 where there is none.
+    pub(super) given: Vec<[f64; 2]>,
     /// The wind; 0 where there is none.
     pub(super) wind: Vec<Wind>,
     pub(super) kind: Vec<u8>,
-    pub(super) file: Vec<u16>,
-    pub(super) line: Vec<u32>,
+    /// Line, file.
+    pub(super) origin: Vec<(u32, u16)>,
     pub(super) flag: Vec<Flag>,
     pub(super) gust: Vec<Option<f64>>,
     pub(super) moving: Vec<Option<Moving>>,
@@ -144,7 +142,7 @@ impl ReportTable {
     /// What report `i` says.
     #[must_use]
     pub fn content(&self, i: usize) -> Content {
-        let (speed, kind) = (self.columns.speed[i], self.columns.kind[i]);
+        let (speed, kind) = (self.columns.given[i][0], self.columns.kind[i]);
         match kind & (kind::SPEED | kind::DIRECTION) {
             // Common practice: no speed is calm, whatever stands for the direction.
             both if both & kind::SPEED != 0 && speed <= 0.0 => Content::Calm,
@@ -157,14 +155,14 @@ impl ReportTable {
     /// Speed of report `i`, m/s.
     #[must_use]
     pub fn speed(&self, i: usize) -> Option<f64> {
-        (self.columns.kind[i] & kind::SPEED != 0).then(|| self.columns.speed[i])
+        (self.columns.kind[i] & kind::SPEED != 0).then(|| self.columns.given[i][0])
     }
 
     /// Direction of report `i`; calm has none.
     #[must_use]
     pub fn direction(&self, i: usize) -> Option<FromDirection> {
         match self.content(i) {
-            Content::Wind => FromDirection::new(self.columns.direction[i]),
+            Content::Wind => FromDirection::new(self.columns.given[i][1]),
             _ => None,
         }
     }
@@ -218,7 +216,8 @@ impl ReportTable {
     /// Place of report `i` in the input: number of the file as read, line.
     #[must_use]
     pub fn origin(&self, i: usize) -> (u16, u32) {
-        (self.columns.file[i], self.columns.line[i])
+        let (line, file) = self.columns.origin[i];
+        (file, line)
     }
 
     /// Flag of report `i`.
