@@ -51,7 +51,8 @@
 //! - A sensor that is turned, mis-scaled, or stated to be better than it is; a wrong position.
 //! - A station that stands for something else: on a mountain, behind a building, at another height. The site variance is
 //!   one figure for the whole network; of a single odd station it takes the average. (In Hong Kong's winds of typhoon
-//!   Saola, with stations on mountains and at beaches, predictions err 1.2 times as much as stated, in variance 1.39; Wipha's winds have 1.08, Singapore's 1.06.)
+//!   Saola, with stations on mountains and at beaches, predictions err 1.2 times as much as stated, in variance 1.39;
+//!   Wipha's winds have 1.08, Singapore's 1.06.)
 //! - A front or a gust line that the window has not seen: the error bars follow the weather of the last hours, so the
 //!   first minutes of a sudden change have those of the quiet before.
 //! - Waves about as long as the stations are apart, and no longer ones: no law of larger distances tells of them.
