@@ -155,7 +155,7 @@ fn settings(settings: &Settings) -> Value {
             "height_m": analysis.height.map(|h| h.height),
             "level": analysis.level,
         },
-        "check": settings.screen.then_some(settings.range),
+        "check": settings.screen.then_some(&settings.check),
         "polygons": {
             "triangles": settings.polygons.triangles,
             "rings": rings,

@@ -3,11 +3,12 @@
 use std::path::{Path, PathBuf};
 use std::time::Duration;
 
+use super::check::check;
 use super::path::expand_path;
 use super::reports::{reports, text_format};
 use super::section::{Document, Section};
 use super::{
-    AlignMethod, Analysis, MEMORY, PolygonChoice, PolygonLimits, RangeLimits, RegionParts,
+    AlignMethod, Analysis, MEMORY, PolygonChoice, PolygonLimits, RegionParts,
     RegionSettings, RingSettings, SensorErrors, Settings,
 };
 use crate::align::{HeightReduction, Profile};
@@ -75,14 +76,15 @@ fn parse_settings(
     let catalogue = catalogue(&mut stations);
     stations.finish();
 
+    let sensor = sensor(root.section("sensor"));
     let settings = Settings {
         name,
         station_file,
         catalogue,
         reports: reports(&mut root, base, &overrides.reports),
-        sensor: sensor(root.section("sensor")),
         analysis: analysis(root.section("analysis"), overrides),
-        range: range(root.section("check")),
+        check: check(root.section("check"), sensor.calm_below),
+        sensor,
         limits: limits(root.section("limits"), overrides),
         screen: !overrides.no_screen,
         cache: overrides.cache.clone(),
@@ -271,20 +273,6 @@ fn level(text: &str) -> Result<f64, String> {
     }
     units::parse_length(text)
         .map_err(|_| format!("`{text}` is not a level (such as `850 hPa` or `100 m`)"))
-}
-
-fn range(mut section: Section) -> RangeLimits {
-    let default = RangeLimits::default();
-    let limits = RangeLimits {
-        speed_suspect: section
-            .parsed("speed_suspect", units::parse_speed)
-            .unwrap_or(default.speed_suspect),
-        speed_fail: section
-            .parsed("speed_fail", units::parse_speed)
-            .unwrap_or(default.speed_fail),
-    };
-    section.finish();
-    limits
 }
 
 fn limits(mut section: Section, overrides: &Overrides) -> PolygonLimits {

@@ -1,0 +1,90 @@
+//! WMO's persistence test of one-minute values.
+
+use super::point::{Point, turn};
+use super::run::Run;
+use super::witness::Witness;
+use super::{Flag, Test};
+use crate::settings::PersistenceLimits;
+
+/// Follows how long speed and direction stay within narrow bands.
+#[derive(Debug, Clone, Default)]
+pub(super) struct Persistence {
+    speed: Run,
+    speeds: (f64, f64),
+    direction: Run,
+    /// Direction at the beginning, and the furthest turns to the left and right of it, degrees.
+    turns: (f64, f64, f64),
+}
+
+impl Persistence {
+    /// Suspect where, over an hour of reports two minutes apart or less, speed or direction varies by less than the
+    /// limits. The bands begin anew where one is left.
+    ///
+    /// - **Reference**: WMO guidelines on quality control for automatic stations (Zahumenský 2004), persistence: over at
+    ///   least 60 min, one-minute values vary by 0.5 m/s and 10 degrees, unless the wind is nearly calm.
+    #[inline]
+    pub fn judge<W: Witness>(
+        &mut self,
+        now: &Point,
+        since: i64,
+        exempt: bool,
+        limits: &PersistenceLimits,
+        witness: &mut W,
+    ) -> Flag {
+        if since > limits.interval || exempt {
+            self.speed.count = 0;
+            self.direction.count = 0;
+            witness.tell(Test::Persistence, Flag::NotEvaluated, || {
+                "only for reports every two minutes or less, above the starting threshold".into()
+            });
+            return Flag::NotEvaluated;
+        }
+        let (slowest, fastest) = (self.speeds.0.min(now.speed), self.speeds.1.max(now.speed));
+        let stays = self.speed.count > 0 && fastest - slowest < limits.speed;
+        self.speed.go_on(stays, now.time);
+        self.speeds = if stays {
+            (slowest, fastest)
+        } else {
+            (now.speed, now.speed)
+        };
+        let signed = signed_turn(now.direction, self.turns.0);
+        let (left, right) = (self.turns.1.min(signed), self.turns.2.max(signed));
+        let stays = self.direction.count > 0 && right - left < limits.direction;
+        self.direction.go_on(stays, now.time);
+        self.turns = if stays {
+            (self.turns.0, left, right)
+        } else {
+            (now.direction, 0.0, 0.0)
+        };
+        let long = |run: &Run| run.count > 2 && now.time - run.since >= limits.period;
+        let flag = if long(&self.speed) || long(&self.direction) {
+            Flag::Suspect
+        } else {
+            Flag::Pass
+        };
+        witness.tell(Test::Persistence, flag, || {
+            let minutes = |run: &Run| (now.time - run.since) as f64 / 6e7;
+            format!(
+                "speed within {} m/s for {:.0} min, direction within {} degrees for {:.0} min; {:.0} min is suspect",
+                limits.speed,
+                minutes(&self.speed),
+                limits.direction,
+                minutes(&self.direction),
+                limits.period as f64 / 6e7
+            )
+        });
+        flag
+    }
+}
+
+/// The turn from `b` to `a`, −180 to 180 degrees, clockwise positive.
+#[inline]
+fn signed_turn(a: f64, b: f64) -> f64 {
+    let clockwise = a - b;
+    let size = turn(a, b);
+    if clockwise > 180.0 || (clockwise < 0.0 && clockwise >= -180.0) {
+        -size
+    } else {
+        size
+    }
+}

@@ -1,0 +1,59 @@
+//! Spikes.
+
+use super::point::Step;
+use super::witness::Witness;
+use super::{Flag, Test};
+use crate::settings::SpikeLimits;
+
+/// A report that differs from the mean of its neighbours, and from both of them the same way.
+///
+/// - **Reference**: QARTOD wind manual, test 6 (spike): |x(n−1) − (x(n−2) + x(n))/2| above the low limit is suspect,
+///   above the high one fails; 20 and 40 m/s in its example. Directions are tested through u and v, as it asks.
+/// - **Departs from it** in that the report must differ from each neighbour by half of that or more, to the same side:
+///   else the report before a step, or beside a spike, would be called a spike too.
+/// - The last report of a station waits for the next one and is not evaluated.
+#[inline]
+pub(super) fn spike_flag<W: Witness>(
+    back: Option<Step>,
+    ahead: Option<Step>,
+    limits: &SpikeLimits,
+    witness: &mut W,
+) -> Flag {
+    let (Some(back), Some(ahead)) = (back, ahead) else {
+        witness.tell(Test::Spike, Flag::NotEvaluated, || {
+            let side = if back.is_none() { "before" } else { "after" };
+            format!("no report near enough {side} it to compare with")
+        });
+        return Flag::NotEvaluated;
+    };
+    let height = height(back.u, ahead.u)
+        .max(height(back.v, ahead.v))
+        .max(height(back.speed, ahead.speed));
+    let flag = if height <= limits.suspect {
+        Flag::Pass
+    } else if height <= limits.fail {
+        Flag::Suspect
+    } else {
+        Flag::Fail
+    };
+    witness.tell(Test::Spike, flag, || {
+        format!(
+            "stands out by {height:.1} m/s from its neighbours (the most of u, v and speed); above {} m/s is suspect, \
+             above {} m/s fails",
+            limits.suspect, limits.fail
+        )
+    });
+    flag
+}
+
+/// By how much a value stands out, from the steps to it and from it; 0 where it is no spike.
+#[inline]
+fn height(back: f64, ahead: f64) -> f64 {
+    let deviation = 0.5 * (back - ahead).abs();
+    let least = back.abs().min(ahead.abs());
+    if back * ahead < 0.0 && 2.0 * least >= deviation {
+        deviation
+    } else {
+        0.0
+    }
+}
