@@ -14,7 +14,7 @@ use super::rate::RateOfChange;
 use super::spike::spike_flag;
 use super::stuck::{Coarse, Stuck};
 use super::witness::{Listener, Nobody, Witness};
-use super::{Flag, Test, TestFlags};
+use super::{Explained, Flag, Test, TestFlags};
 use crate::report::{Content, ReportTable, Rounding, RoundingFinder};
 use crate::settings::CheckLimits;
 use crate::station::Position;
@@ -148,10 +148,11 @@ impl StationScreen {
         self.listener = Some(Box::new(listener));
     }
 
-    /// What was heard.
+    /// What was heard, in the order of time.
     #[must_use]
-    pub fn heard(&self) -> Option<&Listener> {
-        self.listener.as_deref()
+    pub fn heard(&self) -> Vec<Explained> {
+        let listener = self.listener.as_deref();
+        listener.map_or_else(Vec::new, Listener::heard)
     }
 
     /// Steps of the station's reports, as far as they are known by now.

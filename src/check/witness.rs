@@ -75,10 +75,10 @@ impl Listener {
 
     /// What was heard, in the order of time.
     #[must_use]
-    pub fn heard(self) -> Vec<Explained> {
+    pub fn heard(&self) -> Vec<Explained> {
         let exact = self.before.iter().any(|e| e.time == self.at);
-        let after = if exact { Vec::new() } else { self.after };
-        self.before.into_iter().chain(after).collect()
+        let after = if exact { &[] } else { self.after.as_slice() };
+        self.before.iter().chain(after).cloned().collect()
     }
 
     /// The list to which the last report went.

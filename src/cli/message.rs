@@ -155,8 +155,8 @@ pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
         let _ = writeln!(out, "  {what:<17} {}", peak_text(setup, peak));
     }
     least_reporting(&mut out, setup, outcome);
-    let _ = writeln!(out, "\n{}", wrapped(&format!("Errors: {ERROR_BARS}.")));
-    let _ = writeln!(out, "{}", wrapped(CAUTION));
+    let _ = writeln!(out, "\n{}", wrapped(&format!("Errors: {ERROR_BARS}."), WIDTH));
+    let _ = writeln!(out, "{}", wrapped(CAUTION, WIDTH));
     let names: Vec<String> = files
         .iter()
         .filter_map(|f| f.file_name().map(|n| n.to_string_lossy().into_owned()))
@@ -216,12 +216,12 @@ fn least_reporting(out: &mut String, setup: &Setup, outcome: &Outcome) {
 }
 
 /// Text in lines of at most the width.
-fn wrapped(text: &str) -> String {
+pub(super) fn wrapped(text: &str, most: usize) -> String {
     let mut out = String::new();
     let mut width = 0;
     for word in text.split_whitespace() {
         let length = word.chars().count();
-        if width > 0 && width + 1 + length > WIDTH {
+        if width > 0 && width + 1 + length > most {
             out.push('\n');
             width = 0;
         } else if width > 0 {

@@ -6,7 +6,7 @@ use rayon::prelude::*;
 
 use super::Reading;
 use crate::align::block_times;
-use crate::check::{StationScreen, StationSums, screen};
+use crate::check::{Listener, StationScreen, StationSums, screen};
 use crate::error::Error;
 use crate::report::{
     CONFLICTS_KEPT, Conflict, InputOrder, OrderedReports, ReportFiles, ReportTable, Rounding, Rows,
@@ -166,6 +166,13 @@ impl<'f> Windows<'f> {
         }))
     }
 
+    /// Explains the tests of a station's reports at, or nearest to, a time.
+    pub fn listen(&mut self, station: usize, at: Time) {
+        if let Some(screen) = self.screens.get_mut(station) {
+            screen.listen(Listener::new(at));
+        }
+    }
+
     /// The number of the window after `before`, as far as it is known: empty ones are left out.
     fn number(&self, before: Option<&Window>, length: i64, ahead: i64) -> Option<i64> {
         let spans = self.pending.iter().filter_map(Rows::span);
@@ -246,6 +253,7 @@ impl<'f> Windows<'f> {
             stations: stations
                 .map(|(sums, screen)| sums.reading(screen.rounding()))
                 .collect(),
+            explained: self.screens.iter().flat_map(StationScreen::heard).collect(),
             warnings: outcome.warnings,
             failures: outcome.failures,
         }
