@@ -22,7 +22,7 @@ use gyremesh::integral::estimate;
 use gyremesh::polygon::{build_polygons, triangulate};
 use gyremesh::report::{ReportTable, Rows};
 use gyremesh::settings::{
-    AlignMethod, Analysis, PolygonChoice, CheckLimits, PolygonLimits, SensorErrors,
+    AlignMethod, Analysis, CheckLimits, PolygonChoice, PolygonLimits, SensorErrors,
 };
 use gyremesh::station::{Network, Position, Station};
 use gyremesh::time::Time;

@@ -22,7 +22,8 @@ pub(super) fn agreement_flag<W: Witness>(
     let speed = table.speed(i).unwrap_or(0.0);
     let gust = table.gust(i);
     let low_gust = gust.is_some_and(|gust| gust < speed - limits.gust_below);
-    let turned_calm = content == Content::Calm && limits.calm_direction && table.calm_has_direction(i);
+    let turned_calm =
+        content == Content::Calm && limits.calm_direction && table.calm_has_direction(i);
     let flag = if low_gust || turned_calm {
         Flag::Suspect
     } else {

@@ -102,7 +102,8 @@ impl Attenuated {
             });
             return Flag::NotEvaluated;
         }
-        let range = self.total.most.max(self.current.most) - self.total.least.min(self.current.least);
+        let range =
+            self.total.most.max(self.current.most) - self.total.least.min(self.current.least);
         let usual = usual.unwrap_or(0.0);
         let attenuated = range < limits.least_range
             && usual >= limits.usual_times * limits.least_range
@@ -148,7 +149,10 @@ impl Attenuated {
             self.past[self.next] = std::mem::replace(&mut self.current, Extent::NONE); // below PARTS
             self.next = (self.next + 1) % PARTS;
         }
-        self.end = time.div_euclid(length).saturating_add(1).saturating_mul(length);
+        self.end = time
+            .div_euclid(length)
+            .saturating_add(1)
+            .saturating_mul(length);
         self.total = self.past.iter().fold(Extent::NONE, Extent::with);
         let filled = self.past.iter().filter(|e| e.is_some()).count();
         // The oldest parts come first from `next` on.

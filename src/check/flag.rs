@@ -232,7 +232,10 @@ mod tests {
         assert_eq!(gap.worst(), Flag::NotEvaluated);
         for test in Test::ALL.into_iter().skip(1) {
             let suspect = gap.with(test, Flag::Suspect);
-            assert_eq!((suspect.worst(), suspect.get(test)), (Flag::Suspect, Flag::Suspect));
+            assert_eq!(
+                (suspect.worst(), suspect.get(test)),
+                (Flag::Suspect, Flag::Suspect)
+            );
             let failed = suspect.with(test, Flag::Fail);
             assert_eq!((failed.worst(), failed.get(test)), (Flag::Fail, Flag::Fail));
             let off = failed.masked(TestFlags::mask_without(&[test]));

@@ -45,8 +45,8 @@ pub(super) fn location_flag<W: Witness>(
 fn distance(a: Position, b: Position) -> f64 {
     let half = |d: f64| (d.to_radians() / 2.0).sin().powi(2);
     let (p, q) = (a.latitude().to_radians(), b.latitude().to_radians());
-    let h = half(a.latitude() - b.latitude())
-        + p.cos() * q.cos() * half(a.longitude() - b.longitude());
+    let h =
+        half(a.latitude() - b.latitude()) + p.cos() * q.cos() * half(a.longitude() - b.longitude());
     2.0 * EARTH * h.min(1.0).sqrt().asin()
 }
 

@@ -19,6 +19,7 @@ mod rate;
 mod run;
 mod screen;
 mod spike;
+mod steps;
 mod stuck;
 mod summary;
 mod witness;

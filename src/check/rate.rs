@@ -35,10 +35,7 @@ impl Sums {
             let variance = (squares - sum * sum / self.count) / (self.count - 1.0);
             variance.max(0.0).sqrt()
         };
-        (
-            deviation(self.u, self.uu),
-            deviation(self.v, self.vv),
-        )
+        (deviation(self.u, self.uu), deviation(self.v, self.vv))
     }
 }
 
@@ -59,12 +56,13 @@ impl RateOfChange {
     ///
     /// - **Reference**: QARTOD wind manual, test 7 (rate of change; N_DEV 3, 8 h in its example; no fail).
     /// - The change must also be above the least one that WMO doubts (Zahumenský 2004), or calm hours would make every
-    ///   breeze suspect.
+    ///   breeze suspect; on top comes what rounding of the direction can make of a steady wind (`rounding`, m/s).
     #[inline]
     pub fn judge<W: Witness>(
         &mut self,
         time: i64,
         step: Option<Step>,
+        rounding: f64,
         limits: &RateLimits,
         witness: &mut W,
     ) -> Flag {
@@ -85,7 +83,7 @@ impl RateOfChange {
         } else {
             let (u, v) = self.deviations();
             let beyond = |change: f64, deviation: f64| {
-                change.abs() > limits.least && change.abs() > limits.deviations * deviation
+                change.abs() - rounding > limits.least.max(limits.deviations * deviation)
             };
             if beyond(step.u, u) || beyond(step.v, v) {
                 Flag::Suspect
@@ -93,7 +91,9 @@ impl RateOfChange {
                 Flag::Pass
             }
         };
-        witness.tell(Test::RateOfChange, flag, || self.words(step, count, limits));
+        witness.tell(Test::RateOfChange, flag, || {
+            self.words(step, count, rounding, limits)
+        });
         self.current.count += 1.0;
         self.current.u += step.u;
         self.current.uu += step.u * step.u;
@@ -106,7 +106,7 @@ impl RateOfChange {
         self.total.plus(&self.current).deviations()
     }
 
-    fn words(&self, step: Step, count: f64, limits: &RateLimits) -> String {
+    fn words(&self, step: Step, count: f64, rounding: f64, limits: &RateLimits) -> String {
         let changes = format!(
             "u changed by {:.1}, v by {:.1} m/s in {}",
             step.u,
@@ -119,9 +119,9 @@ impl RateOfChange {
         let (u, v) = self.deviations();
         format!(
             "{changes}; above {:.1} and {:.1} m/s is suspect ({} standard deviations of {count} changes in {}, at \
-             least {} m/s)",
-            (limits.deviations * u).max(limits.least),
-            (limits.deviations * v).max(limits.least),
+             least {} m/s, and {rounding:.1} for rounding)",
+            (limits.deviations * u).max(limits.least) + rounding,
+            (limits.deviations * v).max(limits.least) + rounding,
             limits.deviations,
             hours(limits.period),
             limits.least
@@ -142,7 +142,10 @@ impl RateOfChange {
             self.past[self.next] = leaving; // below PARTS
             self.next = (self.next + 1) % PARTS;
         }
-        self.end = time.div_euclid(length).saturating_add(1).saturating_mul(length);
+        self.end = time
+            .div_euclid(length)
+            .saturating_add(1)
+            .saturating_mul(length);
         self.total = self.past.iter().fold(Sums::default(), Sums::plus);
     }
 }

@@ -30,7 +30,7 @@ impl Run {
 
     /// What it is worth: both the count and the time must be reached.
     #[inline]
-    pub fn flag(&self, time: i64, limits: &RunLimits, coarse: bool) -> Flag {
+    pub fn flag(&self, time: i64, limits: &RunLimits, coarse: f64) -> Flag {
         // Most runs are short.
         if self.count < limits.suspect_reports {
             return Flag::Pass;
@@ -47,7 +47,7 @@ impl Run {
     }
 
     /// In words.
-    pub fn words(&self, time: i64, limits: &RunLimits, coarse: bool) -> String {
+    pub fn words(&self, time: i64, limits: &RunLimits, coarse: f64) -> String {
         let (suspect, fail) = limits.after(coarse);
         format!(
             "the same in {} reports, {}; {} in {} is suspect, {} in {} fails",

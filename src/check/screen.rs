@@ -12,15 +12,13 @@ use super::point::Point;
 use super::range::{range_flag, tell_range};
 use super::rate::RateOfChange;
 use super::spike::spike_flag;
-use super::stuck::{Coarse, Stuck};
+use super::steps::Steps;
+use super::stuck::Stuck;
 use super::witness::{Listener, Nobody, Witness};
 use super::{Explained, Flag, Test, TestFlags};
 use crate::report::{Content, ReportTable, Rounding, RoundingFinder};
 use crate::settings::CheckLimits;
 use crate::station::Position;
-
-/// Steps of direction, degrees, and of speed, m/s, from which on a station is coarse: a report repeats by itself.
-const COARSE: (f64, f64) = (5.0, 0.4);
 
 /// What the tests of a station know of its reports so far.
 ///
@@ -29,7 +27,7 @@ const COARSE: (f64, f64) = (5.0, 0.4);
 #[derive(Debug, Clone)]
 pub struct StationScreen {
     rounding: RoundingFinder,
-    coarse: Coarse,
+    steps: Steps,
     /// Reports until the steps are looked at again.
     until_look: u32,
     looks: u32,
@@ -49,7 +47,7 @@ impl Default for StationScreen {
     fn default() -> Self {
         Self {
             rounding: RoundingFinder::default(),
-            coarse: Coarse::UNKNOWN,
+            steps: Steps::default(),
             until_look: FIRST_LOOK,
             looks: 0,
             last_time: None,
@@ -255,12 +253,18 @@ impl StationScreen {
         let back = now.step_from(self.last.as_ref(), limits.gap);
         let ahead = next.and_then(|next| next.step_from(Some(now), limits.gap));
         let since = back.map_or(i64::MAX, |step| step.time);
+        // What rounding of the direction can do to u or v, m/s.
+        let before = self.last.map_or(0.0, |last| last.speed);
+        let after = next.map_or(0.0, |next| next.speed);
+        let rounding = self.steps.turn * now.speed.max(before).max(after);
         self.last = Some(*now);
-        let spike = spike_flag(back, ahead, &limits.spike, witness);
-        let rate = self.rate.judge(now.time, back, &limits.rate_of_change, witness);
+        let spike = spike_flag(back, ahead, rounding, &limits.spike, witness);
+        let rate = self
+            .rate
+            .judge(now.time, back, rounding, &limits.rate_of_change, witness);
         let stuck = self
             .stuck
-            .judge(now, back.is_some(), self.coarse, limits, witness);
+            .judge(now, back.is_some(), self.steps, limits, witness);
         let exempt = now.speed < limits.starting_speed;
         let persistence = self
             .persistence
@@ -287,18 +291,14 @@ impl StationScreen {
     fn look(&mut self, table: &ReportTable, i: usize) {
         let direction = table.direction(i);
         self.rounding.add(table.speed(i), direction);
-        self.until_look = self.until_look.saturating_sub(u32::from(direction.is_some()));
+        self.until_look = self
+            .until_look
+            .saturating_sub(u32::from(direction.is_some()));
         if self.until_look > 0 || self.looks == LOOKS {
             return;
         }
         self.looks += 1;
         self.until_look = FIRST_LOOK << self.looks;
-        let found = self.rounding.found();
-        self.coarse = Coarse {
-            direction: found.direction.is_some_and(|step| step >= COARSE.0),
-            speed: found
-                .speed
-                .is_some_and(|step| step.metres_per_second() >= COARSE.1),
-        };
+        self.steps = Steps::from(self.rounding.found());
     }
 }

@@ -11,11 +11,13 @@ use crate::settings::SpikeLimits;
 ///   above the high one fails; 20 and 40 m/s in its example. Directions are tested through u and v, as it asks.
 /// - **Departs from it** in that the report must differ from each neighbour by half of that or more, to the same side:
 ///   else the report before a step, or beside a spike, would be called a spike too.
+/// - What rounding of the direction can make of a steady wind (`rounding`, m/s) is allowed on top for u and v.
 /// - The last report of a station waits for the next one and is not evaluated.
 #[inline]
 pub(super) fn spike_flag<W: Witness>(
     back: Option<Step>,
     ahead: Option<Step>,
+    rounding: f64,
     limits: &SpikeLimits,
     witness: &mut W,
 ) -> Flag {
@@ -26,9 +28,10 @@ pub(super) fn spike_flag<W: Witness>(
         });
         return Flag::NotEvaluated;
     };
-    let height = height(back.u, ahead.u)
-        .max(height(back.v, ahead.v))
-        .max(height(back.speed, ahead.speed));
+    let vector = height(back.u, ahead.u).max(height(back.v, ahead.v));
+    let height = height(back.speed, ahead.speed)
+        .max(vector - rounding)
+        .max(0.0);
     let flag = if height <= limits.suspect {
         Flag::Pass
     } else if height <= limits.fail {
@@ -38,8 +41,8 @@ pub(super) fn spike_flag<W: Witness>(
     };
     witness.tell(Test::Spike, flag, || {
         format!(
-            "stands out by {height:.1} m/s from its neighbours (the most of u, v and speed); above {} m/s is suspect, \
-             above {} m/s fails",
+            "stands out by {height:.1} m/s from its neighbours (the most of speed, u and v, these less {rounding:.1} for \
+             rounding); above {} m/s is suspect, above {} m/s fails",
             limits.suspect, limits.fail
         )
     });

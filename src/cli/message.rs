@@ -155,7 +155,11 @@ pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
         let _ = writeln!(out, "  {what:<17} {}", peak_text(setup, peak));
     }
     least_reporting(&mut out, setup, outcome);
-    let _ = writeln!(out, "\n{}", wrapped(&format!("Errors: {ERROR_BARS}."), WIDTH));
+    let _ = writeln!(
+        out,
+        "\n{}",
+        wrapped(&format!("Errors: {ERROR_BARS}."), WIDTH)
+    );
     let _ = writeln!(out, "{}", wrapped(CAUTION, WIDTH));
     let names: Vec<String> = files
         .iter()

@@ -14,8 +14,8 @@ use indicatif::{ProgressBar, ProgressStyle};
 use self::args::{Args, CheckArgs, Command, EstimateArgs, Format, PolygonsArgs};
 use crate::error::{Error, ErrorKind, nearest_name};
 use crate::output::{
-    FlaggedRows, Formats, OutputSet, mesh_csv, mesh_geojson, reading_json, series, stations_csv, summary_csv,
-    summary_json,
+    FlaggedRows, Formats, OutputSet, mesh_csv, mesh_geojson, reading_json, series, stations_csv,
+    summary_csv, summary_json,
 };
 use crate::pipeline::{self, Reading, Setup, Sources};
 use crate::report::InputOrder;

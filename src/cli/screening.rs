@@ -23,7 +23,13 @@ pub(super) fn screening_text(out: &mut String, network: &Network, reading: &Read
     let sum = |of: &dyn Fn(&StationReading) -> u64| reading.stations.iter().map(of).sum::<u64>();
     for test in Test::ALL.into_iter().filter(|&t| t != Test::TimingGap) {
         let name = test.words();
-        counts(out, &name, sum(&|s| s.of_test(test).0), sum(&|s| s.of_test(test).1), all);
+        counts(
+            out,
+            &name,
+            sum(&|s| s.of_test(test).0),
+            sum(&|s| s.of_test(test).1),
+            all,
+        );
     }
     counts(out, "any", sum(&|s| s.suspect), sum(&|s| s.failed), all);
     let gaps = sum(&|s| s.of_test(Test::TimingGap).1);
@@ -100,11 +106,7 @@ fn worst(out: &mut String, network: &Network, reading: &Reading) {
 }
 
 /// Every test of some reports of a station, with its numbers.
-pub(super) fn explained_text(
-    station: &str,
-    explained: &[Explained],
-    reading: &Reading,
-) -> String {
+pub(super) fn explained_text(station: &str, explained: &[Explained], reading: &Reading) -> String {
     let mut out = String::new();
     if explained.is_empty() {
         let _ = writeln!(out, "{station} has no reports");

@@ -76,7 +76,12 @@ impl<'f> Windows<'f> {
             times: i64::try_from(times).unwrap_or(i64::MAX),
             pending: Vec::new(),
             ended: false,
-            positions: files.network().stations().iter().map(|s| s.position).collect(),
+            positions: files
+                .network()
+                .stations()
+                .iter()
+                .map(|s| s.position)
+                .collect(),
             screens: vec![StationScreen::default(); stations],
             sums: vec![StationSums::default(); stations],
             repeats: Tally::default(),

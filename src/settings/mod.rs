@@ -19,8 +19,8 @@ use crate::station::Catalogue;
 use crate::time::Time;
 
 pub use check::{
-    AgreementLimits, AttenuatedLimits, CheckLimits, FlatLimits, PersistenceLimits, RangeLimits, RateLimits, RunLimits,
-    Season, SpikeLimits, StuckLimits,
+    AgreementLimits, AttenuatedLimits, CheckLimits, FlatLimits, PersistenceLimits, RangeLimits,
+    RateLimits, RunLimits, Season, SpikeLimits, StuckLimits,
 };
 pub use read::{Overrides, read_settings};
 

@@ -8,8 +8,8 @@ use super::path::expand_path;
 use super::reports::{reports, text_format};
 use super::section::{Document, Section};
 use super::{
-    AlignMethod, Analysis, MEMORY, PolygonChoice, PolygonLimits, RegionParts,
-    RegionSettings, RingSettings, SensorErrors, Settings,
+    AlignMethod, Analysis, MEMORY, PolygonChoice, PolygonLimits, RegionParts, RegionSettings,
+    RingSettings, SensorErrors, Settings,
 };
 use crate::align::{HeightReduction, Profile};
 use crate::error::{Error, Problem};
