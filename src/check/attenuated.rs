@@ -7,6 +7,8 @@ use crate::settings::AttenuatedLimits;
 
 /// Parts of the past that are forgotten one after the other.
 const PARTS: usize = 24;
+/// The same, for times.
+const TIME_PARTS: i64 = 24;
 /// Parts that must have a report.
 const FEWEST_PARTS: usize = 8;
 
@@ -142,7 +144,7 @@ impl Attenuated {
     /// Begins the part in which `time` lies.
     #[cold]
     fn forget(&mut self, time: i64, limits: &AttenuatedLimits) {
-        let length = (limits.period / PARTS as i64).max(1);
+        let length = (limits.period / TIME_PARTS).max(1);
         let parts = (time - self.end).div_euclid(length).saturating_add(1);
         let parts = usize::try_from(parts).map_or(PARTS + 1, |parts| parts.min(PARTS + 1));
         for _ in 0..parts {

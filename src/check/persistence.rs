@@ -1,6 +1,6 @@
 //! WMO's persistence test of one-minute values.
 
-use super::point::{Point, turn};
+use super::point::{Point, hours, turn};
 use super::run::Run;
 use super::witness::Witness;
 use super::{Flag, Test};
@@ -27,15 +27,18 @@ impl Persistence {
         &mut self,
         now: &Point,
         since: i64,
-        exempt: bool,
         limits: &PersistenceLimits,
         witness: &mut W,
     ) -> Flag {
-        if since > limits.interval || exempt {
+        if since > limits.interval || now.speed < limits.exempt_below {
             self.speed.count = 0;
             self.direction.count = 0;
             witness.tell(Test::Persistence, Flag::NotEvaluated, || {
-                "only for reports every two minutes or less, above the starting threshold".into()
+                format!(
+                    "only for reports at most {} apart and winds of {} m/s or more",
+                    hours(limits.interval),
+                    limits.exempt_below
+                )
             });
             return Flag::NotEvaluated;
         }
@@ -82,7 +85,7 @@ impl Persistence {
 fn signed_turn(a: f64, b: f64) -> f64 {
     let clockwise = a - b;
     let size = turn(a, b);
-    if clockwise > 180.0 || (clockwise < 0.0 && clockwise >= -180.0) {
+    if clockwise > 180.0 || (-180.0..0.0).contains(&clockwise) {
         -size
     } else {
         size

@@ -37,7 +37,7 @@ impl Point {
         let before = before?;
         let time = self.time - before.time;
         // Of several levels at one time none follows the other.
-        (time > 0 && time <= within).then(|| Step {
+        (time > 0 && time <= within).then_some(Step {
             u: self.u - before.u,
             v: self.v - before.v,
             speed: self.speed - before.speed,

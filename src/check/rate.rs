@@ -6,7 +6,7 @@ use super::{Flag, Test};
 use crate::settings::RateLimits;
 
 /// Parts of the past that are forgotten one after the other.
-const PARTS: usize = 16;
+const PARTS: i64 = 16;
 
 /// Sums of the changes of u and v.
 #[derive(Debug, Clone, Copy, Default)]
@@ -46,7 +46,7 @@ pub(super) struct RateOfChange {
     end: i64,
     current: Sums,
     /// The parts before; `next` is the oldest.
-    past: [Sums; PARTS],
+    past: [Sums; 16],
     next: usize,
     total: Sums,
 }
@@ -131,16 +131,16 @@ impl RateOfChange {
     /// Begins the part in which `time` lies.
     #[cold]
     fn forget(&mut self, time: i64, period: i64) {
-        let length = (period / PARTS as i64).max(1);
+        let length = (period / PARTS).max(1);
         let parts = (time - self.end).div_euclid(length).saturating_add(1);
-        for k in 0..parts.min(PARTS as i64 + 1) {
+        for k in 0..parts.min(PARTS + 1) {
             let leaving = if k == 0 {
                 std::mem::take(&mut self.current)
             } else {
                 Sums::default()
             };
-            self.past[self.next] = leaving; // below PARTS
-            self.next = (self.next + 1) % PARTS;
+            self.past[self.next] = leaving; // below its length
+            self.next = (self.next + 1) % self.past.len();
         }
         self.end = time
             .div_euclid(length)

@@ -68,8 +68,8 @@ const FIRST_LOOK: u32 = 32;
 const LOOKS: u32 = 8;
 
 /// Flags of the reports of one station.
-struct Flags<'a> {
-    flags: &'a mut [Flag],
+struct Columns<'a> {
+    own: &'a mut [Flag],
     tests: &'a mut [TestFlags],
     /// The first of them in the table.
     start: usize,
@@ -91,8 +91,8 @@ pub fn screen(
         let (flags, later) = rest.split_at_mut(reports.len());
         let (tests, later_tests) = rest_tests.split_at_mut(reports.len());
         (rest, rest_tests) = (later, later_tests);
-        parts.push(Flags {
-            flags,
+        parts.push(Columns {
+            own: flags,
             tests,
             start: reports.start,
         });
@@ -103,7 +103,7 @@ pub fn screen(
         .par_iter_mut()
         .zip(parts)
         .enumerate()
-        .for_each(|(station, (screen, part))| {
+        .for_each(|(station, (screen, mut part))| {
             let Some(limits) = limits else {
                 return screen.look_only(seen, station);
             };
@@ -115,9 +115,9 @@ pub fn screen(
                 mask,
             };
             match screen.listener.take() {
-                None => screen.judge(&job, part, &mut Nobody),
+                None => screen.judge(&job, &mut part, &mut Nobody),
                 Some(mut listener) => {
-                    screen.judge(&job, part, &mut *listener);
+                    screen.judge(&job, &mut part, &mut *listener);
                     screen.listener = Some(listener);
                 }
             }
@@ -168,7 +168,7 @@ impl StationScreen {
         }
     }
 
-    fn judge<W: Witness>(&mut self, job: &Job, out: Flags, witness: &mut W) {
+    fn judge<W: Witness>(&mut self, job: &Job, out: &mut Columns, witness: &mut W) {
         let table = job.table;
         let end = table.of_station(job.station).end;
         let fastest = job.limits.range.speed_fail;
@@ -200,7 +200,7 @@ impl StationScreen {
             };
             witness.end(flag);
             let k = i - out.start;
-            out.flags[k] = out.flags[k].worst(flag);
+            out.own[k] = out.own[k].worst(flag);
             out.tests[k] = tests;
         }
     }
@@ -265,10 +265,9 @@ impl StationScreen {
         let stuck = self
             .stuck
             .judge(now, back.is_some(), self.steps, limits, witness);
-        let exempt = now.speed < limits.starting_speed;
         let persistence = self
             .persistence
-            .judge(now, since, exempt, &limits.persistence, witness);
+            .judge(now, since, &limits.persistence, witness);
         let attenuated = self.attenuated.judge(
             now.time,
             now.speed,

@@ -1,6 +1,6 @@
 //! What the rounding of a station's reports does to the tests.
 
-use crate::report::Rounding;
+use crate::report::{Rounding, SpeedStep};
 
 /// Steps of direction, degrees, and of speed, m/s, from which on a value repeats by itself in sound stations.
 const COARSE: (f64, f64) = (5.0, 0.4);
@@ -32,7 +32,7 @@ impl From<Rounding> for Steps {
     fn from(found: Rounding) -> Self {
         Self::new(
             found.direction.unwrap_or(0.0),
-            found.speed.map_or(0.0, |step| step.metres_per_second()),
+            found.speed.map_or(0.0, SpeedStep::metres_per_second),
         )
     }
 }

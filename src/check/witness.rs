@@ -1,5 +1,7 @@
 //! Listens to the tests of a few reports, to explain them.
 
+use std::fmt::Write as _;
+
 use super::{Flag, Test};
 use crate::report::ReportTable;
 use crate::time::Time;
@@ -148,7 +150,8 @@ fn in_words(table: &ReportTable, i: usize) -> String {
         (_, None, _) => "no speed".to_string(),
     };
     if let Some(gust) = table.gust(i) {
-        words.push_str(&format!(", gust {gust:.1} m/s"));
+        // Writing to a string cannot fail.
+        let _ = write!(words, ", gust {gust:.1} m/s");
     }
     words
 }

@@ -113,11 +113,11 @@ tests not to make []
   [check.spike]               suspect [20 m/s], fail [40 m/s]
   [check.rate_of_change]      deviations [3], period [8 h], least [10 m/s], least_changes [6]
   [check.flat_line]           speed [0 m/s], direction [0.05 degrees]: what counts as the same; and
-              suspect_reports [3], suspect_after [10 min], fail_reports [5], fail_after [30 min]; for stations that \
+              suspect_reports [3], suspect_after [20 min], fail_reports [5], fail_after [30 min]; for stations that \
 round coarsely coarse_suspect_after [6 h], coarse_fail_after [12 h], longer for steps beyond 10 degrees
   [check.stuck_vane]          varies [0.5 m/s], and the same keys [6, 3 h, 12, 6 h, 18 h, 48 h]
   [check.frozen_anemometer]   varies [10 degrees], and the same keys [6, 3 h, 12, 6 h, 12 h, 24 h]
-  [check.persistence]         speed [0.5 m/s], direction [5 degrees], period [60 min], interval [2 min]
+  [check.persistence]         speed [0.5 m/s], direction [5 degrees], period [60 min], interval [2 min], exempt_below [1 m/s]
   [check.agreement]           gust_below [0.5 m/s], calm_direction: true to doubt it [false]
   [check.attenuated_signal]   period [12 h], least_range [0.5 m/s], usual_times [4], calm_after [48 h]
   [polygons]  triangles [true]

@@ -185,7 +185,8 @@ pub struct StuckLimits {
 
 /// Limits of the persistence test: WMO guidelines for automatic stations (Zahumenský 2004), but 5 degrees for its 10: a
 /// steady sea wind of 10 m/s stays within 10 degrees for an hour (Singapore, S102, 2017-06-10), as turbulence over water
-/// turns the one-minute mean by 2 degrees.
+/// turns the one-minute mean by some 2 degrees; and winds below 1 m/s are exempt, where WMO exempts 0.1 m/s: at a
+/// turbulence intensity of 15 % sixty values of a slower wind span less than 0.5 m/s (S109, 2017-06-27).
 #[derive(Debug, Clone, Copy, PartialEq, Serialize)]
 pub struct PersistenceLimits {
     /// Least variation of the speed, m/s.
@@ -195,6 +196,8 @@ pub struct PersistenceLimits {
     /// The time in which it is expected.
     #[serde(rename = "period_s", serialize_with = "seconds")]
     pub period: i64,
+    /// Slower winds are exempt, m/s.
+    pub exempt_below: f64,
     /// Made only for reports at most so far apart.
     #[serde(rename = "interval_s", serialize_with = "seconds")]
     pub interval: i64,
@@ -265,7 +268,7 @@ impl Default for CheckLimits {
             flat_line: FlatLimits {
                 speed: 0.0,
                 direction: 0.05,
-                run: run((3, 5), (10 * MINUTE, 30 * MINUTE), (6, 12)),
+                run: run((3, 5), (20 * MINUTE, 30 * MINUTE), (6, 12)),
             },
             stuck_vane: StuckLimits {
                 varies: 0.5,
@@ -279,6 +282,7 @@ impl Default for CheckLimits {
                 speed: 0.5,
                 direction: 5.0,
                 period: HOUR,
+                exempt_below: 1.0,
                 interval: 2 * MINUTE,
             },
             agreement: AgreementLimits {
@@ -371,6 +375,7 @@ pub(super) fn check(mut section: Section, starting_speed: f64) -> CheckLimits {
         &mut persistence.direction,
     );
     put_time(&mut part, "period", &mut persistence.period);
+    put_speed(&mut part, "exempt_below", &mut persistence.exempt_below);
     put_time(&mut part, "interval", &mut persistence.interval);
     part.finish();
 
