@@ -1,16 +1,16 @@
 //! Attenuated signal.
 
-use super::point::hours;
+use super::point::{hours, larger, smaller};
 use super::witness::Witness;
 use super::{Flag, Test};
 use crate::settings::AttenuatedLimits;
 
 /// Parts of the past that are forgotten one after the other.
-const PARTS: usize = 24;
+const PARTS: usize = 12;
 /// The same, for times.
-const TIME_PARTS: i64 = 24;
+const TIME_PARTS: i64 = 12;
 /// Parts that must have a report.
-const FEWEST_PARTS: usize = 8;
+const FEWEST_PARTS: usize = 6;
 
 /// Slowest and fastest, m/s.
 #[derive(Debug, Clone, Copy)]
@@ -27,8 +27,8 @@ impl Extent {
 
     fn with(self, other: &Self) -> Self {
         Self {
-            least: self.least.min(other.least),
-            most: self.most.max(other.most),
+            least: smaller(self.least, other.least),
+            most: larger(self.most, other.most),
         }
     }
 
@@ -37,7 +37,7 @@ impl Extent {
     }
 }
 
-/// Remembers slowest and fastest wind of half a day, to a twenty-fourth of it, and what is usual at the station.
+/// Remembers slowest and fastest wind of half a day, to a twelfth of it, and what is usual at the station.
 #[derive(Debug, Clone)]
 pub(super) struct Attenuated {
     /// End of the current part, μs; parts end at multiples of their length since 1970.
@@ -90,8 +90,8 @@ impl Attenuated {
         if time >= self.end {
             self.forget(time, limits);
         }
-        self.current.least = self.current.least.min(speed);
-        self.current.most = self.current.most.max(speed);
+        self.current.least = smaller(self.current.least, speed);
+        self.current.most = larger(self.current.most, speed);
         if speed >= starting_speed {
             self.calm_since = None;
         } else if self.calm_since.is_none() {
@@ -104,8 +104,8 @@ impl Attenuated {
             });
             return Flag::NotEvaluated;
         }
-        let range =
-            self.total.most.max(self.current.most) - self.total.least.min(self.current.least);
+        let range = larger(self.total.most, self.current.most)
+            - smaller(self.total.least, self.current.least);
         let usual = usual.unwrap_or(0.0);
         let attenuated = range < limits.least_range
             && usual >= limits.usual_times * limits.least_range

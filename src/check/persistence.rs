@@ -1,6 +1,6 @@
 //! WMO's persistence test of one-minute values.
 
-use super::point::{Point, hours, turn};
+use super::point::{Point, hours, larger, smaller, turn};
 use super::run::Run;
 use super::witness::Witness;
 use super::{Flag, Test};
@@ -42,7 +42,10 @@ impl Persistence {
             });
             return Flag::NotEvaluated;
         }
-        let (slowest, fastest) = (self.speeds.0.min(now.speed), self.speeds.1.max(now.speed));
+        let (slowest, fastest) = (
+            smaller(self.speeds.0, now.speed),
+            larger(self.speeds.1, now.speed),
+        );
         let stays = self.speed.count > 0 && fastest - slowest < limits.speed;
         self.speed.go_on(stays, now.time);
         self.speeds = if stays {
@@ -51,7 +54,7 @@ impl Persistence {
             (now.speed, now.speed)
         };
         let signed = signed_turn(now.direction, self.turns.0);
-        let (left, right) = (self.turns.1.min(signed), self.turns.2.max(signed));
+        let (left, right) = (smaller(self.turns.1, signed), larger(self.turns.2, signed));
         let stays = self.direction.count > 0 && right - left < limits.direction;
         self.direction.go_on(stays, now.time);
         self.turns = if stays {

@@ -59,11 +59,23 @@ pub(super) struct Step {
     pub time: i64,
 }
 
+/// The larger of two numbers that are numbers, in one instruction.
+#[inline]
+pub(super) fn larger(a: f64, b: f64) -> f64 {
+    if a > b { a } else { b }
+}
+
+/// The smaller of two numbers that are numbers, in one instruction.
+#[inline]
+pub(super) fn smaller(a: f64, b: f64) -> f64 {
+    if a < b { a } else { b }
+}
+
 /// The angle between two directions, 0 to 180 degrees.
 #[inline]
 pub(super) fn turn(a: f64, b: f64) -> f64 {
     let turn = (a - b).abs();
-    turn.min(360.0 - turn)
+    smaller(turn, 360.0 - turn)
 }
 
 /// A time in hours, for people.

@@ -1,12 +1,12 @@
 //! Rate of change.
 
-use super::point::{Step, hours};
+use super::point::{Step, hours, larger};
 use super::witness::Witness;
 use super::{Flag, Test};
 use crate::settings::RateLimits;
 
 /// Parts of the past that are forgotten one after the other.
-const PARTS: i64 = 16;
+const PARTS: i64 = 8;
 
 /// Sums of the changes of u and v.
 #[derive(Debug, Clone, Copy, Default)]
@@ -39,14 +39,14 @@ impl Sums {
     }
 }
 
-/// Remembers the changes of the past hours, to a sixteenth of them.
+/// Remembers the changes of the past hours, to an eighth of them.
 #[derive(Debug, Clone, Default)]
 pub(super) struct RateOfChange {
     /// End of the current part, μs; parts end at multiples of their length since 1970.
     end: i64,
     current: Sums,
     /// The parts before; `next` is the oldest.
-    past: [Sums; 16],
+    past: [Sums; 8],
     next: usize,
     total: Sums,
 }
@@ -78,7 +78,7 @@ impl RateOfChange {
         let count = self.current.count + self.total.count;
         let flag = if count < limits.least_changes {
             Flag::NotEvaluated
-        } else if step.u.abs().max(step.v.abs()) <= limits.least {
+        } else if larger(step.u.abs(), step.v.abs()) <= limits.least {
             Flag::Pass
         } else {
             let (u, v) = self.deviations();

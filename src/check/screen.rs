@@ -8,7 +8,7 @@ use super::climatology::Climatology;
 use super::gap::gap_flag;
 use super::location::location_flag;
 use super::persistence::Persistence;
-use super::point::Point;
+use super::point::{Point, larger};
 use super::range::{range_flag, tell_range};
 use super::rate::RateOfChange;
 use super::spike::spike_flag;
@@ -65,7 +65,7 @@ impl Default for StationScreen {
 /// Reports before the steps of a station are looked at for the first time; then after twice as many each time.
 const FIRST_LOOK: u32 = 32;
 /// How often they are looked at: later reports change nothing.
-const LOOKS: u32 = 8;
+const LOOKS: u32 = 6;
 
 /// Flags of the reports of one station.
 struct Columns<'a> {
@@ -140,6 +140,19 @@ struct Job<'a> {
     mask: TestFlags,
 }
 
+/// The first report with a wind among `from..end`, with its place.
+#[inline]
+fn following(table: &ReportTable, from: usize, end: usize, fastest: f64) -> (usize, Option<Point>) {
+    let mut k = from;
+    while k < end {
+        if let Some(point) = Point::of(table, k, fastest) {
+            return (k, Some(point));
+        }
+        k += 1;
+    }
+    (usize::MAX, None)
+}
+
 impl StationScreen {
     /// Listens to the tests of the reports at or near a time.
     pub fn listen(&mut self, listener: Listener) {
@@ -188,9 +201,7 @@ impl StationScreen {
             if let Some(now) = point
                 && !table.has_level(i)
             {
-                let following =
-                    (i + 1..end).find_map(|k| Point::of(table, k, fastest).map(|p| (k, Some(p))));
-                next = following.unwrap_or((usize::MAX, None));
+                next = following(table, i + 1, end, fastest);
                 tests = self.in_series(&now, next.1.as_ref(), tests, job.limits, witness);
             }
             let tests = tests.masked(job.mask);
@@ -256,7 +267,7 @@ impl StationScreen {
         // What rounding of the direction can do to u or v, m/s.
         let before = self.last.map_or(0.0, |last| last.speed);
         let after = next.map_or(0.0, |next| next.speed);
-        let rounding = self.steps.turn * now.speed.max(before).max(after);
+        let rounding = self.steps.turn * larger(now.speed, larger(before, after));
         self.last = Some(*now);
         let spike = spike_flag(back, ahead, rounding, &limits.spike, witness);
         let rate = self

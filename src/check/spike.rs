@@ -1,6 +1,6 @@
 //! Spikes.
 
-use super::point::Step;
+use super::point::{Step, larger};
 use super::witness::Witness;
 use super::{Flag, Test};
 use crate::settings::SpikeLimits;
@@ -28,18 +28,31 @@ pub(super) fn spike_flag<W: Witness>(
         });
         return Flag::NotEvaluated;
     };
-    let vector = height(back.u, ahead.u).max(height(back.v, ahead.v));
-    let height = height(back.speed, ahead.speed)
-        .max(vector - rounding)
-        .max(0.0);
-    let flag = if height <= limits.suspect {
+    let height = || {
+        let vector = height(back.u, ahead.u).max(height(back.v, ahead.v));
+        height(back.speed, ahead.speed)
+            .max(vector - rounding)
+            .max(0.0)
+    };
+    // No more than the deviation itself; nearly all reports end here.
+    let rough = larger(
+        (back.u - ahead.u).abs(),
+        larger((back.v - ahead.v).abs(), (back.speed - ahead.speed).abs()),
+    );
+    let flag = if 0.5 * rough <= limits.suspect {
         Flag::Pass
-    } else if height <= limits.fail {
-        Flag::Suspect
     } else {
-        Flag::Fail
+        let height = height();
+        if height <= limits.suspect {
+            Flag::Pass
+        } else if height <= limits.fail {
+            Flag::Suspect
+        } else {
+            Flag::Fail
+        }
     };
     witness.tell(Test::Spike, flag, || {
+        let height = height();
         format!(
             "stands out by {height:.1} m/s from its neighbours (the most of speed, u and v, these less {rounding:.1} for \
              rounding); above {} m/s is suspect, above {} m/s fails",

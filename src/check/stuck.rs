@@ -1,6 +1,6 @@
 //! Flat line, stuck vane, frozen anemometer.
 
-use super::point::{Point, turn};
+use super::point::{Point, larger, smaller, turn};
 use super::run::Run;
 use super::steps::Steps;
 use super::witness::Witness;
@@ -84,7 +84,10 @@ impl Stuck {
             follows && turn(now.direction, self.first_direction) <= epsilon.direction;
         self.direction.go_on(same_direction, now.time);
         if same_direction {
-            self.speeds = (self.speeds.0.min(now.speed), self.speeds.1.max(now.speed));
+            self.speeds = (
+                smaller(self.speeds.0, now.speed),
+                larger(self.speeds.1, now.speed),
+            );
         } else {
             self.first_direction = now.direction;
             self.speeds = (now.speed, now.speed);
@@ -92,7 +95,7 @@ impl Stuck {
         let same_speed = follows && (now.speed - self.first_speed).abs() <= SAME_SPEED;
         self.speed.go_on(same_speed, now.time);
         if same_speed {
-            self.turned.1 = self.turned.1.max(turn(now.direction, self.turned.0));
+            self.turned.1 = larger(self.turned.1, turn(now.direction, self.turned.0));
         } else {
             self.first_speed = now.speed;
             self.turned = (now.direction, 0.0);

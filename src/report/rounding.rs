@@ -119,7 +119,7 @@ impl<const N: usize> StepTable<N> {
 const WHOLE: f64 = 1.5 * (1_u64 << 52) as f64;
 
 /// Values of a station that are looked at; later ones change nothing.
-const LOOKED_AT: u32 = 4096;
+const LOOKED_AT: u32 = 1024;
 
 /// Finds the steps of a station as its reports come: the coarsest on which nearly all values lie.
 #[derive(Debug, Clone, Default)]
