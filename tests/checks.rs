@@ -6,7 +6,8 @@
     reason = "tests may panic; their numbers are small"
 )]
 
-use gyremesh::check::{Flag, Test, screen_all};
+use gyremesh::check::Flag::{Fail, NotEvaluated, Pass, Suspect};
+use gyremesh::check::{Flag, StationScreen, Test, screen, screen_all};
 use gyremesh::report::{Moving, Part, Report, ReportTable, Rows};
 use gyremesh::settings::CheckLimits;
 use gyremesh::station::Position;
@@ -37,7 +38,9 @@ fn report(minute: f64, direction: f64, speed: f64) -> Report {
 
 fn screened(reports: &[Report], limits: &CheckLimits) -> ReportTable {
     let mut rows = Rows::default();
-    reports.iter().for_each(|r| rows.push(r));
+    for report in reports {
+        rows.push(report);
+    }
     let (mut table, _) = ReportTable::new(&[rows], 1);
     let listed = Position::new(46.0, -30.0).unwrap();
     screen_all(&mut table, &[listed], limits);
@@ -124,8 +127,10 @@ fn location_of_reports_with_a_position() {
             .collect()
     };
     assert_eq!(found(&CheckLimits::default()), [2, 4, 1, 3]);
-    let mut anywhere = CheckLimits::default();
-    anywhere.displacement = None;
+    let anywhere = CheckLimits {
+        displacement: None,
+        ..CheckLimits::default()
+    };
     assert_eq!(found(&anywhere), [2, 2, 2, 2]);
 }
 
@@ -137,7 +142,6 @@ fn spikes_of_the_manual() {
         winds[2].1 += height;
         flags(Test::Spike, 10.0, &winds)
     };
-    use Flag::{Fail, NotEvaluated, Pass, Suspect};
     assert_eq!(spike(0.0), [NotEvaluated, Pass, Pass, NotEvaluated]);
     assert_eq!(spike(19.0), [NotEvaluated, Pass, Pass, NotEvaluated]);
     assert_eq!(spike(21.0), [NotEvaluated, Pass, Suspect, NotEvaluated]);
@@ -360,8 +364,10 @@ fn a_front_passes_or_is_suspect() {
 
 #[test]
 fn tests_that_are_off_say_nothing() {
-    let mut limits = CheckLimits::default();
-    limits.off = vec![Test::GrossRange];
+    let limits = CheckLimits {
+        off: vec![Test::GrossRange],
+        ..CheckLimits::default()
+    };
     let table = screened(&[report(0.0, 240.0, 468.0)], &limits);
     assert_eq!(table.flag(0), Flag::Pass);
     assert_eq!(table.test_flag(0, Test::GrossRange), Flag::NotEvaluated);
@@ -370,7 +376,6 @@ fn tests_that_are_off_say_nothing() {
 /// However a series is cut, each report has the same flags.
 #[test]
 fn cutting_a_series_changes_no_flag() {
-    use gyremesh::check::{StationScreen, screen};
     let mut winds = weather(500, 7.0, 16);
     winds[100].1 += 30.0;
     winds[250].1 += 25.0;
