@@ -95,6 +95,12 @@ impl ReportTable {
     /// - a row that lacks what another has says nothing against it ([`Reason::Emptier`]);
     /// - else the last of the input; the others are [`Reason::Repeated`] if they say the same, [`Reason::Replaced`] if
     ///   not, and the first of these are listed as conflicts.
+    ///
+    /// [`Reason::Joined`]: crate::tally::Reason::Joined
+    /// [`Reason::Corrected`]: crate::tally::Reason::Corrected
+    /// [`Reason::Emptier`]: crate::tally::Reason::Emptier
+    /// [`Reason::Repeated`]: crate::tally::Reason::Repeated
+    /// [`Reason::Replaced`]: crate::tally::Reason::Replaced
     #[must_use]
     pub fn new(parts: &[Rows], stations: usize) -> (Self, Tally) {
         build(parts, stations, &Self::default(), LAST, LAST)

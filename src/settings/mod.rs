@@ -4,6 +4,7 @@
 //! are listed at once, each with its line; an unknown key is a defect.
 
 mod check;
+mod check_keys;
 mod path;
 mod read;
 mod reports;

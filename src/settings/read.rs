@@ -3,7 +3,7 @@
 use std::path::{Path, PathBuf};
 use std::time::Duration;
 
-use super::check::check;
+use super::check_keys::check;
 use super::path::expand_path;
 use super::reports::{reports, text_format};
 use super::section::{Document, Section};
