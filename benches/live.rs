@@ -17,12 +17,12 @@ use std::time::Duration;
 
 use archive::Archive;
 use gyremesh::align::{Aligner, StationSensors, block_times};
-use gyremesh::check::check_range;
+use gyremesh::check::{StationScreen, screen};
 use gyremesh::integral::estimate;
 use gyremesh::polygon::{build_polygons, triangulate};
 use gyremesh::report::{ReportTable, Rows};
 use gyremesh::settings::{
-    AlignMethod, Analysis, PolygonChoice, PolygonLimits, RangeLimits, SensorErrors,
+    AlignMethod, Analysis, CheckLimits, PolygonChoice, PolygonLimits, SensorErrors,
 };
 use gyremesh::station::{Network, Position, Station};
 use gyremesh::time::Time;
@@ -105,9 +105,11 @@ fn main() {
             height_factors: vec![Some(1.0); stations],
         };
         let parts = [rows];
+        let limits = CheckLimits::default();
+        let mut screens = vec![StationScreen::default(); stations];
         let live = milliseconds(|| {
             let (mut table, _) = ReportTable::new(&parts, stations);
-            check_range(&mut table, &RangeLimits::default());
+            screen(&mut table, &mut screens, &[], Some(&limits));
             let aligner = Aligner::new(&table, &analysis, &sensors, i64::MIN..i64::MAX);
             let mut blocks = aligner.grid().blocks(block_times(stations));
             let winds = aligner.align(blocks.remove(0));

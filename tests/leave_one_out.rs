@@ -13,11 +13,11 @@ use std::path::Path;
 
 use common::turbulence::{Class, Layout, Simulation};
 use gyremesh::align::{Aligner, BLOCK_TIMES, StationSensors, WindBlock};
-use gyremesh::check::{StationSums, check_range};
+use gyremesh::check::{StationScreen, screen};
 use gyremesh::pipeline::Setup;
 use gyremesh::report::{ReportTable, SpeedStep, read_reports};
 use gyremesh::settings::{Overrides, SensorErrors};
-use gyremesh::station::Network;
+use gyremesh::station::{Network, Position};
 use gyremesh::structure::{
     BlockSums, NetworkGeometry, Predictor, StructureFunction, StructureSettings, StructureWindow,
     typical_spacing,
@@ -121,7 +121,15 @@ fn real(name: &str) -> (Errors, Network) {
     let setup = Setup::read(&path, &Overrides::default()).unwrap();
     let rows = read_reports(&setup.settings.reports, &setup.network).rows;
     let (mut table, _) = ReportTable::new(&rows, setup.network.len());
-    check_range(&mut table, &setup.settings.range);
+    let positions: Vec<Position> = setup
+        .network
+        .stations()
+        .iter()
+        .map(|s| s.position)
+        .collect();
+    let mut screens = vec![StationScreen::default(); positions.len()];
+    let limits = Some(&setup.settings.check);
+    screen(&mut table, &mut screens, &positions, limits);
     let stations = 0..setup.network.len();
     let count = |s: usize| {
         let reports = table.of_station(s);
@@ -132,9 +140,7 @@ fn real(name: &str) -> (Errors, Network) {
     let reports: Vec<f64> = counts.iter().map(|c| c / most).collect();
     let stated = setup.settings.sensor;
     let errors = stations.map(|s| {
-        let mut sums = StationSums::default();
-        sums.add(&table, s);
-        let found = sums.rounding();
+        let found = screens[s].rounding();
         SensorErrors {
             speed_step: stated
                 .speed_step

@@ -8,11 +8,11 @@ use std::process::{Command, Output, Stdio};
 
 use flate2::Compression;
 use flate2::write::GzEncoder;
-use gyremesh::check::check_range;
+use gyremesh::check::screen_all;
 use gyremesh::pipeline::{Reading, Sources};
 use gyremesh::report::{ReportTable, read_reports};
 use gyremesh::settings::Overrides;
-use gyremesh::station::Network;
+use gyremesh::station::{Network, Position};
 use gyremesh::tally::Reason;
 use gyremesh::units::FromDirection;
 use serde_json::Value;
@@ -73,7 +73,9 @@ impl Site {
         let rows = read_reports(&sources.settings.reports, &sources.network).rows;
         let (mut table, repeats) = ReportTable::new(&rows, sources.network.len());
         assert_eq!(repeats, reading.repeats);
-        check_range(&mut table, &sources.settings.range);
+        let stations = sources.network.stations().iter();
+        let positions: Vec<Position> = stations.map(|s| s.position).collect();
+        screen_all(&mut table, &positions, &sources.settings.check);
         assert!(reading.rows.balances() && reading.repeats.balances());
         Found {
             network: sources.network,

@@ -1,9 +1,9 @@
 //! What the targets that read reports share.
 #![allow(dead_code, reason = "each target uses a part of it")]
 
-use gyremesh::check::{StationSums, check_range};
+use gyremesh::check::{StationScreen, StationSums, screen};
 use gyremesh::report::{ReadOutcome, ReportTable, Rows};
-use gyremesh::settings::RangeLimits;
+use gyremesh::settings::CheckLimits;
 use gyremesh::station::{Network, Position, Station};
 use gyremesh::time::Time;
 use gyremesh::units::{FromDirection, SpeedUnit};
@@ -48,12 +48,13 @@ pub fn balance(outcome: &ReadOutcome, network: &Network) -> ReportTable {
     assert!(repeats.balances(), "{repeats:?}");
     assert_eq!(repeats.received, rows as u64);
     assert_eq!(repeats.passed, table.len() as u64);
-    check_range(&mut table, &RangeLimits::default());
+    let mut screens = vec![StationScreen::default(); network.len()];
+    screen(&mut table, &mut screens, &[], Some(&CheckLimits::default()));
     let mut reports = 0;
     for station in 0..network.len() {
         let mut sums = StationSums::default();
         sums.add(&table, station);
-        reports += sums.reading().reports;
+        reports += sums.reading(screens[station].rounding()).reports;
         let of_station = table.of_station(station);
         assert!(table.times()[of_station.clone()].is_sorted());
         for i in of_station {

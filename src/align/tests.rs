@@ -233,7 +233,7 @@ fn a_cut_between_windows_changes_nothing() {
             let first = table(&first);
             #[expect(clippy::cast_possible_truncation, reason = "small test numbers")]
             let from = Time::from_micros(carried as i64 * MINUTE);
-            let (second, _) = ReportTable::following(&[rows(&more)], 1, &first, from);
+            let (second, _) = ReportTable::following(&[rows(&more)], 1, &first, from, from);
             let mut cut_books = AlignBooks::default();
             let one = Aligner::new(&first, &analysis, &sensors, i64::MIN..cut);
             let mut u = one.align(one.grid().blocks(BLOCK_TIMES).concat()).u;

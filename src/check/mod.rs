@@ -1,53 +1,31 @@
-//! Checks of the reports. A check removes nothing: it raises a flag, and the alignment decides.
+//! Checks of the reports, station by station, at their own times. A check removes nothing: it raises a flag, and the
+//! alignment decides.
+//!
+//! The tests are those of the IOOS QARTOD Manual for Real-Time Quality Control of Wind Data, with WMO's guidance for
+//! automatic stations (Zahumenský 2004) beside them. Each report keeps the flag of each test ([`TestFlags`]); its own
+//! flag is the worst of them. What a test must know of earlier reports it keeps itself ([`StationScreen`]), so no flag
+//! depends on how the reports were cut into windows.
 
+mod agreement;
+mod attenuated;
+mod climatology;
+mod flag;
+mod gap;
+mod location;
+mod persistence;
+mod point;
 mod range;
+mod rate;
+mod run;
+mod screen;
+mod spike;
+mod steps;
+mod stuck;
 mod summary;
+mod witness;
 
-use serde::Serialize;
-
-pub use range::check_range;
+pub use flag::{Flag, Test, TestFlags};
+pub use range::range_flag;
+pub use screen::{StationScreen, screen, screen_all};
 pub use summary::{StationReading, StationSums};
-
-/// Quality flag with the values of IOOS QARTOD.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize)]
-#[serde(into = "u8")]
-#[repr(u8)]
-pub enum Flag {
-    // In the order of severity: a test that ran says more than one that did not.
-    /// 2: not evaluated.
-    NotEvaluated,
-    /// 1: passed what was checked.
-    Pass,
-    /// 3: suspect, or of high interest.
-    Suspect,
-    /// 4: failed.
-    Fail,
-    /// 9: missing.
-    Missing,
-}
-
-impl Flag {
-    /// The QARTOD value.
-    #[must_use]
-    pub const fn value(self) -> u8 {
-        match self {
-            Self::Pass => 1,
-            Self::NotEvaluated => 2,
-            Self::Suspect => 3,
-            Self::Fail => 4,
-            Self::Missing => 9,
-        }
-    }
-
-    /// The worse of two flags.
-    #[must_use]
-    pub fn worst(self, other: Self) -> Self {
-        self.max(other)
-    }
-}
-
-impl From<Flag> for u8 {
-    fn from(flag: Flag) -> Self {
-        flag.value()
-    }
-}
+pub use witness::{Explained, Finding, Listener};

@@ -1,27 +1,39 @@
 //! Gross range.
 
-use crate::check::Flag;
-use crate::report::ReportTable;
+use super::witness::Witness;
+use super::{Flag, Test};
 use crate::settings::RangeLimits;
 
-/// Flags every new report: missing where there is no speed, fail or suspect beyond the limits, else pass.
+/// Missing where there is no speed, fail or suspect beyond the limits, else pass. Directions outside 0 to 360 degrees
+/// are unreadable and do not come here.
 ///
 /// - **Reference**: IOOS QARTOD, Manual for Real-Time Quality Control of Wind Data, test 4 (gross range).
-pub fn check_range(table: &mut ReportTable, limits: &RangeLimits) {
-    for station in 0..table.stations() {
-        for i in table.fresh(station) {
-            table.raise_flag(i, range_flag(table.speed(i), limits));
-        }
-    }
-}
-
-fn range_flag(speed: Option<f64>, limits: &RangeLimits) -> Flag {
+#[inline]
+#[must_use]
+pub fn range_flag(speed: Option<f64>, limits: &RangeLimits) -> Flag {
     match speed {
         None => Flag::Missing,
         Some(speed) if speed > limits.speed_fail => Flag::Fail,
         Some(speed) if speed > limits.speed_suspect => Flag::Suspect,
         Some(_) => Flag::Pass,
     }
+}
+
+/// Tells what the test found.
+#[inline]
+pub(super) fn tell_range<W: Witness>(
+    speed: Option<f64>,
+    limits: &RangeLimits,
+    flag: Flag,
+    witness: &mut W,
+) {
+    witness.tell(Test::GrossRange, flag, || match speed {
+        None => "there is no speed".into(),
+        Some(speed) => format!(
+            "{speed:.1} m/s; above {:.0} m/s is suspect, above {:.0} m/s fails",
+            limits.speed_suspect, limits.speed_fail
+        ),
+    });
 }
 
 #[cfg(test)]

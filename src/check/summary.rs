@@ -2,9 +2,9 @@
 
 use std::collections::BTreeMap;
 
-use super::Flag;
+use super::{Flag, Test};
 use crate::align::vector::VectorMean;
-use crate::report::{Content, ReportTable, Rounding, RoundingFinder};
+use crate::report::{Content, ReportTable, Rounding};
 use crate::time::Time;
 use crate::units::Wind;
 
@@ -21,10 +21,14 @@ pub struct StationReading {
     pub no_direction: u64,
     /// Without a speed.
     pub no_speed: u64,
+    /// Passed all tests that could be made.
+    pub passed: u64,
     /// Flagged suspect.
     pub suspect: u64,
     /// Flagged fail.
     pub failed: u64,
+    /// For each test the reports that it found suspect and those that failed it (for gaps: before which one is).
+    pub by_test: [(u64, u64); Test::ALL.len()],
     /// First and last report.
     pub period: Option<(Time, Time)>,
     /// The usual time between reports, μs.
@@ -48,7 +52,21 @@ pub struct StationSums {
     counts: StationReading,
     mean: VectorMean,
     steps: Steps,
-    rounding: RoundingFinder,
+}
+
+impl StationReading {
+    /// Share of the reports that passed, were suspect and failed.
+    #[must_use]
+    pub fn shares(&self) -> [f64; 3] {
+        let all = self.reports.max(1) as f64;
+        [self.passed, self.suspect, self.failed].map(|n| n as f64 / all)
+    }
+
+    /// Suspect and failed reports of a test.
+    #[must_use]
+    pub fn of_test(&self, test: Test) -> (u64, u64) {
+        self.by_test[test as usize]
+    }
 }
 
 impl StationSums {
@@ -65,21 +83,25 @@ impl StationSums {
                 Content::Nothing => counts.no_speed += 1,
             }
             match table.flag(i) {
+                Flag::Pass => counts.passed += 1,
                 Flag::Suspect => counts.suspect += 1,
                 Flag::Fail => counts.failed += 1,
-                _ => {}
+                Flag::NotEvaluated | Flag::Missing => {}
+            }
+            if table.tests(i).any_raised() {
+                for (test, sums) in Test::ALL.into_iter().zip(&mut counts.by_test) {
+                    match table.tests(i).get(test) {
+                        Flag::Suspect => sums.0 += 1,
+                        Flag::Fail | Flag::Missing => sums.1 += 1,
+                        _ => {}
+                    }
+                }
             }
             let is_wind = matches!(table.content(i), Content::Wind | Content::Calm);
             if is_wind && table.flag(i) != Flag::Fail {
                 self.mean
                     .add(table.winds()[i], table.speed(i).unwrap_or(0.0));
             }
-        }
-        let mut of_interest = reports.clone();
-        while self.rounding.wants_more()
-            && let Some(i) = of_interest.next()
-        {
-            self.rounding.add(table.speed(i), table.direction(i));
         }
         for &time in &table.times()[reports] {
             let (first, last) = counts.period.get_or_insert((time, time));
@@ -88,17 +110,11 @@ impl StationSums {
         }
     }
 
-    /// Steps of the station's reports, as far as they are known by now.
+    /// What the reports come to, with the steps that were found in them.
     #[must_use]
-    pub fn rounding(&self) -> Rounding {
-        self.rounding.found()
-    }
-
-    /// What the reports come to.
-    #[must_use]
-    pub fn reading(&self) -> StationReading {
+    pub fn reading(&self, rounding: Rounding) -> StationReading {
         let mut reading = StationReading {
-            rounding: self.rounding.found(),
+            rounding,
             mean_speed: self.mean.scalar_mean_speed(),
             vector_mean: self.mean.wind(),
             interval: self.steps.usual(),

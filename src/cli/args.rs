@@ -47,9 +47,18 @@ pub enum Command {
 const CHECK_HELP: &str = "\
 Reads:   settings, station list, report files.
 Prints:  for each file the rows, passed on and set aside by reason; for each station what its reports hold, first and \
-last report, the usual time between them, gaps, and the steps to which it rounds; repeats that disagree.
+last report, the usual time between them, gaps, and the steps to which it rounds; repeats that disagree; how many \
+reports each test found suspect or failed, and the worst stations.
+Writes:  with --out: reports_flagged.csv, every report by time with its own flag, the flag of each test, and its line.
 
-Example: gyremesh check networks/ostrin/network.toml";
+Flags are those of IOOS QARTOD: 1 pass, 2 not evaluated, 3 suspect, 4 fail, 9 missing. Tests: timing_gap (9: the report \
+before is missing; not in the report's own flag), location, gross_range, climatology, spike, rate_of_change, flat_line, \
+stuck_vane, frozen_anemometer, persistence, agreement, attenuated_signal. A report that fails is left out of estimates, \
+a suspect one is used and flagged. The last report of a station has no successor: it is not tested for a spike. \
+`gyremesh estimate --help` lists the limits.
+
+Examples: gyremesh check networks/ostrin/network.toml
+          gyremesh check networks/ostrin/network.toml --explain OS36 --at 2031-06-14T12:00:00Z";
 
 const POLYGONS_HELP: &str = "\
 Reads:   settings, station list.
@@ -100,7 +109,20 @@ label: start, middle or end of the window [end], averaging
               height (common height), profile: log or power [log], exponent [1/7]; level, such as 850 hPa
   [errors]    parts: all or instrument [all]; false_discovery_rate [0.05]; window [24 h] and memory [1 h] of the
               structure function; prior_difference [4.5 m2/s2], prior_distance [30 km], prior_exponent [2/3]
-  [check]     speed_suspect [75 m/s], speed_fail [100 m/s]
+  [check]     speed_suspect [75 m/s], speed_fail [100 m/s], starting_speed [sensor.calm_below], displacement of \
+reports with a position: a length or any [20 km], gap: reports further apart do not follow each other [70 min], off: \
+tests not to make []
+  [[check.climatology]]       months (1 to 12), speed_least, speed_most
+  [check.spike]               suspect [20 m/s], fail [40 m/s]
+  [check.rate_of_change]      deviations [3], period [8 h], least [10 m/s], least_changes [6]
+  [check.flat_line]           speed [0 m/s], direction [0.05 degrees]: what counts as the same; and
+              suspect_reports [3], suspect_after [20 min], fail_reports [5], fail_after [30 min]; for stations that \
+round coarsely coarse_suspect_after [6 h], coarse_fail_after [12 h], longer for steps beyond 10 degrees
+  [check.stuck_vane]          varies [0.5 m/s], and the same keys [6, 3 h, 12, 6 h, 18 h, 48 h]
+  [check.frozen_anemometer]   varies [10 degrees], and the same keys [6, 3 h, 12, 6 h, 12 h, 24 h]
+  [check.persistence]         speed [0.5 m/s], direction [5 degrees], period [60 min], interval [2 min], exempt_below [1 m/s]
+  [check.agreement]           gust_below [0.5 m/s], calm_direction: true to doubt it [false]
+  [check.attenuated_signal]   period [12 h], least_range [0.5 m/s], usual_times [4], calm_after [48 h]
   [polygons]  triangles [true]
   [[polygons.ring]]    name, stations in order
   [[polygons.region]]  name, and polygons, triangles_of (stations) or all_triangles = true
@@ -119,6 +141,18 @@ pub struct CheckArgs {
     /// Print JSON
     #[arg(long)]
     pub json: bool,
+    /// Write reports_flagged.csv, all reports with the flag of each test, into this folder
+    #[arg(long, value_name = "DIR")]
+    pub out: Option<PathBuf>,
+    /// Print every test of a station's reports at, or nearest to, the time of --at, with its numbers
+    #[arg(long, value_name = "STATION", requires = "at")]
+    pub explain: Option<String>,
+    /// Time of the reports to explain, RFC 3339
+    #[arg(long, value_name = "TIME", value_parser = Time::parse_rfc3339, requires = "explain")]
+    pub at: Option<Time>,
+    /// Take all reports as they are, without checks
+    #[arg(long)]
+    pub no_screen: bool,
     /// Keep the reports, once read, in this file, and take them from it as long as neither they nor the settings change
     #[arg(long, value_name = "FILE")]
     pub cache: Option<PathBuf>,
@@ -271,6 +305,7 @@ impl From<&CheckArgs> for Overrides {
             reports: args.reports.clone(),
             memory: args.memory,
             cache: args.cache.clone(),
+            no_screen: args.no_screen,
             ..Self::default()
         }
     }

@@ -6,7 +6,7 @@ use std::path::Path;
 use serde_json::Value;
 
 use super::args::PolygonsArgs;
-use super::message::{cut, wrapped};
+use super::message::{WIDTH, cut, wrapped};
 use crate::align::instrument_covariance;
 use crate::error::{Error, Place, Problem};
 use crate::integral::{ExpectedErrors, Sampling, expected_errors};
@@ -93,7 +93,7 @@ impl Expectation {
             f.site_variance.sqrt(),
             self.origin
         );
-        let _ = writeln!(out, "{}\n", wrapped(&assumed));
+        let _ = writeln!(out, "{}\n", wrapped(&assumed, WIDTH));
         let _ = writeln!(
             out,
             "{:<23} {:>9} {:>7} {:>8} {:>8} {:>9} {:>9}",
@@ -120,7 +120,12 @@ impl Expectation {
         let note = "sensors: with better sensors and sites this part shrinks; unseen: the wind between the stations, \
                     with stations nearer to each other. A value counts as different from zero beyond about twice the \
                     last columns.";
-        let _ = writeln!(out, "\n{}\n{}", wrapped(note), wrapped(CAUTION));
+        let _ = writeln!(
+            out,
+            "\n{}\n{}",
+            wrapped(note, WIDTH),
+            wrapped(CAUTION, WIDTH)
+        );
         out
     }
 

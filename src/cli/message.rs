@@ -9,7 +9,7 @@ use crate::pipeline::{Outcome, Setup};
 use crate::polygon::{Exclusion, StationPolygon};
 
 /// Width of everything printed.
-const WIDTH: usize = 80;
+pub(super) const WIDTH: usize = 80;
 /// Stations named as those that reported least.
 const LEAST: usize = 3;
 
@@ -159,9 +159,12 @@ pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
     let _ = writeln!(
         out,
         "\n{}",
-        wrapped(&format!("Errors: {}.", error_bars(&setup.settings.errors)))
+        wrapped(
+            &format!("Errors: {}.", error_bars(&setup.settings.errors)),
+            WIDTH
+        )
     );
-    let _ = writeln!(out, "{}", wrapped(CAUTION));
+    let _ = writeln!(out, "{}", wrapped(CAUTION, WIDTH));
     let names: Vec<String> = files
         .iter()
         .filter_map(|f| f.file_name().map(|n| n.to_string_lossy().into_owned()))
@@ -251,12 +254,12 @@ fn least_reporting(out: &mut String, setup: &Setup, outcome: &Outcome) {
 }
 
 /// Text in lines of at most the width.
-pub(super) fn wrapped(text: &str) -> String {
+pub(super) fn wrapped(text: &str, most: usize) -> String {
     let mut out = String::new();
     let mut width = 0;
     for word in text.split_whitespace() {
         let length = word.chars().count();
-        if width > 0 && width + 1 + length > WIDTH {
+        if width > 0 && width + 1 + length > most {
             out.push('\n');
             width = 0;
         } else if width > 0 {

@@ -4,6 +4,7 @@ pub mod args;
 mod expect;
 mod message;
 mod reading;
+mod screening;
 
 use std::io::{self, Write};
 use std::path::{Path, PathBuf};
@@ -13,14 +14,15 @@ use indicatif::{ProgressBar, ProgressStyle};
 
 use self::args::{Args, CheckArgs, Command, EstimateArgs, Format, PolygonsArgs};
 use self::expect::Expectation;
-use crate::error::{Error, ErrorKind};
+use crate::error::{Error, ErrorKind, nearest_name};
 use crate::output::{
-    Formats, OutputSet, mesh_csv, mesh_geojson, reading_json, series, stations_csv, structure_csv,
-    summary_csv, summary_json,
+    FlaggedRows, Formats, OutputSet, mesh_csv, mesh_geojson, reading_json, series, stations_csv,
+    structure_csv, summary_csv, summary_json,
 };
 use crate::pipeline::{self, Reading, Setup, Sources};
 use crate::report::InputOrder;
 use crate::settings::Overrides;
+use crate::station::Network;
 
 /// How a run ended; the value is the exit status.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -76,17 +78,55 @@ fn print(text: &str) -> Result<(), Error> {
 fn check(args: &CheckArgs) -> Result<Status, Error> {
     use_threads(args.threads);
     let sources = Sources::read(&args.network, &Overrides::from(args))?;
-    let reading = Reading::of(&sources.settings, &sources.network)?;
+    let (settings, network) = (&sources.settings, &sources.network);
+    let explain = match (&args.explain, args.at) {
+        (Some(id), Some(at)) => Some((station(network, id)?, at)),
+        _ => None,
+    };
+    let rows = FlaggedRows::new(settings, network);
+    let read = |order: InputOrder| {
+        let mut set = match &args.out {
+            Some(folder) => Some(OutputSet::new(folder)?),
+            None => None,
+        };
+        let mut file = None;
+        let reading = Reading::with(settings, network, order, explain, |window| {
+            let Some(set) = &mut set else {
+                return Ok(());
+            };
+            let file = match file {
+                Some(file) => file,
+                None => {
+                    let number = set.create("reports_flagged.csv")?;
+                    set.write(number, FlaggedRows::header().as_bytes())?;
+                    *file.insert(number)
+                }
+            };
+            let pieces = rows.encode(&window.table);
+            pieces.iter().try_for_each(|piece| set.write(file, piece))
+        })?;
+        Ok::<_, Error>((reading, set))
+    };
+    let (reading, set) = match read(InputOrder::first_try(&settings.reports)) {
+        Err(error) if error.kind() == ErrorKind::Order => read(InputOrder::Any)?,
+        result => result?,
+    };
+    if let Some(set) = set {
+        set.commit()?;
+    }
     for warning in sources.warnings.iter().chain(&reading.warnings) {
         message::say("warning", &warning.to_string());
     }
     for failure in &reading.failures {
         message::say("warning", &failure.to_string());
     }
-    print(&if args.json {
-        reading_json(&sources.settings, &sources.network, &reading)
-    } else {
-        reading::reading_text(&sources.settings, &sources.network, &reading)
+    print(&match explain {
+        _ if args.json => reading_json(settings, network, &reading),
+        Some((s, _)) => {
+            let id = &network.stations()[s].id; // a station of the network
+            screening::explained_text(id, &reading.explained, &reading)
+        }
+        None => reading::reading_text(settings, network, &reading),
     })?;
     Ok(if reading.failures.len() == reading.files.len() {
         Status::NotDone
@@ -94,6 +134,16 @@ fn check(args: &CheckArgs) -> Result<Status, Error> {
         Status::Complete
     } else {
         Status::SomeInputUnusable
+    })
+}
+
+/// The station of an identifier.
+fn station(network: &Network, id: &str) -> Result<usize, Error> {
+    network.find(id).ok_or_else(|| {
+        let ids = network.stations().iter().map(|s| s.id.as_str());
+        let near = nearest_name(id, ids);
+        let meant = near.map_or_else(String::new, |near| format!("; is `{near}` meant?"));
+        Error::Network(format!("there is no station `{id}`{meant}"))
     })
 }
 

@@ -3,6 +3,7 @@
 use std::fmt::Write as _;
 
 use super::message::cut;
+use super::screening::screening_text;
 use crate::pipeline::Reading;
 use crate::settings::Settings;
 use crate::station::Network;
@@ -47,6 +48,9 @@ pub(super) fn reading_text(settings: &Settings, network: &Network, reading: &Rea
     reasons(&mut out, &reading.repeats);
     contents(&mut out, network, reading);
     timing(&mut out, network, reading);
+    if settings.screen {
+        screening_text(&mut out, network, reading);
+    }
     let conflicts = &reading.conflicts;
     if !conflicts.is_empty() {
         let _ = writeln!(
@@ -167,7 +171,7 @@ fn interval(micros: i64) -> String {
 }
 
 /// A file name whose beginning is cut off if it is too long.
-fn shortened(name: &str, width: usize) -> String {
+pub(super) fn shortened(name: &str, width: usize) -> String {
     let length = name.chars().count();
     if length <= width {
         return name.to_string();

@@ -172,7 +172,8 @@ fn optional(value: Option<f64>) -> String {
 pub fn stations_csv(setup: &Setup, outcome: &Outcome) -> String {
     let mut out = String::from(
         "station,name,latitude,longitude,elevation_m,reports,calm,no_direction,no_speed,suspect,failed,used,values,\
-         availability,first_report,last_report,mean_speed,vector_mean_speed,vector_mean_direction,interval_s,gaps,direction_step_deg,speed_step,speed_step_unit,height_factor\n",
+         availability,first_report,last_report,mean_speed,vector_mean_speed,vector_mean_direction,interval_s,gaps,direction_step_deg,speed_step,speed_step_unit,height_factor,\
+         pass_share,suspect_share,fail_share\n",
     );
     let times = outcome.period.times.max(1) as f64;
     for (k, station) in setup.network.stations().iter().enumerate() {
@@ -182,6 +183,8 @@ pub fn stations_csv(setup: &Setup, outcome: &Outcome) -> String {
             .map_or_else(Default::default, |(a, b)| (a.to_string(), b.to_string()));
         let mean = reading.vector_mean;
         let speed_step = reading.rounding.speed;
+        let [pass, suspect, fail] = reading.shares();
+        let share = |share: f64| optional((reading.reports > 0).then_some(share));
         let fields = [
             quoted(&station.id),
             quoted(&station.name),
@@ -211,6 +214,9 @@ pub fn stations_csv(setup: &Setup, outcome: &Outcome) -> String {
             optional(speed_step.map(|s| s.count)),
             speed_step.map_or("", |s| s.unit.symbol()).to_string(),
             optional(outcome.height_factors[k]),
+            share(pass),
+            share(suspect),
+            share(fail),
         ];
         out.push_str(&fields.join(","));
         out.push('\n');

@@ -3,6 +3,7 @@
 mod csv;
 mod file;
 mod fits;
+mod flagged;
 mod geojson;
 #[cfg(feature = "parquet")]
 mod parquet;
@@ -16,6 +17,7 @@ mod template;
 pub(crate) use csv::quoted;
 pub use csv::{PolygonRows, mesh_csv, stations_csv, summary_csv};
 pub use file::OutputSet;
+pub use flagged::FlaggedRows;
 pub use geojson::{mesh_geojson, outline_geometry};
 pub use reading::reading_json;
 pub use series::{Formats, SeriesEncoder, SeriesFiles, series};

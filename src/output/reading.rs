@@ -2,6 +2,7 @@
 
 use serde_json::{Value, json};
 
+use crate::check::{StationReading, Test};
 use crate::pipeline::Reading;
 use crate::settings::Settings;
 use crate::station::Network;
@@ -26,8 +27,10 @@ pub fn reading_json(settings: &Settings, network: &Network, reading: &Reading) -
                 "calm": s.calm,
                 "no_direction": s.no_direction,
                 "no_speed": s.no_speed,
+                "passed": s.passed,
                 "suspect": s.suspect,
                 "failed": s.failed,
+                "tests": tests(s),
                 "first_report": s.period.map(|p| p.0.to_string()),
                 "last_report": s.period.map(|p| p.1.to_string()),
                 "interval_s": s.interval.map(|i| i as f64 * 1e-6),
@@ -35,6 +38,19 @@ pub fn reading_json(settings: &Settings, network: &Network, reading: &Reading) -
                 "missing_in_gaps": s.missing_in_gaps,
                 "direction_step_deg": s.rounding.direction,
                 "speed_step": s.rounding.speed,
+            })
+        })
+        .collect();
+    let explained: Vec<Value> = reading
+        .explained
+        .iter()
+        .map(|e| {
+            json!({
+                "time": e.time.to_string(),
+                "report": e.report,
+                "line": e.origin.1,
+                "flag": e.flag,
+                "tests": e.findings,
             })
         })
         .collect();
@@ -66,6 +82,7 @@ pub fn reading_json(settings: &Settings, network: &Network, reading: &Reading) -
         "files": files,
         "repeats": reading.repeats,
         "stations": stations,
+        "explained": explained,
         "conflicts": conflicts,
         "failures": failures,
         "warnings": warnings,
@@ -73,4 +90,17 @@ pub fn reading_json(settings: &Settings, network: &Network, reading: &Reading) -
     let mut text = format!("{summary:#}");
     text.push('\n');
     text
+}
+
+/// For each test that raised a flag, the reports that it found suspect and those that failed it.
+fn tests(station: &StationReading) -> Value {
+    let raised = Test::ALL.into_iter().filter_map(|test| {
+        let (suspect, failed) = station.of_test(test);
+        let counts = match test {
+            Test::TimingGap => json!({ "missing": failed }),
+            _ => json!({ "suspect": suspect, "failed": failed }),
+        };
+        (suspect + failed > 0).then(|| (test.name().to_string(), counts))
+    });
+    Value::Object(raised.collect())
 }

@@ -181,7 +181,7 @@ fn settings(settings: &Settings) -> Value {
             "level": analysis.level,
         },
         "errors": settings.errors,
-        "check": settings.screen.then_some(settings.range),
+        "check": settings.screen.then_some(&settings.check),
         "polygons": {
             "triangles": settings.polygons.triangles,
             "rings": rings,

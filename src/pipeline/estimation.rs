@@ -74,7 +74,7 @@ impl<'a> Estimation<'a> {
         self.sensors.errors = sensor_errors(&setup.settings.sensor, &window.rounding);
         let analysis = &setup.settings.analysis;
         let aligner = Aligner::new(table, analysis, &self.sensors, window.multiples.clone());
-        let handed_on = (0..stations).flat_map(|s| table.of_station(s).start..table.fresh(s).start);
+        let handed_on = (0..stations).flat_map(|s| table.carried(s));
         let used = handed_on.zip(&self.carried).filter(|&(_, &used)| used);
         aligner.mark_used(used.map(|(i, _)| i));
 

@@ -1,12 +1,13 @@
 //! What came of reading and checking the reports.
 
-use super::Windows;
-use crate::check::StationReading;
+use super::{Window, Windows};
+use crate::check::{Explained, StationReading};
 use crate::error::{Error, ErrorKind};
 use crate::report::{Conflict, FileOutcome, InputOrder, ReportFiles};
 use crate::settings::Settings;
 use crate::station::Network;
 use crate::tally::Tally;
+use crate::time::Time;
 use crate::warning::Warning;
 
 /// The books of the reports: read, sorted and checked.
@@ -22,6 +23,8 @@ pub struct Reading {
     pub conflicts: Vec<Conflict>,
     /// What each station sent.
     pub stations: Vec<StationReading>,
+    /// The tests of the reports that were to be explained.
+    pub explained: Vec<Explained>,
     /// What the user should know.
     pub warnings: Vec<Warning>,
     /// Files that could not be read.
@@ -34,21 +37,37 @@ impl Reading {
     /// # Errors
     /// The disk cannot take what does not fit into memory.
     pub fn of(settings: &Settings, network: &Network) -> Result<Self, Error> {
-        let files = ReportFiles::new(&settings.reports, network);
-        let all = |order: InputOrder| -> Result<Self, Error> {
-            let mut windows = Windows::new(&files, settings, order)?;
-            let mut window = None;
-            loop {
-                match windows.after(window.as_ref())? {
-                    Some(next) => window = Some(next),
-                    None => return Ok(windows.reading()),
-                }
-            }
-        };
+        let all = |order| Self::with(settings, network, order, None, |_| Ok(()));
         match all(InputOrder::first_try(&settings.reports)) {
             Err(error) if error.kind() == ErrorKind::Order => all(InputOrder::Any),
             result => result,
         }
+    }
+
+    /// Reads and checks the reports in an order; `explain` is the station and time whose reports are to be explained,
+    /// and `each` is given every window.
+    ///
+    /// # Errors
+    /// As [`Windows::after`]: reports that are not in the order that they should have ([`Error::NotInOrder`]), for one;
+    /// whatever `each` returns.
+    pub fn with(
+        settings: &Settings,
+        network: &Network,
+        order: InputOrder,
+        explain: Option<(usize, Time)>,
+        mut each: impl FnMut(&Window) -> Result<(), Error>,
+    ) -> Result<Self, Error> {
+        let files = ReportFiles::new(&settings.reports, network);
+        let mut windows = Windows::new(&files, settings, order)?;
+        if let Some((station, at)) = explain {
+            windows.listen(station, at);
+        }
+        let mut window = None;
+        while let Some(next) = windows.after(window.as_ref())? {
+            each(&next)?;
+            window = Some(next);
+        }
+        Ok(windows.reading())
     }
 
     /// True if all input was usable.

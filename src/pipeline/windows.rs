@@ -6,12 +6,13 @@ use rayon::prelude::*;
 
 use super::Reading;
 use crate::align::block_times;
-use crate::check::{StationSums, check_range};
+use crate::check::{Listener, StationScreen, StationSums, screen};
 use crate::error::Error;
 use crate::report::{
     CONFLICTS_KEPT, Conflict, InputOrder, OrderedReports, ReportFiles, ReportTable, Rounding, Rows,
 };
 use crate::settings::{AlignMethod, Analysis, Settings};
+use crate::station::Position;
 use crate::tally::Tally;
 use crate::time::{Time, micros_of};
 
@@ -46,6 +47,8 @@ pub struct Windows<'f> {
     times: i64,
     pending: Vec<Rows>,
     ended: bool,
+    positions: Vec<Position>,
+    screens: Vec<StationScreen>,
     sums: Vec<StationSums>,
     repeats: Tally,
     conflicts: Vec<Conflict>,
@@ -73,6 +76,13 @@ impl<'f> Windows<'f> {
             times: i64::try_from(times).unwrap_or(i64::MAX),
             pending: Vec::new(),
             ended: false,
+            positions: files
+                .network()
+                .stations()
+                .iter()
+                .map(|s| s.position)
+                .collect(),
+            screens: vec![StationScreen::default(); stations],
             sums: vec![StationSums::default(); stations],
             repeats: Tally::default(),
             conflicts: Vec::new(),
@@ -88,6 +98,12 @@ impl<'f> Windows<'f> {
         let analysis = &self.settings.analysis;
         let interval = micros_of(analysis.interval).max(1);
         let (back, ahead) = reach(analysis);
+        // The tests look at the next report too: what stands so far after a report that is used must be there.
+        let sight = if self.settings.screen {
+            self.settings.check.gap.saturating_add(1)
+        } else {
+            0
+        };
         let length = self.times.saturating_mul(interval);
         let carried_from = match before {
             Some(Window {
@@ -105,7 +121,7 @@ impl<'f> Windows<'f> {
             let number = self.number(before, length, ahead);
             let ready = match (number, self.reports.reached()) {
                 (Some(number), Some(reached)) => {
-                    let cut = end_of(number, length).saturating_add(ahead);
+                    let cut = end_of(number, length).saturating_add(ahead + sight);
                     reached.micros() >= cut.saturating_add(slack)
                 }
                 _ => false,
@@ -114,7 +130,7 @@ impl<'f> Windows<'f> {
                 break number;
             }
             let until = number.map_or(i64::MAX, |number| {
-                end_of(number, length).saturating_add(ahead + slack)
+                end_of(number, length).saturating_add(ahead + sight + slack)
             });
             self.read(before, Time::from_micros(until))?;
         };
@@ -122,7 +138,8 @@ impl<'f> Windows<'f> {
             return Ok(None);
         };
         let end = end_of(number, length);
-        let cut = Time::from_micros(end.saturating_add(ahead));
+        let judged_until = Time::from_micros(end.saturating_add(ahead));
+        let cut = judged_until.plus_micros(sight);
         let fresh = self.take_before(cut);
         let nothing = ReportTable::default();
         let (mut table, repeats) = ReportTable::following(
@@ -130,13 +147,13 @@ impl<'f> Windows<'f> {
             self.sums.len(),
             before.map_or(&nothing, |window| &window.table),
             carried_from.unwrap_or_default(),
+            judged_until,
         );
         self.repeats += &repeats;
         self.conflicts.extend_from_slice(table.conflicts());
         self.conflicts.truncate(CONFLICTS_KEPT);
-        if self.settings.screen {
-            check_range(&mut table, &self.settings.range);
-        }
+        let limits = self.settings.screen.then_some(&self.settings.check);
+        screen(&mut table, &mut self.screens, &self.positions, limits);
         self.sums
             .par_iter_mut()
             .enumerate()
@@ -148,10 +165,17 @@ impl<'f> Windows<'f> {
         Ok(Some(Window {
             table,
             multiples: number * self.times..(number + 1) * self.times,
-            rounding: self.sums.iter().map(StationSums::rounding).collect(),
+            rounding: self.screens.iter().map(StationScreen::rounding).collect(),
             carried_from: (!is_last).then_some(keep_from),
             closed_until: cut,
         }))
+    }
+
+    /// Explains the tests of a station's reports at, or nearest to, a time.
+    pub fn listen(&mut self, station: usize, at: Time) {
+        if let Some(screen) = self.screens.get_mut(station) {
+            screen.listen(Listener::new(at));
+        }
     }
 
     /// The number of the window after `before`, as far as it is known: empty ones are left out.
@@ -225,12 +249,16 @@ impl<'f> Windows<'f> {
     #[must_use]
     pub fn reading(self) -> Reading {
         let outcome = self.reports.outcome();
+        let stations = self.sums.iter().zip(&self.screens);
         Reading {
             rows: outcome.tally,
             files: outcome.files,
             repeats: self.repeats,
             conflicts: self.conflicts,
-            stations: self.sums.iter().map(StationSums::reading).collect(),
+            stations: stations
+                .map(|(sums, screen)| sums.reading(screen.rounding()))
+                .collect(),
+            explained: self.screens.iter().flat_map(StationScreen::heard).collect(),
             warnings: outcome.warnings,
             failures: outcome.failures,
         }

@@ -5,7 +5,7 @@ use std::ops::Range;
 
 use super::rows::{Packed, Rows, kind};
 use super::table::{Conflict, ReportTable, TableColumns};
-use crate::check::Flag;
+use crate::check::{Flag, TestFlags};
 use crate::tally::{Reason, Tally};
 use crate::time::Time;
 use crate::units::{FromDirection, Wind};
@@ -20,12 +20,13 @@ struct At {
     row: u32,
 }
 
-/// Builds the table of `parts` after the reports of `before` from `keep_from` on.
+/// Builds the table of `parts` after the reports of `before` from `keep_from` on, to be judged until `judged_until`.
 pub(super) fn build(
     parts: &[Rows],
     stations: usize,
     before: &ReportTable,
     keep_from: Time,
+    judged_until: Time,
 ) -> (ReportTable, Tally) {
     let carried: Vec<Range<usize>> = (0..stations)
         .map(|s| {
@@ -47,10 +48,12 @@ pub(super) fn build(
         && parts
             .iter()
             .all(|p| p.gust.is_empty() && p.moving.is_empty() && p.correction.is_empty());
-    plain
+    let (mut table, tally) = plain
         .then(|| straight(parts, &counts, before, &carried))
         .flatten()
-        .unwrap_or_else(|| sorted(parts, &counts, before, &carried))
+        .unwrap_or_else(|| sorted(parts, &counts, before, &carried));
+    table.judged = before.judged.end..judged_until;
+    (table, tally)
 }
 
 /// The table of rows that have the order of time at every station, each time once: every value goes straight to its
@@ -62,10 +65,10 @@ fn straight(
     carried: &[Range<usize>],
 ) -> Option<(ReportTable, Tally)> {
     let mut starts = vec![0];
-    let mut fresh = Vec::with_capacity(counts.len());
+    let mut added = Vec::with_capacity(counts.len());
     let mut total = 0;
     for (count, carried) in counts.iter().zip(carried) {
-        fresh.push(total + carried.len());
+        added.push(total + carried.len());
         total += carried.len() + count;
         starts.push(total);
     }
@@ -76,6 +79,7 @@ fn straight(
         kind: vec![0; total],
         origin: vec![(0, 0); total],
         flag: vec![Flag::NotEvaluated; total],
+        tests: vec![TestFlags::default(); total],
         ..TableColumns::default()
     };
     for (&start, carried) in starts.iter().zip(carried) {
@@ -86,9 +90,10 @@ fn straight(
         out.wind[to.clone()].copy_from_slice(&columns.wind[from.clone()]);
         out.kind[to.clone()].copy_from_slice(&columns.kind[from.clone()]);
         out.origin[to.clone()].copy_from_slice(&columns.origin[from.clone()]);
-        out.flag[to].copy_from_slice(&columns.flag[from]);
+        out.flag[to.clone()].copy_from_slice(&columns.flag[from.clone()]);
+        out.tests[to].copy_from_slice(&columns.tests[from]);
     }
-    let mut next: Vec<(usize, Time)> = fresh
+    let mut next: Vec<(usize, Time)> = added
         .iter()
         .map(|&k| (k, Time::from_micros(i64::MIN)))
         .collect();
@@ -109,8 +114,8 @@ fn straight(
     let table = ReportTable {
         columns: out,
         starts,
-        fresh,
-        conflicts: Vec::new(),
+        added,
+        ..ReportTable::default()
     };
     Some((table, tally))
 }
@@ -144,10 +149,10 @@ fn sorted(
         conflicts: Vec::new(),
     };
     let mut sorted_starts = vec![0];
-    let mut fresh = Vec::with_capacity(counts.len());
+    let mut added = Vec::with_capacity(counts.len());
     for (s, carried) in carried.iter().enumerate() {
         builder.out.append(&before.columns, carried.clone());
-        fresh.push(builder.out.time.len());
+        added.push(builder.out.time.len());
         let of_station = &mut order[starts[s]..starts[s + 1]];
         if !of_station.is_sorted_by_key(|at| builder.key(*at)) {
             of_station.sort_by(|a, b| {
@@ -161,8 +166,9 @@ fn sorted(
     let table = ReportTable {
         columns: builder.out,
         starts: sorted_starts,
-        fresh,
+        added,
         conflicts: builder.conflicts,
+        ..ReportTable::default()
     };
     (table, builder.tally)
 }
@@ -186,6 +192,7 @@ impl TableColumns {
         self.kind.extend_from_slice(&other.kind[range.clone()]);
         self.origin.extend_from_slice(&other.origin[range.clone()]);
         self.flag.extend_from_slice(&other.flag[range.clone()]);
+        self.tests.extend_from_slice(&other.tests[range.clone()]);
         // A column that one of the tables has and the other has not is filled up.
         if !other.gust.is_empty() || !self.gust.is_empty() {
             self.gust.resize(before, None);
@@ -349,6 +356,7 @@ impl TableBuilder<'_> {
         out.kind.push(kind & (kind::SPEED | kind::DIRECTION));
         out.origin.push((report.line, report.file));
         out.flag.push(Flag::NotEvaluated);
+        out.tests.push(TestFlags::default());
         // A column that one part has and another has not is filled up.
         if !rows.gust.is_empty() || !out.gust.is_empty() {
             out.gust.resize(before, None);

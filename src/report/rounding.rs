@@ -70,8 +70,56 @@ const SPEED_STEPS: [(f64, SpeedUnit); 10] = [
 /// How far a speed may be from a step, in steps: conversions are often written with few digits.
 const SPEED_SLACK: f64 = 0.01;
 
+/// Steps, what one is divided by them, and how far a value may be from them.
+struct StepTable<const N: usize> {
+    step: [f64; N],
+    inverse: [f64; N],
+    slack: [f64; N],
+}
+
+const DIRECTIONS: StepTable<{ DIRECTION_STEPS.len() }> = {
+    let mut table = StepTable::none();
+    let mut k = 0;
+    while k < DIRECTION_STEPS.len() {
+        let (step, slack) = DIRECTION_STEPS[k];
+        table.step[k] = step;
+        table.inverse[k] = 1.0 / step;
+        table.slack[k] = slack;
+        k += 1;
+    }
+    table
+};
+
+const SPEEDS: StepTable<{ SPEED_STEPS.len() }> = {
+    let mut table = StepTable::none();
+    let mut k = 0;
+    while k < SPEED_STEPS.len() {
+        let (count, unit) = SPEED_STEPS[k];
+        let step = count * unit.in_metres_per_second();
+        table.step[k] = step;
+        table.inverse[k] = 1.0 / step;
+        table.slack[k] = SPEED_SLACK * step;
+        k += 1;
+    }
+    table
+};
+
+impl<const N: usize> StepTable<N> {
+    const fn none() -> Self {
+        Self {
+            step: [0.0; N],
+            inverse: [0.0; N],
+            slack: [0.0; N],
+        }
+    }
+}
+
+/// Added to a number and taken off again this leaves the nearest whole number, for all that are not huge: rounding
+/// itself is a call into the mathematics library.
+const WHOLE: f64 = 1.5 * (1_u64 << 52) as f64;
+
 /// Values of a station that are looked at; later ones change nothing.
-const LOOKED_AT: u32 = 4096;
+const LOOKED_AT: u32 = 1024;
 
 /// Finds the steps of a station as its reports come: the coarsest on which nearly all values lie.
 #[derive(Debug, Clone, Default)]
@@ -97,10 +145,12 @@ impl<const N: usize> Default for Counts<N> {
 }
 
 impl<const N: usize> Counts<N> {
-    fn add(&mut self, value: f64, steps: impl Iterator<Item = (f64, f64)>) {
+    fn add(&mut self, value: f64, table: &StepTable<N>) {
         self.values += 1;
-        for (elsewhere, (step, slack)) in self.elsewhere.iter_mut().zip(steps) {
-            *elsewhere += u32::from((value - (value / step).round() * step).abs() > slack);
+        for k in 0..N {
+            let nearest = (value * table.inverse[k] + WHOLE) - WHOLE;
+            let off = (value - nearest * table.step[k]).abs();
+            self.elsewhere[k] += u32::from(off > table.slack[k]);
         }
     }
 
@@ -126,18 +176,13 @@ impl RoundingFinder {
         if let Some(direction) = direction
             && self.directions.values < LOOKED_AT
         {
-            self.directions
-                .add(direction.degrees(), DIRECTION_STEPS.into_iter());
+            self.directions.add(direction.degrees(), &DIRECTIONS);
         }
         // Calm lies on every step.
         if let Some(speed) = speed.filter(|&speed| speed > 0.0)
             && self.speeds.values < LOOKED_AT
         {
-            let steps = SPEED_STEPS.into_iter().map(|(count, unit)| {
-                let step = count * unit.in_metres_per_second();
-                (step, SPEED_SLACK * step)
-            });
-            self.speeds.add(speed, steps);
+            self.speeds.add(speed, &SPEEDS);
         }
     }
 

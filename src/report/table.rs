@@ -2,7 +2,7 @@
 
 use super::build::build;
 use super::rows::{Moving, Rows, kind};
-use crate::check::Flag;
+use crate::check::{Flag, Test, TestFlags};
 use crate::tally::Tally;
 use crate::time::Time;
 use crate::units::{FromDirection, Wind};
@@ -36,14 +36,17 @@ pub struct Conflict {
 /// Reports sorted by station, time and level, each of these once.
 ///
 /// A table may be a window of a longer series: then the reports of each station begin with the last ones of the window
-/// before, which carry their flags, and [`ReportTable::fresh`] tells those that are new.
-#[derive(Debug, Default)]
+/// before, which carry their flags. [`ReportTable::fresh`] tells those that are to be judged in this window: each report
+/// once, with its past before it and what comes next after it.
+#[derive(Debug)]
 pub struct ReportTable {
     pub(super) columns: TableColumns,
     /// Station s has the rows `starts[s]..starts[s + 1]`.
     pub(super) starts: Vec<usize>,
-    /// For each station the first row that is new.
-    pub(super) fresh: Vec<usize>,
+    /// For each station the first row that was not in the window before.
+    pub(super) added: Vec<usize>,
+    /// The times of the reports to judge.
+    pub(super) judged: std::ops::Range<Time>,
     pub(super) conflicts: Vec<Conflict>,
 }
 
@@ -59,9 +62,26 @@ pub(super) struct TableColumns {
     /// Line, file.
     pub(super) origin: Vec<(u32, u16)>,
     pub(super) flag: Vec<Flag>,
+    pub(super) tests: Vec<TestFlags>,
     pub(super) gust: Vec<Option<f64>>,
     pub(super) moving: Vec<Option<Moving>>,
 }
+
+impl Default for ReportTable {
+    fn default() -> Self {
+        Self {
+            columns: TableColumns::default(),
+            starts: Vec::new(),
+            added: Vec::new(),
+            judged: FIRST..FIRST,
+            conflicts: Vec::new(),
+        }
+    }
+}
+
+/// Before all reports, and after them.
+const FIRST: Time = Time::from_micros(i64::MIN);
+const LAST: Time = Time::from_micros(i64::MAX);
 
 impl ReportTable {
     /// Sorts rows by station, then time and level. `parts` follow each other in the order of the input; `stations` is
@@ -73,26 +93,28 @@ impl ReportTable {
     /// - a row that lacks what another has says nothing against it ([`Reason::Emptier`]);
     /// - else the last of the input; the others are [`Reason::Repeated`] if they say the same, [`Reason::Replaced`] if
     ///   not, and the first of these are listed as conflicts.
+    ///
+    /// [`Reason::Joined`]: crate::tally::Reason::Joined
+    /// [`Reason::Corrected`]: crate::tally::Reason::Corrected
+    /// [`Reason::Emptier`]: crate::tally::Reason::Emptier
+    /// [`Reason::Repeated`]: crate::tally::Reason::Repeated
+    /// [`Reason::Replaced`]: crate::tally::Reason::Replaced
     #[must_use]
     pub fn new(parts: &[Rows], stations: usize) -> (Self, Tally) {
-        build(
-            parts,
-            stations,
-            &Self::default(),
-            Time::from_micros(i64::MAX),
-        )
+        build(parts, stations, &Self::default(), LAST, LAST)
     }
 
     /// As [`Self::new`], with the reports of `before` from `keep_from` on ahead of the new ones, which are all later
-    /// than those. The tally is of the new rows.
+    /// than those; those before `judged_until` that were not judged before are now. The tally is of the new rows.
     #[must_use]
     pub fn following(
         parts: &[Rows],
         stations: usize,
         before: &Self,
         keep_from: Time,
+        judged_until: Time,
     ) -> (Self, Tally) {
-        build(parts, stations, before, keep_from)
+        build(parts, stations, before, keep_from, judged_until)
     }
 
     /// Number of stations of the network.
@@ -119,10 +141,17 @@ impl ReportTable {
         self.starts[station]..self.starts[station + 1]
     }
 
-    /// The reports of a station that are new in this table.
+    /// The reports of a station that are to be judged in this table.
     #[must_use]
     pub fn fresh(&self, station: usize) -> std::ops::Range<usize> {
-        self.fresh[station]..self.starts[station + 1]
+        let from = self.of_station_from(station, self.judged.start).start;
+        from..self.of_station_from(station, self.judged.end).start
+    }
+
+    /// The reports of a station that the window before had too.
+    #[must_use]
+    pub fn carried(&self, station: usize) -> std::ops::Range<usize> {
+        self.starts[station]..self.added[station]
     }
 
     /// The reports of a station from `time` on.
@@ -176,6 +205,38 @@ impl ReportTable {
         }
     }
 
+    /// Speed, direction (degrees, 0 for calm) and wind of report `i`, if it has a wind.
+    #[inline]
+    #[must_use]
+    pub(crate) fn plain_wind(&self, i: usize) -> Option<(f64, f64, Wind)> {
+        let columns = &self.columns;
+        let [speed, direction] = columns.given[i];
+        match columns.kind[i] & (kind::SPEED | kind::DIRECTION) {
+            k if k == kind::SPEED | kind::DIRECTION && speed > 0.0 => {
+                Some((speed, direction, columns.wind[i]))
+            }
+            k if k & kind::SPEED != 0 && speed <= 0.0 => Some((0.0, 0.0, Wind::default())),
+            _ => None,
+        }
+    }
+
+    /// True if report `i` is calm and has a direction other than 0 and 360.
+    #[must_use]
+    pub(crate) fn calm_has_direction(&self, i: usize) -> bool {
+        let degrees = self.columns.given[i][1];
+        self.columns.kind[i] & kind::DIRECTION != 0
+            && self.content(i) == Content::Calm
+            && degrees > 0.0
+            && degrees < 360.0
+    }
+
+    /// True if report `i` stands on a level.
+    #[inline]
+    #[must_use]
+    pub(crate) fn has_level(&self, i: usize) -> bool {
+        self.has_moving() && self.moving(i).is_some_and(|m| m.level.is_some())
+    }
+
     /// Wind vectors of all reports; 0 where there is none.
     #[must_use]
     pub fn winds(&self) -> &[Wind] {
@@ -224,6 +285,37 @@ impl ReportTable {
     #[must_use]
     pub fn flag(&self, i: usize) -> Flag {
         self.columns.flag[i]
+    }
+
+    /// Flags of the tests of report `i`.
+    #[must_use]
+    pub fn tests(&self, i: usize) -> TestFlags {
+        self.columns.tests[i]
+    }
+
+    /// Flag of a test of report `i`; the tests of a wind that is not there are missing.
+    #[must_use]
+    pub fn test_flag(&self, i: usize, test: Test) -> Flag {
+        let is_of_wind = !matches!(test, Test::TimingGap | Test::Location);
+        if is_of_wind && self.flag(i) == Flag::Missing {
+            Flag::Missing
+        } else {
+            self.tests(i).get(test)
+        }
+    }
+
+    /// Takes the columns of the flags out, to be given back with [`Self::put_flags`].
+    pub(crate) fn take_flags(&mut self) -> (Vec<Flag>, Vec<TestFlags>) {
+        let columns = &mut self.columns;
+        (
+            std::mem::take(&mut columns.flag),
+            std::mem::take(&mut columns.tests),
+        )
+    }
+
+    pub(crate) fn put_flags(&mut self, flags: Vec<Flag>, tests: Vec<TestFlags>) {
+        self.columns.flag = flags;
+        self.columns.tests = tests;
     }
 
     /// Raises the flag of report `i` to at least `flag`.

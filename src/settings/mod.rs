@@ -4,6 +4,8 @@
 //! are listed at once, each with its line; an unknown key is a defect.
 
 mod analysis;
+mod check;
+mod check_keys;
 mod errors;
 mod path;
 mod read;
@@ -20,6 +22,10 @@ use crate::station::Catalogue;
 use crate::structure::StructureSettings;
 use crate::time::Time;
 
+pub use check::{
+    AgreementLimits, AttenuatedLimits, CheckLimits, FlatLimits, PersistenceLimits, RangeLimits,
+    RateLimits, RunLimits, Season, SpikeLimits, StuckLimits,
+};
 pub use read::{Overrides, read_settings};
 
 /// Everything a run needs to know, verified.
@@ -39,8 +45,8 @@ pub struct Settings {
     pub analysis: Analysis,
     /// What the errors hold.
     pub errors: ErrorSettings,
-    /// Limits of the range check.
-    pub range: RangeLimits,
+    /// Limits of the tests of the reports.
+    pub check: CheckLimits,
     /// Which polygons are built.
     pub polygons: PolygonChoice,
     /// Which polygons are left out.
@@ -172,26 +178,6 @@ pub enum AlignMethod {
         /// Fewest reports that make a mean.
         least_reports: u32,
     },
-}
-
-/// Limits of the range check, m/s.
-///
-/// Defaults: QARTOD wind manual, test 4, examples (sensor span 0-100, user span 0-75 m/s; `methods.md` 6.1).
-#[derive(Debug, Clone, Copy, PartialEq, serde::Serialize)]
-pub struct RangeLimits {
-    /// A faster wind is suspect.
-    pub speed_suspect: f64,
-    /// A faster wind is impossible and fails.
-    pub speed_fail: f64,
-}
-
-impl Default for RangeLimits {
-    fn default() -> Self {
-        Self {
-            speed_suspect: 75.0,
-            speed_fail: 100.0,
-        }
-    }
 }
 
 /// Which polygons are built.

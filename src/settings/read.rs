@@ -4,13 +4,14 @@ use std::path::{Path, PathBuf};
 use std::time::Duration;
 
 use super::analysis::analysis;
+use super::check_keys::check;
 use super::errors::errors;
 use super::path::expand_path;
 use super::reports::{reports, text_format};
 use super::section::{Document, Section};
 use super::{
-    MEMORY, PolygonChoice, PolygonLimits, RangeLimits, RegionParts, RegionSettings, RingSettings,
-    SensorErrors, Settings,
+    MEMORY, PolygonChoice, PolygonLimits, RegionParts, RegionSettings, RingSettings, SensorErrors,
+    Settings,
 };
 use crate::error::{Error, Problem};
 use crate::station::{Catalogue, StationColumns};
@@ -78,15 +79,16 @@ fn parse_settings(
     let catalogue = catalogue(&mut stations);
     stations.finish();
 
+    let sensor = sensor(root.section("sensor"));
     let settings = Settings {
         name,
         station_file,
         catalogue,
         reports: reports(&mut root, base, &overrides.reports),
-        sensor: sensor(root.section("sensor")),
         analysis: analysis(root.section("analysis"), overrides),
         errors: errors(root.section("errors"), overrides),
-        range: range(root.section("check")),
+        check: check(root.section("check"), sensor.calm_below),
+        sensor,
         limits: limits(root.section("limits"), overrides),
         screen: !overrides.no_screen,
         cache: overrides.cache.clone(),
@@ -182,20 +184,6 @@ fn sensor(mut section: Section) -> SensorErrors {
     };
     section.finish();
     errors
-}
-
-fn range(mut section: Section) -> RangeLimits {
-    let default = RangeLimits::default();
-    let limits = RangeLimits {
-        speed_suspect: section
-            .parsed("speed_suspect", units::parse_speed)
-            .unwrap_or(default.speed_suspect),
-        speed_fail: section
-            .parsed("speed_fail", units::parse_speed)
-            .unwrap_or(default.speed_fail),
-    };
-    section.finish();
-    limits
 }
 
 fn limits(mut section: Section, overrides: &Overrides) -> PolygonLimits {

@@ -302,7 +302,8 @@ fn not_negative(normal: &[[f64; 3]; 3], right: &[f64; 3], used: [bool; 3]) -> [f
         };
         // What the sum of squares falls by.
         let falls: f64 = (0..3).map(|k| x[k] * right[k]).sum();
-        if x.iter().all(|&v| v >= 0.0) && falls > gain {
+        // Where one scale cannot tell them apart, the first stands: a power of the distance before a linear wind.
+        if x.iter().all(|&v| v >= 0.0) && falls > gain * (1.0 + 1e-9) {
             (best, gain) = (x, falls);
         }
     }
