@@ -122,8 +122,17 @@ fn estimate_columns(polygons: &[StationPolygon], winds: &WindBlock) -> EstimateB
     for (polygon, (((((vorticity, vorticity_se), divergence), divergence_se), flag), age)) in
         polygons.iter().zip(columns)
     {
-        add_values(&polygon.row, winds, vorticity, divergence);
-        add_variances(&polygon.row, winds, vorticity_se, divergence_se);
+        let row = &polygon.row;
+        if let ([a, b, c], [wa, wb, wc]) = (row.stations.as_slice(), row.weights.as_slice()) {
+            let (values, variances) = (
+                [&mut *vorticity, divergence],
+                [&mut *vorticity_se, divergence_se],
+            );
+            set_triangle([*a, *b, *c], [*wa, *wb, *wc], winds, values, variances);
+        } else {
+            add_values(row, winds, vorticity, divergence);
+            add_variances(row, winds, vorticity_se, divergence_se);
+        }
         for &station in &polygon.row.stations {
             let cells = winds.of_station(station);
             for (flag, &of_station) in flag.iter_mut().zip(&winds.flag[cells.clone()]) {
@@ -133,17 +142,71 @@ fn estimate_columns(polygons: &[StationPolygon], winds: &WindBlock) -> EstimateB
                 *age = age.max(of_station);
             }
         }
-        for t in 0..n {
-            if flag[t] == Flag::Missing {
+        for (z, d) in vorticity_se.iter_mut().zip(divergence_se.iter_mut()) {
+            // Rounding may leave a variance of nothing just below 0.
+            *z = if *z > 0.0 { z.sqrt() } else { 0.0 };
+            *d = if *d > 0.0 { d.sqrt() } else { 0.0 };
+        }
+        if flag.contains(&Flag::Missing) {
+            for t in (0..n).filter(|&t| flag[t] == Flag::Missing) {
                 (vorticity[t], divergence[t]) = (0.0, 0.0);
                 (vorticity_se[t], divergence_se[t]) = (0.0, 0.0);
             }
-            // Rounding may leave a variance of nothing just below 0.
-            vorticity_se[t] = vorticity_se[t].max(0.0).sqrt();
-            divergence_se[t] = divergence_se[t].max(0.0).sqrt();
         }
     }
     out
+}
+
+/// The values of three stations side by side.
+#[expect(
+    clippy::inline_always,
+    reason = "it must become part of the caller's vector code"
+)]
+#[inline(always)]
+fn three<'w>(
+    column: &'w [f64],
+    [a, b, c]: &[std::ops::Range<usize>; 3],
+) -> impl Iterator<Item = ((&'w f64, &'w f64), &'w f64)> {
+    let of = |cells: &std::ops::Range<usize>| column[cells.clone()].iter();
+    of(a).zip(of(b)).zip(of(c))
+}
+
+/// Both forms of a triangle, all three stations in one pass, so that nothing is stored between; the order of the steps is
+/// that of [`add_values`] and [`add_variances`].
+#[expect(
+    clippy::inline_always,
+    reason = "it must become part of the caller's vector code"
+)]
+#[inline(always)]
+fn set_triangle(
+    [a, b, c]: [usize; 3],
+    [[xa, ya], [xb, yb], [xc, yc]]: [[f64; 2]; 3],
+    winds: &WindBlock,
+    values: [&mut [f64]; 2],
+    variances: [&mut [f64]; 2],
+) {
+    let stations = [a, b, c].map(|station| winds.of_station(station));
+    let [vorticity, divergence] = values;
+    let out = vorticity.iter_mut().zip(divergence);
+    for ((z, d), (((ua, ub), uc), ((va, vb), vc))) in
+        out.zip(three(&winds.u, &stations).zip(three(&winds.v, &stations)))
+    {
+        *z = xa * ua + ya * va + (xb * ub + yb * vb) + (xc * uc + yc * vc);
+        *d = ya * ua - xa * va + (yb * ub - xb * vb) + (yc * uc - xc * vc);
+    }
+    let form = |x: f64, y: f64| (x * x, 2.0 * x * y, y * y);
+    let (fa, fb, fc) = (form(xa, ya), form(xb, yb), form(xc, yc));
+    let of_z = |f: (f64, f64, f64), uu: f64, uv: f64, vv: f64| f.0 * uu + f.1 * uv + f.2 * vv;
+    let of_d = |f: (f64, f64, f64), uu: f64, uv: f64, vv: f64| f.2 * uu - f.1 * uv + f.0 * vv;
+    let [vorticity, divergence] = variances;
+    let out = vorticity.iter_mut().zip(divergence);
+    let covariances = three(&winds.var_u, &stations)
+        .zip(three(&winds.cov_uv, &stations))
+        .zip(three(&winds.var_v, &stations));
+    for ((z, d), ((((ua, ub), uc), ((xa, xb), xc)), ((va, vb), vc))) in out.zip(covariances) {
+        *z = of_z(fa, *ua, *xa, *va) + of_z(fb, *ub, *xb, *vb) + of_z(fc, *uc, *xc, *vc);
+        *d = of_d(fa, *ua, *xa, *va) + of_d(fb, *ub, *xb, *vb) + of_d(fc, *uc, *xc, *vc);
+    }
 }
 
 /// Adds the linear forms; the loop over times has no branch and vectorises.
