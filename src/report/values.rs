@@ -80,6 +80,10 @@ pub(super) struct ValueReader<'a> {
     pub(super) names: &'a Names<'a>,
     missing: MissingMarks<'a>,
     /// The missing marks that are numbers.
+    #[cfg_attr(
+        not(feature = "parquet"),
+        allow(dead_code, reason = "for columnar tables")
+    )]
     number_marks: Vec<f64>,
     /// True if a number of 0 or more can be a missing mark.
     pub(super) positive_marks: bool,
@@ -179,6 +183,10 @@ impl<'a> ValueReader<'a> {
     }
 
     /// A number of a table that holds numbers, not texts; `None` for one that is not a number or a missing mark.
+    #[cfg_attr(
+        not(feature = "parquet"),
+        allow(dead_code, reason = "for columnar tables")
+    )]
     pub(super) fn number(&self, number: f64, value: Value) -> Result<Option<f64>, Unusable> {
         if number.is_nan() || self.is_mark(number) {
             Ok(None)
@@ -190,6 +198,10 @@ impl<'a> ValueReader<'a> {
         }
     }
 
+    #[cfg_attr(
+        not(feature = "parquet"),
+        allow(dead_code, reason = "for columnar tables")
+    )]
     #[expect(clippy::float_cmp, reason = "a mark is written exactly or not meant")]
     #[expect(
         clippy::cast_possible_truncation,
