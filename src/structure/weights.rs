@@ -75,8 +75,7 @@ impl Group {
                     if j == i {
                         continue;
                     }
-                    let block: Matrix2<f64> =
-                        inverse.fixed_view::<2, 2>(2 * i, 2 * j).into_owned();
+                    let block: Matrix2<f64> = inverse.fixed_view::<2, 2>(2 * i, 2 * j).into_owned();
                     let weight = -(own * block);
                     rest -= weight;
                     others.push((other, local(&weight, &here, &there)));
@@ -141,7 +140,13 @@ mod tests {
 
     #[test]
     fn the_weights_give_the_prediction() {
-        let at = [(47.0, 8.0), (47.2, 8.3), (46.9, 8.4), (47.3, 7.9), (46.8, 7.8)];
+        let at = [
+            (47.0, 8.0),
+            (47.2, 8.3),
+            (46.9, 8.4),
+            (47.3, 7.9),
+            (46.8, 7.8),
+        ];
         let stations = at.iter().enumerate().map(|(k, &(lat, lon))| {
             Station::new(format!("S{k}"), Position::new(lat, lon).unwrap())
         });
@@ -176,7 +181,10 @@ mod tests {
             let expected = predictions.iter().find(|p| p.station == weights.station);
             let wind = expected.unwrap().wind;
             // The weights add up to 1 − 1e-4 or so, the prediction is about the mean wind.
-            assert!((u - wind.u).abs() + (v - wind.v).abs() < 2e-3, "{u} {v} {wind:?}");
+            assert!(
+                (u - wind.u).abs() + (v - wind.v).abs() < 2e-3,
+                "{u} {v} {wind:?}"
+            );
             assert!(weights.covariance > 0.0 && weights.covariance < weights.variance);
         }
     }
