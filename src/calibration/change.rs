@@ -10,9 +10,9 @@ type C = Complex<f64>;
 const LEAST: usize = 2;
 /// Smallest change that counts: of the angle 4 degrees, of the logarithm 8 %.
 const LEAST_CHANGE: f64 = 0.07;
-/// F of the best split that counts as a change. The 1 % level of the largest of some tens of F with two and about ten
-/// degrees of freedom is near 12 (Quandt 1960, JASA 55, 324; the test of the maximum, from memory).
-const LEAST_F: f64 = 14.0;
+/// Chance of so large an F by accident, times the number of splits tried (Bonferroni), at which a change is believed. A
+/// network has some tens of stations.
+const CHANCE: f64 = 2e-4;
 
 /// A change between two blocks.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -22,6 +22,8 @@ pub(super) struct Split {
     /// First and last block that it may as well be.
     pub(super) from: usize,
     pub(super) to: usize,
+    /// How sure it is; the larger the surer.
+    pub(super) strength: f64,
 }
 
 /// The split that explains the blocks' gains best, if any does.
@@ -55,7 +57,9 @@ pub(super) fn find_split(sums: &[BlockSum]) -> Option<Split> {
     let freedom = (2 * n - 4) as f64;
     let f = 0.5 * (one - least) / (least / freedom).max(1e-12);
     let change = (mean(&there[k..]) - mean(&there[..k])).norm();
-    if f < LEAST_F || change < LEAST_CHANGE {
+    // The upper tail of F with 2 and m degrees of freedom is (1 + 2 F/m)^(−m/2).
+    let chance = (1.0 + 2.0 * f / freedom).powf(-0.5 * freedom) * all.len() as f64;
+    if chance > CHANCE || change < LEAST_CHANGE {
         return None;
     }
     // 95 % of F with 2 and m degrees of freedom: (m/2) (20^(2/m) − 1), in closed form.
@@ -64,6 +68,7 @@ pub(super) fn find_split(sums: &[BlockSum]) -> Option<Split> {
     let near: Vec<usize> = all.iter().filter(|x| x.1 <= allowed).map(|x| x.0).collect();
     Some(Split {
         block: there[k].0,
+        strength: change,
         from: there[near.first().copied().unwrap_or(k)].0,
         to: there[near.last().copied().unwrap_or(k)].0,
     })

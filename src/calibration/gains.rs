@@ -3,6 +3,7 @@
 use nalgebra::Complex;
 
 use super::record::{Record, median};
+use super::spread::{Blocks, block_sums, own_variance};
 use crate::align::{AlignedWind, Covariance, WindBlock};
 use crate::check::Flag;
 use crate::structure::{Predictor, StationWeights, StructureFunction};
@@ -28,6 +29,12 @@ const OUTLIER: f64 = 5.0;
 /// A station that errs by this many times the variance that the model says, relative to the network, predicts no others.
 const UNTRUSTED: f64 = 4.0;
 const ROUNDS: usize = 6;
+/// Gains within this of 1, in logarithm and radians, are taken for 1 at first.
+const SOUND: f64 = 0.4;
+/// Scale of the gains of sound sensors about 1: 6 %, or 3.4 degrees.
+const SENSOR_SD: f64 = 0.06;
+/// An outlier that is a spike, in robust standard deviations.
+const SPIKE: f64 = 8.0;
 /// A residual's median length in standard deviations of a component (Rayleigh): √(2 ln 2).
 const RAYLEIGH_MEDIAN: f64 = 1.177_41;
 
@@ -61,6 +68,11 @@ pub(super) struct Fit<'a> {
     pub(super) strength: Vec<f64>,
     /// By station whether others stand all around it.
     around: &'a [bool],
+    blocks: &'a Blocks,
+    /// Of each station the weight of what is expected of a sensor beforehand, relative to its data.
+    prior: Vec<f64>,
+    /// Outliers so far off that they count as spikes, station-major.
+    far_off: Vec<bool>,
     /// Of each station the residuals' variance over what the model says, relative to the network's median.
     pub(super) misfit: Vec<f64>,
 }
@@ -80,13 +92,21 @@ pub(super) struct Expected {
 impl<'a> Fit<'a> {
     /// The gains of all stations, robustly: from medians of neighbours to predictions; outliers are left out, and
     /// stations that do not follow the others predict none.
-    pub(super) fn new(record: &'a Record, predictor: &'a Predictor, around: &'a [bool]) -> Self {
+    pub(super) fn new(
+        record: &'a Record,
+        predictor: &'a Predictor,
+        around: &'a [bool],
+        blocks: &'a Blocks,
+    ) -> Self {
         let n = record.winds.len();
         let cells = n * record.times.len();
         let mut fit = Self {
             record,
             predictor,
             around,
+            blocks,
+            prior: vec![0.0; n],
+            far_off: vec![false; cells],
             stretches: Vec::new(),
             gains: vec![[C::new(1.0, 0.0); 2]; n],
             splits: vec![None; n],
@@ -100,9 +120,12 @@ impl<'a> Fit<'a> {
         fit.weigh();
         fit.refresh_all();
         fit.start();
+        fit.weigh_prior();
         for _ in 0..ROUNDS {
             fit.solve();
             fit.find_outliers();
+            fit.weigh_prior();
+            fit.solve();
             if !fit.distrust_worst() {
                 break;
             }
@@ -125,6 +148,25 @@ impl<'a> Fit<'a> {
         self.find_outliers();
         self.solve();
         self.find_misfit();
+    }
+
+    /// What a gain of 1 weighs beforehand: the variance of the station's own gain over that expected of sensors.
+    fn weigh_prior(&mut self) {
+        let sums = block_sums(self, self.blocks);
+        let own: Vec<Option<f64>> = sums.iter().map(|of| own_variance(of)).collect();
+        let mut known: Vec<f64> = own.iter().flatten().copied().collect();
+        let typical = median(&mut known).unwrap_or(0.0);
+        let weight = |own: &Option<f64>| 0.5 * (own.unwrap_or(typical) + typical);
+        self.prior = own
+            .iter()
+            .map(|v| (weight(v) / (SENSOR_SD * SENSOR_SD)).min(10.0))
+            .collect();
+    }
+
+    /// Weight of the prior at a gain: that of a Cauchy distribution, which lets go of a gain that is far off.
+    pub(super) fn prior_at(&self, s: usize, part: usize) -> f64 {
+        let off = (self.gains[s][part] - 1.0).norm() / SENSOR_SD;
+        self.prior[s] / (1.0 + off * off)
     }
 
     /// Weights of the predictions in each stretch.
@@ -151,7 +193,7 @@ impl<'a> Fit<'a> {
                 let now = &self.record.structure[t];
                 let ratio = (now.longitudinal + now.transverse) / amplitude;
                 self.strength[t] = if ratio.is_finite() {
-                    ratio.clamp(0.2, 5.0)
+                    ratio.clamp(0.5, 4.0)
                 } else {
                     1.0
                 };
@@ -323,7 +365,8 @@ impl<'a> Fit<'a> {
                     sums[part].1 += e.weight * (e.field.norm_sqr() - e.excess);
                 }
                 for (part, (top, bottom)) in sums.into_iter().enumerate() {
-                    let fitted = top / bottom;
+                    let prior = self.prior_at(s, part) * bottom;
+                    let fitted = (top + prior) / (bottom + prior);
                     if bottom <= 0.0 || !is_sane(fitted) {
                         continue;
                     }
@@ -408,9 +451,12 @@ impl<'a> Fit<'a> {
             let Some(middle) = median(&mut lengths) else {
                 continue;
             };
-            let limit = OUTLIER * middle / RAYLEIGH_MEDIAN;
+            let limit = middle / RAYLEIGH_MEDIAN;
             for (t, length) in residuals {
-                self.outlier[s * n + t] = length > limit;
+                // A quiet hour by the structure function is no reason to call a wind an outlier.
+                let length = length * self.strength[t].min(1.0).sqrt();
+                self.outlier[s * n + t] = length > OUTLIER * limit;
+                self.far_off[s * n + t] = length > SPIKE * limit;
             }
         }
         self.refresh_all();
@@ -446,15 +492,10 @@ impl<'a> Fit<'a> {
             if !self.may_predict[s] || self.misfit[s] < UNTRUSTED {
                 continue;
             }
-            let Some(weights) = self.stretches.iter().find_map(|p| p.weights[s].as_ref()) else {
-                continue;
-            };
             // A bad station spoils the predictions of those that lean on it: the worst of them goes first.
-            let worse = weights
-                .others
-                .iter()
-                .filter(|(_, w)| 0.5 * (w[0] + w[3]) > 0.1)
-                .any(|&(other, _)| self.may_predict[other] && self.misfit[other] > self.misfit[s]);
+            let worse = self
+                .leans_on(s)
+                .any(|other| self.may_predict[other] && self.misfit[other] > self.misfit[s]);
             if !worse {
                 self.may_predict[s] = false;
                 any = true;
@@ -501,6 +542,20 @@ impl<'a> Fit<'a> {
             sums.clear();
         }
         sums
+    }
+
+    /// The stations that have much weight in the prediction of a station.
+    pub(super) fn leans_on(&self, s: usize) -> impl Iterator<Item = usize> {
+        let weights = self.stretches.iter().find_map(|p| p.weights[s].as_ref());
+        let others = weights.into_iter().flat_map(|w| &w.others);
+        others
+            .filter(|(_, w)| 0.5 * (w[0] + w[3]) > 0.1)
+            .map(|o| o.0)
+    }
+
+    /// True if a wind is far off by itself.
+    pub(super) fn is_far_off(&self, s: usize, t: usize) -> bool {
+        self.far_off[s * self.times() + t]
     }
 
     /// True if the stations that predict a station stand all around it.

@@ -51,6 +51,7 @@ pub use ticket::{Cost, Ticket};
 
 use gains::Fit;
 use record::Record;
+use spread::Blocks;
 
 /// How the calibration works.
 #[derive(Debug, Clone, PartialEq)]
@@ -134,8 +135,9 @@ impl Calibrator {
     /// The calibration of all stations. `declinations` holds the magnetic declination of each, as far as it is known.
     #[must_use]
     pub fn finish(&self, declinations: &[Option<f64>]) -> Calibration {
-        let fit = Fit::new(&self.record, &self.predictor, &self.around);
-        Calibration::of(&self.record, fit, &self.settings, declinations)
+        let blocks = Blocks::of(&self.record);
+        let fit = Fit::new(&self.record, &self.predictor, &self.around, &blocks);
+        Calibration::of(&self.record, &blocks, fit, &self.settings, declinations)
     }
 }
 

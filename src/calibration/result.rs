@@ -15,6 +15,9 @@ use crate::time::Time;
 
 type C = Complex<f64>;
 
+/// Rounds in which changes are looked for.
+const CHANGE_ROUNDS: usize = 3;
+
 /// A gain with its errors.
 #[derive(Debug, Clone, Copy, PartialEq, Serialize)]
 pub struct GainEstimate {
@@ -94,22 +97,37 @@ pub struct Calibration {
 impl Calibration {
     pub(super) fn of(
         record: &Record,
+        blocks: &Blocks,
         mut fit: Fit,
         settings: &CalibrationSettings,
         declinations: &[Option<f64>],
     ) -> Self {
-        let blocks = Blocks::of(record);
-        let mut sums = block_sums(&fit, &blocks);
-        let found: Vec<Option<Split>> = sums
-            .iter()
-            .map(|of| find_split(of).filter(|_| blocks.days))
-            .collect();
-        if found.iter().any(Option::is_some) {
+        let mut sums = block_sums(&fit, blocks);
+        let mut found: Vec<Option<Split>> = vec![None; sums.len()];
+        for _ in 0..CHANGE_ROUNDS {
+            let new: Vec<Option<Split>> = (0..sums.len())
+                .map(|s| {
+                    let split = find_split(&sums[s]);
+                    split.filter(|_| blocks.days && found[s].is_none())
+                })
+                .collect();
+            // A station that changes takes its neighbours' expectations along: the largest change of each goes first.
+            let size = |s: usize| new[s].map_or(0.0, |split| split.strength);
+            let mut any = false;
+            for (s, split) in new.iter().enumerate() {
+                if split.is_some() && fit.leans_on(s).all(|other| size(other) <= size(s)) {
+                    found[s] = *split;
+                    any = true;
+                }
+            }
+            if !any {
+                break;
+            }
             let first_time = |split: &Split| blocks.of.partition_point(|&b| b < split.block);
             fit.split(found.iter().map(|f| f.as_ref().map(first_time)).collect());
-            sums = block_sums(&fit, &blocks);
+            sums = block_sums(&fit, blocks);
         }
-        let errors = gain_errors(&fit, &blocks, &sums);
+        let errors = gain_errors(&fit, blocks, &sums);
         let expected: Vec<Vec<Expected>> = (0..sums.len()).map(|s| fit.expected(s)).collect();
         let exchanged = exchanges(record, &fit, &expected);
         let start_of = |block: usize| {
@@ -139,7 +157,7 @@ impl Calibration {
             StationCalibration {
                 gain: errors[s][1].as_ref().map(|e| estimate(after, e)),
                 change,
-                clock: clock_lag(record, &fit, &blocks, s),
+                clock: clock_lag(record, &fit, blocks, s),
                 reflection: reflection(record, &expected[s], s),
                 exchange: exchanged.iter().find_map(|x: &Exchange| match x.stations {
                     [a, b] if a == s => Some((b, x.left)),

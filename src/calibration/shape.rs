@@ -106,7 +106,7 @@ pub(super) fn spikes(fit: &Fit, record: &Record, s: usize) -> f64 {
     let n = fit.times();
     let there: Vec<bool> = (0..n)
         .filter(|&t| record.wind(s, t).is_some())
-        .map(|t| fit.outlier[s * n + t])
+        .map(|t| fit.is_far_off(s, t))
         .collect();
     let alone = there.windows(3).filter(|w| !w[0] && w[1] && !w[2]).count();
     alone as f64 / there.len().max(1) as f64

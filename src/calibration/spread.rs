@@ -116,9 +116,15 @@ impl GainError {
     }
 }
 
+/// Variance of a station's relative gain (mean of angle and logarithm) as far as it comes of its own residuals.
+pub(super) fn own_variance(sums: &[BlockSum]) -> Option<f64> {
+    let [angle, log, _] = spread(&station_scores(sums, sums), sums, true)?;
+    Some(0.5 * (angle + log))
+}
+
 /// Errors of all stations' gains, before and after their splits.
 ///
-/// Near the solution the relative error of a station's gain is ε = s + C ε: s is what the residuals of a block add, C how
+/// Near the solution the relative error of a station's gain is (1 + λ) ε = s + C ε: λ is the weight of the prior, s is what the residuals of a block add, C how
 /// its prediction leans on the others. Solved for the residuals of each block this gives what each block adds to each
 /// gain. Drawing blocks with replacement, as a bootstrap of blocks does (Künsch 1989, Ann. Stat. 17, 1217; from memory),
 /// spreads the sum of these by the root of their sum of squares, so nothing needs drawing. Blocks shorter than a day are
@@ -134,7 +140,8 @@ pub(super) fn gain_errors(
     let stations = fit.gains.len();
     let scores: Vec<Vec<C>> = sums.iter().map(|of| station_scores(of, of)).collect();
     let coupling: Vec<Vec<(usize, C)>> = (0..stations).map(|s| fit.coupling(s)).collect();
-    let influence = solve(&scores, &coupling, blocks.count);
+    let prior: Vec<f64> = (0..stations).map(|s| fit.prior_at(s, 1)).collect();
+    let influence = solve(&scores, &coupling, &prior, blocks.count);
     let split_block = |s: usize| fit.splits[s].and_then(|t| blocks.of.get(t).copied());
     // Of each station and part: variance of angle and of log, blocks in it.
     let raw = |s: usize| -> [Option<[f64; 3]>; 2] {
@@ -148,7 +155,7 @@ pub(super) fn gain_errors(
             let own = station_scores(part, part);
             let whole = &scores[s];
             let of_part: Vec<C> = (from..to)
-                .map(|b| influence[s][b] - whole[b] + own[b - from])
+                .map(|b| influence[s][b] + (own[b - from] - whole[b]) / (1.0 + prior[s]))
                 .collect();
             spread(&of_part, part, blocks.days)
         })
@@ -195,8 +202,13 @@ fn station_scores(sums: &[BlockSum], whole: &[BlockSum]) -> Vec<C> {
         .collect()
 }
 
-/// ε = s + C ε for all blocks, with the mean of all stations at 0.
-fn solve(scores: &[Vec<C>], coupling: &[Vec<(usize, C)>], blocks: usize) -> Vec<Vec<C>> {
+/// (1 + prior) ε = s + C ε for all blocks, with the mean of all stations at 0.
+fn solve(
+    scores: &[Vec<C>],
+    coupling: &[Vec<(usize, C)>],
+    prior: &[f64],
+    blocks: usize,
+) -> Vec<Vec<C>> {
     let mut found: Vec<Vec<C>> = scores.to_vec();
     let mut next = vec![C::default(); blocks];
     for _ in 0..SWEEPS {
@@ -209,7 +221,7 @@ fn solve(scores: &[Vec<C>], coupling: &[Vec<(usize, C)>], blocks: usize) -> Vec<
                 }
             }
             for (old, new) in found[s].iter_mut().zip(&next) {
-                let step = (new - *old) * 1.5;
+                let step = (new / (1.0 + prior[s]) - *old) * 1.5;
                 largest = largest.max(step.norm());
                 *old += step;
             }
