@@ -69,6 +69,23 @@ impl Score {
             self.held[1] += usize::from(log.abs() <= gain.half_95 * gain.factor_se / gain.factor);
             self.turn.push(off);
             self.log.push(log);
+            if std::env::var("ALL").is_ok() {
+                println!(
+                    "{s:2} {fault:?} {:6.2} ± {:.2} {:.3} ± {:.3} misfit {:.2} {} times {} speed {:.1} dev {:.2} change {:?}",
+                    gain.turn,
+                    gain.turn_se,
+                    gain.factor,
+                    gain.factor_se,
+                    station.misfit,
+                    station.predicts,
+                    station.times,
+                    station.speed,
+                    station.deviation,
+                    station
+                        .change
+                        .map(|c| (c.at.to_string(), c.before.turn, c.before.factor))
+                );
+            }
             let causes: Vec<&str> = found
                 .tickets
                 .iter()
@@ -134,8 +151,24 @@ fn look() {
     let runs: u64 = std::env::var("RUNS").map_or(8, |r| r.parse().unwrap());
     let days: f64 = std::env::var("DAYS").map_or(7.0, |r| r.parse().unwrap());
     let mut score = Score::default();
-    for seed in 0..runs {
+    for seed in std::env::var("FROM").map_or(0, |r| r.parse().unwrap())..runs {
         score.add(seed, days);
     }
     score.print("all");
+}
+
+#[test]
+fn debug() {
+    let found = case(28, 7.0, 300.0, &[]).calibrate();
+    for (s, st) in found.stations.iter().enumerate() {
+        println!(
+            "{s} {:?} speed {:.1} dev {:.2} misfit {:.2} blocks {} times {}",
+            st.gain.map(|g| (g.turn, g.turn_se, g.factor, g.factor_se)),
+            st.speed,
+            st.deviation,
+            st.misfit,
+            st.blocks,
+            st.times
+        );
+    }
 }

@@ -31,8 +31,12 @@ const UNTRUSTED: f64 = 4.0;
 const ROUNDS: usize = 6;
 /// Gains within this of 1, in logarithm and radians, are taken for 1 at first.
 const SOUND: f64 = 0.4;
-/// Scale of the gains of sound sensors about 1: 6 %, or 3.4 degrees.
-const SENSOR_SD: f64 = 0.06;
+/// Scale of the gains of sound sensors about 1: 3 %, or 1.7 degrees. It keeps what is common to many neighbours, which
+/// the data say little of, small.
+const SENSOR_SD: f64 = 0.03;
+/// Least weight of the prior. Days tell nothing of a pattern of the weather that lasts through the record, such as a wind that is
+/// always backed at one end of the network: without this it would be taken for turned vanes.
+const LEAST_PRIOR: f64 = 0.3;
 /// An outlier that is a spike, in robust standard deviations.
 const SPIKE: f64 = 8.0;
 /// A residual's median length in standard deviations of a component (Rayleigh): √(2 ln 2).
@@ -159,7 +163,7 @@ impl<'a> Fit<'a> {
         let weight = |own: &Option<f64>| 0.5 * (own.unwrap_or(typical) + typical);
         self.prior = own
             .iter()
-            .map(|v| (weight(v) / (SENSOR_SD * SENSOR_SD)).min(10.0))
+            .map(|v| (weight(v) / (SENSOR_SD * SENSOR_SD)).clamp(LEAST_PRIOR, 10.0))
             .collect();
     }
 
@@ -335,11 +339,9 @@ impl<'a> Fit<'a> {
                 }
             }
             let gain = top / bottom;
-            first.push(if is_sane(gain) {
-                gain
-            } else {
-                C::new(1.0, 0.0)
-            });
+            // A small difference is the weather's until it proves to be the sensor's.
+            let sound = !is_sane(gain) || gain.ln().norm() < SOUND;
+            first.push(if sound { C::new(1.0, 0.0) } else { gain });
         }
         for (gain, first) in self.gains.iter_mut().zip(first) {
             *gain = [first; 2];

@@ -17,6 +17,8 @@ const SHORTEST_BLOCK: i64 = 3_600_000_000;
 /// Days that the network's typical variance is worth beside a station's own.
 const SHARED: f64 = 6.0;
 const SWEEPS: usize = 200;
+/// Stations whose scatter says something.
+const LEAST_FOR_SCATTER: usize = 6;
 
 /// Blocks of time.
 #[derive(Debug, Clone)]
@@ -183,7 +185,35 @@ pub(super) fn gain_errors(
             freedom: freedom + shared,
         })
     };
-    found.into_iter().map(|parts| parts.map(finish)).collect()
+    let mut errors: Vec<_> = found.into_iter().map(|parts| parts.map(finish)).collect();
+    add_scatter(fit, &mut errors);
+    errors
+}
+
+/// Adds what sound stations differ by and blocks do not show: sites, and weather that lasts through the record. It is what
+/// the robust variance of all gains has beyond the median of the variances of their errors.
+fn add_scatter(fit: &Fit, errors: &mut [[Option<GainError>; 2]]) {
+    let excess = |value: fn(C) -> f64, error: fn(&GainError) -> f64| -> f64 {
+        let known = errors.iter().zip(&fit.gains);
+        let known = known.filter_map(|(e, gain)| Some((gain[1], e[1]?)));
+        let (mut sizes, mut variances): (Vec<f64>, Vec<f64>) = known
+            .map(|(gain, e)| (value(gain).abs(), error(&e).powi(2)))
+            .unzip();
+        // The median of all gains is 1, so the median size is the median deviation; 1.4826 of it for a Gaussian.
+        let scatter = median(&mut sizes).map_or(0.0, |m| 1.4826 * m);
+        (scatter * scatter - median(&mut variances).unwrap_or(0.0)).max(0.0)
+    };
+    if errors.len() < LEAST_FOR_SCATTER {
+        return;
+    }
+    let (angle, log) = (
+        excess(C::arg, |e| e.angle),
+        excess(|g| g.norm().ln(), |e| e.log),
+    );
+    for error in errors.iter_mut().flatten().flatten() {
+        error.angle = (error.angle * error.angle + angle).sqrt();
+        error.log = (error.log * error.log + log).sqrt();
+    }
 }
 
 /// What the residuals of each block add to the relative gain.
