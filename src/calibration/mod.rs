@@ -40,6 +40,7 @@ mod ticket;
 use crate::align::WindBlock;
 use crate::station::{Network, Position};
 use crate::structure::{LocalPlane, Predictor, StructureFunction};
+use crate::time::Time;
 use crate::units::Wind;
 
 pub use cause::{Fault, cause_of_factor, cause_of_lag, cause_of_turn};
@@ -130,6 +131,13 @@ impl Calibrator {
     /// ([`crate::structure::StructureWindow::advance`]).
     pub fn take(&mut self, block: &WindBlock, structure: &[StructureFunction]) {
         self.record.take(block, structure);
+    }
+
+    /// First and last time kept; `None` without any.
+    #[must_use]
+    pub fn period(&self) -> Option<[Time; 2]> {
+        let times = &self.record.times;
+        times.first().zip(times.last()).map(|(a, b)| [*a, *b])
     }
 
     /// The calibration of all stations. `declinations` holds the magnetic declination of each, as far as it is known.

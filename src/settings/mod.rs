@@ -4,12 +4,14 @@
 //! are listed at once, each with its line; an unknown key is a defect.
 
 mod analysis;
+mod calibration;
 mod errors;
 mod path;
 mod read;
 mod reports;
 mod section;
 
+use std::collections::BTreeMap;
 use std::path::PathBuf;
 use std::time::Duration;
 
@@ -39,6 +41,8 @@ pub struct Settings {
     pub analysis: Analysis,
     /// What the errors hold.
     pub errors: ErrorSettings,
+    /// What the calibration leaves out.
+    pub calibration: CalibrationChoice,
     /// Limits of the range check.
     pub range: RangeLimits,
     /// Which polygons are built.
@@ -117,6 +121,16 @@ impl Default for ErrorSettings {
             structure: StructureSettings::default(),
         }
     }
+}
+
+/// What the calibration leaves out: sectors of wind direction, degrees, from and to clockwise, in which a station stands
+/// in the wake of a turbine or in the lee of something else.
+#[derive(Debug, Clone, Default, PartialEq, serde::Serialize)]
+pub struct CalibrationChoice {
+    /// At all stations.
+    pub sectors: Vec<[f64; 2]>,
+    /// By station.
+    pub station_sectors: BTreeMap<String, Vec<[f64; 2]>>,
 }
 
 /// How reports become winds at analysis times.
