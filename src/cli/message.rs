@@ -9,7 +9,7 @@ use crate::pipeline::{Outcome, Setup};
 use crate::polygon::{Exclusion, StationPolygon};
 
 /// Width of everything printed.
-const WIDTH: usize = 80;
+pub(super) const WIDTH: usize = 80;
 /// Stations named as those that reported least.
 const LEAST: usize = 3;
 
@@ -109,6 +109,7 @@ pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
             period.times
         );
     }
+    corrections_text(&mut out, setup);
     let reporting = outcome.values.iter().filter(|&&n| n > 0).count();
     let _ = writeln!(
         out,
@@ -226,6 +227,20 @@ fn peak_text(setup: &Setup, peak: Option<Peak>) -> String {
     )
 }
 
+/// Says which corrections of the station list are used, all of them.
+pub(super) fn corrections_text(out: &mut String, setup: &Setup) {
+    for station in setup.network.stations() {
+        if let Some(correction) = &station.correction {
+            let _ = writeln!(
+                out,
+                "Corrected   {} {}",
+                cut(&station.id, 12),
+                cut(&correction.words(), WIDTH - 25)
+            );
+        }
+    }
+}
+
 /// Names the stations with the fewest values, if any is incomplete.
 fn least_reporting(out: &mut String, setup: &Setup, outcome: &Outcome) {
     let times = outcome.period.times;
@@ -251,7 +266,7 @@ fn least_reporting(out: &mut String, setup: &Setup, outcome: &Outcome) {
 }
 
 /// Text in lines of at most the width.
-fn wrapped(text: &str) -> String {
+pub(super) fn wrapped(text: &str) -> String {
     let mut out = String::new();
     let mut width = 0;
     for word in text.split_whitespace() {

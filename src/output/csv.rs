@@ -151,7 +151,7 @@ pub(super) fn station_list(polygon: &StationPolygon, network: &Network) -> Strin
 }
 
 /// A field, quoted where it must be (RFC 4180).
-fn quoted(text: &str) -> String {
+pub(super) fn quoted(text: &str) -> String {
     if text.contains([',', '"', '\n', '\r']) {
         format!("\"{}\"", text.replace('"', "\"\""))
     } else {
@@ -163,7 +163,7 @@ pub(super) fn number(value: f64) -> String {
     Buffer::new().format(value).to_string()
 }
 
-fn optional(value: Option<f64>) -> String {
+pub(super) fn optional(value: Option<f64>) -> String {
     value.map_or_else(String::new, number)
 }
 

@@ -39,6 +39,17 @@ pub fn calibrate(
     mut progress: impl FnMut(u64),
 ) -> Result<CalibrationOutcome, Error> {
     let network = &setup.network;
+    let named = setup.settings.calibration.station_sectors.keys();
+    let unknown: Vec<&str> = named
+        .map(String::as_str)
+        .filter(|id| network.find(id).is_none())
+        .collect();
+    if !unknown.is_empty() {
+        return Err(Error::Network(format!(
+            "`calibration.exclude_sectors_of` names stations that are not in the list: {}",
+            unknown.join(", ")
+        )));
+    }
     let files = ReportFiles::new(&setup.settings.reports, network);
     let mut windows = Windows::new(&files, &setup.settings, order)?;
     let (factors, height_warnings) = height_factors(setup);
