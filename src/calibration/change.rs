@@ -8,8 +8,6 @@ type C = Complex<f64>;
 
 /// Blocks on either side of a change, at least.
 const LEAST: usize = 2;
-/// Smallest change that counts: of the angle 4 degrees, of the logarithm 8 %.
-const LEAST_CHANGE: f64 = 0.07;
 /// Chance of so large an F by accident, times the number of splits tried (Bonferroni), at which a change is believed. A
 /// network has some tens of stations.
 const CHANCE: f64 = 2e-4;
@@ -22,11 +20,13 @@ pub(super) struct Split {
     /// First and last block that it may as well be.
     pub(super) from: usize,
     pub(super) to: usize,
-    /// How sure it is; the larger the surer.
-    pub(super) strength: f64,
+    /// By how much the gain changed.
+    pub(super) change: f64,
+    /// Whether the days of the station bear it out.
+    pub(super) sure: bool,
 }
 
-/// The split that explains the blocks' gains best, if any does.
+/// The split that explains the blocks' gains best.
 ///
 /// Gains of blocks, weighted by what each block says, with one mean or two: F = (S1 − S2)/2 / (S2/(2 n − 4)), with S the
 /// weighted sums of squares. The interval holds the splits whose S2 is not larger than the least by more than the 95 % of
@@ -59,16 +59,14 @@ pub(super) fn find_split(sums: &[BlockSum]) -> Option<Split> {
     let change = (mean(&there[k..]) - mean(&there[..k])).norm();
     // The upper tail of F with 2 and m degrees of freedom is (1 + 2 F/m)^(−m/2).
     let chance = (1.0 + 2.0 * f / freedom).powf(-0.5 * freedom) * all.len() as f64;
-    if chance > CHANCE || change < LEAST_CHANGE {
-        return None;
-    }
     // 95 % of F with 2 and m degrees of freedom: (m/2) (20^(2/m) − 1), in closed form.
     let limit = 0.5 * freedom * (20_f64.powf(2.0 / freedom) - 1.0);
     let allowed = least * (1.0 + 2.0 * limit / freedom);
     let near: Vec<usize> = all.iter().filter(|x| x.1 <= allowed).map(|x| x.0).collect();
     Some(Split {
         block: there[k].0,
-        strength: change,
+        change,
+        sure: chance <= CHANCE,
         from: there[near.first().copied().unwrap_or(k)].0,
         to: there[near.last().copied().unwrap_or(k)].0,
     })
@@ -90,9 +88,10 @@ mod tests {
     #[test]
     fn a_turn_on_the_eleventh_day_is_found_and_noise_is_none() {
         let noise = |k: i32| f64::from((k * 7919) % 13 - 6) * 0.3;
-        assert_eq!(find_split(&sums((0..30).map(noise))), None);
+        assert!(!find_split(&sums((0..30).map(noise))).unwrap().sure);
         let turned = (0..30).map(|k| noise(k) + if k < 10 { 0.0 } else { 8.0 });
         let found = find_split(&sums(turned)).unwrap();
+        assert!(found.sure);
         assert_eq!(found.block, 10);
         assert!(found.from <= 10 && found.to >= 10 && found.to - found.from < 4);
     }

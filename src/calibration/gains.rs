@@ -75,6 +75,8 @@ pub(super) struct Fit<'a> {
     blocks: &'a Blocks,
     /// Of each station the weight of what is expected of a sensor beforehand, relative to its data.
     prior: Vec<f64>,
+    /// At first the prior lets go of nothing but gross faults, so that a station does not draw its neighbours along.
+    holds: bool,
     /// Outliers so far off that they count as spikes, station-major.
     far_off: Vec<bool>,
     /// Of each station the residuals' variance over what the model says, relative to the network's median.
@@ -110,6 +112,7 @@ impl<'a> Fit<'a> {
             around,
             blocks,
             prior: vec![0.0; n],
+            holds: true,
             far_off: vec![false; cells],
             stretches: Vec::new(),
             gains: vec![[C::new(1.0, 0.0); 2]; n],
@@ -125,6 +128,8 @@ impl<'a> Fit<'a> {
         fit.refresh_all();
         fit.start();
         fit.weigh_prior();
+        fit.solve();
+        fit.holds = false;
         for _ in 0..ROUNDS {
             fit.solve();
             fit.find_outliers();
@@ -169,7 +174,11 @@ impl<'a> Fit<'a> {
 
     /// Weight of the prior at a gain: that of a Cauchy distribution, which lets go of a gain that is far off.
     pub(super) fn prior_at(&self, s: usize, part: usize) -> f64 {
-        let off = (self.gains[s][part] - 1.0).norm() / SENSOR_SD;
+        let far = (self.gains[s][part] - 1.0).norm();
+        if self.holds && far < SOUND {
+            return self.prior[s];
+        }
+        let off = far / SENSOR_SD;
         self.prior[s] / (1.0 + off * off)
     }
 

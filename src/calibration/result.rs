@@ -17,6 +17,10 @@ type C = Complex<f64>;
 
 /// Rounds in which changes are looked for.
 const CHANGE_ROUNDS: usize = 3;
+/// Smallest change that counts: of the angle 4 degrees, of the logarithm 7 %; and in units of the median change that the
+/// best splits of all stations give.
+const LEAST_CHANGE: f64 = 0.07;
+const USUAL_CHANGES: f64 = 3.0;
 
 /// A gain with its errors.
 #[derive(Debug, Clone, Copy, PartialEq, Serialize)]
@@ -105,14 +109,21 @@ impl Calibration {
         let mut sums = block_sums(&fit, blocks);
         let mut found: Vec<Option<Split>> = vec![None; sums.len()];
         for _ in 0..CHANGE_ROUNDS {
-            let new: Vec<Option<Split>> = (0..sums.len())
-                .map(|s| {
-                    let split = find_split(&sums[s]);
-                    split.filter(|_| blocks.days && found[s].is_none())
+            let best: Vec<Option<Split>> = sums.iter().map(|of| find_split(of)).collect();
+            // Where many stations change it is the weather that has changed, and what the sites make of it.
+            let mut sizes: Vec<f64> = best.iter().flatten().map(|split| split.change).collect();
+            let usual = median(&mut sizes).unwrap_or(0.0);
+            let least = LEAST_CHANGE.max(USUAL_CHANGES * usual);
+            let is_change = |split: &Split| split.sure && split.change >= least;
+            let new: Vec<Option<Split>> = best
+                .iter()
+                .zip(&found)
+                .map(|(split, found)| {
+                    split.filter(|split| blocks.days && found.is_none() && is_change(split))
                 })
                 .collect();
             // A station that changes takes its neighbours' expectations along: the largest change of each goes first.
-            let size = |s: usize| new[s].map_or(0.0, |split| split.strength);
+            let size = |s: usize| new[s].map_or(0.0, |split| split.change);
             let mut any = false;
             for (s, split) in new.iter().enumerate() {
                 if split.is_some() && fit.leans_on(s).all(|other| size(other) <= size(s)) {
@@ -180,7 +191,7 @@ impl Calibration {
         let ends = record.times.first().zip(record.times.last());
         let interval = record.interval as f64 * 1e-6;
         Self {
-            tickets: tickets(&stations, settings, interval, declinations),
+            tickets: tickets(&stations, settings, blocks.days, interval, declinations),
             stations,
             period: ends.map(|(a, b)| [*a, *b]),
             blocks: blocks.count,

@@ -14,6 +14,8 @@ const EXCHANGED: f64 = 0.5;
 /// Stations that are compared pairwise, the worst first, and their least misfit.
 const MOST_COMPARED: usize = 60;
 const LEAST_MISFIT: f64 = 1.6;
+/// Fewer outliers are no pattern.
+const LEAST_SPIKES: usize = 4;
 
 /// Directions that run the wrong way round: wind = gain × conjugate of the field.
 #[derive(Debug, Clone, Copy, PartialEq, serde::Serialize)]
@@ -101,7 +103,7 @@ pub(super) fn exchanges(record: &Record, fit: &Fit, expected: &[Vec<Expected>]) 
     found
 }
 
-/// Share of the winds that stand alone outside: outliers whose neighbours in time are none.
+/// Share of the winds that stand alone outside: outliers whose neighbours in time are none; 0 if there are few.
 pub(super) fn spikes(fit: &Fit, record: &Record, s: usize) -> f64 {
     let n = fit.times();
     let there: Vec<bool> = (0..n)
@@ -109,5 +111,8 @@ pub(super) fn spikes(fit: &Fit, record: &Record, s: usize) -> f64 {
         .map(|t| fit.is_far_off(s, t))
         .collect();
     let alone = there.windows(3).filter(|w| !w[0] && w[1] && !w[2]).count();
+    if alone < LEAST_SPIKES {
+        return 0.0;
+    }
     alone as f64 / there.len().max(1) as f64
 }

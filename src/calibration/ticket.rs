@@ -22,7 +22,11 @@ const SPIKE_SHARE: f64 = 0.015;
 const UNEXPLAINED: f64 = 8.0;
 /// A lag must reduce what the correlation leaves unexplained to this share; at the edge of a network, where the others
 /// see the weather earlier or later, to the second.
-const LAG_LEAVES: [f64; 2] = [0.7, 0.5];
+const LAG_LEAVES: [f64; 2] = [0.6, 0.45];
+/// In a record of less than five days, which may be one storm that passes.
+const LAG_LEAVES_OF_STORM: f64 = 0.35;
+/// Correlation with the lag, at least.
+const LEAST_CORRELATION: f64 = 0.6;
 /// Smallest lag that is told, in steps of the analysis interval, and in standard errors.
 const LEAST_LAG: f64 = 1.5;
 const LAG_ERRORS: f64 = 4.0;
@@ -84,13 +88,14 @@ impl Ticket {
 pub(super) fn tickets(
     stations: &[StationCalibration],
     settings: &CalibrationSettings,
+    days: bool,
     interval: f64,
     declinations: &[Option<f64>],
 ) -> Vec<Ticket> {
     let mut all = Vec::new();
     for (s, station) in stations.iter().enumerate() {
         let declination = declinations.get(s).copied().flatten();
-        if let Some(ticket) = no_gain(s, station, settings, interval) {
+        if let Some(ticket) = no_gain(s, station, settings, days, interval) {
             all.push(ticket);
         } else {
             all.extend(gain_tickets(s, station, declination));
@@ -108,6 +113,7 @@ fn no_gain(
     s: usize,
     station: &StationCalibration,
     settings: &CalibrationSettings,
+    days: bool,
     interval: f64,
 ) -> Option<Ticket> {
     let tally = &station.tally;
@@ -169,7 +175,7 @@ fn no_gain(
     }
     if let Some(clock) = station
         .clock
-        .filter(|c| is_off(c, station.inside, interval))
+        .filter(|c| is_off(c, station.inside, days, interval))
     {
         let fault = cause_of_lag(clock.lag, clock.error, interval, settings.averaging);
         let evidence = format!(
@@ -202,10 +208,15 @@ fn no_gain(
     None
 }
 
-fn is_off(clock: &ClockLag, inside: bool, interval: f64) -> bool {
-    let leaves = LAG_LEAVES[usize::from(!inside)];
+fn is_off(clock: &ClockLag, inside: bool, days: bool, interval: f64) -> bool {
+    let leaves = if days {
+        LAG_LEAVES[usize::from(!inside)]
+    } else {
+        LAG_LEAVES_OF_STORM
+    };
     let left = |correlation: f64| 1.0 - correlation.max(0.0).powi(2);
     clock.lag.abs() >= LEAST_LAG * interval
+        && clock.with_lag >= LEAST_CORRELATION
         && clock.lag.abs() >= LAG_ERRORS * clock.error
         && left(clock.with_lag) <= leaves * left(clock.correlation)
 }
