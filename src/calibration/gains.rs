@@ -3,7 +3,7 @@
 use nalgebra::Complex;
 
 use super::record::{Record, median};
-use super::spread::{Blocks, block_sums, own_variance};
+use super::spread::{BlockSum, Blocks, block_sums, own_variance};
 use crate::align::{AlignedWind, Covariance, WindBlock};
 use crate::check::Flag;
 use crate::structure::{Predictor, StationWeights, StructureFunction};
@@ -30,13 +30,18 @@ const OUTLIER: f64 = 5.0;
 const UNTRUSTED: f64 = 4.0;
 const ROUNDS: usize = 6;
 /// Gains within this of 1, in logarithm and radians, are taken for 1 at first.
-const SOUND: f64 = 0.4;
+const SOUND: f64 = 0.3;
+/// Stations whose median wind a first gain is found against.
+const NEAR: usize = 8;
 /// Scale of the gains of sound sensors about 1: 3 %, or 1.7 degrees. It keeps what is common to many neighbours, which
 /// the data say little of, small.
 const SENSOR_SD: f64 = 0.03;
 /// Least weight of the prior. Days tell nothing of a pattern of the weather that lasts through the record, such as a wind that is
 /// always backed at one end of the network: without this it would be taken for turned vanes.
 const LEAST_PRIOR: f64 = 0.3;
+/// A gain that stands out differs from 1 by this, in logarithm and radians, and by this many of its own errors.
+const LEAST_OFF: f64 = 0.07;
+const OFF_ERRORS: f64 = 3.0;
 /// An outlier that is a spike, in robust standard deviations.
 const SPIKE: f64 = 8.0;
 /// A residual's median length in standard deviations of a component (Rayleigh): √(2 ln 2).
@@ -75,8 +80,8 @@ pub(super) struct Fit<'a> {
     blocks: &'a Blocks,
     /// Of each station the weight of what is expected of a sensor beforehand, relative to its data.
     prior: Vec<f64>,
-    /// At first the prior lets go of nothing but gross faults, so that a station does not draw its neighbours along.
-    holds: bool,
+    /// Stations whose gain is not held near 1.
+    stands_out: Vec<bool>,
     /// Outliers so far off that they count as spikes, station-major.
     far_off: Vec<bool>,
     /// Of each station the residuals' variance over what the model says, relative to the network's median.
@@ -112,7 +117,7 @@ impl<'a> Fit<'a> {
             around,
             blocks,
             prior: vec![0.0; n],
-            holds: true,
+            stands_out: vec![false; n],
             far_off: vec![false; cells],
             stretches: Vec::new(),
             gains: vec![[C::new(1.0, 0.0); 2]; n],
@@ -128,13 +133,16 @@ impl<'a> Fit<'a> {
         fit.refresh_all();
         fit.start();
         fit.weigh_prior();
-        fit.solve();
-        fit.holds = false;
         for _ in 0..ROUNDS {
             fit.solve();
             fit.find_outliers();
             fit.weigh_prior();
-            fit.solve();
+            for _ in 0..ROUNDS {
+                fit.solve();
+                if !fit.release() {
+                    break;
+                }
+            }
             if !fit.distrust_worst() {
                 break;
             }
@@ -172,14 +180,50 @@ impl<'a> Fit<'a> {
             .collect();
     }
 
-    /// Weight of the prior at a gain: that of a Cauchy distribution, which lets go of a gain that is far off.
-    pub(super) fn prior_at(&self, s: usize, part: usize) -> f64 {
-        let far = (self.gains[s][part] - 1.0).norm();
-        if self.holds && far < SOUND {
-            return self.prior[s];
+    /// Weight of the prior: none for a station that stands out.
+    pub(super) fn prior_of(&self, s: usize) -> f64 {
+        if self.stands_out[s] {
+            0.0
+        } else {
+            self.prior[s]
         }
-        let off = far / SENSOR_SD;
-        self.prior[s] / (1.0 + off * off)
+    }
+
+    /// Lets go of the stations whose reports stand out most against their neighbours. True if there was one.
+    ///
+    /// A fault is that of one station, weather that of many: so the others are held near 1, and a pattern that many share
+    /// does not become a gain.
+    fn release(&mut self) -> bool {
+        let sums = block_sums(self, self.blocks);
+        let off: Vec<f64> = (0..sums.len())
+            .map(|s| {
+                let mut total = BlockSum::default();
+                for sum in &sums[s] {
+                    total.add(sum);
+                }
+                let raw = self.gains[s][1] * total.top / total.bottom;
+                let error = own_variance(&sums[s]).unwrap_or(f64::INFINITY).sqrt();
+                let far = if total.bottom > 0.0 && is_sane(raw) {
+                    raw.ln().norm()
+                } else {
+                    0.0
+                };
+                if self.stands_out[s] || far < LEAST_OFF.max(OFF_ERRORS * error) {
+                    0.0
+                } else {
+                    far
+                }
+            })
+            .collect();
+        let mut any = false;
+        for s in 0..off.len() {
+            let worse = self.leans_on(s).any(|other| off[other] > off[s]);
+            if off[s] > 0.0 && !worse {
+                self.stands_out[s] = true;
+                any = true;
+            }
+        }
+        any
     }
 
     /// Weights of the predictions in each stretch.
@@ -321,7 +365,7 @@ impl<'a> Fit<'a> {
         found
     }
 
-    /// First gains: against the median wind of the stations that predict.
+    /// First gains: against the median wind of the stations that weigh most in the prediction.
     fn start(&mut self) {
         let n = self.times();
         let mut first = Vec::with_capacity(self.gains.len());
@@ -331,11 +375,18 @@ impl<'a> Fit<'a> {
                 let Some(weights) = &stretch.weights[s] else {
                     continue;
                 };
+                let mut near: Vec<(usize, f64)> = weights
+                    .others
+                    .iter()
+                    .map(|&(other, w)| (other, 0.5 * (w[0] + w[3])))
+                    .collect();
+                near.sort_by(|a, b| b.1.total_cmp(&a.1));
+                near.truncate(NEAR);
                 for t in stretch.times.clone() {
                     let Some(wind) = self.record.wind(s, t) else {
                         continue;
                     };
-                    let others = weights.others.iter().map(|o| o.0 * n + t);
+                    let others = near.iter().map(|o| o.0 * n + t);
                     let there: Vec<usize> = others.filter(|&c| self.used[c] > 0.0).collect();
                     let mut u: Vec<f64> = there.iter().map(|&c| self.z[c].re).collect();
                     let mut v: Vec<f64> = there.iter().map(|&c| self.z[c].im).collect();
@@ -350,6 +401,7 @@ impl<'a> Fit<'a> {
             let gain = top / bottom;
             // A small difference is the weather's until it proves to be the sensor's.
             let sound = !is_sane(gain) || gain.ln().norm() < SOUND;
+            self.stands_out[s] = !sound;
             first.push(if sound { C::new(1.0, 0.0) } else { gain });
         }
         for (gain, first) in self.gains.iter_mut().zip(first) {
@@ -376,7 +428,7 @@ impl<'a> Fit<'a> {
                     sums[part].1 += e.weight * (e.field.norm_sqr() - e.excess);
                 }
                 for (part, (top, bottom)) in sums.into_iter().enumerate() {
-                    let prior = self.prior_at(s, part) * bottom;
+                    let prior = self.prior_of(s) * bottom;
                     let fitted = (top + prior) / (bottom + prior);
                     if bottom <= 0.0 || !is_sane(fitted) {
                         continue;

@@ -142,7 +142,7 @@ pub(super) fn gain_errors(
     let stations = fit.gains.len();
     let scores: Vec<Vec<C>> = sums.iter().map(|of| station_scores(of, of)).collect();
     let coupling: Vec<Vec<(usize, C)>> = (0..stations).map(|s| fit.coupling(s)).collect();
-    let prior: Vec<f64> = (0..stations).map(|s| fit.prior_at(s, 1)).collect();
+    let prior: Vec<f64> = (0..stations).map(|s| fit.prior_of(s)).collect();
     let influence = solve(&scores, &coupling, &prior, blocks.count);
     let split_block = |s: usize| fit.splits[s].and_then(|t| blocks.of.get(t).copied());
     // Of each station and part: variance of angle and of log, blocks in it.
