@@ -62,6 +62,7 @@
 //! rules, local codes and licensed practice. Its errors do not yet hold the wind between the stations.
 
 pub mod align;
+pub mod calibration;
 pub mod check;
 pub mod cli;
 pub mod error;

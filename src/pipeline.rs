@@ -1,5 +1,6 @@
 //! Joins the stages: settings and stations, reports, checks, alignment, estimates.
 
+mod calibrate;
 mod estimation;
 mod reading;
 mod run;
@@ -14,6 +15,7 @@ use crate::settings::{Overrides, Settings, read_settings};
 use crate::station::{Network, Period, Position, doubts, read_catalogue};
 use crate::warning::Warning;
 
+pub use calibrate::{CalibrationOutcome, calibrate};
 pub use reading::Reading;
 pub use run::{Outcome, StructureReport, run};
 pub use windows::{Window, Windows};

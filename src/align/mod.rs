@@ -19,6 +19,7 @@ use self::marks::Marks;
 use crate::check::Flag;
 use crate::report::{Content, ReportTable};
 use crate::settings::{AlignMethod, Analysis, SensorErrors};
+use crate::station::Correction;
 use crate::tally::Reason;
 use crate::time::{Time, micros_of};
 use crate::units::Wind;
@@ -94,6 +95,25 @@ impl WindBlock {
         self.age[cell] = value.age;
     }
 
+    /// Turns and scales the winds of a station and their covariances.
+    fn correct(&mut self, station: usize, correction: &Correction) {
+        let n = self.times.len();
+        let unit = |u, v| correction.apply(Wind { u, v });
+        let (east, north) = (unit(1.0, 0.0), unit(0.0, 1.0));
+        for t in (0..n).filter(|&t| correction.holds_at(self.times[t])) {
+            let cell = station * n + t;
+            let wind = unit(self.u[cell], self.v[cell]);
+            (self.u[cell], self.v[cell]) = (wind.u, wind.v);
+            let (uu, uv, vv) = (self.var_u[cell], self.cov_uv[cell], self.var_v[cell]);
+            let entry =
+                |[a, b]: [f64; 2], [c, d]: [f64; 2]| a * c * uu + (a * d + b * c) * uv + b * d * vv;
+            let (u, v) = ([east.u, north.u], [east.v, north.v]);
+            self.var_u[cell] = entry(u, u);
+            self.cov_uv[cell] = entry(u, v);
+            self.var_v[cell] = entry(v, v);
+        }
+    }
+
     /// For each station how many values it has.
     #[must_use]
     pub fn values(&self) -> Vec<u64> {
@@ -147,6 +167,7 @@ pub struct Aligner<'a> {
     variances: Vec<SensorVariances>,
     /// For each report whether a value came of it.
     used: Marks,
+    corrections: Vec<Option<Correction>>,
 }
 
 /// The usable reports of a station.
@@ -224,9 +245,17 @@ impl<'a> Aligner<'a> {
             grid: TimeGrid::new(analysis, runs.concat()),
             variances: sensors.errors.iter().map(SensorVariances::of).collect(),
             used: Marks::new(table.len()),
+            corrections: Vec::new(),
             usable,
             table,
         }
+    }
+
+    /// Corrects the winds of stations whose reports are known to be off; nothing for a station without an entry.
+    #[must_use]
+    pub fn with_corrections(mut self, corrections: Vec<Option<Correction>>) -> Self {
+        self.corrections = corrections;
+        self
     }
 
     /// The analysis times.
@@ -254,6 +283,9 @@ impl<'a> Aligner<'a> {
                     let least = least_reports as usize;
                     self.vector_mean(station, micros_of(window), least, &mut block);
                 }
+            }
+            if let Some(Some(correction)) = self.corrections.get(station) {
+                block.correct(station, correction);
             }
         }
         block

@@ -42,7 +42,30 @@ pub enum Command {
     /// Estimate area-mean vorticity and divergence from the reports (the main job)
     #[command(after_help = ESTIMATE_HELP)]
     Estimate(EstimateArgs),
+    /// Find vanes that are turned, speeds mis-scaled, clocks off and data mixed up, from the network itself
+    #[command(after_help = CALIBRATE_HELP)]
+    Calibrate(CalibrateArgs),
 }
+
+const CALIBRATE_HELP: &str = "\
+Reads:   settings, station list, report files: a day at least, better some weeks.
+Prints:  a list of what is wrong: station, cause, size and standard error, since when, evidence, what to check on site, \
+and what leaving it adds to the error of the polygons around.
+Writes:  with --out: maintenance.csv (the list) and calibration.csv (turn, factor and clock of every station); with \
+--apply: a station list with corrections and their origin. Nothing is corrected unless the settings read that list, and \
+then every command says so.
+
+Turn: reported minus true direction, degrees clockwise. Factor: reported over true speed. Both are relative to the \
+network's median: a network that is turned or scaled as a whole cannot be told from another wind. With fewer than five \
+days the errors are less sure.
+
+Settings:
+  [calibration]  exclude_sectors     sectors of direction left out, degrees, such as [[120, 160]] (wakes, lee)
+                 exclude_sectors_of  the same by station: { T01 = [[200, 230]] }
+
+Example: gyremesh calibrate networks/ostrin/network.toml --out out/ostrin
+
+These are estimates, not warnings: follow the national weather service, site safety rules and local codes.";
 
 const CHECK_HELP: &str = "\
 Reads:   settings, station list, report files.
@@ -82,7 +105,8 @@ Settings file (defaults in brackets):
   [stations]  file            table with a header line, or GeoJSON points; gzip and Zstandard are recognised
               columns         id, latitude, longitude [of these names], name, elevation, aliases (one or a list),
                               valid_from, valid_to (RFC 3339 or YYYY-MM-DD), speed_unit, north, declination (degrees),
-                              sensor_height, roughness (m) [none]
+                              sensor_height, roughness (m), direction_correction (degrees, added), speed_factor \
+(multiplied), correction_from, correction_origin (all of `calibrate --apply`) [none]
               elevation_unit  m, km or ft [m]
               only            list of identifiers [all]
               first_of_each   true for a table of reports: the first row of each station with a position [false]
@@ -163,6 +187,41 @@ pub struct CheckArgs {
     /// Threads [default: all processors]
     #[arg(long, value_name = "N")]
     pub threads: Option<usize>,
+}
+
+/// Options of `calibrate`.
+#[derive(Debug, ClapArgs)]
+pub struct CalibrateArgs {
+    /// Settings file
+    pub network: PathBuf,
+    /// Write maintenance.csv and calibration.csv into this folder
+    #[arg(long, value_name = "DIR")]
+    pub out: Option<PathBuf>,
+    /// Write a station list with the corrections and their origin
+    #[arg(long, value_name = "FILE")]
+    pub apply: Option<PathBuf>,
+    /// Print JSON
+    #[arg(long)]
+    pub json: bool,
+    /// Report files in place of those of the settings, in the format of the first group of the settings
+    #[arg(long, value_name = "FILE", num_args = 1..)]
+    pub reports: Vec<PathBuf>,
+    /// First time used, RFC 3339
+    #[arg(long, value_name = "TIME", value_parser = Time::parse_rfc3339)]
+    pub from: Option<Time>,
+    /// Last time used, RFC 3339
+    #[arg(long, value_name = "TIME", value_parser = Time::parse_rfc3339)]
+    pub to: Option<Time>,
+    /// Threads; the results do not depend on it [default: all processors]
+    #[arg(long, value_name = "N")]
+    pub threads: Option<usize>,
+    /// Keep the reports, once read, in this file, and take them from it as long as neither they nor the settings change
+    #[arg(long, value_name = "FILE")]
+    pub cache: Option<PathBuf>,
+    /// Memory that reports may take which are not in the order of time, such as 500MiB; the rest is sorted on disk
+    /// [default: 1GiB]
+    #[arg(long, value_name = "SIZE", value_parser = units::parse_memory)]
+    pub memory: Option<usize>,
 }
 
 /// Options of `polygons`.
@@ -306,6 +365,19 @@ impl From<&CheckArgs> for Overrides {
             memory: args.memory,
             cache: args.cache.clone(),
             no_screen: args.no_screen,
+            ..Self::default()
+        }
+    }
+}
+
+impl From<&CalibrateArgs> for Overrides {
+    fn from(args: &CalibrateArgs) -> Self {
+        Self {
+            reports: args.reports.clone(),
+            from: args.from,
+            to: args.to,
+            memory: args.memory,
+            cache: args.cache.clone(),
             ..Self::default()
         }
     }

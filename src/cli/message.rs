@@ -109,6 +109,7 @@ pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
             period.times
         );
     }
+    corrections_text(&mut out, setup);
     let reporting = outcome.values.iter().filter(|&&n| n > 0).count();
     let _ = writeln!(
         out,
@@ -227,6 +228,20 @@ fn peak_text(setup: &Setup, peak: Option<Peak>) -> String {
         longitude.abs(),
         if longitude < 0.0 { "W" } else { "E" },
     )
+}
+
+/// Says which corrections of the station list are used, all of them.
+pub(super) fn corrections_text(out: &mut String, setup: &Setup) {
+    for station in setup.network.stations() {
+        if let Some(correction) = &station.correction {
+            let _ = writeln!(
+                out,
+                "Corrected   {} {}",
+                cut(&station.id, 12),
+                cut(&correction.words(), WIDTH - 25)
+            );
+        }
+    }
 }
 
 /// Names the stations with the fewest values, if any is incomplete.

@@ -1,6 +1,7 @@
 //! The command line: one function for each command, no physics.
 
 pub mod args;
+mod calibration;
 mod expect;
 mod message;
 mod reading;
@@ -12,14 +13,15 @@ use std::path::{Path, PathBuf};
 use clap::Parser;
 use indicatif::{ProgressBar, ProgressStyle};
 
-use self::args::{Args, CheckArgs, Command, EstimateArgs, Format, PolygonsArgs};
+use self::args::{Args, CalibrateArgs, CheckArgs, Command, EstimateArgs, Format, PolygonsArgs};
 use self::expect::Expectation;
 use crate::error::{Error, ErrorKind, nearest_name};
 use crate::output::{
-    FlaggedRows, Formats, OutputSet, mesh_csv, mesh_geojson, reading_json, series, stations_csv,
-    structure_csv, summary_csv, summary_json,
+    FlaggedRows, Formats, OutputSet, calibration_csv, calibration_json, corrected_list,
+    corrected_list_section, corrections_of, maintenance_csv, mesh_csv, mesh_geojson, reading_json,
+    series, stations_csv, structure_csv, summary_csv, summary_json,
 };
-use crate::pipeline::{self, Reading, Setup, Sources};
+use crate::pipeline::{self, CalibrationOutcome, Reading, Setup, Sources};
 use crate::report::InputOrder;
 use crate::settings::Overrides;
 use crate::station::Network;
@@ -56,6 +58,7 @@ pub fn main() -> Status {
         Command::Check(args) => check(args),
         Command::Polygons(args) => polygons(args),
         Command::Estimate(args) => estimate(args),
+        Command::Calibrate(args) => calibrate(args),
     };
     match result {
         Ok(status) => status,
@@ -249,6 +252,71 @@ fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
     } else {
         Status::SomeInputUnusable
     })
+}
+
+fn calibrate(args: &CalibrateArgs) -> Result<Status, Error> {
+    use_threads(args.threads);
+    let mut setup = Setup::read(&args.network, &Overrides::from(args))?;
+    // The wind-field model is what stations are judged by.
+    setup.settings.errors.complete = true;
+    let bar = progress_bar(args.json);
+    let run = |order| pipeline::calibrate(&setup, order, |rows| bar.set_position(rows));
+    let result = match run(InputOrder::first_try(&setup.settings.reports)) {
+        Err(error) if error.kind() == ErrorKind::Order => run(InputOrder::Any),
+        result => result,
+    };
+    bar.finish_and_clear();
+    let outcome = result?;
+    if let Some(folder) = &args.out {
+        let mut set = OutputSet::new(folder)?;
+        let maintenance = maintenance_csv(&setup, &outcome);
+        set.put("maintenance.csv", maintenance.as_bytes())?;
+        let calibration = calibration_csv(&setup, &outcome);
+        set.put("calibration.csv", calibration.as_bytes())?;
+        set.commit()?;
+    }
+    for warning in &outcome.warnings {
+        message::say("warning", &warning.to_string());
+    }
+    for failure in &outcome.reading.failures {
+        message::say("warning", &failure.to_string());
+    }
+    print(&if args.json {
+        calibration_json(&setup, &outcome)
+    } else {
+        calibration::calibration_text(&setup, &outcome)
+    })?;
+    if let Some(file) = &args.apply {
+        apply(file, &setup, &outcome)?;
+    }
+    Ok(if outcome.reading.is_complete() {
+        Status::Complete
+    } else {
+        Status::SomeInputUnusable
+    })
+}
+
+/// Writes the station list with the corrections, and says how to use it.
+fn apply(file: &Path, setup: &Setup, outcome: &CalibrationOutcome) -> Result<(), Error> {
+    let corrections = corrections_of(setup, outcome);
+    let folder = match file.parent() {
+        Some(folder) if !folder.as_os_str().is_empty() => folder,
+        _ => Path::new("."),
+    };
+    let name = file.file_name().unwrap_or_default().to_string_lossy();
+    let mut set = OutputSet::new(folder)?;
+    set.put(&name, corrected_list(setup, &corrections).as_bytes())?;
+    set.commit()?;
+    let corrected = corrections.iter().flatten().count();
+    message::say(
+        "note",
+        &format!(
+            "{} corrects {corrected} stations; `estimate` uses it when the settings read it:\n\n{}",
+            file.display(),
+            corrected_list_section(&name)
+        ),
+    );
+    Ok(())
 }
 
 /// `out/NAME`, NAME being the folder of the settings file.

@@ -163,7 +163,7 @@ pub(super) fn number(value: f64) -> String {
     Buffer::new().format(value).to_string()
 }
 
-fn optional(value: Option<f64>) -> String {
+pub(super) fn optional(value: Option<f64>) -> String {
     value.map_or_else(String::new, number)
 }
 

@@ -1,5 +1,6 @@
 //! Writes results. Nothing here computes.
 
+mod calibration;
 mod csv;
 mod file;
 mod fits;
@@ -14,6 +15,10 @@ mod summary;
 #[cfg(feature = "parquet")]
 mod template;
 
+pub use calibration::{
+    GAUGE, calibration_csv, calibration_json, corrected_list, corrected_list_section,
+    corrections_of, maintenance_csv, what,
+};
 pub(crate) use csv::quoted;
 pub use csv::{PolygonRows, mesh_csv, stations_csv, summary_csv};
 pub use file::OutputSet;

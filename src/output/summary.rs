@@ -91,6 +91,16 @@ pub fn summary_json(setup: &Setup, outcome: &Outcome) -> String {
             "cyclonic_vorticity": peak(setup, extremes.cyclonic),
             "anticyclonic_vorticity": peak(setup, extremes.anticyclonic),
         },
+        "corrections": setup.network.stations().iter().filter_map(|s| {
+            let c = s.correction.as_ref()?;
+            Some(json!({
+                "station": s.id,
+                "direction": c.direction,
+                "speed_factor": c.speed_factor,
+                "from": c.from.map(|t| t.to_string()),
+                "origin": c.origin,
+            }))
+        }).collect::<Vec<Value>>(),
         "warnings": warnings,
         "units": {
             "vorticity": "s-1", "divergence": "s-1", "speed": "m s-1", "area_km2": "km2", "time": "RFC 3339 UTC",

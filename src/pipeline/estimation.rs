@@ -12,7 +12,7 @@ use crate::integral::{
 };
 use crate::report::{Rounding, SpeedStep};
 use crate::settings::{ErrorSettings, SensorErrors};
-use crate::station::{Network, Position, Station};
+use crate::station::{Correction, Network, Position, Station};
 use crate::structure::{
     BlockSums, NetworkGeometry, StructureFunction, StructureWindow, typical_spacing,
 };
@@ -73,7 +73,8 @@ impl<'a> Estimation<'a> {
         self.any_moving |= table.has_moving();
         self.sensors.errors = sensor_errors(&setup.settings.sensor, &window.rounding);
         let analysis = &setup.settings.analysis;
-        let aligner = Aligner::new(table, analysis, &self.sensors, window.multiples.clone());
+        let aligner = Aligner::new(table, analysis, &self.sensors, window.multiples.clone())
+            .with_corrections(corrections(setup));
         let handed_on = (0..stations).flat_map(|s| table.carried(s));
         let used = handed_on.zip(&self.carried).filter(|&(_, &used)| used);
         aligner.mark_used(used.map(|(i, _)| i));
@@ -184,7 +185,7 @@ struct Model {
 const DAY: i64 = 86_400_000_000;
 
 impl StructureState {
-    fn new(setup: &Setup) -> Self {
+    pub(super) fn new(setup: &Setup) -> Self {
         let settings = setup.settings.errors;
         let network = &setup.network;
         let spacing = setup.median_edge().or_else(|| typical_spacing(network));
@@ -217,7 +218,7 @@ impl StructureState {
     }
 
     /// Takes in the winds of a window; for each block the structure function at each of its times.
-    fn advance(&mut self, winds: &[WindBlock]) -> Vec<Vec<StructureFunction>> {
+    pub(super) fn advance(&mut self, winds: &[WindBlock]) -> Vec<Vec<StructureFunction>> {
         let Some(model) = &mut self.model else {
             return winds.iter().map(|_| Vec::new()).collect();
         };
@@ -266,7 +267,7 @@ impl StructureState {
             .collect()
     }
 
-    fn keep_last(&mut self, winds: Vec<WindBlock>) {
+    pub(super) fn keep_last(&mut self, winds: Vec<WindBlock>) {
         if let Some(last) = winds.into_iter().next_back() {
             self.last_block = Some(last);
         }
@@ -343,12 +344,18 @@ impl Model {
     }
 }
 
+/// What the station list corrects the reports by.
+pub(super) fn corrections(setup: &Setup) -> Vec<Option<Correction>> {
+    let stations = setup.network.stations().iter();
+    stations.map(|s| s.correction.clone()).collect()
+}
+
 fn day_of(time: Time) -> i64 {
     time.micros().div_euclid(DAY)
 }
 
 /// Errors of each station's sensor: as stated, with the steps that were found in its reports.
-fn sensor_errors(stated: &SensorErrors, rounding: &[Rounding]) -> Vec<SensorErrors> {
+pub(super) fn sensor_errors(stated: &SensorErrors, rounding: &[Rounding]) -> Vec<SensorErrors> {
     rounding
         .iter()
         .map(|found| SensorErrors {
@@ -362,7 +369,7 @@ fn sensor_errors(stated: &SensorErrors, rounding: &[Rounding]) -> Vec<SensorErro
 }
 
 /// Height factors of the stations; those whose speeds cannot be reduced are named.
-fn height_factors(setup: &Setup) -> (Vec<Option<f64>>, Vec<Warning>) {
+pub(super) fn height_factors(setup: &Setup) -> (Vec<Option<f64>>, Vec<Warning>) {
     let mut warnings = Vec::new();
     let factor = |station: &Station| {
         let Some(reduction) = setup.settings.analysis.height else {

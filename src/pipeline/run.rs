@@ -153,7 +153,7 @@ fn never_reported(setup: &Setup, values: &[u64]) -> Vec<Warning> {
 }
 
 /// Reports on levels need a level to be asked for.
-fn levels_agree(table: &ReportTable, settings: &Settings) -> Result<(), Error> {
+pub(super) fn levels_agree(table: &ReportTable, settings: &Settings) -> Result<(), Error> {
     if settings.analysis.level.is_some() || !table.has_moving() {
         return Ok(());
     }
@@ -179,7 +179,7 @@ fn doubtful_fits(setup: &Setup, fits: &FitBooks) -> Vec<Warning> {
 }
 
 /// Why there is nothing to estimate from, in the words of what was read.
-fn no_usable_report(reading: &mut Reading) -> Error {
+pub(super) fn no_usable_report(reading: &mut Reading) -> Error {
     if reading.rows.received == 0 && reading.failures.len() == 1 {
         return reading.failures.remove(0);
     }

@@ -4,6 +4,7 @@
 //! are listed at once, each with its line; an unknown key is a defect.
 
 mod analysis;
+mod calibration;
 mod check;
 mod check_keys;
 mod errors;
@@ -12,6 +13,7 @@ mod read;
 mod reports;
 mod section;
 
+use std::collections::BTreeMap;
 use std::path::PathBuf;
 use std::time::Duration;
 
@@ -45,6 +47,8 @@ pub struct Settings {
     pub analysis: Analysis,
     /// What the errors hold.
     pub errors: ErrorSettings,
+    /// What the calibration leaves out.
+    pub calibration: CalibrationChoice,
     /// Limits of the tests of the reports.
     pub check: CheckLimits,
     /// Which polygons are built.
@@ -123,6 +127,16 @@ impl Default for ErrorSettings {
             structure: StructureSettings::default(),
         }
     }
+}
+
+/// What the calibration leaves out: sectors of wind direction, degrees, from and to clockwise, in which a station stands
+/// in the wake of a turbine or in the lee of something else.
+#[derive(Debug, Clone, Default, PartialEq, serde::Serialize)]
+pub struct CalibrationChoice {
+    /// At all stations.
+    pub sectors: Vec<[f64; 2]>,
+    /// By station.
+    pub station_sectors: BTreeMap<String, Vec<[f64; 2]>>,
 }
 
 /// How reports become winds at analysis times.

@@ -4,6 +4,7 @@ use std::path::{Path, PathBuf};
 use std::time::Duration;
 
 use super::analysis::analysis;
+use super::calibration::calibration;
 use super::check_keys::check;
 use super::errors::errors;
 use super::path::expand_path;
@@ -87,6 +88,7 @@ fn parse_settings(
         reports: reports(&mut root, base, &overrides.reports),
         analysis: analysis(root.section("analysis"), overrides),
         errors: errors(root.section("errors"), overrides),
+        calibration: calibration(root.section("calibration")),
         check: check(root.section("check"), sensor.calm_below),
         sensor,
         limits: limits(root.section("limits"), overrides),
@@ -135,6 +137,10 @@ fn catalogue(section: &mut Section) -> Catalogue {
         declination: text(&mut columns, "declination"),
         sensor_height: text(&mut columns, "sensor_height"),
         roughness: text(&mut columns, "roughness"),
+        direction_correction: text(&mut columns, "direction_correction"),
+        speed_factor: text(&mut columns, "speed_factor"),
+        correction_from: text(&mut columns, "correction_from"),
+        correction_origin: text(&mut columns, "correction_origin"),
     };
     columns.finish();
     let elevation_unit = section.parsed("elevation_unit", |unit| {

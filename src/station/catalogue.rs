@@ -41,6 +41,18 @@ pub struct StationColumns {
     pub sensor_height: Option<String>,
     /// Roughness length of the surroundings, m.
     pub roughness: Option<String>,
+    /// Degrees that are added to reported directions.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub direction_correction: Option<String>,
+    /// Factor that reported speeds are multiplied with.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub speed_factor: Option<String>,
+    /// From when on both hold: RFC 3339, or a date for 00:00 UTC.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub correction_from: Option<String>,
+    /// Where both come from, in words.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub correction_origin: Option<String>,
 }
 
 impl Default for StationColumns {
@@ -59,6 +71,10 @@ impl Default for StationColumns {
             declination: None,
             sensor_height: None,
             roughness: None,
+            direction_correction: None,
+            speed_factor: None,
+            correction_from: None,
+            correction_origin: None,
         }
     }
 }

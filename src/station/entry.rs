@@ -5,7 +5,7 @@ use std::fmt;
 
 use chrono::{NaiveDate, NaiveTime};
 
-use super::{Catalogue, Position, Site, Station, StationColumns};
+use super::{Catalogue, Correction, Position, Site, Station, StationColumns};
 use crate::error::{Place, Problem};
 use crate::input::{MissingMarks, parse_number, parse_number_with_comma, shown};
 use crate::time::Time;
@@ -26,6 +26,10 @@ pub(super) enum Field {
     Declination,
     SensorHeight,
     Roughness,
+    DirectionCorrection,
+    SpeedFactor,
+    CorrectionFrom,
+    CorrectionOrigin,
     /// One of the columns of aliases.
     Alias(usize),
 }
@@ -46,6 +50,10 @@ impl StationColumns {
             Field::Declination => self.declination.as_deref(),
             Field::SensorHeight => self.sensor_height.as_deref(),
             Field::Roughness => self.roughness.as_deref(),
+            Field::DirectionCorrection => self.direction_correction.as_deref(),
+            Field::SpeedFactor => self.speed_factor.as_deref(),
+            Field::CorrectionFrom => self.correction_from.as_deref(),
+            Field::CorrectionOrigin => self.correction_origin.as_deref(),
             Field::Alias(k) => self.aliases.get(k).map(String::as_str),
         }
     }
@@ -65,6 +73,10 @@ impl StationColumns {
             Field::Declination,
             Field::SensorHeight,
             Field::Roughness,
+            Field::DirectionCorrection,
+            Field::SpeedFactor,
+            Field::CorrectionFrom,
+            Field::CorrectionOrigin,
         ];
         let fields = single
             .into_iter()
@@ -193,6 +205,7 @@ impl<'a> EntryReader<'a> {
         };
         let elevation = self.number(at, Field::Elevation, texts);
         let site = self.site(at, texts);
+        let correction = self.correction(at, texts);
         let valid_from = self.parsed(at, Field::ValidFrom, texts, parse_day_or_time);
         let valid_to = self.parsed(at, Field::ValidTo, texts, parse_day_or_time);
         if let (Some(from), Some(to)) = (valid_from, valid_to)
@@ -214,6 +227,7 @@ impl<'a> EntryReader<'a> {
             valid_from,
             valid_to,
             site,
+            correction,
             ..Station::new(id, position?)
         })
     }
@@ -233,6 +247,27 @@ impl<'a> EntryReader<'a> {
             sensor_height: self.positive(at, Field::SensorHeight, texts),
             roughness: self.positive(at, Field::Roughness, texts),
         }
+    }
+
+    /// What the reports are corrected by, if the list says anything of it.
+    fn correction(&mut self, at: Whence, texts: &Texts) -> Option<Correction> {
+        let direction = self.number(at, Field::DirectionCorrection, texts);
+        if let Some(degrees) = direction.filter(|d| !(-360.0..=360.0).contains(d)) {
+            let message = format!("{degrees} is out of range (-360 to 360 degrees expected)");
+            self.problem(at, Field::DirectionCorrection, message);
+        }
+        let speed_factor = self.number(at, Field::SpeedFactor, texts);
+        if let Some(factor) = speed_factor.filter(|f| !(1e-3..=1e3).contains(f)) {
+            let message = format!("{factor} is out of range (0.001 to 1000 expected)");
+            self.problem(at, Field::SpeedFactor, message);
+        }
+        let correction = Correction {
+            direction: direction.unwrap_or(0.0),
+            speed_factor: speed_factor.unwrap_or(1.0),
+            from: self.parsed(at, Field::CorrectionFrom, texts, parse_day_or_time),
+            origin: texts(Field::CorrectionOrigin).into_owned(),
+        };
+        correction.is_some().then_some(correction)
     }
 
     fn positive(&mut self, at: Whence, field: Field, texts: &Texts) -> Option<f64> {

@@ -1,6 +1,7 @@
 //! Stations and the network they make.
 
 mod catalogue;
+mod correction;
 mod declination;
 mod doubts;
 mod entry;
@@ -18,6 +19,7 @@ use crate::warning::Warning;
 
 pub(crate) use catalogue::missing_column;
 pub use catalogue::{Catalogue, StationColumns, read_catalogue};
+pub use correction::Correction;
 pub use declination::Declinations;
 pub use doubts::{PositionSlip, doubts};
 pub use list::{Period, StationList};
@@ -99,6 +101,8 @@ pub struct Station {
     pub valid_to: Option<Time>,
     /// Sensor and site.
     pub site: Site,
+    /// What its reports are corrected by.
+    pub correction: Option<Correction>,
 }
 
 impl Station {
@@ -115,6 +119,7 @@ impl Station {
             valid_from: None,
             valid_to: None,
             site: Site::default(),
+            correction: None,
         }
     }
 }

@@ -83,6 +83,7 @@ mod plane;
 mod predict;
 mod shape;
 mod sums;
+mod weights;
 mod window;
 
 pub use function::{Exponent, StructureFunction, StructureSettings, TemporalFunction};
@@ -91,4 +92,5 @@ pub use neighbours::typical_spacing;
 pub use plane::{LocalPlane, PlanePoint};
 pub use predict::{Prediction, Predictor};
 pub use sums::{BlockSums, LAGS, LagSum, PairSum, PlaneSum, StructureSums};
+pub use weights::StationWeights;
 pub use window::{StructureRow, StructureWindow};

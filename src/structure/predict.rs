@@ -45,15 +45,15 @@ impl Prediction {
 /// Groups of stations that are predicted together.
 #[derive(Debug, Clone)]
 pub struct Predictor {
-    groups: Vec<Group>,
+    pub(super) groups: Vec<Group>,
 }
 
 #[derive(Debug, Clone)]
-struct Group {
+pub(super) struct Group {
     /// Stations and their places in the plane of the group, m.
-    stations: Vec<(usize, PlanePoint)>,
+    pub(super) stations: Vec<(usize, PlanePoint)>,
     /// The first of them are predicted here.
-    predicted: usize,
+    pub(super) predicted: usize,
 }
 
 impl Predictor {
@@ -137,7 +137,7 @@ impl Group {
         if predicted == 0 || present.len() < 2 {
             return;
         }
-        let (k, y) = covariance(structure, winds, t, &present);
+        let (k, y, _) = covariance(structure, winds, t, &present);
         let Some(cholesky) = k.cholesky() else {
             return;
         };
@@ -164,13 +164,13 @@ impl Group {
     }
 }
 
-/// Covariance of the winds in the axes of the plane, and the winds.
-fn covariance(
+/// Covariance of the winds in the axes of the plane, the winds, and the variance of the unknown mean wind in it.
+pub(super) fn covariance(
     structure: &StructureFunction,
     winds: &WindBlock,
     t: usize,
     present: &[&(usize, PlanePoint)],
-) -> (DMatrix<f64>, DVector<f64>) {
+) -> (DMatrix<f64>, DVector<f64>, f64) {
     let size = 2 * present.len();
     let mut k = DMatrix::zeros(size, size);
     let mut y = DVector::zeros(size);
@@ -228,7 +228,7 @@ fn covariance(
         // Two sensors without error in one place would make the matrix singular.
         k[(i, i)] += 1e-9 * largest;
     }
-    (k, y)
+    (k, y, VAGUE * largest)
 }
 
 /// A covariance in the axes of the plane: xx, xy, yy.

@@ -2,6 +2,7 @@
 #![allow(dead_code, reason = "each test uses a part of it")]
 #![allow(clippy::unwrap_used, clippy::panic, reason = "tests may panic")]
 
+pub mod faults;
 pub mod hard;
 pub mod turbulence;
 

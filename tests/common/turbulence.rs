@@ -147,6 +147,66 @@ impl Field {
     }
 }
 
+impl Field {
+    /// Winds at the places at `steps` times `dt` s apart: the waves are carried by the mean wind of each time, and each
+    /// loses its phase in the time that its own wind takes across it. By place, then time; the mean wind is added.
+    pub fn series(
+        &self,
+        places: &[(f64, f64)],
+        mean: &[(f64, f64)],
+        dt: f64,
+        random: &mut impl Rng,
+    ) -> Vec<Vec<(f64, f64)>> {
+        let mut winds = vec![mean.to_vec(); places.len()];
+        for wave in &self.0 {
+            let [kx, ky] = wave.k;
+            let lasting = 1.0 / (kx.hypot(ky) * wave.a.hypot(wave.b)).max(1e-9);
+            let mut phase: f64 = 0.0;
+            let factors: Vec<(f64, f64)> = mean
+                .iter()
+                .map(|(u, v)| {
+                    let kick: f64 = StandardNormal.sample(random);
+                    phase += (kx * u + ky * v) * dt + kick * (2.0 * dt / lasting).sqrt();
+                    phase.sin_cos()
+                })
+                .collect();
+            for (&(x, y), of_place) in places.iter().zip(&mut winds) {
+                let (sin, cos) = (kx * x + ky * y).sin_cos();
+                // a cos(θ − φ) + b sin(θ − φ)
+                let (p, q) = (wave.a * cos + wave.b * sin, wave.a * sin - wave.b * cos);
+                for ((u, v), (sin, cos)) in of_place.iter_mut().zip(&factors) {
+                    let value = p * cos + q * sin;
+                    *u += value * wave.direction[0];
+                    *v += value * wave.direction[1];
+                }
+            }
+        }
+        winds
+    }
+}
+
+/// A mean wind that comes and goes (AR(1) of `lasting` s, both components), m/s.
+pub fn mean_wind(
+    steps: usize,
+    dt: f64,
+    lasting: f64,
+    about: (f64, f64),
+    sd: f64,
+    random: &mut impl Rng,
+) -> Vec<(f64, f64)> {
+    let memory = (-dt / lasting).exp();
+    let mut draw = || -> f64 { StandardNormal.sample(random) };
+    let (mut u, mut v) = (sd * draw(), sd * draw());
+    let kick = sd * (1.0 - memory * memory).sqrt();
+    (0..steps)
+        .map(|_| {
+            u = memory * u + kick * draw();
+            v = memory * v + kick * draw();
+            (about.0 + u, about.1 + v)
+        })
+        .collect()
+}
+
 /// A simulated network with its polygons.
 pub struct Simulation {
     pub class: Class,

@@ -1,0 +1,179 @@
+//! Stations that are turned, mis-scaled, mis-timed or mixed up, found from the network itself.
+//!
+//! # How
+//!
+//! With winds as complex numbers W = u + iv a turned vane and a wrong scale of speed are one complex gain for each station:
+//! reported wind = g · W + noise. The wind-field model ([`crate::structure`]) says what the others have to do with W.
+//!
+//! 1. *Expectation*: the wind at each station from the others' reports over their gains, with the weights of
+//!    [`crate::structure::Predictor::weights`] (neighbourhoods of 30 stations, a large constant for the mean wind).
+//!    The station itself is left out: with it the expectation would repeat the gain it was given, the more so the better
+//!    the sensor, and the iteration would crawl.
+//! 2. *Maximisation*: g = Σ w W F* / Σ w (|F|² − ν), F the expectation. ν is what not knowing the mean wind adds to |F|²; the
+//!    weight w grows with the square of light winds and is 1 in strong ones, over the amplitude of the structure function at the time.
+//! 3. Steps are over-relaxed by 1.6; outliers beyond five robust standard deviations are left out; stations that follow
+//!    no gain predict no others. Median angle 0 and median modulus 1 over the network: **a network that is turned or scaled
+//!    as a whole cannot be told from another wind.**
+//!
+//! Errors come from the disagreement of days (blocks of a tenth of the record if there are fewer than five days: less sure,
+//! since such blocks hang together). Clock: lag of the largest complex correlation with the expectation. Reflection and
+//! exchange are alternative hypotheses. A change of gain is the split of the days that explains them best.
+//!
+//! - **Sign**: turn = reported minus true direction, degrees clockwise; factor = reported over true speed; lag positive if
+//!   the station's clock is ahead.
+//! - **Cannot see**: what all stations share; a turn or factor that the site itself makes (a valley, a building, another
+//!   height) from one of the sensor: a ticket says what to look at, not what it will be.
+//! - **Reference**: expectation and conditional maximisation, Meng and Rubin 1993, Biometrika 80, 267 (from memory);
+//!   offset and gain against the prediction from the others, `methods.md` 6.3.
+
+mod cause;
+mod change;
+mod clock;
+mod gains;
+mod record;
+mod result;
+mod shape;
+mod spread;
+mod statistics;
+mod ticket;
+
+use crate::align::WindBlock;
+use crate::station::{Network, Position};
+use crate::structure::{LocalPlane, Predictor, StructureFunction};
+use crate::time::Time;
+use crate::units::Wind;
+
+pub use cause::{Fault, cause_of_factor, cause_of_lag, cause_of_turn};
+pub use clock::ClockLag;
+pub use record::StationTally;
+pub use result::{Calibration, Change, GainEstimate, StationCalibration};
+pub use shape::Reflection;
+pub use ticket::{Cost, Ticket};
+
+use gains::Fit;
+use record::Record;
+use spread::Blocks;
+
+/// How the calibration works.
+#[derive(Debug, Clone, PartialEq)]
+pub struct CalibrationSettings {
+    /// Time between the times used, s. 30 min: winds of nearer ones say nearly the same.
+    pub step: f64,
+    /// Winds kept, at most, 8 bytes each; a longer record is thinned.
+    pub values: usize,
+    /// Days of the record that the clock is judged by, the last ones.
+    pub clock_days: f64,
+    /// Averaging interval of the reports, s; 0 if unknown.
+    pub averaging: f64,
+    /// Sectors of wind direction left out at all stations, degrees, from and to clockwise.
+    pub sectors: Vec<[f64; 2]>,
+    /// The same for each station.
+    pub station_sectors: Vec<Vec<[f64; 2]>>,
+}
+
+impl Default for CalibrationSettings {
+    fn default() -> Self {
+        Self {
+            step: 1800.0,
+            values: 1 << 25,
+            clock_days: 31.0,
+            averaging: 0.0,
+            sectors: Vec::new(),
+            station_sectors: Vec::new(),
+        }
+    }
+}
+
+impl CalibrationSettings {
+    fn is_excluded(&self, station: usize, [u, v]: [f64; 2]) -> bool {
+        let own = self.station_sectors.get(station).into_iter().flatten();
+        let mut sectors = self.sectors.iter().chain(own).peekable();
+        if sectors.peek().is_none() {
+            return false;
+        }
+        let Some(from) = (Wind { u, v }).from_direction() else {
+            return false;
+        };
+        sectors.any(|[start, end]| {
+            (from.degrees() - start).rem_euclid(360.0) <= (end - start).rem_euclid(360.0)
+        })
+    }
+}
+
+/// Takes in the winds of a run, block by block, and calibrates the stations at its end.
+#[derive(Debug, Clone)]
+pub struct Calibrator {
+    settings: CalibrationSettings,
+    predictor: Predictor,
+    /// By station whether others stand all around it.
+    around: Vec<bool>,
+    record: Record,
+}
+
+impl Calibrator {
+    /// For a network with stations `spacing` m apart and analysis times `interval` s apart.
+    #[must_use]
+    pub fn new(
+        network: &Network,
+        spacing: f64,
+        interval: f64,
+        settings: CalibrationSettings,
+    ) -> Self {
+        Self {
+            predictor: Predictor::new(network, spacing),
+            around: surrounded(network, spacing),
+            record: Record::new(network.len(), interval, &settings),
+            settings,
+        }
+    }
+
+    /// Takes in the next block with the structure function at each of its times
+    /// ([`crate::structure::StructureWindow::advance`]).
+    pub fn take(&mut self, block: &WindBlock, structure: &[StructureFunction]) {
+        self.record.take(block, structure);
+    }
+
+    /// First and last time kept; `None` without any.
+    #[must_use]
+    pub fn period(&self) -> Option<[Time; 2]> {
+        let times = &self.record.times;
+        times.first().zip(times.last()).map(|(a, b)| [*a, *b])
+    }
+
+    /// The calibration of all stations. `declinations` holds the magnetic declination of each, as far as it is known.
+    #[must_use]
+    pub fn finish(&self, declinations: &[Option<f64>]) -> Calibration {
+        let blocks = Blocks::of(&self.record);
+        let fit = Fit::new(&self.record, &self.predictor, &self.around, &blocks);
+        Calibration::of(&self.record, &blocks, fit, &self.settings, declinations)
+    }
+}
+
+/// For each station whether others within three spacings stand all around it: no gap of the horizon wider than 150
+/// degrees.
+fn surrounded(network: &Network, spacing: f64) -> Vec<bool> {
+    let reach = 3.0 * spacing;
+    let places = network.stations();
+    let around = |here: Position| {
+        let plane = LocalPlane::at((here.latitude(), here.longitude()));
+        let degrees = reach / 111e3;
+        let near = places
+            .iter()
+            .filter(|s| (s.position.latitude() - here.latitude()).abs() <= degrees);
+        let mut bearings: Vec<f64> = near
+            .map(|s| plane.place(s.position).at)
+            .filter(|[x, y]| (1.0..=reach).contains(&x.hypot(*y)))
+            .map(|[x, y]| x.atan2(y).to_degrees())
+            .collect();
+        bearings.sort_by(f64::total_cmp);
+        let Some((first, last)) = bearings.first().copied().zip(bearings.last().copied()) else {
+            return false;
+        };
+        let gaps = bearings.windows(2).map(|w| w[1] - w[0]);
+        gaps.chain([first + 360.0 - last])
+            .all(|gap| gap <= WIDEST_GAP)
+    };
+    places.iter().map(|s| around(s.position)).collect()
+}
+
+const WIDEST_GAP: f64 = 150.0;

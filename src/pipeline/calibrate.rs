@@ -1,0 +1,147 @@
+//! From the reports to the calibration of the stations.
+
+use rayon::prelude::*;
+
+use super::estimation::{StructureState, corrections, height_factors, sensor_errors};
+use super::run::{levels_agree, no_usable_report};
+use super::{Reading, Setup, Window, Windows};
+use crate::align::{Aligner, StationSensors, WindBlock, block_times};
+use crate::calibration::{Calibration, CalibrationSettings, Calibrator, Cost};
+use crate::error::Error;
+use crate::report::{InputOrder, ReportFiles};
+use crate::station::Declinations;
+use crate::structure::typical_spacing;
+use crate::warning::Warning;
+
+/// What came of a calibration run.
+#[derive(Debug)]
+pub struct CalibrationOutcome {
+    /// The books of the reports as read and checked.
+    pub reading: Reading,
+    /// What was found.
+    pub calibration: Calibration,
+    /// What leaving each ticket costs.
+    pub costs: Vec<Cost>,
+    /// Magnetic declination of each station, degrees, in the middle of the record.
+    pub declinations: Vec<Option<f64>>,
+    /// What the user should know.
+    pub warnings: Vec<Warning>,
+}
+
+/// Calibrates the stations of a network. Corrections of the station list are applied first, so what is found is what they
+/// leave. `progress` hears how many rows have been read.
+///
+/// # Errors
+/// As [`super::run`].
+pub fn calibrate(
+    setup: &Setup,
+    order: InputOrder,
+    mut progress: impl FnMut(u64),
+) -> Result<CalibrationOutcome, Error> {
+    let network = &setup.network;
+    let named = setup.settings.calibration.station_sectors.keys();
+    let unknown: Vec<&str> = named
+        .map(String::as_str)
+        .filter(|id| network.find(id).is_none())
+        .collect();
+    if !unknown.is_empty() {
+        return Err(Error::Network(format!(
+            "`calibration.exclude_sectors_of` names stations that are not in the list: {}",
+            unknown.join(", ")
+        )));
+    }
+    let files = ReportFiles::new(&setup.settings.reports, network);
+    let mut windows = Windows::new(&files, &setup.settings, order)?;
+    let (factors, height_warnings) = height_factors(setup);
+    let spacing = setup.median_edge().or_else(|| typical_spacing(network));
+    let interval = setup.settings.analysis.interval.as_secs_f64();
+    let mut state = State {
+        setup,
+        sensors: StationSensors {
+            errors: Vec::new(),
+            height_factors: factors,
+        },
+        structure: StructureState::new(setup),
+        calibrator: Calibrator::new(
+            network,
+            spacing.unwrap_or(1.0),
+            interval,
+            settings_of(setup),
+        ),
+    };
+    let mut current = windows.after(None)?;
+    while let Some(window) = current {
+        levels_agree(&window.table, &setup.settings)?;
+        let (next, ()) = rayon::join(|| windows.after(Some(&window)), || state.window(&window));
+        current = next?;
+        progress(windows.rows());
+    }
+    let mut reading = windows.reading();
+    let Some([first, last]) = state.calibrator.period() else {
+        return Err(no_usable_report(&mut reading));
+    };
+    let middle = first.plus_micros((last.micros() - first.micros()) / 2);
+    let model = Declinations::new(network);
+    let declinations: Vec<Option<f64>> = (0..network.len()).map(|s| model.at(s, middle)).collect();
+    let calibration = state.calibrator.finish(&declinations);
+    let polygons = &setup.built.polygons;
+    let costs = calibration.tickets.iter().map(|t| t.cost(polygons));
+    let warnings = [&setup.warnings, &reading.warnings, &height_warnings];
+    Ok(CalibrationOutcome {
+        costs: costs.collect(),
+        warnings: warnings.into_iter().flatten().cloned().collect(),
+        reading,
+        calibration,
+        declinations,
+    })
+}
+
+/// What is kept from window to window.
+struct State<'a> {
+    setup: &'a Setup,
+    sensors: StationSensors,
+    structure: StructureState,
+    calibrator: Calibrator,
+}
+
+impl State<'_> {
+    fn window(&mut self, window: &Window) {
+        let setup = self.setup;
+        self.sensors.errors = sensor_errors(&setup.settings.sensor, &window.rounding);
+        let analysis = &setup.settings.analysis;
+        let multiples = window.multiples.clone();
+        let aligner = Aligner::new(&window.table, analysis, &self.sensors, multiples)
+            .with_corrections(corrections(setup));
+        let blocks = aligner.grid().blocks(block_times(setup.network.len()));
+        let winds: Vec<WindBlock> = blocks
+            .into_par_iter()
+            .map(|times| aligner.align(times))
+            .collect();
+        let models = self.structure.advance(&winds);
+        for (block, models) in winds.iter().zip(&models) {
+            self.calibrator.take(block, models);
+        }
+        self.structure.keep_last(winds);
+    }
+}
+
+/// The settings of the calibration, stations by their number.
+fn settings_of(setup: &Setup) -> CalibrationSettings {
+    let chosen = &setup.settings.calibration;
+    let stations = setup.network.stations().iter();
+    let averaging = setup.settings.reports.first();
+    CalibrationSettings {
+        averaging: averaging.map_or(0.0, |r| r.format.time.averaging.as_secs_f64()),
+        sectors: chosen.sectors.clone(),
+        station_sectors: stations
+            .map(|s| {
+                chosen
+                    .station_sectors
+                    .get(&s.id)
+                    .cloned()
+                    .unwrap_or_default()
+            })
+            .collect(),
+        ..CalibrationSettings::default()
+    }
+}
