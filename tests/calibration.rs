@@ -249,6 +249,29 @@ fn confusion_matrix() {
                 kind => vec![(12, *kind), (27, *kind)],
             };
             let found = case(500 + seed, 7.0, 300.0, &planted).calibrate();
+            if found.tickets.len() != 2 {
+                println!("DBG {} {seed}", kind.kind());
+                for t in &found.tickets {
+                    println!(
+                        "   DBG {} {} {:.2} {:?}",
+                        t.station,
+                        t.fault.name(),
+                        t.size,
+                        t.error
+                    );
+                }
+                for s in [12, 27] {
+                    println!(
+                        "   DBG {s} {:?} misfit {} spikes {} change {}",
+                        found.stations[s]
+                            .gain
+                            .map(|g| (g.turn, g.turn_se, g.factor, g.factor_se)),
+                        found.stations[s].misfit,
+                        found.stations[s].spikes,
+                        found.stations[s].change.is_some()
+                    );
+                }
+            }
             for s in 0..40 {
                 let mut names = found
                     .tickets

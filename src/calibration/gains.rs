@@ -42,6 +42,9 @@ const LEAST_PRIOR: f64 = 0.3;
 /// A gain that stands out differs from 1 by this, in logarithm and radians, and by this many of its own errors.
 const LEAST_OFF: f64 = 0.07;
 const OFF_ERRORS: f64 = 3.0;
+/// What is taken off the square of a prediction, at most, as a share of it; and how far residuals may exceed the model.
+const MOST_EXCESS: f64 = 0.1;
+const LARGEST_SCALE: f64 = 2.0;
 /// An outlier that is a spike, in robust standard deviations.
 const SPIKE: f64 = 8.0;
 /// A residual's median length in standard deviations of a component (Rayleigh): √(2 ln 2).
@@ -80,6 +83,9 @@ pub(super) struct Fit<'a> {
     blocks: &'a Blocks,
     /// Of each station the weight of what is expected of a sensor beforehand, relative to its data.
     prior: Vec<f64>,
+    /// Variance of the residuals over what the model says, the network's median. The model has seen the faults too, and
+    /// may say far too much; 0 as long as nothing is known.
+    scale: f64,
     /// Stations whose gain is not held near 1.
     stands_out: Vec<bool>,
     /// Outliers so far off that they count as spikes, station-major.
@@ -117,6 +123,7 @@ impl<'a> Fit<'a> {
             around,
             blocks,
             prior: vec![0.0; n],
+            scale: 0.0,
             stands_out: vec![false; n],
             far_off: vec![false; cells],
             stretches: Vec::new(),
@@ -136,6 +143,7 @@ impl<'a> Fit<'a> {
         for _ in 0..ROUNDS {
             fit.solve();
             fit.find_outliers();
+            fit.find_misfit();
             fit.weigh_prior();
             for _ in 0..ROUNDS {
                 fit.solve();
@@ -351,8 +359,9 @@ impl<'a> Fit<'a> {
                     continue;
                 }
                 let field = C::new(u, v) / mass;
-                let excess = 2.0 * weights.covariance * self.strength[t];
                 let square = field.norm_sqr();
+                let excess = 2.0 * weights.covariance * self.strength[t] * self.scale;
+                let excess = excess.clamp(-MOST_EXCESS * square, MOST_EXCESS * square);
                 let speed = square / (square + LIGHT_WIND * LIGHT_WIND);
                 found.push(Expected {
                     t,
@@ -541,6 +550,7 @@ impl<'a> Fit<'a> {
         let ratios: Vec<Option<f64>> = (0..self.gains.len()).map(ratio).collect();
         let mut known: Vec<f64> = ratios.iter().flatten().copied().collect();
         let typical = median(&mut known).filter(|&m| m > 0.0).unwrap_or(1.0);
+        self.scale = typical.min(LARGEST_SCALE);
         self.misfit = ratios
             .iter()
             .map(|r| r.map_or(1.0, |r| r / typical))
@@ -636,7 +646,7 @@ impl<'a> Fit<'a> {
 /// A gain that some sensor may have.
 fn is_sane(gain: C) -> bool {
     let size = gain.norm();
-    size.is_finite() && (1e-3..1e3).contains(&size)
+    size.is_finite() && (0.02..50.0).contains(&size)
 }
 
 /// The structure function with the median amplitude.
