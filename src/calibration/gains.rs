@@ -6,7 +6,10 @@ use super::record::{Record, median};
 use super::spread::{BlockSum, Blocks, block_sums, own_variance};
 use crate::align::{AlignedWind, Covariance, WindBlock};
 use crate::check::Flag;
-use crate::structure::{Predictor, StationWeights, StructureFunction};
+use crate::structure::{
+    BlockSums, NetworkGeometry, Predictor, StationWeights, StructureFunction, StructureSettings,
+    StructureWindow,
+};
 use crate::time::Time;
 use crate::units::Wind;
 
@@ -64,6 +67,8 @@ struct Stretch {
 pub(super) struct Fit<'a> {
     record: &'a Record,
     predictor: &'a Predictor,
+    /// At each time.
+    structure: Vec<StructureFunction>,
     stretches: Vec<Stretch>,
     /// Gains before and after the split.
     pub(super) gains: Vec<[C; 2]>,
@@ -114,12 +119,14 @@ impl<'a> Fit<'a> {
         predictor: &'a Predictor,
         around: &'a [bool],
         blocks: &'a Blocks,
+        geometry: &NetworkGeometry,
     ) -> Self {
         let n = record.winds.len();
         let cells = n * record.times.len();
         let mut fit = Self {
             record,
             predictor,
+            structure: record.structure.clone(),
             around,
             blocks,
             prior: vec![0.0; n],
@@ -136,6 +143,15 @@ impl<'a> Fit<'a> {
             strength: vec![1.0; record.times.len()],
             misfit: vec![1.0; n],
         };
+        fit.weigh();
+        fit.refresh_all();
+        fit.start();
+        fit.weigh_prior();
+        // The structure function of the run has seen the faults: it is found again without them.
+        fit.solve();
+        fit.find_outliers();
+        fit.find_misfit();
+        fit.find_structure(geometry);
         fit.weigh();
         fit.refresh_all();
         fit.start();
@@ -173,6 +189,39 @@ impl<'a> Fit<'a> {
         self.find_outliers();
         self.solve();
         self.find_misfit();
+    }
+
+    /// The structure function of the winds over their first gains, without outliers and stations that follow no gain.
+    fn find_structure(&mut self, geometry: &NetworkGeometry) {
+        let n = self.times();
+        let mut block = WindBlock::empty(self.record.times.clone(), self.gains.len());
+        for s in 0..self.gains.len() {
+            if self.misfit[s] > UNTRUSTED {
+                continue;
+            }
+            let (sum, count) = self.record.noise[s];
+            let noise = sum / count.max(1) as f64;
+            for t in 0..n {
+                if let Some(z) = self.corrected(s, t) {
+                    let value = AlignedWind {
+                        wind: Wind { u: z.re, v: z.im },
+                        covariance: Covariance {
+                            uu: noise,
+                            uv: 0.0,
+                            vv: noise,
+                        },
+                        flag: Flag::Pass,
+                        age: 0.0,
+                    };
+                    block.set(s, t, &value);
+                }
+            }
+        }
+        let settings = StructureSettings::default();
+        let step = self.record.interval as f64 * 1e-6;
+        let sums = BlockSums::of(geometry, &settings, step, None, &block);
+        let mut window = StructureWindow::new(geometry, settings);
+        self.structure = window.advance(geometry, &sums, &block.times);
     }
 
     /// What a gain of 1 weighs beforehand: the variance of the station's own gain over that expected of sensors.
@@ -241,7 +290,7 @@ impl<'a> Fit<'a> {
         self.stretches.clear();
         for start in (0..times).step_by(length) {
             let range = start..(start + length).min(times);
-            let Some(structure) = typical(&self.record.structure[range.clone()]) else {
+            let Some(structure) = typical(&self.structure[range.clone()]) else {
                 continue;
             };
             let block = self.presence(&range);
@@ -255,7 +304,7 @@ impl<'a> Fit<'a> {
             }
             let amplitude = structure.longitudinal + structure.transverse;
             for t in range.clone() {
-                let now = &self.record.structure[t];
+                let now = &self.structure[t];
                 let ratio = (now.longitudinal + now.transverse) / amplitude;
                 self.strength[t] = if ratio.is_finite() {
                     ratio.clamp(0.5, 4.0)

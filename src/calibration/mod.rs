@@ -39,7 +39,7 @@ mod ticket;
 
 use crate::align::WindBlock;
 use crate::station::{Network, Position};
-use crate::structure::{LocalPlane, Predictor, StructureFunction};
+use crate::structure::{LocalPlane, NetworkGeometry, Predictor, StructureFunction};
 use crate::time::Time;
 use crate::units::Wind;
 
@@ -105,6 +105,7 @@ impl CalibrationSettings {
 pub struct Calibrator {
     settings: CalibrationSettings,
     predictor: Predictor,
+    geometry: NetworkGeometry,
     /// By station whether others stand all around it.
     around: Vec<bool>,
     record: Record,
@@ -121,6 +122,7 @@ impl Calibrator {
     ) -> Self {
         Self {
             predictor: Predictor::new(network, spacing),
+            geometry: NetworkGeometry::new(network, spacing, &[]),
             around: surrounded(network, spacing),
             record: Record::new(network.len(), interval, &settings),
             settings,
@@ -144,7 +146,13 @@ impl Calibrator {
     #[must_use]
     pub fn finish(&self, declinations: &[Option<f64>]) -> Calibration {
         let blocks = Blocks::of(&self.record);
-        let fit = Fit::new(&self.record, &self.predictor, &self.around, &blocks);
+        let fit = Fit::new(
+            &self.record,
+            &self.predictor,
+            &self.around,
+            &blocks,
+            &self.geometry,
+        );
         Calibration::of(&self.record, &blocks, fit, &self.settings, declinations)
     }
 }
