@@ -6,7 +6,10 @@ use super::record::{Record, median};
 use super::spread::{BlockSum, Blocks, block_sums, own_variance};
 use crate::align::{AlignedWind, Covariance, WindBlock};
 use crate::check::Flag;
-use crate::structure::{Predictor, StationWeights, StructureFunction};
+use crate::structure::{
+    BlockSums, NetworkGeometry, Predictor, StationWeights, StructureFunction, StructureSettings,
+    StructureWindow,
+};
 use crate::time::Time;
 use crate::units::Wind;
 
@@ -42,6 +45,9 @@ const LEAST_PRIOR: f64 = 0.3;
 /// A gain that stands out differs from 1 by this, in logarithm and radians, and by this many of its own errors.
 const LEAST_OFF: f64 = 0.07;
 const OFF_ERRORS: f64 = 3.0;
+/// What is taken off the square of a prediction, at most, as a share of it; and how far residuals may exceed the model.
+const MOST_EXCESS: f64 = 0.1;
+const LARGEST_SCALE: f64 = 2.0;
 /// An outlier that is a spike, in robust standard deviations.
 const SPIKE: f64 = 8.0;
 /// A residual's median length in standard deviations of a component (Rayleigh): √(2 ln 2).
@@ -61,6 +67,8 @@ struct Stretch {
 pub(super) struct Fit<'a> {
     record: &'a Record,
     predictor: &'a Predictor,
+    /// At each time.
+    structure: Vec<StructureFunction>,
     stretches: Vec<Stretch>,
     /// Gains before and after the split.
     pub(super) gains: Vec<[C; 2]>,
@@ -80,6 +88,9 @@ pub(super) struct Fit<'a> {
     blocks: &'a Blocks,
     /// Of each station the weight of what is expected of a sensor beforehand, relative to its data.
     prior: Vec<f64>,
+    /// Variance of the residuals over what the model says, the network's median. The model has seen the faults too, and
+    /// may say far too much; 0 as long as nothing is known.
+    scale: f64,
     /// Stations whose gain is not held near 1.
     stands_out: Vec<bool>,
     /// Outliers so far off that they count as spikes, station-major.
@@ -108,15 +119,18 @@ impl<'a> Fit<'a> {
         predictor: &'a Predictor,
         around: &'a [bool],
         blocks: &'a Blocks,
+        geometry: &NetworkGeometry,
     ) -> Self {
         let n = record.winds.len();
         let cells = n * record.times.len();
         let mut fit = Self {
             record,
             predictor,
+            structure: record.structure.clone(),
             around,
             blocks,
             prior: vec![0.0; n],
+            scale: 0.0,
             stands_out: vec![false; n],
             far_off: vec![false; cells],
             stretches: Vec::new(),
@@ -133,9 +147,19 @@ impl<'a> Fit<'a> {
         fit.refresh_all();
         fit.start();
         fit.weigh_prior();
+        // The structure function of the run has seen the faults: it is found again without them.
+        fit.solve();
+        fit.find_outliers();
+        fit.find_misfit();
+        fit.find_structure(geometry);
+        fit.weigh();
+        fit.refresh_all();
+        fit.start();
+        fit.weigh_prior();
         for _ in 0..ROUNDS {
             fit.solve();
             fit.find_outliers();
+            fit.find_misfit();
             fit.weigh_prior();
             for _ in 0..ROUNDS {
                 fit.solve();
@@ -165,6 +189,39 @@ impl<'a> Fit<'a> {
         self.find_outliers();
         self.solve();
         self.find_misfit();
+    }
+
+    /// The structure function of the winds over their first gains, without outliers and stations that follow no gain.
+    fn find_structure(&mut self, geometry: &NetworkGeometry) {
+        let n = self.times();
+        let mut block = WindBlock::empty(self.record.times.clone(), self.gains.len());
+        for s in 0..self.gains.len() {
+            if self.misfit[s] > UNTRUSTED {
+                continue;
+            }
+            let (sum, count) = self.record.noise[s];
+            let noise = sum / count.max(1) as f64;
+            for t in 0..n {
+                if let Some(z) = self.corrected(s, t) {
+                    let value = AlignedWind {
+                        wind: Wind { u: z.re, v: z.im },
+                        covariance: Covariance {
+                            uu: noise,
+                            uv: 0.0,
+                            vv: noise,
+                        },
+                        flag: Flag::Pass,
+                        age: 0.0,
+                    };
+                    block.set(s, t, &value);
+                }
+            }
+        }
+        let settings = StructureSettings::default();
+        let step = self.record.interval as f64 * 1e-6;
+        let sums = BlockSums::of(geometry, &settings, step, None, &block);
+        let mut window = StructureWindow::new(geometry, settings);
+        self.structure = window.advance(geometry, &sums, &block.times);
     }
 
     /// What a gain of 1 weighs beforehand: the variance of the station's own gain over that expected of sensors.
@@ -233,7 +290,7 @@ impl<'a> Fit<'a> {
         self.stretches.clear();
         for start in (0..times).step_by(length) {
             let range = start..(start + length).min(times);
-            let Some(structure) = typical(&self.record.structure[range.clone()]) else {
+            let Some(structure) = typical(&self.structure[range.clone()]) else {
                 continue;
             };
             let block = self.presence(&range);
@@ -247,7 +304,7 @@ impl<'a> Fit<'a> {
             }
             let amplitude = structure.longitudinal + structure.transverse;
             for t in range.clone() {
-                let now = &self.record.structure[t];
+                let now = &self.structure[t];
                 let ratio = (now.longitudinal + now.transverse) / amplitude;
                 self.strength[t] = if ratio.is_finite() {
                     ratio.clamp(0.5, 4.0)
@@ -351,8 +408,9 @@ impl<'a> Fit<'a> {
                     continue;
                 }
                 let field = C::new(u, v) / mass;
-                let excess = 2.0 * weights.covariance * self.strength[t];
                 let square = field.norm_sqr();
+                let excess = 2.0 * weights.covariance * self.strength[t] * self.scale;
+                let excess = excess.clamp(-MOST_EXCESS * square, MOST_EXCESS * square);
                 let speed = square / (square + LIGHT_WIND * LIGHT_WIND);
                 found.push(Expected {
                     t,
@@ -541,6 +599,7 @@ impl<'a> Fit<'a> {
         let ratios: Vec<Option<f64>> = (0..self.gains.len()).map(ratio).collect();
         let mut known: Vec<f64> = ratios.iter().flatten().copied().collect();
         let typical = median(&mut known).filter(|&m| m > 0.0).unwrap_or(1.0);
+        self.scale = typical.min(LARGEST_SCALE);
         self.misfit = ratios
             .iter()
             .map(|r| r.map_or(1.0, |r| r / typical))
@@ -636,7 +695,7 @@ impl<'a> Fit<'a> {
 /// A gain that some sensor may have.
 fn is_sane(gain: C) -> bool {
     let size = gain.norm();
-    size.is_finite() && (1e-3..1e3).contains(&size)
+    size.is_finite() && (0.02..50.0).contains(&size)
 }
 
 /// The structure function with the median amplitude.

@@ -10,10 +10,10 @@ type C = Complex<f64>;
 /// What is left of the variance with the reflection, relative to a turn, at which the reflection is believed.
 const MIRRORED: f64 = 0.4;
 /// What is left of the residuals' variance after the exchange at which it is believed.
-const EXCHANGED: f64 = 0.5;
+const EXCHANGED: f64 = 0.6;
 /// Stations that are compared pairwise, the worst first, and their least misfit.
 const MOST_COMPARED: usize = 60;
-const LEAST_MISFIT: f64 = 1.6;
+const LEAST_MISFIT: f64 = 1.4;
 /// Fewer outliers are no pattern.
 const LEAST_SPIKES: usize = 4;
 

@@ -13,6 +13,8 @@ const LEAST_TURN: f64 = 5.0;
 const LEAST_LOG: f64 = 0.095;
 /// A gain must differ from 1 by so many half 95 % intervals: 1.7 of them are 3.3 standard errors, one in a thousand.
 const SURE: f64 = 1.7;
+/// In a record of less than five days, of which the parts share their weather.
+const SURE_OF_DAY: f64 = 2.2;
 /// Share of a record that is stuck, or still, for a ticket.
 const STUCK_SHARE: f64 = 0.5;
 const STILL_SHARE: f64 = 0.5;
@@ -98,7 +100,7 @@ pub(super) fn tickets(
         if let Some(ticket) = no_gain(s, station, settings, days, interval) {
             all.push(ticket);
         } else {
-            all.extend(gain_tickets(s, station, declination));
+            all.extend(gain_tickets(s, station, days, declination));
         }
     }
     all.sort_by(|a, b| {
@@ -225,12 +227,14 @@ fn is_off(clock: &ClockLag, inside: bool, days: bool, interval: f64) -> bool {
 fn gain_tickets(
     s: usize,
     station: &StationCalibration,
+    days: bool,
     declination: Option<f64>,
 ) -> impl Iterator<Item = Ticket> {
     let gain = station.gain;
     let since = station.change.map(|c| (c.at, c.between));
-    let turned = gain.and_then(|gain| turn_ticket(s, station, &gain, declination, since));
-    let scaled = gain.and_then(|gain| factor_ticket(s, station, &gain, since));
+    let sure = if days { SURE } else { SURE_OF_DAY };
+    let turned = gain.and_then(|gain| turn_ticket(s, station, (&gain, sure), declination, since));
+    let scaled = gain.and_then(|gain| factor_ticket(s, station, (&gain, sure), since));
     turned.into_iter().chain(scaled)
 }
 
@@ -239,12 +243,12 @@ type Since = Option<(Time, [Time; 2])>;
 fn turn_ticket(
     s: usize,
     station: &StationCalibration,
-    gain: &GainEstimate,
+    (gain, sure): (&GainEstimate, f64),
     declination: Option<f64>,
     since: Since,
 ) -> Option<Ticket> {
     let half = gain.half_95 * gain.turn_se;
-    if gain.turn.abs() < LEAST_TURN || gain.turn.abs() < SURE * half {
+    if gain.turn.abs() < LEAST_TURN || gain.turn.abs() < sure * half {
         return None;
     }
     Some(Ticket {
@@ -262,12 +266,12 @@ fn turn_ticket(
 fn factor_ticket(
     s: usize,
     station: &StationCalibration,
-    gain: &GainEstimate,
+    (gain, sure): (&GainEstimate, f64),
     since: Since,
 ) -> Option<Ticket> {
     let log = gain.factor.ln();
     let half = gain.half_95 * gain.factor_se / gain.factor;
-    if log.abs() < LEAST_LOG || log.abs() < SURE * half {
+    if log.abs() < LEAST_LOG || log.abs() < sure * half {
         return None;
     }
     Some(Ticket {

@@ -6,6 +6,7 @@ use super::message::{WIDTH, corrections_text, cut, wrapped};
 use crate::calibration::{Cost, Ticket};
 use crate::output::{CAUTION, GAUGE, what};
 use crate::pipeline::{CalibrationOutcome, Setup};
+use crate::time::Time;
 
 /// The tickets, and what they rest on.
 pub(super) fn calibration_text(setup: &Setup, outcome: &CalibrationOutcome) -> String {
@@ -64,7 +65,7 @@ fn ticket_text(out: &mut String, setup: &Setup, ticket: &Ticket, cost: &Cost) {
     let id = station.map_or("", |s| s.id.as_str());
     let since = match ticket.since {
         Some((at, [from, to])) => {
-            format!("since {} ({} to {})", day(&at), day(&from), day(&to))
+            format!("since {} ({} to {})", day(at), day(from), day(to))
         }
         None => "in the whole record".into(),
     };
@@ -93,7 +94,7 @@ fn ticket_text(out: &mut String, setup: &Setup, ticket: &Ticket, cost: &Cost) {
     );
 }
 
-fn day(time: &crate::time::Time) -> String {
+fn day(time: Time) -> String {
     time.to_string().chars().take(10).collect()
 }
 

@@ -1,5 +1,7 @@
 //! Results of the calibration: `maintenance.csv`, `calibration.csv`, JSON, and the station list with corrections.
 
+use std::fmt::Write as _;
+
 use serde_json::{Value, json};
 
 use super::CAUTION;
@@ -301,7 +303,8 @@ pub fn corrected_list_section(file: &str) -> String {
     let mut out = format!("[stations]\nfile = {file:?}\n[stations.columns]\n");
     let from = ("correction_from", "correction_from");
     for (key, column) in LIST_COLUMNS.into_iter().chain([from]) {
-        out.push_str(&format!("{key} = \"{column}\"\n"));
+        // Writing to a string cannot fail.
+        let _ = writeln!(out, "{key} = \"{column}\"");
     }
     out
 }
