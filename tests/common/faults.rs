@@ -101,7 +101,7 @@ pub fn case(seed: u64, days: f64, dt: f64, planted: &[(usize, Planted)]) -> Case
     let field = Field::new(&class, &mut random);
     let plain = field.series(&places, &mean, dt, &mut random);
     let mut winds = vec![Vec::with_capacity(steps); places.len()];
-    let turns: Vec<(f64, f64)> = { plane.turn(&places, &vec![(1.0, 0.0); places.len()]) };
+    let turns = plane.turn(&places, &vec![(1.0, 0.0); places.len()]);
     for ((of, turn), to) in plain.iter().zip(&turns).zip(&mut winds) {
         to.extend(
             of.iter()
