@@ -28,6 +28,25 @@
 //!   height) from one of the sensor: a ticket says what to look at, not what it will be.
 //! - **Reference**: expectation and conditional maximisation, Meng and Rubin 1993, Biometrika 80, 267 (from memory);
 //!   offset and gain against the prediction from the others, `methods.md` 6.3.
+//!
+//! # Measured
+//!
+//! On simulated networks of 40 stations 30 km apart, turbulence of 1.5 m/s carried by a mean wind that comes and goes,
+//! sensors of 0.3 m/s, 5-minute reports, four faults in each (`tests/calibration.rs`): 200 weeks, turns of 8 to 40 degrees and
+//! factors off by 15 to 50 %: 99.9 % found with the right station and cause, 0.1 % of the sound stations told wrongly; errors
+//! of the turn 0.7 degrees (bias 0.02; of planted turns −0.06), of the logarithm of the factor 0.012; the 95 % intervals
+//! held 97.6 and 97.7 %. Single days: 75 % found, 1.2 % false, 1.8 degrees, 0.034; intervals held 94 %.
+//!
+//! Stations with planted faults by what the first ticket says, two in each of ten weeks:
+//!
+//! | Planted | told so | told otherwise | not told |
+//! |---|---|---|---|
+//! | turned 15°, factor 0.8, knots, direction to, u and v swapped, mirrored | 20 each | | |
+//! | clock 1 h ahead | 20 | | |
+//! | 3 % spikes | 19 | | 1 |
+//! | stuck, still | 20 each | | |
+//! | exchanged with one 90 km away | 16 | | 4 |
+//! | none (4180) | | 1 | 4179 |
 
 mod cause;
 mod change;

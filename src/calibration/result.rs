@@ -140,7 +140,7 @@ impl Calibration {
         }
         let errors = gain_errors(&fit, blocks, &sums);
         let expected: Vec<Vec<Expected>> = (0..sums.len()).map(|s| fit.expected(s)).collect();
-        let exchanged = exchanges(record, &fit, &expected);
+        let exchanged = exchanges(record, &fit, &expected, blocks.days);
         let start_of = |block: usize| {
             let t = blocks.of.partition_point(|&b| b < block);
             record

@@ -10,10 +10,12 @@ type C = Complex<f64>;
 /// What is left of the variance with the reflection, relative to a turn, at which the reflection is believed.
 const MIRRORED: f64 = 0.4;
 /// What is left of the residuals' variance after the exchange at which it is believed.
-const EXCHANGED: f64 = 0.6;
+const EXCHANGED: f64 = 0.5;
+/// In a record of less than five days, in which neighbours may have much the same weather.
+const EXCHANGED_IN_DAYS: f64 = 0.25;
 /// Stations that are compared pairwise, the worst first, and their least misfit.
 const MOST_COMPARED: usize = 60;
-const LEAST_MISFIT: f64 = 1.4;
+const LEAST_MISFIT: f64 = 1.6;
 /// Fewer outliers are no pattern.
 const LEAST_SPIKES: usize = 4;
 
@@ -64,7 +66,13 @@ pub(super) struct Exchange {
 }
 
 /// Pairs of stations whose winds fit better when exchanged; each station once, the best pairs first.
-pub(super) fn exchanges(record: &Record, fit: &Fit, expected: &[Vec<Expected>]) -> Vec<Exchange> {
+pub(super) fn exchanges(
+    record: &Record,
+    fit: &Fit,
+    expected: &[Vec<Expected>],
+    days: bool,
+) -> Vec<Exchange> {
+    let limit = if days { EXCHANGED } else { EXCHANGED_IN_DAYS };
     let mut worst: Vec<usize> = (0..expected.len())
         .filter(|&s| fit.misfit[s] > LEAST_MISFIT && !expected[s].is_empty())
         .collect();
@@ -82,7 +90,7 @@ pub(super) fn exchanges(record: &Record, fit: &Fit, expected: &[Vec<Expected>]) 
             let ratio = |of: usize, at: usize| Some(distance(of, at)? / distance(of, of)?);
             if let Some((first, second)) = ratio(a, b).zip(ratio(b, a)) {
                 let left = first.max(second);
-                if left < EXCHANGED {
+                if left < limit {
                     found.push(Exchange {
                         stations: [a.min(b), a.max(b)],
                         left,
