@@ -32,7 +32,7 @@ pub struct CalibrationOutcome {
 /// leave. `progress` hears how many rows have been read.
 ///
 /// # Errors
-/// As [`super::run`].
+/// As [`run`](fn@super::run).
 pub fn calibrate(
     setup: &Setup,
     order: InputOrder,
