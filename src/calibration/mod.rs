@@ -54,6 +54,7 @@ mod clock;
 mod gains;
 mod record;
 mod result;
+mod robust;
 mod shape;
 mod spread;
 mod statistics;
