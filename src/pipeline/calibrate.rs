@@ -2,7 +2,7 @@
 
 use rayon::prelude::*;
 
-use super::estimation::{StructureState, corrections, height_factors, median_edge, sensor_errors};
+use super::estimation::{StructureState, corrections, height_factors, sensor_errors};
 use super::run::{levels_agree, no_usable_report};
 use super::{Reading, Setup, Window, Windows};
 use crate::align::{Aligner, StationSensors, WindBlock, block_times};
@@ -32,7 +32,7 @@ pub struct CalibrationOutcome {
 /// leave. `progress` hears how many rows have been read.
 ///
 /// # Errors
-/// As [`run`](fn@super::run).
+/// As [`super::run()`].
 pub fn calibrate(
     setup: &Setup,
     order: InputOrder,
@@ -53,7 +53,7 @@ pub fn calibrate(
     let files = ReportFiles::new(&setup.settings.reports, network);
     let mut windows = Windows::new(&files, &setup.settings, order)?;
     let (factors, height_warnings) = height_factors(setup);
-    let spacing = median_edge(setup).or_else(|| typical_spacing(network));
+    let spacing = setup.median_edge().or_else(|| typical_spacing(network));
     let interval = setup.settings.analysis.interval.as_secs_f64();
     let mut state = State {
         setup,
