@@ -35,7 +35,7 @@
 //! sensors of 0.3 m/s, 5-minute reports, four faults in each (`tests/calibration.rs`): 200 weeks, turns of 8 to 40 degrees and
 //! factors off by 15 to 50 %: 99.9 % found with the right station and cause, 0.1 % of the sound stations told wrongly; errors
 //! of the turn 0.7 degrees (bias 0.02; of planted turns −0.06), of the logarithm of the factor 0.012; the 95 % intervals
-//! held 97.6 and 97.7 %. Single days: 75 % found, 1.2 % false, 1.8 degrees, 0.034; intervals held 94 %.
+//! held 97.6 and 97.7 %. Single days: 75 % found, 0.8 % false, 1.8 degrees, 0.034; intervals held 94 %.
 //!
 //! Stations with planted faults by what the first ticket says, two in each of ten weeks:
 //!
