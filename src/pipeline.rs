@@ -2,6 +2,7 @@
 
 mod calibrate;
 mod estimation;
+mod field;
 mod reading;
 mod run;
 mod windows;
@@ -13,6 +14,7 @@ use crate::integral::{SelfTest, planetary_vorticity, self_test};
 use crate::polygon::{BuiltPolygons, build_polygons};
 use crate::settings::{Overrides, Settings, read_settings};
 use crate::station::{Network, Period, Position, doubts, read_catalogue};
+use crate::structure::typical_spacing;
 use crate::warning::Warning;
 
 pub use calibrate::{CalibrationOutcome, calibrate};
@@ -131,6 +133,14 @@ impl Setup {
 }
 
 impl Setup {
+    /// How far apart the stations stand, m: the median edge of all polygons, or the typical distance to a neighbour where
+    /// there are none; `None` for fewer than two places.
+    #[must_use]
+    pub fn spacing(&self) -> Option<f64> {
+        self.median_edge()
+            .or_else(|| typical_spacing(&self.network))
+    }
+
     /// Median length of the edges of all polygons, m.
     #[must_use]
     pub fn median_edge(&self) -> Option<f64> {

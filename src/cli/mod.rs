@@ -256,9 +256,7 @@ fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
 
 fn calibrate(args: &CalibrateArgs) -> Result<Status, Error> {
     use_threads(args.threads);
-    let mut setup = Setup::read(&args.network, &Overrides::from(args))?;
-    // The wind-field model is what stations are judged by.
-    setup.settings.errors.complete = true;
+    let setup = Setup::read(&args.network, &Overrides::from(args))?;
     let bar = progress_bar(args.json);
     let run = |order| pipeline::calibrate(&setup, order, |rows| bar.set_position(rows));
     let result = match run(InputOrder::first_try(&setup.settings.reports)) {

@@ -2,7 +2,8 @@
 
 use rayon::prelude::*;
 
-use super::estimation::{StructureState, corrections, height_factors, sensor_errors};
+use super::estimation::{corrections, height_factors, sensor_errors};
+use super::field::FieldState;
 use super::run::{levels_agree, no_usable_report};
 use super::{Reading, Setup, Window, Windows};
 use crate::align::{Aligner, StationSensors, WindBlock, block_times};
@@ -10,7 +11,6 @@ use crate::calibration::{Calibration, CalibrationSettings, Calibrator, Cost};
 use crate::error::Error;
 use crate::report::{InputOrder, ReportFiles};
 use crate::station::Declinations;
-use crate::structure::typical_spacing;
 use crate::warning::Warning;
 
 /// What came of a calibration run.
@@ -53,7 +53,7 @@ pub fn calibrate(
     let files = ReportFiles::new(&setup.settings.reports, network);
     let mut windows = Windows::new(&files, &setup.settings, order)?;
     let (factors, height_warnings) = height_factors(setup);
-    let spacing = setup.median_edge().or_else(|| typical_spacing(network));
+    let spacing = setup.spacing();
     let interval = setup.settings.analysis.interval.as_secs_f64();
     let mut state = State {
         setup,
@@ -61,7 +61,7 @@ pub fn calibrate(
             errors: Vec::new(),
             height_factors: factors,
         },
-        structure: StructureState::new(setup),
+        field: spacing.map(|m| FieldState::new(&setup.settings, network, m)),
         calibrator: Calibrator::new(
             network,
             spacing.unwrap_or(1.0),
@@ -100,7 +100,7 @@ pub fn calibrate(
 struct State<'a> {
     setup: &'a Setup,
     sensors: StationSensors,
-    structure: StructureState,
+    field: Option<FieldState>,
     calibrator: Calibrator,
 }
 
@@ -117,11 +117,14 @@ impl State<'_> {
             .into_par_iter()
             .map(|times| aligner.align(times))
             .collect();
-        let models = self.structure.advance(&winds);
+        let Some(field) = &mut self.field else {
+            return;
+        };
+        let models = field.advance(&winds);
         for (block, models) in winds.iter().zip(&models) {
             self.calibrator.take(block, models);
         }
-        self.structure.keep_last(winds);
+        field.keep_last(winds);
     }
 }
 

@@ -2,7 +2,7 @@
 
 use rayon::prelude::*;
 
-use super::run::StructureReport;
+use super::field::FieldState;
 use super::{Setup, Window};
 use crate::align::{AlignBooks, Aligner, StationSensors, WindBlock, block_times, height_factor};
 use crate::check::Flag;
@@ -11,12 +11,9 @@ use crate::integral::{
     RunStatistics, Sampling, SecondOpinion, complete_errors, estimate, find_significant,
 };
 use crate::report::{Rounding, SpeedStep};
-use crate::settings::{ErrorSettings, SensorErrors};
-use crate::station::{Correction, Network, Position, Station};
-use crate::structure::{
-    BlockSums, NetworkGeometry, StructureFunction, StructureWindow, typical_spacing,
-};
-use crate::time::Time;
+use crate::settings::SensorErrors;
+use crate::station::{Correction, Position, Station};
+use crate::structure::StructureFunction;
 use crate::warning::Warning;
 
 /// What is kept from window to window.
@@ -32,13 +29,15 @@ pub(super) struct Estimation<'a> {
     pub(super) extremes: Extremes,
     pub(super) statistics: RunStatistics,
     pub(super) fits: FitBooks,
-    pub(super) structure: StructureState,
+    pub(super) field: Option<FieldState>,
+    errors: Option<ErrorModel>,
     rule: FalseDiscovery,
 }
 
 impl<'a> Estimation<'a> {
     pub(super) fn new(setup: &'a Setup) -> Self {
         let (height_factors, warnings) = height_factors(setup);
+        let spacing = setup.spacing().filter(|_| setup.settings.errors.complete);
         Self {
             sensors: StationSensors {
                 errors: Vec::new(),
@@ -52,7 +51,8 @@ impl<'a> Estimation<'a> {
             extremes: Extremes::default(),
             statistics: RunStatistics::default(),
             fits: FitBooks::default(),
-            structure: StructureState::new(setup),
+            field: spacing.map(|m| FieldState::new(&setup.settings, &setup.network, m)),
+            errors: spacing.map(|m| ErrorModel::new(setup, m)),
             rule: FalseDiscovery::new(
                 setup.settings.errors.false_discovery_rate,
                 setup.built.polygons.len(),
@@ -84,15 +84,23 @@ impl<'a> Estimation<'a> {
             .into_par_iter()
             .map(|times| aligner.align(times))
             .collect();
-        let models = self.structure.advance(&winds);
-        let (structure, rule) = (&self.structure, &self.rule);
+        let models = match &mut self.field {
+            Some(field) => field.advance(&winds),
+            None => vec![Vec::new(); winds.len()],
+        };
+        let (errors, rule) = (self.errors.as_ref(), &self.rule);
+        let polygons = setup.built.polygons.len();
         let results: Vec<(Extremes, RunStatistics, FitBooks, T)> = winds
             .par_iter()
             .zip(models)
             .map(|(winds, models)| {
-                let block = estimate_complete(setup, structure, rule, winds, &models);
+                let block = estimate_complete(setup, errors, rule, winds, &models);
                 let peaks = Extremes::of(&block, &setup.planetary);
-                let sums = RunStatistics::of(&block, &structure.lasting(&models));
+                let lasting = match errors {
+                    Some(errors) => errors.lasting(polygons, &models),
+                    None => vec![1.0; polygons],
+                };
+                let sums = RunStatistics::of(&block, &lasting);
                 (peaks, sums, FitBooks::of(&block), encode(&block))
             })
             .collect();
@@ -102,7 +110,9 @@ impl<'a> Estimation<'a> {
                 *sum += n;
             }
         }
-        self.structure.keep_last(winds);
+        if let Some(field) = &mut self.field {
+            field.keep_last(winds);
+        }
         let mut encoded = Vec::with_capacity(results.len());
         for (peaks, sums, fits, result) in results {
             self.extremes.merge(&peaks);
@@ -118,9 +128,6 @@ impl<'a> Estimation<'a> {
                 .collect(),
             None => Vec::new(),
         };
-        if window.carried_from.is_none() {
-            self.structure.report();
-        }
         encoded
     }
 }
@@ -128,15 +135,15 @@ impl<'a> Estimation<'a> {
 /// The estimates of a block with all that is said of them.
 fn estimate_complete(
     setup: &Setup,
-    structure: &StructureState,
+    errors: Option<&ErrorModel>,
     rule: &FalseDiscovery,
     winds: &WindBlock,
     models: &[StructureFunction],
 ) -> EstimateBlock {
     let polygons = &setup.built.polygons;
     let mut block = estimate(polygons, winds);
-    block.budget = match &structure.model {
-        Some(model) => complete_errors(polygons, &model.sampling, winds, models, &mut block),
+    block.budget = match errors {
+        Some(errors) => complete_errors(polygons, &errors.sampling, winds, models, &mut block),
         None => {
             let instruments_alone = |se: &[f64]| ErrorParts {
                 instrument: se.to_vec(),
@@ -150,165 +157,47 @@ fn estimate_complete(
         }
     };
     find_significant(&mut block, rule);
-    if let Some(model) = &structure.model {
-        block.fits = model.fits(winds, models, &block);
+    if let Some(errors) = errors {
+        block.fits = errors.fits(winds, models, &block);
     }
     block
 }
 
-/// The wind-field model as it follows the run.
-pub(super) struct StructureState {
-    settings: ErrorSettings,
-    interval: f64,
-    /// `None` if the errors hold the instruments alone.
-    model: Option<Model>,
-    polygons: usize,
-    /// The last block of the window before.
-    last_block: Option<WindBlock>,
-    /// At the end of each day, and of the run.
-    pub(super) reports: Vec<StructureReport>,
-    /// The last time taken in.
-    last: Option<Time>,
-}
-
-struct Model {
-    geometry: NetworkGeometry,
-    /// How much of the time each station reported when the geometry was made: never, seldom, often.
-    reporting: Vec<u8>,
-    window: StructureWindow,
+/// What the complete errors of the polygons need beside the structure function.
+struct ErrorModel {
     sampling: Sampling,
-    network: Network,
     /// For each polygon with more than three stations.
     opinions: Vec<(usize, SecondOpinion)>,
 }
 
-const DAY: i64 = 86_400_000_000;
-
-impl StructureState {
-    pub(super) fn new(setup: &Setup) -> Self {
-        let settings = setup.settings.errors;
-        let network = &setup.network;
-        let spacing = setup.median_edge().or_else(|| typical_spacing(network));
-        let model = spacing.filter(|_| settings.complete).map(|spacing| {
-            let positions: Vec<Position> = network.stations().iter().map(|s| s.position).collect();
-            let (polygons, edges) = (&setup.built.polygons, &setup.built.edges);
-            let geometry = NetworkGeometry::new(network, spacing, &[]);
-            let sampling = Sampling::new(polygons, edges, &positions, spacing);
-            let opinions = polygons.iter().enumerate();
-            let opinions = opinions
-                .filter_map(|(p, polygon)| Some((p, SecondOpinion::new(polygon, p, &sampling)?)));
-            Model {
-                opinions: opinions.collect(),
-                window: StructureWindow::new(&geometry, settings.structure),
-                geometry,
-                reporting: vec![OFTEN; network.len()],
-                sampling,
-                network: network.clone(),
-            }
-        });
-        Self {
-            settings,
-            interval: setup.settings.analysis.interval.as_secs_f64(),
-            model,
-            polygons: setup.built.polygons.len(),
-            last_block: None,
-            reports: Vec::new(),
-            last: None,
-        }
-    }
-
-    /// Takes in the winds of a window; for each block the structure function at each of its times.
-    pub(super) fn advance(&mut self, winds: &[WindBlock]) -> Vec<Vec<StructureFunction>> {
-        let Some(model) = &mut self.model else {
-            return winds.iter().map(|_| Vec::new()).collect();
-        };
-        model.follow_reporting(winds);
-        let (settings, interval) = (&self.settings.structure, self.interval);
-        let (geometry, last_block) = (&model.geometry, &self.last_block);
-        let sums: Vec<BlockSums> = winds
-            .par_iter()
-            .enumerate()
-            .map(|(k, block)| {
-                let before = match k.checked_sub(1) {
-                    Some(before) => winds.get(before),
-                    None => last_block.as_ref(),
-                };
-                BlockSums::of(geometry, settings, interval, before, block)
-            })
+impl ErrorModel {
+    fn new(setup: &Setup, spacing: f64) -> Self {
+        let positions: Vec<Position> = setup
+            .network
+            .stations()
+            .iter()
+            .map(|s| s.position)
             .collect();
-        let mut of_blocks = Vec::with_capacity(winds.len());
-        for (block, sums) in winds.iter().zip(&sums) {
-            let mut models = Vec::with_capacity(block.times.len());
-            for day in block.times.chunk_by(|a, b| day_of(*a) == day_of(*b)) {
-                let (Some(&first), Some(&last)) = (day.first(), day.last()) else {
-                    continue;
-                };
-                if let Some(before) = self.last
-                    && day_of(before) != day_of(first)
-                {
-                    self.reports.push(model.report(before));
-                }
-                models.extend(model.window.advance(&model.geometry, sums, day));
-                self.last = Some(last);
-            }
-            of_blocks.push(models);
+        let (polygons, edges) = (&setup.built.polygons, &setup.built.edges);
+        let sampling = Sampling::new(polygons, edges, &positions, spacing);
+        let opinions = polygons.iter().enumerate();
+        let opinions = opinions
+            .filter_map(|(p, polygon)| Some((p, SecondOpinion::new(polygon, p, &sampling)?)));
+        Self {
+            opinions: opinions.collect(),
+            sampling,
         }
-        of_blocks
     }
 
     /// How long the errors of sampling and timing of each polygon last, s.
-    fn lasting(&self, models: &[StructureFunction]) -> Vec<f64> {
-        let Some((model, structure)) = self.model.as_ref().zip(models.get(models.len() / 2)) else {
-            return vec![1.0; self.polygons];
+    fn lasting(&self, polygons: usize, models: &[StructureFunction]) -> Vec<f64> {
+        let Some(structure) = models.get(models.len() / 2) else {
+            return vec![1.0; polygons];
         };
-        let edges = (0..self.polygons).map(|p| model.sampling.mean_edge(p));
+        let edges = (0..polygons).map(|p| self.sampling.mean_edge(p));
         edges
             .map(|edge| structure.decorrelation_time(edge))
             .collect()
-    }
-
-    pub(super) fn keep_last(&mut self, winds: Vec<WindBlock>) {
-        if let Some(last) = winds.into_iter().next_back() {
-            self.last_block = Some(last);
-        }
-    }
-
-    /// Notes the model as it stands at the end of the run.
-    fn report(&mut self) {
-        if let (Some(model), Some(last)) = (&self.model, self.last) {
-            self.reports.push(model.report(last));
-        }
-    }
-}
-
-/// Stations that report less than half of the time are seldom there ([`NetworkGeometry::new`]).
-const SELDOM: u8 = 1;
-const OFTEN: u8 = 2;
-
-impl Model {
-    /// Chooses pairs and planes anew if other stations report than before.
-    fn follow_reporting(&mut self, winds: &[WindBlock]) {
-        let times: usize = winds.iter().map(|block| block.times.len()).sum();
-        if times == 0 {
-            return;
-        }
-        let mut values = vec![0; self.network.len()];
-        for block in winds {
-            for (sum, n) in values.iter_mut().zip(block.values()) {
-                *sum += n;
-            }
-        }
-        let class = |&n: &u64| match n {
-            0 => 0,
-            n if 2 * n < times as u64 => SELDOM,
-            _ => OFTEN,
-        };
-        let reporting: Vec<u8> = values.iter().map(class).collect();
-        if reporting != self.reporting {
-            let shares: Vec<f64> = values.iter().map(|&n| n as f64 / times as f64).collect();
-            self.geometry = NetworkGeometry::new(&self.network, self.geometry.spacing, &shares);
-            self.reporting = reporting;
-        }
     }
 
     /// The linear fits of a block.
@@ -334,24 +223,12 @@ impl Model {
         };
         self.opinions.iter().map(column).collect()
     }
-
-    fn report(&self, time: Time) -> StructureReport {
-        StructureReport {
-            time,
-            function: *self.window.current(),
-            rows: self.window.table(&self.geometry),
-        }
-    }
 }
 
 /// What the station list corrects the reports by.
 pub(super) fn corrections(setup: &Setup) -> Vec<Option<Correction>> {
     let stations = setup.network.stations().iter();
     stations.map(|s| s.correction.clone()).collect()
-}
-
-fn day_of(time: Time) -> i64 {
-    time.micros().div_euclid(DAY)
 }
 
 /// Errors of each station's sensor: as stated, with the steps that were found in its reports.

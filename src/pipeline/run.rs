@@ -3,6 +3,7 @@
 use std::fmt::Write;
 
 use super::estimation::Estimation;
+use super::field::FieldState;
 use super::{Reading, Setup, Windows};
 use crate::align::Period;
 use crate::error::Error;
@@ -132,7 +133,10 @@ pub fn run<T: Send>(
         extremes: estimation.extremes,
         statistics: estimation.statistics,
         fits: estimation.fits,
-        structure: estimation.structure.reports,
+        structure: estimation
+            .field
+            .map(FieldState::into_reports)
+            .unwrap_or_default(),
     })
 }
 
