@@ -73,6 +73,7 @@ pub mod pipeline;
 pub mod polygon;
 pub mod report;
 pub mod settings;
+pub mod spatial;
 pub mod station;
 pub mod structure;
 pub mod sum;

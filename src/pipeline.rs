@@ -3,6 +3,8 @@
 mod calibrate;
 mod estimation;
 mod field;
+mod neighbours;
+mod outliers;
 mod reading;
 mod run;
 mod windows;
@@ -11,7 +13,7 @@ use std::path::{Path, PathBuf};
 
 use crate::error::{Error, Problem};
 use crate::integral::{SelfTest, planetary_vorticity, self_test};
-use crate::polygon::{BuiltPolygons, build_polygons};
+use crate::polygon::{BuiltPolygons, build_polygons, median_edge};
 use crate::settings::{Overrides, Settings, read_settings};
 use crate::station::{Network, Period, Position, doubts, read_catalogue};
 use crate::structure::typical_spacing;
@@ -144,10 +146,7 @@ impl Setup {
     /// Median length of the edges of all polygons, m.
     #[must_use]
     pub fn median_edge(&self) -> Option<f64> {
-        let edges = self.built.edges.edges().iter();
-        let mut lengths: Vec<f64> = edges.map(|edge| edge.length).collect();
-        lengths.sort_by(f64::total_cmp);
-        lengths.get(lengths.len() / 2).copied()
+        median_edge(&self.built.edges)
     }
 }
 

@@ -44,7 +44,7 @@ pub fn block_times(stations: usize) -> usize {
 /// Winds of all stations at a run of analysis times.
 ///
 /// Columns have the shape stations × times; the value of station `s` at time `t` stands at `s * times.len() + t`.
-/// Where the flag is [`Flag::Missing`] the value is 0 and means nothing.
+/// Where the flag is [`Flag::Missing`] the value is 0 and means nothing; where it is [`Flag::Fail`] it is not to be used.
 #[derive(Debug, Clone, Default, PartialEq)]
 pub struct WindBlock {
     /// The analysis times.
@@ -114,10 +114,16 @@ impl WindBlock {
         }
     }
 
-    /// For each station how many values it has.
+    /// Raises the flag of the value of a station at a time of the block to at least `flag`.
+    pub fn raise_flag(&mut self, station: usize, time: usize, flag: Flag) {
+        let cell = station * self.times.len() + time;
+        self.flag[cell] = self.flag[cell].worst(flag);
+    }
+
+    /// For each station how many values it has that did not fail.
     #[must_use]
     pub fn values(&self) -> Vec<u64> {
-        let there = |flags: &[Flag]| flags.iter().filter(|&&f| f != Flag::Missing).count() as u64;
+        let there = |flags: &[Flag]| flags.iter().filter(|f| f.is_usable()).count() as u64;
         self.flag
             .chunks(self.times.len().max(1))
             .map(there)
@@ -163,6 +169,8 @@ pub struct Aligner<'a> {
     grid: TimeGrid,
     /// Reports that carry a wind and did not fail, for each station.
     usable: Vec<Usable>,
+    /// Times of the reports that failed a check, for each station, μs.
+    failed: Vec<Vec<i64>>,
     /// Error variances of each station's sensor.
     variances: Vec<SensorVariances>,
     /// For each report whether a value came of it.
@@ -246,6 +254,7 @@ impl<'a> Aligner<'a> {
             variances: sensors.errors.iter().map(SensorVariances::of).collect(),
             used: Marks::new(table.len()),
             corrections: Vec::new(),
+            failed: failed_times(table, &usable),
             usable,
             table,
         }
@@ -262,6 +271,12 @@ impl<'a> Aligner<'a> {
     #[must_use]
     pub fn grid(&self) -> &TimeGrid {
         &self.grid
+    }
+
+    /// The reports.
+    #[must_use]
+    pub fn table(&self) -> &ReportTable {
+        self.table
     }
 
     /// The winds at the analysis times of one block.
@@ -284,11 +299,36 @@ impl<'a> Aligner<'a> {
                     self.vector_mean(station, micros_of(window), least, &mut block);
                 }
             }
+            self.mark_failed(station, &mut block);
             if let Some(Some(correction)) = self.corrections.get(station) {
                 block.correct(station, correction);
             }
         }
         block
+    }
+
+    /// Marks the times without a value for which there would be one if a report had not failed: those with such a report
+    /// within the tolerance, or in the window of the mean.
+    fn mark_failed(&self, station: usize, block: &mut WindBlock) {
+        let Some(failed) = self.failed.get(station).filter(|f| !f.is_empty()) else {
+            return;
+        };
+        let (back, ahead) = match self.method {
+            AlignMethod::Nearest { tolerance } | AlignMethod::Linear { tolerance } => {
+                (micros_of(tolerance), micros_of(tolerance))
+            }
+            AlignMethod::VectorMean { window, .. } => (micros_of(window).saturating_sub(1), 0),
+        };
+        let cells = block.of_station(station);
+        for (time, flag) in block.times.iter().zip(&mut block.flag[cells]) {
+            if *flag == Flag::Missing {
+                let from = time.micros().saturating_sub(back);
+                let first = failed.get(failed.partition_point(|&t| t < from));
+                if first.is_some_and(|&t| t <= time.micros().saturating_add(ahead)) {
+                    *flag = Flag::Fail;
+                }
+            }
+        }
     }
 
     /// Marks reports of which a value came before.
@@ -301,6 +341,57 @@ impl<'a> Aligner<'a> {
     #[must_use]
     pub fn is_used(&self, i: usize) -> bool {
         self.used.is_marked(i)
+    }
+
+    /// The usable report of a station that its value at an analysis time comes from: the nearest, of a mean the last.
+    #[must_use]
+    pub fn report_at(&self, station: usize, time: Time) -> Option<usize> {
+        let usable = self.usable.get(station)?;
+        let at = time.micros();
+        let after = usable.before(self.table, at.saturating_add(1));
+        let before = after.checked_sub(1).map(|k| self.report(station, k));
+        if matches!(self.method, AlignMethod::VectorMean { .. }) {
+            return before.map(|(_, i)| i);
+        }
+        let next = (after < usable.len()).then(|| self.report(station, after));
+        match (before, next) {
+            (Some((b, _)), Some((a, i))) if a - at < at - b => Some(i),
+            (before, next) => before.or(next).map(|(_, i)| i),
+        }
+    }
+
+    /// By how much the wind of a station's usable reports before and after differs from that of the report behind its
+    /// value at an analysis time, reduced to the common height and corrected as the value is; `None` for reports more
+    /// than `within` μs from it. Of a mean there is no such report.
+    #[must_use]
+    pub fn changes_around(
+        &self,
+        station: usize,
+        time: Time,
+        within: i64,
+    ) -> Option<[Option<Wind>; 2]> {
+        if matches!(self.method, AlignMethod::VectorMean { .. }) {
+            return None;
+        }
+        let i = self.report_at(station, time)?;
+        let (here, at) = (self.table.winds()[i], self.table.times()[i].micros());
+        let usable = &self.usable[station];
+        let k = usable.before(self.table, at);
+        let change = |k: Option<usize>| {
+            let (other, j) = self.report(station, k.filter(|&k| k < usable.len())?);
+            let wind = self.table.winds()[j];
+            let factor = self.sensors.height_factors[station].unwrap_or(1.0);
+            let change = Wind {
+                u: factor * (wind.u - here.u),
+                v: factor * (wind.v - here.v),
+            };
+            let correction = self.corrections.get(station).and_then(Option::as_ref);
+            let correction = correction.filter(|c| c.holds_at(time));
+            let apart = other.saturating_sub(at).abs();
+            (apart <= within).then(|| correction.map_or(change, |c| c.apply(change)))
+        };
+        // Reports on other levels at the same time are not usable, so each time is there once.
+        Some([change(k.checked_sub(1)), change(k.checked_add(1))])
     }
 
     /// Time and index of the usable report `k` of a station.
@@ -481,6 +572,19 @@ impl<'a> Aligner<'a> {
             age: 0.0,
         }
     }
+}
+
+/// For each station the times of its reports that failed a check, μs.
+fn failed_times(table: &ReportTable, usable: &[Usable]) -> Vec<Vec<i64>> {
+    let of_station = |(station, usable): (usize, &Usable)| match usable {
+        Usable::All(_) => Vec::new(),
+        Usable::Some(_) => table
+            .of_station(station)
+            .filter(|&i| table.flag(i) == Flag::Fail)
+            .map(|i| table.times()[i].micros())
+            .collect(),
+    };
+    usable.iter().enumerate().map(of_station).collect()
 }
 
 /// Seconds of a distance in time.

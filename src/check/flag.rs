@@ -45,6 +45,12 @@ impl Flag {
         }
     }
 
+    /// True unless what it stands for failed or is missing.
+    #[must_use]
+    pub const fn is_usable(self) -> bool {
+        !matches!(self, Self::Fail | Self::Missing)
+    }
+
     /// The worse of two flags.
     #[must_use]
     pub fn worst(self, other: Self) -> Self {
@@ -87,11 +93,13 @@ pub enum Test {
     Agreement,
     /// 10: too little variation in half a day.
     AttenuatedSignal,
+    /// 11: against the stations around it, at the analysis times ([`crate::spatial`]).
+    Neighbour,
 }
 
 impl Test {
     /// All of them, in order.
-    pub const ALL: [Self; 12] = [
+    pub const ALL: [Self; 13] = [
         Self::TimingGap,
         Self::Location,
         Self::GrossRange,
@@ -104,6 +112,7 @@ impl Test {
         Self::Persistence,
         Self::Agreement,
         Self::AttenuatedSignal,
+        Self::Neighbour,
     ];
 
     /// The name in settings and tables.
@@ -122,6 +131,7 @@ impl Test {
             Self::Persistence => "persistence",
             Self::Agreement => "agreement",
             Self::AttenuatedSignal => "attenuated_signal",
+            Self::Neighbour => "neighbour",
         }
     }
 
@@ -142,7 +152,7 @@ impl Test {
 pub struct TestFlags(u32);
 
 /// The lower bit of each test whose flag is part of the report's own.
-const OF_THE_REPORT: u32 = 0x0055_5554;
+const OF_THE_REPORT: u32 = 0x0155_5554;
 
 impl TestFlags {
     /// The bits of the tests that are not among `off`.
@@ -191,7 +201,7 @@ impl TestFlags {
     #[inline]
     #[must_use]
     pub const fn any_raised(self) -> bool {
-        self.0 & 0x00aa_aaaa != 0
+        self.0 & 0x02aa_aaaa != 0
     }
 
     /// The worst flag of the tests of the report itself.

@@ -3,10 +3,11 @@
 use std::fmt::Write as _;
 use std::path::PathBuf;
 
-use crate::integral::Peak;
+use crate::integral::{Cause, Peak};
 use crate::output::{CAUTION, error_bars, significant_share};
 use crate::pipeline::{Outcome, Setup};
 use crate::polygon::{Exclusion, StationPolygon};
+use crate::units::Wind;
 
 /// Width of everything printed.
 pub(super) const WIDTH: usize = 80;
@@ -91,6 +92,8 @@ fn short_reason(why: &Exclusion) -> String {
         Exclusion::LongEdge(..) => "edge",
         Exclusion::SmallArea(..) => "too small",
         Exclusion::LargeArea(..) => "too large",
+        Exclusion::ElevationSpread(..) => "heights",
+        Exclusion::Slope(..) => "slope",
     }
     .into()
 }
@@ -141,6 +144,7 @@ pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
         built.excluded.len(),
         100.0 * values as f64 / possible
     );
+    reasons_text(&mut out, outcome);
     let _ = writeln!(
         out,
         "Self-test   {:.0e} of 2 Omega on {} polygons",
@@ -156,6 +160,7 @@ pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
     ] {
         let _ = writeln!(out, "  {what:<17} {}", peak_text(setup, peak));
     }
+    attributions_text(&mut out, setup, outcome);
     least_reporting(&mut out, setup, outcome);
     let _ = writeln!(
         out,
@@ -179,6 +184,52 @@ pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
         );
     }
     out
+}
+
+/// Stations behind odd means.
+fn attributions_text(out: &mut String, setup: &Setup, outcome: &Outcome) {
+    if outcome.attributions.is_empty() {
+        return;
+    }
+    let _ = writeln!(
+        out,
+        "\nOdd means, as if the wind of one station were off (see `gyremesh calibrate`):"
+    );
+    for found in &outcome.attributions {
+        // Stations of the network.
+        let id = &setup.network.stations()[found.station].id;
+        let _ = writeln!(
+            out,
+            "  {:<16} {:.1} +- {:.1} m/s towards {:03.0} degrees; {:.0} % of {} polygons' means",
+            cut(id, 16),
+            found.offset.speed(),
+            found.error,
+            towards(found.offset),
+            100.0 * found.explained,
+            found.polygons
+        );
+    }
+}
+
+/// Where a vector points, degrees clockwise from north.
+pub(super) fn towards(vector: Wind) -> f64 {
+    let from = vector.from_direction();
+    from.map_or(0.0, |from| (from.degrees() + 180.0).rem_euclid(360.0))
+}
+
+/// Why values are not there or suspect.
+fn reasons_text(out: &mut String, outcome: &Outcome) {
+    let counts = Cause::NAMES.iter().zip(outcome.causes.all());
+    let raised = counts.filter(|(_, n)| *n > 0);
+    let raised: Vec<String> = raised
+        .map(|(name, n)| format!("{n} {}", name.replace('_', " ")))
+        .collect();
+    if !raised.is_empty() {
+        let text = format!("of these values: {}", raised.join(", "));
+        for line in wrapped(&text, WIDTH - 12).lines() {
+            let _ = writeln!(out, "            {line}");
+        }
+    }
 }
 
 /// How many values differ from zero, and how the winds differ from place to place.

@@ -93,7 +93,7 @@ fn check(args: &CheckArgs) -> Result<Status, Error> {
             None => None,
         };
         let mut file = None;
-        let reading = Reading::with(settings, network, order, explain, |window| {
+        let reading = Reading::with(settings, network, order, explain, |window, neighbours| {
             let Some(set) = &mut set else {
                 return Ok(());
             };
@@ -105,7 +105,7 @@ fn check(args: &CheckArgs) -> Result<Status, Error> {
                     *file.insert(number)
                 }
             };
-            let pieces = rows.encode(&window.table);
+            let pieces = rows.encode(window, neighbours);
             pieces.iter().try_for_each(|piece| set.write(file, piece))
         })?;
         Ok::<_, Error>((reading, set))

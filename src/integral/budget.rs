@@ -3,7 +3,6 @@
 use super::EstimateBlock;
 use super::sampling::{PairCovariance, Sampling, SamplingConstants};
 use crate::align::WindBlock;
-use crate::check::Flag;
 use crate::polygon::{CoefficientRow, StationPolygon};
 use crate::structure::StructureFunction;
 
@@ -110,7 +109,7 @@ pub fn complete_errors(
                     }
                 }
                 for (t, flag) in block.flag[cells.clone()].iter().enumerate() {
-                    if *flag == Flag::Missing {
+                    if !flag.is_usable() {
                         (se[t], instrument[t], sampled[t], timed[t]) = (0.0, 0.0, 0.0, 0.0);
                     }
                 }

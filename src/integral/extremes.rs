@@ -54,7 +54,7 @@ impl Extremes {
         for (polygon, &f) in planetary.iter().enumerate() {
             let cells = polygon * n..(polygon + 1) * n;
             let flags = &block.flag[cells.clone()];
-            let there = flags.iter().filter(|&&flag| flag != Flag::Missing);
+            let there = flags.iter().filter(|flag| flag.is_usable());
             extremes.values[polygon] += there.count() as u64;
             let faultless = flags.iter().all(|&flag| flag <= Flag::Pass);
             let peak = |values: &[f64], errors: &[f64], sign: f64| {

@@ -5,6 +5,9 @@ use super::EstimateBlock;
 /// A difference with a smaller chance, if the model holds, counts as a disagreement.
 const DISAGREES: f64 = 0.01;
 
+/// With a smaller one the estimate of that time is suspect: one of a thousand by chance, so that a ring keeps its peaks.
+pub(super) const DISAGREES_AT_A_TIME: f64 = 1e-3;
+
 /// Agreement of the two estimates of one polygon.
 #[derive(Debug, Clone, Copy, Default, PartialEq)]
 pub struct FitBook {

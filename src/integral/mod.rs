@@ -7,6 +7,7 @@
 //! differences and means of polygons, [`MeanError`] for means over time, [`adjusted`] for what differs from zero among
 //! many, [`SecondOpinion`] for polygons of more than three stations.
 
+mod attribution;
 mod boundary;
 mod budget;
 mod discovery;
@@ -18,12 +19,14 @@ mod mean_error;
 mod sampling;
 mod second_opinion;
 mod statistics;
+mod verdict;
 
 use crate::align::WindBlock;
 use crate::check::Flag;
 use crate::polygon::{CoefficientRow, StationPolygon};
 use crate::time::Time;
 
+pub use attribution::{Attribution, attribute};
 pub use boundary::Segment;
 pub use budget::{
     ErrorBudget, ErrorParts, ExpectedErrors, complete_errors, error_covariance, expected_errors,
@@ -40,11 +43,12 @@ pub use mean_error::MeanError;
 pub use sampling::{PairCovariance, Sampling, SamplingConstants};
 pub use second_opinion::{Comparison, NoQuadratic, SecondOpinion, quadratic, slopes_of_plane};
 pub use statistics::{RunStatistics, Statistics};
+pub use verdict::{Cause, CauseBooks, find_causes};
 
 /// Estimates of all polygons at a run of analysis times.
 ///
 /// Columns have the shape polygons × times; the value of polygon `p` at time `t` stands at `p * times.len() + t`. Where
-/// the flag is [`Flag::Missing`] the value is 0 and means nothing.
+/// the flag is [`Flag::Fail`] or [`Flag::Missing`] the value is 0 and means nothing.
 #[derive(Debug, Clone, Default, PartialEq)]
 pub struct EstimateBlock {
     /// The analysis times.
@@ -57,8 +61,10 @@ pub struct EstimateBlock {
     pub divergence: Vec<f64>,
     /// Its standard error, 1/s.
     pub divergence_se: Vec<f64>,
-    /// Worst flag of the stations.
+    /// Worst flag of the stations, or that of the estimate itself if it is worse ([`find_causes`]).
     pub flag: Vec<Flag>,
+    /// Why an estimate is flagged worse than pass; empty before [`find_causes`], and where none is.
+    pub causes: Vec<Option<Cause>>,
     /// Largest age of the stations' values, s.
     pub age: Vec<f32>,
     /// What the standard errors are made of; empty before [`complete_errors`].
@@ -83,7 +89,7 @@ pub struct FitColumn {
 ///
 /// - **Error**: instrument errors only ([`complete_errors`] adds the others), independent between stations: var ζ = Σ wᵀ C w with the 2×2 covariance C of
 ///   each report (`methods.md` 1.4, full form; Davies-Jones 1993, MWR 121, 713).
-/// - **Missing**: a polygon without one of its stations has no value at that time.
+/// - **Missing**: a polygon without one of its stations, or of which one failed, has no value at that time.
 #[must_use]
 pub fn estimate(polygons: &[StationPolygon], winds: &WindBlock) -> EstimateBlock {
     // With the widest vectors that the processor has; every step is the same in each, so the bytes are too.
@@ -147,8 +153,8 @@ fn estimate_columns(polygons: &[StationPolygon], winds: &WindBlock) -> EstimateB
             *z = if *z > 0.0 { z.sqrt() } else { 0.0 };
             *d = if *d > 0.0 { d.sqrt() } else { 0.0 };
         }
-        if flag.contains(&Flag::Missing) {
-            for t in (0..n).filter(|&t| flag[t] == Flag::Missing) {
+        if !flag.iter().all(|f| f.is_usable()) {
+            for t in (0..n).filter(|&t| !flag[t].is_usable()) {
                 (vorticity[t], divergence[t]) = (0.0, 0.0);
                 (vorticity_se[t], divergence_se[t]) = (0.0, 0.0);
             }

@@ -2,8 +2,9 @@
 
 use zmij::Buffer;
 
-use crate::check::Flag;
-use crate::integral::{EstimateBlock, Sense};
+use super::reason::Reasons;
+use crate::check::Test;
+use crate::integral::{Cause, EstimateBlock, Sense};
 use crate::pipeline::{Outcome, Setup};
 use crate::polygon::StationPolygon;
 use crate::station::Network;
@@ -13,7 +14,7 @@ const POLYGON_COLUMNS: &str = "time,polygon,stations,area_km2,vorticity,vorticit
                                planetary_vorticity,absolute_vorticity,flag,sense,age_s,\
                                vorticity_se_instrument,vorticity_se_sampling,vorticity_se_timing,\
                                divergence_se_instrument,divergence_se_sampling,divergence_se_timing,\
-                               vorticity_significant,divergence_significant\n";
+                               vorticity_significant,divergence_significant,reason\n";
 
 /// Writes rows of `polygons.csv`, one for each time and polygon.
 pub struct PolygonRows {
@@ -21,6 +22,8 @@ pub struct PolygonRows {
     fixed: Vec<String>,
     planetary: Vec<f64>,
     planetary_text: Vec<String>,
+    reasons: Reasons,
+    reason_words: Vec<String>,
     complete: bool,
 }
 
@@ -28,6 +31,7 @@ impl PolygonRows {
     /// Prepares the columns that do not change with time.
     #[must_use]
     pub fn new(setup: &Setup) -> Self {
+        let reasons = Reasons::new(&setup.network);
         let fixed = setup
             .built
             .polygons
@@ -45,6 +49,8 @@ impl PolygonRows {
             fixed,
             planetary_text: setup.planetary.iter().map(|&f| number(f)).collect(),
             planetary: setup.planetary.clone(),
+            reason_words: reasons.words().iter().map(|w| quoted(w)).collect(),
+            reasons,
             complete: setup.settings.errors.complete,
         }
     }
@@ -67,7 +73,7 @@ impl PolygonRows {
                 let cell = p * n + t;
                 out.extend_from_slice(time.as_bytes());
                 out.extend_from_slice(fixed.as_bytes());
-                let missing = block.flag[cell] == Flag::Missing;
+                let missing = !block.flag[cell].is_usable();
                 for value in [
                     block.vorticity[cell],
                     block.vorticity_se[cell],
@@ -97,6 +103,11 @@ impl PolygonRows {
                     out.extend_from_slice(buffer.format(block.age[cell]).as_bytes());
                 }
                 self.errors(&mut out, &mut buffer, block, cell);
+                out.push(b',');
+                if let Some(Some(cause)) = block.causes.get(cell) {
+                    let words = &self.reason_words[self.reasons.index(*cause)];
+                    out.extend_from_slice(words.as_bytes());
+                }
                 out.push(b'\n');
             }
         }
@@ -107,7 +118,7 @@ impl PolygonRows {
 impl PolygonRows {
     /// The parts of the errors, and what differs from zero.
     fn errors(&self, out: &mut Vec<u8>, buffer: &mut Buffer, block: &EstimateBlock, cell: usize) {
-        let missing = block.flag[cell] == Flag::Missing;
+        let missing = !block.flag[cell].is_usable();
         for parts in [&block.budget.vorticity, &block.budget.divergence] {
             for (part, asked_for) in [
                 (&parts.instrument, true),
@@ -173,7 +184,8 @@ pub fn stations_csv(setup: &Setup, outcome: &Outcome) -> String {
     let mut out = String::from(
         "station,name,latitude,longitude,elevation_m,reports,calm,no_direction,no_speed,suspect,failed,used,values,\
          availability,first_report,last_report,mean_speed,vector_mean_speed,vector_mean_direction,interval_s,gaps,direction_step_deg,speed_step,speed_step_unit,height_factor,\
-         pass_share,suspect_share,fail_share\n",
+         pass_share,suspect_share,fail_share,neighbour_suspect,neighbour_failed,\
+         mean_offset_u_m_s,mean_offset_v_m_s,mean_offset_se_m_s,mean_offset_explains\n",
     );
     let times = outcome.period.times.max(1) as f64;
     for (k, station) in setup.network.stations().iter().enumerate() {
@@ -184,6 +196,10 @@ pub fn stations_csv(setup: &Setup, outcome: &Outcome) -> String {
         let mean = reading.vector_mean;
         let speed_step = reading.rounding.speed;
         let [pass, suspect, fail] = reading.shares();
+        let (by_neighbours, offset) = (
+            reading.of_test(Test::Neighbour),
+            outcome.attributions.iter().find(|a| a.station == k),
+        );
         let share = |share: f64| optional((reading.reports > 0).then_some(share));
         let fields = [
             quoted(&station.id),
@@ -217,6 +233,12 @@ pub fn stations_csv(setup: &Setup, outcome: &Outcome) -> String {
             share(pass),
             share(suspect),
             share(fail),
+            by_neighbours.0.to_string(),
+            by_neighbours.1.to_string(),
+            optional(offset.map(|a| a.offset.u)),
+            optional(offset.map(|a| a.offset.v)),
+            optional(offset.map(|a| a.error)),
+            optional(offset.map(|a| a.explained)),
         ];
         out.push_str(&fields.join(","));
         out.push('\n');
@@ -246,14 +268,19 @@ pub fn summary_csv(setup: &Setup, outcome: &Outcome) -> String {
             out.push_str(column);
         }
     }
+    for cause in Cause::NAMES {
+        out.push(',');
+        out.push_str(cause);
+    }
     out.push('\n');
     let statistics = &outcome.statistics;
-    for ((polygon, vorticity), divergence) in setup
+    for (((polygon, vorticity), divergence), causes) in setup
         .built
         .polygons
         .iter()
         .zip(&statistics.vorticity)
         .zip(&statistics.divergence)
+        .zip(&outcome.causes.0)
     {
         out.push_str(&quoted(&polygon.id));
         for s in [vorticity, divergence] {
@@ -276,6 +303,10 @@ pub fn summary_csv(setup: &Setup, outcome: &Outcome) -> String {
                 out.push_str(&field);
             }
         }
+        for n in causes {
+            out.push(',');
+            out.push_str(&n.to_string());
+        }
         out.push('\n');
     }
     out
@@ -286,7 +317,7 @@ pub fn summary_csv(setup: &Setup, outcome: &Outcome) -> String {
 pub fn mesh_csv(setup: &Setup) -> String {
     let mut out = String::from(
         "polygon,kind,stations,area_km2,perimeter_km,longest_edge_km,smallest_angle_deg,shape_quality,\
-         noise_factor_per_m,elevation_spread_m,planetary_vorticity,excluded\n",
+         noise_factor_per_m,elevation_spread_m,slope,planetary_vorticity,excluded\n",
     );
     let used = setup
         .built
@@ -312,6 +343,7 @@ pub fn mesh_csv(setup: &Setup) -> String {
             number(shape.quality),
             number(shape.noise_factor),
             optional(shape.elevation_spread),
+            optional(shape.slope),
             optional(planetary),
             quoted(&excluded),
         ];

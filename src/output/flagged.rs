@@ -1,9 +1,12 @@
 //! `reports_flagged.csv`: every report with the flag of each test.
 
+use std::ops::Range;
+
 use rayon::prelude::*;
 use zmij::Buffer;
 
-use crate::check::Test;
+use crate::check::{Flag, Test};
+use crate::pipeline::Window;
 use crate::report::ReportTable;
 use crate::settings::Settings;
 use crate::station::Network;
@@ -42,21 +45,33 @@ impl FlaggedRows {
         format!("time,station,direction_deg,speed_m_s,gust_m_s,flag,{tests},file,line\n")
     }
 
-    /// The reports that were judged in a window, as pieces of text in order.
+    /// The reports of a window that are judged for good in it, as pieces of text in order; `neighbours` holds the flag of
+    /// the neighbour test for each report of the table.
     #[must_use]
-    pub fn encode(&self, table: &ReportTable) -> Vec<Vec<u8>> {
+    pub fn encode(&self, window: &Window, neighbours: &[Flag]) -> Vec<Vec<u8>> {
+        let table = &window.table;
+        let Range { start, end } = window.judged.clone();
         let mut reports: Vec<(i64, usize, usize)> = (0..table.stations())
-            .flat_map(|s| table.fresh(s).map(move |i| (s, i)))
+            .flat_map(|s| {
+                let from = table.of_station_from(s, start).start;
+                let to = table.of_station_from(s, end).start;
+                (from..to).map(move |i| (s, i))
+            })
             .map(|(s, i)| (table.times()[i].micros(), s, i))
             .collect();
         reports.par_sort_unstable();
         reports
             .par_chunks(CHUNK)
-            .map(|chunk| self.rows(table, chunk))
+            .map(|chunk| self.rows(table, neighbours, chunk))
             .collect()
     }
 
-    fn rows(&self, table: &ReportTable, reports: &[(i64, usize, usize)]) -> Vec<u8> {
+    fn rows(
+        &self,
+        table: &ReportTable,
+        neighbours: &[Flag],
+        reports: &[(i64, usize, usize)],
+    ) -> Vec<u8> {
         let mut out = Vec::with_capacity(reports.len() * 128);
         let mut buffer = Buffer::new();
         for &(_, station, i) in reports {
@@ -71,9 +86,15 @@ impl FlaggedRows {
                     out.extend_from_slice(buffer.format(value).as_bytes());
                 }
             }
-            out.extend_from_slice(&[b',', b'0' + table.flag(i).value()]);
+            let by_neighbours = neighbours.get(i).copied().unwrap_or(Flag::NotEvaluated);
+            let worst = table.flag(i).worst(by_neighbours);
+            out.extend_from_slice(&[b',', b'0' + worst.value()]);
             for test in Test::ALL {
-                out.extend_from_slice(&[b',', b'0' + table.test_flag(i, test).value()]);
+                let flag = match test {
+                    Test::Neighbour => table.test_flag(i, test).worst(by_neighbours),
+                    _ => table.test_flag(i, test),
+                };
+                out.extend_from_slice(&[b',', b'0' + flag.value()]);
             }
             let (file, line) = table.origin(i);
             out.push(b',');

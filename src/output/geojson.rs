@@ -46,6 +46,7 @@ pub fn mesh_geojson(setup: &Setup) -> String {
                 "shape_quality": shape.quality,
                 "noise_factor_per_m": shape.noise_factor,
                 "elevation_spread_m": shape.elevation_spread,
+                "slope": shape.slope,
                 "planetary_vorticity": planetary,
                 "excluded": excluded,
             });

@@ -9,6 +9,7 @@ mod geojson;
 #[cfg(feature = "parquet")]
 mod parquet;
 mod reading;
+mod reason;
 mod series;
 mod structure;
 mod summary;

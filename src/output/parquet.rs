@@ -20,9 +20,9 @@ use parquet::file::metadata::KeyValue;
 use parquet::file::properties::{EnabledStatistics, WriterProperties};
 use parquet::file::writer::SerializedFileWriter;
 
+use super::reason::Reasons;
 use super::template::{FixedColumns, Template};
-use crate::check::Flag;
-use crate::integral::{EstimateBlock, Sense};
+use crate::integral::{Cause, EstimateBlock, Sense};
 use crate::pipeline::Setup;
 
 /// Columns of numbers that differ from row to row: a dictionary of them would only cost time, their bytes side by side
@@ -49,6 +49,9 @@ pub struct ParquetRows {
     schema: SchemaRef,
     factory: ArrowRowGroupWriterFactory,
     senses: ArrayRef,
+    /// The reasons that can stand, in the order of [`Reasons::index`].
+    reasons: ArrayRef,
+    of_reasons: Reasons,
     planetary: Vec<f64>,
     fixed: FixedColumns,
     complete: bool,
@@ -104,6 +107,7 @@ pub fn parquet_series(setup: &Setup) -> Result<(ParquetRows, ParquetFile)> {
     let properties = properties.build();
     let writer = ArrowWriter::try_new(Vec::new(), Arc::clone(&schema), Some(properties.clone()))?;
     let (writer, factory) = writer.into_serialized_writer()?;
+    let of_reasons = Reasons::new(&setup.network);
     let rows = ParquetRows {
         fixed: FixedColumns::new(setup, &schema, properties),
         schema,
@@ -112,6 +116,8 @@ pub fn parquet_series(setup: &Setup) -> Result<(ParquetRows, ParquetFile)> {
             Sense::Cyclonic.name(),
             Sense::Anticyclonic.name(),
         ])),
+        reasons: Arc::new(StringArray::from(of_reasons.words().to_vec())),
+        of_reasons,
         planetary: setup.planetary.clone(),
         complete: setup.settings.errors.complete,
     };
@@ -155,6 +161,7 @@ fn schema() -> Schema {
         part("divergence_se_timing"),
         field("vorticity_significant", DataType::Boolean, true, ""),
         field("divergence_significant", DataType::Boolean, true, ""),
+        field("reason", dictionary(), true, ""),
     ])
 }
 
@@ -192,10 +199,9 @@ impl ParquetRows {
     /// The columns of a block; `None` for those that are the same in every block of as many times.
     fn columns(&self, block: &EstimateBlock) -> Result<Vec<Option<ArrayRef>>> {
         let (n, polygons) = (block.times.len(), self.planetary.len());
-        let there: Option<NullBuffer> = block
-            .flag
-            .contains(&Flag::Missing)
-            .then(|| by_time(&block.flag, n, |&flag, _| flag != Flag::Missing).into());
+        let all_there = block.flag.iter().all(|flag| flag.is_usable());
+        let there: Option<NullBuffer> =
+            (!all_there).then(|| by_time(&block.flag, n, |flag, _| flag.is_usable()).into());
         let values = |column: &[f64]| -> Option<ArrayRef> {
             let values = by_time(column, n, |&value, _| value);
             Some(Arc::new(Float64Array::new(values.into(), there.clone())))
@@ -270,7 +276,26 @@ impl ParquetRows {
             timing(&d.timing),
             called(&block.significant[0]),
             called(&block.significant[1]),
+            self.reason(block)?,
         ])
+    }
+}
+
+impl ParquetRows {
+    /// Why estimates are flagged; `None` where none is.
+    fn reason(&self, block: &EstimateBlock) -> Result<Option<ArrayRef>> {
+        if block.causes.is_empty() {
+            return Ok(None);
+        }
+        let index = |cause: &Option<Cause>, _| {
+            let place = self.of_reasons.index((*cause)?);
+            i32::try_from(place).ok()
+        };
+        let keys: Int32Array = by_time(&block.causes, block.times.len(), index)
+            .into_iter()
+            .collect();
+        let array = DictionaryArray::<Int32Type>::try_new(keys, Arc::clone(&self.reasons))?;
+        Ok(Some(Arc::new(array)))
     }
 }
 

@@ -52,7 +52,7 @@ pub fn calibrate(
     }
     let files = ReportFiles::new(&setup.settings.reports, network);
     let mut windows = Windows::new(&files, &setup.settings, order)?;
-    let (factors, height_warnings) = height_factors(setup);
+    let (factors, height_warnings) = height_factors(&setup.settings, network);
     let spacing = setup.spacing();
     let interval = setup.settings.analysis.interval.as_secs_f64();
     let mut state = State {
@@ -111,7 +111,7 @@ impl State<'_> {
         let analysis = &setup.settings.analysis;
         let multiples = window.multiples.clone();
         let aligner = Aligner::new(&window.table, analysis, &self.sensors, multiples)
-            .with_corrections(corrections(setup));
+            .with_corrections(corrections(&setup.network));
         let blocks = aligner.grid().blocks(block_times(setup.network.len()));
         let winds: Vec<WindBlock> = blocks
             .into_par_iter()

@@ -3,16 +3,19 @@
 use rayon::prelude::*;
 
 use super::field::FieldState;
+use super::outliers::OutlierBooks;
 use super::{Setup, Window};
 use crate::align::{AlignBooks, Aligner, StationSensors, WindBlock, block_times, height_factor};
 use crate::check::Flag;
 use crate::integral::{
-    ErrorBudget, ErrorParts, EstimateBlock, Extremes, FalseDiscovery, FitBooks, FitColumn,
-    RunStatistics, Sampling, SecondOpinion, complete_errors, estimate, find_significant,
+    CauseBooks, ErrorBudget, ErrorParts, EstimateBlock, Extremes, FalseDiscovery, FitBooks,
+    FitColumn, RunStatistics, Sampling, SecondOpinion, complete_errors, estimate, find_causes,
+    find_significant,
 };
 use crate::report::{Rounding, SpeedStep};
-use crate::settings::SensorErrors;
-use crate::station::{Correction, Position, Station};
+use crate::settings::{SensorErrors, Settings};
+use crate::spatial::SpatialCheck;
+use crate::station::{Correction, Network, Position, Station};
 use crate::structure::StructureFunction;
 use crate::warning::Warning;
 
@@ -26,18 +29,22 @@ pub(super) struct Estimation<'a> {
     carried: Vec<bool>,
     pub(super) any_moving: bool,
     pub(super) values: Vec<u64>,
-    pub(super) extremes: Extremes,
-    pub(super) statistics: RunStatistics,
-    pub(super) fits: FitBooks,
+    pub(super) sums: Sums,
     pub(super) field: Option<FieldState>,
+    spatial: Option<SpatialCheck>,
+    pub(super) outliers: OutlierBooks,
     errors: Option<ErrorModel>,
     rule: FalseDiscovery,
 }
 
 impl<'a> Estimation<'a> {
     pub(super) fn new(setup: &'a Setup) -> Self {
-        let (height_factors, warnings) = height_factors(setup);
-        let spacing = setup.spacing().filter(|_| setup.settings.errors.complete);
+        let (height_factors, warnings) = height_factors(&setup.settings, &setup.network);
+        let settings = &setup.settings;
+        let complete = settings.errors.complete;
+        let spacing = setup.spacing();
+        let test = spacing.filter(|_| settings.tests_neighbours());
+        let model = spacing.filter(|_| complete || test.is_some());
         Self {
             sensors: StationSensors {
                 errors: Vec::new(),
@@ -48,11 +55,13 @@ impl<'a> Estimation<'a> {
             carried: Vec::new(),
             any_moving: false,
             values: vec![0; setup.network.len()],
-            extremes: Extremes::default(),
-            statistics: RunStatistics::default(),
-            fits: FitBooks::default(),
-            field: spacing.map(|m| FieldState::new(&setup.settings, &setup.network, m)),
-            errors: spacing.map(|m| ErrorModel::new(setup, m)),
+            sums: Sums::default(),
+            field: model.map(|m| FieldState::new(settings, &setup.network, m)),
+            spatial: test.map(|m| SpatialCheck::new(&setup.network, m, settings.check.neighbour)),
+            outliers: OutlierBooks::default(),
+            errors: spacing
+                .filter(|_| complete)
+                .map(|m| ErrorModel::new(setup, m)),
             rule: FalseDiscovery::new(
                 setup.settings.errors.false_discovery_rate,
                 setup.built.polygons.len(),
@@ -74,34 +83,46 @@ impl<'a> Estimation<'a> {
         self.sensors.errors = sensor_errors(&setup.settings.sensor, &window.rounding);
         let analysis = &setup.settings.analysis;
         let aligner = Aligner::new(table, analysis, &self.sensors, window.multiples.clone())
-            .with_corrections(corrections(setup));
+            .with_corrections(corrections(&setup.network));
         let handed_on = (0..stations).flat_map(|s| table.carried(s));
         let used = handed_on.zip(&self.carried).filter(|&(_, &used)| used);
         aligner.mark_used(used.map(|(i, _)| i));
 
         let blocks = aligner.grid().blocks(block_times(stations));
-        let winds: Vec<WindBlock> = blocks
+        let mut winds: Vec<WindBlock> = blocks
             .into_par_iter()
             .map(|times| aligner.align(times))
             .collect();
-        let models = match &mut self.field {
-            Some(field) => field.advance(&winds),
-            None => vec![Vec::new(); winds.len()],
+        let within = setup.settings.check.neighbour.report_within;
+        let changes = |station, time| aligner.changes_around(station, time, within);
+        let models = match (&mut self.field, &mut self.spatial) {
+            (Some(field), Some(check)) => {
+                let (models, outliers) = field.judge(&mut winds, check, &changes);
+                self.outliers.add(&aligner, analysis, &winds, &outliers);
+                models
+            }
+            (Some(field), None) => field.advance(&winds),
+            (None, _) => vec![Vec::new(); winds.len()],
         };
         let (errors, rule) = (self.errors.as_ref(), &self.rule);
         let polygons = setup.built.polygons.len();
-        let results: Vec<(Extremes, RunStatistics, FitBooks, T)> = winds
+        let results: Vec<(Sums, T)> = winds
             .par_iter()
             .zip(models)
             .map(|(winds, models)| {
                 let block = estimate_complete(setup, errors, rule, winds, &models);
-                let peaks = Extremes::of(&block, &setup.planetary);
                 let lasting = match errors {
                     Some(errors) => errors.lasting(polygons, &models),
                     None => vec![1.0; polygons],
                 };
-                let sums = RunStatistics::of(&block, &lasting);
-                (peaks, sums, FitBooks::of(&block), encode(&block))
+                let causes = CauseBooks::of(&block, polygons);
+                let sums = Sums {
+                    extremes: Extremes::of(&block, &setup.planetary),
+                    statistics: RunStatistics::of(&block, &lasting),
+                    fits: FitBooks::of(&block),
+                    causes,
+                };
+                (sums, encode(&block))
             })
             .collect();
 
@@ -114,10 +135,8 @@ impl<'a> Estimation<'a> {
             field.keep_last(winds);
         }
         let mut encoded = Vec::with_capacity(results.len());
-        for (peaks, sums, fits, result) in results {
-            self.extremes.merge(&peaks);
-            self.statistics.merge(&sums);
-            self.fits.merge(&fits);
+        for (sums, result) in results {
+            self.sums.merge(&sums);
             encoded.push(result);
         }
         self.books.add(&aligner, window.carried_from);
@@ -129,6 +148,24 @@ impl<'a> Estimation<'a> {
             None => Vec::new(),
         };
         encoded
+    }
+}
+
+/// What the estimates come to over the times.
+#[derive(Default)]
+pub(super) struct Sums {
+    pub(super) extremes: Extremes,
+    pub(super) statistics: RunStatistics,
+    pub(super) fits: FitBooks,
+    pub(super) causes: CauseBooks,
+}
+
+impl Sums {
+    fn merge(&mut self, later: &Self) {
+        self.extremes.merge(&later.extremes);
+        self.statistics.merge(&later.statistics);
+        self.fits.merge(&later.fits);
+        self.causes.merge(&later.causes);
     }
 }
 
@@ -160,6 +197,7 @@ fn estimate_complete(
     if let Some(errors) = errors {
         block.fits = errors.fits(winds, models, &block);
     }
+    find_causes(&mut block, polygons, winds, &setup.settings.limits);
     block
 }
 
@@ -226,8 +264,8 @@ impl ErrorModel {
 }
 
 /// What the station list corrects the reports by.
-pub(super) fn corrections(setup: &Setup) -> Vec<Option<Correction>> {
-    let stations = setup.network.stations().iter();
+pub(super) fn corrections(network: &Network) -> Vec<Option<Correction>> {
+    let stations = network.stations().iter();
     stations.map(|s| s.correction.clone()).collect()
 }
 
@@ -246,10 +284,13 @@ pub(super) fn sensor_errors(stated: &SensorErrors, rounding: &[Rounding]) -> Vec
 }
 
 /// Height factors of the stations; those whose speeds cannot be reduced are named.
-pub(super) fn height_factors(setup: &Setup) -> (Vec<Option<f64>>, Vec<Warning>) {
+pub(super) fn height_factors(
+    settings: &Settings,
+    network: &Network,
+) -> (Vec<Option<f64>>, Vec<Warning>) {
     let mut warnings = Vec::new();
     let factor = |station: &Station| {
-        let Some(reduction) = setup.settings.analysis.height else {
+        let Some(reduction) = settings.analysis.height else {
             return Some(1.0);
         };
         match height_factor(&station.site, &reduction) {
@@ -263,6 +304,6 @@ pub(super) fn height_factors(setup: &Setup) -> (Vec<Option<f64>>, Vec<Warning>) 
             }
         }
     };
-    let factors = setup.network.stations().iter().map(factor).collect();
+    let factors = network.stations().iter().map(factor).collect();
     (factors, warnings)
 }

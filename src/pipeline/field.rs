@@ -4,7 +4,9 @@ use rayon::prelude::*;
 
 use super::run::StructureReport;
 use crate::align::WindBlock;
+use crate::check::Flag;
 use crate::settings::Settings;
+use crate::spatial::{Outlier, OwnChanges, SpatialCheck};
 use crate::station::Network;
 use crate::structure::{
     BlockSums, NetworkGeometry, StructureFunction, StructureSettings, StructureWindow,
@@ -20,15 +22,15 @@ pub(super) struct FieldState {
     geometry: NetworkGeometry,
     /// How much of the time each station reported when the geometry was made: never, seldom, often.
     reporting: Vec<u8>,
+    /// The last block of the window before.
+    last_block: Option<WindBlock>,
     past: Past,
 }
 
-/// What is kept from window to window.
+/// What follows the times.
 #[derive(Clone)]
 struct Past {
     window: StructureWindow,
-    /// The last block of the window before.
-    last_block: Option<WindBlock>,
     /// At the end of each day, and of the run.
     reports: Vec<StructureReport>,
     /// The last time taken in.
@@ -50,9 +52,9 @@ impl FieldState {
             settings: structure,
             interval: settings.analysis.interval.as_secs_f64(),
             reporting: vec![OFTEN; network.len()],
+            last_block: None,
             past: Past {
                 window: StructureWindow::new(&geometry, structure),
-                last_block: None,
                 reports: Vec::new(),
                 last: None,
             },
@@ -64,7 +66,7 @@ impl FieldState {
     /// Takes in the winds of a window; for each block the structure function at each of its times.
     pub(super) fn advance(&mut self, winds: &[WindBlock]) -> Vec<Vec<StructureFunction>> {
         self.follow_reporting(winds);
-        let (geometry, last_block) = (&self.geometry, &self.past.last_block);
+        let (geometry, last_block) = (&self.geometry, &self.last_block);
         let sums: Vec<BlockSums> = winds
             .par_iter()
             .enumerate()
@@ -82,10 +84,32 @@ impl FieldState {
             .collect()
     }
 
+    /// As [`Self::advance`], with the winds judged by their neighbours on the way: their flags are raised, and what fails
+    /// is not in the structure function.
+    pub(super) fn judge(
+        &mut self,
+        winds: &mut [WindBlock],
+        check: &mut SpatialCheck,
+        changes: &OwnChanges,
+    ) -> (Vec<Vec<StructureFunction>>, Vec<Outlier>) {
+        let before = self.past.clone();
+        let mut models = self.advance(winds);
+        let outliers = check.judge(winds, &models, changes);
+        for outlier in &outliers {
+            let (block, t) = outlier.at;
+            winds[block].raise_flag(outlier.deviation.station, t, outlier.flag());
+        }
+        if outliers.iter().any(|o| o.flag() == Flag::Fail) {
+            self.past = before;
+            models = self.advance(winds);
+        }
+        (models, outliers)
+    }
+
     /// Keeps the last winds of a window for the next.
     pub(super) fn keep_last(&mut self, winds: Vec<WindBlock>) {
         if let Some(last) = winds.into_iter().next_back() {
-            self.past.last_block = Some(last);
+            self.last_block = Some(last);
         }
     }
 

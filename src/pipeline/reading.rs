@@ -1,7 +1,8 @@
 //! What came of reading and checking the reports.
 
+use super::neighbours::NeighbourRun;
 use super::{Window, Windows};
-use crate::check::{Explained, StationReading};
+use crate::check::{Explained, Flag, StationReading};
 use crate::error::{Error, ErrorKind};
 use crate::report::{Conflict, FileOutcome, InputOrder, ReportFiles};
 use crate::settings::Settings;
@@ -37,7 +38,7 @@ impl Reading {
     /// # Errors
     /// The disk cannot take what does not fit into memory.
     pub fn of(settings: &Settings, network: &Network) -> Result<Self, Error> {
-        let all = |order| Self::with(settings, network, order, None, |_| Ok(()));
+        let all = |order| Self::with(settings, network, order, None, |_, _| Ok(()));
         match all(InputOrder::first_try(&settings.reports)) {
             Err(error) if error.kind() == ErrorKind::Order => all(InputOrder::Any),
             result => result,
@@ -45,7 +46,8 @@ impl Reading {
     }
 
     /// Reads and checks the reports in an order; `explain` is the station and time whose reports are to be explained,
-    /// and `each` is given every window.
+    /// and `each` is given every window, with the flag of the neighbour test for each of its reports (none where the test
+    /// is not made).
     ///
     /// # Errors
     /// As [`Windows::after`]: reports that are not in the order that they should have ([`Error::NotInOrder`]), for one;
@@ -55,19 +57,25 @@ impl Reading {
         network: &Network,
         order: InputOrder,
         explain: Option<(usize, Time)>,
-        mut each: impl FnMut(&Window) -> Result<(), Error>,
+        mut each: impl FnMut(&Window, &[Flag]) -> Result<(), Error>,
     ) -> Result<Self, Error> {
         let files = ReportFiles::new(&settings.reports, network);
         let mut windows = Windows::new(&files, settings, order)?;
         if let Some((station, at)) = explain {
             windows.listen(station, at);
         }
+        let mut neighbours = NeighbourRun::new(settings, network, explain);
         let mut window = None;
         while let Some(next) = windows.after(window.as_ref())? {
-            each(&next)?;
+            let flags = neighbours.as_mut().map(|n| n.window(&next));
+            each(&next, &flags.unwrap_or_default())?;
             window = Some(next);
         }
-        Ok(windows.reading())
+        let mut reading = windows.reading();
+        if let Some(neighbours) = neighbours {
+            neighbours.finish(&mut reading.stations, &mut reading.explained);
+        }
+        Ok(reading)
     }
 
     /// True if all input was usable.

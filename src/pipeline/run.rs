@@ -7,7 +7,9 @@ use super::field::FieldState;
 use super::{Reading, Setup, Windows};
 use crate::align::Period;
 use crate::error::Error;
-use crate::integral::{EstimateBlock, Extremes, FitBook, FitBooks, RunStatistics};
+use crate::integral::{
+    Attribution, CauseBooks, EstimateBlock, Extremes, FitBook, FitBooks, RunStatistics, attribute,
+};
 use crate::polygon::StationPolygon;
 use crate::report::{InputOrder, ReportFiles, ReportTable};
 use crate::settings::Settings;
@@ -35,6 +37,10 @@ pub struct Outcome {
     pub extremes: Extremes,
     /// Statistics of each polygon.
     pub statistics: RunStatistics,
+    /// Stations that would explain odd means around them.
+    pub attributions: Vec<Attribution>,
+    /// Why estimates are flagged, for each polygon.
+    pub causes: CauseBooks,
     /// Linear fits beside the line integrals of polygons with more than three stations.
     pub fits: FitBooks,
     /// The structure function at the end of each day and of the run; empty where it was not asked for.
@@ -104,6 +110,7 @@ pub fn run<T: Send>(
     }
     encoded.into_iter().try_for_each(&mut write)?;
     let mut reading = windows.reading();
+    estimation.outliers.put(&mut reading.stations);
     if !estimation.any_moving && setup.settings.analysis.level.is_some() {
         return Err(Error::Reports(
             "`analysis.level` is stated, but the reports have no level (`columns.level`)".into(),
@@ -113,7 +120,7 @@ pub fn run<T: Send>(
         return Err(no_usable_report(&mut reading));
     }
     let silent = never_reported(setup, &estimation.values);
-    let doubtful = doubtful_fits(setup, &estimation.fits);
+    let doubtful = doubtful_fits(setup, &estimation.sums.fits);
     let warnings = [
         &setup.warnings,
         &setup.built.warnings,
@@ -130,11 +137,14 @@ pub fn run<T: Send>(
         period: estimation.books.period,
         values: estimation.values,
         height_factors: estimation.sensors.height_factors,
-        extremes: estimation.extremes,
-        statistics: estimation.statistics,
-        fits: estimation.fits,
+        extremes: estimation.sums.extremes,
+        attributions: attribute(&setup.built.polygons, &estimation.sums.statistics),
+        statistics: estimation.sums.statistics,
+        causes: estimation.sums.causes,
+        fits: estimation.sums.fits,
         structure: estimation
             .field
+            .filter(|_| setup.settings.errors.complete)
             .map(FieldState::into_reports)
             .unwrap_or_default(),
     })

@@ -5,6 +5,7 @@ use std::ops::Range;
 use rayon::prelude::*;
 
 use super::Reading;
+use super::outliers::judged_within;
 use crate::align::block_times;
 use crate::check::{Listener, StationScreen, StationSums, screen};
 use crate::error::Error;
@@ -31,6 +32,8 @@ pub struct Window {
     pub multiples: Range<i64>,
     /// The steps of each station's reports, as far as they are known by the end of the window.
     pub rounding: Vec<Rounding>,
+    /// Reports of these times are judged for good in this window, by all tests; every report is in one such range.
+    pub judged: Range<Time>,
     /// Reports from here on come again in the next window; `None` in the last one.
     pub carried_from: Option<Time>,
     /// Earlier reports would come too late.
@@ -162,8 +165,16 @@ impl<'f> Windows<'f> {
         let is_last = self.ended
             && self.pending.is_empty()
             && table.times().iter().all(|&time| time < keep_from);
+        let back = back.min(judged_within(analysis));
+        let until = if is_last {
+            i64::MAX
+        } else {
+            end.saturating_sub(back)
+        };
+        let from = before.map_or(i64::MIN, |window| window.judged.end.micros());
         Ok(Some(Window {
             table,
+            judged: Time::from_micros(from)..Time::from_micros(until),
             multiples: number * self.times..(number + 1) * self.times,
             rounding: self.screens.iter().map(StationScreen::rounding).collect(),
             carried_from: (!is_last).then_some(keep_from),

@@ -421,7 +421,7 @@ impl Builder<'_> {
         StationPolygon {
             id,
             kind,
-            shape: Shape::of(area, &path, edges, &row.weights, self.network),
+            shape: Shape::of(area, &path, edges, &row, self.network),
             middle: latitude_longitude(&middle),
             outline,
             path,

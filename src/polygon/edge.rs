@@ -111,3 +111,11 @@ impl EdgeSet {
         }
     }
 }
+
+/// Median length of the edges, m; `None` without any.
+#[must_use]
+pub fn median_edge(edges: &EdgeSet) -> Option<f64> {
+    let mut lengths: Vec<f64> = edges.edges().iter().map(|edge| edge.length).collect();
+    lengths.sort_by(f64::total_cmp);
+    lengths.get(lengths.len() / 2).copied()
+}

@@ -14,7 +14,7 @@ use crate::station::Position;
 
 pub use build::{BuiltPolygons, build_polygons};
 pub use delaunay::triangulate;
-pub use edge::{DirectedEdge, Edge, EdgeSet, LONG_EDGE, flux_rule_error};
+pub use edge::{DirectedEdge, Edge, EdgeSet, LONG_EDGE, flux_rule_error, median_edge};
 pub use ring::{InvalidPolygon, defects};
 pub use row::CoefficientRow;
 pub use shape::{Exclusion, Shape};

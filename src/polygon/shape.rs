@@ -4,6 +4,7 @@ use std::f64::consts::PI;
 
 use serde::Serialize;
 
+use super::CoefficientRow;
 use super::edge::{DirectedEdge, EdgeSet};
 use crate::settings::PolygonLimits;
 use crate::station::Network;
@@ -26,6 +27,8 @@ pub struct Shape {
     pub noise_factor: f64,
     /// Highest minus lowest station, m, if the elevations are known.
     pub elevation_spread: Option<f64>,
+    /// Slope of the plane of the stations, if the elevations are known; for more than three the mean over the area.
+    pub slope: Option<f64>,
 }
 
 impl Shape {
@@ -34,7 +37,7 @@ impl Shape {
         area: f64,
         ring: &[DirectedEdge],
         edges: &EdgeSet,
-        weights: &[[f64; 2]],
+        row: &CoefficientRow,
         network: &Network,
     ) -> Self {
         let lengths = ring.iter().map(|&e| edges.ends(e).2);
@@ -50,11 +53,13 @@ impl Shape {
             longest_edge: lengths.fold(0.0, f64::max),
             smallest_angle,
             quality: 4.0 * (PI / ring.len() as f64).tan() * area / squares,
-            noise_factor: weights
+            noise_factor: row
+                .weights
                 .iter()
                 .map(|[x, y]| x * x + y * y)
                 .sum::<f64>()
                 .sqrt(),
+            slope: slope(row, network),
             elevation_spread: elevations.map(|e| {
                 let high = e.iter().copied().fold(f64::NEG_INFINITY, f64::max);
                 let low = e.iter().copied().fold(f64::INFINITY, f64::min);
@@ -62,6 +67,20 @@ impl Shape {
             }),
         }
     }
+}
+
+/// The gradient of the elevation by the rule of the wind: with u = z and v = 0 the row gives −∂z/∂y and ∂z/∂x.
+fn slope(row: &CoefficientRow, network: &Network) -> Option<f64> {
+    let of = |&s: &usize| network.stations()[s].elevation;
+    let elevations: Vec<f64> = row.stations.iter().map(of).collect::<Option<_>>()?;
+    // The weights add up to nothing in a plane only.
+    let mean = elevations.iter().sum::<f64>() / elevations.len() as f64;
+    let mut gradient = [0.0; 2];
+    for (z, [x, y]) in elevations.iter().zip(&row.weights) {
+        gradient[0] += y * (z - mean);
+        gradient[1] -= x * (z - mean);
+    }
+    Some(gradient[0].hypot(gradient[1]))
 }
 
 /// Interior angle at the start of each edge of a path, degrees in 0 to 360.
@@ -96,6 +115,10 @@ pub enum Exclusion {
     SmallArea(f64, f64),
     /// The area is too large, m².
     LargeArea(f64, f64),
+    /// The stations stand at too different heights, m.
+    ElevationSpread(f64, f64),
+    /// The stations stand on too steep a slope: its product with the shear to expect, 1/s.
+    Slope(f64, f64),
 }
 
 impl Exclusion {
@@ -121,6 +144,16 @@ impl Exclusion {
         {
             return Some(Self::LargeArea(shape.area, limit));
         }
+        if let (Some(limit), Some(spread)) = (limits.elevation_spread, shape.elevation_spread)
+            && spread > limit
+        {
+            return Some(Self::ElevationSpread(spread, limit));
+        }
+        if let (Some(limit), Some(slope)) = (limits.slope_error, shape.slope)
+            && slope * limits.vertical_shear > limit
+        {
+            return Some(Self::Slope(slope * limits.vertical_shear, limit));
+        }
         None
     }
 
@@ -132,6 +165,8 @@ impl Exclusion {
             Self::LongEdge(..) => "long_edge",
             Self::SmallArea(..) => "small_area",
             Self::LargeArea(..) => "large_area",
+            Self::ElevationSpread(..) => "elevation_spread",
+            Self::Slope(..) => "slope",
         }
     }
 }
@@ -148,6 +183,12 @@ impl std::fmt::Display for Exclusion {
             }
             Self::LargeArea(found, limit) => {
                 write!(f, "area {:.0} > {:.0} km2", found / 1e6, limit / 1e6)
+            }
+            Self::ElevationSpread(found, limit) => {
+                write!(f, "elevations differ by {found:.0} > {limit:.0} m")
+            }
+            Self::Slope(found, limit) => {
+                write!(f, "slope times shear {found:.1e} > {limit:.1e} 1/s")
             }
         }
     }

@@ -42,6 +42,8 @@ pub struct CheckLimits {
     pub agreement: AgreementLimits,
     /// Attenuated signal.
     pub attenuated_signal: AttenuatedLimits,
+    /// Neighbours.
+    pub neighbour: NeighbourLimits,
 }
 
 /// Limits of the range test, m/s.
@@ -224,6 +226,29 @@ pub struct AttenuatedLimits {
     pub calm_after: i64,
 }
 
+/// Limits of the neighbour test ([`crate::spatial`]).
+#[derive(Debug, Clone, Copy, PartialEq, Serialize)]
+pub struct NeighbourLimits {
+    /// A wind is an outlier so many standard deviations off the prediction from its neighbours. 5, the upper end of what
+    /// `methods.md` 6.3 gives (3 to 5): errors of winds have longer tails than normal ones, and a front is none.
+    pub deviations: f64,
+    /// Fewer neighbours make no prediction. 3: a mean wind and something to doubt it by.
+    pub least_neighbours: u32,
+    /// The station's report before and after speak for an outlier only if they are within this of it; as for gaps.
+    #[serde(rename = "report_within_s", serialize_with = "seconds")]
+    pub report_within: i64,
+}
+
+impl Default for NeighbourLimits {
+    fn default() -> Self {
+        Self {
+            deviations: 5.0,
+            least_neighbours: 3,
+            report_within: 70 * MINUTE,
+        }
+    }
+}
+
 impl CheckLimits {
     /// The defaults, with the starting speed of the sensors, m/s.
     #[must_use]
@@ -292,6 +317,7 @@ impl Default for CheckLimits {
                 usual_times: 4.0,
                 calm_after: 48 * HOUR,
             },
+            neighbour: NeighbourLimits::default(),
         }
     }
 }

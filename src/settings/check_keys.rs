@@ -98,6 +98,20 @@ pub(super) fn check(mut section: Section, starting_speed: f64) -> CheckLimits {
     put_time(&mut part, "calm_after", &mut attenuated.calm_after);
     part.finish();
 
+    let mut part = section.section("neighbour");
+    let neighbour = &mut all.neighbour;
+    put_number(
+        &mut part,
+        "deviations",
+        1.0..=1000.0,
+        &mut neighbour.deviations,
+    );
+    if let Some(found) = part.value::<u32>("least_neighbours") {
+        neighbour.least_neighbours = found.value.max(1);
+    }
+    put_time(&mut part, "report_within", &mut neighbour.report_within);
+    part.finish();
+
     section.finish();
     limits
 }

@@ -18,6 +18,7 @@ use std::path::PathBuf;
 use std::time::Duration;
 
 use crate::align::HeightReduction;
+use crate::check::Test;
 use crate::error::Place;
 use crate::report::ReportFormat;
 use crate::station::Catalogue;
@@ -25,8 +26,8 @@ use crate::structure::StructureSettings;
 use crate::time::Time;
 
 pub use check::{
-    AgreementLimits, AttenuatedLimits, CheckLimits, FlatLimits, PersistenceLimits, RangeLimits,
-    RateLimits, RunLimits, Season, SpikeLimits, StuckLimits,
+    AgreementLimits, AttenuatedLimits, CheckLimits, FlatLimits, NeighbourLimits, PersistenceLimits,
+    RangeLimits, RateLimits, RunLimits, Season, SpikeLimits, StuckLimits,
 };
 pub use read::{Overrides, read_settings};
 
@@ -61,6 +62,14 @@ pub struct Settings {
     pub memory: usize,
     /// Where the reports, once read, are kept for another run.
     pub cache: Option<PathBuf>,
+}
+
+impl Settings {
+    /// True if winds are judged by their neighbours.
+    #[must_use]
+    pub fn tests_neighbours(&self) -> bool {
+        self.screen && !self.check.off.contains(&Test::Neighbour)
+    }
 }
 
 /// Default of [`Settings::memory`]: 1 GiB.
@@ -250,6 +259,15 @@ pub struct PolygonLimits {
     pub smallest_area: f64,
     /// Largest area, m².
     pub largest_area: Option<f64>,
+    /// Largest difference of the stations' elevations, m; none by default.
+    pub elevation_spread: Option<f64>,
+    /// Largest slope of the plane of the stations times [`Self::vertical_shear`], 1/s: what a wind that changes with
+    /// height adds to vorticity or divergence (`methods.md` 4). None by default.
+    pub slope_error: Option<f64>,
+    /// Vertical shear to expect, 1/s. Default 0.01: 10 m/s over a kilometre (the example of `methods.md` 4).
+    pub vertical_shear: f64,
+    /// An estimate with an older wind is suspect, s; none by default, as the age is in the error.
+    pub largest_age: Option<f64>,
 }
 
 impl Default for PolygonLimits {
@@ -259,6 +277,10 @@ impl Default for PolygonLimits {
             longest_edge: None,
             smallest_area: 0.0,
             largest_area: None,
+            elevation_spread: None,
+            slope_error: None,
+            vertical_shear: 0.01,
+            largest_age: None,
         }
     }
 }

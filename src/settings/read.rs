@@ -206,6 +206,14 @@ fn limits(mut section: Section, overrides: &Overrides) -> PolygonLimits {
             .parsed("smallest_area", units::parse_area)
             .unwrap_or(default.smallest_area),
         largest_area: section.parsed("largest_area", units::parse_area),
+        elevation_spread: section.parsed("elevation_spread", units::parse_length),
+        slope_error: section.number("slope_error", 0.0..=1.0),
+        vertical_shear: section
+            .number("vertical_shear", 0.0..=1.0)
+            .unwrap_or(default.vertical_shear),
+        largest_age: section
+            .parsed("largest_age", units::parse_duration)
+            .map(|age| age.as_secs_f64()),
     };
     section.finish();
     limits

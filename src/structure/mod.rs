@@ -88,6 +88,7 @@ mod window;
 
 pub use function::{Exponent, StructureFunction, StructureSettings, TemporalFunction};
 pub use geometry::{CLASSES, NetworkGeometry};
+pub(crate) use neighbours::nearest_stations;
 pub use neighbours::typical_spacing;
 pub use plane::{LocalPlane, PlanePoint};
 pub use predict::{Prediction, Predictor};

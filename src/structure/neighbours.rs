@@ -66,6 +66,28 @@ impl Neighbours {
     }
 }
 
+/// Networks up to this size are searched whole.
+const SMALL: usize = 200;
+
+/// For each station the nearest others that are `allowed`, at most `most`, nearest first. In networks of more than 200
+/// stations those farther away than `reach` m are not looked at.
+pub(crate) fn nearest_stations(
+    positions: &[Position],
+    reach: f64,
+    most: usize,
+    allowed: &[bool],
+) -> Vec<Vec<usize>> {
+    let reach = if positions.len() <= SMALL { 2e7 } else { reach };
+    let near = Neighbours::new(positions, reach);
+    (0..positions.len())
+        .map(|k| {
+            let others = near.around(k).into_iter().map(|(other, _)| other);
+            let allowed = |&other: &usize| allowed.get(other).copied().unwrap_or(false);
+            others.filter(allowed).take(most).collect()
+        })
+        .collect()
+}
+
 /// Typical distance between neighbouring stations, m: the median over the stations of the distance to the fourth
 /// nearest, or to the farthest of fewer.
 ///

@@ -5,7 +5,8 @@ use gyremesh::calibration::{Calibration, CalibrationSettings, Calibrator};
 use gyremesh::check::Flag;
 use gyremesh::station::Network;
 use gyremesh::structure::{
-    BlockSums, NetworkGeometry, StructureSettings, StructureWindow, typical_spacing,
+    BlockSums, NetworkGeometry, StructureFunction, StructureSettings, StructureWindow,
+    typical_spacing,
 };
 use gyremesh::time::Time;
 use gyremesh::units::Wind;
@@ -172,15 +173,14 @@ pub fn case(seed: u64, days: f64, dt: f64, planted: &[(usize, Planted)]) -> Case
 }
 
 impl Case {
-    pub fn calibrate(&self) -> Calibration {
+    /// Blocks of winds with the structure function at each of their times.
+    pub fn blocks(&self) -> Vec<(WindBlock, Vec<StructureFunction>)> {
         let spacing = typical_spacing(&self.network).unwrap();
         let settings = StructureSettings::default();
         let geometry = NetworkGeometry::new(&self.network, spacing, &[]);
         let mut window = StructureWindow::new(&geometry, settings);
-        let own = CalibrationSettings::default();
-        let mut calibrator = Calibrator::new(&self.network, spacing, self.dt, own);
         let steps = self.winds[0].len();
-        let mut previous: Option<WindBlock> = None;
+        let mut blocks: Vec<(WindBlock, Vec<StructureFunction>)> = Vec::new();
         for start in (0..steps).step_by(BLOCK_TIMES) {
             let range = start..(start + BLOCK_TIMES).min(steps);
             #[allow(clippy::cast_possible_truncation, reason = "some weeks in μs")]
@@ -198,10 +198,20 @@ impl Case {
                     }
                 }
             }
-            let sums = BlockSums::of(&geometry, &settings, self.dt, previous.as_ref(), &block);
+            let previous = blocks.last().map(|b| &b.0);
+            let sums = BlockSums::of(&geometry, &settings, self.dt, previous, &block);
             let models = window.advance(&geometry, &sums, &block.times);
+            blocks.push((block, models));
+        }
+        blocks
+    }
+
+    pub fn calibrate(&self) -> Calibration {
+        let spacing = typical_spacing(&self.network).unwrap();
+        let own = CalibrationSettings::default();
+        let mut calibrator = Calibrator::new(&self.network, spacing, self.dt, own);
+        for (block, models) in self.blocks() {
             calibrator.take(&block, &models);
-            previous = Some(block);
         }
         let declinations = vec![Some(3.0); self.network.len()];
         calibrator.finish(&declinations)

@@ -19,6 +19,10 @@ pub const NO_LIMITS: PolygonLimits = PolygonLimits {
     longest_edge: None,
     smallest_area: 0.0,
     largest_area: None,
+    elevation_spread: None,
+    slope_error: None,
+    vertical_shear: 0.01,
+    largest_age: None,
 };
 
 /// A network of stations `S000`, `S001`, ... at (latitude, longitude).
