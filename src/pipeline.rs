@@ -1,11 +1,13 @@
 //! Joins the stages: settings and stations, reports, checks, alignment, estimates.
 
 mod calibrate;
+mod complete;
 mod estimation;
 mod field;
 mod neighbours;
 mod outliers;
 mod reading;
+mod remesh;
 mod run;
 mod windows;
 

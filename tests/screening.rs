@@ -35,11 +35,19 @@ fn of_the_demo_the_stuck_sensor_fails_and_nothing_else() {
     let json: Value = serde_json::from_str(&printed).unwrap();
     for station in json["stations"].as_array().unwrap() {
         let raised = (station["suspect"].as_u64(), station["failed"].as_u64());
-        if station["station"] == "OS36" {
-            assert_eq!(raised, (Some(2), Some(47)));
-            assert_eq!(station["tests"]["flat_line"]["failed"], 47);
-        } else {
-            assert_eq!(raised, (Some(0), Some(0)), "{station}");
+        let by_neighbours = station["tests"]["neighbour"]["suspect"].as_u64();
+        let by_neighbours = by_neighbours.unwrap_or(0);
+        match station["station"].as_str().unwrap() {
+            "OS36" => {
+                assert_eq!(raised, (Some(2), Some(47)));
+                assert_eq!(station["tests"]["flat_line"]["failed"], 47);
+            }
+            // The knots, in strong winds; else a few reports as the vortex and the line pass.
+            "OS18" => assert!(by_neighbours > 50 && raised.1 == Some(0), "{station}"),
+            _ => assert!(
+                by_neighbours <= 3 && raised == (Some(by_neighbours), Some(0)),
+                "{station}"
+            ),
         }
     }
     let truth = fs::read("examples/ostrin/truth.json").unwrap();
@@ -53,7 +61,9 @@ fn of_the_demo_the_stuck_sensor_fails_and_nothing_else() {
     let mut reader = csv::Reader::from_path(folder.path().join("reports_flagged.csv")).unwrap();
     let rows: Vec<csv::StringRecord> = reader.records().map(Result::unwrap).collect();
     assert_eq!(rows.len(), 10_799);
-    for row in rows.iter().filter(|row| &row[5] == "3" || &row[5] == "4") {
+    // The twelve station tests, without the neighbours'.
+    let raised = |row: &&csv::StringRecord| (6..18).any(|c| &row[c] == "3" || &row[c] == "4");
+    for row in rows.iter().filter(raised) {
         assert_eq!(&row[1], "OS36");
         assert!(from <= &row[0] && &row[0] <= to, "{row:?}");
     }

@@ -18,6 +18,10 @@ use parquet::arrow::arrow_reader::ParquetRecordBatchReaderBuilder;
 
 fn estimate(out: &Path, more: &[&str]) {
     let network = Path::new(env!("CARGO_MANIFEST_DIR")).join("networks/ostrin/network.toml");
+    estimate_network(&network, out, more);
+}
+
+fn estimate_network(network: &Path, out: &Path, more: &[&str]) {
     let output = Command::new(env!("CARGO_BIN_EXE_gyremesh"))
         .arg("estimate")
         .arg(network)
@@ -69,8 +73,31 @@ fn name(batch: &RecordBatch, column: usize, row: usize) -> String {
 fn parquet_holds_what_the_csv_holds() {
     let out = tempfile::tempdir().unwrap();
     estimate(out.path(), &["--format", "csv,parquet"]);
-    let csv = rows(&out.path().join("polygons.csv"));
-    let file = File::open(out.path().join("polygons.parquet")).unwrap();
+    compare(out.path());
+}
+
+/// With triangles that come and go (`missing = "remesh"`) as well.
+#[test]
+fn parquet_holds_what_the_csv_holds_where_triangles_come_and_go() {
+    let out = tempfile::tempdir().unwrap();
+    let root = Path::new(env!("CARGO_MANIFEST_DIR"));
+    let settings = std::fs::read_to_string(root.join("networks/ostrin/network.toml")).unwrap();
+    let settings = settings
+        .replace(
+            "stations.csv",
+            root.join("networks/ostrin/stations.csv").to_str().unwrap(),
+        )
+        .replace("../../examples", root.join("examples").to_str().unwrap())
+        .replace("[limits]", "[polygons]\nmissing = \"remesh\"\n[limits]");
+    let network = out.path().join("network.toml");
+    std::fs::write(&network, settings).unwrap();
+    estimate_network(&network, out.path(), &["--format", "csv,parquet"]);
+    compare(out.path());
+}
+
+fn compare(out: &Path) {
+    let csv = rows(&out.join("polygons.csv"));
+    let file = File::open(out.join("polygons.parquet")).unwrap();
     let builder = ParquetRecordBatchReaderBuilder::try_new(file).unwrap();
     let names: Vec<String> = builder
         .schema()
@@ -78,7 +105,7 @@ fn parquet_holds_what_the_csv_holds() {
         .iter()
         .map(|f| f.name().clone())
         .collect();
-    let header = csv::Reader::from_path(out.path().join("polygons.csv"))
+    let header = csv::Reader::from_path(out.join("polygons.csv"))
         .unwrap()
         .headers()
         .unwrap()
@@ -95,7 +122,7 @@ fn parquet_holds_what_the_csv_holds() {
                 .value(row);
             let time = gyremesh::time::Time::from_micros(micros).to_string();
             assert_eq!(time, expected[0]);
-            for column in [1, 2, 11] {
+            for column in [1, 2, 11, 21] {
                 assert_eq!(name(&batch, column, row), expected[column]);
             }
             for column in [3, 4, 5, 6, 7, 8, 9, 10, 12] {

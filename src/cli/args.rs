@@ -148,7 +148,7 @@ round coarsely coarse_suspect_after [6 h], coarse_fail_after [12 h], longer for 
   [check.agreement]           gust_below [0.5 m/s], calm_direction: true to doubt it [false]
   [check.attenuated_signal]   period [12 h], least_range [0.5 m/s], usual_times [4], calm_after [48 h]
   [check.neighbour]           deviations [5], least_neighbours [3], report_within [70 min]
-  [polygons]  triangles [true]
+  [polygons]  triangles [true], missing [skip]; remesh fills the holes of missing stations with other triangles
   [[polygons.ring]]    name, stations in order
   [[polygons.region]]  name, and polygons, triangles_of (stations) or all_triangles = true
   [limits]    smallest_angle [15 degrees], longest_edge, smallest_area, largest_area, elevation_spread [none],

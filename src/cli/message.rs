@@ -135,7 +135,8 @@ pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
             let _ = writeln!(out, "            {n:>8} {}", reason.words());
         }
     }
-    let values: u64 = outcome.extremes.values.iter().sum();
+    let common = outcome.extremes.values.iter().take(built.polygons.len());
+    let values: u64 = common.sum();
     let possible = (period.times * built.polygons.len() as u64).max(1) as f64;
     let _ = writeln!(
         out,
@@ -144,6 +145,13 @@ pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
         built.excluded.len(),
         100.0 * values as f64 / possible
     );
+    if !outcome.extra.is_empty() {
+        let n = outcome.extra.len();
+        let _ = writeln!(
+            out,
+            "            {n} more triangles where stations were missing"
+        );
+    }
     reasons_text(&mut out, outcome);
     let _ = writeln!(
         out,
@@ -158,7 +166,7 @@ pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
         ("cyclonic spin-up", extremes.cyclonic),
         ("anticyclonic", extremes.anticyclonic),
     ] {
-        let _ = writeln!(out, "  {what:<17} {}", peak_text(setup, peak));
+        let _ = writeln!(out, "  {what:<17} {}", peak_text(setup, outcome, peak));
     }
     attributions_text(&mut out, setup, outcome);
     least_reporting(&mut out, setup, outcome);
@@ -225,7 +233,7 @@ fn reasons_text(out: &mut String, outcome: &Outcome) {
         .map(|(name, n)| format!("{n} {}", name.replace('_', " ")))
         .collect();
     if !raised.is_empty() {
-        let text = format!("of these values: {}", raised.join(", "));
+        let text = format!("values: {}", raised.join(", "));
         for line in wrapped(&text, WIDTH - 12).lines() {
             let _ = writeln!(out, "            {line}");
         }
@@ -262,11 +270,13 @@ fn significance(out: &mut String, setup: &Setup, outcome: &Outcome) {
     }
 }
 
-fn peak_text(setup: &Setup, peak: Option<Peak>) -> String {
+fn peak_text(setup: &Setup, outcome: &Outcome, peak: Option<Peak>) -> String {
     let Some(peak) = peak else {
         return "none".into();
     };
-    let polygon = &setup.built.polygons[peak.polygon];
+    let Some(polygon) = outcome.polygon(setup, peak.polygon) else {
+        return "none".into();
+    };
     let (latitude, longitude) = polygon.middle;
     format!(
         "{:+.1} ± {:.1}  {}  {} ({:.2} {}, {:.2} {})",

@@ -171,7 +171,7 @@ fn polygons(args: &PolygonsArgs) -> Result<Status, Error> {
     };
     if let Some(folder) = &args.out {
         let mut set = OutputSet::new(folder)?;
-        set.put("mesh.geojson", mesh_geojson(&setup).as_bytes())?;
+        set.put("mesh.geojson", mesh_geojson(&setup, &[]).as_bytes())?;
         set.put("mesh.csv", mesh_csv(&setup).as_bytes())?;
         if let Some(expectation) = &expectation {
             set.put("expected.csv", expectation.csv(&setup).as_bytes())?;
@@ -226,7 +226,10 @@ fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
     let (outcome, mut set, series_files) = result?;
 
     series_files.finish(&mut set)?;
-    set.put("mesh.geojson", mesh_geojson(&setup).as_bytes())?;
+    set.put(
+        "mesh.geojson",
+        mesh_geojson(&setup, &outcome.extra).as_bytes(),
+    )?;
     set.put("stations.csv", stations_csv(&setup, &outcome).as_bytes())?;
     set.put(
         "polygon_summary.csv",

@@ -93,12 +93,10 @@ impl Extremes {
         ] {
             raise(slot, peak, peak.map_or(1.0, |peak| peak.value.signum()));
         }
-        if self.values.is_empty() {
-            self.values.clone_from(&later.values);
-        } else {
-            for (sum, n) in self.values.iter_mut().zip(&later.values) {
-                *sum += n;
-            }
+        let polygons = self.values.len().max(later.values.len());
+        self.values.resize(polygons, 0);
+        for (sum, n) in self.values.iter_mut().zip(&later.values) {
+            *sum += n;
         }
     }
 }

@@ -12,6 +12,7 @@ mod boundary;
 mod budget;
 mod discovery;
 mod earth;
+mod extra;
 mod extremes;
 mod fit_books;
 mod lanes;
@@ -37,6 +38,7 @@ pub use discovery::{
     find_significant,
 };
 pub use earth::{OMEGA, SelfTest, earth_rotation, planetary_vorticity, self_test};
+pub use extra::ExtraPolygon;
 pub use extremes::{Extremes, Peak};
 pub use fit_books::{FitBook, FitBooks};
 pub use mean_error::MeanError;
@@ -74,6 +76,10 @@ pub struct EstimateBlock {
     pub significant: [Vec<bool>; 2],
     /// Linear fits beside the line integrals of the polygons with more than three stations; empty before they are made.
     pub fits: Vec<FitColumn>,
+    /// The polygons that follow those of the whole network in the columns: triangles where stations are missing.
+    pub extra: Vec<ExtraPolygon>,
+    /// Cells of polygons that do not stand at that time, as a station is missing or no longer is; empty if all stand.
+    pub absent: Vec<bool>,
 }
 
 /// The linear fit of one polygon at the times of a block.

@@ -154,7 +154,7 @@ impl RunStatistics {
     /// Takes in those of a later block.
     pub fn merge(&mut self, later: &Self) {
         let merge = |all: &mut Vec<Statistics>, later: &[Statistics]| {
-            all.resize(later.len(), Statistics::default());
+            all.resize(all.len().max(later.len()), Statistics::default());
             for (a, b) in all.iter_mut().zip(later) {
                 a.merge(b);
             }

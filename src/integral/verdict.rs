@@ -63,6 +63,7 @@ pub fn find_causes(
     winds: &WindBlock,
     limits: &PolygonLimits,
 ) {
+    let extra: Vec<&StationPolygon> = block.extra.iter().map(|extra| &extra.polygon).collect();
     let n = block.times.len();
     let mut raised: Vec<(usize, Cause)> = Vec::new();
     if let Some(limit) = limits.largest_age {
@@ -84,8 +85,8 @@ pub fn find_causes(
         return;
     }
     let mut causes = vec![None; block.flag.len()];
-    for (p, polygon) in polygons.iter().enumerate() {
-        for t in 0..n {
+    for (p, polygon) in polygons.iter().chain(extra).enumerate() {
+        for t in (0..n).filter(|&t| block.stands(p * n + t)) {
             let flag = block.flag[p * n + t];
             if flag > Flag::Pass {
                 let of = |s: &&usize| winds.flag[*s * n + t] == flag;
@@ -124,7 +125,8 @@ impl CauseBooks {
 
     /// Takes in those of a later block.
     pub fn merge(&mut self, later: &Self) {
-        self.0.resize(later.0.len(), [0; 5]);
+        let polygons = self.0.len().max(later.0.len());
+        self.0.resize(polygons, [0; 5]);
         for (all, more) in self.0.iter_mut().zip(&later.0) {
             for (sum, n) in all.iter_mut().zip(more) {
                 *sum += n;

@@ -22,6 +22,7 @@ pub struct PolygonRows {
     fixed: Vec<String>,
     planetary: Vec<f64>,
     planetary_text: Vec<String>,
+    network: Network,
     reasons: Reasons,
     reason_words: Vec<String>,
     complete: bool,
@@ -32,23 +33,13 @@ impl PolygonRows {
     #[must_use]
     pub fn new(setup: &Setup) -> Self {
         let reasons = Reasons::new(&setup.network);
-        let fixed = setup
-            .built
-            .polygons
-            .iter()
-            .map(|p| {
-                format!(
-                    ",{},{},{},",
-                    quoted(&p.id),
-                    quoted(&station_list(p, &setup.network)),
-                    number(p.shape.area / 1e6)
-                )
-            })
-            .collect();
+        let polygons = setup.built.polygons.iter();
+        let fixed = polygons.map(|p| fixed(p, &setup.network)).collect();
         Self {
             fixed,
             planetary_text: setup.planetary.iter().map(|&f| number(f)).collect(),
             planetary: setup.planetary.clone(),
+            network: setup.network.clone(),
             reason_words: reasons.words().iter().map(|w| quoted(w)).collect(),
             reasons,
             complete: setup.settings.errors.complete,
@@ -67,10 +58,31 @@ impl PolygonRows {
         let n = block.times.len();
         let mut out = Vec::with_capacity(n * self.fixed.len() * 192);
         let mut buffer = Buffer::new();
+        let extra: Vec<(String, f64, String)> = block
+            .extra
+            .iter()
+            .map(|extra| {
+                let fixed = fixed(&extra.polygon, &self.network);
+                (fixed, extra.planetary, number(extra.planetary))
+            })
+            .collect();
+        let common = self.fixed.iter().zip(&self.planetary);
+        let common = common.zip(&self.planetary_text);
+        let polygons: Vec<(&str, f64, &str)> = common
+            .map(|((fixed, &f), text)| (fixed.as_str(), f, text.as_str()))
+            .chain(
+                extra
+                    .iter()
+                    .map(|(fixed, f, text)| (fixed.as_str(), *f, text.as_str())),
+            )
+            .collect();
         for (t, time) in block.times.iter().enumerate() {
             let time = time.to_string();
-            for (p, fixed) in self.fixed.iter().enumerate() {
+            for (p, &(fixed, planetary, planetary_text)) in polygons.iter().enumerate() {
                 let cell = p * n + t;
+                if !block.stands(cell) {
+                    continue;
+                }
                 out.extend_from_slice(time.as_bytes());
                 out.extend_from_slice(fixed.as_bytes());
                 let missing = !block.flag[cell].is_usable();
@@ -85,14 +97,14 @@ impl PolygonRows {
                     }
                     out.push(b',');
                 }
-                out.extend_from_slice(self.planetary_text[p].as_bytes());
+                out.extend_from_slice(planetary_text.as_bytes());
                 out.push(b',');
                 let sense = if missing {
                     None
                 } else {
-                    let absolute = block.vorticity[cell] + self.planetary[p];
+                    let absolute = block.vorticity[cell] + planetary;
                     out.extend_from_slice(buffer.format(absolute).as_bytes());
-                    Sense::of(block.vorticity[cell], self.planetary[p])
+                    Sense::of(block.vorticity[cell], planetary)
                 };
                 out.push(b',');
                 out.push(b'0' + block.flag[cell].value());
@@ -143,6 +155,16 @@ impl PolygonRows {
             }
         }
     }
+}
+
+/// The fixed columns of a polygon: its name, stations and area with commas around.
+fn fixed(polygon: &StationPolygon, network: &Network) -> String {
+    format!(
+        ",{},{},{},",
+        quoted(&polygon.id),
+        quoted(&station_list(polygon, network)),
+        number(polygon.shape.area / 1e6)
+    )
 }
 
 /// Station identifiers of a polygon: counter-clockwise, separated by spaces; further paths of a region after `|`.
@@ -274,10 +296,12 @@ pub fn summary_csv(setup: &Setup, outcome: &Outcome) -> String {
     }
     out.push('\n');
     let statistics = &outcome.statistics;
+    let extra = outcome.extra.iter().map(|extra| &extra.polygon);
     for (((polygon, vorticity), divergence), causes) in setup
         .built
         .polygons
         .iter()
+        .chain(extra)
         .zip(&statistics.vorticity)
         .zip(&statistics.divergence)
         .zip(&outcome.causes.0)

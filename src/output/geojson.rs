@@ -7,6 +7,7 @@ use geojson::{Feature, FeatureCollection, Geometry, GeometryValue, JsonObject, f
 use serde_json::json;
 
 use super::csv::station_list;
+use crate::integral::ExtraPolygon;
 use crate::pipeline::Setup;
 use crate::polygon::StationPolygon;
 use crate::station::{Network, Position};
@@ -17,9 +18,10 @@ const PIECE: f64 = 25e3;
 /// Decimals of the coordinates: 1 cm (RFC 7946, 11.2 advises against more than needed).
 const DECIMALS: f64 = 1e7;
 
-/// `mesh.geojson`: one feature for each polygon, those left out with the reason.
+/// `mesh.geojson`: one feature for each polygon, those left out with the reason; `extra` are those that stand only where
+/// stations are missing.
 #[must_use]
-pub fn mesh_geojson(setup: &Setup) -> String {
+pub fn mesh_geojson(setup: &Setup, extra: &[ExtraPolygon]) -> String {
     let used = setup
         .built
         .polygons
@@ -31,9 +33,14 @@ pub fn mesh_geojson(setup: &Setup) -> String {
         .excluded
         .iter()
         .map(|(p, why)| (p, None, Some(why.to_string())));
+    let extra = extra
+        .iter()
+        .map(|e| (&e.polygon, Some(e.planetary), None, true));
     let features = used
         .chain(excluded)
-        .map(|(polygon, planetary, excluded)| {
+        .map(|(polygon, planetary, excluded)| (polygon, planetary, excluded, false))
+        .chain(extra)
+        .map(|(polygon, planetary, excluded, fills_hole)| {
             let shape = &polygon.shape;
             let properties = json!({
                 "polygon": polygon.id,
@@ -48,6 +55,7 @@ pub fn mesh_geojson(setup: &Setup) -> String {
                 "elevation_spread_m": shape.elevation_spread,
                 "slope": shape.slope,
                 "planetary_vorticity": planetary,
+                "fills_hole": fills_hole,
                 "excluded": excluded,
             });
             let properties: Option<JsonObject> = match properties {

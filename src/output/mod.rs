@@ -11,6 +11,8 @@ mod parquet;
 mod reading;
 mod reason;
 mod series;
+#[cfg(feature = "parquet")]
+mod standing;
 mod structure;
 mod summary;
 #[cfg(feature = "parquet")]

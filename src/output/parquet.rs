@@ -21,6 +21,7 @@ use parquet::file::properties::{EnabledStatistics, WriterProperties};
 use parquet::file::writer::SerializedFileWriter;
 
 use super::reason::Reasons;
+use super::standing::StandingRows;
 use super::template::{FixedColumns, Template};
 use crate::integral::{Cause, EstimateBlock, Sense};
 use crate::pipeline::Setup;
@@ -198,6 +199,9 @@ impl ParquetRows {
 
     /// The columns of a block; `None` for those that are the same in every block of as many times.
     fn columns(&self, block: &EstimateBlock) -> Result<Vec<Option<ArrayRef>>> {
+        if !block.absent.is_empty() {
+            return self.standing(block);
+        }
         let (n, polygons) = (block.times.len(), self.planetary.len());
         let all_there = block.flag.iter().all(|flag| flag.is_usable());
         let there: Option<NullBuffer> =
@@ -282,6 +286,67 @@ impl ParquetRows {
 }
 
 impl ParquetRows {
+    /// The columns of a block of which not all polygons stand at all times.
+    fn standing(&self, block: &EstimateBlock) -> Result<Vec<Option<ArrayRef>>> {
+        let rows = StandingRows::new(block);
+        let extra = |p: usize| block.extra.get(p.checked_sub(self.planetary.len())?);
+        let planetary = |p: usize| {
+            let own = self.planetary.get(p).copied();
+            own.or_else(|| extra(p).map(|extra| extra.planetary))
+                .unwrap_or_default()
+        };
+        let area = |p: usize| {
+            let own = self.fixed.area(p);
+            own.or_else(|| extra(p).map(|extra| extra.polygon.shape.area / 1e6))
+                .unwrap_or_default()
+        };
+        let [ids, stations] = self
+            .fixed
+            .names(block.extra.iter().map(|extra| &extra.polygon));
+        let sense = |cell: usize, p: usize| {
+            let sense = Sense::of(block.vorticity[cell], planetary(p));
+            let sense = sense.filter(|_| block.flag[cell].is_usable());
+            sense.map(|sense| usize::from(sense == Sense::Anticyclonic))
+        };
+        let reason = |cell: usize, _| {
+            let cause = block.causes.get(cell).copied().flatten();
+            cause.map(|cause| self.of_reasons.index(cause))
+        };
+        let part = |column: &[f64], asked_for: bool| {
+            if asked_for {
+                rows.part(column)
+            } else {
+                new_null_array(&DataType::Float32, rows.len())
+            }
+        };
+        let (z, d) = (&block.budget.vorticity, &block.budget.divergence);
+        let columns = [
+            rows.times(),
+            rows.named(|_, p| Some(p), &ids)?,
+            rows.named(|_, p| Some(p), &stations)?,
+            rows.given(|_, p| area(p)),
+            rows.values(|cell, _| block.vorticity[cell]),
+            rows.values(|cell, _| block.vorticity_se[cell]),
+            rows.values(|cell, _| block.divergence[cell]),
+            rows.values(|cell, _| block.divergence_se[cell]),
+            rows.given(|_, p| planetary(p)),
+            rows.values(|cell, p| block.vorticity[cell] + planetary(p)),
+            rows.flags(),
+            rows.named(sense, &self.senses)?,
+            rows.ages(),
+            part(&z.instrument, true),
+            part(&z.sampling, self.complete),
+            part(&z.timing, self.complete),
+            part(&d.instrument, true),
+            part(&d.sampling, self.complete),
+            part(&d.timing, self.complete),
+            rows.called(&block.significant[0]),
+            rows.called(&block.significant[1]),
+            rows.named(reason, &self.reasons)?,
+        ];
+        Ok(columns.into_iter().map(Some).collect())
+    }
+
     /// Why estimates are flagged; `None` where none is.
     fn reason(&self, block: &EstimateBlock) -> Result<Option<ArrayRef>> {
         if block.causes.is_empty() {

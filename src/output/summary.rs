@@ -86,10 +86,10 @@ pub fn summary_json(setup: &Setup, outcome: &Outcome) -> String {
             "by_distance": report.rows,
         })),
         "extremes": {
-            "convergence": peak(setup, extremes.convergence),
-            "divergence": peak(setup, extremes.divergence),
-            "cyclonic_vorticity": peak(setup, extremes.cyclonic),
-            "anticyclonic_vorticity": peak(setup, extremes.anticyclonic),
+            "convergence": peak(setup, outcome, extremes.convergence),
+            "divergence": peak(setup, outcome, extremes.divergence),
+            "cyclonic_vorticity": peak(setup, outcome, extremes.cyclonic),
+            "anticyclonic_vorticity": peak(setup, outcome, extremes.anticyclonic),
         },
         "corrections": setup.network.stations().iter().filter_map(|s| {
             let c = s.correction.as_ref()?;
@@ -120,18 +120,17 @@ pub(crate) fn significant_share(statistics: &[Statistics]) -> Option<f64> {
     (values > 0).then(|| significant as f64 / values as f64)
 }
 
-fn peak(setup: &Setup, peak: Option<Peak>) -> Option<Value> {
-    peak.map(|peak| {
-        let polygon = &setup.built.polygons[peak.polygon];
-        json!({
+fn peak(setup: &Setup, outcome: &Outcome, peak: Option<Peak>) -> Option<Value> {
+    let peak = peak?;
+    let polygon = outcome.polygon(setup, peak.polygon)?;
+    Some(json!({
             "polygon": polygon.id,
             "latitude": polygon.middle.0,
             "longitude": polygon.middle.1,
             "time": peak.time.to_string(),
             "value": peak.value,
             "standard_error": peak.error,
-        })
-    })
+    }))
 }
 
 fn settings(settings: &Settings) -> Value {

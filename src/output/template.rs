@@ -19,6 +19,8 @@ use parquet::file::writer::SerializedRowGroupWriter;
 
 use super::csv::station_list;
 use crate::pipeline::Setup;
+use crate::polygon::StationPolygon;
+use crate::station::Network;
 
 /// What stands in every row of a polygon.
 pub(super) struct FixedColumns {
@@ -27,6 +29,7 @@ pub(super) struct FixedColumns {
     polygons: ArrayRef,
     stations: ArrayRef,
     area: Vec<f64>,
+    network: Network,
     planetary: Vec<f64>,
     /// By the number of times. There are at most as many as a block has times.
     templates: Mutex<HashMap<usize, Arc<Template>>>,
@@ -69,8 +72,29 @@ impl FixedColumns {
             ),
             area: polygons.iter().map(|p| p.shape.area / 1e6).collect(),
             planetary: setup.planetary.clone(),
+            network: setup.network.clone(),
             templates: Mutex::default(),
         }
+    }
+
+    /// Names and stations of the polygons, with those of some more.
+    pub(super) fn names<'p>(
+        &self,
+        more: impl Iterator<Item = &'p StationPolygon> + Clone,
+    ) -> [ArrayRef; 2] {
+        let with = |own: &ArrayRef, more: Vec<String>| -> ArrayRef {
+            let own = own.as_any().downcast_ref::<StringArray>();
+            let own = own.into_iter().flatten().flatten().map(String::from);
+            Arc::new(StringArray::from(own.chain(more).collect::<Vec<String>>()))
+        };
+        let ids = more.clone().map(|p| p.id.clone()).collect();
+        let lists = more.map(|p| station_list(p, &self.network)).collect();
+        [with(&self.polygons, ids), with(&self.stations, lists)]
+    }
+
+    /// Area of polygon `p`, km²; `None` beyond those of the whole network.
+    pub(super) fn area(&self, p: usize) -> Option<f64> {
+        self.area.get(p).copied()
     }
 
     /// The fixed columns of a block of this many times.

@@ -2,21 +2,19 @@
 
 use rayon::prelude::*;
 
+use super::complete::{Common, ErrorModel, Holes};
 use super::field::FieldState;
 use super::outliers::OutlierBooks;
+use super::remesh::Remesh;
 use super::{Setup, Window};
 use crate::align::{AlignBooks, Aligner, StationSensors, WindBlock, block_times, height_factor};
-use crate::check::Flag;
 use crate::integral::{
-    CauseBooks, ErrorBudget, ErrorParts, EstimateBlock, Extremes, FalseDiscovery, FitBooks,
-    FitColumn, RunStatistics, Sampling, SecondOpinion, complete_errors, estimate, find_causes,
-    find_significant,
+    CauseBooks, EstimateBlock, Extremes, FalseDiscovery, FitBooks, RunStatistics,
 };
 use crate::report::{Rounding, SpeedStep};
-use crate::settings::{SensorErrors, Settings};
+use crate::settings::{Missing, SensorErrors, Settings};
 use crate::spatial::SpatialCheck;
-use crate::station::{Correction, Network, Position, Station};
-use crate::structure::StructureFunction;
+use crate::station::{Correction, Network, Station};
 use crate::warning::Warning;
 
 /// What is kept from window to window.
@@ -34,6 +32,7 @@ pub(super) struct Estimation<'a> {
     spatial: Option<SpatialCheck>,
     pub(super) outliers: OutlierBooks,
     errors: Option<ErrorModel>,
+    pub(super) remesh: Option<Remesh>,
     rule: FalseDiscovery,
 }
 
@@ -61,10 +60,13 @@ impl<'a> Estimation<'a> {
             outliers: OutlierBooks::default(),
             errors: spacing
                 .filter(|_| complete)
-                .map(|m| ErrorModel::new(setup, m)),
+                .map(|m| ErrorModel::new(&setup.built, &setup.network, m)),
+            remesh: (settings.missing == Missing::Remesh)
+                .then(|| Remesh::new(setup, spacing.filter(|_| complete))),
             rule: FalseDiscovery::new(
                 setup.settings.errors.false_discovery_rate,
-                setup.built.polygons.len(),
+                // A triangulation of n stations has fewer than 2 n triangles.
+                setup.built.polygons.len() + 2 * setup.network.len(),
             ),
             setup,
         }
@@ -104,24 +106,24 @@ impl<'a> Estimation<'a> {
             (Some(field), None) => field.advance(&winds),
             (None, _) => vec![Vec::new(); winds.len()],
         };
-        let (errors, rule) = (self.errors.as_ref(), &self.rule);
         let polygons = setup.built.polygons.len();
+        let holes: Vec<Option<Holes>> = match &mut self.remesh {
+            Some(remesh) => winds.iter().map(|winds| remesh.holes(winds)).collect(),
+            None => winds.iter().map(|_| None).collect(),
+        };
+        let common = Common {
+            polygons: &setup.built.polygons,
+            errors: self.errors.as_ref(),
+            rule: &self.rule,
+            limits: &setup.settings.limits,
+        };
         let results: Vec<(Sums, T)> = winds
             .par_iter()
             .zip(models)
-            .map(|(winds, models)| {
-                let block = estimate_complete(setup, errors, rule, winds, &models);
-                let lasting = match errors {
-                    Some(errors) => errors.lasting(polygons, &models),
-                    None => vec![1.0; polygons],
-                };
-                let causes = CauseBooks::of(&block, polygons);
-                let sums = Sums {
-                    extremes: Extremes::of(&block, &setup.planetary),
-                    statistics: RunStatistics::of(&block, &lasting),
-                    fits: FitBooks::of(&block),
-                    causes,
-                };
+            .zip(holes)
+            .map(|((winds, models), holes)| {
+                let (block, lasting) = common.estimate(winds, &models, holes);
+                let sums = Sums::of(&block, &setup.planetary, &lasting, polygons);
                 (sums, encode(&block))
             })
             .collect();
@@ -161,105 +163,29 @@ pub(super) struct Sums {
 }
 
 impl Sums {
+    /// Those of a block; polygons from `common` on are extra.
+    fn of(block: &EstimateBlock, planetary: &[f64], lasting: &[f64], common: usize) -> Self {
+        let extra = block.extra.iter().map(|extra| extra.planetary);
+        let planetary: Vec<f64> = planetary.iter().copied().chain(extra).collect();
+        let mut sums = Self {
+            extremes: Extremes::of(block, &planetary),
+            statistics: RunStatistics::of(block, lasting),
+            fits: FitBooks::of(block),
+            causes: CauseBooks::of(block, planetary.len()),
+        };
+        if !block.extra.is_empty() {
+            sums.extremes.renumber(common, &block.extra);
+            sums.statistics.renumber(common, &block.extra);
+            sums.causes.renumber(common, &block.extra);
+        }
+        sums
+    }
+
     fn merge(&mut self, later: &Self) {
         self.extremes.merge(&later.extremes);
         self.statistics.merge(&later.statistics);
         self.fits.merge(&later.fits);
         self.causes.merge(&later.causes);
-    }
-}
-
-/// The estimates of a block with all that is said of them.
-fn estimate_complete(
-    setup: &Setup,
-    errors: Option<&ErrorModel>,
-    rule: &FalseDiscovery,
-    winds: &WindBlock,
-    models: &[StructureFunction],
-) -> EstimateBlock {
-    let polygons = &setup.built.polygons;
-    let mut block = estimate(polygons, winds);
-    block.budget = match errors {
-        Some(errors) => complete_errors(polygons, &errors.sampling, winds, models, &mut block),
-        None => {
-            let instruments_alone = |se: &[f64]| ErrorParts {
-                instrument: se.to_vec(),
-                sampling: vec![0.0; se.len()],
-                timing: vec![0.0; se.len()],
-            };
-            ErrorBudget {
-                vorticity: instruments_alone(&block.vorticity_se),
-                divergence: instruments_alone(&block.divergence_se),
-            }
-        }
-    };
-    find_significant(&mut block, rule);
-    if let Some(errors) = errors {
-        block.fits = errors.fits(winds, models, &block);
-    }
-    find_causes(&mut block, polygons, winds, &setup.settings.limits);
-    block
-}
-
-/// What the complete errors of the polygons need beside the structure function.
-struct ErrorModel {
-    sampling: Sampling,
-    /// For each polygon with more than three stations.
-    opinions: Vec<(usize, SecondOpinion)>,
-}
-
-impl ErrorModel {
-    fn new(setup: &Setup, spacing: f64) -> Self {
-        let positions: Vec<Position> = setup
-            .network
-            .stations()
-            .iter()
-            .map(|s| s.position)
-            .collect();
-        let (polygons, edges) = (&setup.built.polygons, &setup.built.edges);
-        let sampling = Sampling::new(polygons, edges, &positions, spacing);
-        let opinions = polygons.iter().enumerate();
-        let opinions = opinions
-            .filter_map(|(p, polygon)| Some((p, SecondOpinion::new(polygon, p, &sampling)?)));
-        Self {
-            opinions: opinions.collect(),
-            sampling,
-        }
-    }
-
-    /// How long the errors of sampling and timing of each polygon last, s.
-    fn lasting(&self, polygons: usize, models: &[StructureFunction]) -> Vec<f64> {
-        let Some(structure) = models.get(models.len() / 2) else {
-            return vec![1.0; polygons];
-        };
-        let edges = (0..polygons).map(|p| self.sampling.mean_edge(p));
-        edges
-            .map(|edge| structure.decorrelation_time(edge))
-            .collect()
-    }
-
-    /// The linear fits of a block.
-    fn fits(
-        &self,
-        winds: &WindBlock,
-        models: &[StructureFunction],
-        block: &EstimateBlock,
-    ) -> Vec<FitColumn> {
-        let n = block.times.len();
-        let column = |(p, opinion): &(usize, SecondOpinion)| {
-            let at = models.iter().enumerate().map(|(t, structure)| {
-                let is_there = block.flag[p * n + t] < Flag::Fail;
-                is_there.then(|| {
-                    let edges = &self.sampling.constants(structure.exponent)[*p];
-                    opinion.compare(winds, t, structure, edges)
-                })
-            });
-            FitColumn {
-                polygon: *p,
-                at: at.collect(),
-            }
-        };
-        self.opinions.iter().map(column).collect()
     }
 }
 

@@ -8,7 +8,8 @@ use super::{Reading, Setup, Windows};
 use crate::align::Period;
 use crate::error::Error;
 use crate::integral::{
-    Attribution, CauseBooks, EstimateBlock, Extremes, FitBook, FitBooks, RunStatistics, attribute,
+    Attribution, CauseBooks, EstimateBlock, ExtraPolygon, Extremes, FitBook, FitBooks,
+    RunStatistics, attribute,
 };
 use crate::polygon::StationPolygon;
 use crate::report::{InputOrder, ReportFiles, ReportTable};
@@ -37,6 +38,8 @@ pub struct Outcome {
     pub extremes: Extremes,
     /// Statistics of each polygon.
     pub statistics: RunStatistics,
+    /// Triangles that filled holes where stations were missing, in the order in which they came.
+    pub extra: Vec<ExtraPolygon>,
     /// Stations that would explain odd means around them.
     pub attributions: Vec<Attribution>,
     /// Why estimates are flagged, for each polygon.
@@ -50,6 +53,14 @@ pub struct Outcome {
 }
 
 impl Outcome {
+    /// The polygon of a number of the run.
+    #[must_use]
+    pub fn polygon<'a>(&'a self, setup: &'a Setup, number: usize) -> Option<&'a StationPolygon> {
+        let polygons = &setup.built.polygons;
+        let extra = || self.extra.get(number.checked_sub(polygons.len())?);
+        polygons.get(number).or_else(|| Some(&extra()?.polygon))
+    }
+
     /// Share of the rows of listed stations that were used.
     #[must_use]
     pub fn share_used(&self) -> f64 {
@@ -140,6 +151,7 @@ pub fn run<T: Send>(
         extremes: estimation.sums.extremes,
         attributions: attribute(&setup.built.polygons, &estimation.sums.statistics),
         statistics: estimation.sums.statistics,
+        extra: estimation.remesh.map(|r| r.extra).unwrap_or_default(),
         causes: estimation.sums.causes,
         fits: estimation.sums.fits,
         structure: estimation

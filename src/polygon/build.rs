@@ -87,6 +87,27 @@ pub fn build_polygons(
     Ok(built)
 }
 
+/// Builds triangles of stations given by number, counter-clockwise; those on one line are dropped.
+#[must_use]
+pub fn build_triangles(
+    network: &Network,
+    triangles: &[[usize; 3]],
+    limits: &PolygonLimits,
+) -> BuiltPolygons {
+    let mut builder = Builder {
+        network,
+        limits,
+        positions: network.stations().iter().map(|s| s.position).collect(),
+        geodesic: Geodesic::wgs84(),
+        built: BuiltPolygons::default(),
+        problems: Vec::new(),
+    };
+    for triangle in triangles {
+        builder.triangle(*triangle);
+    }
+    builder.built
+}
+
 fn warn(built: &mut BuiltPolygons) {
     let long: Vec<f64> = built
         .polygons
@@ -126,6 +147,16 @@ struct Builder<'a> {
 }
 
 impl Builder<'_> {
+    fn triangle(&mut self, ring: [usize; 3]) {
+        let id = ring
+            .map(|s| self.network.stations()[s].id.as_str())
+            .join("+");
+        match self.polygon(id, PolygonKind::Triangle, vec![ring.to_vec()]) {
+            Some(polygon) => self.add(polygon),
+            None => self.built.flat += 1,
+        }
+    }
+
     fn triangles(&mut self) -> Result<(), Error> {
         let doubles = self.network.coincident();
         let left_out: HashSet<&str> = doubles
@@ -139,13 +170,7 @@ impl Builder<'_> {
             .filter(|&s| !left_out.contains(self.network.stations()[s].id.as_str()))
             .collect();
         for ring in triangulate(&self.positions, &stations)? {
-            let id = ring
-                .map(|s| self.network.stations()[s].id.as_str())
-                .join("+");
-            match self.polygon(id, PolygonKind::Triangle, vec![ring.to_vec()]) {
-                Some(polygon) => self.add(polygon),
-                None => self.built.flat += 1,
-            }
+            self.triangle(ring);
         }
         let flat = |p: &StationPolygon| p.shape.smallest_angle < FLAT;
         if self.built.polygons.is_empty() && self.built.excluded.iter().all(|(p, _)| flat(p)) {

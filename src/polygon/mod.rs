@@ -12,7 +12,7 @@ use geographiclib_rs::{Geodesic, PolygonArea, Winding};
 
 use crate::station::Position;
 
-pub use build::{BuiltPolygons, build_polygons};
+pub use build::{BuiltPolygons, build_polygons, build_triangles};
 pub use delaunay::triangulate;
 pub use edge::{DirectedEdge, Edge, EdgeSet, LONG_EDGE, flux_rule_error, median_edge};
 pub use ring::{InvalidPolygon, defects};

@@ -54,6 +54,8 @@ pub struct Settings {
     pub check: CheckLimits,
     /// Which polygons are built.
     pub polygons: PolygonChoice,
+    /// What becomes of triangles where stations are missing.
+    pub missing: Missing,
     /// Which polygons are left out.
     pub limits: PolygonLimits,
     /// Whether the reports are checked at all.
@@ -212,6 +214,17 @@ pub struct PolygonChoice {
     pub rings: Vec<RingSettings>,
     /// Unions of polygons named by the user.
     pub regions: Vec<RegionSettings>,
+}
+
+/// What becomes of the triangles of a station that is missing.
+#[derive(Debug, Clone, Copy, Default, PartialEq, Eq, serde::Serialize)]
+#[serde(rename_all = "snake_case")]
+pub enum Missing {
+    /// They have no value.
+    #[default]
+    Skip,
+    /// Other triangles of the stations that report stand in their place.
+    Remesh,
 }
 
 /// A ring named by the user.

@@ -11,8 +11,8 @@ use super::path::expand_path;
 use super::reports::{reports, text_format};
 use super::section::{Document, Section};
 use super::{
-    MEMORY, PolygonChoice, PolygonLimits, RegionParts, RegionSettings, RingSettings, SensorErrors,
-    Settings,
+    MEMORY, Missing, PolygonChoice, PolygonLimits, RegionParts, RegionSettings, RingSettings,
+    SensorErrors, Settings,
 };
 use crate::error::{Error, Problem};
 use crate::station::{Catalogue, StationColumns};
@@ -81,6 +81,7 @@ fn parse_settings(
     stations.finish();
 
     let sensor = sensor(root.section("sensor"));
+    let (polygons, missing) = polygons(root.section("polygons"));
     let settings = Settings {
         name,
         station_file,
@@ -95,7 +96,8 @@ fn parse_settings(
         screen: !overrides.no_screen,
         cache: overrides.cache.clone(),
         memory: overrides.memory.unwrap_or(MEMORY),
-        polygons: polygons(root.section("polygons")),
+        polygons,
+        missing,
     };
     root.finish();
     (settings, document.into_problems())
@@ -219,8 +221,13 @@ fn limits(mut section: Section, overrides: &Overrides) -> PolygonLimits {
     limits
 }
 
-fn polygons(mut section: Section) -> PolygonChoice {
+fn polygons(mut section: Section) -> (PolygonChoice, Missing) {
     let triangles = section.value("triangles").is_none_or(|f| f.value);
+    let missing = section.parsed("missing", |text| match text {
+        "skip" => Ok(Missing::Skip),
+        "remesh" => Ok(Missing::Remesh),
+        other => Err(format!("`{other}` is neither \"skip\" nor \"remesh\"")),
+    });
     let mut rings = Vec::new();
     for mut ring in section.sections("ring") {
         let name = ring.required::<String>("name");
@@ -265,11 +272,12 @@ fn polygons(mut section: Section) -> PolygonChoice {
         region.finish();
     }
     section.finish();
-    PolygonChoice {
+    let choice = PolygonChoice {
         triangles,
         rings,
         regions,
-    }
+    };
+    (choice, missing.unwrap_or_default())
 }
 
 #[cfg(test)]
