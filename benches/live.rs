@@ -16,17 +16,19 @@ mod common;
 use std::time::Duration;
 
 use archive::Archive;
-use gyremesh::align::{Aligner, StationSensors, block_times};
-use gyremesh::check::{StationScreen, screen};
+use gyremesh::align::{AlignedWind, Aligner, Covariance, StationSensors, WindBlock, block_times};
+use gyremesh::check::{Flag, StationScreen, screen};
 use gyremesh::integral::estimate;
 use gyremesh::polygon::{build_polygons, triangulate};
 use gyremesh::report::{ReportTable, Rows};
 use gyremesh::settings::{
-    AlignMethod, Analysis, CheckLimits, PolygonChoice, PolygonLimits, SensorErrors,
+    AlignMethod, Analysis, CheckLimits, NeighbourLimits, PolygonChoice, PolygonLimits, SensorErrors,
 };
+use gyremesh::spatial::SpatialCheck;
 use gyremesh::station::{Network, Position, Station};
+use gyremesh::structure::{StructureSettings, typical_spacing};
 use gyremesh::time::Time;
-use gyremesh::units::FromDirection;
+use gyremesh::units::{FromDirection, Wind};
 use rand::{RngExt, SeedableRng};
 use rand_chacha::ChaCha8Rng;
 
@@ -59,6 +61,42 @@ fn exponent(before: Option<(usize, f64)>, now: (usize, f64)) -> String {
         let exponent = (now.1 / took).ln() / (now.0 as f64 / n as f64).ln();
         format!("{exponent:.2}")
     })
+}
+
+/// The neighbour test of one time: weights known, and with all weights found anew, as for a new class of the model.
+fn neighbours(network: &Network, rng: &mut ChaCha8Rng) {
+    let stations = network.len();
+    let Some(spacing) = typical_spacing(network).filter(|_| stations >= 10) else {
+        return;
+    };
+    let mut block = WindBlock::empty(vec![Time::from_micros(0)], stations);
+    for station in 0..stations {
+        let wind = Wind {
+            u: 6.0 + rng.random_range(-1.0..1.0),
+            v: rng.random_range(-1.0..1.0),
+        };
+        let value = AlignedWind {
+            wind,
+            covariance: Covariance {
+                uu: 0.25,
+                uv: 0.0,
+                vv: 0.25,
+            },
+            flag: Flag::Pass,
+            age: 0.0,
+        };
+        block.set(station, 0, &value);
+    }
+    let winds = [block];
+    let models = [vec![StructureSettings::default().prior(spacing)]];
+    let mut check = SpatialCheck::new(network, spacing, NeighbourLimits::default());
+    let fresh = check.clone();
+    let known = milliseconds(|| check.judge(&winds, &models, &|_, _| None).len());
+    let anew = milliseconds(|| fresh.clone().judge(&winds, &models, &|_, _| None).len());
+    let chosen = milliseconds(|| SpatialCheck::new(network, spacing, NeighbourLimits::default()));
+    println!(
+        "  {stations:>8} neighbour test: {known:.2} ms, with new weights {anew:.1} ms; neighbours chosen in {chosen:.1} ms"
+    );
 }
 
 fn main() {
@@ -122,6 +160,7 @@ fn main() {
             exponent(last_triangles, (stations, triangles)),
             exponent(last_build, (stations, build)),
         );
+        neighbours(&network, &mut rng);
         last_live = Some((stations, live));
         last_triangles = Some((stations, triangles));
         last_build = Some((stations, build));

@@ -106,6 +106,7 @@ impl Outlier {
 }
 
 /// The neighbour test of one network.
+#[derive(Clone)]
 pub struct SpatialCheck {
     limits: NeighbourLimits,
     network: Network,
