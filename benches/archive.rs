@@ -78,7 +78,7 @@ fn main() {
         archive.reports() as f64 / 1e6,
         std::fs::metadata(&reports).unwrap().len() as f64 / 1e6
     );
-    let jobs: [(&str, &[&str]); 7] = [
+    let jobs: [(&str, &[&str]); 8] = [
         ("summary", &["--summary-only", "--errors", "instrument"]),
         (
             "summary, one thread",
@@ -101,6 +101,7 @@ fn main() {
             ],
         ),
         ("Parquet, complete errors", &["--format", "parquet"]),
+        ("the same, unscreened", &["--format", "parquet", "--no-screen"]),
         ("CSV, complete errors", &["--format", "csv"]),
     ];
     let mut parse = data_frame(&reports);

@@ -4,6 +4,9 @@ use std::fmt;
 
 use crate::station::PositionSlip;
 
+/// Slope times shear that is worth a warning, 1/s: as large as the vorticity and divergence of fronts (`methods.md` 4 and 9).
+pub(crate) const STEEP: f64 = 1e-4;
+
 /// Something a user should know; the run goes on.
 #[derive(Debug, Clone, PartialEq)]
 #[non_exhaustive]
@@ -56,6 +59,15 @@ pub enum Warning {
         slip: Option<PositionSlip>,
         /// Stations that are as far from all others, besides this one.
         more: usize,
+    },
+    /// Stations of some polygons stand on slopes.
+    SteepGround {
+        /// Polygons where vertical shear passes for [`STEEP`] or more.
+        polygons: usize,
+        /// The largest slope times the shear to expect, 1/s.
+        worst: f64,
+        /// The shear to expect, 1/s.
+        shear: f64,
     },
     /// Edges so long that the flux rule loses accuracy.
     LongEdges {
@@ -223,6 +235,16 @@ impl fmt::Display for Warning {
                 some_of(first, *stations)
             ),
             Self::FarStation { .. } => self.far_station(f),
+            Self::SteepGround {
+                polygons,
+                worst,
+                shear,
+            } => write!(
+                f,
+                "{polygons} polygons stand on slopes where a wind that changes by {shear} 1/s with height passes for \
+                 vorticity or divergence of {STEEP:.0e} 1/s or more (up to {worst:.0e}). Set `limits.slope_error` to \
+                 leave them out"
+            ),
             Self::LongEdges { polygons, longest } => write!(
                 f,
                 "polygons with an edge over {:.0} km: {polygons} (longest {:.0} km); the flux along such an edge is \

@@ -335,3 +335,52 @@ fn elevation_spread_is_that_of_the_corners() {
     assert_eq!(spread("S001+S002+S004"), Some(1820.0));
     assert_eq!(spread("S000+S004+S003"), None);
 }
+
+/// A plane that rises by 1 m in 100 m: with a shear of 0.01 1/s it passes for 1e-4 1/s (`methods.md` 4).
+#[test]
+fn slopes_and_heights_are_limits() {
+    let mut stations = network(&SQUARE).stations().to_vec();
+    for station in &mut stations {
+        let east = station.position.longitude() * station.position.latitude().to_radians().cos();
+        station.elevation = Some(0.01 * 111_320.0 * east);
+    }
+    let network = Network::new(stations);
+    let all = triangles(&network).unwrap();
+    for polygon in &all.polygons {
+        let slope = polygon.shape.slope.unwrap();
+        assert!((slope - 0.01).abs() < 2e-4, "{slope}");
+    }
+    let told: Vec<String> = all.warnings.iter().map(ToString::to_string).collect();
+    assert!(told.iter().any(|w| w.contains("slopes")), "{told:?}");
+    let within = |limits: PolygonLimits| {
+        let choice = PolygonChoice {
+            triangles: true,
+            rings: vec![],
+            regions: vec![],
+        };
+        build_polygons(&network, &choice, &limits).unwrap()
+    };
+    let steep = within(PolygonLimits {
+        slope_error: Some(0.9e-4),
+        ..NO_LIMITS
+    });
+    assert!(steep.polygons.is_empty());
+    assert!(steep.excluded.iter().all(|(_, why)| why.name() == "slope"));
+    let gentler = within(PolygonLimits {
+        slope_error: Some(0.9e-4),
+        vertical_shear: 0.005,
+        ..NO_LIMITS
+    });
+    assert_eq!(gentler.polygons.len(), all.polygons.len());
+    let spread = |p: &gyremesh::polygon::StationPolygon| p.shape.elevation_spread.unwrap();
+    let limit = 0.5 * all.polygons.iter().map(spread).fold(0.0, f64::max);
+    let high = within(PolygonLimits {
+        elevation_spread: Some(limit),
+        ..NO_LIMITS
+    });
+    assert!(high.polygons.iter().all(|p| spread(p) <= limit));
+    for (polygon, why) in &high.excluded {
+        assert!(spread(polygon) > limit && why.name() == "elevation_spread");
+    }
+    assert!(!high.excluded.is_empty());
+}

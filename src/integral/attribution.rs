@@ -129,3 +129,89 @@ fn fit(
         && offset.speed() >= LEAST_DEVIATION * attribution.error;
     is_clear.then_some((attribution, gained))
 }
+
+#[cfg(test)]
+#[expect(clippy::unwrap_used, reason = "a test may panic")]
+mod tests {
+    use super::*;
+    use crate::align::{AlignedWind, Covariance, WindBlock};
+    use crate::check::Flag;
+    use crate::integral::{ErrorBudget, ErrorParts, FalseDiscovery, estimate, find_significant};
+    use crate::polygon::build_polygons;
+    use crate::settings::{PolygonChoice, PolygonLimits};
+    use crate::station::{Network, Position, Station};
+    use crate::time::Time;
+
+    /// Means of a 5 × 5 grid in a wind that varies a little, with two stations off by known amounts.
+    #[test]
+    fn the_offsets_that_were_planted_are_found() {
+        let stations = (0..25).map(|k: u32| {
+            let (i, j) = (f64::from(k / 5), f64::from(k % 5));
+            let off = 0.05 * (7.3 * f64::from(k)).sin();
+            let position = Position::new(46.0 + 0.2 * i + off, 8.0 + 0.3 * j - off).unwrap();
+            Station::new(format!("S{k:02}"), position)
+        });
+        let network = Network::new(stations.collect());
+        let choice = PolygonChoice {
+            triangles: true,
+            rings: vec![],
+            regions: vec![],
+        };
+        let polygons = build_polygons(&network, &choice, &PolygonLimits::default())
+            .unwrap()
+            .polygons;
+        let means = |planted: &[(usize, Wind)]| {
+            let mut winds = WindBlock::empty(
+                (0..64)
+                    .map(|t| Time::from_micros(t * 3_600_000_000))
+                    .collect(),
+                25,
+            );
+            for s in 0..25 {
+                for t in 0..64 {
+                    let x = 13.7 * s as f64 + 5.1 * t as f64;
+                    let off = planted
+                        .iter()
+                        .find(|p| p.0 == s)
+                        .map_or(Wind::default(), |p| p.1);
+                    let value = AlignedWind {
+                        wind: Wind {
+                            u: 5.0 + 0.5 * x.sin() + off.u,
+                            v: 2.0 + 0.5 * (1.3 * x).cos() + off.v,
+                        },
+                        covariance: Covariance {
+                            uu: 0.2,
+                            uv: 0.0,
+                            vv: 0.2,
+                        },
+                        flag: Flag::Pass,
+                        age: 0.0,
+                    };
+                    winds.set(s, t, &value);
+                }
+            }
+            let mut block = estimate(&polygons, &winds);
+            let parts = |se: &[f64]| ErrorParts {
+                instrument: vec![0.0; se.len()],
+                sampling: se.to_vec(),
+                timing: vec![0.0; se.len()],
+            };
+            block.budget = ErrorBudget {
+                vorticity: parts(&block.vorticity_se),
+                divergence: parts(&block.divergence_se),
+            };
+            find_significant(&mut block, &FalseDiscovery::new(0.05, polygons.len()));
+            RunStatistics::of(&block, &vec![1.0; polygons.len()])
+        };
+        assert_eq!(attribute(&polygons, &means(&[])), []);
+        let planted = [(12, Wind { u: 1.5, v: -1.0 }), (6, Wind { u: 0.0, v: 2.5 })];
+        let found = attribute(&polygons, &means(&planted));
+        assert_eq!(found.len(), 2, "{found:?}");
+        for (station, offset) in planted {
+            let own = found.iter().find(|a| a.station == station).unwrap();
+            let off = (own.offset.u - offset.u).hypot(own.offset.v - offset.v);
+            assert!(off < 3.0 * own.error, "{own:?}");
+            assert!(own.explained > 0.8 && own.polygons >= 5, "{own:?}");
+        }
+    }
+}

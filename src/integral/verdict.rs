@@ -146,3 +146,85 @@ impl CauseBooks {
         all
     }
 }
+
+#[cfg(test)]
+#[expect(clippy::unwrap_used, reason = "a test may panic")]
+mod tests {
+    use super::*;
+    use crate::align::{AlignedWind, Covariance};
+    use crate::integral::{Comparison, FitColumn, estimate};
+    use crate::polygon::build_triangles;
+    use crate::station::{Network, Position, Station};
+    use crate::time::Time;
+    use crate::units::Wind;
+
+    /// One triangle at six times: sound, one station suspect, failed, missing, old, and with a fit that disagrees.
+    #[test]
+    fn every_cause_is_named_and_counted() {
+        let at = [(47.0, 8.0), (47.0, 8.5), (47.4, 8.2)];
+        let stations = at.iter().enumerate().map(|(k, &(latitude, longitude))| {
+            Station::new(format!("S{k}"), Position::new(latitude, longitude).unwrap())
+        });
+        let network = Network::new(stations.collect());
+        let limits = PolygonLimits {
+            largest_age: Some(600.0),
+            ..PolygonLimits::default()
+        };
+        let polygons = build_triangles(&network, &[[0, 1, 2]], &limits).polygons;
+        let mut winds = WindBlock::empty((0..6).map(Time::from_micros).collect(), 3);
+        for station in 0..3 {
+            for t in 0..6 {
+                let value = AlignedWind {
+                    wind: Wind { u: 3.0, v: 1.0 },
+                    covariance: Covariance::default(),
+                    flag: Flag::Pass,
+                    age: if (station, t) == (1, 4) { 601.0 } else { 600.0 },
+                };
+                winds.set(station, t, &value);
+            }
+        }
+        for (t, flag) in [(1, Flag::Suspect), (2, Flag::Fail), (3, Flag::Missing)] {
+            winds.raise_flag(2, t, flag);
+        }
+        // A doubt beside a station that is missing says nothing more.
+        winds.raise_flag(0, 3, Flag::Suspect);
+        let mut block = estimate(&polygons, &winds);
+        let fit = |chance| {
+            Some(Comparison {
+                fitted: [0.0; 2],
+                fitted_se: [0.0; 2],
+                difference: [0.0; 2],
+                difference_se: [0.0; 2],
+                residual: 0.0,
+                chance,
+            })
+        };
+        block.fits = vec![FitColumn {
+            polygon: 0,
+            at: vec![fit(0.002), fit(0.5), None, None, fit(0.5), fit(0.0005)],
+        }];
+        find_causes(&mut block, &polygons, &winds, &limits);
+        let expected = [
+            None,
+            Some(Cause::Suspect(2)),
+            Some(Cause::Failed(2)),
+            Some(Cause::Missing(2)),
+            Some(Cause::OldWind),
+            Some(Cause::FitDisagrees),
+        ];
+        assert_eq!(block.causes, expected);
+        let flags = [
+            Flag::Pass,
+            Flag::Suspect,
+            Flag::Fail,
+            Flag::Missing,
+            Flag::Suspect,
+            Flag::Suspect,
+        ];
+        assert_eq!(block.flag, flags);
+        assert_eq!(block.vorticity[2..4], [0.0, 0.0]);
+        let mut books = CauseBooks::of(&block, 1);
+        books.merge(&CauseBooks::of(&block, 1));
+        assert_eq!(books.all(), [2; 5]);
+    }
+}

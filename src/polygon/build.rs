@@ -16,7 +16,7 @@ use super::{
 use crate::error::{Error, Place, Problem, nearest_name};
 use crate::settings::{PolygonChoice, PolygonLimits, RegionParts, RegionSettings};
 use crate::station::{Network, Position};
-use crate::warning::Warning;
+use crate::warning::{STEEP, Warning};
 
 /// A triangle with a smaller angle is flat: its stations stand on one line within what positions are known to
 /// (9 m in 50 km), degrees.
@@ -83,7 +83,7 @@ pub fn build_polygons(
             .excluded
             .retain(|(p, _)| p.kind != PolygonKind::Triangle);
     }
-    warn(&mut built);
+    warn(&mut built, limits);
     Ok(built)
 }
 
@@ -108,7 +108,19 @@ pub fn build_triangles(
     builder.built
 }
 
-fn warn(built: &mut BuiltPolygons) {
+fn warn(built: &mut BuiltPolygons, limits: &PolygonLimits) {
+    let slopes = built.polygons.iter().filter_map(|p| p.shape.slope);
+    let steep: Vec<f64> = slopes
+        .map(|slope| slope * limits.vertical_shear)
+        .filter(|&error| error >= STEEP)
+        .collect();
+    if !steep.is_empty() {
+        built.warnings.push(Warning::SteepGround {
+            polygons: steep.len(),
+            worst: steep.iter().copied().fold(0.0, f64::max),
+            shear: limits.vertical_shear,
+        });
+    }
     let long: Vec<f64> = built
         .polygons
         .iter()

@@ -10,10 +10,14 @@ const SPACING: f64 = 25e3;
 
 /// A grid of stations moved off its points, `side` × `side`.
 fn network(side: i32) -> Network {
+    grid(side, 0.06)
+}
+
+fn grid(side: i32, jitter: f64) -> Network {
     let mut stations = Vec::new();
     for i in 0..side {
         for j in 0..side {
-            let off = |k: i32| 0.06 * f64::from((k * 7919) % 11 - 5) / 5.0;
+            let off = |k: i32| jitter * f64::from((k * 7919) % 11 - 5) / 5.0;
             let latitude = 46.0 + 0.225 * f64::from(i) + off(3 * i + j);
             let longitude = 8.0 + 0.32 * f64::from(j) + off(i + 5 * j + 2);
             let position = Position::new(latitude, longitude).unwrap();
@@ -137,7 +141,7 @@ fn ten_neighbours_are_enough() {
 
 #[test]
 fn a_uniform_wind_leaves_nothing_and_the_edge_has_wider_limits() {
-    let network = network(5);
+    let network = grid(5, 0.0);
     // Uniform in space, so all but the turn of north between the stations.
     let block = block(&network, 3, |_, _| (8.0, -3.0));
     let models = vec![model(); 3];
@@ -218,7 +222,7 @@ fn a_front_is_suspect_at_most() {
     // For one time only, so that no own report speaks for it.
     let front = |s: usize, t: usize| {
         let (u, v) = wavy(s, t);
-        if s % 5 == 0 && t == 4 {
+        if s.is_multiple_of(5) && t == 4 {
             (u - 12.0, v + 9.0)
         } else {
             (u, v)
