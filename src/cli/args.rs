@@ -133,6 +133,8 @@ label: start, middle or end of the window [end], averaging
               height (common height), profile: log or power [log], exponent [1/7]; level, such as 850 hPa
   [errors]    parts: all or instrument [all]; false_discovery_rate [0.05]; window [24 h] and memory [1 h] of the
               structure function; prior_difference [4.5 m2/s2], prior_distance [30 km], prior_exponent [2/3]
+  [kinematics]  write: true for kinematics.csv or .parquet [false]; least_speed [1 m/s]: no curvature, shear or \
+diffluence in weaker mean winds
   [check]     speed_suspect [75 m/s], speed_fail [100 m/s], starting_speed [sensor.calm_below], displacement of \
 reports with a position: a length or any [20 km], gap: reports further apart do not follow each other [70 min], off: \
 tests not to make []
@@ -270,6 +272,10 @@ fn exponent(text: &str) -> Result<f64, String> {
 
 /// Options of `estimate`.
 #[derive(Debug, ClapArgs)]
+#[expect(
+    clippy::struct_excessive_bools,
+    reason = "each is a switch of the command line"
+)]
 pub struct EstimateArgs {
     /// Settings file
     pub network: PathBuf,
@@ -311,6 +317,9 @@ pub struct EstimateArgs {
     /// What the errors hold: the sensors and sites, the wind between the stations, and late reports; or the sensors alone
     #[arg(long, value_name = "PARTS", default_value = "all")]
     pub errors: Parts,
+    /// Write kinematics.csv (or .parquet) too: mean wind, deformation, curvature and shear and more of each polygon
+    #[arg(long)]
+    pub kinematics: bool,
     /// Take all reports as they are, without checks
     #[arg(long)]
     pub no_screen: bool,
@@ -410,6 +419,7 @@ impl From<&EstimateArgs> for Overrides {
             cache: args.cache.clone(),
             no_screen: args.no_screen,
             instrument_errors: args.errors == Parts::Instrument,
+            kinematics: args.kinematics,
         }
     }
 }

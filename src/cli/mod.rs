@@ -209,7 +209,7 @@ fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
         let outcome = pipeline::run(
             &setup,
             order,
-            |block| encoder.encode(block),
+            |block, kinematics| encoder.encode(block, kinematics),
             |encoded| series_files.write(&mut set, encoded),
             |rows| bar.set_position(rows),
         )?;

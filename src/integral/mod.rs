@@ -15,6 +15,7 @@ mod extremes;
 mod fit_books;
 mod lanes;
 mod mean_error;
+mod moments;
 mod sampling;
 mod second_opinion;
 mod statistics;
@@ -37,6 +38,7 @@ pub use earth::{OMEGA, SelfTest, earth_rotation, planetary_vorticity, self_test}
 pub use extremes::{Extremes, Peak};
 pub use fit_books::{FitBook, FitBooks};
 pub use mean_error::MeanError;
+pub use moments::{MomentConstants, MomentCovariance, PAIRS, mean_weights};
 pub use sampling::{PairCovariance, Sampling, SamplingConstants};
 pub use second_opinion::{Comparison, NoQuadratic, SecondOpinion, quadratic, slopes_of_plane};
 pub use statistics::{RunStatistics, Statistics};

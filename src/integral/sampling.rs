@@ -5,6 +5,7 @@ use std::sync::OnceLock;
 use rayon::prelude::*;
 
 use super::boundary::{Segment, edge_pair};
+use super::moments::MomentConstants;
 use crate::polygon::{EdgeSet, StationPolygon};
 use crate::station::Position;
 use crate::structure::{Exponent, LocalPlane, StructureFunction};
@@ -97,6 +98,7 @@ pub struct Sampling {
     outlines: Vec<Outline>,
     positions: Vec<Position>,
     constants: Vec<OnceLock<Vec<SamplingConstants>>>,
+    pub(super) moments: Vec<OnceLock<Vec<MomentConstants>>>,
 }
 
 #[derive(Debug)]
@@ -140,6 +142,7 @@ impl Sampling {
             outlines,
             positions: positions.to_vec(),
             constants: (0..Exponent::COUNT).map(|_| OnceLock::new()).collect(),
+            moments: (0..Exponent::COUNT).map(|_| OnceLock::new()).collect(),
         }
     }
 
@@ -168,6 +171,16 @@ impl Sampling {
     #[must_use]
     pub fn mean_edge(&self, polygon: usize) -> f64 {
         self.outlines[polygon].mean_edge
+    }
+
+    /// Number of polygons.
+    pub(super) fn polygons(&self) -> usize {
+        self.outlines.len()
+    }
+
+    /// Area of a polygon, m².
+    pub(super) fn area(&self, polygon: usize) -> f64 {
+        self.outlines[polygon].area
     }
 
     /// The reference distance, m.

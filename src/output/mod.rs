@@ -6,6 +6,7 @@ mod file;
 mod fits;
 mod flagged;
 mod geojson;
+mod kinematics;
 #[cfg(feature = "parquet")]
 mod parquet;
 mod reading;

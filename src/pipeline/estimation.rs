@@ -10,6 +10,7 @@ use crate::integral::{
     ErrorBudget, ErrorParts, EstimateBlock, Extremes, FalseDiscovery, FitBooks, FitColumn,
     RunStatistics, Sampling, SecondOpinion, complete_errors, estimate, find_significant,
 };
+use crate::kinematics::{Kinematics, KinematicsBlock};
 use crate::report::{Rounding, SpeedStep};
 use crate::settings::{ErrorSettings, SensorErrors};
 use crate::station::{Correction, Network, Position, Station};
@@ -34,6 +35,8 @@ pub(super) struct Estimation<'a> {
     pub(super) fits: FitBooks,
     pub(super) structure: StructureState,
     rule: FalseDiscovery,
+    /// Where they are asked for.
+    kinematics: Option<Kinematics>,
 }
 
 impl<'a> Estimation<'a> {
@@ -53,6 +56,7 @@ impl<'a> Estimation<'a> {
             statistics: RunStatistics::default(),
             fits: FitBooks::default(),
             structure: StructureState::new(setup),
+            kinematics: kinematics(setup),
             rule: FalseDiscovery::new(
                 setup.settings.errors.false_discovery_rate,
                 setup.built.polygons.len(),
@@ -65,7 +69,7 @@ impl<'a> Estimation<'a> {
     pub(super) fn window<T: Send>(
         &mut self,
         window: &Window,
-        encode: &(impl Fn(&EstimateBlock) -> T + Sync),
+        encode: &(impl Fn(&EstimateBlock, Option<&KinematicsBlock>) -> T + Sync),
     ) -> Vec<T> {
         let setup = self.setup;
         let table = &window.table;
@@ -86,6 +90,7 @@ impl<'a> Estimation<'a> {
             .collect();
         let models = self.structure.advance(&winds);
         let (structure, rule) = (&self.structure, &self.rule);
+        let kinematics = self.kinematics.as_ref();
         let results: Vec<(Extremes, RunStatistics, FitBooks, T)> = winds
             .par_iter()
             .zip(models)
@@ -93,7 +98,16 @@ impl<'a> Estimation<'a> {
                 let block = estimate_complete(setup, structure, rule, winds, &models);
                 let peaks = Extremes::of(&block, &setup.planetary);
                 let sums = RunStatistics::of(&block, &structure.lasting(&models));
-                (peaks, sums, FitBooks::of(&block), encode(&block))
+                let kinematics = kinematics.map(|k| {
+                    let model = structure.model.as_ref();
+                    k.of(
+                        winds,
+                        &block,
+                        model.map(|m| (&m.sampling, models.as_slice())),
+                    )
+                });
+                let encoded = encode(&block, kinematics.as_ref());
+                (peaks, sums, FitBooks::of(&block), encoded)
             })
             .collect();
 
@@ -123,6 +137,17 @@ impl<'a> Estimation<'a> {
         }
         encoded
     }
+}
+
+/// The frames of the polygons, if their kinematics are asked for.
+fn kinematics(setup: &Setup) -> Option<Kinematics> {
+    let settings = setup.settings.kinematics;
+    let positions = setup.network.stations().iter().map(|s| s.position);
+    let positions: Vec<Position> = positions.collect();
+    let (polygons, edges) = (&setup.built.polygons, &setup.built.edges);
+    settings
+        .write
+        .then(|| Kinematics::new(polygons, edges, &positions, &setup.planetary, settings))
 }
 
 /// The estimates of a block with all that is said of them.

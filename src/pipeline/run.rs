@@ -7,6 +7,7 @@ use super::{Reading, Setup, Windows};
 use crate::align::Period;
 use crate::error::Error;
 use crate::integral::{EstimateBlock, Extremes, FitBook, FitBooks, RunStatistics};
+use crate::kinematics::KinematicsBlock;
 use crate::polygon::StationPolygon;
 use crate::report::{InputOrder, ReportFiles, ReportTable};
 use crate::settings::Settings;
@@ -62,8 +63,8 @@ pub struct StructureReport {
     pub rows: Vec<StructureRow>,
 }
 
-/// Runs the main job on reports in the order of time, or in any order. `encode` turns a block of estimates into what
-/// `write` takes; blocks are encoded in parallel and written in the order of time, so the output depends neither on the
+/// Runs the main job on reports in the order of time, or in any order. `encode` turns a block of estimates, with its
+/// kinematics if the settings ask for them, into what `write` takes; blocks are encoded in parallel and written in the order of time, so the output depends neither on the
 /// number of threads nor on how the reports were read. `progress` hears how many rows have been read.
 ///
 /// While one window of time is estimated, the next one is read and the results of the one before are written.
@@ -75,7 +76,7 @@ pub struct StructureReport {
 pub fn run<T: Send>(
     setup: &Setup,
     order: InputOrder,
-    encode: impl Fn(&EstimateBlock) -> T + Sync,
+    encode: impl Fn(&EstimateBlock, Option<&KinematicsBlock>) -> T + Sync,
     mut write: impl FnMut(T) -> Result<(), Error> + Send,
     mut progress: impl FnMut(u64),
 ) -> Result<Outcome, Error> {

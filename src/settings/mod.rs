@@ -8,6 +8,7 @@ mod calibration;
 mod check;
 mod check_keys;
 mod errors;
+mod kinematics;
 mod path;
 mod read;
 mod reports;
@@ -47,6 +48,8 @@ pub struct Settings {
     pub analysis: Analysis,
     /// What the errors hold.
     pub errors: ErrorSettings,
+    /// Whether the kinematics of each polygon are written, and from which speed on.
+    pub kinematics: KinematicsSettings,
     /// What the calibration leaves out.
     pub calibration: CalibrationChoice,
     /// Limits of the tests of the reports.
@@ -125,6 +128,24 @@ impl Default for ErrorSettings {
             complete: true,
             false_discovery_rate: 0.05,
             structure: StructureSettings::default(),
+        }
+    }
+}
+
+/// Kinematics of each polygon.
+#[derive(Debug, Clone, Copy, PartialEq, serde::Serialize)]
+pub struct KinematicsSettings {
+    /// Whether they are written.
+    pub write: bool,
+    /// Mean wind below which nothing is said that depends on its direction, m/s. 1 m/s (`methods.md` 3).
+    pub least_speed: f64,
+}
+
+impl Default for KinematicsSettings {
+    fn default() -> Self {
+        Self {
+            write: false,
+            least_speed: 1.0,
         }
     }
 }

@@ -7,6 +7,7 @@ use super::analysis::analysis;
 use super::calibration::calibration;
 use super::check_keys::check;
 use super::errors::errors;
+use super::kinematics::kinematics;
 use super::path::expand_path;
 use super::reports::{reports, text_format};
 use super::section::{Document, Section};
@@ -44,6 +45,8 @@ pub struct Overrides {
     pub cache: Option<PathBuf>,
     /// Errors of the instruments alone
     pub instrument_errors: bool,
+    /// `kinematics.write = true`
+    pub kinematics: bool,
     /// Take the reports unchecked
     pub no_screen: bool,
 }
@@ -88,6 +91,7 @@ fn parse_settings(
         reports: reports(&mut root, base, &overrides.reports),
         analysis: analysis(root.section("analysis"), overrides),
         errors: errors(root.section("errors"), overrides),
+        kinematics: kinematics(root.section("kinematics"), overrides),
         calibration: calibration(root.section("calibration")),
         check: check(root.section("check"), sensor.calm_below),
         sensor,
