@@ -212,24 +212,16 @@ fn numpy_table() {
             let name = quantity.name();
             let mut expected = [number(name), number(&format!("{name}_se"))];
             let (value, error) = found.get(quantity).unwrap();
-            let ratio = |lengths: [&str; 3]| {
-                let [r, a, b] = lengths.map(number);
-                r / (r * r - a * a - b * b).sqrt()
-            };
-            // The interval of a direction is ± asin(1.96 σ/r), r corrected for what errors add.
-            let widened = |error: f64, ratio: f64| {
-                let sine = 1.959_964 * error.to_radians() * ratio;
+            // The interval of a direction is ± asin(1.96 σ/r).
+            let widened = |error: f64| {
+                let sine = 1.959_964 * error.to_radians();
                 (sine.asin() / 1.959_964).to_degrees()
             };
             match quantity {
-                Quantity::MeanDirection => {
-                    let ratio = ratio(["mean_speed", "mean_u_se", "mean_v_se"]);
-                    expected[1] = widened(expected[1], ratio);
-                }
-                Quantity::DilatationAxis => {
-                    let ratio = ratio(["total_deformation", "stretching_se", "shearing_se"]);
-                    expected[1] = 0.5 * widened(2.0 * expected[1], ratio);
-                }
+                Quantity::MeanDirection => expected[1] = widened(expected[1]),
+                Quantity::DilatationAxis => expected[1] = 0.5 * widened(2.0 * expected[1]),
+                // With its second-order term.
+                Quantity::OkuboWeiss => expected[1] = number("okubo_weiss_se"),
                 _ => {}
             }
             // The Earth, (100 m / R)² and 15 nm in 100 m; the script's pieces, 1/4000²; its differences, 1e-8.
@@ -572,9 +564,8 @@ fn errors_are_those_of_the_budget() {
     for (cell, quantities) in found.cells.iter().enumerate() {
         let get = |quantity: Quantity| quantities.get(quantity);
         let z = block.vorticity[cell];
-        // |ζ|/f has the error of ζ over f.
         let (rossby, error) = get(Quantity::RossbyNumber).unwrap();
-        assert!(close(rossby * 1e-4, z.abs(), 1e-15));
+        assert!(close(rossby * 1e-4, z, 1e-15));
         assert!(
             close(error * 1e-4 / block.vorticity_se[cell], 1.0, 1e-9),
             "{error:e}"
@@ -614,17 +605,19 @@ fn suppressed() {
     assert!(of(30.0, 1.0).get(Quantity::MeanDirection).is_some());
     assert_eq!(of(-4.9, 1.0).get(Quantity::RossbyNumber), None);
     assert!(of(-5.1, 1.0).get(Quantity::RossbyNumber).is_some());
-    // Errors as large as the wind and the strain: no direction, no axis.
+    // Errors as large as the wind and the strain: any direction, any axis.
     let mut covariance = [[0.0; 3]; 6];
     covariance[0] = [0.3, 0.0, 0.3];
     (covariance[3], covariance[5]) = ([4e-8, 0.0, 4e-8], [4e-8, 0.0, 4e-8]);
     let unsure = Quantities::of(&State::new(&calm, &covariance), 1e-5, 30.0, 0.0);
-    for quantity in [
-        Quantity::MeanDirection,
-        Quantity::CurvatureVorticity,
-        Quantity::DilatationAxis,
+    assert_eq!(unsure.get(Quantity::CurvatureVorticity), None);
+    // ± 1.96 of these is all the circle, and all axes.
+    for (quantity, half) in [
+        (Quantity::MeanDirection, 180.0),
+        (Quantity::DilatationAxis, 90.0),
     ] {
-        assert_eq!(unsure.get(quantity), None, "{quantity:?}");
+        let error = unsure.get(quantity).unwrap().1;
+        assert!(close(1.959_964 * error, half, 1e-9), "{quantity:?} {error}");
     }
     assert!(unsure.get(Quantity::TotalDeformation).is_some());
 

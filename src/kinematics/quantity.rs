@@ -1,5 +1,7 @@
 //! The quantities, their units, and how each follows from the state with its error.
 
+use std::f64::consts::PI;
+
 use super::State;
 use crate::units::Wind;
 
@@ -36,7 +38,7 @@ pub enum Quantity {
     ContractionRate,
     /// (√OW − δ)/2: the same after long, 1/s; where strain prevails.
     AsymptoticContractionRate,
-    /// |ζ|/|f|.
+    /// ζ/f: its size is the Rossby number, above 0 it is cyclonic.
     RossbyNumber,
     /// −(ζ + f) δ: rate of change of absolute vorticity by stretching, 1/s².
     VorticityStretching,
@@ -45,10 +47,10 @@ pub enum Quantity {
 /// Their number.
 pub const QUANTITIES: usize = 17;
 
-/// From here on the interval of a ratio is one (normal distribution, 95 %).
+/// Half of a 95 % interval in standard errors (normal distribution).
 const Z95: f64 = 1.959_964;
-/// Directions, axes and roots are given where the length they come from is more than this many errors.
-const LEAST_RATIO: f64 = 2.0;
+/// The root of Okubo-Weiss is given where that is more than this many errors above 0.
+const LEAST_RATIO: f64 = 3.0;
 /// Parts along and across the wind are given where its speed is more than this many errors: the direction is then known
 /// to a third of a radian.
 const LEAST_SPEED_RATIO: f64 = 3.0;
@@ -141,17 +143,19 @@ impl Quantities {
     ///
     /// Errors are carried on to first order (delta method). Where that does not do:
     ///
-    /// - Directions and axes: with σ the error across a vector and r its length, r² less what errors add to it, the
-    ///   95 % interval is ± asin(1.96 σ/r) (Fieller 1954, J. R. Stat. Soc. B 16, 175; from memory); the error is that
-    ///   over 1.96. None where r is less than 2 σ: any direction is possible.
+    /// - Directions and axes: the 95 % interval is ± asin(1.96 σ/r), σ the error across the vector and r its length
+    ///   (Fieller 1954, J. R. Stat. Soc. B 16, 175; from memory); the error is that over 1.96. Where r is less than
+    ///   1.96 σ, near calm or without strain, any direction is possible: 92 degrees, any axis: 46 degrees.
     /// - Okubo-Weiss: errors add the variances of stretching and shearing and take off that of the vorticity; the value
-    ///   is corrected for it.
-    /// - Its root, in the asymptotic rate: given where it is more than 2 of its errors above 0, with the slope down to
+    ///   is corrected for it. Its variance has half of the second-order term 2 tr (QC)² added, C the covariance and Q
+    ///   the quadratic form: without it, or with all of it, the intervals hold in 92 or 98 % where strain and rotation
+    ///   are about as large as their errors.
+    /// - Its root, in the asymptotic rate: given where it is more than 3 of its errors above 0, with the slope down to
     ///   the lower end of its interval, since the root is steeper there.
     /// - Curvature and the like: given where the speed is more than 3 of its errors, and with the error of the
     ///   direction.
-    /// - Total deformation and speed: within about one error of 0 their intervals hold less often (85 % instead of 95 %
-    ///   where there is nothing at all), since neither can be negative.
+    /// - Total deformation and speed cannot be negative: their intervals hold in 93 % or more, 97 to 98 % where they are
+    ///   about as large as their errors, but in 85 % where there is nothing at all.
     ///
     /// **Reference**: `methods.md` 3.
     #[must_use]
@@ -189,7 +193,7 @@ impl Quantities {
         out.set(Quantity::VorticityStretching, -absolute * d, error);
         let f = planetary.abs();
         if latitude.abs() >= LEAST_LATITUDE && f > 0.0 {
-            out.set(Quantity::RossbyNumber, z.abs() / f, sd(2) / f);
+            out.set(Quantity::RossbyNumber, z / planetary, sd(2) / f);
         }
         out
     }
@@ -206,7 +210,12 @@ impl Quantities {
         let added = c[4][4] + c[5][5] - c[2][2];
         let okubo_weiss = st * st + sh * sh - z * z - added;
         let slope = [0.0, 0.0, -2.0 * z, 0.0, 2.0 * st, 2.0 * sh];
-        let error = state.error_of(slope);
+        let first = state.error_of(slope);
+        // tr (QC)², Q = diag(−1, 1, 1) for ζ and the two deformations.
+        let square = |a: usize, b: usize| c[a][b] * c[a][b];
+        let own = square(2, 2) + square(4, 4) + square(5, 5);
+        let second = own + 2.0 * (square(4, 5) - square(2, 4) - square(2, 5));
+        let error = (first * first + second).max(0.0).sqrt();
         self.set(Quantity::OkuboWeiss, okubo_weiss, error);
         if okubo_weiss > LEAST_RATIO * error && okubo_weiss > 0.0 {
             let root = okubo_weiss.sqrt();
@@ -267,22 +276,18 @@ struct Arrow {
     direction: [f64; 2],
     along: f64,
     across: f64,
-    /// Sum of the variances: what errors add to the squared length.
-    added: f64,
 }
 
 impl Arrow {
     fn of([x, y]: [f64; 2], [xx, xy, yy]: [f64; 3]) -> Self {
         let length = x.hypot(y);
-        let added = (xx + yy).max(0.0);
         if length <= 0.0 {
-            let any = (0.5 * added).sqrt();
+            let any = (0.5 * (xx + yy)).max(0.0).sqrt();
             return Self {
                 length: 0.0,
                 direction: [0.0; 2],
                 along: any,
                 across: any,
-                added,
             };
         }
         let [a, b] = [x / length, y / length];
@@ -293,17 +298,14 @@ impl Arrow {
             direction: [a, b],
             along: along.max(0.0).sqrt(),
             across: across.max(0.0).sqrt(),
-            added,
         }
     }
 
-    /// Error of its angle, radians; `None` where it may point anywhere.
+    /// Error of its angle, radians, if it has one: the interval is ± asin(1.96 σ/r) with σ across and r the length, and
+    /// the whole circle where r is less than 1.96 σ.
     fn angle_error(&self) -> Option<f64> {
-        let squared = self.length * self.length - self.added;
-        if squared <= 0.0 || squared.sqrt() < LEAST_RATIO * self.across {
-            return None;
-        }
-        let sine = Z95 * self.across / squared.sqrt();
-        Some(sine.min(1.0).asin() / Z95)
+        let sine = Z95 * self.across / self.length;
+        let half = if sine < 1.0 { sine.asin() } else { PI };
+        (self.length > 0.0).then_some(half / Z95)
     }
 }
