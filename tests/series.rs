@@ -241,3 +241,88 @@ fn summary_only_writes_no_series() {
         assert!(read(all.path()) == read(only.path()), "{name}");
     }
 }
+
+/// `kinematics.csv` has the rows of `polygons.csv`; curvature and shear vorticity sum to its vorticity, and the Rossby
+/// number times its f is it; `kinematics.parquet` holds the same numbers, and no number of threads changes a byte.
+#[test]
+fn kinematics_beside_the_series() {
+    let out = tempfile::tempdir().unwrap();
+    let options = ["--kinematics", "--format", "csv,parquet", "--threads"];
+    let folders = ["1", "3"].map(|threads| {
+        let folder = out.path().join(threads);
+        estimate(&folder, &[options.as_slice(), &[threads]].concat());
+        folder
+    });
+    for name in ["kinematics.csv", "kinematics.parquet", "polygons.csv"] {
+        let [one, three] = folders
+            .each_ref()
+            .map(|f| std::fs::read(f.join(name)).unwrap());
+        assert!(one == three, "{name}");
+    }
+    let folder = &folders[0];
+    let (polygons, found) = (
+        rows(&folder.join("polygons.csv")),
+        rows(&folder.join("kinematics.csv")),
+    );
+    let header = csv::Reader::from_path(folder.join("kinematics.csv"))
+        .unwrap()
+        .headers()
+        .unwrap()
+        .clone();
+    let column = |name: &str| header.iter().position(|h| h == name).unwrap();
+    assert_eq!(polygons.len(), found.len());
+    let (mut with_parts, mut without) = (0, 0);
+    for (polygon, row) in polygons.iter().zip(&found) {
+        assert_eq!((&polygon[0], &polygon[1]), (&row[0], &row[1]));
+        let number = |name: &str| row[column(name)].parse::<f64>();
+        assert_eq!(polygon[4].is_empty(), number("stretching").is_err());
+        let Ok(vorticity) = polygon[4].parse::<f64>() else {
+            assert!(row.iter().skip(2).all(str::is_empty));
+            continue;
+        };
+        let f: f64 = polygon[8].parse().unwrap();
+        let rossby = number("rossby_number").unwrap();
+        assert!((rossby * f - vorticity).abs() < 1e-15);
+        let error: f64 = polygon[5].parse().unwrap();
+        // Written with seven digits.
+        assert!((number("rossby_number_se").unwrap() * f / error - 1.0).abs() < 1e-6);
+        match (number("curvature_vorticity"), number("shear_vorticity")) {
+            (Ok(curvature), Ok(shear)) => {
+                assert!((curvature + shear - vorticity).abs() < 1e-15);
+                assert!(number("mean_speed").unwrap() >= 1.0);
+                with_parts += 1;
+            }
+            _ => without += 1,
+        }
+    }
+    assert!(with_parts > 10_000 && without > 0, "{with_parts} {without}");
+
+    let file = File::open(folder.join("kinematics.parquet")).unwrap();
+    let builder = ParquetRecordBatchReaderBuilder::try_new(file).unwrap();
+    let names = builder.schema().fields().iter().map(|f| f.name().clone());
+    assert!(names.eq(header.iter()));
+    let mut at = 0;
+    for batch in builder.build().unwrap() {
+        let batch = batch.unwrap();
+        for row in 0..batch.num_rows() {
+            assert_eq!(name(&batch, 1, row), found[at][1]);
+            for (k, expected) in found[at].iter().enumerate().skip(2) {
+                let array = batch.column(k);
+                let value = if array.is_null(row) {
+                    String::new()
+                } else if k % 2 == 0 {
+                    let value = array.as_primitive::<Float64Type>().value(row);
+                    assert_eq!(expected.parse(), Ok(value));
+                    continue;
+                } else {
+                    let value = array.as_primitive::<Float32Type>().value(row);
+                    assert_eq!(expected.parse(), Ok(value));
+                    continue;
+                };
+                assert_eq!(value, expected, "row {at}, column {k}");
+            }
+            at += 1;
+        }
+    }
+    assert_eq!(at, found.len());
+}

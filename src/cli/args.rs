@@ -97,8 +97,8 @@ Reads:   settings, station list, report files.
 Prints:  period, share of reports used, polygons, strongest convergence and spin-up, stations that reported least.
 Writes:  polygons.csv (a row for each time and polygon; other formats with --format), polygon_summary.csv (a row for \
 each polygon: mean, standard deviation, extremes, share beyond 1.96 standard errors), mesh.geojson, stations.csv, \
-summary.json. Files appear only \
-when they are whole.
+summary.json; with --kinematics also kinematics.csv (mean wind, deformation, curvature and shear vorticity and more, a \
+row for each time and polygon). Files appear only when they are whole.
 
 Settings file (defaults in brackets):
   name                        name of the network
@@ -318,7 +318,7 @@ pub struct EstimateArgs {
     #[arg(long, value_name = "PARTS", default_value = "all")]
     pub errors: Parts,
     /// Write kinematics.csv (or .parquet) too: mean wind, deformation, curvature and shear and more of each polygon
-    #[arg(long)]
+    #[arg(long, conflicts_with = "summary_only")]
     pub kinematics: bool,
     /// Take all reports as they are, without checks
     #[arg(long)]

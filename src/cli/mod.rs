@@ -187,7 +187,9 @@ fn polygons(args: &PolygonsArgs) -> Result<Status, Error> {
 
 fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
     use_threads(args.threads);
-    let setup = Setup::read(&args.network, &Overrides::from(args))?;
+    let mut setup = Setup::read(&args.network, &Overrides::from(args))?;
+    // Without a series there is no file for them.
+    setup.settings.kinematics.write &= !args.summary_only;
     if setup.built.polygons.is_empty() {
         return Err(Error::Network(format!(
             "none of {} polygons is within the limits; `gyremesh polygons` lists the reasons",

@@ -191,6 +191,7 @@ fn settings(settings: &Settings) -> Value {
             "level": analysis.level,
         },
         "errors": settings.errors,
+        "kinematics": settings.kinematics,
         "check": settings.screen.then_some(&settings.check),
         "polygons": {
             "triangles": settings.polygons.triangles,
