@@ -49,9 +49,9 @@ impl SamplingConstants {
         }
         let squared = area * area;
         Self {
-            // Rounding may leave a variance of nothing just below 0.
-            along: (sum.along / squared).max(0.0),
-            across: (sum.across / squared).max(0.0),
+            // One of them may be below 0 where p is near 2; their sum for what isotropy allows is not.
+            along: sum.along / squared,
+            across: sum.across / squared,
             mixed: sum.mixed / squared,
         }
     }
@@ -61,8 +61,9 @@ impl SamplingConstants {
     pub fn variances(&self, structure: &StructureFunction) -> [f64; 3] {
         let (l, t) = (structure.longitudinal, structure.transverse);
         [
-            l * self.along + t * self.across,
-            l * self.across + t * self.along,
+            // Rounding may leave a variance of nothing just below 0.
+            (l * self.along + t * self.across).max(0.0),
+            (l * self.across + t * self.along).max(0.0),
             (l - t) * self.mixed,
         ]
     }
