@@ -5,7 +5,7 @@ use std::time::Duration;
 
 use clap::{Args as ClapArgs, Parser, Subcommand};
 
-use crate::settings::Overrides;
+use crate::settings::{MeansBy, MeansSettings, Overrides};
 use crate::time::Time;
 use crate::units;
 
@@ -135,6 +135,8 @@ label: start, middle or end of the window [end], averaging
               structure function; prior_difference [4.5 m2/s2], prior_distance [30 km], prior_exponent [2/3]
   [kinematics]  write: true for kinematics.csv or .parquet [false]; least_speed [1 m/s]: no curvature, shear or \
 diffluence in weaker mean winds
+  [means]     by: hour, day, month or period [none]; zone: UTC, +08:00 or Asia/Hong_Kong [UTC]
+  [[periods]] name, from, to (RFC 3339, both included): for means by period
   [check]     speed_suspect [75 m/s], speed_fail [100 m/s], starting_speed [sensor.calm_below], displacement of \
 reports with a position: a length or any [20 km], gap: reports further apart do not follow each other [70 min], off: \
 tests not to make []
@@ -320,6 +322,9 @@ pub struct EstimateArgs {
     /// Write kinematics.csv (or .parquet) too: mean wind, deformation, curvature and shear and more of each polygon
     #[arg(long, conflicts_with = "summary_only")]
     pub kinematics: bool,
+    /// Write polygon_means.csv too: means of each polygon by hour of the day, calendar day, calendar month or named period
+    #[arg(long, value_name = "WHAT", value_parser = means_by)]
+    pub by: Option<MeansBy>,
     /// Take all reports as they are, without checks
     #[arg(long)]
     pub no_screen: bool,
@@ -336,6 +341,13 @@ pub struct EstimateArgs {
     /// Print no summary and no progress; warnings remain
     #[arg(long, short)]
     pub quiet: bool,
+}
+
+fn means_by(text: &str) -> Result<MeansBy, String> {
+    let found = MeansSettings::WORDS.iter().find(|w| w.0 == text);
+    found
+        .map(|w| w.1)
+        .ok_or_else(|| format!("`{text}` is none of hour, day, month, period"))
 }
 
 /// Parts of the errors.
@@ -420,6 +432,7 @@ impl From<&EstimateArgs> for Overrides {
             no_screen: args.no_screen,
             instrument_errors: args.errors == Parts::Instrument,
             kinematics: args.kinematics,
+            by: args.by,
         }
     }
 }

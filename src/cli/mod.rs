@@ -18,8 +18,8 @@ use self::expect::Expectation;
 use crate::error::{Error, ErrorKind, nearest_name};
 use crate::output::{
     FlaggedRows, Formats, OutputSet, calibration_csv, calibration_json, corrected_list,
-    corrected_list_section, corrections_of, maintenance_csv, mesh_csv, mesh_geojson, reading_json,
-    series, stations_csv, structure_csv, summary_csv, summary_json,
+    corrected_list_section, corrections_of, maintenance_csv, means_csv, mesh_csv, mesh_geojson,
+    reading_json, series, stations_csv, structure_csv, summary_csv, summary_json,
 };
 use crate::pipeline::{self, CalibrationOutcome, Reading, Setup, Sources};
 use crate::report::InputOrder;
@@ -234,6 +234,9 @@ fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
         "polygon_summary.csv",
         summary_csv(&setup, &outcome).as_bytes(),
     )?;
+    if setup.settings.means.by.is_some() {
+        set.put("polygon_means.csv", means_csv(&setup, &outcome).as_bytes())?;
+    }
     if setup.settings.errors.complete {
         set.put("structure.csv", structure_csv(&outcome).as_bytes())?;
     }

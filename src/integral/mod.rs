@@ -13,6 +13,7 @@ mod discovery;
 mod earth;
 mod extremes;
 mod fit_books;
+mod group_means;
 mod lanes;
 mod mean_error;
 mod moments;
@@ -37,6 +38,7 @@ pub use discovery::{
 pub use earth::{OMEGA, SelfTest, earth_rotation, planetary_vorticity, self_test};
 pub use extremes::{Extremes, Peak};
 pub use fit_books::{FitBook, FitBooks};
+pub use group_means::{Group, GroupMeans};
 pub use mean_error::MeanError;
 pub use moments::{MomentConstants, MomentCovariance, PAIRS, mean_weights};
 pub use sampling::{PairCovariance, Sampling, SamplingConstants};

@@ -3,7 +3,7 @@
 use zmij::Buffer;
 
 use crate::check::Flag;
-use crate::integral::{EstimateBlock, Sense};
+use crate::integral::{EstimateBlock, Group, RunStatistics, Sense};
 use crate::pipeline::{Outcome, Setup};
 use crate::polygon::StationPolygon;
 use crate::station::Network;
@@ -228,6 +228,33 @@ pub fn stations_csv(setup: &Setup, outcome: &Outcome) -> String {
 #[must_use]
 pub fn summary_csv(setup: &Setup, outcome: &Outcome) -> String {
     let mut out = String::from("polygon");
+    out.push_str(&statistics_columns());
+    out.push('\n');
+    statistics_rows(&mut out, setup, &outcome.statistics, "");
+    out
+}
+
+/// `polygon_means.csv`: the same for each hour, day, month or period.
+#[must_use]
+pub fn means_csv(setup: &Setup, outcome: &Outcome) -> String {
+    let mut out = format!("group,polygon{}\n", statistics_columns());
+    for (&group, statistics) in &outcome.means.0 {
+        let name = match group {
+            Group::Hour(hour) => format!("{hour:02}"),
+            Group::Month(year, month) => format!("{year:04}-{month:02}"),
+            Group::Day(year, month, day) => format!("{year:04}-{month:02}-{day:02}"),
+            Group::Period(k) => {
+                let period = setup.settings.means.periods.get(k);
+                period.map_or_else(String::new, |p| quoted(&p.name))
+            }
+        };
+        statistics_rows(&mut out, setup, statistics, &(name + ","));
+    }
+    out
+}
+
+fn statistics_columns() -> String {
+    let mut out = String::new();
     for quantity in ["vorticity", "divergence"] {
         for column in [
             "values",
@@ -246,8 +273,11 @@ pub fn summary_csv(setup: &Setup, outcome: &Outcome) -> String {
             out.push_str(column);
         }
     }
-    out.push('\n');
-    let statistics = &outcome.statistics;
+    out
+}
+
+/// A row for each polygon, each after `before`.
+fn statistics_rows(out: &mut String, setup: &Setup, statistics: &RunStatistics, before: &str) {
     for ((polygon, vorticity), divergence) in setup
         .built
         .polygons
@@ -255,6 +285,7 @@ pub fn summary_csv(setup: &Setup, outcome: &Outcome) -> String {
         .zip(&statistics.vorticity)
         .zip(&statistics.divergence)
     {
+        out.push_str(before);
         out.push_str(&quoted(&polygon.id));
         for s in [vorticity, divergence] {
             let there = |value: f64| optional((s.count > 0).then_some(value));
@@ -278,7 +309,6 @@ pub fn summary_csv(setup: &Setup, outcome: &Outcome) -> String {
         }
         out.push('\n');
     }
-    out
 }
 
 /// `mesh.csv`: shape and use of every polygon, without any report.

@@ -8,7 +8,8 @@ use crate::align::{AlignBooks, Aligner, StationSensors, WindBlock, block_times, 
 use crate::check::Flag;
 use crate::integral::{
     ErrorBudget, ErrorParts, EstimateBlock, Extremes, FalseDiscovery, FitBooks, FitColumn,
-    RunStatistics, Sampling, SecondOpinion, complete_errors, estimate, find_significant,
+    GroupMeans, RunStatistics, Sampling, SecondOpinion, complete_errors, estimate,
+    find_significant,
 };
 use crate::kinematics::{Kinematics, KinematicsBlock};
 use crate::report::{Rounding, SpeedStep};
@@ -32,6 +33,7 @@ pub(super) struct Estimation<'a> {
     pub(super) values: Vec<u64>,
     pub(super) extremes: Extremes,
     pub(super) statistics: RunStatistics,
+    pub(super) means: GroupMeans,
     pub(super) fits: FitBooks,
     pub(super) structure: StructureState,
     rule: FalseDiscovery,
@@ -54,6 +56,7 @@ impl<'a> Estimation<'a> {
             values: vec![0; setup.network.len()],
             extremes: Extremes::default(),
             statistics: RunStatistics::default(),
+            means: GroupMeans::default(),
             fits: FitBooks::default(),
             structure: StructureState::new(setup),
             kinematics: kinematics(setup),
@@ -91,13 +94,15 @@ impl<'a> Estimation<'a> {
         let models = self.structure.advance(&winds);
         let (structure, rule) = (&self.structure, &self.rule);
         let kinematics = self.kinematics.as_ref();
-        let results: Vec<(Extremes, RunStatistics, FitBooks, T)> = winds
+        let results: Vec<(Extremes, RunStatistics, GroupMeans, FitBooks, T)> = winds
             .par_iter()
             .zip(models)
             .map(|(winds, models)| {
                 let block = estimate_complete(setup, structure, rule, winds, &models);
                 let peaks = Extremes::of(&block, &setup.planetary);
-                let sums = RunStatistics::of(&block, &structure.lasting(&models));
+                let lasting = structure.lasting(&models);
+                let sums = RunStatistics::of(&block, &lasting);
+                let means = GroupMeans::of(&block, &lasting, &setup.settings.means);
                 let kinematics = kinematics.map(|k| {
                     let model = structure.model.as_ref();
                     k.of(
@@ -107,7 +112,7 @@ impl<'a> Estimation<'a> {
                     )
                 });
                 let encoded = encode(&block, kinematics.as_ref());
-                (peaks, sums, FitBooks::of(&block), encoded)
+                (peaks, sums, means, FitBooks::of(&block), encoded)
             })
             .collect();
 
@@ -118,9 +123,10 @@ impl<'a> Estimation<'a> {
         }
         self.structure.keep_last(winds);
         let mut encoded = Vec::with_capacity(results.len());
-        for (peaks, sums, fits, result) in results {
+        for (peaks, sums, means, fits, result) in results {
             self.extremes.merge(&peaks);
             self.statistics.merge(&sums);
+            self.means.merge(&means);
             self.fits.merge(&fits);
             encoded.push(result);
         }

@@ -6,7 +6,7 @@ use super::estimation::Estimation;
 use super::{Reading, Setup, Windows};
 use crate::align::Period;
 use crate::error::Error;
-use crate::integral::{EstimateBlock, Extremes, FitBook, FitBooks, RunStatistics};
+use crate::integral::{EstimateBlock, Extremes, FitBook, FitBooks, GroupMeans, RunStatistics};
 use crate::kinematics::KinematicsBlock;
 use crate::polygon::StationPolygon;
 use crate::report::{InputOrder, ReportFiles, ReportTable};
@@ -35,6 +35,8 @@ pub struct Outcome {
     pub extremes: Extremes,
     /// Statistics of each polygon.
     pub statistics: RunStatistics,
+    /// The same by hour, day, month or period, if the settings ask for it.
+    pub means: GroupMeans,
     /// Linear fits beside the line integrals of polygons with more than three stations.
     pub fits: FitBooks,
     /// The structure function at the end of each day and of the run; empty where it was not asked for.
@@ -132,6 +134,7 @@ pub fn run<T: Send>(
         height_factors: estimation.sensors.height_factors,
         extremes: estimation.extremes,
         statistics: estimation.statistics,
+        means: estimation.means,
         fits: estimation.fits,
         structure: estimation.structure.reports,
     })

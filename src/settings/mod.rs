@@ -9,6 +9,7 @@ mod check;
 mod check_keys;
 mod errors;
 mod kinematics;
+mod means;
 mod path;
 mod read;
 mod reports;
@@ -20,6 +21,7 @@ use std::time::Duration;
 
 use crate::align::HeightReduction;
 use crate::error::Place;
+use crate::input::Zone;
 use crate::report::ReportFormat;
 use crate::station::Catalogue;
 use crate::structure::StructureSettings;
@@ -50,6 +52,8 @@ pub struct Settings {
     pub errors: ErrorSettings,
     /// Whether the kinematics of each polygon are written, and from which speed on.
     pub kinematics: KinematicsSettings,
+    /// Over which times values are averaged.
+    pub means: MeansSettings,
     /// What the calibration leaves out.
     pub calibration: CalibrationChoice,
     /// Limits of the tests of the reports.
@@ -148,6 +152,52 @@ impl Default for KinematicsSettings {
             least_speed: 1.0,
         }
     }
+}
+
+/// What values are averaged by.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, serde::Serialize)]
+#[serde(rename_all = "snake_case")]
+pub enum MeansBy {
+    /// By hour of the day, over all days.
+    Hour,
+    /// By calendar day.
+    Day,
+    /// By calendar month.
+    Month,
+    /// By named period.
+    Period,
+}
+
+/// A named period, both ends included.
+#[derive(Debug, Clone, PartialEq)]
+pub struct NamedPeriod {
+    /// Its name.
+    pub name: String,
+    /// First time.
+    pub from: Time,
+    /// Last time.
+    pub to: Time,
+}
+
+/// Averages over times.
+#[derive(Debug, Clone, PartialEq)]
+pub struct MeansSettings {
+    /// What by; `None` for no averages.
+    pub by: Option<MeansBy>,
+    /// Whose clock tells hours, days and months.
+    pub zone: Zone,
+    /// The named periods.
+    pub periods: Vec<NamedPeriod>,
+}
+
+impl MeansSettings {
+    /// The words of the settings.
+    pub const WORDS: [(&'static str, MeansBy); 4] = [
+        ("hour", MeansBy::Hour),
+        ("day", MeansBy::Day),
+        ("month", MeansBy::Month),
+        ("period", MeansBy::Period),
+    ];
 }
 
 /// What the calibration leaves out: sectors of wind direction, degrees, from and to clockwise, in which a station stands
