@@ -350,12 +350,9 @@ fn closed_forms() {
     ];
     let c = 1e-4;
     let of = |at: fn(f64, f64) -> (f64, f64)| {
-        let winds: Vec<(f64, f64)> = points.iter().map(|&(x, y)| at(c_of(x), c_of(y))).collect();
+        let winds: Vec<(f64, f64)> = points.iter().map(|&(x, y)| at(c * x, c * y)).collect();
         in_plane(&points, &winds)
     };
-    fn c_of(x: f64) -> f64 {
-        1e-4 * x
-    }
     for (wind, expected) in [
         (of(|x, y| (-y, x)), [2.0 * c, 0.0, 0.0, 0.0]),
         (of(|x, y| (x, -y)), [0.0, 0.0, 2.0 * c, 0.0]),

@@ -111,13 +111,15 @@ mod tests {
             gradient: [1.0, 2.0, 3.0, 5.0],
         };
         let state = State::new(&wind, &of_forms);
-        assert_eq!(state.values, [1.0, 2.0, 1.0, 6.0, -4.0, 5.0]);
+        for (found, expected) in state.values.iter().zip([1.0, 2.0, 1.0, 6.0, -4.0, 5.0]) {
+            assert!((found - expected).abs() < 1e-15);
+        }
         for (a, row) in rows.iter().enumerate() {
             for (b, other) in rows.iter().enumerate() {
                 let mut sum = 0.0;
-                for i in 0..6 {
-                    for j in 0..6 {
-                        sum += row[i] * full(i, j) * other[j];
+                for (i, x) in row.iter().enumerate() {
+                    for (j, y) in other.iter().enumerate() {
+                        sum += x * full(i, j) * y;
                     }
                 }
                 assert!((state.covariance[a][b] - sum).abs() < 1e-14, "{a} {b}");
