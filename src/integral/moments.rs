@@ -60,7 +60,7 @@ pub struct MomentConstants([Symmetric; 6]);
 impl MomentConstants {
     /// Those of a closed outline in units of the reference distance; the area by which the gradient is divided likewise.
     ///
-    /// - **Method**: the derivatives have their contrast on the edges ([`edge_pair`]). Integrals of r^p e eᵀ over the area
+    /// - **Method**: the derivatives have their contrast on the edges (`edge_pair`). Integrals of r^p e eᵀ over the area
     ///   become integrals along the edges, since ∇·(f d) = (p + 2) f for f of degree p in d, and once more for the
     ///   second area.
     /// - **Accuracy**: 10⁻³ or better (fine sums in the test, which are no better themselves).
