@@ -11,8 +11,24 @@
 //!
 //! # Do the intervals hold?
 //!
-//! On simulated fields they are counted by `tests/kinematics_coverage.rs`, against the same quantity of the true area
-//! means.
+//! Shares of simulated true values within the 95 % intervals, least, mean and largest of 486 classes (spectra from k^(−5/3)
+//! to k^(−3), divergent share 0 to 1, 3 to 150 km, regular to clustered, with and without a mean wind; 49 stations), against
+//! the same quantity of the true area means (`tests/kinematics_coverage.rs`):
+//!
+//! | Quantity | Share, % |
+//! |---|---|
+//! | mean wind: components, speed, direction | 93.1, 95.0, 96.9 |
+//! | stretching, shearing, Rossby number | 93.2, 95.0, 96.9 |
+//! | axis of dilatation | 93.2, 95.2, 96.9 |
+//! | curvature and shear vorticity, diffluence, downwind acceleration | 93.4, 95.2, 96.6 |
+//! | contraction rate | 94.0, 95.6, 96.7 |
+//! | total deformation | 95.4, 97.0, 98.2 |
+//! | Okubo-Weiss | 90.8, 95.1, 98.7 |
+//! | stretching of vorticity | 90.8, 95.1, 100 |
+//!
+//! In 162 more classes the sensors err by as much as the wind varies (1 m/s): the axis holds in 92 to 94 %, total
+//! deformation in 91 to 96 %, curvature and the like in 95 to 98 %, the two products (Okubo-Weiss, stretching of vorticity) in
+//! 95 to 100 %, the others as above. The asymptotic contraction rate was given in 0.2 % of all cases and held in 96 % of these.
 
 mod frame;
 mod quantity;
