@@ -101,7 +101,10 @@ fn main() {
             ],
         ),
         ("Parquet, complete errors", &["--format", "parquet"]),
-        ("the same, unscreened", &["--format", "parquet", "--no-screen"]),
+        (
+            "the same, unscreened",
+            &["--format", "parquet", "--no-screen"],
+        ),
         ("CSV, complete errors", &["--format", "csv"]),
     ];
     let mut parse = data_frame(&reports);

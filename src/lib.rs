@@ -49,6 +49,7 @@
 //! - [`structure`]: how winds differ with distance and time; what the error bars contain.
 //! - [`polygon`]: triangles, rings, regions; shape and coefficient rows.
 //! - [`integral`]: area means with their errors.
+//! - [`kinematics`]: deformation, curvature and shear and the like of each polygon.
 //! - [`pipeline`]: joins them; [`output`] writes; [`cli`] speaks.
 //!
 //! # Accuracy
@@ -68,6 +69,7 @@ pub mod cli;
 pub mod error;
 pub mod input;
 pub mod integral;
+pub mod kinematics;
 pub mod output;
 pub mod pipeline;
 pub mod polygon;

@@ -492,3 +492,23 @@ fn a_real_week_of_three_airports() {
         .unwrap();
     assert_eq!(hour[10], "9");
 }
+
+/// Off unless asked for, by the option or by the settings.
+#[test]
+fn kinematics_are_written_where_asked_for() {
+    let plain = Site::new(STATIONS, REPORTS, "");
+    let run = plain.run("estimate", &[]);
+    assert_eq!(run.status, 0, "{}", run.err);
+    assert!(!plain.path("out/kinematics.csv").exists());
+    assert_eq!(plain.run("estimate", &["--kinematics"]).status, 0);
+    let by_option = fs::read(plain.path("out/kinematics.csv")).unwrap();
+    let section = "[kinematics]\nwrite = true\n";
+    let asked = Site::new(STATIONS, REPORTS, section);
+    let run = asked.run("estimate", &[]);
+    assert_eq!(run.status, 0, "{}", run.err);
+    assert!(by_option == fs::read(asked.path("out/kinematics.csv")).unwrap());
+    let wrong = Site::new(STATIONS, REPORTS, "[kinematics]\nleast_sped = \"2 m/s\"\n");
+    let run = wrong.run("estimate", &[]);
+    assert_eq!(run.status, 2);
+    assert!(run.err.contains("least_speed"), "{}", run.err);
+}

@@ -42,12 +42,12 @@ fn sound_winds_pass_and_their_variances_hold() {
         let check = SpatialCheck::new(&case.network, spacing, NeighbourLimits::default());
         for (block, models) in &blocks {
             for t in (0..block.times.len()).step_by(12) {
-                for s in 0..STATIONS {
+                for (s, sums) in of_station.iter_mut().enumerate() {
                     let size = check.deviation(block, models, s, t).unwrap().size();
                     squares += size * size;
                     count += 1.0;
-                    of_station[s].0 += size * size;
-                    of_station[s].1 += 1.0;
+                    sums.0 += size * size;
+                    sums.1 += 1.0;
                 }
             }
         }

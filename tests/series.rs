@@ -268,3 +268,180 @@ fn summary_only_writes_no_series() {
         assert!(read(all.path()) == read(only.path()), "{name}");
     }
 }
+
+/// `kinematics.csv` has the rows of `polygons.csv`; curvature and shear vorticity sum to its vorticity, and the Rossby
+/// number times its f is it; `kinematics.parquet` holds the same numbers, and no number of threads changes a byte.
+#[test]
+fn kinematics_beside_the_series() {
+    let out = tempfile::tempdir().unwrap();
+    let options = ["--kinematics", "--format", "csv,parquet", "--threads"];
+    let folders = ["1", "3"].map(|threads| {
+        let folder = out.path().join(threads);
+        estimate(&folder, &[options.as_slice(), &[threads]].concat());
+        folder
+    });
+    for name in ["kinematics.csv", "kinematics.parquet", "polygons.csv"] {
+        let [one, three] = folders
+            .each_ref()
+            .map(|f| std::fs::read(f.join(name)).unwrap());
+        assert!(one == three, "{name}");
+    }
+    let folder = &folders[0];
+    let (polygons, found) = (
+        rows(&folder.join("polygons.csv")),
+        rows(&folder.join("kinematics.csv")),
+    );
+    let header = csv::Reader::from_path(folder.join("kinematics.csv"))
+        .unwrap()
+        .headers()
+        .unwrap()
+        .clone();
+    let column = |name: &str| header.iter().position(|h| h == name).unwrap();
+    assert_eq!(polygons.len(), found.len());
+    let (mut with_parts, mut without) = (0, 0);
+    for (polygon, row) in polygons.iter().zip(&found) {
+        assert_eq!((&polygon[0], &polygon[1]), (&row[0], &row[1]));
+        let number = |name: &str| row[column(name)].parse::<f64>();
+        assert_eq!(polygon[4].is_empty(), number("stretching").is_err());
+        let Ok(vorticity) = polygon[4].parse::<f64>() else {
+            assert!(row.iter().skip(2).all(str::is_empty));
+            continue;
+        };
+        let f: f64 = polygon[8].parse().unwrap();
+        let rossby = number("rossby_number").unwrap();
+        assert!((rossby * f - vorticity).abs() < 1e-15);
+        let error: f64 = polygon[5].parse().unwrap();
+        // Written with seven digits.
+        assert!((number("rossby_number_se").unwrap() * f / error - 1.0).abs() < 1e-6);
+        match (number("curvature_vorticity"), number("shear_vorticity")) {
+            (Ok(curvature), Ok(shear)) => {
+                assert!((curvature + shear - vorticity).abs() < 1e-15);
+                assert!(number("mean_speed").unwrap() >= 1.0);
+                with_parts += 1;
+            }
+            _ => without += 1,
+        }
+    }
+    assert!(with_parts > 10_000 && without > 0, "{with_parts} {without}");
+
+    let file = File::open(folder.join("kinematics.parquet")).unwrap();
+    let builder = ParquetRecordBatchReaderBuilder::try_new(file).unwrap();
+    let names = builder.schema().fields().iter().map(|f| f.name().clone());
+    assert!(names.eq(header.iter()));
+    let mut at = 0;
+    for batch in builder.build().unwrap() {
+        let batch = batch.unwrap();
+        for row in 0..batch.num_rows() {
+            assert_eq!(name(&batch, 1, row), found[at][1]);
+            for (k, expected) in found[at].iter().enumerate().skip(2) {
+                let array = batch.column(k);
+                let value = if array.is_null(row) {
+                    String::new()
+                } else if k % 2 == 0 {
+                    let value = array.as_primitive::<Float64Type>().value(row);
+                    assert_eq!(expected.parse(), Ok(value));
+                    continue;
+                } else {
+                    let value = array.as_primitive::<Float32Type>().value(row);
+                    assert_eq!(expected.parse(), Ok(value));
+                    continue;
+                };
+                assert_eq!(value, expected, "row {at}, column {k}");
+            }
+            at += 1;
+        }
+    }
+    assert_eq!(at, found.len());
+}
+
+/// Means by hour, day and named period against the series itself; every value is in one hour and in one day.
+#[test]
+fn means_by_group() {
+    let out = tempfile::tempdir().unwrap();
+    // A copy of the demo's settings with periods and a zone; its files by their full names.
+    let demo = Path::new(env!("CARGO_MANIFEST_DIR")).join("networks/ostrin");
+    let settings = std::fs::read_to_string(demo.join("network.toml")).unwrap();
+    let reports = demo.join("../../examples/ostrin/reports.csv");
+    let settings = settings.replace(
+        "../../examples/ostrin/reports.csv",
+        reports.to_str().unwrap(),
+    );
+    let run = |by: &str, more: &str, threads: &str| -> std::path::PathBuf {
+        let folder = out.path().join(format!("{by}{threads}"));
+        std::fs::create_dir_all(&folder).unwrap();
+        for entry in std::fs::read_dir(&demo).unwrap() {
+            let file = entry.unwrap().path();
+            if file.is_file() {
+                std::fs::copy(&file, folder.join(file.file_name().unwrap())).unwrap();
+            }
+        }
+        let network = folder.join("network.toml");
+        std::fs::write(&network, format!("{settings}\n{more}")).unwrap();
+        let output = Command::new(env!("CARGO_BIN_EXE_gyremesh"))
+            .arg("estimate")
+            .arg(&network)
+            .args(["--quiet", "--by", by, "--threads", threads, "--out"])
+            .arg(folder.join("out"))
+            .output()
+            .unwrap();
+        let err = String::from_utf8_lossy(&output.stderr).into_owned();
+        assert_eq!(output.status.code(), Some(0), "{err}");
+        folder.join("out")
+    };
+    let periods = "[[periods]]\nname = \"morning\"\nfrom = \"2031-06-14T06:00:00Z\"\nto = \"2031-06-14T09:00:00Z\"\n\
+                   [[periods]]\nname = \"six\"\nfrom = \"2031-06-14T06:00:00Z\"\nto = \"2031-06-14T06:55:00Z\"\n";
+    let zone = "[means]\nzone = \"-02:00\"\n";
+    let by_hour = run("hour", zone, "1");
+    let all = divergences(&by_hour);
+    let means = |folder: &Path| rows(&folder.join("polygon_means.csv"));
+    // The columns of divergence follow group, polygon and the nine of vorticity.
+    let number = |row: &csv::StringRecord, k: usize| row[10 + k].parse::<f64>();
+    let check = |folder: &Path, in_group: &dyn Fn(&str, &str) -> bool| -> f64 {
+        let mut counted = 0.0;
+        for row in means(folder) {
+            let values = all.get(&row[1]).into_iter().flatten();
+            let of_group: Vec<&Divergence> =
+                values.filter(|v| in_group(&row[0], &v.time)).collect();
+            let n = of_group.len() as f64;
+            assert!((number(&row, 1).unwrap() - n).abs() < 0.5, "{row:?} {n}");
+            counted += n;
+            if n < 2.0 {
+                continue;
+            }
+            let mean = of_group.iter().map(|v| v.value).sum::<f64>() / n;
+            assert!((number(&row, 2).unwrap() - mean).abs() < 1e-15, "{row:?}");
+            let squares = of_group
+                .iter()
+                .map(|v| (v.value - mean).powi(2))
+                .sum::<f64>();
+            let sd = (squares / (n - 1.0)).sqrt();
+            assert!((number(&row, 4).unwrap() / sd - 1.0).abs() < 1e-9);
+            // Sensors and sites do not average out; the rest does in part, less than if each value stood alone.
+            let part = |k: usize| of_group.iter().map(move |v| v.parts[k]);
+            let persists = part(0).sum::<f64>() / n;
+            let passes = part(1).chain(part(2)).map(|p| p * p).sum::<f64>() / n;
+            let error = number(&row, 3).unwrap();
+            assert!(error < (persists * persists + passes).sqrt() * (1.0 + 1e-6));
+            assert!(error > (persists * persists + passes / n).sqrt() * (1.0 - 1e-6));
+        }
+        counted
+    };
+    let total: usize = all.values().map(Vec::len).sum();
+    // 00 UTC is 22 of the day before.
+    let hour = |group: &str, time: &str| {
+        let utc: u32 = time[11..13].parse().unwrap();
+        group.parse() == Ok((utc + 22) % 24)
+    };
+    assert!((check(&by_hour, &hour) - total as f64).abs() < 0.5);
+    let by_day = run("day", "", "1");
+    assert!((check(&by_day, &|group, time| time.starts_with(group)) - total as f64).abs() < 0.5);
+    let by_month = run("month", "", "1");
+    assert!(means(&by_month).iter().all(|row| &row[0] == "2031-06"));
+    let by_period = run("period", periods, "1");
+    check(&by_period, &|group, time| match group {
+        "six" => time[11..13] == *"06",
+        _ => ("2031-06-14T06:00:00Z"..="2031-06-14T09:00:00Z").contains(&time),
+    });
+    let again = run("period", periods, "3");
+    assert_eq!(means(&by_period), means(&again));
+}

@@ -5,7 +5,7 @@ use std::time::Duration;
 
 use clap::{Args as ClapArgs, Parser, Subcommand};
 
-use crate::settings::Overrides;
+use crate::settings::{MeansBy, MeansSettings, Overrides};
 use crate::time::Time;
 use crate::units;
 
@@ -97,8 +97,8 @@ Reads:   settings, station list, report files.
 Prints:  period, share of reports used, polygons, strongest convergence and spin-up, stations that reported least.
 Writes:  polygons.csv (a row for each time and polygon; other formats with --format), polygon_summary.csv (a row for \
 each polygon: mean, standard deviation, extremes, share beyond 1.96 standard errors), mesh.geojson, stations.csv, \
-summary.json. Files appear only \
-when they are whole.
+summary.json; with --kinematics also kinematics.csv (mean wind, deformation, curvature and shear vorticity and more, a \
+row for each time and polygon). Files appear only when they are whole.
 
 Settings file (defaults in brackets):
   name                        name of the network
@@ -133,6 +133,10 @@ label: start, middle or end of the window [end], averaging
               height (common height), profile: log or power [log], exponent [1/7]; level, such as 850 hPa
   [errors]    parts: all or instrument [all]; false_discovery_rate [0.05]; window [24 h] and memory [1 h] of the
               structure function; prior_difference [4.5 m2/s2], prior_distance [30 km], prior_exponent [2/3]
+  [kinematics]  write: true for kinematics.csv or .parquet [false]; least_speed [1 m/s]: no curvature, shear or \
+diffluence in weaker mean winds
+  [means]     by: hour, day, month or period [none]; zone: UTC, +08:00 or Asia/Hong_Kong [UTC]
+  [[periods]] name, from, to (RFC 3339, both included): for means by period
   [check]     speed_suspect [75 m/s], speed_fail [100 m/s], starting_speed [sensor.calm_below], displacement of \
 reports with a position: a length or any [20 km], gap: reports further apart do not follow each other [70 min], off: \
 tests not to make []
@@ -272,6 +276,10 @@ fn exponent(text: &str) -> Result<f64, String> {
 
 /// Options of `estimate`.
 #[derive(Debug, ClapArgs)]
+#[expect(
+    clippy::struct_excessive_bools,
+    reason = "each is a switch of the command line"
+)]
 pub struct EstimateArgs {
     /// Settings file
     pub network: PathBuf,
@@ -313,6 +321,12 @@ pub struct EstimateArgs {
     /// What the errors hold: the sensors and sites, the wind between the stations, and late reports; or the sensors alone
     #[arg(long, value_name = "PARTS", default_value = "all")]
     pub errors: Parts,
+    /// Write kinematics.csv (or .parquet) too: mean wind, deformation, curvature and shear and more of each polygon
+    #[arg(long, conflicts_with = "summary_only")]
+    pub kinematics: bool,
+    /// Write polygon_means.csv too: means of each polygon by hour of the day, calendar day, calendar month or named period
+    #[arg(long, value_name = "WHAT", value_parser = means_by)]
+    pub by: Option<MeansBy>,
     /// Take all reports as they are, without checks
     #[arg(long)]
     pub no_screen: bool,
@@ -329,6 +343,13 @@ pub struct EstimateArgs {
     /// Print no summary and no progress; warnings remain
     #[arg(long, short)]
     pub quiet: bool,
+}
+
+fn means_by(text: &str) -> Result<MeansBy, String> {
+    let found = MeansSettings::WORDS.iter().find(|w| w.0 == text);
+    found
+        .map(|w| w.1)
+        .ok_or_else(|| format!("`{text}` is none of hour, day, month, period"))
 }
 
 /// Parts of the errors.
@@ -412,6 +433,8 @@ impl From<&EstimateArgs> for Overrides {
             cache: args.cache.clone(),
             no_screen: args.no_screen,
             instrument_errors: args.errors == Parts::Instrument,
+            kinematics: args.kinematics,
+            by: args.by,
         }
     }
 }

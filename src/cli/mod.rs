@@ -18,8 +18,8 @@ use self::expect::Expectation;
 use crate::error::{Error, ErrorKind, nearest_name};
 use crate::output::{
     FlaggedRows, Formats, OutputSet, calibration_csv, calibration_json, corrected_list,
-    corrected_list_section, corrections_of, maintenance_csv, mesh_csv, mesh_geojson, reading_json,
-    series, stations_csv, structure_csv, summary_csv, summary_json,
+    corrected_list_section, corrections_of, maintenance_csv, means_csv, mesh_csv, mesh_geojson,
+    reading_json, series, stations_csv, structure_csv, summary_csv, summary_json,
 };
 use crate::pipeline::{self, CalibrationOutcome, Reading, Setup, Sources};
 use crate::report::InputOrder;
@@ -187,7 +187,9 @@ fn polygons(args: &PolygonsArgs) -> Result<Status, Error> {
 
 fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
     use_threads(args.threads);
-    let setup = Setup::read(&args.network, &Overrides::from(args))?;
+    let mut setup = Setup::read(&args.network, &Overrides::from(args))?;
+    // Without a series there is no file for them.
+    setup.settings.kinematics.write &= !args.summary_only;
     if setup.built.polygons.is_empty() {
         return Err(Error::Network(format!(
             "none of {} polygons is within the limits; `gyremesh polygons` lists the reasons",
@@ -209,7 +211,7 @@ fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
         let outcome = pipeline::run(
             &setup,
             order,
-            |block| encoder.encode(block),
+            |block, kinematics| encoder.encode(block, kinematics),
             |encoded| series_files.write(&mut set, encoded),
             |rows| bar.set_position(rows),
         )?;
@@ -235,6 +237,9 @@ fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
         "polygon_summary.csv",
         summary_csv(&setup, &outcome).as_bytes(),
     )?;
+    if setup.settings.means.by.is_some() {
+        set.put("polygon_means.csv", means_csv(&setup, &outcome).as_bytes())?;
+    }
     if setup.settings.errors.complete {
         set.put("structure.csv", structure_csv(&outcome).as_bytes())?;
     }

@@ -1,5 +1,6 @@
 //! Times as reports write them.
 
+use std::fmt;
 use std::time::Duration;
 
 use chrono::{DateTime, LocalResult, NaiveDate, NaiveDateTime, TimeZone};
@@ -75,6 +76,21 @@ impl Zone {
         text.parse().map(Self::Named).map_err(|_| {
             format!("`{text}` is no zone (UTC, an offset such as +08:00, or a name such as Asia/Hong_Kong expected)")
         })
+    }
+}
+
+impl fmt::Display for Zone {
+    /// As [`Zone::parse`] reads it.
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        match self {
+            Self::InText => f.write_str("in the text"),
+            Self::Fixed(0) => f.write_str("UTC"),
+            Self::Fixed(offset) => {
+                let (sign, size) = (if *offset < 0 { '-' } else { '+' }, offset.abs());
+                write!(f, "{sign}{:02}:{:02}", size / 3600, size / 60 % 60)
+            }
+            Self::Named(zone) => f.write_str(zone.name()),
+        }
     }
 }
 

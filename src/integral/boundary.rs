@@ -13,7 +13,7 @@ const GAUSS_4: [[f64; 2]; 4] = [
     [0.669_990_521_792_428_1, 0.326_072_577_431_273_1],
     [0.930_568_155_797_026_3, 0.173_927_422_568_726_93],
 ];
-const GAUSS_8: [[f64; 2]; 8] = [
+pub(super) const GAUSS_8: [[f64; 2]; 8] = [
     [0.019_855_071_751_231_884, 0.050_614_268_145_188_13],
     [0.101_666_761_293_186_63, 0.111_190_517_226_687_24],
     [0.237_233_795_041_835_5, 0.156_853_322_938_943_64],
@@ -36,11 +36,11 @@ const HALVINGS: u32 = 12;
 pub(super) struct Symmetric([f64; 3]);
 
 impl Symmetric {
-    fn plus(self, other: Self, factor: f64) -> Self {
+    pub(super) fn plus(self, other: Self, factor: f64) -> Self {
         Self(std::array::from_fn(|k| self.0[k] + factor * other.0[k]))
     }
 
-    fn times(self, factor: f64) -> Self {
+    pub(super) fn times(self, factor: f64) -> Self {
         Self(self.0.map(|m| m * factor))
     }
 
@@ -52,6 +52,10 @@ impl Symmetric {
 
     pub(super) fn trace(self) -> f64 {
         self.0[0] + self.0[2]
+    }
+
+    pub(super) fn entries(self) -> [f64; 3] {
+        self.0
     }
 }
 
@@ -157,7 +161,7 @@ pub(super) fn edge_and_point(e: &Segment, point: [f64; 2], p: f64) -> Symmetric 
 }
 
 /// Mean of r^p e eᵀ from a point over a segment.
-fn mean_along(point: [f64; 2], e: &Segment, p: f64) -> Symmetric {
+pub(super) fn mean_along(point: [f64; 2], e: &Segment, p: f64) -> Symmetric {
     mean_over(point, e.ends, p, HALVINGS)
 }
 
@@ -222,11 +226,11 @@ fn rule(distance: f64, length: f64) -> &'static [[f64; 2]] {
     }
 }
 
-fn minus(a: [f64; 2], b: [f64; 2]) -> [f64; 2] {
+pub(super) fn minus(a: [f64; 2], b: [f64; 2]) -> [f64; 2] {
     [a[0] - b[0], a[1] - b[1]]
 }
 
-fn along(ends: [[f64; 2]; 2], share: f64) -> [f64; 2] {
+pub(super) fn along(ends: [[f64; 2]; 2], share: f64) -> [f64; 2] {
     let d = minus(ends[1], ends[0]);
     [ends[0][0] + share * d[0], ends[0][1] + share * d[1]]
 }

@@ -101,7 +101,7 @@ pub fn complete_errors(
                     // No branch in here, so that it vectorises.
                     for t in times.clone() {
                         let own = se[t] * se[t] + squared_weights * sites[t];
-                        let between = longitudinal[t] * of_l + transverse[t] * of_t;
+                        let between = (longitudinal[t] * of_l + transverse[t] * of_t).max(0.0);
                         instrument[t] = own.sqrt();
                         sampled[t] = between.sqrt();
                         timed[t] = timing[t].sqrt();

@@ -5,6 +5,7 @@ use std::sync::OnceLock;
 use rayon::prelude::*;
 
 use super::boundary::{Segment, edge_pair};
+use super::moments::MomentConstants;
 use crate::polygon::{EdgeSet, StationPolygon};
 use crate::station::Position;
 use crate::structure::{Exponent, LocalPlane, StructureFunction};
@@ -48,9 +49,9 @@ impl SamplingConstants {
         }
         let squared = area * area;
         Self {
-            // Rounding may leave a variance of nothing just below 0.
-            along: (sum.along / squared).max(0.0),
-            across: (sum.across / squared).max(0.0),
+            // One of them may be below 0 where p is near 2; their sum for what isotropy allows is not.
+            along: sum.along / squared,
+            across: sum.across / squared,
             mixed: sum.mixed / squared,
         }
     }
@@ -60,8 +61,9 @@ impl SamplingConstants {
     pub fn variances(&self, structure: &StructureFunction) -> [f64; 3] {
         let (l, t) = (structure.longitudinal, structure.transverse);
         [
-            l * self.along + t * self.across,
-            l * self.across + t * self.along,
+            // Rounding may leave a variance of nothing just below 0.
+            (l * self.along + t * self.across).max(0.0),
+            (l * self.across + t * self.along).max(0.0),
             (l - t) * self.mixed,
         ]
     }
@@ -97,6 +99,7 @@ pub struct Sampling {
     outlines: Vec<Outline>,
     positions: Vec<Position>,
     constants: Vec<OnceLock<Vec<SamplingConstants>>>,
+    pub(super) moments: Vec<OnceLock<Vec<MomentConstants>>>,
 }
 
 #[derive(Debug)]
@@ -140,6 +143,7 @@ impl Sampling {
             outlines,
             positions: positions.to_vec(),
             constants: (0..Exponent::COUNT).map(|_| OnceLock::new()).collect(),
+            moments: (0..Exponent::COUNT).map(|_| OnceLock::new()).collect(),
         }
     }
 
@@ -168,6 +172,16 @@ impl Sampling {
     #[must_use]
     pub fn mean_edge(&self, polygon: usize) -> f64 {
         self.outlines[polygon].mean_edge
+    }
+
+    /// Number of polygons.
+    pub(super) fn polygons(&self) -> usize {
+        self.outlines.len()
+    }
+
+    /// Area of a polygon, m².
+    pub(super) fn area(&self, polygon: usize) -> f64 {
+        self.outlines[polygon].area
     }
 
     /// The reference distance, m.

@@ -326,7 +326,7 @@ pub fn quadratic(places: &[[f64; 2]], centre: [f64; 2]) -> Result<Vec<[f64; 2]>,
 }
 
 /// Centroid of the area inside closed paths.
-fn centroid(segments: &[Segment]) -> [f64; 2] {
+pub(super) fn centroid(segments: &[Segment]) -> [f64; 2] {
     let (mut area, mut x, mut y) = (0.0, 0.0, 0.0);
     for e in segments {
         let [a, b] = e.ends;

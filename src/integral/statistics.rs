@@ -1,5 +1,7 @@
 //! What a polygon's values come to over a run.
 
+use std::ops::Range;
+
 use super::{ErrorParts, EstimateBlock, MeanError, lanes};
 use crate::check::Flag;
 use crate::time::Time;
@@ -109,8 +111,14 @@ impl RunStatistics {
     /// timing last, s.
     #[must_use]
     pub fn of(block: &EstimateBlock, lasting: &[f64]) -> Self {
+        Self::of_times(block, lasting, 0..block.times.len())
+    }
+
+    /// Those of a part of its times.
+    #[must_use]
+    pub fn of_times(block: &EstimateBlock, lasting: &[f64], times: Range<usize>) -> Self {
         // With the widest vectors that the processor has.
-        pulp::Arch::new().dispatch(|| Self::of_columns(block, lasting))
+        pulp::Arch::new().dispatch(|| Self::of_columns(block, lasting, times.clone()))
     }
 
     #[expect(
@@ -118,12 +126,12 @@ impl RunStatistics {
         reason = "it must become part of the caller's vector code"
     )]
     #[inline(always)]
-    fn of_columns(block: &EstimateBlock, lasting: &[f64]) -> Self {
+    fn of_columns(block: &EstimateBlock, lasting: &[f64], part: Range<usize>) -> Self {
         let n = block.times.len();
         let mut out = Self::default();
         let [vorticity, divergence] = &block.significant;
         for (polygon, &lasting) in lasting.iter().enumerate() {
-            let cells = polygon * n..(polygon + 1) * n;
+            let cells = polygon * n + part.start..polygon * n + part.end;
             let flags = &block.flag[cells.clone()];
             let all_good = flags.iter().all(|&flag| flag < Flag::Fail);
             let of = |values: &[f64], parts: &ErrorParts, significant: &[bool]| {
@@ -136,11 +144,11 @@ impl RunStatistics {
                     Statistics::of(values, times, called, error)
                 };
                 if all_good {
-                    return statistics(columns, &block.times);
+                    return statistics(columns, &block.times[part.clone()]);
                 }
                 let columns = columns.map(|column| good(column, flags));
                 let columns: [&[f64]; 4] = std::array::from_fn(|k| columns[k].as_slice());
-                statistics(columns, &good(&block.times, flags))
+                statistics(columns, &good(&block.times[part.clone()], flags))
             };
             let budget = &block.budget;
             out.vorticity

@@ -4,7 +4,7 @@ use zmij::Buffer;
 
 use super::reason::Reasons;
 use crate::check::Test;
-use crate::integral::{Cause, EstimateBlock, Sense};
+use crate::integral::{Cause, EstimateBlock, Group, RunStatistics, Sense};
 use crate::pipeline::{Outcome, Setup};
 use crate::polygon::StationPolygon;
 use crate::station::Network;
@@ -272,6 +272,38 @@ pub fn stations_csv(setup: &Setup, outcome: &Outcome) -> String {
 #[must_use]
 pub fn summary_csv(setup: &Setup, outcome: &Outcome) -> String {
     let mut out = String::from("polygon");
+    out.push_str(&statistics_columns());
+    for cause in Cause::NAMES {
+        out.push(',');
+        out.push_str(cause);
+    }
+    out.push('\n');
+    let causes = Some(outcome.causes.0.as_slice());
+    statistics_rows(&mut out, setup, outcome, &outcome.statistics, causes, "");
+    out
+}
+
+/// `polygon_means.csv`: the same for each hour, day, month or period.
+#[must_use]
+pub fn means_csv(setup: &Setup, outcome: &Outcome) -> String {
+    let mut out = format!("group,polygon{}\n", statistics_columns());
+    for (&group, statistics) in &outcome.means.0 {
+        let name = match group {
+            Group::Hour(hour) => format!("{hour:02}"),
+            Group::Month(year, month) => format!("{year:04}-{month:02}"),
+            Group::Day(year, month, day) => format!("{year:04}-{month:02}-{day:02}"),
+            Group::Period(k) => {
+                let period = setup.settings.means.periods.get(k);
+                period.map_or_else(String::new, |p| quoted(&p.name))
+            }
+        };
+        statistics_rows(&mut out, setup, outcome, statistics, None, &(name + ","));
+    }
+    out
+}
+
+fn statistics_columns() -> String {
+    let mut out = String::new();
     for quantity in ["vorticity", "divergence"] {
         for column in [
             "values",
@@ -290,22 +322,28 @@ pub fn summary_csv(setup: &Setup, outcome: &Outcome) -> String {
             out.push_str(column);
         }
     }
-    for cause in Cause::NAMES {
-        out.push(',');
-        out.push_str(cause);
-    }
-    out.push('\n');
-    let statistics = &outcome.statistics;
-    let extra = outcome.extra.iter().map(|extra| &extra.polygon);
-    for (((polygon, vorticity), divergence), causes) in setup
+    out
+}
+
+/// A row for each polygon, each after `before`, with the counts of its causes where they are given.
+fn statistics_rows(
+    out: &mut String,
+    setup: &Setup,
+    outcome: &Outcome,
+    statistics: &RunStatistics,
+    causes: Option<&[[u64; 5]]>,
+    before: &str,
+) {
+    for (p, ((polygon, vorticity), divergence)) in setup
         .built
         .polygons
         .iter()
-        .chain(extra)
+        .chain(outcome.extra.iter().map(|extra| &extra.polygon))
         .zip(&statistics.vorticity)
         .zip(&statistics.divergence)
-        .zip(&outcome.causes.0)
+        .enumerate()
     {
+        out.push_str(before);
         out.push_str(&quoted(&polygon.id));
         for s in [vorticity, divergence] {
             let there = |value: f64| optional((s.count > 0).then_some(value));
@@ -327,13 +365,16 @@ pub fn summary_csv(setup: &Setup, outcome: &Outcome) -> String {
                 out.push_str(&field);
             }
         }
-        for n in causes {
+        for n in causes
+            .and_then(|causes| causes.get(p))
+            .into_iter()
+            .flatten()
+        {
             out.push(',');
             out.push_str(&n.to_string());
         }
         out.push('\n');
     }
-    out
 }
 
 /// `mesh.csv`: shape and use of every polygon, without any report.

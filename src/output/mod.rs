@@ -6,6 +6,7 @@ mod file;
 mod fits;
 mod flagged;
 mod geojson;
+mod kinematics;
 #[cfg(feature = "parquet")]
 mod parquet;
 mod reading;
@@ -23,7 +24,7 @@ pub use calibration::{
     corrections_of, maintenance_csv, what,
 };
 pub(crate) use csv::quoted;
-pub use csv::{PolygonRows, mesh_csv, stations_csv, summary_csv};
+pub use csv::{PolygonRows, means_csv, mesh_csv, stations_csv, summary_csv};
 pub use file::OutputSet;
 pub use flagged::FlaggedRows;
 pub use geojson::{mesh_geojson, outline_geometry};

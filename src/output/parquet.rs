@@ -78,6 +78,34 @@ enum EncodedColumn {
 /// The library's refusal.
 pub fn parquet_series(setup: &Setup) -> Result<(ParquetRows, ParquetFile)> {
     let schema = Arc::new(schema());
+    let (properties, factory, file) = start_file(setup, &schema, &NUMBERS, &STEPS)?;
+    let of_reasons = Reasons::new(&setup.network);
+    let rows = ParquetRows {
+        fixed: FixedColumns::new(setup, &schema, properties),
+        schema,
+        factory,
+        senses: Arc::new(StringArray::from(vec![
+            Sense::Cyclonic.name(),
+            Sense::Anticyclonic.name(),
+        ])),
+        reasons: Arc::new(StringArray::from(of_reasons.words().to_vec())),
+        of_reasons,
+        planetary: setup.planetary.clone(),
+        complete: setup.settings.errors.complete,
+    };
+    Ok((rows, file))
+}
+
+/// Starts a file with columns of numbers and of steps.
+///
+/// # Errors
+/// The library's refusal.
+pub(super) fn start_file(
+    setup: &Setup,
+    schema: &SchemaRef,
+    numbers: &[&str],
+    steps: &[&str],
+) -> Result<(WriterProperties, ArrowRowGroupWriterFactory, ParquetFile)> {
     let mut properties = WriterProperties::builder()
         .set_compression(Compression::ZSTD(ZstdLevel::try_new(1)?))
         .set_statistics_enabled(EnabledStatistics::Chunk)
@@ -96,8 +124,8 @@ pub fn parquet_series(setup: &Setup) -> Result<(ParquetRows, ParquetFile)> {
             ),
         ]));
     for (names, encoding) in [
-        (NUMBERS.as_slice(), Encoding::BYTE_STREAM_SPLIT),
-        (STEPS.as_slice(), Encoding::DELTA_BINARY_PACKED),
+        (numbers, Encoding::BYTE_STREAM_SPLIT),
+        (steps, Encoding::DELTA_BINARY_PACKED),
     ] {
         for &name in names {
             properties = properties
@@ -106,23 +134,29 @@ pub fn parquet_series(setup: &Setup) -> Result<(ParquetRows, ParquetFile)> {
         }
     }
     let properties = properties.build();
-    let writer = ArrowWriter::try_new(Vec::new(), Arc::clone(&schema), Some(properties.clone()))?;
+    let writer = ArrowWriter::try_new(Vec::new(), Arc::clone(schema), Some(properties.clone()))?;
     let (writer, factory) = writer.into_serialized_writer()?;
-    let of_reasons = Reasons::new(&setup.network);
-    let rows = ParquetRows {
-        fixed: FixedColumns::new(setup, &schema, properties),
-        schema,
-        factory,
-        senses: Arc::new(StringArray::from(vec![
-            Sense::Cyclonic.name(),
-            Sense::Anticyclonic.name(),
-        ])),
-        reasons: Arc::new(StringArray::from(of_reasons.words().to_vec())),
-        of_reasons,
-        planetary: setup.planetary.clone(),
-        complete: setup.settings.errors.complete,
-    };
-    Ok((rows, ParquetFile { writer }))
+    Ok((properties, factory, ParquetFile { writer }))
+}
+
+/// Encodes columns, each of one leaf, as a row group.
+///
+/// # Errors
+/// The library's refusal.
+pub(super) fn encode_columns(
+    factory: &ArrowRowGroupWriterFactory,
+    schema: &SchemaRef,
+    columns: &[ArrayRef],
+) -> Result<RowGroup> {
+    let writers = factory.create_column_writers(0)?;
+    let mut encoded = Vec::with_capacity(columns.len());
+    for ((field, column), mut writer) in schema.fields().iter().zip(columns).zip(writers) {
+        for leaf in compute_leaves(field, column)? {
+            writer.write(&leaf)?;
+        }
+        encoded.push(EncodedColumn::Own(Box::new(writer.close()?)));
+    }
+    Ok(RowGroup(encoded))
 }
 
 /// The columns of the contract, with their units.

@@ -5,10 +5,14 @@ use std::path::Path;
 use super::csv::PolygonRows;
 use super::file::OutputSet;
 use super::fits::FitRows;
+use super::kinematics::KinematicsRows;
+#[cfg(feature = "parquet")]
+use super::kinematics::{KinematicsParquet, kinematics_parquet};
 #[cfg(feature = "parquet")]
 use super::parquet::{ParquetFile, ParquetRows, RowGroup, parquet_series};
 use crate::error::Error;
 use crate::integral::EstimateBlock;
+use crate::kinematics::KinematicsBlock;
 use crate::pipeline::Setup;
 
 /// Formats of the series.
@@ -24,24 +28,33 @@ pub struct Formats {
 pub struct SeriesEncoder {
     csv: Option<PolygonRows>,
     fits: Option<FitRows>,
+    kinematics: Option<KinematicsRows>,
     #[cfg(feature = "parquet")]
     parquet: Option<ParquetRows>,
+    #[cfg(feature = "parquet")]
+    kinematics_parquet: Option<KinematicsParquet>,
 }
 
 /// The files that the bytes go to, in the order of time.
 pub struct SeriesFiles {
     csv: Option<usize>,
     fits: Option<usize>,
+    kinematics: Option<usize>,
     #[cfg(feature = "parquet")]
     parquet: Option<(usize, ParquetFile)>,
+    #[cfg(feature = "parquet")]
+    kinematics_parquet: Option<(usize, ParquetFile)>,
 }
 
 /// An encoded block.
 pub struct EncodedBlock {
     csv: Option<Vec<u8>>,
     fits: Option<Vec<u8>>,
+    kinematics: Option<Vec<u8>>,
     #[cfg(feature = "parquet")]
     parquet: Option<parquet::errors::Result<RowGroup>>,
+    #[cfg(feature = "parquet")]
+    kinematics_parquet: Option<parquet::errors::Result<RowGroup>>,
 }
 
 /// Starts the files of the series.
@@ -71,6 +84,14 @@ pub fn series(
     } else {
         None
     };
+    let with_kinematics = setup.settings.kinematics.write;
+    let kinematics_file = if with_kinematics && formats.csv {
+        let file = set.create("kinematics.csv")?;
+        set.write(file, KinematicsRows::header().as_bytes())?;
+        Some(file)
+    } else {
+        None
+    };
     #[cfg(not(feature = "parquet"))]
     if formats.parquet {
         let reason = std::io::Error::other("this program was built without the feature `parquet`");
@@ -84,17 +105,31 @@ pub fn series(
     } else {
         (None, None)
     };
+    #[cfg(feature = "parquet")]
+    let (kinematics_rows, kinematics_table) = if formats.parquet && with_kinematics {
+        let file = set.create("kinematics.parquet")?;
+        let (rows, parquet) = kinematics_parquet(setup).map_err(|e| parquet_error(&e))?;
+        (Some(rows), Some((file, parquet)))
+    } else {
+        (None, None)
+    };
     let encoder = SeriesEncoder {
         csv: formats.csv.then(|| PolygonRows::new(setup)),
         fits: with_fits.then(|| FitRows::new(setup)),
+        kinematics: kinematics_file.map(|_| KinematicsRows::new(setup)),
         #[cfg(feature = "parquet")]
         parquet: parquet_rows,
+        #[cfg(feature = "parquet")]
+        kinematics_parquet: kinematics_rows,
     };
     let files = SeriesFiles {
         csv: csv_file,
         fits: fits_file,
+        kinematics: kinematics_file,
         #[cfg(feature = "parquet")]
         parquet: parquet_file,
+        #[cfg(feature = "parquet")]
+        kinematics_parquet: kinematics_table,
     };
     Ok((encoder, files))
 }
@@ -110,12 +145,27 @@ fn parquet_error(error: &parquet::errors::ParquetError) -> Error {
 impl SeriesEncoder {
     /// Encodes a block in all formats.
     #[must_use]
-    pub fn encode(&self, block: &EstimateBlock) -> EncodedBlock {
+    pub fn encode(
+        &self,
+        block: &EstimateBlock,
+        kinematics: Option<&KinematicsBlock>,
+    ) -> EncodedBlock {
         EncodedBlock {
             csv: self.csv.as_ref().map(|rows| rows.encode(block)),
             fits: self.fits.as_ref().map(|rows| rows.encode(block)),
+            kinematics: self
+                .kinematics
+                .as_ref()
+                .zip(kinematics)
+                .map(|(rows, block)| rows.encode(block)),
             #[cfg(feature = "parquet")]
             parquet: self.parquet.as_ref().map(|rows| rows.encode(block)),
+            #[cfg(feature = "parquet")]
+            kinematics_parquet: self
+                .kinematics_parquet
+                .as_ref()
+                .zip(kinematics)
+                .map(|(rows, block)| rows.encode(block)),
         }
     }
 }
@@ -132,12 +182,20 @@ impl SeriesFiles {
         if let (Some(file), Some(bytes)) = (self.fits, &block.fits) {
             set.write(file, bytes)?;
         }
+        if let (Some(file), Some(bytes)) = (self.kinematics, &block.kinematics) {
+            set.write(file, bytes)?;
+        }
         #[cfg(feature = "parquet")]
-        if let (Some((file, parquet)), Some(group)) = (&mut self.parquet, block.parquet) {
-            let bytes = group
-                .and_then(|group| parquet.append(group))
-                .map_err(|e| parquet_error(&e))?;
-            set.write(*file, &bytes)?;
+        for (table, group) in [
+            (&mut self.parquet, block.parquet),
+            (&mut self.kinematics_parquet, block.kinematics_parquet),
+        ] {
+            if let (Some((file, parquet)), Some(group)) = (table, group) {
+                let bytes = group
+                    .and_then(|group| parquet.append(group))
+                    .map_err(|e| parquet_error(&e))?;
+                set.write(*file, &bytes)?;
+            }
         }
         Ok(())
     }
@@ -152,7 +210,7 @@ impl SeriesFiles {
     )]
     pub fn finish(self, set: &mut OutputSet) -> Result<(), Error> {
         #[cfg(feature = "parquet")]
-        if let Some((file, parquet)) = self.parquet {
+        for (file, parquet) in self.parquet.into_iter().chain(self.kinematics_parquet) {
             let bytes = parquet.finish().map_err(|e| parquet_error(&e))?;
             set.write(file, &bytes)?;
         }

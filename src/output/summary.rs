@@ -7,7 +7,7 @@ use serde_json::{Value, json};
 use super::{CAUTION, error_bars};
 use crate::integral::{Peak, Statistics};
 use crate::pipeline::{Outcome, Setup};
-use crate::settings::{AlignMethod, ReportSource, Settings};
+use crate::settings::{AlignMethod, MeansSettings, ReportSource, Settings};
 
 /// The summary of a run, as JSON. It holds nothing that differs between two runs of the same input.
 #[must_use]
@@ -133,6 +133,19 @@ fn peak(setup: &Setup, outcome: &Outcome, peak: Option<Peak>) -> Option<Value> {
     }))
 }
 
+fn means(means: &MeansSettings) -> Option<Value> {
+    let by = means.by?;
+    let periods = means
+        .periods
+        .iter()
+        .map(|p| json!({ "name": p.name, "from": p.from.to_string(), "to": p.to.to_string() }));
+    Some(json!({
+        "by": by,
+        "zone": means.zone.to_string(),
+        "periods": periods.collect::<Vec<_>>(),
+    }))
+}
+
 fn settings(settings: &Settings) -> Value {
     let analysis = &settings.analysis;
     let method = match analysis.method {
@@ -190,6 +203,8 @@ fn settings(settings: &Settings) -> Value {
             "level": analysis.level,
         },
         "errors": settings.errors,
+        "kinematics": settings.kinematics,
+        "means": means(&settings.means),
         "check": settings.screen.then_some(&settings.check),
         "polygons": {
             "triangles": settings.polygons.triangles,

@@ -88,7 +88,7 @@ fn with_errors(
 
 /// What the complete errors of the polygons need beside the structure function.
 pub(super) struct ErrorModel {
-    sampling: Sampling,
+    pub(super) sampling: Sampling,
     /// For each polygon with more than three stations.
     opinions: Vec<(usize, SecondOpinion)>,
 }

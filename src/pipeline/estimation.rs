@@ -9,12 +9,13 @@ use super::remesh::Remesh;
 use super::{Setup, Window};
 use crate::align::{AlignBooks, Aligner, StationSensors, WindBlock, block_times, height_factor};
 use crate::integral::{
-    CauseBooks, EstimateBlock, Extremes, FalseDiscovery, FitBooks, RunStatistics,
+    CauseBooks, EstimateBlock, Extremes, FalseDiscovery, FitBooks, GroupMeans, RunStatistics,
 };
+use crate::kinematics::{Kinematics, KinematicsBlock};
 use crate::report::{Rounding, SpeedStep};
 use crate::settings::{Missing, SensorErrors, Settings};
 use crate::spatial::SpatialCheck;
-use crate::station::{Correction, Network, Station};
+use crate::station::{Correction, Network, Position, Station};
 use crate::warning::Warning;
 
 /// What is kept from window to window.
@@ -34,6 +35,8 @@ pub(super) struct Estimation<'a> {
     errors: Option<ErrorModel>,
     pub(super) remesh: Option<Remesh>,
     rule: FalseDiscovery,
+    /// Where they are asked for.
+    kinematics: Option<Kinematics>,
 }
 
 impl<'a> Estimation<'a> {
@@ -63,6 +66,7 @@ impl<'a> Estimation<'a> {
                 .map(|m| ErrorModel::new(&setup.built, &setup.network, m)),
             remesh: (settings.missing == Missing::Remesh)
                 .then(|| Remesh::new(setup, spacing.filter(|_| complete))),
+            kinematics: kinematics(setup),
             rule: FalseDiscovery::new(
                 setup.settings.errors.false_discovery_rate,
                 // A triangulation of n stations has fewer than 2 n triangles.
@@ -76,7 +80,7 @@ impl<'a> Estimation<'a> {
     pub(super) fn window<T: Send>(
         &mut self,
         window: &Window,
-        encode: &(impl Fn(&EstimateBlock) -> T + Sync),
+        encode: &(impl Fn(&EstimateBlock, Option<&KinematicsBlock>) -> T + Sync),
     ) -> Vec<T> {
         let setup = self.setup;
         let table = &window.table;
@@ -117,14 +121,19 @@ impl<'a> Estimation<'a> {
             rule: &self.rule,
             limits: &setup.settings.limits,
         };
+        let kinematics = self.kinematics.as_ref();
         let results: Vec<(Sums, T)> = winds
             .par_iter()
             .zip(models)
             .zip(holes)
             .map(|((winds, models), holes)| {
                 let (block, lasting) = common.estimate(winds, &models, holes);
-                let sums = Sums::of(&block, &setup.planetary, &lasting, polygons);
-                (sums, encode(&block))
+                let sums = Sums::of(setup, &block, &lasting, polygons);
+                let kinematics = kinematics.map(|k| {
+                    let sampling = common.errors.map(|e| (&e.sampling, models.as_slice()));
+                    k.of(winds, &block, sampling)
+                });
+                (sums, encode(&block, kinematics.as_ref()))
             })
             .collect();
 
@@ -153,29 +162,45 @@ impl<'a> Estimation<'a> {
     }
 }
 
+/// The frames of the polygons, if their kinematics are asked for.
+fn kinematics(setup: &Setup) -> Option<Kinematics> {
+    let settings = setup.settings.kinematics;
+    let positions = setup.network.stations().iter().map(|s| s.position);
+    let positions: Vec<Position> = positions.collect();
+    let (polygons, edges) = (&setup.built.polygons, &setup.built.edges);
+    settings
+        .write
+        .then(|| Kinematics::new(polygons, edges, &positions, &setup.planetary, settings))
+}
+
 /// What the estimates come to over the times.
 #[derive(Default)]
 pub(super) struct Sums {
     pub(super) extremes: Extremes,
     pub(super) statistics: RunStatistics,
+    pub(super) means: GroupMeans,
     pub(super) fits: FitBooks,
     pub(super) causes: CauseBooks,
 }
 
 impl Sums {
     /// Those of a block; polygons from `common` on are extra.
-    fn of(block: &EstimateBlock, planetary: &[f64], lasting: &[f64], common: usize) -> Self {
+    fn of(setup: &Setup, block: &EstimateBlock, lasting: &[f64], common: usize) -> Self {
         let extra = block.extra.iter().map(|extra| extra.planetary);
-        let planetary: Vec<f64> = planetary.iter().copied().chain(extra).collect();
+        let planetary: Vec<f64> = setup.planetary.iter().copied().chain(extra).collect();
         let mut sums = Self {
             extremes: Extremes::of(block, &planetary),
             statistics: RunStatistics::of(block, lasting),
+            means: GroupMeans::of(block, lasting, &setup.settings.means),
             fits: FitBooks::of(block),
             causes: CauseBooks::of(block, planetary.len()),
         };
         if !block.extra.is_empty() {
             sums.extremes.renumber(common, &block.extra);
             sums.statistics.renumber(common, &block.extra);
+            for statistics in sums.means.0.values_mut() {
+                statistics.renumber(common, &block.extra);
+            }
             sums.causes.renumber(common, &block.extra);
         }
         sums
@@ -184,6 +209,7 @@ impl Sums {
     fn merge(&mut self, later: &Self) {
         self.extremes.merge(&later.extremes);
         self.statistics.merge(&later.statistics);
+        self.means.merge(&later.means);
         self.fits.merge(&later.fits);
         self.causes.merge(&later.causes);
     }

@@ -8,9 +8,10 @@ use super::{Reading, Setup, Windows};
 use crate::align::Period;
 use crate::error::Error;
 use crate::integral::{
-    Attribution, CauseBooks, EstimateBlock, ExtraPolygon, Extremes, FitBook, FitBooks,
+    Attribution, CauseBooks, EstimateBlock, ExtraPolygon, Extremes, FitBook, FitBooks, GroupMeans,
     RunStatistics, attribute,
 };
+use crate::kinematics::KinematicsBlock;
 use crate::polygon::StationPolygon;
 use crate::report::{InputOrder, ReportFiles, ReportTable};
 use crate::settings::Settings;
@@ -44,6 +45,8 @@ pub struct Outcome {
     pub attributions: Vec<Attribution>,
     /// Why estimates are flagged, for each polygon.
     pub causes: CauseBooks,
+    /// The same by hour, day, month or period, if the settings ask for it.
+    pub means: GroupMeans,
     /// Linear fits beside the line integrals of polygons with more than three stations.
     pub fits: FitBooks,
     /// The structure function at the end of each day and of the run; empty where it was not asked for.
@@ -80,8 +83,8 @@ pub struct StructureReport {
     pub rows: Vec<StructureRow>,
 }
 
-/// Runs the main job on reports in the order of time, or in any order. `encode` turns a block of estimates into what
-/// `write` takes; blocks are encoded in parallel and written in the order of time, so the output depends neither on the
+/// Runs the main job on reports in the order of time, or in any order. `encode` turns a block of estimates, with its
+/// kinematics if the settings ask for them, into what `write` takes; blocks are encoded in parallel and written in the order of time, so the output depends neither on the
 /// number of threads nor on how the reports were read. `progress` hears how many rows have been read.
 ///
 /// While one window of time is estimated, the next one is read and the results of the one before are written.
@@ -93,7 +96,7 @@ pub struct StructureReport {
 pub fn run<T: Send>(
     setup: &Setup,
     order: InputOrder,
-    encode: impl Fn(&EstimateBlock) -> T + Sync,
+    encode: impl Fn(&EstimateBlock, Option<&KinematicsBlock>) -> T + Sync,
     mut write: impl FnMut(T) -> Result<(), Error> + Send,
     mut progress: impl FnMut(u64),
 ) -> Result<Outcome, Error> {
@@ -151,6 +154,7 @@ pub fn run<T: Send>(
         extremes: estimation.sums.extremes,
         attributions: attribute(&setup.built.polygons, &estimation.sums.statistics),
         statistics: estimation.sums.statistics,
+        means: estimation.sums.means,
         extra: estimation.remesh.map(|r| r.extra).unwrap_or_default(),
         causes: estimation.sums.causes,
         fits: estimation.sums.fits,

@@ -8,6 +8,8 @@ mod calibration;
 mod check;
 mod check_keys;
 mod errors;
+mod kinematics;
+mod means;
 mod path;
 mod read;
 mod reports;
@@ -20,6 +22,7 @@ use std::time::Duration;
 use crate::align::HeightReduction;
 use crate::check::Test;
 use crate::error::Place;
+use crate::input::Zone;
 use crate::report::ReportFormat;
 use crate::station::Catalogue;
 use crate::structure::StructureSettings;
@@ -48,6 +51,10 @@ pub struct Settings {
     pub analysis: Analysis,
     /// What the errors hold.
     pub errors: ErrorSettings,
+    /// Whether the kinematics of each polygon are written, and from which speed on.
+    pub kinematics: KinematicsSettings,
+    /// Over which times values are averaged.
+    pub means: MeansSettings,
     /// What the calibration leaves out.
     pub calibration: CalibrationChoice,
     /// Limits of the tests of the reports.
@@ -138,6 +145,70 @@ impl Default for ErrorSettings {
             structure: StructureSettings::default(),
         }
     }
+}
+
+/// Kinematics of each polygon.
+#[derive(Debug, Clone, Copy, PartialEq, serde::Serialize)]
+pub struct KinematicsSettings {
+    /// Whether they are written.
+    pub write: bool,
+    /// Mean wind below which nothing is said that depends on its direction, m/s. 1 m/s (`methods.md` 3).
+    pub least_speed: f64,
+}
+
+impl Default for KinematicsSettings {
+    fn default() -> Self {
+        Self {
+            write: false,
+            least_speed: 1.0,
+        }
+    }
+}
+
+/// What values are averaged by.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, serde::Serialize)]
+#[serde(rename_all = "snake_case")]
+pub enum MeansBy {
+    /// By hour of the day, over all days.
+    Hour,
+    /// By calendar day.
+    Day,
+    /// By calendar month.
+    Month,
+    /// By named period.
+    Period,
+}
+
+/// A named period, both ends included.
+#[derive(Debug, Clone, PartialEq)]
+pub struct NamedPeriod {
+    /// Its name.
+    pub name: String,
+    /// First time.
+    pub from: Time,
+    /// Last time.
+    pub to: Time,
+}
+
+/// Averages over times.
+#[derive(Debug, Clone, PartialEq)]
+pub struct MeansSettings {
+    /// What by; `None` for no averages.
+    pub by: Option<MeansBy>,
+    /// Whose clock tells hours, days and months.
+    pub zone: Zone,
+    /// The named periods.
+    pub periods: Vec<NamedPeriod>,
+}
+
+impl MeansSettings {
+    /// The words of the settings.
+    pub const WORDS: [(&'static str, MeansBy); 4] = [
+        ("hour", MeansBy::Hour),
+        ("day", MeansBy::Day),
+        ("month", MeansBy::Month),
+        ("period", MeansBy::Period),
+    ];
 }
 
 /// What the calibration leaves out: sectors of wind direction, degrees, from and to clockwise, in which a station stands

@@ -7,12 +7,14 @@ use super::analysis::analysis;
 use super::calibration::calibration;
 use super::check_keys::check;
 use super::errors::errors;
+use super::kinematics::kinematics;
+use super::means::means;
 use super::path::expand_path;
 use super::reports::{reports, text_format};
 use super::section::{Document, Section};
 use super::{
-    MEMORY, Missing, PolygonChoice, PolygonLimits, RegionParts, RegionSettings, RingSettings,
-    SensorErrors, Settings,
+    MEMORY, MeansBy, Missing, PolygonChoice, PolygonLimits, RegionParts, RegionSettings,
+    RingSettings, SensorErrors, Settings,
 };
 use crate::error::{Error, Problem};
 use crate::station::{Catalogue, StationColumns};
@@ -44,6 +46,10 @@ pub struct Overrides {
     pub cache: Option<PathBuf>,
     /// Errors of the instruments alone
     pub instrument_errors: bool,
+    /// `means.by`
+    pub by: Option<MeansBy>,
+    /// `kinematics.write = true`
+    pub kinematics: bool,
     /// Take the reports unchecked
     pub no_screen: bool,
 }
@@ -89,6 +95,8 @@ fn parse_settings(
         reports: reports(&mut root, base, &overrides.reports),
         analysis: analysis(root.section("analysis"), overrides),
         errors: errors(root.section("errors"), overrides),
+        kinematics: kinematics(root.section("kinematics"), overrides),
+        means: means(&mut root, overrides),
         calibration: calibration(root.section("calibration")),
         check: check(root.section("check"), sensor.calm_below),
         sensor,

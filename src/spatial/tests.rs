@@ -21,7 +21,7 @@ fn grid(side: i32, jitter: f64) -> Network {
             let latitude = 46.0 + 0.225 * f64::from(i) + off(3 * i + j);
             let longitude = 8.0 + 0.32 * f64::from(j) + off(i + 5 * j + 2);
             let position = Position::new(latitude, longitude).unwrap();
-            stations.push(Station::new(format!("S{}", side * i + j), position));
+            stations.push(Station::new(format!("S{:02}", side * i + j), position));
         }
     }
     Network::new(stations)

@@ -2,6 +2,7 @@
 
 use gyremesh::align::{Covariance, WindBlock};
 use gyremesh::check::Flag;
+use gyremesh::kinematics::LocalWind;
 use gyremesh::polygon::{BuiltPolygons, StationPolygon, build_polygons};
 use gyremesh::settings::{PolygonChoice, PolygonLimits};
 use gyremesh::station::Network;
@@ -148,6 +149,30 @@ impl Field {
 }
 
 impl Field {
+    /// For each line its part of the area integral of the wind, m³/s, of a polygon that has it on its outline with the
+    /// inside on the left: a cos θ + b sin θ is the divergence of k/k² (a sin θ − b cos θ).
+    pub fn area_parts(&self, places: &[(f64, f64)], lines: &[[usize; 2]]) -> Vec<[f64; 2]> {
+        let mut parts = vec![[0.0; 2]; lines.len()];
+        for wave in &self.0 {
+            let [kx, ky] = wave.k;
+            for (part, &[i, j]) in parts.iter_mut().zip(lines) {
+                let (a, b) = (places[i], places[j]);
+                let (p, q) = (kx * a.0 + ky * a.1, kx * b.0 + ky * b.1);
+                let along = q - p;
+                let mean = if along.abs() > 1e-4 {
+                    (wave.a * (p.cos() - q.cos()) - wave.b * (q.sin() - p.sin())) / along
+                } else {
+                    0.5 * (wave.a * (p.sin() + q.sin()) - wave.b * (p.cos() + q.cos()))
+                };
+                // k · n L / k².
+                let across = (kx * (b.1 - a.1) - ky * (b.0 - a.0)) / (kx * kx + ky * ky);
+                part[0] += mean * across * wave.direction[0];
+                part[1] += mean * across * wave.direction[1];
+            }
+        }
+        parts
+    }
+
     /// Winds at the places at `steps` times `dt` s apart: the waves are carried by the mean wind of each time, and each
     /// loses its phase in the time that its own wind takes across it. By place, then time; the mean wind is added.
     pub fn series(
@@ -255,8 +280,22 @@ impl Simulation {
         &self,
         times: usize,
         seed: u64,
-        mut report: impl FnMut((f64, f64), &mut ChaCha8Rng) -> (Wind, Covariance),
+        report: impl FnMut((f64, f64), &mut ChaCha8Rng) -> (Wind, Covariance),
     ) -> (WindBlock, Vec<Vec<[f64; 2]>>) {
+        self.simulate(times, seed, report, |_, integrals| {
+            let polygons = self.built.polygons.iter();
+            polygons.map(|p| self.truth(p, integrals)).collect()
+        })
+    }
+
+    /// [`Self::run`] with what `truth` makes of each field and its integrals along the edges.
+    fn simulate<T>(
+        &self,
+        times: usize,
+        seed: u64,
+        mut report: impl FnMut((f64, f64), &mut ChaCha8Rng) -> (Wind, Covariance),
+        of_field: impl Fn(&Field, &[[f64; 2]]) -> T,
+    ) -> (WindBlock, Vec<T>) {
         let mut random = ChaCha8Rng::seed_from_u64(seed);
         let hours =
             (0..i64::try_from(times).unwrap()).map(|k| Time::from_micros(k * 3_600_000_000));
@@ -269,13 +308,7 @@ impl Simulation {
             };
             let field = Field::new(&class, &mut random);
             let (winds, integrals) = field.sample(&self.places, &self.lines);
-            truth.push(
-                self.built
-                    .polygons
-                    .iter()
-                    .map(|p| self.truth(p, &integrals))
-                    .collect(),
-            );
+            truth.push(of_field(&field, &integrals));
             let local = self.plane.turn(&self.places, &winds);
             for (station, &wind) in local.iter().enumerate() {
                 if random.random_range(0.0..1.0) < self.class.dropouts {
@@ -290,23 +323,77 @@ impl Simulation {
 
     /// [`Self::run`] with Gaussian sensor errors of the class.
     pub fn noisy(&self, times: usize, seed: u64) -> (WindBlock, Vec<Vec<[f64; 2]>>) {
-        let sd = self.class.noise;
-        let covariance = Covariance {
-            uu: sd * sd,
-            uv: 0.0,
-            vv: sd * sd,
-        };
-        self.run(times, seed, |(u, v), random| {
-            let mut error = || -> f64 {
-                let e: f64 = StandardNormal.sample(random);
-                sd * e
-            };
-            let wind = Wind {
-                u: u + error(),
-                v: v + error(),
-            };
-            (wind, covariance)
-        })
+        self.run(times, seed, sensors(self.class.noise))
+    }
+
+    /// [`Self::noisy`] over a mean wind, with the true mean wind and gradient over each polygon in its own frame.
+    pub fn kinematics(
+        &self,
+        times: usize,
+        seed: u64,
+        mean: (f64, f64),
+    ) -> (WindBlock, Vec<Vec<LocalWind>>) {
+        let report = sensors(self.class.noise);
+        let mut simulation = self.simulate(times, seed, report, |field, integrals| {
+            let parts = field.area_parts(&self.places, &self.lines);
+            let polygons = self.built.polygons.iter();
+            polygons
+                .map(|p| self.local_truth(p, integrals, &parts, mean))
+                .collect()
+        });
+        // The mean wind of the plane, which no report of `simulate` has yet.
+        let over = self
+            .plane
+            .turn(&self.places, &vec![mean; self.places.len()]);
+        for (station, (u, v)) in over.into_iter().enumerate() {
+            for cell in simulation.0.of_station(station) {
+                simulation.0.u[cell] += u;
+                simulation.0.v[cell] += v;
+            }
+        }
+        simulation
+    }
+
+    fn local_truth(
+        &self,
+        polygon: &StationPolygon,
+        integrals: &[[f64; 2]],
+        parts: &[[f64; 2]],
+        over: (f64, f64),
+    ) -> LocalWind {
+        let (mut mean, mut gradient, mut area) = ([0.0; 2], [0.0; 4], 0.0);
+        for &directed in &polygon.path {
+            let (from, to, _) = self.built.edges.ends(directed);
+            let (a, b) = (self.places[from], self.places[to]);
+            let (dx, dy) = (b.0 - a.0, b.1 - a.1);
+            let length = dx.hypot(dy);
+            // Of the line from its first to its second end; the integrals know no direction.
+            let sign = if directed.forward { 1.0 } else { -1.0 };
+            let [u, v] = integrals[directed.edge];
+            mean[0] += sign * parts[directed.edge][0];
+            mean[1] += sign * parts[directed.edge][1];
+            for (g, term) in gradient.iter_mut().zip([u * dy, -u * dx, v * dy, -v * dx]) {
+                *g += term / length;
+            }
+            area += 0.5 * (a.0 * b.1 - b.0 * a.1);
+        }
+        // From the axes of the plane to those of the polygon's middle.
+        let stations = polygon.row.stations.iter().map(|&s| self.places[s]);
+        let n = polygon.row.stations.len() as f64;
+        let middle = stations.fold((0.0, 0.0), |m, p| (m.0 + p.0 / n, m.1 + p.1 / n));
+        let turned = self.plane.turn(&[middle], &[(1.0, 0.0)])[0];
+        let (cos, sin) = turned;
+        let rotate = |u: f64, v: f64| (u * cos - v * sin, v * cos + u * sin);
+        let (u, v) = rotate(mean[0] / area + over.0, mean[1] / area + over.1);
+        let [u_x, u_y, v_x, v_y] = gradient.map(|g| g / area);
+        // R G Rᵀ.
+        let (a, c) = rotate(u_x, v_x);
+        let (b, d) = rotate(u_y, v_y);
+        let ((u_x, u_y), (v_x, v_y)) = (rotate(a, b), rotate(c, d));
+        LocalWind {
+            mean: Wind { u, v },
+            gradient: [u_x, u_y, v_x, v_y],
+        }
     }
 
     fn truth(&self, polygon: &StationPolygon, integrals: &[[f64; 2]]) -> [f64; 2] {
@@ -322,6 +409,26 @@ impl Simulation {
             area += 0.5 * (a.0 * b.1 - b.0 * a.1);
         }
         [circulation / area, flux / area]
+    }
+}
+
+/// Reports with Gaussian errors of this standard deviation in either component.
+fn sensors(sd: f64) -> impl FnMut((f64, f64), &mut ChaCha8Rng) -> (Wind, Covariance) {
+    move |(u, v), random| {
+        let mut error = || -> f64 {
+            let e: f64 = StandardNormal.sample(random);
+            sd * e
+        };
+        let wind = Wind {
+            u: u + error(),
+            v: v + error(),
+        };
+        let covariance = Covariance {
+            uu: sd * sd,
+            uv: 0.0,
+            vv: sd * sd,
+        };
+        (wind, covariance)
     }
 }
 
