@@ -58,6 +58,8 @@ pub enum Fault {
     Slow,
     /// Speeds are too high.
     Fast,
+    /// Its gain was off, and is in order now.
+    PutRight,
     /// It does not follow its neighbours.
     Unexplained,
 }
@@ -157,6 +159,7 @@ impl Fault {
             Self::Unit { .. } => "unit",
             Self::Slow => "slow",
             Self::Fast => "fast",
+            Self::PutRight => "put_right",
             Self::Unexplained => "unexplained",
         }
     }
@@ -190,6 +193,7 @@ impl Fault {
             } => format!("{reported} taken for {taken}"),
             Self::Slow => "speeds too low".into(),
             Self::Fast => "speeds too high".into(),
+            Self::PutRight => "was off, in order now".into(),
             Self::Unexplained => "does not follow its neighbours".into(),
         }
     }
@@ -224,6 +228,7 @@ impl Fault {
             Self::Fast => {
                 "scale of the anemometer in the logger; height of the sensor; exposed site"
             }
+            Self::PutRight => "nothing on site; leave out or correct its earlier reports",
             Self::Unexplained => {
                 "exposure of the site; vane and anemometer; what else changed there"
             }

@@ -3,7 +3,7 @@
 use serde::Serialize;
 
 use super::cause::{Fault, cause_of_factor, cause_of_lag, cause_of_turn};
-use super::result::StationCalibration;
+use super::result::{Change, StationCalibration};
 use super::{CalibrationSettings, ClockLag, GainEstimate};
 use crate::polygon::StationPolygon;
 use crate::time::Time;
@@ -48,6 +48,8 @@ pub struct Ticket {
     pub unit: &'static str,
     /// First time after the change, with the interval; `None` if it was so all the time.
     pub since: Option<(Time, [Time; 2])>,
+    /// The states before, in words; empty if it was so all the time.
+    pub before: String,
     /// What it is seen by.
     pub evidence: String,
     /// Error of the station's wind, m/s.
@@ -127,6 +129,7 @@ fn no_gain(
         error: None,
         unit,
         since: None,
+        before: String::new(),
         evidence,
         wind_error: station.deviation.max(0.1),
     };
@@ -223,34 +226,86 @@ fn is_off(clock: &ClockLag, inside: bool, days: bool, interval: f64) -> bool {
         && left(clock.with_lag) <= leaves * left(clock.correlation)
 }
 
-/// Turn and factor of a station.
+/// Turn and factor of a station; if it has neither now but had, that.
 fn gain_tickets(
     s: usize,
     station: &StationCalibration,
     days: bool,
     declination: Option<f64>,
-) -> impl Iterator<Item = Ticket> {
-    let gain = station.gain;
-    let since = station.change.map(|c| (c.at, c.between));
+) -> Vec<Ticket> {
+    let Some(gain) = &station.gain else {
+        return Vec::new();
+    };
     let sure = if days { SURE } else { SURE_OF_DAY };
-    let turned = gain.and_then(|gain| turn_ticket(s, station, (&gain, sure), declination, since));
-    let scaled = gain.and_then(|gain| factor_ticket(s, station, (&gain, sure), since));
-    turned.into_iter().chain(scaled)
+    let of = |gain: &GainEstimate| {
+        let turned = turn_ticket(s, station, (gain, sure), declination);
+        turned
+            .into_iter()
+            .chain(factor_ticket(s, station, (gain, sure)))
+    };
+    let now: Vec<Ticket> = of(gain).collect();
+    if !now.is_empty() {
+        return now;
+    }
+    let past = station.changes.iter().rev();
+    let past = past.filter_map(|change| of(&change.before).next().map(|t| (change, t)));
+    let put_right = past.take(1).map(|(change, ticket)| Ticket {
+        fault: Fault::PutRight,
+        since: Some((change.at, change.between)),
+        before: history(&station.changes),
+        wind_error: 0.0,
+        ..ticket
+    });
+    put_right.collect()
 }
 
-type Since = Option<(Time, [Time; 2])>;
+/// A gain is the same as another if they differ by less: degrees, logarithm, and joint standard errors.
+const SAME: (f64, f64, f64) = (2.0, 0.04, 3.0);
+
+/// The change since which a value has been what it is now.
+fn since(
+    changes: &[Change],
+    is_same: impl Fn(&GainEstimate) -> bool,
+) -> (Option<(Time, [Time; 2])>, String) {
+    let before = changes.iter().rposition(|c| !is_same(&c.before));
+    let Some(k) = before else {
+        return (None, String::new());
+    };
+    let change = &changes[k];
+    let words = history(&changes[..=k]);
+    (Some((change.at, change.between)), words)
+}
+
+/// States in words, the earliest first.
+pub(super) fn history(changes: &[Change]) -> String {
+    let state = |c: &Change| {
+        let day: String = c.at.to_string().chars().take(10).collect();
+        let GainEstimate {
+            turn,
+            turn_se,
+            factor,
+            ..
+        } = c.before;
+        format!("{turn:+.1} ± {turn_se:.1} degrees, x {factor:.2} until {day}")
+    };
+    let states: Vec<String> = changes.iter().map(state).collect();
+    states.join("; ")
+}
 
 fn turn_ticket(
     s: usize,
     station: &StationCalibration,
     (gain, sure): (&GainEstimate, f64),
     declination: Option<f64>,
-    since: Since,
 ) -> Option<Ticket> {
     let half = gain.half_95 * gain.turn_se;
     if gain.turn.abs() < LEAST_TURN || gain.turn.abs() < sure * half {
         return None;
     }
+    let (since, before) = since(&station.changes, |before| {
+        let off = (before.turn - gain.turn).rem_euclid(360.0);
+        off.min(360.0 - off) < SAME.0.max(SAME.2 * before.turn_se.hypot(gain.turn_se))
+    });
     Some(Ticket {
         station: s,
         fault: cause_of_turn(gain.turn, half, declination),
@@ -258,6 +313,7 @@ fn turn_ticket(
         error: Some(gain.turn_se),
         unit: "degrees",
         since,
+        before,
         evidence: evidence(station),
         wind_error: 2.0 * station.speed * (0.5 * gain.turn).to_radians().sin().abs(),
     })
@@ -267,13 +323,16 @@ fn factor_ticket(
     s: usize,
     station: &StationCalibration,
     (gain, sure): (&GainEstimate, f64),
-    since: Since,
 ) -> Option<Ticket> {
     let log = gain.factor.ln();
     let half = gain.half_95 * gain.factor_se / gain.factor;
     if log.abs() < LEAST_LOG || log.abs() < sure * half {
         return None;
     }
+    let (since, before) = since(&station.changes, |before| {
+        let error = (before.factor_se / before.factor).hypot(gain.factor_se / gain.factor);
+        (before.factor / gain.factor).ln().abs() < SAME.1.max(SAME.2 * error)
+    });
     Some(Ticket {
         station: s,
         fault: cause_of_factor(gain.factor, half),
@@ -281,6 +340,7 @@ fn factor_ticket(
         error: Some(gain.factor_se),
         unit: "",
         since,
+        before,
         evidence: evidence(station),
         wind_error: station.speed * (gain.factor - 1.0).abs(),
     })

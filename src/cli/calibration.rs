@@ -80,6 +80,9 @@ fn ticket_text(out: &mut String, setup: &Setup, ticket: &Ticket, cost: &Cost) {
         let _ = writeln!(out, "  {name:<9} {}", cut(text, WIDTH - 12));
     };
     line("when", &since);
+    for state in ticket.before.split("; ").filter(|state| !state.is_empty()) {
+        line("before", state);
+    }
     line("evidence", &ticket.evidence);
     line("check", ticket.fault.to_check());
     line(

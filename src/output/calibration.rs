@@ -19,7 +19,7 @@ pub const GAUGE: &str = "Turns and factors are relative to the network's median:
 #[must_use]
 pub fn maintenance_csv(setup: &Setup, outcome: &CalibrationOutcome) -> String {
     let mut out = String::from(
-        "station,cause,what,size,standard_error,unit,since,since_earliest,since_latest,evidence,check,wind_error,\
+        "station,cause,what,size,standard_error,unit,since,since_earliest,since_latest,before,evidence,check,wind_error,\
          polygons,polygon_error_mean,polygon_error_largest\n",
     );
     for (ticket, cost) in outcome.calibration.tickets.iter().zip(&outcome.costs) {
@@ -37,6 +37,7 @@ pub fn maintenance_csv(setup: &Setup, outcome: &CalibrationOutcome) -> String {
             at,
             earliest,
             latest,
+            quoted(&ticket.before),
             quoted(&ticket.evidence),
             quoted(ticket.fault.to_check()),
             number(ticket.wind_error),
@@ -64,12 +65,12 @@ fn id(setup: &Setup, station: usize) -> &str {
     station.map_or("", |s| s.id.as_str())
 }
 
-/// `calibration.csv`: a row for each station. Turn: reported minus true direction, degrees clockwise; factor: reported over
+/// `calibration.csv`: a row for each station, its gain that after the last change. Turn: reported minus true direction, degrees clockwise; factor: reported over
 /// true speed; clock: reported minus true time, s.
 #[must_use]
 pub fn calibration_csv(setup: &Setup, outcome: &CalibrationOutcome) -> String {
     let mut out = String::from(
-        "station,turn,turn_se,factor,factor_se,half_95,changed,turn_before,factor_before,clock,clock_se,correlation,\
+        "station,turn,turn_se,factor,factor_se,half_95,changes,changed,turn_before,factor_before,before,clock,clock_se,correlation,\
          correlation_with_clock,misfit,spikes,deviation,mean_speed,inside,predicts,blocks,times,values,stuck,still,excluded\n",
     );
     for (station, found) in setup
@@ -79,8 +80,8 @@ pub fn calibration_csv(setup: &Setup, outcome: &CalibrationOutcome) -> String {
         .zip(&outcome.calibration.stations)
     {
         let gain = |f: fn(&GainEstimate) -> f64| optional(found.gain.as_ref().map(f));
-        let before =
-            |f: fn(&GainEstimate) -> f64| optional(found.change.as_ref().map(|c| f(&c.before)));
+        let last = found.changes.last();
+        let before = |f: fn(&GainEstimate) -> f64| optional(last.map(|c| f(&c.before)));
         let clock = found.clock;
         let fields = [
             quoted(&station.id),
@@ -89,9 +90,11 @@ pub fn calibration_csv(setup: &Setup, outcome: &CalibrationOutcome) -> String {
             gain(|g| g.factor),
             gain(|g| g.factor_se),
             gain(|g| g.half_95),
-            found.change.map_or_else(String::new, |c| c.at.to_string()),
+            found.changes.len().to_string(),
+            last.map_or_else(String::new, |c| c.at.to_string()),
             before(|g| g.turn),
             before(|g| g.factor),
+            quoted(&found.history()),
             optional(clock.map(|c| c.lag)),
             optional(clock.map(|c| c.error)),
             optional(clock.map(|c| c.correlation)),
@@ -130,6 +133,7 @@ pub fn calibration_json(setup: &Setup, outcome: &CalibrationOutcome) -> String {
             "since": t.since.map(|(at, [a, b])| json!({
                 "at": at.to_string(), "earliest": a.to_string(), "latest": b.to_string(),
             })),
+            "before": t.before,
             "evidence": t.evidence,
             "check": t.fault.to_check(),
             "wind_error": t.wind_error,
@@ -140,12 +144,12 @@ pub fn calibration_json(setup: &Setup, outcome: &CalibrationOutcome) -> String {
         json!({
             "station": s.id,
             "gain": found.gain,
-            "changed": found.change.map(|c| json!({
+            "changes": found.changes.iter().map(|c| json!({
                 "at": c.at.to_string(),
                 "earliest": c.between[0].to_string(),
                 "latest": c.between[1].to_string(),
                 "before": c.before,
-            })),
+            })).collect::<Vec<Value>>(),
             "clock": found.clock,
             "misfit": found.misfit,
             "spikes": found.spikes,

@@ -1,5 +1,8 @@
 //! Simulated networks with faults of sensors, and their calibration.
 
+use std::fmt::Write as _;
+use std::path::{Path, PathBuf};
+
 use gyremesh::align::{BLOCK_TIMES, Covariance, WindBlock};
 use gyremesh::calibration::{Calibration, CalibrationSettings, Calibrator};
 use gyremesh::check::Flag;
@@ -25,11 +28,17 @@ pub enum Planted {
     Scaled(f64),
     /// Turned from this share of the record on.
     TurnedLate(f64, f64),
+    /// Turned so far from each share of the record on.
+    Turns(&'static [(f64, f64)]),
     Reversed,
     Swapped,
     Mirrored,
     /// Steps that the clock is ahead.
     Clock(usize),
+    /// The same from one share of the record to another.
+    ClockInPart(usize, f64, f64),
+    /// s that the clock gains in a day; right in the middle of the record.
+    ClockDrift(f64),
     /// Share of the values.
     Spiking(f64),
     Stuck,
@@ -44,11 +53,13 @@ impl Planted {
             Self::Turned(_) => "turned",
             Self::Scaled(f) if (f - 1.9438).abs() < 0.01 => "unit (kt)",
             Self::Scaled(_) => "scaled",
-            Self::TurnedLate(..) => "turned late",
+            Self::TurnedLate(..) | Self::Turns(_) => "turned late",
             Self::Reversed => "reversed",
             Self::Swapped => "u, v swapped",
             Self::Mirrored => "mirrored",
             Self::Clock(_) => "clock 1 h",
+            Self::ClockInPart(..) => "daylight time",
+            Self::ClockDrift(_) => "clock drifts",
             Self::Spiking(_) => "spiking",
             Self::Stuck => "stuck",
             Self::Still => "still",
@@ -126,6 +137,13 @@ pub fn case(seed: u64, days: f64, dt: f64, planted: &[(usize, Planted)]) -> Case
                 let from = (share * steps as f64) as usize;
                 of[from..].iter_mut().for_each(|w| *w = turn(*w, d));
             }
+            Planted::Turns(turns) => {
+                for (k, w) in of.iter_mut().enumerate() {
+                    let share = k as f64 / steps as f64;
+                    let last = turns.iter().rfind(|t| t.0 <= share);
+                    *w = turn(*w, last.map_or(0.0, |t| t.1));
+                }
+            }
             Planted::Scaled(f) => of.iter_mut().for_each(|w| *w = (f * w.0, f * w.1)),
             Planted::Reversed => of.iter_mut().for_each(|w| *w = (-w.0, -w.1)),
             Planted::Swapped => of.iter_mut().for_each(|w| *w = (w.1, w.0)),
@@ -137,6 +155,30 @@ pub fn case(seed: u64, days: f64, dt: f64, planted: &[(usize, Planted)]) -> Case
                     } else {
                         (f64::NAN, f64::NAN)
                     };
+                }
+            }
+            Planted::ClockInPart(ahead, from, to) => {
+                for t in ahead..steps {
+                    if (from..to).contains(&(t as f64 / steps as f64)) {
+                        of[t] = truth[*s][t - ahead];
+                    }
+                }
+            }
+            Planted::ClockDrift(a_day) => {
+                let middle = 0.5 * steps as f64;
+                for (t, w) in of.iter_mut().enumerate() {
+                    // The report of time t was taken so much earlier.
+                    let at = t as f64 - a_day / 86_400.0 * (t as f64 - middle);
+                    let at = at.clamp(0.0, (steps - 2) as f64);
+                    #[allow(
+                        clippy::cast_possible_truncation,
+                        clippy::cast_sign_loss,
+                        reason = "clamped"
+                    )]
+                    let k = at as usize;
+                    let share = at - k as f64;
+                    let (a, b) = (truth[*s][k], truth[*s][k + 1]);
+                    *w = (a.0 + share * (b.0 - a.0), a.1 + share * (b.1 - a.1));
                 }
             }
             Planted::Spiking(share) => {
@@ -206,4 +248,42 @@ impl Case {
         let declinations = vec![Some(3.0); self.network.len()];
         calibrator.finish(&declinations)
     }
+
+    /// Writes stations, reports (times as they are; whole tenths of a degree and hundredths of m/s) and settings into a
+    /// folder; `settings` is what stands after the reports. Gives the path of the settings.
+    pub fn write(&self, folder: &Path, reports: &str, settings: &str) -> PathBuf {
+        let mut list = String::from("id,lat,lon\n");
+        for station in self.network.stations() {
+            let (lat, lon) = (station.position.latitude(), station.position.longitude());
+            writeln!(list, "{},{lat},{lon}", station.id).unwrap();
+        }
+        let mut rows = String::from("time,station,dir,speed\n");
+        for t in 0..self.winds[0].len() {
+            #[allow(clippy::cast_possible_truncation, reason = "some weeks in μs")]
+            let time = Time::from_micros(FIRST_DAY + (t as f64 * self.dt * 1e6) as i64);
+            for (station, of) in self.network.stations().iter().zip(&self.winds) {
+                let (u, v) = of[t];
+                if u.is_finite() {
+                    let from = (-u).atan2(-v).to_degrees().rem_euclid(360.0);
+                    let (id, speed) = (&station.id, u.hypot(v));
+                    writeln!(rows, "{time},{id},{from:.1},{speed:.2}").unwrap();
+                }
+            }
+        }
+        let text = format!(
+            "name = \"simulated\"\n[stations]\nfile = \"stations.csv\"\n\
+             columns = {{ id = \"id\", latitude = \"lat\", longitude = \"lon\" }}\n\
+             [[reports]]\nfiles = [\"reports.csv\"]\n\
+             columns = {{ station = \"station\", time = \"time\", direction = \"dir\", speed = \"speed\" }}\n\
+             speed_unit = \"m/s\"\n{reports}\n{settings}\n"
+        );
+        let path = folder.join("network.toml");
+        std::fs::write(folder.join("stations.csv"), list).unwrap();
+        std::fs::write(folder.join("reports.csv"), rows).unwrap();
+        std::fs::write(&path, text).unwrap();
+        path
+    }
 }
+
+/// 2031-06-01T00:00:00Z in μs.
+pub const FIRST_DAY: i64 = 1_938_038_400_000_000;
