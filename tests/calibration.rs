@@ -13,8 +13,8 @@ use std::collections::BTreeMap;
 use std::path::Path;
 use std::process::Command;
 
-use common::faults::{FIRST_DAY, Planted, case};
-use gyremesh::calibration::Change;
+use common::faults::{Case, FIRST_DAY, Planted, case};
+use gyremesh::calibration::{CalibrationSettings, Change, Course};
 use gyremesh::pipeline::{Setup, calibrate};
 use gyremesh::report::InputOrder;
 use gyremesh::settings::Overrides;
@@ -562,4 +562,136 @@ fn halves_of_singapores_june_agree() {
     let [turn, log] = squares.map(|s| (2.0 * s / f64::from(count)).sqrt());
     println!("rms differences of the halves: {turn:.1} degrees, {log:.2}");
     assert!(turn < 13.0 && log < 0.2);
+}
+
+/// What the clocks of a network are called: labels off by half an average and a whole one, a zone, daylight time that
+/// begins, and begins and ends, and two drifts. 10-minute means every `dt` s over 30 days.
+fn clocks(dt: f64, seed: u64) -> (Vec<(usize, Planted, &'static str)>, Case) {
+    #[allow(
+        clippy::cast_possible_truncation,
+        clippy::cast_sign_loss,
+        reason = "some minutes"
+    )]
+    let steps = |minutes: f64| (minutes * 60.0 / dt).round() as usize;
+    let hour = steps(60.0);
+    let mut off = vec![
+        (
+            6,
+            Planted::ClockInPart(hour, 12.0 / 30.0, 1.0),
+            "daylight_time",
+        ),
+        (
+            8,
+            Planted::ClockInPart(hour, 8.0 / 30.0, 18.0 / 30.0),
+            "daylight_time",
+        ),
+        (19, Planted::ClockDrift(120.0), "clock_drift"),
+        (15, Planted::ClockDrift(-60.0), "clock_drift"),
+        (22, Planted::Clock(steps(10.0)), "clock_label"),
+        (33, Planted::Clock(hour), "clock_hours"),
+    ];
+    if dt < 600.0 {
+        off.push((31, Planted::Clock(steps(5.0)), "clock_label"));
+    }
+    let planted: Vec<(usize, Planted)> = off.iter().map(|o| (o.0, o.1)).collect();
+    let mut case = case(seed, 30.0, dt, &planted);
+    case.average(steps(10.0).max(1));
+    (off, case)
+}
+
+fn clocks_are_named(dt: f64, runs: u64) {
+    let mut named: BTreeMap<String, (usize, usize)> = BTreeMap::new();
+    let (mut falsely, mut sound, mut rates, mut lags) = (0, 0, Vec::new(), Vec::new());
+    let mut dated = 0;
+    for seed in 0..runs {
+        let (off, case) = clocks(dt, 700 + seed);
+        let found = case.calibrate_with(CalibrationSettings {
+            averaging: 600.0,
+            ..CalibrationSettings::default()
+        });
+        for (s, station) in found.stations.iter().enumerate() {
+            let mut tickets = found.tickets.iter().filter(|t| t.station == s);
+            let ticket = tickets.next();
+            let name = ticket.map_or("none", |t| t.fault.name());
+            let Some((_, fault, expected)) = off.iter().find(|o| o.0 == s) else {
+                sound += 1;
+                falsely += usize::from(name != "none");
+                if name != "none" {
+                    println!("seed {seed}, sound {s}: {ticket:?} {:?}", station.clock);
+                }
+                lags.push(station.clock.unwrap().lag);
+                continue;
+            };
+            let count = named.entry(format!("{fault:?}")).or_default();
+            count.0 += usize::from(name == *expected);
+            count.1 += 1;
+            if name != *expected {
+                println!("seed {seed}, {s} {fault:?}: {name} {:?}", station.clock);
+            }
+            match (fault, station.course()) {
+                (Planted::ClockDrift(rate), Some(Course::Drift(d))) => {
+                    rates.push((d.rate - rate, d.error));
+                }
+                (Planted::ClockInPart(_, from, to), Some(Course::Stretch(stretch))) => {
+                    let is_near = |time: Option<Time>, share: f64| {
+                        (time.map_or(30, day) as f64 - 30.0 * share).abs() <= 1.0
+                    };
+                    dated +=
+                        usize::from(is_near(Some(stretch.from), *from) && is_near(stretch.to, *to));
+                }
+                _ => {}
+            }
+        }
+    }
+    for (fault, (right, all)) in &named {
+        println!("{fault}: {right} of {all}");
+    }
+    let offs: Vec<f64> = rates.iter().map(|r| r.0).collect();
+    let held = rates.iter().filter(|r| r.0.abs() <= 2.05 * r.1).count();
+    println!(
+        "false {falsely} of {sound}; lags of sound clocks {:?} s; rates off {:?} s a day, held {held} of {}; stretches dated {dated}",
+        sd(&lags),
+        sd(&offs),
+        rates.len()
+    );
+    let runs = usize::try_from(runs).unwrap();
+    assert!(share(falsely, sound) <= 0.01);
+    assert!(named.values().all(|(right, all)| 10 * right >= 9 * all));
+    assert!(dated + 1 >= 2 * runs);
+    assert!(offs.iter().all(|off| off.abs() < 20.0));
+}
+
+#[test]
+#[ignore = "ten months of 40 stations, in release; run by .ci/run"]
+fn clocks_off_are_named() {
+    clocks_are_named(300.0, 10);
+}
+
+/// At 10 minutes a label off by half an average is half a step: that is the limit.
+#[test]
+#[ignore = "ten months of 40 stations, in release; run by .ci/run"]
+fn clocks_off_are_named_at_ten_minutes() {
+    clocks_are_named(600.0, 10);
+}
+
+/// The same from reports on disk, with the averaging interval in the settings.
+#[test]
+#[ignore = "a month of 5-minute reports on disk, in release; run by .ci/run"]
+fn clocks_of_reports_on_disk() {
+    let folder = tempfile::tempdir().unwrap();
+    let (off, case) = clocks(300.0, 700);
+    let reports = "time = { averaging = \"10 min\" }";
+    let path = case.write(folder.path(), reports, "[analysis]\ninterval = \"5 min\"");
+    let setup = Setup::read(&path, &Overrides::default()).unwrap();
+    let found = calibrate(&setup, InputOrder::Any, |_| {}).unwrap();
+    let mut names: Vec<(usize, &str)> = found
+        .calibration
+        .tickets
+        .iter()
+        .map(|t| (t.station, t.fault.name()))
+        .collect();
+    names.sort_unstable();
+    let mut expected: Vec<(usize, &str)> = off.iter().map(|o| (o.0, o.2)).collect();
+    expected.sort_unstable();
+    assert_eq!(names, expected);
 }

@@ -206,6 +206,7 @@ fn squares((weight, first, second): (f64, C, f64)) -> f64 {
 }
 
 #[cfg(test)]
+#[expect(clippy::panic, reason = "a test may panic")]
 mod tests {
     use super::*;
 

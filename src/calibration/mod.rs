@@ -51,6 +51,7 @@
 mod cause;
 mod change;
 mod clock;
+mod course;
 mod gains;
 mod record;
 mod result;
@@ -59,6 +60,7 @@ mod shape;
 mod spread;
 mod statistics;
 mod ticket;
+mod wake;
 
 use crate::align::WindBlock;
 use crate::station::{Network, Position};
@@ -68,10 +70,12 @@ use crate::units::Wind;
 
 pub use cause::{Fault, cause_of_factor, cause_of_lag, cause_of_turn};
 pub use clock::ClockLag;
+pub use course::{ClockDrift, ClockStretch, Course};
 pub use record::StationTally;
 pub use result::{Calibration, Change, GainEstimate, StationCalibration};
 pub use shape::Reflection;
 pub use ticket::{Cost, Ticket};
+pub use wake::{disturbed_sector, wake_sectors};
 
 use gains::Fit;
 use record::Record;

@@ -1,11 +1,13 @@
 //! What the calibration found of each station.
 
 use nalgebra::Complex;
+use rayon::prelude::*;
 use serde::Serialize;
 
 use super::CalibrationSettings;
 use super::change::{Blockwise, Split};
-use super::clock::{ClockLag, clock_lag};
+use super::clock::{ClockLag, add_scatter, clock_lag, silence_echoes};
+use super::course::Course;
 use super::gains::{Expected, Fit};
 use super::record::{Record, StationTally, median};
 use super::shape::{Exchange, Reflection, exchanges, reflection, spikes};
@@ -82,6 +84,12 @@ pub struct StationCalibration {
 }
 
 impl StationCalibration {
+    /// How the lag of its clock changes or grows, if that is sure.
+    #[must_use]
+    pub fn course(&self) -> Option<Course> {
+        self.clock?.course.filter(Course::is_sure)
+    }
+
     /// The states before the present one, in words, the earliest first; empty if the gain never changed.
     #[must_use]
     pub fn history(&self) -> String {
@@ -118,6 +126,12 @@ impl Calibration {
         let errors = gain_errors(&fit, blocks, &sums);
         let expected: Vec<Vec<Expected>> = (0..sums.len()).map(|s| fit.expected(s)).collect();
         let exchanged = exchanges(record, &fit, &expected, blocks.days);
+        let stations = 0..sums.len();
+        let lag = |s: usize| clock_lag(record, &fit, blocks, s);
+        let mut clocks: Vec<Option<ClockLag>> = stations.into_par_iter().map(lag).collect();
+        let inside: Vec<bool> = (0..sums.len()).map(|s| fit.surrounded(s)).collect();
+        add_scatter(&mut clocks, &inside);
+        silence_echoes(&mut clocks, |s| fit.leans_on(s));
         let start_of = |block: usize| {
             let t = blocks.of.partition_point(|&b| b < block);
             record
@@ -152,7 +166,7 @@ impl Calibration {
             StationCalibration {
                 gain,
                 changes: changes.collect(),
-                clock: clock_lag(record, &fit, blocks, s),
+                clock: clocks[s],
                 reflection: reflection(record, &expected[s], s),
                 exchange: exchanged.iter().find_map(|x: &Exchange| match x.stations {
                     [a, b] if a == s => Some((b, x.left)),
@@ -162,7 +176,7 @@ impl Calibration {
                 spikes: spikes(&fit, record, s),
                 misfit: fit.misfit[s],
                 predicts: fit.may_predict[s],
-                inside: fit.surrounded(s),
+                inside: inside[s],
                 // Median of an exponential distribution: ln 2 of its mean.
                 deviation: (median(&mut squares).unwrap_or(0.0) / std::f64::consts::LN_2).sqrt(),
                 speed: speeds / expected[s].len().max(1) as f64,

@@ -4,7 +4,7 @@ use serde::Serialize;
 
 use super::cause::{Fault, cause_of_factor, cause_of_lag, cause_of_turn};
 use super::result::{Change, StationCalibration};
-use super::{CalibrationSettings, ClockLag, GainEstimate};
+use super::{CalibrationSettings, ClockLag, Course, GainEstimate};
 use crate::polygon::StationPolygon;
 use crate::time::Time;
 
@@ -32,6 +32,9 @@ const LEAST_CORRELATION: f64 = 0.6;
 /// Smallest lag that is told, in steps of the analysis interval, and in standard errors.
 const LEAST_LAG: f64 = 1.5;
 const LAG_ERRORS: f64 = 4.0;
+/// A lag of less than an interval is told only if days agree on it by so many standard deviations of theirs.
+const LEAST_SMALL_LAG: f64 = 0.75;
+const SURE_LAG: f64 = 3.0;
 
 /// A fault of a station.
 #[derive(Debug, Clone, PartialEq)]
@@ -178,6 +181,9 @@ fn no_gain(
         );
         return Some(ticket(fault, reflection.angle, "degrees", evidence));
     }
+    if let Some(course) = station.course() {
+        return Some(course_ticket(&course, ticket, interval));
+    }
     if let Some(clock) = station
         .clock
         .filter(|c| is_off(c, station.inside, days, interval))
@@ -220,10 +226,63 @@ fn is_off(clock: &ClockLag, inside: bool, days: bool, interval: f64) -> bool {
         LAG_LEAVES_OF_STORM
     };
     let left = |correlation: f64| 1.0 - correlation.max(0.0).powi(2);
-    clock.lag.abs() >= LEAST_LAG * interval
-        && clock.with_lag >= LEAST_CORRELATION
+    let large = clock.lag.abs() >= LEAST_LAG * interval
+        && left(clock.with_lag) <= leaves * left(clock.correlation);
+    // A label off by some minutes leaves nearly as much, but all days agree on it.
+    let small = days && clock.sure >= SURE_LAG && clock.lag.abs() >= LEAST_SMALL_LAG * interval;
+    clock.with_lag >= LEAST_CORRELATION
         && clock.lag.abs() >= LAG_ERRORS * clock.error
-        && left(clock.with_lag) <= leaves * left(clock.correlation)
+        && (large || small)
+}
+
+/// The ticket of a clock whose error changes or grows.
+fn course_ticket(
+    course: &Course,
+    ticket: impl Fn(Fault, f64, &'static str, String) -> Ticket,
+    interval: f64,
+) -> Ticket {
+    let minutes = |lag: f64| lag / 60.0;
+    match course {
+        Course::Drift(drift) => {
+            let half = 0.5 * drift.rate * drift.days;
+            let evidence = format!(
+                "{:+.0} to {:+.0} min ahead within {:.0} days",
+                minutes(drift.middle - half),
+                minutes(drift.middle + half),
+                drift.days
+            );
+            let mut found = ticket(Fault::ClockDrift, drift.rate, "s/day", evidence);
+            found.error = Some(drift.error);
+            found
+        }
+        Course::Stretch(stretch) => {
+            let (inside, outside) = (stretch.inside, stretch.outside);
+            let slack = (2.0 * interval).clamp(300.0, 900.0);
+            let hour = ((inside - outside).abs() - 3600.0).abs() <= slack
+                && inside.abs().min(outside.abs()) <= slack;
+            let fault = if hour {
+                Fault::DaylightTime
+            } else {
+                Fault::ClockSet
+            };
+            let size = if inside.abs() >= outside.abs() {
+                inside
+            } else {
+                outside
+            };
+            let day = |t: Time| -> String { t.to_string().chars().take(10).collect() };
+            let evidence = format!(
+                "{:+.0} min from {} to {}, else {:+.0} min",
+                minutes(inside),
+                day(stretch.from),
+                stretch.to.map_or_else(|| "the end".into(), day),
+                minutes(outside)
+            );
+            let mut found = ticket(fault, size, "s", evidence);
+            found.since = Some((stretch.from, stretch.between));
+            found
+        }
+    }
 }
 
 /// Turn and factor of a station; if it has neither now but had, that.

@@ -6,7 +6,9 @@ use serde_json::{Value, json};
 
 use super::CAUTION;
 use super::csv::{number, optional, quoted};
-use crate::calibration::{Fault, GainEstimate, StationCalibration, Ticket};
+use crate::calibration::{
+    ClockDrift, ClockStretch, Course, Fault, GainEstimate, StationCalibration, Ticket,
+};
 use crate::pipeline::{CalibrationOutcome, Setup};
 use crate::station::{Correction, Station};
 use crate::units::North;
@@ -66,12 +68,12 @@ fn id(setup: &Setup, station: usize) -> &str {
 }
 
 /// `calibration.csv`: a row for each station, its gain that after the last change. Turn: reported minus true direction, degrees clockwise; factor: reported over
-/// true speed; clock: reported minus true time, s.
+/// true speed; clock: reported minus true time, s (drift in s a day; another value meanwhile, from and until a time).
 #[must_use]
 pub fn calibration_csv(setup: &Setup, outcome: &CalibrationOutcome) -> String {
     let mut out = String::from(
         "station,turn,turn_se,factor,factor_se,half_95,changes,changed,turn_before,factor_before,before,clock,clock_se,correlation,\
-         correlation_with_clock,misfit,spikes,deviation,mean_speed,inside,predicts,blocks,times,values,stuck,still,excluded\n",
+         correlation_with_clock,clock_drift,clock_drift_se,clock_from,clock_until,clock_meanwhile,misfit,spikes,deviation,mean_speed,inside,predicts,blocks,times,values,stuck,still,excluded\n",
     );
     for (station, found) in setup
         .network
@@ -83,6 +85,7 @@ pub fn calibration_csv(setup: &Setup, outcome: &CalibrationOutcome) -> String {
         let last = found.changes.last();
         let before = |f: fn(&GainEstimate) -> f64| optional(last.map(|c| f(&c.before)));
         let clock = found.clock;
+        let (stretch, drift) = course_of(found);
         let fields = [
             quoted(&station.id),
             gain(|g| g.turn),
@@ -99,6 +102,13 @@ pub fn calibration_csv(setup: &Setup, outcome: &CalibrationOutcome) -> String {
             optional(clock.map(|c| c.error)),
             optional(clock.map(|c| c.correlation)),
             optional(clock.map(|c| c.with_lag)),
+            optional(drift.map(|d| d.rate)),
+            optional(drift.map(|d| d.error)),
+            stretch.map_or_else(String::new, |s| s.from.to_string()),
+            stretch
+                .and_then(|s| s.to)
+                .map_or_else(String::new, |t| t.to_string()),
+            optional(stretch.map(|s| s.inside)),
             number(found.misfit),
             number(found.spikes),
             number(found.deviation),
@@ -116,6 +126,14 @@ pub fn calibration_csv(setup: &Setup, outcome: &CalibrationOutcome) -> String {
         out.push('\n');
     }
     out
+}
+
+fn course_of(station: &StationCalibration) -> (Option<ClockStretch>, Option<ClockDrift>) {
+    match station.course() {
+        Some(Course::Stretch(stretch)) => (Some(stretch), None),
+        Some(Course::Drift(drift)) => (None, Some(drift)),
+        None => (None, None),
+    }
 }
 
 /// All of it as JSON.
@@ -141,6 +159,7 @@ pub fn calibration_json(setup: &Setup, outcome: &CalibrationOutcome) -> String {
         })
     };
     let station = |(s, found): (&Station, &StationCalibration)| -> Value {
+        let (stretch, drift) = course_of(found);
         json!({
             "station": s.id,
             "gain": found.gain,
@@ -151,6 +170,15 @@ pub fn calibration_json(setup: &Setup, outcome: &CalibrationOutcome) -> String {
                 "before": c.before,
             })).collect::<Vec<Value>>(),
             "clock": found.clock,
+            "clock_drift": drift.map(|d| json!({
+                "rate": d.rate, "standard_error": d.error, "middle": d.middle, "days": d.days,
+            })),
+            "clock_meanwhile": stretch.map(|c| json!({
+                "from": c.from.to_string(),
+                "until": c.to.map(|t| t.to_string()),
+                "lag": c.inside,
+                "else": c.outside,
+            })),
             "misfit": found.misfit,
             "spikes": found.spikes,
             "blocks": found.blocks,
@@ -175,7 +203,7 @@ pub fn calibration_json(setup: &Setup, outcome: &CalibrationOutcome) -> String {
         "stations": stations.map(station).collect::<Vec<Value>>(),
         "reports": outcome.reading.rows,
         "warnings": outcome.warnings.iter().map(ToString::to_string).collect::<Vec<_>>(),
-        "units": { "turn": "degrees clockwise, reported minus true", "factor": "reported over true", "clock": "s ahead" },
+        "units": { "turn": "degrees clockwise, reported minus true", "factor": "reported over true", "clock": "s ahead", "clock_drift": "s ahead a day" },
         "gauge": GAUGE,
         "caution": CAUTION,
     });

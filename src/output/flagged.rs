@@ -1,27 +1,136 @@
-//! `reports_flagged.csv`: every report with the flag of each test.
+//! `reports_flagged.csv` and `reports_flagged.parquet`: every report with the flag of each test.
+
+use std::path::Path;
 
 use rayon::prelude::*;
 use zmij::Buffer;
 
+use super::file::OutputSet;
+#[cfg(feature = "parquet")]
+use super::flagged_parquet::FlaggedParquet;
+use super::series::Formats;
 use crate::check::Test;
+use crate::error::Error;
 use crate::report::ReportTable;
 use crate::settings::Settings;
 use crate::station::Network;
 use crate::units::FromDirection;
 
 /// Rows that one thread encodes at a time.
-const CHUNK: usize = 1 << 14;
+pub(super) const CHUNK: usize = 1 << 14;
+
+/// The reports judged in a window: time, station and row of the table; by time, then station, then level.
+pub(super) struct ReportOrder(pub(super) Vec<(i64, usize, usize)>);
+
+impl ReportOrder {
+    fn of(table: &ReportTable) -> Self {
+        let mut reports: Vec<(i64, usize, usize)> = (0..table.stations())
+            .flat_map(|s| table.fresh(s).map(move |i| (s, i)))
+            .map(|(s, i)| (table.times()[i].micros(), s, i))
+            .collect();
+        reports.par_sort_unstable();
+        Self(reports)
+    }
+}
+
+/// The files of flagged reports, in the formats asked for.
+pub struct FlaggedFiles {
+    csv: Option<(usize, FlaggedRows)>,
+    #[cfg(feature = "parquet")]
+    parquet: Option<(usize, FlaggedParquet)>,
+}
+
+const PARQUET: &str = "reports_flagged.parquet";
+
+impl FlaggedFiles {
+    /// Starts the files.
+    ///
+    /// # Errors
+    /// A file cannot be made; Parquet is asked for and the program was built without it.
+    pub fn new(
+        settings: &Settings,
+        network: &Network,
+        formats: Formats,
+        set: &mut OutputSet,
+    ) -> Result<Self, Error> {
+        let csv = if formats.csv {
+            let file = set.create("reports_flagged.csv")?;
+            set.write(file, FlaggedRows::header().as_bytes())?;
+            Some((file, FlaggedRows::new(settings, network)))
+        } else {
+            None
+        };
+        #[cfg(not(feature = "parquet"))]
+        if formats.parquet {
+            let reason = "this program was built without the feature `parquet`";
+            return Err(parquet_error(&reason));
+        }
+        #[cfg(feature = "parquet")]
+        let parquet = if formats.parquet {
+            let file = set.create(PARQUET)?;
+            let rows = FlaggedParquet::new(settings, network).map_err(|e| parquet_error(&e))?;
+            Some((file, rows))
+        } else {
+            None
+        };
+        Ok(Self {
+            csv,
+            #[cfg(feature = "parquet")]
+            parquet,
+        })
+    }
+
+    /// Adds the reports that were judged in a window.
+    ///
+    /// # Errors
+    /// The system's refusal, a full disk for one.
+    pub fn write(&mut self, set: &mut OutputSet, table: &ReportTable) -> Result<(), Error> {
+        let order = ReportOrder::of(table);
+        if let Some((file, rows)) = &self.csv {
+            let pieces = rows.encode(table, &order);
+            pieces
+                .iter()
+                .try_for_each(|piece| set.write(*file, piece))?;
+        }
+        #[cfg(feature = "parquet")]
+        if let Some((file, rows)) = &mut self.parquet {
+            let bytes = rows.append(table, &order).map_err(|e| parquet_error(&e))?;
+            set.write(*file, &bytes)?;
+        }
+        Ok(())
+    }
+
+    /// Completes the files.
+    ///
+    /// # Errors
+    /// The system's refusal.
+    #[cfg_attr(
+        not(feature = "parquet"),
+        expect(unused_variables, reason = "only Parquet has an end")
+    )]
+    pub fn finish(self, set: &mut OutputSet) -> Result<(), Error> {
+        #[cfg(feature = "parquet")]
+        if let Some((file, rows)) = self.parquet {
+            let bytes = rows.finish().map_err(|e| parquet_error(&e))?;
+            set.write(file, &bytes)?;
+        }
+        Ok(())
+    }
+}
+
+fn parquet_error(error: &dyn std::fmt::Display) -> Error {
+    Error::write(Path::new(PARQUET), std::io::Error::other(error.to_string()))
+}
 
 /// Writes rows of `reports_flagged.csv`, by time, then station, then level.
-pub struct FlaggedRows {
+struct FlaggedRows {
     stations: Vec<String>,
     files: Vec<String>,
 }
 
 impl FlaggedRows {
     /// Prepares the names.
-    #[must_use]
-    pub fn new(settings: &Settings, network: &Network) -> Self {
+    fn new(settings: &Settings, network: &Network) -> Self {
         let files = settings.reports.iter().flat_map(|source| &source.files);
         Self {
             stations: network
@@ -36,21 +145,15 @@ impl FlaggedRows {
     }
 
     /// The header line.
-    #[must_use]
-    pub fn header() -> String {
+    fn header() -> String {
         let tests = Test::ALL.map(Test::name).join(",");
         format!("time,station,direction_deg,speed_m_s,gust_m_s,flag,{tests},file,line\n")
     }
 
-    /// The reports that were judged in a window, as pieces of text in order.
-    #[must_use]
-    pub fn encode(&self, table: &ReportTable) -> Vec<Vec<u8>> {
-        let mut reports: Vec<(i64, usize, usize)> = (0..table.stations())
-            .flat_map(|s| table.fresh(s).map(move |i| (s, i)))
-            .map(|(s, i)| (table.times()[i].micros(), s, i))
-            .collect();
-        reports.par_sort_unstable();
-        reports
+    /// The reports as pieces of text in order.
+    fn encode(&self, table: &ReportTable, order: &ReportOrder) -> Vec<Vec<u8>> {
+        order
+            .0
             .par_chunks(CHUNK)
             .map(|chunk| self.rows(table, chunk))
             .collect()

@@ -215,11 +215,26 @@ pub fn case(seed: u64, days: f64, dt: f64, planted: &[(usize, Planted)]) -> Case
 
 impl Case {
     pub fn calibrate(&self) -> Calibration {
+        self.calibrate_with(CalibrationSettings::default())
+    }
+
+    /// Replaces each wind by the mean of itself and those of the `n` − 1 steps before it.
+    pub fn average(&mut self, n: usize) {
+        for of in &mut self.winds {
+            let before = of.clone();
+            for (t, w) in of.iter_mut().enumerate() {
+                let part = &before[(t + 1).saturating_sub(n)..=t];
+                let sum = part.iter().fold((0.0, 0.0), |s, w| (s.0 + w.0, s.1 + w.1));
+                *w = (sum.0 / part.len() as f64, sum.1 / part.len() as f64);
+            }
+        }
+    }
+
+    pub fn calibrate_with(&self, own: CalibrationSettings) -> Calibration {
         let spacing = typical_spacing(&self.network).unwrap();
         let settings = StructureSettings::default();
         let geometry = NetworkGeometry::new(&self.network, spacing, &[]);
         let mut window = StructureWindow::new(&geometry, settings);
-        let own = CalibrationSettings::default();
         let mut calibrator = Calibrator::new(&self.network, spacing, self.dt, own);
         let steps = self.winds[0].len();
         let mut previous: Option<WindBlock> = None;
