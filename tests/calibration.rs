@@ -564,9 +564,9 @@ fn halves_of_singapores_june_agree() {
     assert!(turn < 13.0 && log < 0.2);
 }
 
-/// What the clocks of a network are called: labels off by half an average and a whole one, a zone, daylight time that
-/// begins, and begins and ends, and two drifts. 10-minute means every `dt` s over 30 days.
-fn clocks(dt: f64, seed: u64) -> (Vec<(usize, Planted, &'static str)>, Case) {
+/// Clocks that are off and what they are called, in two networks: labels off by half an average and a whole one, a zone,
+/// daylight time that begins, and begins and ends, and two drifts. 10-minute means every `dt` s over 30 days.
+fn clocks(dt: f64, seed: u64) -> [(Vec<ClockFault>, Case); 2] {
     #[allow(
         clippy::cast_possible_truncation,
         clippy::cast_sign_loss,
@@ -574,37 +574,45 @@ fn clocks(dt: f64, seed: u64) -> (Vec<(usize, Planted, &'static str)>, Case) {
     )]
     let steps = |minutes: f64| (minutes * 60.0 / dt).round() as usize;
     let hour = steps(60.0);
-    let mut off = vec![
+    let first = vec![
         (
             6,
             Planted::ClockInPart(hour, 12.0 / 30.0, 1.0),
             "daylight_time",
         ),
+        (19, Planted::ClockDrift(120.0), "clock_drift"),
+        (22, Planted::Clock(steps(10.0)), "clock_label"),
+        (33, Planted::Clock(hour), "clock_hours"),
+    ];
+    let mut second = vec![
         (
             8,
             Planted::ClockInPart(hour, 8.0 / 30.0, 18.0 / 30.0),
             "daylight_time",
         ),
-        (19, Planted::ClockDrift(120.0), "clock_drift"),
         (15, Planted::ClockDrift(-60.0), "clock_drift"),
-        (22, Planted::Clock(steps(10.0)), "clock_label"),
-        (33, Planted::Clock(hour), "clock_hours"),
     ];
     if dt < 600.0 {
-        off.push((31, Planted::Clock(steps(5.0)), "clock_label"));
+        second.push((31, Planted::Clock(steps(5.0)), "clock_label"));
     }
-    let planted: Vec<(usize, Planted)> = off.iter().map(|o| (o.0, o.1)).collect();
-    let mut case = case(seed, 30.0, dt, &planted);
-    case.average(steps(10.0).max(1));
-    (off, case)
+    let case = |off: Vec<ClockFault>, seed: u64| {
+        let planted: Vec<(usize, Planted)> = off.iter().map(|o| (o.0, o.1)).collect();
+        let mut case = case(seed, 30.0, dt, &planted);
+        case.average(steps(10.0).max(1));
+        (off, case)
+    };
+    [case(first, 700 + seed), case(second, 800 + seed)]
 }
+
+/// Station, fault, and what it is called.
+type ClockFault = (usize, Planted, &'static str);
 
 fn clocks_are_named(dt: f64, runs: u64) {
     let mut named: BTreeMap<String, (usize, usize)> = BTreeMap::new();
     let (mut falsely, mut sound, mut rates, mut lags) = (0, 0, Vec::new(), Vec::new());
     let mut dated = 0;
-    for seed in 0..runs {
-        let (off, case) = clocks(dt, 700 + seed);
+    let cases = (0..runs).flat_map(|seed| clocks(dt, seed).map(|(off, case)| (seed, off, case)));
+    for (seed, off, case) in cases {
         let found = case.calibrate_with(CalibrationSettings {
             averaging: 600.0,
             ..CalibrationSettings::default()
@@ -679,19 +687,15 @@ fn clocks_off_are_named_at_ten_minutes() {
 #[ignore = "a month of 5-minute reports on disk, in release; run by .ci/run"]
 fn clocks_of_reports_on_disk() {
     let folder = tempfile::tempdir().unwrap();
-    let (off, case) = clocks(300.0, 700);
-    let reports = "time = { averaging = \"10 min\" }";
-    let path = case.write(folder.path(), reports, "[analysis]\ninterval = \"5 min\"");
-    let setup = Setup::read(&path, &Overrides::default()).unwrap();
-    let found = calibrate(&setup, InputOrder::Any, |_| {}).unwrap();
-    let mut names: Vec<(usize, &str)> = found
-        .calibration
-        .tickets
-        .iter()
-        .map(|t| (t.station, t.fault.name()))
-        .collect();
-    names.sort_unstable();
-    let mut expected: Vec<(usize, &str)> = off.iter().map(|o| (o.0, o.2)).collect();
-    expected.sort_unstable();
-    assert_eq!(names, expected);
+    for (off, case) in clocks(300.0, 0) {
+        let reports = "time = { averaging = \"10 min\" }";
+        let path = case.write(folder.path(), reports, "[analysis]\ninterval = \"5 min\"");
+        let setup = Setup::read(&path, &Overrides::default()).unwrap();
+        let found = calibrate(&setup, InputOrder::Any, |_| {}).unwrap();
+        let tickets = found.calibration.tickets.iter();
+        let mut names: Vec<(usize, &str)> = tickets.map(|t| (t.station, t.fault.name())).collect();
+        names.sort_unstable();
+        let expected: Vec<(usize, &str)> = off.iter().map(|o| (o.0, o.2)).collect();
+        assert_eq!(names, expected);
+    }
 }

@@ -105,7 +105,7 @@ fn farm(seed: u64) -> (Vec<f64>, Vec<f64>, Case) {
 }
 
 #[derive(Debug, Default)]
-struct Found {
+struct Score {
     turn: Vec<f64>,
     log: Vec<f64>,
     held: [usize; 2],
@@ -119,8 +119,8 @@ struct Found {
 }
 
 /// From files to tickets, with these settings.
-fn run(seeds: std::ops::Range<u64>, settings: &str) -> Found {
-    let mut all = Found::default();
+fn run(seeds: std::ops::Range<u64>, settings: &str) -> Score {
+    let mut all = Score::default();
     for seed in seeds {
         let (turns, factors, case) = farm(seed);
         let folder = tempfile::tempdir().unwrap();
@@ -165,7 +165,7 @@ fn sd(values: &[f64]) -> f64 {
     (values.iter().map(|v| (v - mean) * (v - mean)).sum::<f64>() / n).sqrt()
 }
 
-impl Found {
+impl Score {
     fn print(&self, name: &str, runs: u64) {
         println!(
             "{name}: turns found {} of {}, factors {} of {runs}, false {} of {}; turn sd {:.2} degrees, held {} of {}; \
@@ -193,13 +193,13 @@ fn offsets_of_nacelles_are_found_among_wakes() {
 }
 
 #[test]
-#[ignore = "ten farms over three weeks, four ways, in release; run by .ci/run"]
+#[ignore = "ten farms over three weeks, three ways, in release; run by .ci/run"]
 fn ten_farms_with_and_without_wake_sectors() {
     let runs = 10;
     let plain = run(0..runs, "");
     plain.print("all directions", runs);
     let mut held = vec![plain.held[0] as f64 / plain.judged as f64];
-    for reach in [6.0, 8.0, 10.0, 20.0] {
+    for reach in [6.0, 8.0, 20.0] {
         let settings = format!("rotor_diameter = 120\nwake_reach = {reach:.1}");
         let found = run(0..runs, &settings);
         found.print(&format!("wakes within {reach} diameters left out"), runs);

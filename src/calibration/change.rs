@@ -78,7 +78,7 @@ impl Blockwise {
     pub(super) fn changes(&self, least: f64) -> Vec<Split> {
         let n = self.number.len();
         let mut starts = Vec::new();
-        let mut parts = vec![0..n];
+        let mut parts = Vec::from([Range { start: 0, end: n }]);
         while let Some(part) = parts.pop() {
             let sure = |best: &Best| best.chance <= CHANCE && best.change >= least;
             let single = self.single(&part).filter(sure);
@@ -133,7 +133,7 @@ impl Blockwise {
             return None;
         }
         let two = |k: usize| self.squares(part.start..k) + self.squares(k..part.end);
-        let tried = part.start + LEAST..part.end - LEAST + 1;
+        let tried = part.start + LEAST..=part.end - LEAST;
         let all: Vec<(usize, f64)> = tried.map(|k| (k, two(k))).collect();
         let &(k, least) = all.iter().min_by(|a, b| a.1.total_cmp(&b.1))?;
         let freedom = (2 * n - 4) as f64;
@@ -146,7 +146,7 @@ impl Blockwise {
             inside: k..part.end,
             change: (self.mean(k..part.end) - self.mean(part.start..k)).norm(),
             chance: self.chance(part, least, all.len()),
-            may_be: [first, near.last().unwrap_or(first)],
+            may_be: [first, near.next_back().unwrap_or(first)],
         })
     }
 
@@ -158,7 +158,7 @@ impl Blockwise {
         };
         let mut best: Option<(Range<usize>, f64)> = None;
         let mut tried = 0;
-        for i in part.start + LEAST..part.end.saturating_sub(2 * LEAST) + 1 {
+        for i in part.start + LEAST..=part.end.saturating_sub(2 * LEAST) {
             for j in i + LEAST..=part.end - LEAST {
                 let two = self.squares(i..j) + squares(outside(i, j));
                 tried += 1;

@@ -260,23 +260,52 @@ pub(super) fn parabola(a: f64, least: f64, b: f64) -> f64 {
 /// Stations of a kind whose scatter says something.
 const LEAST_FOR_SCATTER: usize = 6;
 
+/// A clock whose days agree so much that it is off does not count for the scatter, unless that is more than this share.
+const SURE_OFF: f64 = 3.0;
+const MOST_OFF: f64 = 0.2;
+
 /// Adds what sound clocks differ by and blocks do not show: stations at the edge see the weather earlier or later than
 /// those that predict them. Of the stations inside and of those at the edge apart, it is what the robust variance of the
-/// lags has beyond the median of the variances of their errors.
-pub(super) fn add_scatter(clocks: &mut [Option<ClockLag>], inside: &[bool]) {
+/// lags has beyond the median of the variances of their errors. Clocks that are off, and stations that lean on them, are
+/// left out of it as long as they are few. `leans_on` gives the stations that predict a station.
+pub(super) fn add_scatter<I: Iterator<Item = usize>>(
+    clocks: &mut [Option<ClockLag>],
+    inside: &[bool],
+    leans_on: impl Fn(usize) -> I,
+) {
+    let is_off = |clock: &Option<ClockLag>| {
+        clock.is_some_and(|c| c.sure >= SURE_OFF || c.course.is_some_and(|c| c.is_sure()))
+    };
+    let off: Vec<bool> = clocks.iter().map(is_off).collect();
+    let count = off.iter().filter(|off| **off).count();
+    let few = count as f64 <= MOST_OFF * off.len() as f64;
+    let leans = |s: usize| leans_on(s).any(|other| off[other]);
     for kind in [true, false] {
-        let of_kind = clocks.iter_mut().zip(inside).filter(|c| *c.1 == kind);
-        let mut own: Vec<&mut ClockLag> = of_kind.filter_map(|c| c.0.as_mut()).collect();
-        if own.len() < LEAST_FOR_SCATTER {
+        let of_kind: Vec<usize> = (0..clocks.len())
+            .filter(|&s| inside[s] == kind && clocks[s].is_some())
+            .collect();
+        let right = of_kind.iter().filter(|&&s| !few || !off[s]);
+        let mut sound: Vec<usize> = right
+            .clone()
+            .copied()
+            .filter(|&s| !few || !leans(s))
+            .collect();
+        if sound.len() < LEAST_FOR_SCATTER {
+            sound = right.copied().collect();
+        }
+        if sound.len() < LEAST_FOR_SCATTER {
             continue;
         }
-        let mut sizes: Vec<f64> = own.iter().map(|c| c.lag.abs()).collect();
-        let mut variances: Vec<f64> = own.iter().map(|c| c.error * c.error).collect();
+        let known = sound.iter().filter_map(|&s| clocks[s]);
+        let (mut sizes, mut variances): (Vec<f64>, Vec<f64>) =
+            known.map(|c| (c.lag.abs(), c.error * c.error)).unzip();
         let scatter = 1.4826 * median(&mut sizes).unwrap_or(0.0);
         let usual = median(&mut variances).unwrap_or(0.0);
         let more = (scatter * scatter - usual).max(0.0);
-        for clock in &mut own {
-            clock.error = (clock.error * clock.error + more).sqrt();
+        for s in of_kind {
+            if let Some(clock) = &mut clocks[s] {
+                clock.error = (clock.error * clock.error + more).sqrt();
+            }
         }
     }
 }

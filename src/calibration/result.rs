@@ -130,7 +130,7 @@ impl Calibration {
         let lag = |s: usize| clock_lag(record, &fit, blocks, s);
         let mut clocks: Vec<Option<ClockLag>> = stations.into_par_iter().map(lag).collect();
         let inside: Vec<bool> = (0..sums.len()).map(|s| fit.surrounded(s)).collect();
-        add_scatter(&mut clocks, &inside);
+        add_scatter(&mut clocks, &inside, |s| fit.leans_on(s));
         silence_echoes(&mut clocks, |s| fit.leans_on(s));
         let start_of = |block: usize| {
             let t = blocks.of.partition_point(|&b| b < block);

@@ -2,8 +2,8 @@
 
 use std::collections::BTreeMap;
 
-use super::CalibrationChoice;
 use super::section::Section;
+use super::{CalibrationChoice, WAKE_REACH};
 use crate::error::Place;
 use crate::station::tidy_id;
 
@@ -17,10 +17,12 @@ pub(super) fn calibration(mut section: Section) -> CalibrationChoice {
     let all = section.value::<Sectors>("exclude_sectors");
     let stations = section.value::<BTreeMap<String, Sectors>>("exclude_sectors_of");
     let rotors = section.value::<BTreeMap<String, f64>>("rotor_diameter_of");
-    let mut choice = CalibrationChoice::default();
-    choice.rotor = section.number("rotor_diameter", 0.0..=LARGEST_ROTOR);
     let reach = section.number("wake_reach", 1.0..=LARGEST_REACH);
-    choice.wake_reach = reach.unwrap_or(choice.wake_reach);
+    let mut choice = CalibrationChoice {
+        rotor: section.number("rotor_diameter", 0.0..=LARGEST_ROTOR),
+        wake_reach: reach.unwrap_or(WAKE_REACH),
+        ..CalibrationChoice::default()
+    };
     if let Some(all) = all {
         choice.sectors = all.value;
         check(&section, &all.place, &choice.sectors);

@@ -164,23 +164,7 @@ pub fn case(seed: u64, days: f64, dt: f64, planted: &[(usize, Planted)]) -> Case
                     }
                 }
             }
-            Planted::ClockDrift(a_day) => {
-                let middle = 0.5 * steps as f64;
-                for (t, w) in of.iter_mut().enumerate() {
-                    // The report of time t was taken so much earlier.
-                    let at = t as f64 - a_day / 86_400.0 * (t as f64 - middle);
-                    let at = at.clamp(0.0, (steps - 2) as f64);
-                    #[allow(
-                        clippy::cast_possible_truncation,
-                        clippy::cast_sign_loss,
-                        reason = "clamped"
-                    )]
-                    let k = at as usize;
-                    let share = at - k as f64;
-                    let (a, b) = (truth[*s][k], truth[*s][k + 1]);
-                    *w = (a.0 + share * (b.0 - a.0), a.1 + share * (b.1 - a.1));
-                }
-            }
+            Planted::ClockDrift(a_day) => drift(of, &truth[*s], a_day / 86_400.0),
             Planted::Spiking(share) => {
                 for w in of.iter_mut() {
                     if random.random_range(0.0..1.0) < share {
@@ -196,21 +180,42 @@ pub fn case(seed: u64, days: f64, dt: f64, planted: &[(usize, Planted)]) -> Case
             Planted::Exchanged(other) => of.clone_from(&truth[other]),
         }
         if !matches!(fault, Planted::Stuck | Planted::Still) {
-            for w in of {
-                let mut error = || -> f64 { StandardNormal.sample(&mut random) };
-                *w = (w.0 + 0.3 * error(), w.1 + 0.3 * error());
-            }
+            add_errors(of, &mut random);
         }
     }
     for (s, of) in winds.iter_mut().enumerate() {
         if planted.iter().all(|p| p.0 != s) {
-            for w in of {
-                let mut error = || -> f64 { StandardNormal.sample(&mut random) };
-                *w = (w.0 + 0.3 * error(), w.1 + 0.3 * error());
-            }
+            add_errors(of, &mut random);
         }
     }
     Case { network, winds, dt }
+}
+
+/// Errors of sensors, 0.3 m/s in either component.
+fn add_errors(winds: &mut [(f64, f64)], random: &mut ChaCha8Rng) {
+    for w in winds {
+        let mut error = || -> f64 { StandardNormal.sample(random) };
+        *w = (w.0 + 0.3 * error(), w.1 + 0.3 * error());
+    }
+}
+
+/// Winds of a clock that gains this share of the time, right in the middle.
+fn drift(winds: &mut [(f64, f64)], truth: &[(f64, f64)], share: f64) {
+    let middle = 0.5 * truth.len() as f64;
+    for (t, w) in winds.iter_mut().enumerate() {
+        // The report of time t was taken so much earlier.
+        let at = t as f64 - share * (t as f64 - middle);
+        let at = at.clamp(0.0, (truth.len() - 2) as f64);
+        #[allow(
+            clippy::cast_possible_truncation,
+            clippy::cast_sign_loss,
+            reason = "clamped"
+        )]
+        let k = at as usize;
+        let part = at - k as f64;
+        let (a, b) = (truth[k], truth[k + 1]);
+        *w = (a.0 + part * (b.0 - a.0), a.1 + part * (b.1 - a.1));
+    }
 }
 
 impl Case {
