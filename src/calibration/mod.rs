@@ -18,9 +18,13 @@
 //! 4. The structure function is found again from the winds over their first gains, since the faults are in the first one.
 //!
 //! Errors come from the disagreement of days (blocks of a tenth of the record if there are fewer than five days: less sure,
-//! since such blocks hang together). Clock: lag of the largest complex correlation with the expectation. Reflection and
-//! exchange are alternative hypotheses. What all sound stations differ by beyond that (sites, weather that lasts through the
-//! record) is added as it is found, so in rough country errors are wide. A change of gain is the split of the days that explains them best.
+//! since such blocks hang together). Reflection and exchange are alternative hypotheses. What all sound stations differ by
+//! beyond that (sites, weather that lasts through the record) is added as it is found, so in rough country errors are wide.
+//! Changes of gain are splits of the days that explain them best, as many as are sure; the last state is that of the station.
+//!
+//! Clock: lag of the largest complex correlation with the expectation. A stretch of the record with another lag (daylight
+//! time), or a lag that grows (drift), is told if it leaves less of the variance on nearly all days. Lags are tried at the
+//! analysis interval and read off between them; a label that is off by less than three quarters of the interval is not told.
 //!
 //! - **Sign**: turn = reported minus true direction, degrees clockwise; factor = reported over true speed; lag positive if
 //!   the station's clock is ahead.
@@ -36,6 +40,16 @@
 //! factors off by 15 to 50 %: 99.9 % found with the right station and cause, 0.1 % of the sound stations told wrongly; errors
 //! of the turn 0.7 degrees (bias 0.02; of planted turns −0.06), of the logarithm of the factor 0.012; the 95 % intervals
 //! held 97.6 and 97.7 %. Single days: 75 % found, 0.8 % false, 1.8 degrees, 0.034; intervals held 94 %.
+//!
+//! Changes: 20 vanes in months of 40 stations that turn twice (12 degrees and back, 10 and 15 more): all with both days right to
+//! one, no change at 380 others; turns of the states off by 0.6 degrees, 88 % of their 95 % intervals held.
+//!
+//! CLOCKS
+//!
+//! Turbines (`tests/turbines.rs`): farms of 30 at 6 diameters, three weeks of 10-minute data, wakes after Jensen: of 50
+//! offsets of 5 to 15 degrees 49 were found, none falsely of 240; errors 0.2 degrees, 99 % held; of factors 0.014, 85 % held,
+//! since wakes slow. With wake sectors left out (8 diameters: 59 % of the values) 34 were found, 5 falsely, errors 1.9
+//! degrees: inside a farm the sectors leave too few neighbours.
 //!
 //! Stations with planted faults by what the first ticket says, two in each of ten weeks:
 //!
