@@ -141,23 +141,20 @@ fn sure(gains: &[f64]) -> f64 {
     t.signum() * z * (8.0 * freedom + 1.0) / (8.0 * freedom + 3.0)
 }
 
-/// The course that fits best, if it is any better than a lag that stays; how much better, it says itself.
+/// The course that fits best of those that are sure, or else of both; how sure, it says itself.
 ///
 /// What lags leave of the variance is summed over blocks: for all blocks the lag that leaves least; for each stretch one
 /// inside and one around it; for each drift one in the middle. The least of all is taken.
 pub(super) fn course(fits: &Fits) -> Option<Course> {
-    let stretch = stretch(fits);
-    let drift = drift(fits);
-    match (stretch, drift) {
-        (Some((a, stretch)), Some((b, drift))) => Some(if a < b {
-            Course::Stretch(stretch)
-        } else {
-            Course::Drift(drift)
-        }),
-        (Some((_, stretch)), None) => Some(Course::Stretch(stretch)),
-        (None, Some((_, drift))) => Some(Course::Drift(drift)),
-        (None, None) => None,
-    }
+    let stretch = stretch(fits).map(|(left, stretch)| (left, Course::Stretch(stretch)));
+    let drift = drift(fits).map(|(left, drift)| (left, Course::Drift(drift)));
+    let both = [stretch, drift].into_iter().flatten();
+    let order = |(left, course): &(f64, Course)| (!course.is_sure(), *left);
+    let best = both.min_by(|a, b| {
+        let (a, b) = (order(a), order(b));
+        a.0.cmp(&b.0).then(a.1.total_cmp(&b.1))
+    });
+    best.map(|(_, course)| course)
 }
 
 /// Number and value of the least.
@@ -370,18 +367,14 @@ mod tests {
         // Table of Student's t: with 2, 9 and 29 degrees of freedom 4.303, 2.262 and 2.045 leave 2.5 % beyond; so does a
         // Gaussian's 1.960.
         for (freedom, t) in [(2.0_f64, 4.303), (9.0, 2.262), (29.0, 2.045)] {
-            // Values ±1 about a mean have the standard error √((ν + 1)/ν)/√(ν + 1) = 1/√ν, if their number is even.
-            let n = freedom as usize + 1;
+            // Values ±1 about a mean have the standard error √((ν + 1)/ν)/√(ν + 1) = 1/√ν; so have −√1.5, 0, √1.5.
             let about = t / freedom.sqrt();
-            let side = |k: usize| if k % 2 == 0 { 1.0 } else { -1.0 };
-            let values: Vec<f64> = if n % 2 == 0 {
-                (0..n).map(|k| about + side(k)).collect()
+            let spread: Vec<f64> = if freedom < 3.0 {
+                vec![-1.5_f64.sqrt(), 0.0, 1.5_f64.sqrt()]
             } else {
-                // −√1.5, 0, √1.5.
-                (0..3)
-                    .map(|k| about + (f64::from(k) - 1.0) * 1.5_f64.sqrt())
-                    .collect()
+                [-1.0, 1.0].repeat((freedom as usize).div_ceil(2))
             };
+            let values: Vec<f64> = spread.iter().map(|x| about + x).collect();
             assert!(
                 (sure(&values) - 1.960).abs() < 0.05,
                 "{freedom} {}",
