@@ -268,8 +268,8 @@ fn two_changes_of_a_vane_are_dated() {
 fn changes_of_reports_on_disk() {
     let folder = tempfile::tempdir().unwrap();
     let planted = [(12, THERE_AND_BACK), (27, TWICE)];
-    let case = case(900, 30.0, 1800.0, &planted);
-    let settings = case.write(folder.path(), "", "[analysis]\ninterval = \"30 min\"");
+    let case = case(900, 30.0, 3600.0, &planted);
+    let settings = case.write(folder.path(), "", "[analysis]\ninterval = \"60 min\"");
     let list = folder.path().join("corrected.csv");
     let run = Command::new(env!("CARGO_BIN_EXE_gyremesh"))
         .arg("calibrate")

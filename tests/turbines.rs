@@ -209,3 +209,36 @@ fn ten_farms_with_and_without_wake_sectors() {
     assert!(plain.falsely * 50 <= plain.sound);
     assert!(held.iter().take(3).all(|h| *h >= 0.92), "{held:?}");
 }
+
+#[test]
+fn keys_of_the_rotors_are_checked() {
+    let (_, _, mut case) = farm(0);
+    for of in &mut case.winds {
+        of.truncate(144);
+    }
+    let refusal = |own: &str| {
+        let folder = tempfile::tempdir().unwrap();
+        let own = format!("[analysis]\ninterval = \"10 min\"\n[calibration]\n{own}");
+        let path = case.write(folder.path(), "", &own);
+        match Setup::read(&path, &Overrides::default()) {
+            Err(error) => error.to_string(),
+            Ok(setup) => calibrate(&setup, InputOrder::Any, |_| {})
+                .unwrap_err()
+                .to_string(),
+        }
+    };
+    let unknown = refusal("rotor_diameter_of = { S001 = 120.0, T99 = 120.0 }");
+    assert!(
+        unknown.contains("calibration.rotor_diameter_of") && unknown.contains(": T99"),
+        "{unknown}"
+    );
+    let large = refusal("rotor_diameter = 1200.0");
+    assert!(
+        large.contains("1200 is out of range (0 to 500 expected)"),
+        "{large}"
+    );
+    let near = refusal("wake_reach = 0.5");
+    assert!(near.contains("0.5 is out of range"), "{near}");
+    let slip = refusal("rotor_diametre = 120.0");
+    assert!(slip.contains("is `rotor_diameter` meant?"), "{slip}");
+}
