@@ -23,7 +23,7 @@ const LEAST_TIMES: f64 = 30.0;
 pub struct ClockLag {
     /// Reported minus true time, s; positive if the station's clock is ahead.
     pub lag: f64,
-    /// Its standard error, s, with what the lags of all stations scatter by ([`add_scatter`]).
+    /// Its standard error, s, with what the lags of all stations scatter by.
     pub error: f64,
     /// Correlation with the prediction from the neighbours without the lag.
     pub correlation: f64,
