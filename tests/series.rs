@@ -445,3 +445,80 @@ fn means_by_group() {
     let again = run("period", periods, "3");
     assert_eq!(means(&by_period), means(&again));
 }
+
+/// `check --out`: the same cells in both formats, row for row.
+#[test]
+fn flagged_reports_as_parquet_hold_what_the_csv_holds() {
+    let out = tempfile::tempdir().unwrap();
+    let network = Path::new(env!("CARGO_MANIFEST_DIR")).join("networks/ostrin/network.toml");
+    let status = Command::new(env!("CARGO_BIN_EXE_gyremesh"))
+        .arg("check")
+        .arg(network)
+        .args(["--format", "csv,parquet", "--out"])
+        .arg(out.path())
+        .output()
+        .unwrap()
+        .status;
+    assert_eq!(status.code(), Some(0));
+    let mut csv = csv::Reader::from_path(out.path().join("reports_flagged.csv")).unwrap();
+    let header: Vec<String> = csv.headers().unwrap().iter().map(String::from).collect();
+    let mut csv = csv.records().map(Result::unwrap);
+    let file = File::open(out.path().join("reports_flagged.parquet")).unwrap();
+    let builder = ParquetRecordBatchReaderBuilder::try_new(file).unwrap();
+    let fields = builder.schema().fields().clone();
+    let names: Vec<String> = fields.iter().map(|f| f.name().clone()).collect();
+    assert_eq!(names, header);
+    let zstd = |c: &parquet::file::metadata::ColumnChunkMetaData| {
+        matches!(c.compression(), parquet::basic::Compression::ZSTD(_))
+    };
+    assert!(
+        builder
+            .metadata()
+            .row_groups()
+            .iter()
+            .all(|g| g.columns().iter().all(zstd))
+    );
+    let (mut rows, mut nulls) = (0, 0);
+    for batch in builder.build().unwrap() {
+        let batch = batch.unwrap();
+        for row in 0..batch.num_rows() {
+            let expected = csv.next().unwrap();
+            for (column, field) in fields.iter().enumerate() {
+                let array = batch.column(column);
+                let text = match field.data_type() {
+                    _ if array.is_null(row) => {
+                        nulls += 1;
+                        String::new()
+                    }
+                    arrow_schema::DataType::Timestamp(..) => {
+                        let micros = array.as_primitive::<TimestampMicrosecondType>().value(row);
+                        gyremesh::time::Time::from_micros(micros).to_string()
+                    }
+                    arrow_schema::DataType::Dictionary(..) => name(&batch, column, row),
+                    arrow_schema::DataType::Float64 => {
+                        let value = array.as_primitive::<Float64Type>().value(row);
+                        assert!(value.is_finite());
+                        // The same number, to the last bit.
+                        assert_eq!(
+                            expected[column].parse::<f64>().unwrap().to_bits(),
+                            value.to_bits()
+                        );
+                        expected[column].to_string()
+                    }
+                    arrow_schema::DataType::UInt8 => {
+                        array.as_primitive::<UInt8Type>().value(row).to_string()
+                    }
+                    _ => array
+                        .as_primitive::<arrow_array::types::UInt32Type>()
+                        .value(row)
+                        .to_string(),
+                };
+                assert_eq!(text, expected[column], "row {rows}, {}", header[column]);
+            }
+            rows += 1;
+        }
+    }
+    assert!(csv.next().is_none());
+    // The demo has no gusts, so that column is null throughout.
+    assert!(rows == 10_799 && nulls >= rows, "{rows} {nulls}");
+}

@@ -27,8 +27,17 @@ pub enum Fault {
         /// Hours ahead.
         hours: f64,
     },
-    /// The time stands for another end of the averaging interval.
-    ClockLabel,
+    /// The time stands for another point of the averaging interval.
+    ClockLabel {
+        /// By what share of the interval: ½ or 1.
+        share: f64,
+    },
+    /// The clock is an hour off in part of the record: daylight time.
+    DaylightTime,
+    /// The clock was set anew.
+    ClockSet,
+    /// The clock gains or loses.
+    ClockDrift,
     /// The clock is off.
     Clock,
     /// Directions say where the wind blows to.
@@ -58,6 +67,8 @@ pub enum Fault {
     Slow,
     /// Speeds are too high.
     Fast,
+    /// Its gain was off, and is in order now.
+    PutRight,
     /// It does not follow its neighbours.
     Unexplained,
 }
@@ -121,7 +132,7 @@ pub fn cause_of_factor(factor: f64, half: f64) -> Fault {
 }
 
 /// The cause of a clock error, s ahead, of standard error `error`; `averaging` is the averaging interval of the reports,
-/// s, if known.
+/// s, if known. An hour is taken for the zone, also where reports are hourly means.
 #[must_use]
 pub fn cause_of_lag(lag: f64, error: f64, interval: f64, averaging: f64) -> Fault {
     let slack = (2.0 * error).max(0.5 * interval).min(900.0);
@@ -129,9 +140,11 @@ pub fn cause_of_lag(lag: f64, error: f64, interval: f64, averaging: f64) -> Faul
     if hours != 0.0 && (lag - 3600.0 * hours).abs() <= slack {
         return Fault::ClockHours { hours };
     }
-    let label = 0.5 * averaging;
-    if label > 0.0 && (lag.abs() - label).abs() <= slack.min(0.5 * label) {
-        return Fault::ClockLabel;
+    for share in [0.5, 1.0] {
+        let label = share * averaging;
+        if label > 0.0 && (lag.abs() - label).abs() <= slack.min(0.25 * averaging) {
+            return Fault::ClockLabel { share };
+        }
     }
     Fault::Clock
 }
@@ -148,7 +161,10 @@ impl Fault {
             Self::Swapped => "u_v_swapped",
             Self::Mirrored => "mirrored",
             Self::ClockHours { .. } => "clock_hours",
-            Self::ClockLabel => "clock_label",
+            Self::ClockLabel { .. } => "clock_label",
+            Self::DaylightTime => "daylight_time",
+            Self::ClockSet => "clock_set",
+            Self::ClockDrift => "clock_drift",
             Self::Clock => "clock",
             Self::Reversed => "direction_to",
             Self::DeclinationMissing { .. } => "declination_missing",
@@ -157,6 +173,7 @@ impl Fault {
             Self::Unit { .. } => "unit",
             Self::Slow => "slow",
             Self::Fast => "fast",
+            Self::PutRight => "put_right",
             Self::Unexplained => "unexplained",
         }
     }
@@ -175,7 +192,13 @@ impl Fault {
                 let side = if *hours > 0.0 { "ahead" } else { "behind" };
                 format!("clock {} h {side}: zone or daylight time", hours.abs())
             }
-            Self::ClockLabel => "time of the other end of the averaging interval".into(),
+            Self::ClockLabel { share } if *share < 0.75 => {
+                "time half an averaging interval off (middle for start or end)".into()
+            }
+            Self::ClockLabel { .. } => "time of the other end of the averaging interval".into(),
+            Self::DaylightTime => "daylight time in part of the record".into(),
+            Self::ClockSet => "clock set anew in the record".into(),
+            Self::ClockDrift => "clock drifts".into(),
             Self::Clock => "clock off".into(),
             Self::Reversed => "direction to instead of from".into(),
             Self::DeclinationMissing { declination } => {
@@ -190,6 +213,7 @@ impl Fault {
             } => format!("{reported} taken for {taken}"),
             Self::Slow => "speeds too low".into(),
             Self::Fast => "speeds too high".into(),
+            Self::PutRight => "was off, in order now".into(),
             Self::Unexplained => "does not follow its neighbours".into(),
         }
     }
@@ -209,7 +233,12 @@ impl Fault {
                 "wiring of the vane's potentiometer, sign of a component in the logger"
             }
             Self::ClockHours { .. } => "time zone and daylight time of the logger or of its file",
-            Self::ClockLabel => "whether the time is the start, middle or end of the average",
+            Self::DaylightTime => "logger or file: switch to and from daylight time",
+            Self::ClockSet => "log of the logger's clock: when and why it was set",
+            Self::ClockDrift => "battery and quartz of the logger's clock; its synchronisation",
+            Self::ClockLabel { .. } => {
+                "whether the time is the start, middle or end of the average"
+            }
             Self::Clock => "clock of the logger and its synchronisation",
             Self::Reversed => "logger: direction from or to",
             Self::DeclinationMissing { .. } => "whether the vane was set to magnetic north",
@@ -224,6 +253,7 @@ impl Fault {
             Self::Fast => {
                 "scale of the anemometer in the logger; height of the sensor; exposed site"
             }
+            Self::PutRight => "nothing on site; leave out or correct its earlier reports",
             Self::Unexplained => {
                 "exposure of the site; vane and anemometer; what else changed there"
             }
@@ -270,7 +300,13 @@ mod tests {
             cause_of_lag(3590.0, 60.0, 300.0, 0.0),
             Fault::ClockHours { hours: 1.0 }
         );
-        assert_eq!(cause_of_lag(300.0, 20.0, 60.0, 600.0), Fault::ClockLabel);
+        for (lag, share) in [(300.0, 0.5), (-600.0, 1.0)] {
+            assert_eq!(
+                cause_of_lag(lag, 20.0, 60.0, 600.0),
+                Fault::ClockLabel { share }
+            );
+        }
+        assert_eq!(cause_of_lag(300.0, 20.0, 60.0, 0.0), Fault::Clock);
         assert_eq!(cause_of_lag(1500.0, 60.0, 300.0, 600.0), Fault::Clock);
     }
 }

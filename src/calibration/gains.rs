@@ -49,10 +49,10 @@ pub(super) struct Fit<'a> {
     /// At each time.
     pub(super) structure: Vec<StructureFunction>,
     pub(super) stretches: Vec<Stretch>,
-    /// Gains before and after the split.
-    pub(super) gains: Vec<[C; 2]>,
-    /// First time with the second gain, if there is one.
-    pub(super) splits: Vec<Option<usize>>,
+    /// Gains of each station between its splits, in the order of time; the last is that of the present.
+    pub(super) gains: Vec<Vec<C>>,
+    /// First times with the next gain, ascending; one fewer than the gains.
+    pub(super) splits: Vec<Vec<usize>>,
     /// Wind over gain, station-major; 0 where none is used.
     pub(super) z: Vec<C>,
     /// 1 where a wind is used, else 0.
@@ -113,8 +113,8 @@ impl<'a> Fit<'a> {
             stands_out: vec![false; n],
             far_off: vec![false; cells],
             stretches: Vec::new(),
-            gains: vec![[C::new(1.0, 0.0); 2]; n],
-            splits: vec![None; n],
+            gains: vec![vec![C::new(1.0, 0.0)]; n],
+            splits: vec![Vec::new(); n],
             z: vec![C::default(); cells],
             used: vec![0.0; cells],
             outlier: vec![false; cells],
@@ -161,8 +161,12 @@ impl<'a> Fit<'a> {
         self.record.times.len()
     }
 
-    /// Gives stations two gains, and fits anew.
-    pub(super) fn split(&mut self, splits: Vec<Option<usize>>) {
+    /// Gives each station a gain for each part between its splits, and fits anew.
+    pub(super) fn split(&mut self, splits: Vec<Vec<usize>>) {
+        for (gains, splits) in self.gains.iter_mut().zip(&splits) {
+            let last = gains.last().copied().unwrap_or(C::new(1.0, 0.0));
+            gains.resize(splits.len() + 1, last);
+        }
         self.splits = splits;
         self.solve();
         self.find_outliers();
@@ -246,11 +250,18 @@ impl<'a> Fit<'a> {
     }
 
     pub(super) fn gain(&self, s: usize, t: usize) -> C {
-        let [before, after] = self.gains[s];
-        match self.splits[s] {
-            Some(split) if t >= split => after,
-            _ => before,
-        }
+        self.gains[s][self.part(s, t)]
+    }
+
+    /// The part of a station's record that a time lies in.
+    pub(super) fn part(&self, s: usize, t: usize) -> usize {
+        self.splits[s].partition_point(|&split| split <= t)
+    }
+
+    /// The gain of the present.
+    pub(super) fn last_gain(&self, s: usize) -> C {
+        // There is always one.
+        self.gains[s].last().copied().unwrap_or(C::new(1.0, 0.0))
     }
 
     pub(super) fn refresh_all(&mut self) {
@@ -359,7 +370,7 @@ impl<'a> Fit<'a> {
             first.push(if sound { C::new(1.0, 0.0) } else { gain });
         }
         for (gain, first) in self.gains.iter_mut().zip(first) {
-            *gain = [first; 2];
+            *gain = vec![first];
         }
         self.refresh_all();
     }
@@ -370,13 +381,13 @@ impl<'a> Fit<'a> {
             let mut largest: f64 = 0.0;
             for s in 0..self.gains.len() {
                 let expected = self.expected(s);
-                let mut sums = [(C::default(), 0.0); 2];
+                let mut sums = vec![(C::default(), 0.0); self.gains[s].len()];
                 for e in &expected {
                     let cell = s * self.times() + e.t;
                     if self.used[cell] <= 0.0 {
                         continue;
                     }
-                    let part = usize::from(self.splits[s].is_some_and(|split| e.t >= split));
+                    let part = self.part(s, e.t);
                     let wind = self.z[cell] * self.gain(s, e.t);
                     sums[part].0 += e.weight * wind * e.field.conj();
                     sums[part].1 += e.weight * (e.field.norm_sqr() - e.excess);
@@ -399,9 +410,6 @@ impl<'a> Fit<'a> {
                     self.gains[s][part] = old * change.powf(power);
                     largest = largest.max(far);
                 }
-                if self.splits[s].is_none() {
-                    self.gains[s][1] = self.gains[s][0];
-                }
                 self.refresh(s);
             }
             self.fix_gauge();
@@ -419,18 +427,18 @@ impl<'a> Fit<'a> {
         // Angles about the mean direction of the unit vectors, so that they do not wrap.
         let mean: C = stations
             .iter()
-            .map(|&s| self.gains[s][1] / self.gains[s][1].norm())
+            .map(|&s| self.last_gain(s) / self.last_gain(s).norm())
             .sum();
         let about = if mean.norm() > 1e-9 {
             mean / mean.norm()
         } else {
             C::new(1.0, 0.0)
         };
-        let angle = |&s: &usize| (self.gains[s][1] / about).arg();
+        let angle = |&s: &usize| (self.last_gain(s) / about).arg();
         let mut angles: Vec<f64> = stations.iter().map(angle).collect();
         let mut logs: Vec<f64> = stations
             .iter()
-            .map(|&s| self.gains[s][1].norm().ln())
+            .map(|&s| self.last_gain(s).norm().ln())
             .collect();
         let Some((angle, log)) = median(&mut angles).zip(median(&mut logs)) else {
             return;

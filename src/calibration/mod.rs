@@ -18,9 +18,13 @@
 //! 4. The structure function is found again from the winds over their first gains, since the faults are in the first one.
 //!
 //! Errors come from the disagreement of days (blocks of a tenth of the record if there are fewer than five days: less sure,
-//! since such blocks hang together). Clock: lag of the largest complex correlation with the expectation. Reflection and
-//! exchange are alternative hypotheses. What all sound stations differ by beyond that (sites, weather that lasts through the
-//! record) is added as it is found, so in rough country errors are wide. A change of gain is the split of the days that explains them best.
+//! since such blocks hang together). Reflection and exchange are alternative hypotheses. What all sound stations differ by
+//! beyond that (sites, weather that lasts through the record) is added as it is found, so in rough country errors are wide.
+//! Changes of gain are splits of the days that explain them best, as many as are sure; the last state is that of the station.
+//!
+//! Clock: lag of the largest complex correlation with the expectation. A stretch of the record with another lag (daylight
+//! time), or a lag that grows (drift), is told if it leaves less of the variance on nearly all days. Lags are tried at the
+//! analysis interval and read off between them; a label that is off by less than three quarters of the interval is not told.
 //!
 //! - **Sign**: turn = reported minus true direction, degrees clockwise; factor = reported over true speed; lag positive if
 //!   the station's clock is ahead.
@@ -37,6 +41,21 @@
 //! of the turn 0.7 degrees (bias 0.02; of planted turns −0.06), of the logarithm of the factor 0.012; the 95 % intervals
 //! held 97.6 and 97.7 %. Single days: 75 % found, 0.8 % false, 1.8 degrees, 0.034; intervals held 94 %.
 //!
+//! Changes: 20 vanes in months of 40 stations that turn twice (12 degrees and back, 10 and 15 more): all with both days right to
+//! one, no change at 380 others; turns of the states off by 0.6 degrees, 88 % of their 95 % intervals held.
+//!
+//! Clocks: in 20 months of 40 stations with 5-minute reports of 10-minute means, labels off by 5 and 10 minutes, a zone, daylight
+//! time that begins and that begins and ends, and drifts of 2 and −1 minutes a day: each named so in 10 of 10, none of 730
+//! sound stations; days of the switch right to one; rates off by 3.5 s a day (17 of 20 intervals of two errors held). Lags
+//! of sound clocks scatter by 35 s. At 10 minutes the same but for the label off by 5, which is not told, and
+//! the drift of −1 minute a day, of which two in ten were taken for a clock set anew. With 7 such faults in one network the
+//! lags of their neighbours scatter by so much that the label off by 5 minutes was told in 3 of 10 only.
+//!
+//! Turbines (`tests/turbines.rs`): farms of 30 at 6 diameters, three weeks of 10-minute data, wakes after Jensen: of 50
+//! offsets of 5 to 15 degrees 49 were found, none falsely of 240; errors 0.2 degrees, 99 % held; of factors 0.014, 85 % held,
+//! since wakes slow. With wake sectors left out (8 diameters: 59 % of the values) 34 were found, 5 falsely, errors 1.9
+//! degrees: inside a farm the sectors leave too few neighbours.
+//!
 //! Stations with planted faults by what the first ticket says, two in each of ten weeks:
 //!
 //! | Planted | told so | told otherwise | not told |
@@ -51,6 +70,7 @@
 mod cause;
 mod change;
 mod clock;
+mod course;
 mod gains;
 mod record;
 mod result;
@@ -59,6 +79,7 @@ mod shape;
 mod spread;
 mod statistics;
 mod ticket;
+mod wake;
 
 use crate::align::WindBlock;
 use crate::station::{Network, Position};
@@ -68,10 +89,12 @@ use crate::units::Wind;
 
 pub use cause::{Fault, cause_of_factor, cause_of_lag, cause_of_turn};
 pub use clock::ClockLag;
+pub use course::{ClockDrift, ClockStretch, Course};
 pub use record::StationTally;
 pub use result::{Calibration, Change, GainEstimate, StationCalibration};
 pub use shape::Reflection;
 pub use ticket::{Cost, Ticket};
+pub use wake::{disturbed_sector, wake_sectors};
 
 use gains::Fit;
 use record::Record;

@@ -1,22 +1,24 @@
 //! What the calibration found of each station.
 
 use nalgebra::Complex;
+use rayon::prelude::*;
 use serde::Serialize;
 
 use super::CalibrationSettings;
-use super::change::{Split, find_split};
-use super::clock::{ClockLag, clock_lag};
+use super::change::{Blockwise, Split};
+use super::clock::{ClockLag, add_scatter, clock_lag, silence_echoes};
+use super::course::Course;
 use super::gains::{Expected, Fit};
 use super::record::{Record, StationTally, median};
 use super::shape::{Exchange, Reflection, exchanges, reflection, spikes};
-use super::spread::{Blocks, GainError, block_sums, gain_errors};
-use super::ticket::{Ticket, tickets};
+use super::spread::{BlockSum, Blocks, GainError, block_sums, gain_errors};
+use super::ticket::{Ticket, history, tickets};
 use crate::time::Time;
 
 type C = Complex<f64>;
 
 /// Rounds in which changes are looked for.
-const CHANGE_ROUNDS: usize = 3;
+const CHANGE_ROUNDS: usize = 6;
 /// Smallest change that counts: of the angle 4 degrees, of the logarithm 7 %; and in units of the median change that the
 /// best splits of all stations give.
 const LEAST_CHANGE: f64 = 0.07;
@@ -44,17 +46,17 @@ pub struct Change {
     pub at: Time,
     /// First and last time at which it may as well have been (95 %).
     pub between: [Time; 2],
-    /// The gain before it.
+    /// The gain before it, from the change before or the start of the record on.
     pub before: GainEstimate,
 }
 
 /// What was found of a station.
 #[derive(Debug, Clone, PartialEq)]
 pub struct StationCalibration {
-    /// The gain, after the change if there was one; `None` if the record is too short or has gaps.
+    /// The gain, after the last change if there was one; `None` if the record is too short or has gaps.
     pub gain: Option<GainEstimate>,
-    /// When it changed.
-    pub change: Option<Change>,
+    /// When it changed, in the order of time.
+    pub changes: Vec<Change>,
     /// The clock.
     pub clock: Option<ClockLag>,
     /// Directions that run the wrong way round.
@@ -79,6 +81,20 @@ pub struct StationCalibration {
     pub times: usize,
     /// What was set aside.
     pub tally: StationTally,
+}
+
+impl StationCalibration {
+    /// How the lag of its clock changes or grows, if that is sure.
+    #[must_use]
+    pub fn course(&self) -> Option<Course> {
+        self.clock?.course.filter(Course::is_sure)
+    }
+
+    /// The states before the present one, in words, the earliest first; empty if the gain never changed.
+    #[must_use]
+    pub fn history(&self) -> String {
+        history(&self.changes)
+    }
 }
 
 /// The calibration of a network.
@@ -106,41 +122,16 @@ impl Calibration {
         settings: &CalibrationSettings,
         declinations: &[Option<f64>],
     ) -> Self {
-        let mut sums = block_sums(&fit, blocks);
-        let mut found: Vec<Option<Split>> = vec![None; sums.len()];
-        for _ in 0..CHANGE_ROUNDS {
-            let best: Vec<Option<Split>> = sums.iter().map(|of| find_split(of)).collect();
-            // Where many stations change it is the weather that has changed, and what the sites make of it.
-            let mut sizes: Vec<f64> = best.iter().flatten().map(|split| split.change).collect();
-            let usual = median(&mut sizes).unwrap_or(0.0);
-            let least = LEAST_CHANGE.max(USUAL_CHANGES * usual);
-            let is_change = |split: &Split| split.sure && split.change >= least;
-            let new: Vec<Option<Split>> = best
-                .iter()
-                .zip(&found)
-                .map(|(split, found)| {
-                    split.filter(|split| blocks.days && found.is_none() && is_change(split))
-                })
-                .collect();
-            // A station that changes takes its neighbours' expectations along: the largest change of each goes first.
-            let size = |s: usize| new[s].map_or(0.0, |split| split.change);
-            let mut any = false;
-            for (s, split) in new.iter().enumerate() {
-                if split.is_some() && fit.leans_on(s).all(|other| size(other) <= size(s)) {
-                    found[s] = *split;
-                    any = true;
-                }
-            }
-            if !any {
-                break;
-            }
-            let first_time = |split: &Split| blocks.of.partition_point(|&b| b < split.block);
-            fit.split(found.iter().map(|f| f.as_ref().map(first_time)).collect());
-            sums = block_sums(&fit, blocks);
-        }
+        let (found, sums) = find_changes(&mut fit, blocks);
         let errors = gain_errors(&fit, blocks, &sums);
         let expected: Vec<Vec<Expected>> = (0..sums.len()).map(|s| fit.expected(s)).collect();
         let exchanged = exchanges(record, &fit, &expected, blocks.days);
+        let stations = 0..sums.len();
+        let lag = |s: usize| clock_lag(record, &fit, blocks, s);
+        let mut clocks: Vec<Option<ClockLag>> = stations.into_par_iter().map(lag).collect();
+        let inside: Vec<bool> = (0..sums.len()).map(|s| fit.surrounded(s)).collect();
+        add_scatter(&mut clocks, &inside, |s| fit.leans_on(s));
+        silence_echoes(&mut clocks, |s| fit.leans_on(s));
         let start_of = |block: usize| {
             let t = blocks.of.partition_point(|&b| b < block);
             record
@@ -151,14 +142,21 @@ impl Calibration {
                 .unwrap_or_default()
         };
         let station = |s: usize| -> StationCalibration {
-            let [before, after] = fit.gains[s];
-            let change = found[s].and_then(|split| {
-                Some(Change {
-                    at: start_of(split.block),
-                    between: [start_of(split.from), start_of(split.to)],
-                    before: estimate(before, errors[s][0].as_ref()?),
-                })
-            });
+            let parts = fit.gains[s].iter().zip(&errors[s]);
+            let mut estimates: Vec<Option<GainEstimate>> = parts
+                .map(|(gain, error)| Some(estimate(*gain, error.as_ref()?)))
+                .collect();
+            let gain = estimates.pop().flatten();
+            let changes = found[s]
+                .iter()
+                .zip(estimates)
+                .filter_map(|(split, before)| {
+                    Some(Change {
+                        at: start_of(split.block),
+                        between: [start_of(split.from), start_of(split.to)],
+                        before: before?,
+                    })
+                });
             let mut squares: Vec<f64> = expected[s]
                 .iter()
                 .filter_map(|e| Some((record.wind(s, e.t)? - e.field).norm_sqr()))
@@ -166,9 +164,9 @@ impl Calibration {
             let times = squares.len();
             let speeds = expected[s].iter().map(|e| e.field.norm()).sum::<f64>();
             StationCalibration {
-                gain: errors[s][1].as_ref().map(|e| estimate(after, e)),
-                change,
-                clock: clock_lag(record, &fit, blocks, s),
+                gain,
+                changes: changes.collect(),
+                clock: clocks[s],
                 reflection: reflection(record, &expected[s], s),
                 exchange: exchanged.iter().find_map(|x: &Exchange| match x.stations {
                     [a, b] if a == s => Some((b, x.left)),
@@ -178,7 +176,7 @@ impl Calibration {
                 spikes: spikes(&fit, record, s),
                 misfit: fit.misfit[s],
                 predicts: fit.may_predict[s],
-                inside: fit.surrounded(s),
+                inside: inside[s],
                 // Median of an exponential distribution: ln 2 of its mean.
                 deviation: (median(&mut squares).unwrap_or(0.0) / std::f64::consts::LN_2).sqrt(),
                 speed: speeds / expected[s].len().max(1) as f64,
@@ -199,6 +197,57 @@ impl Calibration {
             times: record.times.len(),
         }
     }
+}
+
+/// Finds the changes of all stations and gives the fit their parts. With the changes the sums of the blocks, each over the
+/// gain of its part.
+fn find_changes(fit: &mut Fit, blocks: &Blocks) -> (Vec<Vec<Split>>, Vec<Vec<BlockSum>>) {
+    let mut sums = block_sums(fit, blocks);
+    let mut found: Vec<Vec<Split>> = vec![Vec::new(); sums.len()];
+    if !blocks.days {
+        return (found, sums);
+    }
+    let first_time = |split: &Split| blocks.of.partition_point(|&b| b < split.block);
+    for _ in 0..CHANGE_ROUNDS {
+        let whole: Vec<Blockwise> = (0..sums.len())
+            .map(|s| Blockwise::new(&whole_gain(fit, blocks, s, &sums[s])))
+            .collect();
+        // Where many stations change it is the weather that has changed, and what the sites make of it.
+        let mut sizes: Vec<f64> = whole.iter().filter_map(Blockwise::best_change).collect();
+        let usual = median(&mut sizes).unwrap_or(0.0);
+        let least = LEAST_CHANGE.max(USUAL_CHANGES * usual);
+        let now: Vec<Vec<Split>> = whole.iter().map(|w| w.changes(least)).collect();
+        let size = |s: usize| -> f64 {
+            let more = now[s].len() > found[s].len();
+            let sizes = now[s].iter().filter(|_| more).map(|split| split.change);
+            sizes.fold(0.0, f64::max)
+        };
+        // A station that changes takes its neighbours' expectations along: the largest change of each goes first.
+        let first = |s: &usize| size(*s) > 0.0 && fit.leans_on(*s).all(|o| size(o) <= size(*s));
+        let chosen: Vec<usize> = (0..now.len()).filter(first).collect();
+        if chosen.is_empty() {
+            break;
+        }
+        for s in chosen {
+            found[s].clone_from(&now[s]);
+        }
+        let times = |splits: &Vec<Split>| splits.iter().map(first_time).collect();
+        fit.split(found.iter().map(times).collect());
+        sums = block_sums(fit, blocks);
+    }
+    (found, sums)
+}
+
+/// The sums of a station's blocks with its gain in them, relative to that of the present.
+fn whole_gain(fit: &Fit, blocks: &Blocks, s: usize, sums: &[BlockSum]) -> Vec<BlockSum> {
+    let time = |block: usize| blocks.of.partition_point(|&b| b < block);
+    let gain = |block: usize| fit.gain(s, time(block)) / fit.last_gain(s);
+    let sums = sums.iter().enumerate();
+    sums.map(|(block, sum)| BlockSum {
+        top: sum.top * gain(block),
+        bottom: sum.bottom,
+    })
+    .collect()
 }
 
 fn estimate(gain: C, error: &GainError) -> GainEstimate {

@@ -88,7 +88,7 @@ impl Fit<'_> {
                 for sum in &sums[s] {
                     total.add(sum);
                 }
-                let raw = self.gains[s][1] * total.top / total.bottom;
+                let raw = self.last_gain(s) * total.top / total.bottom;
                 let error = own_variance(&sums[s]).unwrap_or(f64::INFINITY).sqrt();
                 let far = if total.bottom > 0.0 && is_sane(raw) {
                     raw.ln().norm()

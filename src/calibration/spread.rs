@@ -124,7 +124,7 @@ pub(super) fn own_variance(sums: &[BlockSum]) -> Option<f64> {
     Some(0.5 * (angle + log))
 }
 
-/// Errors of all stations' gains, before and after their splits.
+/// Errors of all stations' gains, of each part between their splits.
 ///
 /// Near the solution the relative error of a station's gain is (1 + λ) ε = s + C ε: λ is the weight of the prior, s is what the residuals of a block add, C how
 /// its prediction leans on the others. Solved for the residuals of each block this gives what each block adds to each
@@ -138,35 +138,38 @@ pub(super) fn gain_errors(
     fit: &Fit,
     blocks: &Blocks,
     sums: &[Vec<BlockSum>],
-) -> Vec<[Option<GainError>; 2]> {
+) -> Vec<Vec<Option<GainError>>> {
     let stations = fit.gains.len();
     let scores: Vec<Vec<C>> = sums.iter().map(|of| station_scores(of, of)).collect();
     let coupling: Vec<Vec<(usize, C)>> = (0..stations).map(|s| fit.coupling(s)).collect();
     let prior: Vec<f64> = (0..stations).map(|s| fit.prior_of(s)).collect();
     let influence = solve(&scores, &coupling, &prior, blocks.count);
-    let split_block = |s: usize| fit.splits[s].and_then(|t| blocks.of.get(t).copied());
+    let block_of = |t: &usize| blocks.of.get(*t).copied().unwrap_or(blocks.count);
     // Of each station and part: variance of angle and of log, blocks in it.
-    let raw = |s: usize| -> [Option<[f64; 3]>; 2] {
-        let Some(split) = split_block(s) else {
-            let all = spread(&influence[s], &sums[s], blocks.days);
-            return [all; 2];
-        };
+    let raw = |s: usize| -> Vec<Option<[f64; 3]>> {
+        if fit.splits[s].is_empty() {
+            return vec![spread(&influence[s], &sums[s], blocks.days)];
+        }
         // The own residuals count by their part alone; what comes of the others is that of the whole.
-        [(0, split), (split, blocks.count)].map(|(from, to)| {
+        let ends = fit.splits[s].iter().map(block_of).chain([blocks.count]);
+        let mut from = 0;
+        ends.map(|to| {
             let part = &sums[s][from..to];
             let own = station_scores(part, part);
             let whole = &scores[s];
             let of_part: Vec<C> = (from..to)
                 .map(|b| influence[s][b] + (own[b - from] - whole[b]) / (1.0 + prior[s]))
                 .collect();
+            from = to;
             spread(&of_part, part, blocks.days)
         })
+        .collect()
     };
     let found: Vec<_> = (0..stations).map(raw).collect();
     let typical = |k: usize| {
         let mut values: Vec<f64> = found
             .iter()
-            .filter_map(|f| f[1].map(|v| v[k] * v[2]))
+            .filter_map(|f| f.last()?.map(|v| v[k] * v[2]))
             .collect();
         median(&mut values)
     };
@@ -185,17 +188,18 @@ pub(super) fn gain_errors(
             freedom: freedom + shared,
         })
     };
-    let mut errors: Vec<_> = found.into_iter().map(|parts| parts.map(finish)).collect();
+    let all = |parts: Vec<_>| parts.into_iter().map(finish).collect();
+    let mut errors: Vec<Vec<_>> = found.into_iter().map(all).collect();
     add_scatter(fit, &mut errors);
     errors
 }
 
 /// Adds what sound stations differ by and blocks do not show: sites, and weather that lasts through the record. It is what
 /// the robust variance of all gains has beyond the median of the variances of their errors.
-fn add_scatter(fit: &Fit, errors: &mut [[Option<GainError>; 2]]) {
+fn add_scatter(fit: &Fit, errors: &mut [Vec<Option<GainError>>]) {
     let excess = |value: fn(C) -> f64, error: fn(&GainError) -> f64| -> f64 {
-        let known = errors.iter().zip(&fit.gains);
-        let known = known.filter_map(|(e, gain)| Some((gain[1], e[1]?)));
+        let known = errors.iter().enumerate();
+        let known = known.filter_map(|(s, e)| Some((fit.last_gain(s), (*e.last()?)?)));
         let (mut sizes, mut variances): (Vec<f64>, Vec<f64>) = known
             .map(|(gain, e)| (value(gain).abs(), error(&e).powi(2)))
             .unzip();

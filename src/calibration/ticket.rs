@@ -3,8 +3,8 @@
 use serde::Serialize;
 
 use super::cause::{Fault, cause_of_factor, cause_of_lag, cause_of_turn};
-use super::result::StationCalibration;
-use super::{CalibrationSettings, ClockLag, GainEstimate};
+use super::result::{Change, StationCalibration};
+use super::{CalibrationSettings, ClockLag, Course, GainEstimate};
 use crate::polygon::StationPolygon;
 use crate::time::Time;
 
@@ -32,6 +32,9 @@ const LEAST_CORRELATION: f64 = 0.6;
 /// Smallest lag that is told, in steps of the analysis interval, and in standard errors.
 const LEAST_LAG: f64 = 1.5;
 const LAG_ERRORS: f64 = 4.0;
+/// A lag of less than an interval is told only if days agree on it by so many standard deviations of theirs.
+const LEAST_SMALL_LAG: f64 = 0.75;
+const SURE_LAG: f64 = 3.0;
 
 /// A fault of a station.
 #[derive(Debug, Clone, PartialEq)]
@@ -48,6 +51,8 @@ pub struct Ticket {
     pub unit: &'static str,
     /// First time after the change, with the interval; `None` if it was so all the time.
     pub since: Option<(Time, [Time; 2])>,
+    /// The states before, in words; empty if it was so all the time.
+    pub before: String,
     /// What it is seen by.
     pub evidence: String,
     /// Error of the station's wind, m/s.
@@ -127,6 +132,7 @@ fn no_gain(
         error: None,
         unit,
         since: None,
+        before: String::new(),
         evidence,
         wind_error: station.deviation.max(0.1),
     };
@@ -175,6 +181,9 @@ fn no_gain(
         );
         return Some(ticket(fault, reflection.angle, "degrees", evidence));
     }
+    if let Some(course) = station.course() {
+        return Some(course_ticket(&course, ticket, interval));
+    }
     if let Some(clock) = station
         .clock
         .filter(|c| is_off(c, station.inside, days, interval))
@@ -217,40 +226,145 @@ fn is_off(clock: &ClockLag, inside: bool, days: bool, interval: f64) -> bool {
         LAG_LEAVES_OF_STORM
     };
     let left = |correlation: f64| 1.0 - correlation.max(0.0).powi(2);
-    clock.lag.abs() >= LEAST_LAG * interval
-        && clock.with_lag >= LEAST_CORRELATION
+    let large = clock.lag.abs() >= LEAST_LAG * interval
+        && left(clock.with_lag) <= leaves * left(clock.correlation);
+    // A label off by some minutes leaves nearly as much, but all days agree on it.
+    let small = days && clock.sure >= SURE_LAG && clock.lag.abs() >= LEAST_SMALL_LAG * interval;
+    clock.with_lag >= LEAST_CORRELATION
         && clock.lag.abs() >= LAG_ERRORS * clock.error
-        && left(clock.with_lag) <= leaves * left(clock.correlation)
+        && (large || small)
 }
 
-/// Turn and factor of a station.
+/// The ticket of a clock whose error changes or grows.
+fn course_ticket(
+    course: &Course,
+    ticket: impl Fn(Fault, f64, &'static str, String) -> Ticket,
+    interval: f64,
+) -> Ticket {
+    let minutes = |lag: f64| lag / 60.0;
+    match course {
+        Course::Drift(drift) => {
+            let half = 0.5 * drift.rate * drift.days;
+            let evidence = format!(
+                "{:+.0} to {:+.0} min ahead within {:.0} days",
+                minutes(drift.middle - half),
+                minutes(drift.middle + half),
+                drift.days
+            );
+            let mut found = ticket(Fault::ClockDrift, drift.rate, "s/day", evidence);
+            found.error = Some(drift.error);
+            found
+        }
+        Course::Stretch(stretch) => {
+            let (inside, outside) = (stretch.inside, stretch.outside);
+            let slack = (2.0 * interval).clamp(300.0, 900.0);
+            let hour = ((inside - outside).abs() - 3600.0).abs() <= slack
+                && inside.abs().min(outside.abs()) <= slack;
+            let fault = if hour {
+                Fault::DaylightTime
+            } else {
+                Fault::ClockSet
+            };
+            let size = if inside.abs() >= outside.abs() {
+                inside
+            } else {
+                outside
+            };
+            let day = |t: Time| -> String { t.to_string().chars().take(10).collect() };
+            let evidence = format!(
+                "{:+.0} min from {} to {}, else {:+.0} min",
+                minutes(inside),
+                day(stretch.from),
+                stretch.to.map_or_else(|| "the end".into(), day),
+                minutes(outside)
+            );
+            let mut found = ticket(fault, size, "s", evidence);
+            found.since = Some((stretch.from, stretch.between));
+            found
+        }
+    }
+}
+
+/// Turn and factor of a station; if it has neither now but had, that.
 fn gain_tickets(
     s: usize,
     station: &StationCalibration,
     days: bool,
     declination: Option<f64>,
-) -> impl Iterator<Item = Ticket> {
-    let gain = station.gain;
-    let since = station.change.map(|c| (c.at, c.between));
+) -> Vec<Ticket> {
+    let Some(gain) = &station.gain else {
+        return Vec::new();
+    };
     let sure = if days { SURE } else { SURE_OF_DAY };
-    let turned = gain.and_then(|gain| turn_ticket(s, station, (&gain, sure), declination, since));
-    let scaled = gain.and_then(|gain| factor_ticket(s, station, (&gain, sure), since));
-    turned.into_iter().chain(scaled)
+    let of = |gain: &GainEstimate| {
+        let turned = turn_ticket(s, station, (gain, sure), declination);
+        turned
+            .into_iter()
+            .chain(factor_ticket(s, station, (gain, sure)))
+    };
+    let now: Vec<Ticket> = of(gain).collect();
+    if !now.is_empty() {
+        return now;
+    }
+    let past = station.changes.iter().rev();
+    let past = past.filter_map(|change| of(&change.before).next().map(|t| (change, t)));
+    let put_right = past.take(1).map(|(change, ticket)| Ticket {
+        fault: Fault::PutRight,
+        since: Some((change.at, change.between)),
+        before: history(&station.changes),
+        wind_error: 0.0,
+        ..ticket
+    });
+    put_right.collect()
 }
 
-type Since = Option<(Time, [Time; 2])>;
+/// A gain is the same as another if they differ by less: degrees, logarithm, and joint standard errors.
+const SAME: (f64, f64, f64) = (2.0, 0.04, 3.0);
+
+/// The change since which a value has been what it is now.
+fn since(
+    changes: &[Change],
+    is_same: impl Fn(&GainEstimate) -> bool,
+) -> (Option<(Time, [Time; 2])>, String) {
+    let before = changes.iter().rposition(|c| !is_same(&c.before));
+    let Some(k) = before else {
+        return (None, String::new());
+    };
+    let change = &changes[k];
+    let words = history(&changes[..=k]);
+    (Some((change.at, change.between)), words)
+}
+
+/// States in words, the earliest first.
+pub(super) fn history(changes: &[Change]) -> String {
+    let state = |c: &Change| {
+        let day: String = c.at.to_string().chars().take(10).collect();
+        let GainEstimate {
+            turn,
+            turn_se,
+            factor,
+            ..
+        } = c.before;
+        format!("{turn:+.1} ± {turn_se:.1} degrees, x {factor:.2} until {day}")
+    };
+    let states: Vec<String> = changes.iter().map(state).collect();
+    states.join("; ")
+}
 
 fn turn_ticket(
     s: usize,
     station: &StationCalibration,
     (gain, sure): (&GainEstimate, f64),
     declination: Option<f64>,
-    since: Since,
 ) -> Option<Ticket> {
     let half = gain.half_95 * gain.turn_se;
     if gain.turn.abs() < LEAST_TURN || gain.turn.abs() < sure * half {
         return None;
     }
+    let (since, before) = since(&station.changes, |before| {
+        let off = (before.turn - gain.turn).rem_euclid(360.0);
+        off.min(360.0 - off) < SAME.0.max(SAME.2 * before.turn_se.hypot(gain.turn_se))
+    });
     Some(Ticket {
         station: s,
         fault: cause_of_turn(gain.turn, half, declination),
@@ -258,6 +372,7 @@ fn turn_ticket(
         error: Some(gain.turn_se),
         unit: "degrees",
         since,
+        before,
         evidence: evidence(station),
         wind_error: 2.0 * station.speed * (0.5 * gain.turn).to_radians().sin().abs(),
     })
@@ -267,13 +382,16 @@ fn factor_ticket(
     s: usize,
     station: &StationCalibration,
     (gain, sure): (&GainEstimate, f64),
-    since: Since,
 ) -> Option<Ticket> {
     let log = gain.factor.ln();
     let half = gain.half_95 * gain.factor_se / gain.factor;
     if log.abs() < LEAST_LOG || log.abs() < sure * half {
         return None;
     }
+    let (since, before) = since(&station.changes, |before| {
+        let error = (before.factor_se / before.factor).hypot(gain.factor_se / gain.factor);
+        (before.factor / gain.factor).ln().abs() < SAME.1.max(SAME.2 * error)
+    });
     Some(Ticket {
         station: s,
         fault: cause_of_factor(gain.factor, half),
@@ -281,6 +399,7 @@ fn factor_ticket(
         error: Some(gain.factor_se),
         unit: "",
         since,
+        before,
         evidence: evidence(station),
         wind_error: station.speed * (gain.factor - 1.0).abs(),
     })

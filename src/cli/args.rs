@@ -62,6 +62,9 @@ days the errors are less sure.
 Settings:
   [calibration]  exclude_sectors     sectors of direction left out, degrees, such as [[120, 160]] (wakes, lee)
                  exclude_sectors_of  the same by station: { T01 = [[200, 230]] }
+                 rotor_diameter      of turbines, m: leaves out the sectors that they disturb for each other
+                 rotor_diameter_of   the same by station: { T01 = 120, MAST = 0 }
+                 wake_reach          distance in diameters up to which a turbine disturbs another [20]
 
 Example: gyremesh calibrate networks/ostrin/network.toml --out out/ostrin
 
@@ -72,7 +75,8 @@ Reads:   settings, station list, report files.
 Prints:  for each file the rows, passed on and set aside by reason; for each station what its reports hold, first and \
 last report, the usual time between them, gaps, and the steps to which it rounds; repeats that disagree; how many \
 reports each test found suspect or failed, and the worst stations.
-Writes:  with --out: reports_flagged.csv, every report by time with its own flag, the flag of each test, and its line.
+Writes:  with --out: reports_flagged.csv, every report by time with its own flag, the flag of each test, and its line; \
+reports_flagged.parquet with --format parquet or csv,parquet.
 
 Flags are those of IOOS QARTOD: 1 pass, 2 not evaluated, 3 suspect, 4 fail, 9 missing. Tests: timing_gap (9: the report \
 before is missing; not in the report's own flag), location, gross_range, climatology, spike, rate_of_change, flat_line, \
@@ -174,6 +178,15 @@ pub struct CheckArgs {
     /// Write reports_flagged.csv, all reports with the flag of each test, into this folder
     #[arg(long, value_name = "DIR")]
     pub out: Option<PathBuf>,
+    /// Formats of the flagged reports, several separated by commas
+    #[arg(
+        long,
+        value_name = "FORMAT",
+        value_delimiter = ',',
+        default_value = "csv",
+        requires = "out"
+    )]
+    pub format: Vec<Format>,
     /// Print every test of a station's reports at, or nearest to, the time of --at, with its numbers
     #[arg(long, value_name = "STATION", requires = "at")]
     pub explain: Option<String>,
@@ -364,9 +377,9 @@ pub enum Parts {
 /// A format of the series.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, clap::ValueEnum)]
 pub enum Format {
-    /// polygons.csv
+    /// Text
     Csv,
-    /// polygons.parquet: the same columns, typed, null for missing
+    /// The same columns, typed, null for missing
     Parquet,
 }
 

@@ -80,6 +80,9 @@ fn ticket_text(out: &mut String, setup: &Setup, ticket: &Ticket, cost: &Cost) {
         let _ = writeln!(out, "  {name:<9} {}", cut(text, WIDTH - 12));
     };
     line("when", &since);
+    for state in ticket.before.split("; ").filter(|state| !state.is_empty()) {
+        line("before", state);
+    }
     line("evidence", &ticket.evidence);
     line("check", ticket.fault.to_check());
     line(
@@ -106,6 +109,10 @@ fn size(ticket: &Ticket) -> String {
     };
     match ticket.unit {
         "degrees" => format!("{:+.1}{} degrees", ticket.size, error(1, 1.0)),
+        "s/day" => {
+            let rate = ticket.size / 60.0;
+            format!("{rate:+.2}{} min a day", error(2, 60.0))
+        }
         "s" => format!("{:+.0}{} min", ticket.size / 60.0, error(0, 60.0)),
         "share" => format!("{:.1} %", 100.0 * ticket.size),
         "ratio" => format!("{:.0} times", ticket.size),

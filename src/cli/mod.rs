@@ -17,7 +17,7 @@ use self::args::{Args, CalibrateArgs, CheckArgs, Command, EstimateArgs, Format, 
 use self::expect::Expectation;
 use crate::error::{Error, ErrorKind, nearest_name};
 use crate::output::{
-    FlaggedRows, Formats, OutputSet, calibration_csv, calibration_json, corrected_list,
+    FlaggedFiles, Formats, OutputSet, calibration_csv, calibration_json, corrected_list,
     corrected_list_section, corrections_of, maintenance_csv, means_csv, mesh_csv, mesh_geojson,
     reading_json, series, stations_csv, structure_csv, summary_csv, summary_json,
 };
@@ -86,28 +86,29 @@ fn check(args: &CheckArgs) -> Result<Status, Error> {
         (Some(id), Some(at)) => Some((station(network, id)?, at)),
         _ => None,
     };
-    let rows = FlaggedRows::new(settings, network);
+    let formats = Formats {
+        csv: args.format.contains(&Format::Csv),
+        parquet: args.format.contains(&Format::Parquet),
+    };
     let read = |order: InputOrder| {
         let mut set = match &args.out {
             Some(folder) => Some(OutputSet::new(folder)?),
             None => None,
         };
-        let mut file = None;
+        let mut files = None;
         let reading = Reading::with(settings, network, order, explain, |window, neighbours| {
             let Some(set) = &mut set else {
                 return Ok(());
             };
-            let file = match file {
-                Some(file) => file,
-                None => {
-                    let number = set.create("reports_flagged.csv")?;
-                    set.write(number, FlaggedRows::header().as_bytes())?;
-                    *file.insert(number)
-                }
+            let files = match &mut files {
+                Some(files) => files,
+                None => files.insert(FlaggedFiles::new(settings, network, formats, set)?),
             };
-            let pieces = rows.encode(window, neighbours);
-            pieces.iter().try_for_each(|piece| set.write(file, piece))
+            files.write(set, window, neighbours)
         })?;
+        if let (Some(set), Some(files)) = (&mut set, files) {
+            files.finish(set)?;
+        }
         Ok::<_, Error>((reading, set))
     };
     let (reading, set) = match read(InputOrder::first_try(&settings.reports)) {

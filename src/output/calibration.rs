@@ -6,7 +6,9 @@ use serde_json::{Value, json};
 
 use super::CAUTION;
 use super::csv::{number, optional, quoted};
-use crate::calibration::{Fault, GainEstimate, StationCalibration, Ticket};
+use crate::calibration::{
+    ClockDrift, ClockStretch, Course, Fault, GainEstimate, StationCalibration, Ticket,
+};
 use crate::pipeline::{CalibrationOutcome, Setup};
 use crate::station::{Correction, Station};
 use crate::units::North;
@@ -19,7 +21,7 @@ pub const GAUGE: &str = "Turns and factors are relative to the network's median:
 #[must_use]
 pub fn maintenance_csv(setup: &Setup, outcome: &CalibrationOutcome) -> String {
     let mut out = String::from(
-        "station,cause,what,size,standard_error,unit,since,since_earliest,since_latest,evidence,check,wind_error,\
+        "station,cause,what,size,standard_error,unit,since,since_earliest,since_latest,before,evidence,check,wind_error,\
          polygons,polygon_error_mean,polygon_error_largest\n",
     );
     for (ticket, cost) in outcome.calibration.tickets.iter().zip(&outcome.costs) {
@@ -37,6 +39,7 @@ pub fn maintenance_csv(setup: &Setup, outcome: &CalibrationOutcome) -> String {
             at,
             earliest,
             latest,
+            quoted(&ticket.before),
             quoted(&ticket.evidence),
             quoted(ticket.fault.to_check()),
             number(ticket.wind_error),
@@ -64,13 +67,13 @@ fn id(setup: &Setup, station: usize) -> &str {
     station.map_or("", |s| s.id.as_str())
 }
 
-/// `calibration.csv`: a row for each station. Turn: reported minus true direction, degrees clockwise; factor: reported over
-/// true speed; clock: reported minus true time, s.
+/// `calibration.csv`: a row for each station, its gain that after the last change. Turn: reported minus true direction, degrees clockwise; factor: reported over
+/// true speed; clock: reported minus true time, s (drift in s a day; another value meanwhile, from and until a time).
 #[must_use]
 pub fn calibration_csv(setup: &Setup, outcome: &CalibrationOutcome) -> String {
     let mut out = String::from(
-        "station,turn,turn_se,factor,factor_se,half_95,changed,turn_before,factor_before,clock,clock_se,correlation,\
-         correlation_with_clock,misfit,spikes,deviation,mean_speed,inside,predicts,blocks,times,values,stuck,still,excluded\n",
+        "station,turn,turn_se,factor,factor_se,half_95,changes,changed,turn_before,factor_before,before,clock,clock_se,correlation,\
+         correlation_with_clock,clock_drift,clock_drift_se,clock_from,clock_until,clock_meanwhile,misfit,spikes,deviation,mean_speed,inside,predicts,blocks,times,values,stuck,still,excluded\n",
     );
     for (station, found) in setup
         .network
@@ -79,9 +82,10 @@ pub fn calibration_csv(setup: &Setup, outcome: &CalibrationOutcome) -> String {
         .zip(&outcome.calibration.stations)
     {
         let gain = |f: fn(&GainEstimate) -> f64| optional(found.gain.as_ref().map(f));
-        let before =
-            |f: fn(&GainEstimate) -> f64| optional(found.change.as_ref().map(|c| f(&c.before)));
+        let last = found.changes.last();
+        let before = |f: fn(&GainEstimate) -> f64| optional(last.map(|c| f(&c.before)));
         let clock = found.clock;
+        let (stretch, drift) = course_of(found);
         let fields = [
             quoted(&station.id),
             gain(|g| g.turn),
@@ -89,13 +93,22 @@ pub fn calibration_csv(setup: &Setup, outcome: &CalibrationOutcome) -> String {
             gain(|g| g.factor),
             gain(|g| g.factor_se),
             gain(|g| g.half_95),
-            found.change.map_or_else(String::new, |c| c.at.to_string()),
+            found.changes.len().to_string(),
+            last.map_or_else(String::new, |c| c.at.to_string()),
             before(|g| g.turn),
             before(|g| g.factor),
+            quoted(&found.history()),
             optional(clock.map(|c| c.lag)),
             optional(clock.map(|c| c.error)),
             optional(clock.map(|c| c.correlation)),
             optional(clock.map(|c| c.with_lag)),
+            optional(drift.map(|d| d.rate)),
+            optional(drift.map(|d| d.error)),
+            stretch.map_or_else(String::new, |s| s.from.to_string()),
+            stretch
+                .and_then(|s| s.to)
+                .map_or_else(String::new, |t| t.to_string()),
+            optional(stretch.map(|s| s.inside)),
             number(found.misfit),
             number(found.spikes),
             number(found.deviation),
@@ -115,6 +128,14 @@ pub fn calibration_csv(setup: &Setup, outcome: &CalibrationOutcome) -> String {
     out
 }
 
+fn course_of(station: &StationCalibration) -> (Option<ClockStretch>, Option<ClockDrift>) {
+    match station.course() {
+        Some(Course::Stretch(stretch)) => (Some(stretch), None),
+        Some(Course::Drift(drift)) => (None, Some(drift)),
+        None => (None, None),
+    }
+}
+
 /// All of it as JSON.
 #[must_use]
 pub fn calibration_json(setup: &Setup, outcome: &CalibrationOutcome) -> String {
@@ -130,6 +151,7 @@ pub fn calibration_json(setup: &Setup, outcome: &CalibrationOutcome) -> String {
             "since": t.since.map(|(at, [a, b])| json!({
                 "at": at.to_string(), "earliest": a.to_string(), "latest": b.to_string(),
             })),
+            "before": t.before,
             "evidence": t.evidence,
             "check": t.fault.to_check(),
             "wind_error": t.wind_error,
@@ -137,16 +159,26 @@ pub fn calibration_json(setup: &Setup, outcome: &CalibrationOutcome) -> String {
         })
     };
     let station = |(s, found): (&Station, &StationCalibration)| -> Value {
+        let (stretch, drift) = course_of(found);
         json!({
             "station": s.id,
             "gain": found.gain,
-            "changed": found.change.map(|c| json!({
+            "changes": found.changes.iter().map(|c| json!({
                 "at": c.at.to_string(),
                 "earliest": c.between[0].to_string(),
                 "latest": c.between[1].to_string(),
                 "before": c.before,
-            })),
+            })).collect::<Vec<Value>>(),
             "clock": found.clock,
+            "clock_drift": drift.map(|d| json!({
+                "rate": d.rate, "standard_error": d.error, "middle": d.middle, "days": d.days,
+            })),
+            "clock_meanwhile": stretch.map(|c| json!({
+                "from": c.from.to_string(),
+                "until": c.to.map(|t| t.to_string()),
+                "lag": c.inside,
+                "else": c.outside,
+            })),
             "misfit": found.misfit,
             "spikes": found.spikes,
             "blocks": found.blocks,
@@ -171,7 +203,7 @@ pub fn calibration_json(setup: &Setup, outcome: &CalibrationOutcome) -> String {
         "stations": stations.map(station).collect::<Vec<Value>>(),
         "reports": outcome.reading.rows,
         "warnings": outcome.warnings.iter().map(ToString::to_string).collect::<Vec<_>>(),
-        "units": { "turn": "degrees clockwise, reported minus true", "factor": "reported over true", "clock": "s ahead" },
+        "units": { "turn": "degrees clockwise, reported minus true", "factor": "reported over true", "clock": "s ahead", "clock_drift": "s ahead a day" },
         "gauge": GAUGE,
         "caution": CAUTION,
     });

@@ -5,6 +5,8 @@ mod csv;
 mod file;
 mod fits;
 mod flagged;
+#[cfg(feature = "parquet")]
+mod flagged_parquet;
 mod geojson;
 mod kinematics;
 #[cfg(feature = "parquet")]
@@ -26,7 +28,7 @@ pub use calibration::{
 pub(crate) use csv::quoted;
 pub use csv::{PolygonRows, means_csv, mesh_csv, stations_csv, summary_csv};
 pub use file::OutputSet;
-pub use flagged::FlaggedRows;
+pub use flagged::FlaggedFiles;
 pub use geojson::{mesh_geojson, outline_geometry};
 pub use reading::reading_json;
 pub use series::{Formats, SeriesEncoder, SeriesFiles, series};

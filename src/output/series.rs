@@ -15,12 +15,12 @@ use crate::integral::EstimateBlock;
 use crate::kinematics::KinematicsBlock;
 use crate::pipeline::Setup;
 
-/// Formats of the series.
+/// Formats of the series, and of the flagged reports.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub struct Formats {
-    /// `polygons.csv`
+    /// CSV: `polygons.csv`, `reports_flagged.csv`.
     pub csv: bool,
-    /// `polygons.parquet`
+    /// Parquet: `polygons.parquet`, `reports_flagged.parquet`.
     pub parquet: bool,
 }
 

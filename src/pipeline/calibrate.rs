@@ -7,7 +7,7 @@ use super::field::FieldState;
 use super::run::{levels_agree, no_usable_report};
 use super::{Reading, Setup, Window, Windows};
 use crate::align::{Aligner, StationSensors, WindBlock, block_times};
-use crate::calibration::{Calibration, CalibrationSettings, Calibrator, Cost};
+use crate::calibration::{Calibration, CalibrationSettings, Calibrator, Cost, wake_sectors};
 use crate::error::Error;
 use crate::report::{InputOrder, ReportFiles};
 use crate::station::Declinations;
@@ -39,17 +39,7 @@ pub fn calibrate(
     mut progress: impl FnMut(u64),
 ) -> Result<CalibrationOutcome, Error> {
     let network = &setup.network;
-    let named = setup.settings.calibration.station_sectors.keys();
-    let unknown: Vec<&str> = named
-        .map(String::as_str)
-        .filter(|id| network.find(id).is_none())
-        .collect();
-    if !unknown.is_empty() {
-        return Err(Error::Network(format!(
-            "`calibration.exclude_sectors_of` names stations that are not in the list: {}",
-            unknown.join(", ")
-        )));
-    }
+    known_stations(setup)?;
     let files = ReportFiles::new(&setup.settings.reports, network);
     let mut windows = Windows::new(&files, &setup.settings, order)?;
     let (factors, height_warnings) = height_factors(&setup.settings, network);
@@ -128,6 +118,41 @@ impl State<'_> {
     }
 }
 
+/// Refuses settings that name stations which are not in the list.
+fn known_stations(setup: &Setup) -> Result<(), Error> {
+    let chosen = &setup.settings.calibration;
+    let sectors = chosen.station_sectors.keys();
+    let rotors = chosen.station_rotors.keys();
+    for (key, named) in [
+        ("exclude_sectors_of", sectors.collect::<Vec<_>>()),
+        ("rotor_diameter_of", rotors.collect()),
+    ] {
+        let unknown = named.iter().map(|id| id.as_str());
+        let unknown: Vec<&str> = unknown
+            .filter(|id| setup.network.find(id).is_none())
+            .collect();
+        if !unknown.is_empty() {
+            return Err(Error::Network(format!(
+                "`calibration.{key}` names stations that are not in the list: {}",
+                unknown.join(", ")
+            )));
+        }
+    }
+    Ok(())
+}
+
+/// Sectors that turbines disturb, by station.
+fn wakes(setup: &Setup) -> Vec<Vec<[f64; 2]>> {
+    let chosen = &setup.settings.calibration;
+    let stations = setup.network.stations().iter();
+    let diameter = |id: &String| {
+        let own = chosen.station_rotors.get(id).copied();
+        own.or(chosen.rotor).unwrap_or(0.0)
+    };
+    let diameters: Vec<f64> = stations.map(|s| diameter(&s.id)).collect();
+    wake_sectors(&setup.network, &diameters, chosen.wake_reach)
+}
+
 /// The settings of the calibration, stations by their number.
 fn settings_of(setup: &Setup) -> CalibrationSettings {
     let chosen = &setup.settings.calibration;
@@ -137,12 +162,10 @@ fn settings_of(setup: &Setup) -> CalibrationSettings {
         averaging: averaging.map_or(0.0, |r| r.format.time.averaging.as_secs_f64()),
         sectors: chosen.sectors.clone(),
         station_sectors: stations
-            .map(|s| {
-                chosen
-                    .station_sectors
-                    .get(&s.id)
-                    .cloned()
-                    .unwrap_or_default()
+            .zip(wakes(setup))
+            .map(|(s, mut sectors)| {
+                sectors.extend(chosen.station_sectors.get(&s.id).into_iter().flatten());
+                sectors
             })
             .collect(),
         ..CalibrationSettings::default()

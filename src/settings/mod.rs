@@ -213,13 +213,35 @@ impl MeansSettings {
 
 /// What the calibration leaves out: sectors of wind direction, degrees, from and to clockwise, in which a station stands
 /// in the wake of a turbine or in the lee of something else.
-#[derive(Debug, Clone, Default, PartialEq, serde::Serialize)]
+#[derive(Debug, Clone, PartialEq, serde::Serialize)]
 pub struct CalibrationChoice {
     /// At all stations.
     pub sectors: Vec<[f64; 2]>,
     /// By station.
     pub station_sectors: BTreeMap<String, Vec<[f64; 2]>>,
+    /// Rotor diameter of all stations, m, if they are turbines: the sectors that they disturb for each other are left out.
+    pub rotor: Option<f64>,
+    /// By station; 0 for a mast.
+    pub station_rotors: BTreeMap<String, f64>,
+    /// Distance in diameters up to which a turbine disturbs another.
+    pub wake_reach: f64,
 }
+
+impl Default for CalibrationChoice {
+    fn default() -> Self {
+        Self {
+            sectors: Vec::new(),
+            station_sectors: BTreeMap::new(),
+            rotor: None,
+            station_rotors: BTreeMap::new(),
+            wake_reach: WAKE_REACH,
+        }
+    }
+}
+
+/// Default of [`CalibrationChoice::wake_reach`]: beyond 20 diameters no turbine counts (IEC 61400-12-1:2005, annex A; from
+/// memory).
+pub const WAKE_REACH: f64 = 20.0;
 
 /// How reports become winds at analysis times.
 #[derive(Debug, Clone, Copy, PartialEq)]

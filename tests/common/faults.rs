@@ -1,5 +1,8 @@
 //! Simulated networks with faults of sensors, and their calibration.
 
+use std::fmt::Write as _;
+use std::path::{Path, PathBuf};
+
 use gyremesh::align::{BLOCK_TIMES, Covariance, WindBlock};
 use gyremesh::calibration::{Calibration, CalibrationSettings, Calibrator};
 use gyremesh::check::Flag;
@@ -26,11 +29,17 @@ pub enum Planted {
     Scaled(f64),
     /// Turned from this share of the record on.
     TurnedLate(f64, f64),
+    /// Turned so far from each share of the record on.
+    Turns(&'static [(f64, f64)]),
     Reversed,
     Swapped,
     Mirrored,
     /// Steps that the clock is ahead.
     Clock(usize),
+    /// The same from one share of the record to another.
+    ClockInPart(usize, f64, f64),
+    /// s that the clock gains in a day; right in the middle of the record.
+    ClockDrift(f64),
     /// Share of the values.
     Spiking(f64),
     Stuck,
@@ -45,11 +54,13 @@ impl Planted {
             Self::Turned(_) => "turned",
             Self::Scaled(f) if (f - 1.9438).abs() < 0.01 => "unit (kt)",
             Self::Scaled(_) => "scaled",
-            Self::TurnedLate(..) => "turned late",
+            Self::TurnedLate(..) | Self::Turns(_) => "turned late",
             Self::Reversed => "reversed",
             Self::Swapped => "u, v swapped",
             Self::Mirrored => "mirrored",
             Self::Clock(_) => "clock 1 h",
+            Self::ClockInPart(..) => "daylight time",
+            Self::ClockDrift(_) => "clock drifts",
             Self::Spiking(_) => "spiking",
             Self::Stuck => "stuck",
             Self::Still => "still",
@@ -127,6 +138,13 @@ pub fn case(seed: u64, days: f64, dt: f64, planted: &[(usize, Planted)]) -> Case
                 let from = (share * steps as f64) as usize;
                 of[from..].iter_mut().for_each(|w| *w = turn(*w, d));
             }
+            Planted::Turns(turns) => {
+                for (k, w) in of.iter_mut().enumerate() {
+                    let share = k as f64 / steps as f64;
+                    let last = turns.iter().rfind(|t| t.0 <= share);
+                    *w = turn(*w, last.map_or(0.0, |t| t.1));
+                }
+            }
             Planted::Scaled(f) => of.iter_mut().for_each(|w| *w = (f * w.0, f * w.1)),
             Planted::Reversed => of.iter_mut().for_each(|w| *w = (-w.0, -w.1)),
             Planted::Swapped => of.iter_mut().for_each(|w| *w = (w.1, w.0)),
@@ -140,6 +158,14 @@ pub fn case(seed: u64, days: f64, dt: f64, planted: &[(usize, Planted)]) -> Case
                     };
                 }
             }
+            Planted::ClockInPart(ahead, from, to) => {
+                for t in ahead..steps {
+                    if (from..to).contains(&(t as f64 / steps as f64)) {
+                        of[t] = truth[*s][t - ahead];
+                    }
+                }
+            }
+            Planted::ClockDrift(a_day) => drift(of, &truth[*s], a_day / 86_400.0),
             Planted::Spiking(share) => {
                 for w in of.iter_mut() {
                     if random.random_range(0.0..1.0) < share {
@@ -155,24 +181,61 @@ pub fn case(seed: u64, days: f64, dt: f64, planted: &[(usize, Planted)]) -> Case
             Planted::Exchanged(other) => of.clone_from(&truth[other]),
         }
         if !matches!(fault, Planted::Stuck | Planted::Still) {
-            for w in of {
-                let mut error = || -> f64 { StandardNormal.sample(&mut random) };
-                *w = (w.0 + 0.3 * error(), w.1 + 0.3 * error());
-            }
+            add_errors(of, &mut random);
         }
     }
     for (s, of) in winds.iter_mut().enumerate() {
         if planted.iter().all(|p| p.0 != s) {
-            for w in of {
-                let mut error = || -> f64 { StandardNormal.sample(&mut random) };
-                *w = (w.0 + 0.3 * error(), w.1 + 0.3 * error());
-            }
+            add_errors(of, &mut random);
         }
     }
     Case { network, winds, dt }
 }
 
+/// Errors of sensors, 0.3 m/s in either component.
+fn add_errors(winds: &mut [(f64, f64)], random: &mut ChaCha8Rng) {
+    for w in winds {
+        let mut error = || -> f64 { StandardNormal.sample(random) };
+        *w = (w.0 + 0.3 * error(), w.1 + 0.3 * error());
+    }
+}
+
+/// Winds of a clock that gains this share of the time, right in the middle.
+fn drift(winds: &mut [(f64, f64)], truth: &[(f64, f64)], share: f64) {
+    let middle = 0.5 * truth.len() as f64;
+    for (t, w) in winds.iter_mut().enumerate() {
+        // The report of time t was taken so much earlier.
+        let at = t as f64 - share * (t as f64 - middle);
+        let at = at.clamp(0.0, (truth.len() - 2) as f64);
+        #[allow(
+            clippy::cast_possible_truncation,
+            clippy::cast_sign_loss,
+            reason = "clamped"
+        )]
+        let k = at as usize;
+        let part = at - k as f64;
+        let (a, b) = (truth[k], truth[k + 1]);
+        *w = (a.0 + part * (b.0 - a.0), a.1 + part * (b.1 - a.1));
+    }
+}
+
 impl Case {
+    pub fn calibrate(&self) -> Calibration {
+        self.calibrate_with(CalibrationSettings::default())
+    }
+
+    /// Replaces each wind by the mean of itself and those of the `n` − 1 steps before it.
+    pub fn average(&mut self, n: usize) {
+        for of in &mut self.winds {
+            let before = of.clone();
+            for (t, w) in of.iter_mut().enumerate() {
+                let part = &before[(t + 1).saturating_sub(n)..=t];
+                let sum = part.iter().fold((0.0, 0.0), |s, w| (s.0 + w.0, s.1 + w.1));
+                *w = (sum.0 / part.len() as f64, sum.1 / part.len() as f64);
+            }
+        }
+    }
+
     /// Blocks of winds with the structure function at each of their times.
     pub fn blocks(&self) -> Vec<(WindBlock, Vec<StructureFunction>)> {
         let spacing = typical_spacing(&self.network).unwrap();
@@ -206,9 +269,8 @@ impl Case {
         blocks
     }
 
-    pub fn calibrate(&self) -> Calibration {
+    pub fn calibrate_with(&self, own: CalibrationSettings) -> Calibration {
         let spacing = typical_spacing(&self.network).unwrap();
-        let own = CalibrationSettings::default();
         let mut calibrator = Calibrator::new(&self.network, spacing, self.dt, own);
         for (block, models) in self.blocks() {
             calibrator.take(&block, &models);
@@ -216,4 +278,42 @@ impl Case {
         let declinations = vec![Some(3.0); self.network.len()];
         calibrator.finish(&declinations)
     }
+
+    /// Writes stations, reports (times as they are; whole tenths of a degree and hundredths of m/s) and settings into a
+    /// folder; `settings` is what stands after the reports. Gives the path of the settings.
+    pub fn write(&self, folder: &Path, reports: &str, settings: &str) -> PathBuf {
+        let mut list = String::from("id,lat,lon\n");
+        for station in self.network.stations() {
+            let (lat, lon) = (station.position.latitude(), station.position.longitude());
+            writeln!(list, "{},{lat},{lon}", station.id).unwrap();
+        }
+        let mut rows = String::from("time,station,dir,speed\n");
+        for t in 0..self.winds[0].len() {
+            #[allow(clippy::cast_possible_truncation, reason = "some weeks in μs")]
+            let time = Time::from_micros(FIRST_DAY + (t as f64 * self.dt * 1e6) as i64);
+            for (station, of) in self.network.stations().iter().zip(&self.winds) {
+                let (u, v) = of[t];
+                if u.is_finite() {
+                    let from = (-u).atan2(-v).to_degrees().rem_euclid(360.0);
+                    let (id, speed) = (&station.id, u.hypot(v));
+                    writeln!(rows, "{time},{id},{from:.1},{speed:.2}").unwrap();
+                }
+            }
+        }
+        let text = format!(
+            "name = \"simulated\"\n[stations]\nfile = \"stations.csv\"\n\
+             columns = {{ id = \"id\", latitude = \"lat\", longitude = \"lon\" }}\n\
+             [[reports]]\nfiles = [\"reports.csv\"]\n\
+             columns = {{ station = \"station\", time = \"time\", direction = \"dir\", speed = \"speed\" }}\n\
+             speed_unit = \"m/s\"\n{reports}\n{settings}\n"
+        );
+        let path = folder.join("network.toml");
+        std::fs::write(folder.join("stations.csv"), list).unwrap();
+        std::fs::write(folder.join("reports.csv"), rows).unwrap();
+        std::fs::write(&path, text).unwrap();
+        path
+    }
 }
+
+/// 2031-06-01T00:00:00Z in μs.
+pub const FIRST_DAY: i64 = 1_938_038_400_000_000;
