@@ -47,6 +47,8 @@
 //! - [`check`]: flags of the reports.
 //! - [`align`]: winds of all stations at analysis times, with their instrument errors.
 //! - [`structure`]: how winds differ with distance and time; what the error bars contain.
+//! - [`spatial`]: each wind against what the stations around it predict.
+//! - [`calibration`]: stations off in direction, speed or time.
 //! - [`polygon`]: triangles, rings, regions; shape and coefficient rows.
 //! - [`integral`]: area means with their errors.
 //! - [`kinematics`]: deformation, curvature and shear and the like of each polygon.
@@ -60,7 +62,7 @@
 //! # What it does not do
 //!
 //! It warns of nothing: for severe weather, turbines and aviation follow the national weather service, site safety
-//! rules, local codes and licensed practice. Its errors do not yet hold the wind between the stations.
+//! rules, local codes and licensed practice.
 
 pub mod align;
 pub mod calibration;

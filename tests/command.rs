@@ -368,7 +368,8 @@ fn a_gale_beyond_the_range_is_flagged_and_left_out() {
     let reports = REPORTS.replace(",C,250,7", ",C,250,468.66");
     let site = Site::new(STATIONS, &reports, "");
     assert_eq!(site.run("estimate", &[]).status, 0);
-    assert_eq!(site.polygons()[0][10], "9");
+    assert_eq!(site.polygons()[0][10], "4");
+    assert_eq!(site.polygons()[0][21], "failed C");
     assert_eq!(site.polygons()[0][4], "");
     assert_eq!(
         site.summary()["reports"]["aligned"]["set_aside"]["failed_check"],
@@ -490,7 +491,7 @@ fn a_real_week_of_three_airports() {
         .iter()
         .find(|r| r[0] == "2013-02-12T08:00:00Z")
         .unwrap();
-    assert_eq!(hour[10], "9");
+    assert_eq!((hour[10].as_str(), hour[21].as_str()), ("4", "failed EWR"));
 }
 
 /// Off unless asked for, by the option or by the settings.

@@ -38,7 +38,6 @@ mod state;
 use rayon::prelude::*;
 
 use crate::align::WindBlock;
-use crate::check::Flag;
 use crate::integral::{EstimateBlock, MomentConstants, MomentCovariance, PAIRS, Sampling};
 use crate::polygon::{EdgeSet, StationPolygon};
 use crate::settings::KinematicsSettings;
@@ -132,7 +131,7 @@ impl Kinematics {
                 }
             }
             cells.extend(states.iter().zip(flags).map(|((wind, covariance), &flag)| {
-                if flag == Flag::Missing {
+                if !flag.is_usable() {
                     return Quantities::default();
                 }
                 let state = State::new(wind, covariance);

@@ -5,9 +5,10 @@ use std::collections::BTreeMap;
 use serde_json::{Value, json};
 
 use super::{CAUTION, error_bars};
-use crate::integral::{Peak, Statistics};
+use crate::integral::{Attribution, Cause, Peak, Statistics};
 use crate::pipeline::{Outcome, Setup};
 use crate::settings::{AlignMethod, MeansSettings, ReportSource, Settings};
+use crate::station::Station;
 
 /// The summary of a run, as JSON. It holds nothing that differs between two runs of the same input.
 #[must_use]
@@ -63,9 +64,14 @@ pub fn summary_json(setup: &Setup, outcome: &Outcome) -> String {
             "excluded_by_reason": reasons,
             "excluded_list": excluded,
             "flat_triangles": setup.built.flat,
-            "values": extremes.values.iter().sum::<u64>(),
+            "filling_holes": outcome.extra.len(),
+            "values": extremes.values.iter().take(setup.built.polygons.len()).sum::<u64>(),
             "values_possible": period.times * polygons,
         },
+        "values_by_reason": Cause::NAMES.iter().zip(outcome.causes.all())
+            .map(|(name, n)| ((*name).to_string(), n.into()))
+            .collect::<serde_json::Map<String, Value>>(),
+        "odd_means": odd_means(setup, outcome),
         "self_test": setup.self_test,
         "significance": {
             "false_discovery_rate": setup.settings.errors.false_discovery_rate,
@@ -91,16 +97,7 @@ pub fn summary_json(setup: &Setup, outcome: &Outcome) -> String {
             "cyclonic_vorticity": peak(setup, outcome, extremes.cyclonic),
             "anticyclonic_vorticity": peak(setup, outcome, extremes.anticyclonic),
         },
-        "corrections": setup.network.stations().iter().filter_map(|s| {
-            let c = s.correction.as_ref()?;
-            Some(json!({
-                "station": s.id,
-                "direction": c.direction,
-                "speed_factor": c.speed_factor,
-                "from": c.from.map(|t| t.to_string()),
-                "origin": c.origin,
-            }))
-        }).collect::<Vec<Value>>(),
+        "corrections": corrections(setup),
         "warnings": warnings,
         "units": {
             "vorticity": "s-1", "divergence": "s-1", "speed": "m s-1", "area_km2": "km2", "time": "RFC 3339 UTC",
@@ -111,6 +108,36 @@ pub fn summary_json(setup: &Setup, outcome: &Outcome) -> String {
     let mut text = format!("{summary:#}");
     text.push('\n');
     text
+}
+
+/// What the station list corrects.
+fn corrections(setup: &Setup) -> Vec<Value> {
+    let of = |s: &Station| {
+        let c = s.correction.as_ref()?;
+        Some(json!({
+            "station": s.id,
+            "direction": c.direction,
+            "speed_factor": c.speed_factor,
+            "from": c.from.map(|t| t.to_string()),
+            "origin": c.origin,
+        }))
+    };
+    setup.network.stations().iter().filter_map(of).collect()
+}
+
+/// Stations that would explain the means around them.
+fn odd_means(setup: &Setup, outcome: &Outcome) -> Vec<Value> {
+    let of = |found: &Attribution| {
+        json!({
+            "station": setup.network.stations()[found.station].id, // a station of the network
+            "offset_u": found.offset.u,
+            "offset_v": found.offset.v,
+            "offset_se": found.error,
+            "explained_share": found.explained,
+            "polygons": found.polygons,
+        })
+    };
+    outcome.attributions.iter().map(of).collect()
 }
 
 /// Share of the values that differ from zero at the false-discovery rate.
@@ -208,6 +235,7 @@ fn settings(settings: &Settings) -> Value {
         "check": settings.screen.then_some(&settings.check),
         "polygons": {
             "triangles": settings.polygons.triangles,
+            "missing": settings.missing,
             "rings": rings,
             "regions": regions,
         },

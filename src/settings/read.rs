@@ -236,6 +236,10 @@ fn polygons(mut section: Section) -> (PolygonChoice, Missing) {
         "remesh" => Ok(Missing::Remesh),
         other => Err(format!("`{other}` is neither \"skip\" nor \"remesh\"")),
     });
+    if !triangles && missing == Some(Missing::Remesh) {
+        let message = "`missing = \"remesh\"` needs triangles";
+        section.problem(section.place(), message);
+    }
     let mut rings = Vec::new();
     for mut ring in section.sections("ring") {
         let name = ring.required::<String>("name");
