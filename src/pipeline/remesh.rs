@@ -12,7 +12,9 @@ use super::complete::{ErrorModel, Holes};
 use crate::align::WindBlock;
 use crate::check::Flag;
 use crate::integral::{EstimateBlock, ExtraPolygon, planetary_vorticity};
-use crate::polygon::{BuiltPolygons, PolygonKind, StationPolygon, build_triangles, triangulate};
+use crate::polygon::{
+    BuiltPolygons, PolygonKind, StationPolygon, build_triangles, smallest_first, triangulate,
+};
 use crate::settings::PolygonLimits;
 use crate::station::{Network, Position};
 
@@ -103,8 +105,8 @@ impl Remesh {
             }
             let holes = self.holes.entry(bits).or_insert_with(|| {
                 let all = triangulate(&self.positions, &present).unwrap_or_default();
-                let all = all.into_iter().map(from_lowest);
-                all.filter(|triangle| !self.whole.contains(triangle))
+                all.into_iter()
+                    .filter(|triangle| !self.whole.contains(triangle))
                     .collect()
             });
             for &triangle in &*holes {
@@ -179,15 +181,5 @@ impl Fill {
 /// The corners of a triangle, the lowest number first.
 fn corners(polygon: &StationPolygon) -> Option<[usize; 3]> {
     let ring: [usize; 3] = polygon.outline.first()?.as_slice().try_into().ok()?;
-    Some(from_lowest(ring))
-}
-
-fn from_lowest([a, b, c]: [usize; 3]) -> [usize; 3] {
-    if a < b && a < c {
-        [a, b, c]
-    } else if b < c {
-        [b, c, a]
-    } else {
-        [c, a, b]
-    }
+    Some(smallest_first(ring))
 }

@@ -46,14 +46,7 @@ pub fn build_polygons(
     choice: &PolygonChoice,
     limits: &PolygonLimits,
 ) -> Result<BuiltPolygons, Error> {
-    let mut builder = Builder {
-        network,
-        limits,
-        positions: network.stations().iter().map(|s| s.position).collect(),
-        geodesic: Geodesic::wgs84(),
-        built: BuiltPolygons::default(),
-        problems: Vec::new(),
-    };
+    let mut builder = Builder::new(network, limits);
     let needs_triangles = choice.triangles
         || choice
             .regions
@@ -94,14 +87,7 @@ pub fn build_triangles(
     triangles: &[[usize; 3]],
     limits: &PolygonLimits,
 ) -> BuiltPolygons {
-    let mut builder = Builder {
-        network,
-        limits,
-        positions: network.stations().iter().map(|s| s.position).collect(),
-        geodesic: Geodesic::wgs84(),
-        built: BuiltPolygons::default(),
-        problems: Vec::new(),
-    };
+    let mut builder = Builder::new(network, limits);
     for triangle in triangles {
         builder.triangle(*triangle);
     }
@@ -156,6 +142,19 @@ struct Builder<'a> {
     geodesic: Geodesic,
     built: BuiltPolygons,
     problems: Vec<Problem>,
+}
+
+impl<'a> Builder<'a> {
+    fn new(network: &'a Network, limits: &'a PolygonLimits) -> Self {
+        Self {
+            network,
+            limits,
+            positions: network.stations().iter().map(|s| s.position).collect(),
+            geodesic: Geodesic::wgs84(),
+            built: BuiltPolygons::default(),
+            problems: Vec::new(),
+        }
+    }
 }
 
 impl Builder<'_> {

@@ -112,7 +112,8 @@ fn south_to_north(positions: &[Position], stations: &[usize]) -> Vec<usize> {
     rank
 }
 
-fn smallest_first([a, b, c]: [usize; 3]) -> [usize; 3] {
+/// The same triangle, the lowest number first.
+pub(crate) fn smallest_first([a, b, c]: [usize; 3]) -> [usize; 3] {
     if a < b && a < c {
         [a, b, c]
     } else if b < c {

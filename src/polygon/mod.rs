@@ -13,6 +13,7 @@ use geographiclib_rs::{Geodesic, PolygonArea, Winding};
 use crate::station::Position;
 
 pub use build::{BuiltPolygons, build_polygons, build_triangles};
+pub(crate) use delaunay::smallest_first;
 pub use delaunay::triangulate;
 pub use edge::{DirectedEdge, Edge, EdgeSet, LONG_EDGE, flux_rule_error, median_edge};
 pub use ring::{InvalidPolygon, defects};
