@@ -49,6 +49,7 @@
 //! - [`structure`]: how winds differ with distance and time; what the error bars contain.
 //! - [`polygon`]: triangles, rings, regions; shape and coefficient rows.
 //! - [`integral`]: area means with their errors.
+//! - [`event`]: areas, wind shifts and lines, followed in time.
 //! - [`pipeline`]: joins them; [`output`] writes; [`cli`] speaks.
 //!
 //! # Accuracy
@@ -66,6 +67,7 @@ pub mod calibration;
 pub mod check;
 pub mod cli;
 pub mod error;
+pub mod event;
 pub mod input;
 pub mod integral;
 pub mod output;

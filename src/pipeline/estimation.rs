@@ -6,6 +6,7 @@ use super::complete::{Common, ErrorModel, Holes};
 use super::field::FieldState;
 use super::outliers::OutlierBooks;
 use super::remesh::Remesh;
+use super::run::Seen;
 use super::{Setup, Window};
 use crate::align::{AlignBooks, Aligner, StationSensors, WindBlock, block_times, height_factor};
 use crate::integral::{
@@ -76,7 +77,7 @@ impl<'a> Estimation<'a> {
     pub(super) fn window<T: Send>(
         &mut self,
         window: &Window,
-        encode: &(impl Fn(&EstimateBlock) -> T + Sync),
+        encode: &(impl Fn(&Seen) -> T + Sync),
     ) -> Vec<T> {
         let setup = self.setup;
         let table = &window.table;
@@ -124,7 +125,12 @@ impl<'a> Estimation<'a> {
             .map(|((winds, models), holes)| {
                 let (block, lasting) = common.estimate(winds, &models, holes);
                 let sums = Sums::of(&block, &setup.planetary, &lasting, polygons);
-                (sums, encode(&block))
+                let seen = Seen {
+                    estimates: &block,
+                    winds,
+                    models: &models,
+                };
+                (sums, encode(&seen))
             })
             .collect();
 

@@ -8,6 +8,7 @@ mod calibration;
 mod check;
 mod check_keys;
 mod errors;
+mod events;
 mod path;
 mod read;
 mod reports;
@@ -29,6 +30,7 @@ pub use check::{
     AgreementLimits, AttenuatedLimits, CheckLimits, FlatLimits, NeighbourLimits, PersistenceLimits,
     RangeLimits, RateLimits, RunLimits, Season, SpikeLimits, StuckLimits,
 };
+pub use events::{EventSettings, NamedPlace, Onset};
 pub use read::{Overrides, read_settings};
 
 /// Everything a run needs to know, verified.
@@ -50,6 +52,10 @@ pub struct Settings {
     pub errors: ErrorSettings,
     /// What the calibration leaves out.
     pub calibration: CalibrationChoice,
+    /// What counts as an event.
+    pub events: EventSettings,
+    /// Places for which arrival times are wanted.
+    pub places: Vec<NamedPlace>,
     /// Limits of the tests of the reports.
     pub check: CheckLimits,
     /// Which polygons are built.

@@ -7,6 +7,7 @@ use super::analysis::analysis;
 use super::calibration::calibration;
 use super::check_keys::check;
 use super::errors::errors;
+use super::events::{events, places};
 use super::path::expand_path;
 use super::reports::{reports, text_format};
 use super::section::{Document, Section};
@@ -90,6 +91,8 @@ fn parse_settings(
         analysis: analysis(root.section("analysis"), overrides),
         errors: errors(root.section("errors"), overrides),
         calibration: calibration(root.section("calibration")),
+        events: events(root.section("events")),
+        places: places(root.sections("places")),
         check: check(root.section("check"), sensor.calm_below),
         sensor,
         limits: limits(root.section("limits"), overrides),

@@ -1,0 +1,280 @@
+//! Areas followed in time: onset, end, splits and merges.
+
+use std::cmp::Reverse;
+
+use super::area::{AreaKind, Cell, Snapshot, connected, sides};
+use super::motion::{Motion, Path};
+use crate::integral::Peak;
+use crate::time::Time;
+
+/// An area that is gone for no longer than this goes on, s.
+const GAP: f64 = 900.0;
+
+/// An area over its life.
+#[derive(Debug, Clone, PartialEq)]
+pub struct AreaEvent {
+    /// What the air does.
+    pub kind: AreaKind,
+    /// First time with a triangle that begins an event.
+    pub start: Time,
+    /// Last time with a triangle that belongs to it.
+    pub end: Time,
+    /// True if it was still there at the end of the run.
+    pub open: bool,
+    /// The strongest mean.
+    pub peak: Peak,
+    /// The strength there: 1 is what begins an event.
+    pub strength: f64,
+    /// The triangles when their area was largest.
+    pub polygons: Vec<usize>,
+    /// That area, m².
+    pub area: f64,
+    /// Its centres, weighted by circulation or flux.
+    pub path: Path,
+    /// How it moves.
+    pub motion: Option<Motion>,
+    /// The event that it split off from, by its place in the list.
+    pub split_from: Option<usize>,
+    /// The event that it merged into, by its place in the list.
+    pub merged_into: Option<usize>,
+}
+
+/// A followed area.
+#[derive(Debug)]
+struct Track {
+    number: usize,
+    event: AreaEvent,
+    /// Its cells at the last time.
+    cells: Vec<Cell>,
+    /// True once it has lasted long enough.
+    confirmed: bool,
+}
+
+/// Follows the areas of all kinds.
+#[derive(Debug)]
+pub struct Tracker {
+    lasting: f64,
+    /// An area that is gone for longer is over, s.
+    gap: f64,
+    tracks: [Vec<Track>; 4],
+    /// Events that are over, with their numbers.
+    over: Vec<(usize, AreaEvent)>,
+    next: usize,
+    last: Option<Time>,
+}
+
+/// Seconds from one time to another.
+pub(super) fn seconds(from: Time, to: Time) -> f64 {
+    to.micros().saturating_sub(from.micros()) as f64 * 1e-6
+}
+
+impl Tracker {
+    /// Areas that last less than `lasting` s are no events; `interval` s lie between the times.
+    #[must_use]
+    pub fn new(lasting: f64, interval: f64) -> Self {
+        Self {
+            lasting,
+            gap: GAP.max(interval),
+            tracks: Default::default(),
+            over: Vec::new(),
+            next: 0,
+            last: None,
+        }
+    }
+
+    /// Takes in the next time.
+    pub fn advance(&mut self, snapshot: &Snapshot) {
+        self.last = Some(snapshot.time);
+        for (k, cells) in snapshot.cells.iter().enumerate() {
+            self.advance_kind(k, snapshot.time, cells);
+        }
+    }
+
+    fn advance_kind(&mut self, kind: usize, time: Time, cells: &[Cell]) {
+        let (gone, mut tracks): (Vec<Track>, Vec<Track>) = std::mem::take(&mut self.tracks[kind])
+            .into_iter()
+            .partition(|track| seconds(track.event.end, time) > self.gap);
+        for track in gone {
+            self.close(track);
+        }
+        let groups: Vec<Vec<Cell>> = connected(cells)
+            .into_iter()
+            .map(|group| group.into_iter().map(|k| cells[k]).collect())
+            .collect();
+        // What each track and each group share; most shared first.
+        let mut pairs = Vec::new();
+        for (t, track) in tracks.iter().enumerate() {
+            for (g, group) in groups.iter().enumerate() {
+                let shared = shared_area(&track.cells, group);
+                if shared > 0.0 || touch(&track.cells, group) {
+                    pairs.push((track.confirmed, shared, t, g));
+                }
+            }
+        }
+        pairs.sort_by(|a, b| {
+            let order = (Reverse(a.0), a.2, a.3).cmp(&(Reverse(b.0), b.2, b.3));
+            Reverse(a.0)
+                .cmp(&Reverse(b.0))
+                .then(b.1.total_cmp(&a.1))
+                .then(order)
+        });
+        let mut group_of = vec![None; tracks.len()];
+        let mut track_of = vec![None; groups.len()];
+        for &(_, _, t, g) in &pairs {
+            if group_of[t].is_none() && track_of[g].is_none() {
+                (group_of[t], track_of[g]) = (Some(g), Some(t));
+            }
+        }
+        let shared = |wanted: &dyn Fn(usize, usize) -> bool| {
+            let mut found = pairs.iter().filter(|&&(_, shared, t, g)| shared > 0.0 && wanted(t, g));
+            found.next().copied()
+        };
+        // Tracks whose cells have become part of another's group.
+        let merged: Vec<Option<usize>> = (0..tracks.len())
+            .map(|t| {
+                let (_, _, _, g) = shared(&|other, _| group_of[t].is_none() && other == t)?;
+                Some(tracks[track_of[g]?].number)
+            })
+            .collect();
+        let mut fresh = Vec::new();
+        for (g, group) in groups.iter().enumerate() {
+            if track_of[g].is_some() || !group.iter().any(|cell| cell.begins) {
+                continue;
+            }
+            let split_from = shared(&|_, other| other == g).map(|pair| tracks[pair.2].number);
+            if let Some(track) = Track::begin(self.next, AreaKind::ALL[kind], time, group, split_from) {
+                fresh.push(track);
+                self.next += 1;
+            }
+        }
+        for (t, track) in tracks.iter_mut().enumerate() {
+            if let Some(g) = group_of[t] {
+                track.go_on(time, &groups[g], self.lasting);
+            }
+        }
+        for (track, merged) in tracks.into_iter().zip(merged) {
+            match merged {
+                Some(into) => {
+                    let mut track = track;
+                    track.event.merged_into = Some(into);
+                    self.close(track);
+                }
+                None => self.tracks[kind].push(track),
+            }
+        }
+        self.tracks[kind].extend(fresh);
+    }
+
+    fn close(&mut self, mut track: Track) {
+        if track.confirmed {
+            track.event.motion = track.event.path.motion();
+            self.over.push((track.number, track.event));
+        }
+    }
+
+    /// All events, in the order of their start.
+    #[must_use]
+    pub fn finish(mut self) -> Vec<AreaEvent> {
+        for tracks in std::mem::take(&mut self.tracks) {
+            for mut track in tracks {
+                let since = self.last.map_or(0.0, |last| seconds(track.event.end, last));
+                track.event.open = since <= self.gap;
+                self.close(track);
+            }
+        }
+        let mut events = self.over;
+        events.sort_by_key(|(number, event)| (event.start, event.kind, *number));
+        let numbers: Vec<usize> = events.iter().map(|(number, _)| *number).collect();
+        let place = |number: usize| numbers.iter().position(|&n| n == number);
+        let mut listed: Vec<AreaEvent> = Vec::with_capacity(events.len());
+        for (_, mut event) in events {
+            event.split_from = event.split_from.and_then(place);
+            event.merged_into = event.merged_into.and_then(place);
+            listed.push(event);
+        }
+        listed
+    }
+}
+
+impl Track {
+    fn begin(
+        number: usize,
+        kind: AreaKind,
+        time: Time,
+        cells: &[Cell],
+        split_from: Option<usize>,
+    ) -> Option<Self> {
+        let strongest = strongest(cells)?;
+        let mut track = Self {
+            number,
+            event: AreaEvent {
+                kind,
+                start: time,
+                end: time,
+                open: false,
+                peak: peak(strongest, time),
+                strength: strongest.strength,
+                polygons: Vec::new(),
+                area: 0.0,
+                path: Path::default(),
+                motion: None,
+                split_from,
+                merged_into: None,
+            },
+            cells: Vec::new(),
+            confirmed: false,
+        };
+        track.go_on(time, cells, f64::INFINITY);
+        Some(track)
+    }
+
+    fn go_on(&mut self, time: Time, cells: &[Cell], lasting: f64) {
+        let event = &mut self.event;
+        event.end = time;
+        if let Some(strongest) = strongest(cells).filter(|s| s.strength > event.strength) {
+            event.strength = strongest.strength;
+            event.peak = peak(strongest, time);
+        }
+        let area: f64 = cells.iter().map(|cell| cell.area).sum();
+        if area > event.area {
+            event.area = area;
+            event.polygons = cells.iter().map(|cell| cell.polygon).collect();
+        }
+        let weight = |cell: &Cell| cell.value.abs() * cell.area;
+        let total: f64 = cells.iter().map(weight).sum();
+        let mean = |k: usize| cells.iter().map(|c| weight(c) * c.centre[k]).sum::<f64>() / total;
+        event.path.push(time, [mean(0), mean(1)]);
+        self.cells.clear();
+        self.cells.extend_from_slice(cells);
+        if cells.iter().any(|cell| cell.begins) {
+            let lasted = seconds(event.start, time);
+            self.confirmed |= lasted >= lasting && lasted > 0.0;
+        }
+    }
+}
+
+/// The strongest cell, of equals the first.
+fn strongest(cells: &[Cell]) -> Option<&Cell> {
+    cells.iter().reduce(|a, b| if b.strength > a.strength { b } else { a })
+}
+
+fn peak(cell: &Cell, time: Time) -> Peak {
+    Peak {
+        polygon: cell.polygon,
+        time,
+        value: cell.value,
+        error: cell.error,
+    }
+}
+
+fn shared_area(a: &[Cell], b: &[Cell]) -> f64 {
+    let both = b.iter().filter(|cell| a.iter().any(|other| other.polygon == cell.polygon));
+    both.map(|cell| cell.area).sum()
+}
+
+/// True if a triangle of one shares a side with one of the other.
+fn touch(a: &[Cell], b: &[Cell]) -> bool {
+    let of_a: Vec<[usize; 2]> = a.iter().flat_map(|cell| sides(cell.stations)).collect();
+    let mut of_b = b.iter().flat_map(|cell| sides(cell.stations));
+    of_b.any(|side| of_a.contains(&side))
+}
