@@ -66,22 +66,53 @@ fn look() {
     let more = std::env::var("MORE").unwrap_or_default();
     for seed in seeds("SEEDS", 20_310_614..20_310_615) {
         let (_, found) = events(seed, weather, faults, &more);
-        println!("seed {seed}: {} areas {} lines {} passages", found.areas.len(), found.lines.len(), found.passages.len());
+        println!(
+            "seed {seed}: {} areas {} lines {} passages",
+            found.areas.len(),
+            found.lines.len(),
+            found.passages.len()
+        );
         for a in &found.areas {
-            let at = a.path.points().first().unwrap().1.map(|x| (x / 1e3).round());
+            let at = a
+                .path
+                .points()
+                .first()
+                .unwrap()
+                .1
+                .map(|x| (x / 1e3).round());
             println!(
                 "  {:<22} {}-{} strength {:.2} peak {:.1}±{:.1} area {:.0} {at:?} {:?} {:?} split {:?} merged {:?}",
-                a.kind.name(), &a.start.to_string()[11..16], &a.end.to_string()[11..16], a.strength, a.peak.value * 1e5, a.peak.error * 1e5,
-                a.area / 1e6, a.motion.map(|m| format!("{:.1}±{:.1} m/s {:.0}±{:.0}", m.speed, m.speed_error, m.heading, m.heading_error)),
-                a.peak.polygon, a.split_from, a.merged_into
+                a.kind.name(),
+                &a.start.to_string()[11..16],
+                &a.end.to_string()[11..16],
+                a.strength,
+                a.peak.value * 1e5,
+                a.peak.error * 1e5,
+                a.area / 1e6,
+                a.motion.map(|m| format!(
+                    "{:.1}±{:.1} m/s {:.0}±{:.0}",
+                    m.speed, m.speed_error, m.heading, m.heading_error
+                )),
+                a.peak.polygon,
+                a.split_from,
+                a.merged_into
             );
         }
         for l in &found.lines {
             let m = l.motion;
             println!(
                 "  {} {}-{} known {} {} stations {:.2}±{:.2} m/s {:.1}±{:.1} change {:.1?} closing {:.1}",
-                l.name(), &l.start.to_string()[11..16], &l.end.to_string()[11..16], &l.known_at.to_string()[11..16],
-                l.stations.len(), m.speed, m.speed_error, m.heading, m.heading_error, l.change, l.closing
+                l.name(),
+                &l.start.to_string()[11..16],
+                &l.end.to_string()[11..16],
+                &l.known_at.to_string()[11..16],
+                l.stations.len(),
+                m.speed,
+                m.speed_error,
+                m.heading,
+                m.heading_error,
+                l.change,
+                l.closing
             );
             for a in &l.arrivals {
                 println!("    {a:?}");
@@ -89,7 +120,13 @@ fn look() {
         }
         if std::env::var("PASSAGES").is_ok() {
             for (p, line) in &found.passages {
-                println!("    {} {} ±{:.0} s {:.1} m/s {line:?}", p.station, p.time, p.error, p.change().speed());
+                println!(
+                    "    {} {} ±{:.0} s {:.1} m/s {line:?}",
+                    p.station,
+                    p.time,
+                    p.error,
+                    p.change().speed()
+                );
             }
         }
     }

@@ -150,7 +150,11 @@ mod tests {
                     let at = [60e3 * rng.random::<f64>(), 60e3 * rng.random::<f64>()];
                     let noise = rng.sample::<f64, _>(StandardNormal) * 300f64.hypot(ROUGHNESS);
                     let time = 1e4 + s[0] * at[0] + s[1] * at[1] + noise;
-                    Arrival { at, time, error: 300.0 }
+                    Arrival {
+                        at,
+                        time,
+                        error: 300.0,
+                    }
                 })
                 .collect();
             let fit = LineFit::of(&arrivals).unwrap();

@@ -418,7 +418,9 @@ impl Open {
         let aside = at[1] * e - at[0] * n;
         let within = (along[0]..=along[1] + reach).contains(&ahead)
             && (across[0] - spacing..=across[1] + spacing).contains(&aside);
-        let time = self.zero.plus_micros(super::shift::micros(self.fit.time_at(at)));
+        let time = self
+            .zero
+            .plus_micros(super::shift::micros(self.fit.time_at(at)));
         within.then(|| (time, self.fit.error_at(at)))
     }
 

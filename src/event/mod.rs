@@ -1,13 +1,13 @@
 //! Events: areas where the air converges, diverges or spins up, followed in time; wind shifts and the lines they make.
 //!
-//! - **Areas** ([`AreaFinder`], [`Tracker`]). A triangle is strong if its mean is as large as a jump of the wind by 3 m/s
+//! - **Areas** ([`AreaFinder`], [`Tracker`]). A triangle is strong if its mean is as large as a jump of the wind by 5 m/s
 //!   across it makes it (`[events] jump`), so that the same figure serves networks of any spacing. Strong triangles that
-//!   share sides make an area, which begins with a triangle that is strong *and* called different from zero, and goes on
+//!   share a station make an area, which begins with a triangle that is strong *and* called different from zero, and goes on
 //!   with triangles of half that strength that differ from zero by 1.96 standard errors. Areas of following times are the
 //!   same event if they share triangles; a gap of 15 min does not end it. Of an area that splits the part with most of
 //!   the old triangles goes on; of areas that merge the one that has most of the new.
 //! - **Wind shifts** ([`ShiftFinder`]). A station's wind shifts when the mean after a time differs from that before it by
-//!   3 m/s and 3 standard errors, more than at any other time around; time and error come from a smooth step fitted to the winds.
+//!   3 m/s and 2.5 standard errors, more than at any other time around; time and error come from a smooth step fitted to the winds.
 //! - **Lines** ([`LineFinder`]). Wind shifts alike at six stations or more, whose times make a plane t = t0 + s·x, are a line
 //!   that moves at 1/|s|. It is known when enough stations have been passed; from then on each further one improves it.
 //!

@@ -56,11 +56,15 @@ pub struct Path {
     halvings: u32,
     /// Points given so far.
     given: u64,
+    /// Sum of their variances, m².
+    variances: f64,
 }
 
 impl Path {
-    /// Adds the next centre.
-    pub fn push(&mut self, time: Time, centre: [f64; 2]) {
+    /// Adds the next centre, of triangles with this mean area, m².
+    pub fn push(&mut self, time: Time, centre: [f64; 2], area: f64) {
+        // Where in a square of that area the middle is: a twelfth of the square of its side in either direction.
+        self.variances += area / 12.0;
         let is_kept = self.given.is_multiple_of(1 << self.halvings);
         self.given += 1;
         if !is_kept {
@@ -85,7 +89,8 @@ impl Path {
 
     /// The motion along the straight path that fits the centres best; `None` for fewer than four centres or half an hour.
     ///
-    /// - **Error**: from the scatter about the path. Centres of following times stray together, as they jump from
+    /// - **Error**: from the scatter about the path, alike in both directions and not below what the size of the triangles
+    ///   leaves open. Centres of following times stray together, as they jump from
     ///   triangle to triangle: their first autocorrelation r makes n centres worth n (1 − r)/(1 + r) independent ones
     ///   (Bayley & Hammersley 1946, Suppl. J. R. Stat. Soc. 8, 184, first-order form), with r corrected for its bias in
     ///   short series, (1 + 4 r)/n (Kendall 1954, Biometrika 41, 403; from memory), and no fewer than 3 of them.
@@ -99,24 +104,33 @@ impl Path {
         }
         let count = n as f64;
         let mean_time = self.points.iter().map(|p| seconds(p.0)).sum::<f64>() / count;
-        let spread: f64 = self.points.iter().map(|p| (seconds(p.0) - mean_time).powi(2)).sum();
+        let spread: f64 = self
+            .points
+            .iter()
+            .map(|p| (seconds(p.0) - mean_time).powi(2))
+            .sum();
         let fit = |k: usize| {
             let mean = self.points.iter().map(|p| p.1[k]).sum::<f64>() / count;
-            let moment = self.points.iter().map(|p| (seconds(p.0) - mean_time) * (p.1[k] - mean));
+            let moment = self
+                .points
+                .iter()
+                .map(|p| (seconds(p.0) - mean_time) * (p.1[k] - mean));
             let slope = moment.sum::<f64>() / spread;
             let off = |p: &(Time, [f64; 2])| p.1[k] - mean - slope * (seconds(p.0) - mean_time);
             (slope, self.points.iter().map(off).collect::<Vec<f64>>())
         };
         let ((u, off_x), (v, off_y)) = (fit(0), fit(1));
         let sum = |a: &[f64], b: &[f64]| a.iter().zip(b).map(|(a, b)| a * b).sum::<f64>();
-        let (xx, xy, yy) = (sum(&off_x, &off_x), sum(&off_x, &off_y), sum(&off_y, &off_y));
+        let squares = sum(&off_x, &off_x) + sum(&off_y, &off_y);
         let lagged = sum(&off_x[1..], &off_x) + sum(&off_y[1..], &off_y);
-        let r = if xx + yy > 0.0 { lagged / (xx + yy) } else { 0.0 };
+        let r = if squares > 0.0 { lagged / squares } else { 0.0 };
         let r = (r + (1.0 + 4.0 * r) / count).clamp(0.0, 0.99);
         let independent = (count * (1.0 - r) / (1.0 + r)).max(3.0);
         // Two of them go into the straight line; each stands for n / independent centres.
-        let scale = 1.0 / (independent - 2.0) / spread;
-        Some(Motion::of([u, v], [xx * scale, xy * scale, yy * scale]))
+        let scatter = 0.5 * squares / (independent - 2.0);
+        let floor = self.variances / self.given as f64 * count / independent;
+        let variance = scatter.max(floor) / spread;
+        Some(Motion::of([u, v], [variance, 0.0, variance]))
     }
 }
 
@@ -132,6 +146,7 @@ mod tests {
             path.push(
                 Time::from_micros(k * 300_000_000),
                 [3.0 * t + noise(k), 4.0 * t],
+                1.0,
             );
         }
         path
@@ -140,7 +155,7 @@ mod tests {
     #[test]
     fn a_straight_path_gives_its_velocity() {
         let motion = path(50, |_| 0.0).motion().unwrap();
-        assert!((motion.speed - 5.0).abs() < 1e-9 && motion.speed_error < 1e-6);
+        assert!((motion.speed - 5.0).abs() < 1e-9 && motion.speed_error < 1e-3);
         assert!((motion.heading - 3f64.atan2(4.0).to_degrees()).abs() < 1e-9);
     }
 
@@ -149,7 +164,10 @@ mod tests {
         let quick = path(60, |k| if k % 2 == 0 { 500.0 } else { -500.0 });
         let slow = path(60, |k| 500.0 * (k as f64 / 8.0).sin());
         let (quick, slow) = (quick.motion().unwrap(), slow.motion().unwrap());
-        assert!(slow.speed_error > 2.0 * quick.speed_error, "{slow:?} {quick:?}");
+        assert!(
+            slow.speed_error > 2.0 * quick.speed_error,
+            "{slow:?} {quick:?}"
+        );
     }
 
     #[test]

@@ -10,8 +10,9 @@ use crate::structure::TemporalFunction;
 use crate::time::Time;
 use crate::units::Wind;
 
-/// A change counts if it is so many times its own error. 3: with 1.96 a station would have one by chance every few hours.
-const DEVIATIONS: f64 = 3.0;
+/// A change counts if it is so many times its own error. 2.5: chance gives that now and then, but hardly at six stations in
+/// a row.
+const DEVIATIONS: f64 = 2.5;
 /// Share of the times of a window at which there must be a wind.
 const LEAST_SHARE: f64 = 0.5;
 
@@ -119,7 +120,12 @@ impl ShiftFinder {
         found
     }
 
-    fn station(&mut self, station: usize, now: Time, temporal: &TemporalFunction) -> Option<Passage> {
+    fn station(
+        &mut self,
+        station: usize,
+        now: Time,
+        temporal: &TemporalFunction,
+    ) -> Option<Passage> {
         let (window, hold) = (self.window, self.hold);
         let (least, share) = (self.least, LEAST_SHARE * window / self.interval);
         let recent = &mut self.stations[station];
@@ -131,7 +137,10 @@ impl ShiftFinder {
         // The change about the time one window ago.
         let centre = back(window);
         let mean = |wanted: &dyn Fn(f64) -> bool| {
-            let within = recent.winds.iter().filter(|s| wanted(seconds(centre, s.time)));
+            let within = recent
+                .winds
+                .iter()
+                .filter(|s| wanted(seconds(centre, s.time)));
             let (mut sum, mut count) = ([0.0; 2], 0.0);
             for sample in within {
                 sum = [sum[0] + sample.wind[0], sum[1] + sample.wind[1]];
@@ -177,10 +186,10 @@ impl ShiftFinder {
             _ => 0.0,
         };
         let variance = step::contrast_variance(&samples, contrast, temporal);
-        if largest < DEVIATIONS * DEVIATIONS * variance {
+        let fitted = step::fit(&samples, time, window, hold, temporal)?;
+        if largest < DEVIATIONS * DEVIATIONS * fitted.scale * variance {
             return None;
         }
-        let fitted = step::fit(&samples, time, window, hold, temporal)?;
         recent.last = Some(time);
         let wind = |[u, v]: [f64; 2]| Wind { u, v };
         Some(Passage {

@@ -22,6 +22,8 @@ pub(super) struct Step {
     pub(super) shift: f64,
     /// Standard error of t0, s.
     pub(super) error: f64,
+    /// Variance of the winds about the step over that which the day's structure function and the instruments make expect.
+    pub(super) scale: f64,
     /// The step's winds at the ends of the samples.
     pub(super) before: [f64; 2],
     pub(super) after: [f64; 2],
@@ -29,6 +31,9 @@ pub(super) struct Step {
 
 /// Widths τ that are tried, in windows: from a step within one report to a change as slow as the window.
 const WIDTHS: [f64; 7] = [0.03, 0.0625, 0.125, 0.25, 0.4, 0.6, 1.0];
+/// Share of what is expected in the variance about a step. 0.2: about ten values, less the five that are fitted, against
+/// the one of the day.
+const PRIOR_SHARE: f64 = 0.2;
 /// Places of t0 that are tried on either side, for each width.
 const PLACES: i32 = 15;
 
@@ -51,7 +56,12 @@ pub(super) fn fit(
     let mut best = Best::default();
     for width in WIDTHS.map(|share| share * window) {
         for place in -PLACES..=PLACES {
-            best.try_out(samples, &times, hold * f64::from(place) / f64::from(PLACES), width);
+            best.try_out(
+                samples,
+                &times,
+                hold * f64::from(place) / f64::from(PLACES),
+                width,
+            );
         }
     }
     let mut spacing = hold / f64::from(PLACES);
@@ -80,15 +90,45 @@ pub(super) fn fit(
     let normal: Matrix3<f64> = columns.iter().map(|c| c * c.transpose()).sum();
     let inverse = normal.try_inverse()?;
     let weights: Vec<f64> = columns.iter().map(|c| (inverse * c)[2]).collect();
-    let variance = variance_of(samples, &weights, temporal);
+    let scale = scale(samples, &columns, &inverse, best.squares, temporal);
+    let variance = scale * variance_of(samples, &weights, temporal);
     let ends = [times.first()?, times.last()?].map(|t| ((t - shift) / width).tanh());
     let wind = |s: f64| [level[0] + half[0] * s, level[1] + half[1] * s];
     Some(Step {
         shift,
         error: variance.max(0.0).sqrt(),
+        scale,
         before: wind(ends[0]),
         after: wind(ends[1]),
     })
+}
+
+/// Squares about the fit over those expected, both components, the expected ones counted as [`PRIOR_SHARE`]: the winds of the
+/// day hold other events too, the winds about the step say how steady it was here.
+fn scale(
+    samples: &[Sample],
+    columns: &[Vector3<f64>],
+    inverse: &Matrix3<f64>,
+    squares: f64,
+    temporal: &TemporalFunction,
+) -> f64 {
+    // The trace of P C, with P taking off what the columns explain, and C = −½ D + instruments. What is constant in C
+    // does not matter, as the first column is constant.
+    let mut expected = 0.0;
+    for (i, a) in columns.iter().enumerate() {
+        let own = 1.0 - (a.transpose() * inverse * a)[0];
+        expected += own * samples[i].variance;
+        for (j, b) in columns[..i].iter().enumerate() {
+            let off = -(a.transpose() * inverse * b)[0];
+            expected -= off * temporal.at(seconds(samples[j].time, samples[i].time));
+        }
+    }
+    let ratio = squares / (2.0 * expected);
+    if ratio.is_finite() {
+        PRIOR_SHARE + (1.0 - PRIOR_SHARE) * ratio
+    } else {
+        1.0
+    }
 }
 
 /// The best step so far.
@@ -123,7 +163,10 @@ impl Best {
         for k in 0..2 {
             let middle = samples.iter().map(|s| s.wind[k]).sum::<f64>() / count;
             let pairs = || samples.iter().zip(&step);
-            half[k] = pairs().map(|(w, s)| (w.wind[k] - middle) * (s - mean)).sum::<f64>() / spread;
+            half[k] = pairs()
+                .map(|(w, s)| (w.wind[k] - middle) * (s - mean))
+                .sum::<f64>()
+                / spread;
             level[k] = middle - half[k] * mean;
             squares += pairs()
                 .map(|(w, s)| (w.wind[k] - level[k] - half[k] * s).powi(2))
@@ -204,6 +247,10 @@ mod tests {
         let ratio = squares / stated;
         // 300 squares: ±8 %; the width is fitted too, and the grid of t0 is 15 s wide.
         assert!((0.75..1.35).contains(&ratio), "{ratio}");
-        assert!((sum / runs).abs() < 3.0 * (squares / runs / runs).sqrt(), "{}", sum / runs);
+        assert!(
+            (sum / runs).abs() < 3.0 * (squares / runs / runs).sqrt(),
+            "{}",
+            sum / runs
+        );
     }
 }

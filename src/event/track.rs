@@ -2,7 +2,7 @@
 
 use std::cmp::Reverse;
 
-use super::area::{AreaKind, Cell, Snapshot, connected, sides};
+use super::area::{AreaKind, Cell, Snapshot, connected};
 use super::motion::{Motion, Path};
 use crate::integral::Peak;
 use crate::time::Time;
@@ -126,7 +126,9 @@ impl Tracker {
             }
         }
         let shared = |wanted: &dyn Fn(usize, usize) -> bool| {
-            let mut found = pairs.iter().filter(|&&(_, shared, t, g)| shared > 0.0 && wanted(t, g));
+            let mut found = pairs
+                .iter()
+                .filter(|&&(_, shared, t, g)| shared > 0.0 && wanted(t, g));
             found.next().copied()
         };
         // Tracks whose cells have become part of another's group.
@@ -142,7 +144,9 @@ impl Tracker {
                 continue;
             }
             let split_from = shared(&|_, other| other == g).map(|pair| tracks[pair.2].number);
-            if let Some(track) = Track::begin(self.next, AreaKind::ALL[kind], time, group, split_from) {
+            if let Some(track) =
+                Track::begin(self.next, AreaKind::ALL[kind], time, group, split_from)
+            {
                 fresh.push(track);
                 self.next += 1;
             }
@@ -243,7 +247,11 @@ impl Track {
         let weight = |cell: &Cell| cell.value.abs() * cell.area;
         let total: f64 = cells.iter().map(weight).sum();
         let mean = |k: usize| cells.iter().map(|c| weight(c) * c.centre[k]).sum::<f64>() / total;
-        event.path.push(time, [mean(0), mean(1)]);
+        event.path.push(
+            time,
+            [mean(0), mean(1)],
+            cells.iter().map(|c| c.area).sum::<f64>() / cells.len() as f64,
+        );
         self.cells.clear();
         self.cells.extend_from_slice(cells);
         if cells.iter().any(|cell| cell.begins) {
@@ -255,7 +263,9 @@ impl Track {
 
 /// The strongest cell, of equals the first.
 fn strongest(cells: &[Cell]) -> Option<&Cell> {
-    cells.iter().reduce(|a, b| if b.strength > a.strength { b } else { a })
+    cells
+        .iter()
+        .reduce(|a, b| if b.strength > a.strength { b } else { a })
 }
 
 fn peak(cell: &Cell, time: Time) -> Peak {
@@ -268,13 +278,14 @@ fn peak(cell: &Cell, time: Time) -> Peak {
 }
 
 fn shared_area(a: &[Cell], b: &[Cell]) -> f64 {
-    let both = b.iter().filter(|cell| a.iter().any(|other| other.polygon == cell.polygon));
+    let both = b
+        .iter()
+        .filter(|cell| a.iter().any(|other| other.polygon == cell.polygon));
     both.map(|cell| cell.area).sum()
 }
 
-/// True if a triangle of one shares a side with one of the other.
+/// True if a triangle of one has a station in common with one of the other.
 fn touch(a: &[Cell], b: &[Cell]) -> bool {
-    let of_a: Vec<[usize; 2]> = a.iter().flat_map(|cell| sides(cell.stations)).collect();
-    let mut of_b = b.iter().flat_map(|cell| sides(cell.stations));
-    of_b.any(|side| of_a.contains(&side))
+    let has = |station: &usize| a.iter().any(|cell| cell.stations.contains(station));
+    b.iter().any(|cell| cell.stations.iter().any(has))
 }

@@ -1,7 +1,7 @@
 //! From the reports to events.
 
-use super::run::{Outcome, Seen, run_with};
 use super::Setup;
+use super::run::{Outcome, Seen, run_with};
 use crate::align::WindBlock;
 use crate::error::Error;
 use crate::event::{
@@ -44,9 +44,9 @@ pub fn find_events(
 ) -> Result<EventsOutcome, Error> {
     let settings = &setup.settings;
     let interval = settings.analysis.interval.as_secs_f64();
-    let spacing = setup.spacing().ok_or_else(|| {
-        Error::Network("events need stations at two places at least".into())
-    })?;
+    let spacing = setup
+        .spacing()
+        .ok_or_else(|| Error::Network("events need stations at two places at least".into()))?;
     let plane = LocalPlane::at(middle(setup));
     let network = &setup.network;
     let polygons = &setup.built.polygons;

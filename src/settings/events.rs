@@ -36,7 +36,7 @@ impl Default for EventSettings {
     /// Chosen on simulated days of turbulence and of weather (`tests/events.rs` measures what they do on others).
     fn default() -> Self {
         Self {
-            onset: Onset::Jump(3.0),
+            onset: Onset::Jump(5.0),
             lasting: 900.0,
             shift: 3.0,
             window: 1800.0,
@@ -80,7 +80,9 @@ pub(super) fn events(mut section: Section) -> EventSettings {
             if (least..=86_400.0).contains(&seconds) {
                 Ok(seconds)
             } else {
-                Err(format!("`{text}` is out of range ({least} s to 1 d expected)"))
+                Err(format!(
+                    "`{text}` is out of range ({least} s to 1 d expected)"
+                ))
             }
         })
     };
@@ -104,7 +106,9 @@ pub(super) fn events(mut section: Section) -> EventSettings {
         shift: shift.unwrap_or(default.shift),
         window: window.unwrap_or(default.window),
         least_stations: least.unwrap_or(default.least_stations),
-        reach: reach.filter(|&metres| metres >= 0.0).unwrap_or(default.reach),
+        reach: reach
+            .filter(|&metres| metres >= 0.0)
+            .unwrap_or(default.reach),
     }
 }
 

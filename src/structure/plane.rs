@@ -69,7 +69,11 @@ impl LocalPlane {
     pub fn position(&self, [x, y]: [f64; 2]) -> Result<Position, String> {
         let (east, north) = (x / self.radii[0], y / self.radii[1]);
         let angle = east.hypot(north);
-        let scale = if angle < 1e-12 { 1.0 } else { angle.sin() / angle };
+        let scale = if angle < 1e-12 {
+            1.0
+        } else {
+            angle.sin() / angle
+        };
         let (east, north, up) = (scale * east, scale * north, angle.cos());
         let (s0, c0) = (self.sin_latitude, self.cos_latitude);
         let latitude = (s0 * up + c0 * north).clamp(-1.0, 1.0).asin();
