@@ -120,12 +120,19 @@ fn look() {
         }
         if std::env::var("PASSAGES").is_ok() {
             for (p, line) in &found.passages {
+                let plane = network::LocalPlane::about_centre();
+                let at = plane.point(&network::STATIONS[p.station]);
+                let (e, n) = field::toward(scenario::LINE_HEADING);
+                let along = at.x * e + at.y * n - 1e3 * scenario::SHORE_KM;
+                let truth = 11.0 * 3600.0 + along / scenario::LINE_SPEED;
+                let off = (p.time.micros() / 1_000_000).rem_euclid(86_400) as f64 - truth;
                 println!(
-                    "    {} {} ±{:.0} s {:.1} m/s {line:?}",
-                    p.station,
-                    p.time,
+                    "RES {:.2} {:.0} {:.0} {:.0} {}",
+                    truth / 3600.0,
+                    off,
                     p.error,
-                    p.change().speed()
+                    p.width,
+                    line.is_some()
                 );
             }
         }

@@ -17,10 +17,14 @@ pub(super) struct Arrival {
 
 /// Least error of an arrival beside that of its own step: the line is not quite straight, s.
 const ROUGHNESS: f64 = 120.0;
+/// Arrivals that are off by more than so many of their errors weigh less (Huber 1964, Ann. Math. Stat. 35, 73).
+const TUNING: f64 = 1.345;
+/// Rounds of reweighting; the weights settle within a few.
+const ROUNDS: usize = 8;
 /// How many arrivals the stated errors are worth against the scatter about the fit.
 const PRIOR_VALUES: f64 = 4.0;
 
-/// Arrival times t = t0 + s·(x − x̄), by least squares.
+/// Arrival times t = t0 + s·(x − x̄), by robust least squares.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct LineFit {
     /// x̄, m.
@@ -46,20 +50,30 @@ impl LineFit {
         let middle = [mean(0), mean(1)];
         let column = |a: &Arrival| Vector3::new(1.0, a.at[0] - middle[0], a.at[1] - middle[1]);
         let weight = |a: &Arrival| 1.0 / (a.error * a.error + ROUGHNESS * ROUGHNESS);
-        let mut normal = Matrix3::zeros();
-        let mut right = Vector3::zeros();
-        for a in arrivals {
-            let c = column(a);
-            normal += c * c.transpose() * weight(a);
-            right += c * (weight(a) * a.time);
+        let mut robust = vec![1.0; arrivals.len()];
+        let (mut found, mut inverse) = (Vector3::zeros(), Matrix3::zeros());
+        for _ in 0..if arrivals.len() > 4 { ROUNDS } else { 1 } {
+            let mut normal = Matrix3::zeros();
+            let mut right = Vector3::zeros();
+            for (a, share) in arrivals.iter().zip(&robust) {
+                let c = column(a);
+                normal += c * c.transpose() * (share * weight(a));
+                right += c * (share * weight(a) * a.time);
+            }
+            inverse = normal.try_inverse()?;
+            found = inverse * right;
+            for (a, share) in arrivals.iter().zip(&mut robust) {
+                let off = (a.time - column(a).dot(&found)).abs() * weight(a).sqrt();
+                *share = (TUNING / off).min(1.0);
+            }
         }
-        let inverse = normal.try_inverse()?;
-        let found = inverse * right;
         if !found.iter().all(|x| x.is_finite()) || arrivals.len() < 3 {
             return None;
         }
-        let misfit = |a: &Arrival| weight(a) * (a.time - column(a).dot(&found)).powi(2);
-        let squares: f64 = arrivals.iter().map(misfit).sum();
+        let misfit = |(a, share): (&Arrival, &f64)| {
+            share * weight(a) * (a.time - column(a).dot(&found)).powi(2)
+        };
+        let squares: f64 = arrivals.iter().zip(&robust).map(misfit).sum();
         let scale = (PRIOR_VALUES + squares) / (PRIOR_VALUES + count - 3.0);
         let stated = arrivals.iter().map(|a| 1.0 / weight(a)).sum::<f64>() / count;
         Some(Self {

@@ -20,6 +20,9 @@ const PATIENCE: f64 = 10_800.0;
 const NEAR: f64 = 2.5;
 /// Passages around one with which it is tried.
 const TRIED: usize = 8;
+/// A line must have been on its way so many times as long as its wind shift takes at a station: all stations whose wind
+/// changes slowly at about the same time are no line, though chance may order their times.
+const ON_ITS_WAY: f64 = 3.0;
 /// Standard errors by which an arrival may miss the line's time.
 const MISS: f64 = 3.0;
 /// Two changes are alike if they differ by less than this share of the larger: 41 degrees at the same size, or three times
@@ -226,6 +229,7 @@ impl LineFinder {
             line.members.len() >= self.least
                 && is_plausible(&line.fit)
                 && motion.speed_error < 0.5 * motion.speed
+                && seconds(line.start(), line.end()) >= ON_ITS_WAY * line.width()
         };
         let Some(mut line) = best.filter(enough) else {
             return;
@@ -357,6 +361,12 @@ impl Open {
     fn end(&self) -> Time {
         let times = self.members.iter().map(|m| m.passage.time);
         times.max().unwrap_or(self.zero)
+    }
+
+    /// How long the wind shift takes at a station on average, s.
+    fn width(&self) -> f64 {
+        let widths = self.members.iter().map(|m| m.passage.width);
+        widths.sum::<f64>() / self.members.len().max(1) as f64
     }
 
     fn fitted(&self) -> Option<LineFit> {

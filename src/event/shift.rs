@@ -25,6 +25,8 @@ pub struct Passage {
     pub time: Time,
     /// Standard error of the time, s.
     pub error: f64,
+    /// How long it took, from a tenth to nine tenths of the change, s.
+    pub width: f64,
     /// Mean wind before.
     pub before: Wind,
     /// Mean wind after.
@@ -196,6 +198,8 @@ impl ShiftFinder {
             station,
             time: time.plus_micros(micros(fitted.shift)),
             error: fitted.error.hypot(self.interval / 12f64.sqrt()),
+            // tanh is 0.8 at 1.1.
+            width: 2.2 * fitted.width,
             before: wind(fitted.before),
             after: wind(fitted.after),
             known_at: now,

@@ -22,6 +22,8 @@ pub(super) struct Step {
     pub(super) shift: f64,
     /// Standard error of t0, s.
     pub(super) error: f64,
+    /// τ, s.
+    pub(super) width: f64,
     /// Variance of the winds about the step over that which the day's structure function and the instruments make expect.
     pub(super) scale: f64,
     /// The step's winds at the ends of the samples.
@@ -97,6 +99,7 @@ pub(super) fn fit(
     Some(Step {
         shift,
         error: variance.max(0.0).sqrt(),
+        width,
         scale,
         before: wind(ends[0]),
         after: wind(ends[1]),

@@ -7,8 +7,9 @@ use super::motion::{Motion, Path};
 use crate::integral::Peak;
 use crate::time::Time;
 
-/// An area that is gone for no longer than this goes on, s.
-const GAP: f64 = 900.0;
+/// An area that is gone for no longer than this goes on, s: a vortex of 8 m/s needs that time past a hole of 15 km in the
+/// mesh.
+const GAP: f64 = 1800.0;
 
 /// An area over its life.
 #[derive(Debug, Clone, PartialEq)]
