@@ -4,6 +4,7 @@
 #![allow(
     clippy::unwrap_used,
     clippy::print_stdout,
+    clippy::cast_possible_truncation,
     dead_code,
     reason = "tests may panic and print; not all of the demo's source is used here"
 )]
@@ -20,10 +21,12 @@ mod scenario;
 use std::fs;
 use std::path::{Path, PathBuf};
 
-use gyremesh::event::AreaKind;
+use gyremesh::event::{AreaKind, Motion};
 use gyremesh::pipeline::{EventsOutcome, Setup, find_events};
 use gyremesh::report::InputOrder;
 use gyremesh::settings::Overrides;
+use gyremesh::time::Time;
+use rayon::prelude::*;
 
 /// A day of the demo in a folder of its own; the path of its settings.
 fn day(folder: &Path, seed: u64, weather: bool, faults: bool, more: &str) -> PathBuf {
@@ -139,7 +142,128 @@ fn look() {
     }
 }
 
+/// Times at which the planted line reaches the places of the settings, μs.
+fn truths(setup: &Setup) -> Vec<i64> {
+    let plane = network::LocalPlane::about_centre();
+    let (e, n) = field::toward(scenario::LINE_HEADING);
+    let begin = Time::parse_rfc3339(&scenario::rfc3339(scenario::LINE_START)).unwrap();
+    let places = setup.settings.places.iter().map(|place| {
+        let x =
+            (place.position.longitude() - network::CENTRE_LONGITUDE) * plane.metres_per_degree_east;
+        let y =
+            (place.position.latitude() - network::CENTRE_LATITUDE) * plane.metres_per_degree_north;
+        let way = x * e + y * n - 1e3 * scenario::SHORE_KM;
+        begin.micros() + (way / scenario::LINE_SPEED * 1e6) as i64
+    });
+    places.collect()
+}
+
+/// How far a direction is from another, degrees.
+fn turn(from: f64, to: f64) -> f64 {
+    (to - from + 180.0).rem_euclid(360.0) - 180.0
+}
+
+/// What is found in a variant of the demo without faults, in units of its own errors.
+struct Variant {
+    /// Speed and heading of the line, of the vortex.
+    line: Option<[f64; 2]>,
+    vortex: Option<[f64; 2]>,
+    /// First forecasts and final times of the places.
+    first: Vec<f64>,
+    last: Vec<f64>,
+    others: usize,
+    lead: Vec<f64>,
+}
+
+fn variant(seed: u64) -> Variant {
+    let (setup, found) = events(seed, true, false, "");
+    let truths = truths(&setup);
+    let off = |motion: &Motion, speed: f64, heading: f64| {
+        [
+            (motion.speed - speed) / motion.speed_error,
+            turn(heading, motion.heading) / motion.heading_error,
+        ]
+    };
+    let convergent = || found.lines.iter().filter(|line| line.is_convergent());
+    let line = convergent().max_by_key(|line| line.stations.len());
+    let areas = found.areas.iter().filter(|a| a.kind == AreaKind::Cyclonic);
+    let vortex = areas.max_by(|a, b| a.strength.total_cmp(&b.strength));
+    let (mut first, mut last, mut lead) = (Vec::new(), Vec::new(), Vec::new());
+    for arrival in line.iter().flat_map(|line| &line.arrivals) {
+        let truth = truths[arrival.place];
+        let miss = |(time, error): (Time, f64)| (time.micros() - truth) as f64 * 1e-6 / error;
+        first.extend(arrival.first.map(|f| miss((f.time, f.error))));
+        lead.extend(
+            arrival
+                .first
+                .map(|f| (truth - f.made_at.micros()) as f64 / 6e7),
+        );
+        last.extend(arrival.last.map(miss));
+    }
+    Variant {
+        line: line.map(|l| off(&l.motion, scenario::LINE_SPEED, scenario::LINE_HEADING)),
+        vortex: vortex.and_then(|v| {
+            Some(off(
+                v.motion.as_ref()?,
+                scenario::VORTEX_SPEED,
+                scenario::VORTEX_HEADING,
+            ))
+        }),
+        first,
+        last,
+        others: found.lines.len() - usize::from(line.is_some()),
+        lead,
+    }
+}
+
+fn share_within(values: &[f64], limit: f64) -> f64 {
+    values.iter().filter(|v| v.abs() <= limit).count() as f64 / values.len() as f64
+}
+
 #[test]
-fn placeholder() {
-    assert_eq!(AreaKind::ALL.len(), 4);
+#[ignore = "100 days; run by .ci/run"]
+fn arrivals_come_within_their_errors() {
+    let variants: Vec<Variant> = seeds("SEEDS", 1000..1100)
+        .into_par_iter()
+        .map(variant)
+        .collect();
+    let all = |of: &dyn Fn(&Variant) -> Vec<f64>| variants.iter().flat_map(of).collect::<Vec<_>>();
+    let rms = |v: &[f64]| (v.iter().map(|x| x * x).sum::<f64>() / v.len() as f64).sqrt();
+    let mean = |v: &[f64]| v.iter().sum::<f64>() / v.len() as f64;
+    for (name, values) in [
+        ("first", all(&|v| v.first.clone())),
+        ("last", all(&|v| v.last.clone())),
+        (
+            "line speed",
+            all(&|v| v.line.iter().map(|m| m[0]).collect()),
+        ),
+        (
+            "line heading",
+            all(&|v| v.line.iter().map(|m| m[1]).collect()),
+        ),
+        (
+            "vortex speed",
+            all(&|v| v.vortex.iter().map(|m| m[0]).collect()),
+        ),
+        (
+            "vortex heading",
+            all(&|v| v.vortex.iter().map(|m| m[1]).collect()),
+        ),
+    ] {
+        println!(
+            "{name}: {} values, {:.2} within 1.96, {:.2} within 2, mean {:.2} rms {:.2}",
+            values.len(),
+            share_within(&values, 1.96),
+            share_within(&values, 2.0),
+            mean(&values),
+            rms(&values)
+        );
+    }
+    println!(
+        "other lines {}",
+        variants.iter().map(|v| v.others).sum::<usize>()
+    );
+    println!("lead {:.0}", mean(&all(&|v| v.lead.clone())));
+    let first = all(&|v| v.first.clone());
+    assert!(share_within(&first, 1.96) >= 0.9);
 }

@@ -85,6 +85,24 @@ impl LineFit {
         })
     }
 
+    /// The same with what it does not keep to: the difference of the fit without the first and the last eighth of the
+    /// arrivals is added to its errors, as a line that grows, dies, bends or changes its speed shows itself there.
+    pub(super) fn with_unsteadiness(mut self, arrivals: &[Arrival]) -> Self {
+        let mut order: Vec<Arrival> = arrivals.to_vec();
+        order.sort_by(|a, b| a.time.total_cmp(&b.time));
+        let ends = order.len().div_ceil(8);
+        let inner = order.get(ends..order.len().saturating_sub(ends));
+        if let Some(inner) = inner.filter(|inner| inner.len() >= 4).and_then(Self::of) {
+            let off = Vector3::new(
+                inner.time_at(self.middle) - self.time,
+                inner.slowness[0] - self.slowness[0],
+                inner.slowness[1] - self.slowness[1],
+            );
+            self.covariance += off * off.transpose();
+        }
+        self
+    }
+
     /// When the line comes by a point, s.
     pub(super) fn time_at(&self, at: [f64; 2]) -> f64 {
         let [x, y] = [at[0] - self.middle[0], at[1] - self.middle[1]];

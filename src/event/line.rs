@@ -23,6 +23,9 @@ const TRIED: usize = 8;
 /// A line must have been on its way so many times as long as its wind shift takes at a station: all stations whose wind
 /// changes slowly at about the same time are no line, though chance may order their times.
 const ON_ITS_WAY: f64 = 3.0;
+/// Standard deviation by which the pace of a line changes on the way to a place, as a share: assumed. Gust fronts and sea
+/// breezes change theirs by at least so much within hours.
+const CHANGES: f64 = 0.1;
 /// Standard errors by which an arrival may miss the line's time.
 const MISS: f64 = 3.0;
 /// Two changes are alike if they differ by less than this share of the larger: 41 degrees at the same size, or three times
@@ -294,10 +297,13 @@ impl LineFinder {
             if line.forecasts[k].is_none()
                 && let Some((time, error)) = arrival.filter(|arrival| arrival.0 > now)
             {
+                // From the middle of what has been seen to the arrival.
+                let (start, end) = (line.start(), line.end());
+                let ahead = seconds(end, time) + 0.5 * seconds(start, end);
                 line.forecasts[k] = Some(Forecast {
                     made_at: now,
                     time,
-                    error,
+                    error: error.hypot(CHANGES * ahead.max(0.0)),
                 });
             }
         }
@@ -322,7 +328,7 @@ impl LineFinder {
             known_at: line.known_at,
             open,
             stations: members.iter().map(|m| m.passage.station).collect(),
-            motion: line.fit.motion(),
+            motion: line.told().motion(),
             change,
             closing: change[0] * e + change[1] * n,
             fronts: line.fronts(0.5 * self.spacing),
@@ -361,6 +367,12 @@ impl Open {
     fn end(&self) -> Time {
         let times = self.members.iter().map(|m| m.passage.time);
         times.max().unwrap_or(self.zero)
+    }
+
+    /// The fit with the errors that are told.
+    fn told(&self) -> LineFit {
+        self.fit
+            .with_unsteadiness(&arrivals(&self.members, self.zero))
     }
 
     /// How long the wind shift takes at a station on average, s.

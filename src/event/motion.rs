@@ -1,5 +1,6 @@
 //! How an area moves: a straight path through its centres.
 
+use super::track::seconds;
 use crate::time::Time;
 
 /// Most points of a path that are kept; beyond, every second one is let go.
@@ -93,33 +94,18 @@ impl Path {
     ///   leaves open. Centres of following times stray together, as they jump from
     ///   triangle to triangle: their first autocorrelation r makes n centres worth n (1 − r)/(1 + r) independent ones
     ///   (Bayley & Hammersley 1946, Suppl. J. R. Stat. Soc. 8, 184, first-order form), with r corrected for its bias in
-    ///   short series, (1 + 4 r)/n (Kendall 1954, Biometrika 41, 403; from memory), and no fewer than 3 of them.
+    ///   short series, (1 + 4 r)/n (Kendall 1954, Biometrika 41, 403; from memory), and no fewer than 3 of them. The difference of the path without
+    ///   its first and last eighth is added.
     #[must_use]
     pub fn motion(&self) -> Option<Motion> {
         let n = self.points.len();
         let (first, last) = (self.points.first()?.0, self.points.last()?.0);
-        let seconds = |time: Time| time.micros().saturating_sub(first.micros()) as f64 * 1e-6;
-        if n < LEAST_POINTS || seconds(last) < LEAST_TIME {
+        if n < LEAST_POINTS || seconds(first, last) < LEAST_TIME {
             return None;
         }
         let count = n as f64;
-        let mean_time = self.points.iter().map(|p| seconds(p.0)).sum::<f64>() / count;
-        let spread: f64 = self
-            .points
-            .iter()
-            .map(|p| (seconds(p.0) - mean_time).powi(2))
-            .sum();
-        let fit = |k: usize| {
-            let mean = self.points.iter().map(|p| p.1[k]).sum::<f64>() / count;
-            let moment = self
-                .points
-                .iter()
-                .map(|p| (seconds(p.0) - mean_time) * (p.1[k] - mean));
-            let slope = moment.sum::<f64>() / spread;
-            let off = |p: &(Time, [f64; 2])| p.1[k] - mean - slope * (seconds(p.0) - mean_time);
-            (slope, self.points.iter().map(off).collect::<Vec<f64>>())
-        };
-        let ((u, off_x), (v, off_y)) = (fit(0), fit(1));
+        let fit = straight(&self.points, first);
+        let [off_x, off_y] = fit.off;
         let sum = |a: &[f64], b: &[f64]| a.iter().zip(b).map(|(a, b)| a * b).sum::<f64>();
         let squares = sum(&off_x, &off_x) + sum(&off_y, &off_y);
         let lagged = sum(&off_x[1..], &off_x) + sum(&off_y[1..], &off_y);
@@ -129,8 +115,48 @@ impl Path {
         // Two of them go into the straight line; each stands for n / independent centres.
         let scatter = 0.5 * squares / (independent - 2.0);
         let floor = self.variances / self.given as f64 * count / independent;
-        let variance = scatter.max(floor) / spread;
-        Some(Motion::of([u, v], [variance, 0.0, variance]))
+        let variance = scatter.max(floor) / fit.spread;
+        // What the path does not keep to: an area that comes in at the edge of the network, or leaves it, is seen in part.
+        let ends = n.div_ceil(8);
+        let inner = self.points.get(ends..n - ends).filter(|p| p.len() >= 3);
+        let [u, v] = fit.velocity;
+        let [du, dv] = inner.map_or([0.0; 2], |inner| {
+            let of_inner = straight(inner, first).velocity;
+            [of_inner[0] - u, of_inner[1] - v]
+        });
+        let covariance = [variance + du * du, du * dv, variance + dv * dv];
+        Some(Motion::of([u, v], covariance))
+    }
+}
+
+/// A straight path at constant velocity.
+struct Straight {
+    velocity: [f64; 2],
+    /// Sum of the squared times from their mean, s².
+    spread: f64,
+    /// What the points are off it, by component.
+    off: [Vec<f64>; 2],
+}
+
+fn straight(points: &[(Time, [f64; 2])], zero: Time) -> Straight {
+    let count = points.len() as f64;
+    let times: Vec<f64> = points.iter().map(|p| seconds(zero, p.0)).collect();
+    let mean_time = times.iter().sum::<f64>() / count;
+    let spread: f64 = times.iter().map(|t| (t - mean_time).powi(2)).sum();
+    let (mut velocity, mut off) = ([0.0; 2], [Vec::new(), Vec::new()]);
+    for k in 0..2 {
+        let mean = points.iter().map(|p| p.1[k]).sum::<f64>() / count;
+        let pairs = || points.iter().zip(&times);
+        let moment = pairs().map(|(p, t)| (t - mean_time) * (p.1[k] - mean));
+        velocity[k] = moment.sum::<f64>() / spread;
+        let from_path =
+            |(p, t): (&(Time, [f64; 2]), &f64)| p.1[k] - mean - velocity[k] * (t - mean_time);
+        off[k] = pairs().map(from_path).collect();
+    }
+    Straight {
+        velocity,
+        spread,
+        off,
     }
 }
 
