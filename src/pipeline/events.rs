@@ -7,6 +7,7 @@ use crate::error::Error;
 use crate::event::{
     AreaEvent, AreaFinder, LineEvent, LineFinder, Passage, ShiftFinder, Snapshot, Tracker,
 };
+use crate::polygon::StationPolygon;
 use crate::report::InputOrder;
 use crate::structure::{LocalPlane, TemporalFunction};
 use crate::time::Time;
@@ -20,6 +21,9 @@ pub struct EventsOutcome {
     pub plane: LocalPlane,
     /// Areas, in the order of their start.
     pub areas: Vec<AreaEvent>,
+    /// For each area the station that all of it lies around, if the means of the whole run around that station are odd
+    /// ([`Outcome::attributions`]).
+    pub doubts: Vec<Option<usize>>,
     /// Lines, in the order of their start.
     pub lines: Vec<LineEvent>,
     /// Wind shifts at stations in the order in which they became known, with the place of their line in the list.
@@ -81,10 +85,13 @@ pub fn find_events(
     };
     let run = run_with(setup, order, encode, write, progress)?;
     let (lines, passages) = lines.finish();
+    let areas = tracker.finish();
+    let doubts = areas.iter().map(|area| doubt(setup, &run, area));
     Ok(EventsOutcome {
+        doubts: doubts.collect(),
         run,
         plane,
-        areas: tracker.finish(),
+        areas,
         lines,
         passages,
     })
@@ -103,6 +110,16 @@ impl EventsOutcome {
     pub fn period(&self) -> Option<(Time, Time)> {
         self.run.period.ends
     }
+}
+
+/// The odd station that all of an area lies around.
+fn doubt(setup: &Setup, run: &Outcome, area: &AreaEvent) -> Option<usize> {
+    let polygons: Vec<&StationPolygon> = (area.polygons.iter().chain([&area.peak.polygon]))
+        .filter_map(|&number| run.polygon(setup, number))
+        .collect();
+    let odd = run.attributions.iter().map(|found| found.station);
+    let mut around = odd.filter(|s| polygons.iter().all(|p| p.row.stations.contains(s)));
+    around.next()
 }
 
 /// The middle of the stations: of their directions from the Earth's centre, so that the date line does not matter.
