@@ -4,7 +4,7 @@
 //!   across it makes it (`[events] jump`), so that the same figure serves networks of any spacing. Strong triangles that
 //!   share a station make an area, which begins with a triangle that is strong *and* called different from zero, and goes on
 //!   with triangles of half that strength that differ from zero by 1.96 standard errors. Areas of following times are the
-//!   same event if they share triangles; a gap of half an hour does not end it. Of an area that splits the part with most of
+//!   same event if they share triangles; a gap of 20 min does not end it. Of an area that splits the part with most of
 //!   the old triangles goes on; of areas that merge the one that has most of the new.
 //! - **Wind shifts** ([`ShiftFinder`]). A station's wind shifts when the mean after a time differs from that before it by
 //!   3 m/s and 2.5 standard errors, more than at any other time around; time and error come from a smooth step fitted to the winds.

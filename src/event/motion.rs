@@ -59,6 +59,8 @@ pub struct Path {
     given: u64,
     /// Sum of their variances, m².
     variances: f64,
+    /// The last time that counts for the motion.
+    until: Option<Time>,
 }
 
 impl Path {
@@ -82,13 +84,18 @@ impl Path {
         }
     }
 
+    /// Lets all centres so far count for the motion; those that never do are of a fading area.
+    pub fn count(&mut self, time: Time) {
+        self.until = Some(time);
+    }
+
     /// The centres in the plane of the network, m, in the order of time.
     #[must_use]
     pub fn points(&self) -> &[(Time, [f64; 2])] {
         &self.points
     }
 
-    /// The motion along the straight path that fits the centres best; `None` for fewer than four centres or half an hour.
+    /// The motion along the straight path that fits the centres that count best; `None` for fewer than four centres or half an hour.
     ///
     /// - **Error**: from the scatter about the path, alike in both directions and not below what the size of the triangles
     ///   leaves open. Centres of following times stray together, as they jump from
@@ -98,13 +105,15 @@ impl Path {
     ///   its first and last eighth is added.
     #[must_use]
     pub fn motion(&self) -> Option<Motion> {
-        let n = self.points.len();
-        let (first, last) = (self.points.first()?.0, self.points.last()?.0);
+        let until = self.until?;
+        let points = &self.points[..self.points.partition_point(|p| p.0 <= until)];
+        let n = points.len();
+        let (first, last) = (points.first()?.0, points.last()?.0);
         if n < LEAST_POINTS || seconds(first, last) < LEAST_TIME {
             return None;
         }
         let count = n as f64;
-        let fit = straight(&self.points, first);
+        let fit = straight(points, first);
         let [off_x, off_y] = fit.off;
         let sum = |a: &[f64], b: &[f64]| a.iter().zip(b).map(|(a, b)| a * b).sum::<f64>();
         let squares = sum(&off_x, &off_x) + sum(&off_y, &off_y);
@@ -118,7 +127,7 @@ impl Path {
         let variance = scatter.max(floor) / fit.spread;
         // What the path does not keep to: an area that comes in at the edge of the network, or leaves it, is seen in part.
         let ends = n.div_ceil(8);
-        let inner = self.points.get(ends..n - ends).filter(|p| p.len() >= 3);
+        let inner = points.get(ends..n - ends).filter(|p| p.len() >= 3);
         let [u, v] = fit.velocity;
         let [du, dv] = inner.map_or([0.0; 2], |inner| {
             let of_inner = straight(inner, first).velocity;
@@ -174,6 +183,7 @@ mod tests {
                 [3.0 * t + noise(k), 4.0 * t],
                 1.0,
             );
+            path.count(Time::from_micros(k * 300_000_000));
         }
         path
     }

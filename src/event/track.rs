@@ -9,7 +9,7 @@ use crate::time::Time;
 
 /// An area that is gone for no longer than this goes on, s: a vortex of 8 m/s needs that time past a hole of 15 km in the
 /// mesh.
-const GAP: f64 = 1800.0;
+const GAP: f64 = 1200.0;
 
 /// An area over its life.
 #[derive(Debug, Clone, PartialEq)]
@@ -32,7 +32,7 @@ pub struct AreaEvent {
     pub area: f64,
     /// Its centres, weighted by circulation or flux.
     pub path: Path,
-    /// How it moves.
+    /// How it moves until the last time with a triangle that begins an event.
     pub motion: Option<Motion>,
     /// The event that it split off from, by its place in the list.
     pub split_from: Option<usize>,
@@ -256,6 +256,7 @@ impl Track {
         self.cells.clear();
         self.cells.extend_from_slice(cells);
         if cells.iter().any(|cell| cell.begins) {
+            event.path.count(time);
             let lasted = seconds(event.start, time);
             self.confirmed |= lasted >= lasting && lasted > 0.0;
         }
