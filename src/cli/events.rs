@@ -57,8 +57,7 @@ pub(super) fn bulletin(setup: &Setup, outcome: &EventsOutcome) -> String {
         out,
         "\n{}\n{}",
         wrapped(
-            "± one standard error; an arrival lies within two of them in 95 of 100 cases as long as the line keeps on. \
-             Times are UTC.",
+            "Times are UTC, ± is one standard error. An arrival holds as long as the line keeps its way and nearly its pace.",
             WIDTH
         ),
         wrapped(CAUTION, WIDTH)
@@ -118,12 +117,16 @@ fn point(degrees: f64) -> &'static str {
 }
 
 fn motion_text(motion: &Motion) -> String {
+    let heading_error = if motion.heading_error < 0.95 {
+        format!("{:.1}", motion.heading_error)
+    } else {
+        format!("{:.0}", motion.heading_error)
+    };
     format!(
-        "{:.1} ± {:.1} m/s towards {:03.0} ± {:.0} degrees ({})",
+        "{:.1} ± {:.1} m/s towards {:03.0} ± {heading_error} degrees ({})",
         motion.speed,
         motion.speed_error,
         motion.heading,
-        motion.heading_error,
         point(motion.heading)
     )
 }
@@ -148,13 +151,13 @@ fn line_text(out: &mut String, setup: &Setup, k: usize, line: &LineEvent) {
     row(
         "change",
         &format!(
-            "of wind {:.1} m/s towards {:03.0} degrees, {}",
+            "of the wind {:.1} m/s towards {:03.0} degrees, {}",
             x.hypot(y),
             x.atan2(y).to_degrees().rem_euclid(360.0),
             if line.is_convergent() {
-                format!("air closes in at {:.1} m/s", line.closing)
+                format!("{:.1} closing in", line.closing)
             } else {
-                "mostly a turn along the line".into()
+                "mostly along the line".into()
             }
         ),
     );

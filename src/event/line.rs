@@ -3,7 +3,7 @@
 use super::arrival::{Forecast, PlaceArrival};
 use super::fit::{Arrival, LineFit};
 use super::motion::Motion;
-use super::shift::Passage;
+use super::shift::{Passage, micros};
 use super::track::seconds;
 use crate::settings::EventSettings;
 use crate::station::{Network, Position};
@@ -440,9 +440,7 @@ impl Open {
         let aside = at[1] * e - at[0] * n;
         let within = (along[0]..=along[1] + reach).contains(&ahead)
             && (across[0] - spacing..=across[1] + spacing).contains(&aside);
-        let time = self
-            .zero
-            .plus_micros(super::shift::micros(self.fit.time_at(at)));
+        let time = self.zero.plus_micros(micros(self.fit.time_at(at).round()));
         within.then(|| (time, self.fit.error_at(at)))
     }
 

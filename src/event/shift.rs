@@ -196,7 +196,7 @@ impl ShiftFinder {
         let wind = |[u, v]: [f64; 2]| Wind { u, v };
         Some(Passage {
             station,
-            time: time.plus_micros(micros(fitted.shift)),
+            time: time.plus_micros(micros(fitted.shift.round())),
             error: fitted.error.hypot(self.interval / 12f64.sqrt()),
             // tanh is 0.8 at 1.1.
             width: 2.2 * fitted.width,

@@ -291,3 +291,111 @@ fn touch(a: &[Cell], b: &[Cell]) -> bool {
     let has = |station: &usize| a.iter().any(|cell| cell.stations.contains(station));
     b.iter().any(|cell| cell.stations.iter().any(has))
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// Triangles in a row: number k has the stations k, k + 1, k + 2, so that only those apart by three or more are apart.
+    fn cell(k: usize, strength: f64) -> Cell {
+        Cell {
+            polygon: k,
+            stations: [k, k + 1, k + 2],
+            area: 1e8,
+            centre: [1e4 * k as f64, 0.0],
+            value: -1e-4 * strength,
+            error: 1e-5,
+            strength,
+            begins: strength >= 1.0,
+        }
+    }
+
+    /// Convergence in these triangles, 5 min apart; `None` for a time without any.
+    fn follow(times: &[&[(usize, f64)]]) -> Vec<AreaEvent> {
+        let mut tracker = Tracker::new(900.0, 300.0);
+        for (t, cells) in times.iter().enumerate() {
+            let time = Time::from_micros(300_000_000 * i64::try_from(t).unwrap_or(0));
+            let cells = cells
+                .iter()
+                .map(|&(k, strength)| cell(k, strength))
+                .collect();
+            let cells = [cells, Vec::new(), Vec::new(), Vec::new()];
+            tracker.advance(&Snapshot { time, cells });
+        }
+        tracker.finish()
+    }
+
+    fn minutes(time: Time) -> i64 {
+        time.micros() / 60_000_000
+    }
+
+    #[test]
+    fn onset_and_end_have_their_own_strength() {
+        let weak: &[(usize, f64)] = &[(0, 0.6)];
+        let strong: &[(usize, f64)] = &[(0, 1.5), (1, 0.7)];
+        let events = follow(&[
+            weak,
+            weak,
+            strong,
+            strong,
+            &[(0, 1.1)],
+            strong,
+            weak,
+            weak,
+            &[],
+        ]);
+        assert_eq!(events.len(), 1);
+        assert_eq!((minutes(events[0].start), minutes(events[0].end)), (10, 35));
+        assert!((events[0].area - 2e8).abs() < 1.0 && events[0].polygons == [0, 1]);
+        assert!((events[0].strength - 1.5).abs() < 1e-12 && minutes(events[0].peak.time) == 10);
+        // A strong triangle for 10 min only is no event.
+        assert!(follow(&[strong, strong, strong, weak, weak, weak]).is_empty());
+    }
+
+    #[test]
+    fn a_short_gap_does_not_end_an_area_and_a_long_one_does() {
+        let on: &[(usize, f64)] = &[(0, 1.5)];
+        let off: &[(usize, f64)] = &[];
+        let short = follow(&[on, on, on, on, off, off, off, on, on, on, on]);
+        assert_eq!(short.len(), 1);
+        let long = follow(&[on, on, on, on, off, off, off, off, on, on, on, on]);
+        assert_eq!(long.len(), 2);
+        assert!(!long[0].open && long[1].open);
+    }
+
+    #[test]
+    fn the_larger_part_goes_on_and_splits_and_merges_are_noted() {
+        let whole: &[(usize, f64)] = &[(0, 1.2), (2, 1.2), (4, 1.2), (5, 1.2), (6, 1.2)];
+        let parts: &[(usize, f64)] = &[(0, 1.2), (4, 1.2), (5, 1.2), (6, 1.2)];
+        let events = follow(&[
+            whole, whole, parts, parts, parts, parts, whole, whole, whole,
+        ]);
+        assert_eq!(events.len(), 2);
+        assert_eq!((minutes(events[0].start), minutes(events[0].end)), (0, 40));
+        assert_eq!((minutes(events[1].start), minutes(events[1].end)), (10, 25));
+        assert_eq!(
+            (events[1].split_from, events[1].merged_into),
+            (Some(0), Some(0))
+        );
+        assert_eq!((events[0].split_from, events[0].merged_into), (None, None));
+    }
+
+    #[test]
+    fn an_area_is_followed_from_triangle_to_triangle() {
+        let times: Vec<Vec<(usize, f64)>> = (0..30).map(|t| vec![(t / 3, 1.2)]).collect();
+        let times: Vec<&[(usize, f64)]> = times.iter().map(Vec::as_slice).collect();
+        let events = follow(&times);
+        assert_eq!(events.len(), 1);
+        let motion = events[0]
+            .motion
+            .map(|m| (m.speed, m.speed_error, m.heading));
+        // 10 km in 15 min towards east.
+        let expected = 1e4 / 900.0;
+        let (speed, error, heading) = motion.unwrap_or_default();
+        assert!(
+            (speed - expected).abs() < 2.0 * error && error < 2.0,
+            "{motion:?}"
+        );
+        assert!((heading - 90.0).abs() < 1.0, "{motion:?}");
+    }
+}
