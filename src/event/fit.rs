@@ -51,7 +51,7 @@ impl LineFit {
         let column = |a: &Arrival| Vector3::new(1.0, a.at[0] - middle[0], a.at[1] - middle[1]);
         let weight = |a: &Arrival| 1.0 / (a.error * a.error + ROUGHNESS * ROUGHNESS);
         let mut robust = vec![1.0; arrivals.len()];
-        let (mut found, mut inverse) = (Vector3::zeros(), Matrix3::zeros());
+        let mut found = Vector3::zeros();
         for _ in 0..if arrivals.len() > 4 { ROUNDS } else { 1 } {
             let mut normal = Matrix3::zeros();
             let mut right = Vector3::zeros();
@@ -60,8 +60,7 @@ impl LineFit {
                 normal += c * c.transpose() * (share * weight(a));
                 right += c * (share * weight(a) * a.time);
             }
-            inverse = normal.try_inverse()?;
-            found = inverse * right;
+            found = normal.try_inverse()? * right;
             for (a, share) in arrivals.iter().zip(&mut robust) {
                 let off = (a.time - column(a).dot(&found)).abs() * weight(a).sqrt();
                 *share = (TUNING / off).min(1.0);
@@ -70,11 +69,19 @@ impl LineFit {
         if !found.iter().all(|x| x.is_finite()) || arrivals.len() < 3 {
             return None;
         }
-        let misfit = |(a, share): (&Arrival, &f64)| {
-            share * weight(a) * (a.time - column(a).dot(&found)).powi(2)
+        // Variance of the estimate by Huber (1973, Ann. Stat. 1, 799): mean ψ² over the squared share that is not cut.
+        let cut_misfit = |(a, share): (&Arrival, &f64)| {
+            weight(a) * (share * (a.time - column(a).dot(&found))).powi(2)
         };
-        let squares: f64 = arrivals.iter().zip(&robust).map(misfit).sum();
-        let scale = (PRIOR_VALUES + squares) / (PRIOR_VALUES + count - 3.0);
+        let squares: f64 = arrivals.iter().zip(&robust).map(cut_misfit).sum();
+        let whole = robust.iter().filter(|share| **share >= 1.0).count() as f64 / count;
+        let scale =
+            (PRIOR_VALUES + squares / (whole * whole).max(0.1)) / (PRIOR_VALUES + count - 3.0);
+        let normal: Matrix3<f64> = arrivals
+            .iter()
+            .map(|a| column(a) * column(a).transpose() * weight(a))
+            .sum();
+        let inverse = normal.try_inverse()?;
         let stated = arrivals.iter().map(|a| 1.0 / weight(a)).sum::<f64>() / count;
         Some(Self {
             middle,
