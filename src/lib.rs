@@ -52,6 +52,7 @@
 //! - [`polygon`]: triangles, rings, regions; shape and coefficient rows.
 //! - [`integral`]: area means with their errors.
 //! - [`kinematics`]: deformation, curvature and shear and the like of each polygon.
+//! - [`event`]: areas, wind shifts and lines, followed in time.
 //! - [`pipeline`]: joins them; [`output`] writes; [`cli`] speaks.
 //!
 //! # Accuracy
@@ -69,6 +70,7 @@ pub mod calibration;
 pub mod check;
 pub mod cli;
 pub mod error;
+pub mod event;
 pub mod input;
 pub mod integral;
 pub mod kinematics;

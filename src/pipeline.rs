@@ -3,6 +3,7 @@
 mod calibrate;
 mod complete;
 mod estimation;
+mod events;
 mod field;
 mod neighbours;
 mod outliers;
@@ -22,6 +23,7 @@ use crate::structure::typical_spacing;
 use crate::warning::Warning;
 
 pub use calibrate::{CalibrationOutcome, calibrate};
+pub use events::{EventsOutcome, find_events};
 pub use reading::Reading;
 pub use run::{Outcome, StructureReport, run};
 pub use windows::{Window, Windows};

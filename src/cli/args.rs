@@ -45,7 +45,37 @@ pub enum Command {
     /// Find vanes that are turned, speeds mis-scaled, clocks off and data mixed up, from the network itself
     #[command(after_help = CALIBRATE_HELP)]
     Calibrate(CalibrateArgs),
+    /// Tell what happened: areas that converge or spin up, wind-shift lines, and when they reach your places
+    #[command(after_help = EVENTS_HELP)]
+    Events(EventsArgs),
 }
+
+const EVENTS_HELP: &str = "\
+Reads:   settings, station list, report files.
+Prints:  a bulletin, the most important first: lines along which the wind shifts, how they move and when they reach the \
+places of the settings; areas where the air converges, diverges or spins up, their strongest mean, place and motion.
+Writes:  with --out: events.csv (a row for each line, then each area), arrivals.csv (first forecast and final time for each \
+line and place), shifts.csv (each wind shift at a station), events.geojson (RFC 7946: largest areas, paths, lines at \
+whole hours).
+
+An area is made of triangles of the mesh without a fault. A line needs wind shifts alike at six stations; a forecast rests \
+on no later report than its made_at. There is no arrival for a place behind the first station passed, further than \
+reach beyond the last, or more than the spacing of the stations to the side. Errors are standard errors.
+
+Settings (defaults in brackets):
+  [events]    jump            an area begins with a mean as strong as such a jump of the wind across the triangle makes \
+it: value times the root of the area [5 m/s]; or
+              threshold       this value, 1/s
+              lasting         shorter areas are left out [15 min]
+              shift           least change of the wind at a station [3 m/s]
+              window          over which the wind before and after is a mean [30 min]
+              least_stations  of a line [6]
+              reach           how far beyond the stations passed arrivals are given [50 km]
+  [[places]]  name, latitude, longitude (degrees)
+
+Example: gyremesh events networks/ostrin/network.toml --out out/ostrin
+
+These are estimates, not warnings: follow the national weather service, site safety rules and local codes.";
 
 const CALIBRATE_HELP: &str = "\
 Reads:   settings, station list, report files: a day at least, better some weeks.
@@ -243,6 +273,38 @@ pub struct CalibrateArgs {
     pub memory: Option<usize>,
 }
 
+/// Options of `events`.
+#[derive(Debug, ClapArgs)]
+pub struct EventsArgs {
+    /// Settings file
+    pub network: PathBuf,
+    /// Write events.csv, arrivals.csv, shifts.csv and events.geojson into this folder
+    #[arg(long, value_name = "DIR")]
+    pub out: Option<PathBuf>,
+    /// Print JSON
+    #[arg(long)]
+    pub json: bool,
+    /// Report files in place of those of the settings, in the format of the first group of the settings
+    #[arg(long, value_name = "FILE", num_args = 1..)]
+    pub reports: Vec<PathBuf>,
+    /// First time used, RFC 3339
+    #[arg(long, value_name = "TIME", value_parser = Time::parse_rfc3339)]
+    pub from: Option<Time>,
+    /// Last time used, RFC 3339
+    #[arg(long, value_name = "TIME", value_parser = Time::parse_rfc3339)]
+    pub to: Option<Time>,
+    /// Threads; the results do not depend on it [default: all processors]
+    #[arg(long, value_name = "N")]
+    pub threads: Option<usize>,
+    /// Keep the reports, once read, in this file, and take them from it as long as neither they nor the settings change
+    #[arg(long, value_name = "FILE")]
+    pub cache: Option<PathBuf>,
+    /// Memory that reports may take which are not in the order of time, such as 500MiB; the rest is sorted on disk
+    /// [default: 1GiB]
+    #[arg(long, value_name = "SIZE", value_parser = units::parse_memory)]
+    pub memory: Option<usize>,
+}
+
 /// Options of `polygons`.
 #[derive(Debug, ClapArgs)]
 pub struct PolygonsArgs {
@@ -408,6 +470,19 @@ impl From<&CheckArgs> for Overrides {
 
 impl From<&CalibrateArgs> for Overrides {
     fn from(args: &CalibrateArgs) -> Self {
+        Self {
+            reports: args.reports.clone(),
+            from: args.from,
+            to: args.to,
+            memory: args.memory,
+            cache: args.cache.clone(),
+            ..Self::default()
+        }
+    }
+}
+
+impl From<&EventsArgs> for Overrides {
+    fn from(args: &EventsArgs) -> Self {
         Self {
             reports: args.reports.clone(),
             from: args.from,

@@ -2,6 +2,7 @@
 
 pub mod args;
 mod calibration;
+mod events;
 mod expect;
 mod message;
 mod reading;
@@ -13,13 +14,16 @@ use std::path::{Path, PathBuf};
 use clap::Parser;
 use indicatif::{ProgressBar, ProgressStyle};
 
-use self::args::{Args, CalibrateArgs, CheckArgs, Command, EstimateArgs, Format, PolygonsArgs};
+use self::args::{
+    Args, CalibrateArgs, CheckArgs, Command, EstimateArgs, EventsArgs, Format, PolygonsArgs,
+};
 use self::expect::Expectation;
 use crate::error::{Error, ErrorKind, nearest_name};
 use crate::output::{
-    FlaggedFiles, Formats, OutputSet, calibration_csv, calibration_json, corrected_list,
-    corrected_list_section, corrections_of, maintenance_csv, means_csv, mesh_csv, mesh_geojson,
-    reading_json, series, stations_csv, structure_csv, summary_csv, summary_json,
+    FlaggedFiles, Formats, OutputSet, arrivals_csv, calibration_csv, calibration_json,
+    corrected_list, corrected_list_section, corrections_of, events_csv, events_geojson,
+    events_json, maintenance_csv, means_csv, mesh_csv, mesh_geojson, reading_json, series,
+    shifts_csv, stations_csv, structure_csv, summary_csv, summary_json,
 };
 use crate::pipeline::{self, CalibrationOutcome, Reading, Setup, Sources};
 use crate::report::InputOrder;
@@ -59,6 +63,7 @@ pub fn main() -> Status {
         Command::Polygons(args) => polygons(args),
         Command::Estimate(args) => estimate(args),
         Command::Calibrate(args) => calibrate(args),
+        Command::Events(args) => events(args),
     };
     match result {
         Ok(status) => status,
@@ -297,6 +302,44 @@ fn calibrate(args: &CalibrateArgs) -> Result<Status, Error> {
         apply(file, &setup, &outcome)?;
     }
     Ok(if outcome.reading.is_complete() {
+        Status::Complete
+    } else {
+        Status::SomeInputUnusable
+    })
+}
+
+fn events(args: &EventsArgs) -> Result<Status, Error> {
+    use_threads(args.threads);
+    let setup = Setup::read(&args.network, &Overrides::from(args))?;
+    let bar = progress_bar(args.json);
+    let run = |order| pipeline::find_events(&setup, order, |rows| bar.set_position(rows));
+    let result = match run(InputOrder::first_try(&setup.settings.reports)) {
+        Err(error) if error.kind() == ErrorKind::Order => run(InputOrder::Any),
+        result => result,
+    };
+    bar.finish_and_clear();
+    let outcome = result?;
+    if let Some(folder) = &args.out {
+        let mut set = OutputSet::new(folder)?;
+        set.put("events.csv", events_csv(&setup, &outcome).as_bytes())?;
+        set.put("shifts.csv", shifts_csv(&setup, &outcome).as_bytes())?;
+        set.put("arrivals.csv", arrivals_csv(&setup, &outcome).as_bytes())?;
+        let shapes = events_geojson(&setup, &outcome);
+        set.put("events.geojson", shapes.as_bytes())?;
+        set.commit()?;
+    }
+    for warning in &outcome.run.warnings {
+        message::say("warning", &warning.to_string());
+    }
+    for failure in &outcome.run.reading.failures {
+        message::say("warning", &failure.to_string());
+    }
+    print(&if args.json {
+        events_json(&setup, &outcome)
+    } else {
+        events::bulletin(&setup, &outcome)
+    })?;
+    Ok(if outcome.run.reading.is_complete() {
         Status::Complete
     } else {
         Status::SomeInputUnusable

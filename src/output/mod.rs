@@ -2,6 +2,7 @@
 
 mod calibration;
 mod csv;
+mod events;
 mod file;
 mod fits;
 mod flagged;
@@ -27,6 +28,9 @@ pub use calibration::{
 };
 pub(crate) use csv::quoted;
 pub use csv::{PolygonRows, means_csv, mesh_csv, stations_csv, summary_csv};
+pub use events::{
+    area_id, arrivals_csv, events_csv, events_geojson, events_json, line_id, shifts_csv,
+};
 pub use file::OutputSet;
 pub use flagged::FlaggedFiles;
 pub use geojson::{mesh_geojson, outline_geometry};

@@ -6,12 +6,13 @@ use super::complete::{Common, ErrorModel, Holes};
 use super::field::FieldState;
 use super::outliers::OutlierBooks;
 use super::remesh::Remesh;
+use super::run::Seen;
 use super::{Setup, Window};
 use crate::align::{AlignBooks, Aligner, StationSensors, WindBlock, block_times, height_factor};
 use crate::integral::{
     CauseBooks, EstimateBlock, Extremes, FalseDiscovery, FitBooks, GroupMeans, RunStatistics,
 };
-use crate::kinematics::{Kinematics, KinematicsBlock};
+use crate::kinematics::Kinematics;
 use crate::report::{Rounding, SpeedStep};
 use crate::settings::{Missing, SensorErrors, Settings};
 use crate::spatial::SpatialCheck;
@@ -80,7 +81,7 @@ impl<'a> Estimation<'a> {
     pub(super) fn window<T: Send>(
         &mut self,
         window: &Window,
-        encode: &(impl Fn(&EstimateBlock, Option<&KinematicsBlock>) -> T + Sync),
+        encode: &(impl Fn(&Seen) -> T + Sync),
     ) -> Vec<T> {
         let setup = self.setup;
         let table = &window.table;
@@ -133,7 +134,13 @@ impl<'a> Estimation<'a> {
                     let sampling = common.errors.map(|e| (&e.sampling, models.as_slice()));
                     k.of(winds, &block, sampling)
                 });
-                (sums, encode(&block, kinematics.as_ref()))
+                let seen = Seen {
+                    estimates: &block,
+                    kinematics: kinematics.as_ref(),
+                    winds,
+                    models: &models,
+                };
+                (sums, encode(&seen))
             })
             .collect();
 

@@ -5,7 +5,7 @@ use std::fmt::Write;
 use super::estimation::Estimation;
 use super::field::FieldState;
 use super::{Reading, Setup, Windows};
-use crate::align::Period;
+use crate::align::{Period, WindBlock};
 use crate::error::Error;
 use crate::integral::{
     Attribution, CauseBooks, EstimateBlock, ExtraPolygon, Extremes, FitBook, FitBooks, GroupMeans,
@@ -97,6 +97,28 @@ pub fn run<T: Send>(
     setup: &Setup,
     order: InputOrder,
     encode: impl Fn(&EstimateBlock, Option<&KinematicsBlock>) -> T + Sync,
+    write: impl FnMut(T) -> Result<(), Error> + Send,
+    progress: impl FnMut(u64),
+) -> Result<Outcome, Error> {
+    let encode = |seen: &Seen| encode(seen.estimates, seen.kinematics);
+    run_with(setup, order, encode, write, progress)
+}
+
+/// A block as it is estimated.
+pub(super) struct Seen<'a> {
+    pub(super) estimates: &'a EstimateBlock,
+    /// Where they are asked for.
+    pub(super) kinematics: Option<&'a KinematicsBlock>,
+    pub(super) winds: &'a WindBlock,
+    /// The structure function at each time; none if none was asked for.
+    pub(super) models: &'a [StructureFunction],
+}
+
+/// [`run`] with an `encode` that sees the winds too.
+pub(super) fn run_with<T: Send>(
+    setup: &Setup,
+    order: InputOrder,
+    encode: impl Fn(&Seen) -> T + Sync,
     mut write: impl FnMut(T) -> Result<(), Error> + Send,
     mut progress: impl FnMut(u64),
 ) -> Result<Outcome, Error> {

@@ -8,6 +8,7 @@ mod calibration;
 mod check;
 mod check_keys;
 mod errors;
+mod events;
 mod kinematics;
 mod means;
 mod path;
@@ -32,6 +33,7 @@ pub use check::{
     AgreementLimits, AttenuatedLimits, CheckLimits, FlatLimits, NeighbourLimits, PersistenceLimits,
     RangeLimits, RateLimits, RunLimits, Season, SpikeLimits, StuckLimits,
 };
+pub use events::{EventSettings, NamedPlace, Onset};
 pub use read::{Overrides, read_settings};
 
 /// Everything a run needs to know, verified.
@@ -57,6 +59,10 @@ pub struct Settings {
     pub means: MeansSettings,
     /// What the calibration leaves out.
     pub calibration: CalibrationChoice,
+    /// What counts as an event.
+    pub events: EventSettings,
+    /// Places for which arrival times are wanted.
+    pub places: Vec<NamedPlace>,
     /// Limits of the tests of the reports.
     pub check: CheckLimits,
     /// Which polygons are built.

@@ -7,6 +7,7 @@ use super::analysis::analysis;
 use super::calibration::calibration;
 use super::check_keys::check;
 use super::errors::errors;
+use super::events::{events, places};
 use super::kinematics::kinematics;
 use super::means::means;
 use super::path::expand_path;
@@ -98,6 +99,8 @@ fn parse_settings(
         kinematics: kinematics(root.section("kinematics"), overrides),
         means: means(&mut root, overrides),
         calibration: calibration(root.section("calibration")),
+        events: events(root.section("events")),
+        places: places(root.sections("places")),
         check: check(root.section("check"), sensor.calm_below),
         sensor,
         limits: limits(root.section("limits"), overrides),

@@ -62,6 +62,26 @@ impl LocalPlane {
         }
     }
 
+    /// The position of a point of the plane: what [`Self::place`] came from.
+    ///
+    /// # Errors
+    /// Only for coordinates that are not finite.
+    pub fn position(&self, [x, y]: [f64; 2]) -> Result<Position, String> {
+        let (east, north) = (x / self.radii[0], y / self.radii[1]);
+        let angle = east.hypot(north);
+        let scale = if angle < 1e-12 {
+            1.0
+        } else {
+            angle.sin() / angle
+        };
+        let (east, north, up) = (scale * east, scale * north, angle.cos());
+        let (s0, c0) = (self.sin_latitude, self.cos_latitude);
+        let latitude = (s0 * up + c0 * north).clamp(-1.0, 1.0).asin();
+        let longitude = self.longitude + east.atan2(c0 * up - s0 * north);
+        let degrees = (longitude.to_degrees() + 180.0).rem_euclid(360.0) - 180.0;
+        Position::new(latitude.to_degrees(), degrees)
+    }
+
     /// Where a position lies, and how its north stands there.
     #[must_use]
     pub fn place(&self, position: Position) -> PlanePoint {
@@ -110,6 +130,9 @@ mod tests {
         ] {
             let (s, start, end, _): (f64, f64, f64, f64) = geodesic.inverse(lat, lon, lat2, lon2);
             let p = LocalPlane::at((lat, lon)).place(Position::new(lat2, lon2).unwrap());
+            let back = LocalPlane::at((lat, lon)).position(p.at).unwrap();
+            assert!((back.latitude() - lat2).abs() < 1e-9, "{back:?}");
+            assert!((back.longitude() - lon2).abs() < 1e-9, "{back:?}");
             let found = p.at[0].hypot(p.at[1]);
             assert!((found / s - 1.0).abs() < 1e-4, "{found} {s}");
             let bearing = p.at[0].atan2(p.at[1]).to_degrees();
