@@ -310,6 +310,13 @@ fn bulletin_and_files() {
         text.lines().all(|line| line.chars().count() <= 80),
         "{text}"
     );
+    // The README shows it, cut.
+    let readme = fs::read_to_string(root.join("README.md")).unwrap();
+    let shown = readme.split("## Events").nth(1).unwrap();
+    let shown = shown.split("```").nth(1).unwrap();
+    for line in shown.lines().skip(1).filter(|line| *line != "...") {
+        assert!(text.lines().any(|told| told == line), "{line}");
+    }
     let words: Vec<&str> = text.split_whitespace().collect();
     assert!(words.join(" ").ends_with(gyremesh::output::CAUTION));
     let [events, arrivals, shifts, shapes] = files;

@@ -5,7 +5,8 @@
     clippy::unwrap_used,
     clippy::expect_used,
     clippy::panic,
-    reason = "tests may panic"
+    clippy::print_stdout,
+    reason = "tests may panic and print"
 )]
 
 use std::fs;
@@ -339,4 +340,99 @@ fn sound_networks_pass_the_tests() {
         let suspect = total(&check, "suspect");
         assert!(suspect <= most, "{name}: {suspect}");
     }
+}
+
+/// Mean vorticity of the triangles with a value, weighted by area, at each time at which three quarters of the usual area
+/// has one: (time, 1/s).
+fn mean_vorticity(name: &str) -> Vec<(String, f64)> {
+    let out = tempfile::tempdir().unwrap();
+    let output = Command::new(env!("CARGO_BIN_EXE_gyremesh"))
+        .arg("estimate")
+        .arg(network(name))
+        .args(["--quiet", "--out"])
+        .arg(out.path())
+        .output()
+        .unwrap();
+    assert!(output.status.success());
+    let mut reader = csv::Reader::from_path(out.path().join("polygons.csv")).unwrap();
+    let mut sums: std::collections::BTreeMap<String, [f64; 2]> = std::collections::BTreeMap::new();
+    for row in reader.records().map(Result::unwrap) {
+        if let (Ok(area), Ok(vorticity)) = (row[3].parse::<f64>(), row[4].parse::<f64>()) {
+            let sum = sums.entry(row[0].to_string()).or_default();
+            *sum = [sum[0] + area, sum[1] + area * vorticity];
+        }
+    }
+    let most = sums.values().map(|s| s[0]).fold(0.0, f64::max);
+    let there = sums.into_iter().filter(|(_, s)| s[0] > 0.7 * most);
+    there
+        .map(|(time, [area, sum])| (time, sum / area))
+        .collect()
+}
+
+/// The typhoons over Hong Kong: the network turns cyclonically, most when the centre is near, and `events` finds the
+/// cyclonic spin-up of Saola and the wind shifts of both. From memory, of the Hong Kong Observatory's reports: Saola was
+/// nearest, about 40 km south of the city, at about 15 UTC on 1 September 2023; Wipha, about 60 km south, at about 04 to
+/// 05 UTC on 20 July 2025.
+#[test]
+#[ignore = "needs GYREMESH_DATA; run by .ci/run"]
+fn typhoons_turn_cyclonically_and_shift_the_wind() {
+    let events = |name: &str| -> Value {
+        let output = Command::new(env!("CARGO_BIN_EXE_gyremesh"))
+            .arg("events")
+            .arg(network(name))
+            .arg("--json")
+            .output()
+            .unwrap();
+        serde_json::from_slice(&output.stdout).unwrap()
+    };
+    for (name, share, within, lines) in [
+        (
+            "hong_kong_saola",
+            0.95,
+            ["2023-09-01T08:00:00Z", "2023-09-01T15:00:00Z"],
+            ["2023-09-01T10:00:00Z", "2023-09-01T17:00:00Z"],
+        ),
+        (
+            "hong_kong_wipha",
+            0.5,
+            ["2025-07-20T01:00:00Z", "2025-07-20T05:00:00Z"],
+            ["2025-07-19T22:00:00Z", "2025-07-20T05:00:00Z"],
+        ),
+    ] {
+        let means = mean_vorticity(name);
+        let cyclonic = means.iter().filter(|m| m.1 > 0.0).count();
+        assert!(
+            cyclonic as f64 > share * means.len() as f64,
+            "{name}: {cyclonic}"
+        );
+        let (time, most) = means.iter().max_by(|a, b| a.1.total_cmp(&b.1)).unwrap();
+        println!("{name}: mean vorticity {:.0}e-5 /s at {time}", most * 1e5);
+        assert!(*most > 5e-4, "{name}: {most}");
+        assert!(
+            (within[0]..=within[1]).contains(&time.as_str()),
+            "{name}: {time}"
+        );
+        let found = events(name);
+        let found_lines = found["lines"].as_array().unwrap();
+        assert!(!found_lines.is_empty(), "{name}");
+        for line in found_lines {
+            println!(
+                "{name}: {} {} {}",
+                line["kind"], line["start"], line["motion"]
+            );
+            let start = line["start"].as_str().unwrap();
+            assert!((lines[0]..=lines[1]).contains(&start), "{name}: {line}");
+        }
+        let mut areas = found["areas"].as_array().unwrap().iter();
+        assert!(areas.any(|a| a["kind"] == "cyclonic spin-up"), "{name}");
+    }
+    let saola = events("hong_kong_saola");
+    let strongest = saola["areas"].as_array().unwrap().iter();
+    let strongest = strongest.filter(|a| a["kind"] == "cyclonic spin-up");
+    let peak = strongest.max_by(|a, b| {
+        let peak = |v: &Value| v["peak"].as_f64().unwrap();
+        peak(a).total_cmp(&peak(b))
+    });
+    let time = peak.unwrap()["peak_time"].as_str().unwrap();
+    assert!(time.starts_with("2023-09-01T13"), "{time}");
 }
