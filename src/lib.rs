@@ -50,6 +50,7 @@
 //! - [`polygon`]: triangles, rings, regions; shape and coefficient rows.
 //! - [`integral`]: area means with their errors.
 //! - [`kinematics`]: deformation, curvature and shear and the like of each polygon.
+//! - [`profile`]: winds on levels, vertical motion.
 //! - [`pipeline`]: joins them; [`output`] writes; [`cli`] speaks.
 //!
 //! # Accuracy
@@ -73,6 +74,7 @@ pub mod kinematics;
 pub mod output;
 pub mod pipeline;
 pub mod polygon;
+pub mod profile;
 pub mod report;
 pub mod settings;
 pub mod spatial;

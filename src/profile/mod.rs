@@ -1,0 +1,41 @@
+//! Profiles: the wind of platforms that report on many levels, and the vertical motion that their divergence makes.
+//!
+//! [`Column`] gives the vertical motion, with errors.
+
+mod atmosphere;
+mod vertical;
+
+pub use atmosphere::{Air, GAS_CONSTANT, GRAVITY, air_at_height, air_at_pressure, w_of_omega};
+pub use vertical::{
+    Adjustment, Column, Measured, Motion, VerticalMotion, motion_along_slope, motion_at_height,
+};
+
+/// What levels are counted in.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, serde::Serialize)]
+#[serde(rename_all = "snake_case")]
+pub enum Coordinate {
+    /// Pressure, Pa, falling upward.
+    Pressure,
+    /// Height, m, growing upward.
+    Height,
+}
+
+impl Coordinate {
+    /// True if `a` is above `b`.
+    #[must_use]
+    pub fn is_above(self, a: f64, b: f64) -> bool {
+        match self {
+            Self::Pressure => a < b,
+            Self::Height => a > b,
+        }
+    }
+
+    /// A level with its unit, such as `850 hPa` or `1500 m`.
+    #[must_use]
+    pub fn words(self, level: f64) -> String {
+        match self {
+            Self::Pressure => format!("{} hPa", (level / 100.0 * 1e6).round() / 1e6),
+            Self::Height => format!("{} m", (level * 1e6).round() / 1e6),
+        }
+    }
+}
