@@ -4,8 +4,10 @@ mod calibrate;
 mod complete;
 mod estimation;
 mod field;
+mod level_polygons;
 mod neighbours;
 mod outliers;
+mod profile;
 mod reading;
 mod remesh;
 mod run;
@@ -22,6 +24,7 @@ use crate::structure::typical_spacing;
 use crate::warning::Warning;
 
 pub use calibrate::{CalibrationOutcome, calibrate};
+pub use profile::{LevelEstimate, PolygonProfile, ProfileOutcome, profile};
 pub use reading::Reading;
 pub use run::{Outcome, StructureReport, run};
 pub use windows::{Window, Windows};

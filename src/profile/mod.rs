@@ -1,11 +1,14 @@
 //! Profiles: the wind of platforms that report on many levels, and the vertical motion that their divergence makes.
 //!
-//! [`Column`] gives the vertical motion, with errors.
+//! [`Ascent`] gives a platform's wind and place at a level or in a layer, [`Column`] the vertical motion, with errors. The
+//! areas between, level by level, are polygons like all others ([`crate::pipeline::profile()`]).
 
 mod atmosphere;
+mod level;
 mod vertical;
 
 pub use atmosphere::{Air, GAS_CONSTANT, GRAVITY, air_at_height, air_at_pressure, w_of_omega};
+pub use level::{Ascent, Level, LevelReport, LevelWind, NoWind};
 pub use vertical::{
     Adjustment, Column, Measured, Motion, VerticalMotion, motion_along_slope, motion_at_height,
 };

@@ -11,6 +11,7 @@ mod errors;
 mod kinematics;
 mod means;
 mod path;
+mod profile;
 mod read;
 mod reports;
 mod section;
@@ -32,6 +33,7 @@ pub use check::{
     AgreementLimits, AttenuatedLimits, CheckLimits, FlatLimits, NeighbourLimits, PersistenceLimits,
     RangeLimits, RateLimits, RunLimits, Season, SpikeLimits, StuckLimits,
 };
+pub use profile::{Boundary, ProfileSettings};
 pub use read::{Overrides, read_settings};
 
 /// Everything a run needs to know, verified.
@@ -57,6 +59,8 @@ pub struct Settings {
     pub means: MeansSettings,
     /// What the calibration leaves out.
     pub calibration: CalibrationChoice,
+    /// Levels and boundaries of profiles.
+    pub profile: ProfileSettings,
     /// Limits of the tests of the reports.
     pub check: CheckLimits,
     /// Which polygons are built.

@@ -10,6 +10,7 @@ use super::errors::errors;
 use super::kinematics::kinematics;
 use super::means::means;
 use super::path::expand_path;
+use super::profile::profile;
 use super::reports::{reports, text_format};
 use super::section::{Document, Section};
 use super::{
@@ -98,6 +99,7 @@ fn parse_settings(
         kinematics: kinematics(root.section("kinematics"), overrides),
         means: means(&mut root, overrides),
         calibration: calibration(root.section("calibration")),
+        profile: profile(root.section("profile")),
         check: check(root.section("check"), sensor.calm_below),
         sensor,
         limits: limits(root.section("limits"), overrides),
