@@ -18,22 +18,25 @@ pub(super) fn profile_text(setup: &Setup, outcome: &ProfileOutcome) -> String {
     let _ = writeln!(out, "{}", cut(&setup.settings.name, WIDTH));
     let _ = writeln!(
         out,
-        "Platforms   {}; winds at {} of {} platform levels, {} times",
+        "Platforms   {}; winds at {} of {} platform levels; nominal times: {}",
         setup.network.len(),
         outcome.with_wind,
         outcome.with_wind + without,
         outcome.times
     );
     for (why, n) in &outcome.without {
-        let _ = writeln!(out, "            {n:>6} times a platform {}", why.words());
+        let _ = writeln!(out, "            {n:>6} where the platform {}", why.words());
     }
     let estimates = |p: &PolygonProfile| p.levels.iter().filter(|l| l.estimate.is_some()).count();
+    let with_motion = |p: &&PolygonProfile| p.levels.iter().any(|l| l.motion.is_some());
+    let moving = outcome.profiles.iter().filter(with_motion).count();
     let with_any = outcome.profiles.iter().filter(|p| estimates(p) > 0).count();
     let _ = writeln!(
         out,
-        "Profiles    {} of {} polygons and times have an estimate",
+        "Profiles    {} of {} polygons and times have an estimate, {} a vertical motion",
         with_any,
-        outcome.profiles.len()
+        outcome.profiles.len(),
+        moving
     );
     let mut order: Vec<(f64, &PolygonProfile)> = outcome
         .profiles

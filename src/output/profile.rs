@@ -13,7 +13,8 @@ pub fn w_of(motion: &Motion, pressure: f64) -> Motion {
     let air = air_at_pressure(pressure);
     let w = |omega: f64| w_of_omega(omega, &air);
     Motion {
-        value: w(motion.value),
+        // No motion has no sign.
+        value: w(motion.value) + 0.0,
         se: w(motion.se).abs(),
         se_correlated: w(motion.se_correlated).abs(),
     }
@@ -91,7 +92,9 @@ pub fn profile_csv(setup: &Setup, outcome: &ProfileOutcome) -> String {
         Coordinate::Height => &["w", "w_adjusted"],
     };
     for symbol in symbols {
-        out.push_str(&format!(",{symbol},{symbol}_se,{symbol}_se_correlated"));
+        for part in [",", symbol, ",", symbol, "_se,", symbol, "_se_correlated"] {
+            out.push_str(part);
+        }
     }
     out.push_str(",flag,reason\n");
     for profile in &outcome.profiles {

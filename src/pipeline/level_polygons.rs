@@ -253,6 +253,11 @@ pub(super) fn motion_of(setup: &Setup, ascents: &[Ascent], profile: &mut Polygon
     let Some(first) = levels.iter().position(|l| l.estimate.is_some()) else {
         return;
     };
+    let below = levels[..first].iter();
+    if below.clone().any(|l| !is_underground(setup, ascents, l)) {
+        let words = "no estimate at a level below that is above the ground: no vertical motion";
+        return say(&mut levels[first], words);
+    }
     let run = levels[first..].iter().take_while(|l| l.estimate.is_some());
     let run: Vec<&LevelEstimate> = run.collect();
     let (count, coordinate) = (run.len(), wanted.coordinate);
@@ -325,6 +330,31 @@ pub(super) fn motion_of(setup: &Setup, ascents: &[Ascent], profile: &mut Polygon
             say(level, "above a gap: no vertical motion");
         }
     }
+}
+
+/// By how much the pressure at the ground may differ from the standard atmosphere's, as a share, and the same in height,
+/// m: 50 hPa, the deepest lows (common practice).
+const GROUND: (f64, f64) = (0.05, 400.0);
+
+/// True if the reason for no estimate at a level is that the ground is above it.
+fn is_underground(setup: &Setup, ascents: &[Ascent], level: &LevelEstimate) -> bool {
+    let bottom = match level.level {
+        Level::At(level) | Level::Between(level, _) => level,
+    };
+    let without = level
+        .stations
+        .iter()
+        .filter(|&&s| ascents[s].at(level.level).is_err());
+    let mut without = without.peekable();
+    without.peek().is_some()
+        && without.all(|&s| {
+            let ground = setup.network.stations()[s].elevation;
+            ascents[s].at(level.level) == Err(NoWind::Below)
+                && ground.is_none_or(|z| match setup.settings.profile.coordinate {
+                    Coordinate::Pressure => air_at_height(z).pressure <= bottom * (1.0 + GROUND.0),
+                    Coordinate::Height => z >= bottom - GROUND.1,
+                })
+        })
 }
 
 /// w at a height from the divergence at the ground.
