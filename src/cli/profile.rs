@@ -96,10 +96,10 @@ fn profile_table(out: &mut String, setup: &Setup, profile: &PolygonProfile, on_g
     let motion = if pressure { "omega Pa/s" } else { "w cm/s" };
     let last = if pressure { "w cm/s" } else { "" };
     let line = format!(
-        "  {:<15} {:>13} {:>13} {motion:>15} {:>15}",
+        "  {:<15} {:>12} {:>12} {motion:>14} {:>14}",
         "level", "vorticity", "divergence", "adjusted"
     );
-    let _ = writeln!(out, "{} {last:>7}", line.trim_end());
+    let _ = writeln!(out, "{}", format!("{line} {last:>6}").trim_end());
     for level in &profile.levels {
         let words = match on_ground {
             true => "ground".to_string(),
@@ -126,7 +126,7 @@ fn profile_table(out: &mut String, setup: &Setup, profile: &PolygonProfile, on_g
             format!("{:+.1}", 100.0 * w_of(&m, level.motion_at).value)
         });
         let line = format!(
-            "  {:<15} {:>13} {:>13} {:>15} {:>15} {w:>7}",
+            "  {:<15} {:>12} {:>12} {:>14} {:>14} {w:>6}",
             cut(&words, 15),
             estimate(0),
             estimate(1),
