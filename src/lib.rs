@@ -53,6 +53,7 @@
 //! - [`integral`]: area means with their errors.
 //! - [`kinematics`]: deformation, curvature and shear and the like of each polygon.
 //! - [`event`]: areas, wind shifts and lines, followed in time.
+//! - [`profile`]: winds on levels, vertical motion.
 //! - [`pipeline`]: joins them; [`output`] writes; [`cli`] speaks.
 //!
 //! # Accuracy
@@ -77,6 +78,7 @@ pub mod kinematics;
 pub mod output;
 pub mod pipeline;
 pub mod polygon;
+pub mod profile;
 pub mod report;
 pub mod settings;
 pub mod spatial;

@@ -5,8 +5,10 @@ mod complete;
 mod estimation;
 mod events;
 mod field;
+mod level_polygons;
 mod neighbours;
 mod outliers;
+mod profile;
 mod reading;
 mod remesh;
 mod run;
@@ -24,6 +26,7 @@ use crate::warning::Warning;
 
 pub use calibrate::{CalibrationOutcome, calibrate};
 pub use events::{EventsOutcome, find_events};
+pub use profile::{LevelEstimate, PolygonProfile, ProfileOutcome, profile};
 pub use reading::Reading;
 pub use run::{Outcome, StructureReport, run};
 pub use windows::{Window, Windows};

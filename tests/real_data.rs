@@ -197,6 +197,61 @@ fn soundings() {
     assert_eq!(summary["reports"]["aligned"]["passed"], 61);
 }
 
+/// Profiles of the same soundings. The mean |w| in mid-troposphere is compared with Holton's scale analysis (An introduction to
+/// dynamic meteorology, ch. 2 and 3, from memory): about 1 cm/s for weather of 1,000 km, and D H = 1e-5 /s times 5 km =
+/// 5 cm/s for triangles of 300 km; vorticity and divergence with the free air of `methods.md` 9. There are 12 sites in
+/// 44-57 N, 3-30 E, so the box is wider.
+#[test]
+#[ignore = "needs GYREMESH_DATA; run by .ci/run"]
+fn profiles_of_soundings() {
+    let output = Command::new(env!("CARGO_BIN_EXE_gyremesh"))
+        .arg("profile")
+        .arg(network("soundings"))
+        .arg("--json")
+        .output()
+        .unwrap();
+    assert_eq!(output.status.code(), Some(0));
+    let all: Value = serde_json::from_slice(&output.stdout).unwrap();
+    let mut motions = Vec::new();
+    let mut divergences = Vec::new();
+    let mut sure = 0;
+    for profile in all["profiles"].as_array().unwrap() {
+        let level = &profile["levels"].as_array().unwrap()[3];
+        assert_eq!(level["level"], "500 hPa");
+        let inside = |key: &str, least, most| {
+            level[key]
+                .as_f64()
+                .is_some_and(|x| (least..=most).contains(&x))
+        };
+        if !inside("latitude", 40.0, 60.0) || !inside("longitude", 0.0, 40.0) {
+            continue;
+        }
+        if let Some(w) = level["w_adjusted"]["value"].as_f64() {
+            motions.push(w.abs());
+            sure += i32::from(w.abs() > 1.96 * level["w_adjusted"]["se"].as_f64().unwrap());
+        }
+        divergences.extend(level["divergence"].as_f64().map(f64::abs));
+    }
+    let median = |values: &mut Vec<f64>| {
+        values.sort_by(f64::total_cmp);
+        values[values.len() / 2]
+    };
+    println!(
+        "{} profiles with w, {sure} of them beyond 1.96 standard errors",
+        motions.len()
+    );
+    assert!(motions.len() >= 20, "{}", motions.len());
+    let (w, d) = (median(&mut motions), median(&mut divergences));
+    println!(
+        "500 hPa: median |w| {:.1} cm/s, |D| {:.2}e-5 /s",
+        100.0 * w,
+        1e5 * d
+    );
+    assert!((0.01..=0.1).contains(&w), "{w}");
+    assert!((1e-6..=5e-5).contains(&d), "{d}");
+    assert!(motions.iter().all(|w| *w < 0.5), "{motions:?}");
+}
+
 /// METAR in a column of three tables, one with CR CR LF line ends (4,685, 4,868 and 4,911 reports), and twice 1,000 odd
 /// lines of text.
 #[test]

@@ -48,7 +48,43 @@ pub enum Command {
     /// Tell what happened: areas that converge or spin up, wind-shift lines, and when they reach your places
     #[command(after_help = EVENTS_HELP)]
     Events(EventsArgs),
+    /// Profiles of vorticity, divergence and vertical motion from reports on levels: soundings, profilers, masts, lidars
+    #[command(after_help = PROFILE_HELP)]
+    Profile(ProfileArgs),
 }
+
+const PROFILE_HELP: &str = "\
+Reads:   settings with [profile], station list, report files with a level (and a position, if the instruments drift).
+Prints:  vorticity, divergence and vertical motion of the polygons whose motion is largest against its error, and what \
+is assumed.
+Writes:  with --out: profile.csv, a row for each time, polygon and level: stations, pressure or height (Pa, m), middle, \
+area, vorticity and divergence (1/s), omega (Pa/s, positive downward) and w (m/s, positive upward) with and without \
+adjustment, each with its standard errors, flag, reason.
+
+Each platform's reports within analysis.tolerance of an analysis time (at least as long as an ascent) give its wind and \
+place at every level. Triangles are those of the station list's places, and lie at each level between the places where \
+the platforms were. A triangle without one of its platforms is left out at that level, a ring goes on without it while \
+three are left; the reason says so. Regions make no profiles, and the neighbour test is not made.
+
+Vertical motion: continuity from the lowest level with an estimate up to the first gap; adjusted to the upper boundary \
+where the profile is complete. Standard errors: _se for independent errors of the levels, _se_correlated for fully \
+correlated ones; the truth lies between, as errors of the sensors are independent and what the platforms do not see of \
+the wind between them is alike at neighbouring levels.
+
+Settings:
+  [profile]  levels          such as [\"850 hPa\", \"700 hPa\", \"500 hPa\"] or [\"100 m\", \"500 m\"]: linear in ln p or z
+             layers          in place of levels: means of layers, such as [[\"1000 hPa\", \"850 hPa\"], ...]
+             largest_gap     no wind between reports further apart [200 hPa or 2500 m]
+             lower_boundary  zero, slope (air along the plane of the stations' elevations), or a motion such as \
+0.05 Pa/s or 0.02 m/s [zero]
+             upper_boundary  zero or a motion [zero]
+             adjustment      linear (O'Brien 1970), constant or none [linear]
+             density         over height: standard (anelastic) or constant [standard]
+             height          for reports without levels, such as 500 m: w there from the divergence at the ground
+
+Example: gyremesh profile soundings/network.toml --out out/soundings
+
+These are estimates, not warnings: follow the national weather service, site safety rules and local codes.";
 
 const EVENTS_HELP: &str = "\
 Reads:   settings, station list, report files.
@@ -273,6 +309,37 @@ pub struct CalibrateArgs {
     pub memory: Option<usize>,
 }
 
+/// Options of `profile`.
+#[derive(Debug, ClapArgs)]
+pub struct ProfileArgs {
+    /// Settings file
+    pub network: PathBuf,
+    /// Write profile.csv into this folder
+    #[arg(long, value_name = "DIR")]
+    pub out: Option<PathBuf>,
+    /// Print JSON
+    #[arg(long)]
+    pub json: bool,
+    /// Report files in place of those of the settings, in the format of the first group of the settings
+    #[arg(long, value_name = "FILE", num_args = 1..)]
+    pub reports: Vec<PathBuf>,
+    /// First analysis time, RFC 3339
+    #[arg(long, value_name = "TIME", value_parser = Time::parse_rfc3339)]
+    pub from: Option<Time>,
+    /// Last analysis time, RFC 3339
+    #[arg(long, value_name = "TIME", value_parser = Time::parse_rfc3339)]
+    pub to: Option<Time>,
+    /// Limits in place of those of the settings
+    #[command(flatten)]
+    pub limits: LimitArgs,
+    /// Take all reports as they are, without checks
+    #[arg(long)]
+    pub no_screen: bool,
+    /// Threads; the results do not depend on it [default: all processors]
+    #[arg(long, value_name = "N")]
+    pub threads: Option<usize>,
+}
+
 /// Options of `events`.
 #[derive(Debug, ClapArgs)]
 pub struct EventsArgs {
@@ -489,6 +556,20 @@ impl From<&EventsArgs> for Overrides {
             to: args.to,
             memory: args.memory,
             cache: args.cache.clone(),
+            ..Self::default()
+        }
+    }
+}
+
+impl From<&ProfileArgs> for Overrides {
+    fn from(args: &ProfileArgs) -> Self {
+        Self {
+            reports: args.reports.clone(),
+            from: args.from,
+            to: args.to,
+            smallest_angle: args.limits.smallest_angle,
+            longest_edge: args.limits.longest_edge,
+            no_screen: args.no_screen,
             ..Self::default()
         }
     }

@@ -5,6 +5,7 @@ mod calibration;
 mod events;
 mod expect;
 mod message;
+mod profile;
 mod reading;
 mod screening;
 
@@ -16,14 +17,15 @@ use indicatif::{ProgressBar, ProgressStyle};
 
 use self::args::{
     Args, CalibrateArgs, CheckArgs, Command, EstimateArgs, EventsArgs, Format, PolygonsArgs,
+    ProfileArgs,
 };
 use self::expect::Expectation;
 use crate::error::{Error, ErrorKind, nearest_name};
 use crate::output::{
     FlaggedFiles, Formats, OutputSet, arrivals_csv, calibration_csv, calibration_json,
     corrected_list, corrected_list_section, corrections_of, events_csv, events_geojson,
-    events_json, maintenance_csv, means_csv, mesh_csv, mesh_geojson, reading_json, series,
-    shifts_csv, stations_csv, structure_csv, summary_csv, summary_json,
+    events_json, maintenance_csv, means_csv, mesh_csv, mesh_geojson, profile_csv, profile_json,
+    reading_json, series, shifts_csv, stations_csv, structure_csv, summary_csv, summary_json,
 };
 use crate::pipeline::{self, CalibrationOutcome, Reading, Setup, Sources};
 use crate::report::InputOrder;
@@ -64,6 +66,7 @@ pub fn main() -> Status {
         Command::Estimate(args) => estimate(args),
         Command::Calibrate(args) => calibrate(args),
         Command::Events(args) => events(args),
+        Command::Profile(args) => profile(args),
     };
     match result {
         Ok(status) => status,
@@ -301,6 +304,40 @@ fn calibrate(args: &CalibrateArgs) -> Result<Status, Error> {
     if let Some(file) = &args.apply {
         apply(file, &setup, &outcome)?;
     }
+    Ok(if outcome.reading.is_complete() {
+        Status::Complete
+    } else {
+        Status::SomeInputUnusable
+    })
+}
+
+fn profile(args: &ProfileArgs) -> Result<Status, Error> {
+    use_threads(args.threads);
+    let setup = Setup::read(&args.network, &Overrides::from(args))?;
+    let bar = progress_bar(args.json);
+    let run = |order| pipeline::profile(&setup, order, |rows| bar.set_position(rows));
+    let result = match run(InputOrder::first_try(&setup.settings.reports)) {
+        Err(error) if error.kind() == ErrorKind::Order => run(InputOrder::Any),
+        result => result,
+    };
+    bar.finish_and_clear();
+    let outcome = result?;
+    if let Some(folder) = &args.out {
+        let mut set = OutputSet::new(folder)?;
+        set.put("profile.csv", profile_csv(&setup, &outcome).as_bytes())?;
+        set.commit()?;
+    }
+    for warning in &outcome.warnings {
+        message::say("warning", &warning.to_string());
+    }
+    for failure in &outcome.reading.failures {
+        message::say("warning", &failure.to_string());
+    }
+    print(&if args.json {
+        profile_json(&setup, &outcome)
+    } else {
+        profile::profile_text(&setup, &outcome)
+    })?;
     Ok(if outcome.reading.is_complete() {
         Status::Complete
     } else {

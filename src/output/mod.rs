@@ -12,6 +12,7 @@ mod geojson;
 mod kinematics;
 #[cfg(feature = "parquet")]
 mod parquet;
+mod profile;
 mod reading;
 mod reason;
 mod series;
@@ -34,6 +35,7 @@ pub use events::{
 pub use file::OutputSet;
 pub use flagged::FlaggedFiles;
 pub use geojson::{mesh_geojson, outline_geometry};
+pub use profile::{assumptions, profile_csv, profile_json, w_of};
 pub use reading::reading_json;
 pub use series::{Formats, SeriesEncoder, SeriesFiles, series};
 pub use structure::structure_csv;

@@ -90,7 +90,7 @@ fn height(section: &mut Section) -> Option<HeightReduction> {
 }
 
 /// A level: pressure, Pa, or height, m.
-fn level(text: &str) -> Result<f64, String> {
+pub(super) fn level(text: &str) -> Result<f64, String> {
     let pressure = text.strip_suffix("hPa").map(|n| (n, 100.0));
     if let Some((number, factor)) = pressure.or_else(|| text.strip_suffix("Pa").map(|n| (n, 1.0))) {
         let number: Option<f64> = number.trim().parse().ok().filter(|n: &f64| n.is_finite());

@@ -12,6 +12,7 @@ mod events;
 mod kinematics;
 mod means;
 mod path;
+mod profile;
 mod read;
 mod reports;
 mod section;
@@ -34,6 +35,7 @@ pub use check::{
     RangeLimits, RateLimits, RunLimits, Season, SpikeLimits, StuckLimits,
 };
 pub use events::{EventSettings, NamedPlace, Onset};
+pub use profile::{Boundary, ProfileSettings};
 pub use read::{Overrides, read_settings};
 
 /// Everything a run needs to know, verified.
@@ -63,6 +65,8 @@ pub struct Settings {
     pub events: EventSettings,
     /// Places for which arrival times are wanted.
     pub places: Vec<NamedPlace>,
+    /// Levels and boundaries of profiles.
+    pub profile: ProfileSettings,
     /// Limits of the tests of the reports.
     pub check: CheckLimits,
     /// Which polygons are built.

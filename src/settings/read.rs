@@ -11,6 +11,7 @@ use super::events::{events, places};
 use super::kinematics::kinematics;
 use super::means::means;
 use super::path::expand_path;
+use super::profile::profile;
 use super::reports::{reports, text_format};
 use super::section::{Document, Section};
 use super::{
@@ -101,6 +102,7 @@ fn parse_settings(
         calibration: calibration(root.section("calibration")),
         events: events(root.section("events")),
         places: places(root.sections("places")),
+        profile: profile(root.section("profile")),
         check: check(root.section("check"), sensor.calm_below),
         sensor,
         limits: limits(root.section("limits"), overrides),
