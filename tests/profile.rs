@@ -41,10 +41,10 @@ fn reports(skip: impl Fn(&str, f64) -> bool) -> String {
             let longitude = longitude + drift;
             let u = 0.5e-5 * divergence * longitude * EAST + 5.0;
             let v = 0.5e-5 * divergence * latitude * NORTH - 3.0;
-            let minute = ((1000.0 - pressure) / 20.0) as u32;
+            let minute = (1000.0 - pressure) / 20.0;
             let _ = writeln!(
                 out,
-                "{id},2031-06-14T11:{minute:02}:00Z,{u},{v},{latitude},{longitude},{pressure}"
+                "{id},2031-06-14T11:{minute:02.0}:00Z,{u},{v},{latitude},{longitude},{pressure}"
             );
         }
     }
@@ -237,10 +237,9 @@ fn sloping_ground() {
 #[test]
 fn a_height_for_reports_without_levels() {
     let folder = tempfile::tempdir().unwrap();
-    let ground: String = reports(|_, pressure| pressure < 900.0)
-        .lines()
-        .map(|line| format!("{}\n", line.rsplit_once(',').unwrap().0))
-        .collect();
+    let reports = reports(|_, pressure| pressure < 900.0);
+    let cut = reports.lines().map(|line| line.rsplit_once(',').unwrap().0);
+    let ground = cut.collect::<Vec<_>>().join("\n");
     write(folder.path(), &ground, "[profile]\nheight = \"500 m\"\n");
     let file = folder.path().join("network.toml");
     let settings = fs::read_to_string(&file).unwrap();

@@ -101,9 +101,10 @@ fn profile_table(out: &mut String, setup: &Setup, profile: &PolygonProfile, on_g
     );
     let _ = writeln!(out, "{}", format!("{line} {last:>6}").trim_end());
     for level in &profile.levels {
-        let words = match on_ground {
-            true => "ground".to_string(),
-            false => level.level.words(setup.settings.profile.coordinate),
+        let words = if on_ground {
+            "ground".to_string()
+        } else {
+            level.level.words(setup.settings.profile.coordinate)
         };
         let estimate = |k: usize| {
             let found = level.estimate.map(|e| e[k]);
@@ -115,9 +116,12 @@ fn profile_table(out: &mut String, setup: &Setup, profile: &PolygonProfile, on_g
         let shown = |m: Option<Motion>| {
             m.map_or_else(
                 || "-".into(),
-                |m| match pressure {
-                    true => format!("{:+.3} ± {:.3}", m.value, error_of(&m)),
-                    false => format!("{:+.1} ± {:.1}", 100.0 * m.value, 100.0 * error_of(&m)),
+                |m| {
+                    if pressure {
+                        format!("{:+.3} ± {:.3}", m.value, error_of(&m))
+                    } else {
+                        format!("{:+.1} ± {:.1}", 100.0 * m.value, 100.0 * error_of(&m))
+                    }
                 },
             )
         };

@@ -157,9 +157,10 @@ fn stations(setup: &Setup, found: &LevelEstimate) -> String {
 
 /// Reports without levels are shown over height.
 fn shown_in(setup: &Setup) -> Coordinate {
-    match setup.settings.profile.levels.is_empty() {
-        true => Coordinate::Height,
-        false => setup.settings.profile.coordinate,
+    if setup.settings.profile.levels.is_empty() {
+        Coordinate::Height
+    } else {
+        setup.settings.profile.coordinate
     }
 }
 

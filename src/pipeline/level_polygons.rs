@@ -110,7 +110,6 @@ impl<'a> Shapes<'a> {
     }
 
     /// A ring at a level: without the platforms that have no wind there, as long as three are left.
-    #[expect(clippy::too_many_arguments, reason = "what a level is made of")]
     fn ring(
         setup: &Setup,
         there: &Network,
@@ -261,9 +260,12 @@ pub(super) fn motion_of(setup: &Setup, ascents: &[Ascent], profile: &mut Polygon
     let run = levels[first..].iter().take_while(|l| l.estimate.is_some());
     let run: Vec<&LevelEstimate> = run.collect();
     let (count, coordinate) = (run.len(), wanted.coordinate);
-    let density = |height: f64| match wanted.anelastic {
-        true => air_at_height(height).density,
-        false => 1.0,
+    let density = |height: f64| {
+        if wanted.anelastic {
+            air_at_height(height).density
+        } else {
+            1.0
+        }
     };
     let column = match run.first().map(|l| l.level) {
         Some(Level::Between(bottom, _)) => {

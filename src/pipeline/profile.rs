@@ -221,9 +221,10 @@ impl<'a> State<'a> {
             let field = move |_| FieldState::new(settings, &setup.network, spacing);
             (0..levels.len()).map(field)
         });
-        let (factors, warnings) = match on_ground {
-            true => height_factors(settings, &setup.network),
-            false => (vec![Some(1.0); setup.network.len()], Vec::new()),
+        let (factors, warnings) = if on_ground {
+            height_factors(settings, &setup.network)
+        } else {
+            (vec![Some(1.0); setup.network.len()], Vec::new())
         };
         Self {
             fields: fields.collect(),
@@ -245,9 +246,10 @@ impl<'a> State<'a> {
 
     /// Pa or m; reports without levels count as at height 0.
     fn coordinate(&self) -> Coordinate {
-        match self.setup.settings.profile.levels.is_empty() {
-            true => Coordinate::Height,
-            false => self.setup.settings.profile.coordinate,
+        if self.setup.settings.profile.levels.is_empty() {
+            Coordinate::Height
+        } else {
+            self.setup.settings.profile.coordinate
         }
     }
 

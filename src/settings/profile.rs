@@ -169,9 +169,12 @@ fn of_layers(
     let (coordinate, bounds) = numbers(section, found.value.iter().flatten(), found)?;
     let mut layers: Vec<(f64, f64)> = bounds
         .chunks_exact(2)
-        .map(|pair| match coordinate.is_above(pair[0], pair[1]) {
-            true => (pair[1], pair[0]),
-            false => (pair[0], pair[1]),
+        .map(|pair| {
+            if coordinate.is_above(pair[0], pair[1]) {
+                (pair[1], pair[0])
+            } else {
+                (pair[0], pair[1])
+            }
         })
         .collect();
     layers.sort_by(|a, b| a.0.total_cmp(&b.0));
