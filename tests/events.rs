@@ -203,13 +203,13 @@ fn turbulence_alone_is_no_event() {
     assert_eq!(of_turbulence(500..502), [0, 0, 0]);
 }
 
-/// The stated rate: fewer than one area in ten days, no line.
+/// The stated rate: fewer than one area in ten days, no line. When it was chosen there was none in 50 days.
 #[test]
 #[ignore = "50 days; run by .ci/run"]
 fn turbulence_alone_makes_an_event_less_than_every_ten_days() {
     let [areas, lines, shifts] = of_turbulence(2000..2050);
     println!("50 days: {areas} areas, {lines} lines, {shifts} wind shifts");
-    assert!(areas + lines < 5, "{areas} {lines}");
+    assert!(areas < 5 && lines == 0, "{areas} {lines}");
 }
 
 fn gyremesh(arguments: &[&str]) -> (String, String, i32) {

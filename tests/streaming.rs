@@ -301,3 +301,66 @@ fn a_cache_gives_the_same_until_its_files_change() {
     let (found, said) = site.run(files, &kept);
     assert_eq!((found, said.as_str()), (expected, ""), "in order now");
 }
+
+/// Events too: areas of gusty winds over several windows of time, and a front that sweeps over the network between two.
+#[test]
+fn events_do_not_depend_on_files_threads_or_order() {
+    let site = Site::new();
+    // Steady winds of two sides of a front, in place of random ones, for five hours around the end of the first window.
+    let rows: Vec<(usize, usize, String)> = site
+        .rows
+        .iter()
+        .map(|(t, s, line)| {
+            if !(990..1050).contains(t) {
+                return (*t, *s, line.clone());
+            }
+            let passes = 1020 + s % 3;
+            // Not quite steady, as no sensor that works is.
+            let (more, turn) = (0.1 * ((t + s) % 7) as f64, (3 * t + s) % 11);
+            let wind = if *t < passes {
+                format!("{},{:.1}", 85 + turn, 3.0 + more)
+            } else {
+                format!("{},{:.1}", 265 + turn, 8.0 + more)
+            };
+            let fields: Vec<&str> = line.split(',').collect();
+            (*t, *s, format!("{},{},{wind}\n", fields[0], fields[1]))
+        })
+        .collect();
+    let settings = fs::read_to_string(site.path("network.toml")).unwrap();
+    let settings = settings
+        + "[events]\nleast_stations = 5\nlasting = \"5 min\"\n[errors]\nparts = \"instrument\"\n";
+    fs::write(site.path("network.toml"), settings).unwrap();
+    let run = |files: &[PathBuf], options: &[&str]| {
+        let out = site.path("events");
+        let output = Command::new(env!("CARGO_BIN_EXE_gyremesh"))
+            .arg("events")
+            .arg(site.path("network.toml"))
+            .arg("--out")
+            .arg(&out)
+            .args(options)
+            .arg("--reports")
+            .args(files)
+            .output()
+            .unwrap();
+        assert!(output.status.success(), "{output:?}");
+        let names = ["events.csv", "shifts.csv", "arrivals.csv", "events.geojson"];
+        names.map(|name| fs::read_to_string(out.join(name)).unwrap())
+    };
+    let whole = site.write("all.csv", rows.iter().map(|row| &row.2));
+    let expected = run(std::slice::from_ref(&whole), &["--threads", "1"]);
+    assert!(expected[0].lines().count() > 100, "{}", expected[0]);
+    assert!(expected[1].lines().count() > 5, "{}", expected[1]);
+    assert!(run(&[whole], &["--threads", "2"]) == expected, "threads");
+    let stations: Vec<PathBuf> = (0..STATIONS)
+        .map(|s| {
+            let of_station = rows.iter().filter(|row| row.1 == s);
+            site.write(&format!("one{s}.csv"), of_station.map(|row| &row.2))
+        })
+        .collect();
+    assert!(run(&stations, &[]) == expected, "a file for each station");
+    let mut sorted = rows.clone();
+    sorted.sort_by_key(|row| row.1);
+    let by_station = site.write("by_station.csv", sorted.iter().map(|row| &row.2));
+    let found = run(&[by_station], &["--memory", "1MiB"]);
+    assert!(found == expected, "station after station");
+}
