@@ -62,7 +62,7 @@ pub enum Warning {
     },
     /// Stations of some polygons stand on slopes.
     SteepGround {
-        /// Polygons where vertical shear passes for [`STEEP`] or more.
+        /// Polygons where vertical shear passes for 1e-4 1/s or more.
         polygons: usize,
         /// The largest slope times the shear to expect, 1/s.
         worst: f64,

@@ -40,7 +40,7 @@ struct Observed {
 /// Runs the main job and follows what happens; `progress` hears how many rows have been read.
 ///
 /// # Errors
-/// As [`super::run`]; a network without two places.
+/// As [`super::run()`]; a network without two places.
 pub fn find_events(
     setup: &Setup,
     order: InputOrder,
