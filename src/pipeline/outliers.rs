@@ -99,9 +99,10 @@ impl OutlierBooks {
         for (reading, counts) in readings.iter_mut().zip(&self.stations) {
             reading.by_test[Test::Neighbour as usize] = (counts.suspect, counts.failed);
             let [now_suspect, now_failed] = counts.passed_before;
-            reading.passed -= now_suspect + now_failed;
+            // Each was counted as passed, or as suspect, when it was read; no count can fall below 0.
+            reading.passed = reading.passed.saturating_sub(now_suspect + now_failed);
             reading.suspect += now_suspect;
-            reading.suspect -= counts.suspect_before;
+            reading.suspect = reading.suspect.saturating_sub(counts.suspect_before);
             reading.failed += now_failed + counts.suspect_before;
         }
     }
