@@ -28,7 +28,7 @@ pub use calibrate::{CalibrationOutcome, calibrate};
 pub use events::{EventsOutcome, find_events};
 pub use profile::{LevelEstimate, PolygonProfile, ProfileOutcome, profile};
 pub use reading::Reading;
-pub use run::{Outcome, StructureReport, run};
+pub use run::{BlockView, Outcome, StructureReport, run};
 pub use windows::{Window, Windows};
 
 /// Settings and stations: all that reading the reports needs.

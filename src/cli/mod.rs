@@ -220,7 +220,7 @@ fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
         let outcome = pipeline::run(
             &setup,
             order,
-            |block, kinematics| encoder.encode(block, kinematics),
+            |seen| encoder.encode(seen),
             |encoded| series_files.write(&mut set, encoded),
             |rows| bar.set_position(rows),
         )?;

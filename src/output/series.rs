@@ -11,9 +11,7 @@ use super::kinematics::{KinematicsParquet, kinematics_parquet};
 #[cfg(feature = "parquet")]
 use super::parquet::{ParquetFile, ParquetRows, RowGroup, parquet_series};
 use crate::error::Error;
-use crate::integral::EstimateBlock;
-use crate::kinematics::KinematicsBlock;
-use crate::pipeline::Setup;
+use crate::pipeline::{BlockView, Setup};
 
 /// Formats of the series, and of the flagged reports.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -145,11 +143,8 @@ fn parquet_error(error: &parquet::errors::ParquetError) -> Error {
 impl SeriesEncoder {
     /// Encodes a block in all formats.
     #[must_use]
-    pub fn encode(
-        &self,
-        block: &EstimateBlock,
-        kinematics: Option<&KinematicsBlock>,
-    ) -> EncodedBlock {
+    pub fn encode(&self, seen: &BlockView) -> EncodedBlock {
+        let (block, kinematics) = (seen.estimates, seen.kinematics);
         EncodedBlock {
             csv: self.csv.as_ref().map(|rows| rows.encode(block)),
             fits: self.fits.as_ref().map(|rows| rows.encode(block)),

@@ -6,7 +6,7 @@ use super::complete::{Common, ErrorModel, Holes};
 use super::field::FieldState;
 use super::outliers::OutlierBooks;
 use super::remesh::Remesh;
-use super::run::Seen;
+use super::run::BlockView;
 use super::{Setup, Window};
 use crate::align::{AlignBooks, Aligner, StationSensors, WindBlock, block_times, height_factor};
 use crate::integral::{
@@ -81,7 +81,7 @@ impl<'a> Estimation<'a> {
     pub(super) fn window<T: Send>(
         &mut self,
         window: &Window,
-        encode: &(impl Fn(&Seen) -> T + Sync),
+        encode: &(impl Fn(&BlockView) -> T + Sync),
     ) -> Vec<T> {
         let setup = self.setup;
         let table = &window.table;
@@ -134,7 +134,7 @@ impl<'a> Estimation<'a> {
                     let sampling = common.errors.map(|e| (&e.sampling, models.as_slice()));
                     k.of(winds, &block, sampling)
                 });
-                let seen = Seen {
+                let seen = BlockView {
                     estimates: &block,
                     kinematics: kinematics.as_ref(),
                     winds,

@@ -1,7 +1,7 @@
 //! From the reports to events.
 
 use super::Setup;
-use super::run::{Outcome, Seen, run_with};
+use super::run::{BlockView, Outcome, run};
 use crate::align::WindBlock;
 use crate::error::Error;
 use crate::event::{
@@ -67,7 +67,7 @@ pub fn find_events(
     let mut lines = LineFinder::new(network, &plane, spacing, &settings.events, places);
     let prior = settings.errors.structure.prior(spacing).temporal;
 
-    let encode = |seen: &Seen| Observed {
+    let encode = |seen: &BlockView| Observed {
         winds: seen.winds.clone(),
         temporal: seen.models.iter().map(|model| model.temporal).collect(),
         snapshots: finder.snapshots(seen.estimates),
@@ -83,7 +83,7 @@ pub fn find_events(
         }
         Ok(())
     };
-    let run = run_with(setup, order, encode, write, progress)?;
+    let run = run(setup, order, encode, write, progress)?;
     let (lines, passages) = lines.finish();
     let areas = tracker.finish();
     let doubts = areas.iter().map(|area| doubt(setup, &run, area));

@@ -83,9 +83,21 @@ pub struct StructureReport {
     pub rows: Vec<StructureRow>,
 }
 
-/// Runs the main job on reports in the order of time, or in any order. `encode` turns a block of estimates, with its
-/// kinematics if the settings ask for them, into what `write` takes; blocks are encoded in parallel and written in the order of time, so the output depends neither on the
-/// number of threads nor on how the reports were read. `progress` hears how many rows have been read.
+/// A block as it is estimated: what writers and finders of events see.
+pub struct BlockView<'a> {
+    /// The estimates of all polygons at the times of the block.
+    pub estimates: &'a EstimateBlock,
+    /// Where they are asked for.
+    pub kinematics: Option<&'a KinematicsBlock>,
+    /// The winds of all stations at these times.
+    pub winds: &'a WindBlock,
+    /// The structure function at each time; none if none was asked for.
+    pub models: &'a [StructureFunction],
+}
+
+/// Runs the main job on reports in the order of time, or in any order. `encode` turns a block into what `write` takes;
+/// blocks are encoded in parallel and written in the order of time, so the output depends neither on the number of
+/// threads nor on how the reports were read. `progress` hears how many rows have been read.
 ///
 /// While one window of time is estimated, the next one is read and the results of the one before are written.
 ///
@@ -96,29 +108,7 @@ pub struct StructureReport {
 pub fn run<T: Send>(
     setup: &Setup,
     order: InputOrder,
-    encode: impl Fn(&EstimateBlock, Option<&KinematicsBlock>) -> T + Sync,
-    write: impl FnMut(T) -> Result<(), Error> + Send,
-    progress: impl FnMut(u64),
-) -> Result<Outcome, Error> {
-    let encode = |seen: &Seen| encode(seen.estimates, seen.kinematics);
-    run_with(setup, order, encode, write, progress)
-}
-
-/// A block as it is estimated.
-pub(super) struct Seen<'a> {
-    pub(super) estimates: &'a EstimateBlock,
-    /// Where they are asked for.
-    pub(super) kinematics: Option<&'a KinematicsBlock>,
-    pub(super) winds: &'a WindBlock,
-    /// The structure function at each time; none if none was asked for.
-    pub(super) models: &'a [StructureFunction],
-}
-
-/// [`run`] with an `encode` that sees the winds too.
-pub(super) fn run_with<T: Send>(
-    setup: &Setup,
-    order: InputOrder,
-    encode: impl Fn(&Seen) -> T + Sync,
+    encode: impl Fn(&BlockView) -> T + Sync,
     mut write: impl FnMut(T) -> Result<(), Error> + Send,
     mut progress: impl FnMut(u64),
 ) -> Result<Outcome, Error> {
