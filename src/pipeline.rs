@@ -25,7 +25,7 @@ use crate::structure::typical_spacing;
 use crate::warning::Warning;
 
 pub use calibrate::{CalibrationOutcome, calibrate};
-pub use events::{EventsOutcome, find_events};
+pub use events::{EventsOutcome, find_events, find_events_and};
 pub use profile::{LevelEstimate, PolygonProfile, ProfileOutcome, profile};
 pub use reading::Reading;
 pub use run::{BlockView, Outcome, StructureReport, run};

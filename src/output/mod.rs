@@ -17,6 +17,7 @@ pub mod plot;
 mod profile;
 mod reading;
 mod reason;
+mod report;
 mod series;
 #[cfg(feature = "parquet")]
 mod standing;
@@ -40,6 +41,7 @@ pub use frames::{Cell, Frame, Frames};
 pub use geojson::{mesh_geojson, outline_geometry};
 pub use profile::{assumptions, profile_csv, profile_json, w_of};
 pub use reading::reading_json;
+pub use report::report_html;
 pub use series::{Formats, SeriesEncoder, SeriesFiles, series};
 pub use structure::structure_csv;
 pub(crate) use summary::significant_share;

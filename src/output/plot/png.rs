@@ -55,7 +55,7 @@ mod tests {
     #[test]
     fn text_appears() {
         let svg = "<svg xmlns=\"http://www.w3.org/2000/svg\" width=\"200\" height=\"40\" font-family=\"Noto Sans\">\
-                   <rect width=\"200\" height=\"40\" fill=\"#ffffff\"/><text x=\"5\" y=\"30\" font-size=\"24\">10⁻⁵ s⁻¹ ±ζδ−</text></svg>";
+                   <rect width=\"200\" height=\"40\" fill=\"#ffffff\"/><text x=\"5\" y=\"30\" font-size=\"24\">10⁻⁵ s⁻¹ ±ζδ–</text></svg>";
         let bytes = png(svg).unwrap();
         let picture = Pixmap::decode_png(&bytes).unwrap();
         assert_eq!((picture.width(), picture.height()), (400, 80));

@@ -55,7 +55,7 @@ pub fn series_picture(setup: &Setup, frames: &Frames, polygon: usize) -> Option<
             .collect();
         let bounds = points.iter().flatten().flat_map(|p| [p.1 - p.2, p.1 + p.2]);
         let range = roomy(bounds.chain([0.0]));
-        let place = [LEFT, top, WIDTH - LEFT - 24.0, HEIGHT];
+        let place = [LEFT, top, WIDTH - LEFT - 34.0, HEIGHT];
         let chart = Chart::linear(place, [0.0, seconds(last.micros()).max(1.0)], range);
         chart.y_axis(&mut svg, &format!("{}, 10⁻⁵ s⁻¹", quantity.name()));
         if q == 1 {
