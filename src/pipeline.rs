@@ -79,6 +79,20 @@ pub struct Setup {
 }
 
 impl Setup {
+    /// Whether there is anything to estimate.
+    ///
+    /// # Errors
+    /// No polygon is within the limits.
+    pub fn has_polygons(&self) -> Result<(), Error> {
+        if self.built.polygons.is_empty() {
+            return Err(Error::Network(format!(
+                "none of {} polygons is within the limits; `gyremesh polygons` lists the reasons",
+                self.built.excluded.len()
+            )));
+        }
+        Ok(())
+    }
+
     /// Reads settings and stations, and builds the polygons.
     ///
     /// # Errors

@@ -1,11 +1,10 @@
 //! `gyremesh estimate`.
 
 use std::path::{Path, PathBuf};
-use std::time::Duration;
 
 use clap::{Args, ValueEnum};
 
-use super::args::{Format, InputArgs};
+use super::args::{AnalysisArgs, Format, InputArgs};
 use super::run::{over_reports, tell};
 use super::text::estimate::run_summary;
 use super::{Status, print};
@@ -16,7 +15,6 @@ use crate::output::{
 };
 use crate::pipeline::{self, Outcome, Setup};
 use crate::settings::{MeansBy, MeansSettings, Overrides};
-use crate::units;
 
 /// Options of `estimate`.
 #[derive(Debug, Args)]
@@ -24,15 +22,8 @@ pub(super) struct EstimateArgs {
     /// Folder of the results [default: out/NAME, NAME being the folder of the settings file]
     #[arg(long, value_name = "DIR")]
     out: Option<PathBuf>,
-    /// Time between estimates, such as 5min or 1h
-    #[arg(long, value_name = "DURATION", value_parser = units::parse_duration)]
-    interval: Option<Duration>,
-    /// How far a report may be from the analysis time
-    #[arg(long, value_name = "DURATION", value_parser = units::parse_duration)]
-    tolerance: Option<Duration>,
-    /// Take the vector mean of the reports in the window of this length that ends at the analysis time
-    #[arg(long, value_name = "DURATION", value_parser = units::parse_duration)]
-    window: Option<Duration>,
+    #[command(flatten)]
+    analysis: AnalysisArgs,
     /// Formats of the series, several separated by commas
     #[arg(
         long,
@@ -79,13 +70,10 @@ enum Parts {
 impl EstimateArgs {
     fn overrides(&self) -> Overrides {
         Overrides {
-            interval: self.interval,
-            tolerance: self.tolerance,
-            window: self.window,
             instrument_errors: self.errors == Parts::Instrument,
             kinematics: self.kinematics,
             by: self.by,
-            ..self.input.overrides()
+            ..self.analysis.over(self.input.overrides())
         }
     }
 }
@@ -94,12 +82,7 @@ pub(super) fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
     let mut setup = args.input.setup_with(&args.overrides())?;
     // Without a series there is no file for them.
     setup.settings.kinematics.write &= !args.summary_only;
-    if setup.built.polygons.is_empty() {
-        return Err(Error::Network(format!(
-            "none of {} polygons is within the limits; `gyremesh polygons` lists the reasons",
-            setup.built.excluded.len()
-        )));
-    }
+    setup.has_polygons()?;
     let folder = args
         .out
         .clone()
@@ -148,7 +131,7 @@ fn put_tables(set: &mut OutputSet, setup: &Setup, outcome: &Outcome) -> Result<(
 }
 
 /// `out/NAME`, NAME being the folder of the settings file.
-fn default_folder(network: &Path) -> PathBuf {
+pub(super) fn default_folder(network: &Path) -> PathBuf {
     let name = network
         .canonicalize()
         .ok()

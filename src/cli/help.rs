@@ -188,3 +188,15 @@ Settings:
 Example: gyremesh profile soundings/network.toml --out out/soundings
 
 These are estimates, not warnings: follow the national weather service, site safety rules and local codes.";
+
+pub(super) const REPORT: &str = "\
+Reads:   settings, station list, report files, twice: for the estimates and for the calibration.
+Prints:  where the page is.
+Writes:  report.html: a map of the polygons coloured by vorticity or divergence with the winds as barbs (WMO), which \
+moves in time; the series of each polygon with 95 % intervals; strongest values; events and arrivals; stations with \
+their flags and calibration; polygons left out, and why; settings. One file that loads nothing from elsewhere. Of more \
+than some days it shows every second, fourth, ... analysis time, and says so.
+
+Example: gyremesh report networks/ostrin/network.toml --out out/ostrin
+
+These are estimates, not warnings: follow the national weather service, site safety rules and local codes.";

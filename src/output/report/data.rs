@@ -8,7 +8,7 @@ use crate::output::plot::barb::MOST;
 use crate::output::plot::colour::{DARK_STOPS, STOPS, Scale};
 use crate::output::reason::Reasons;
 use crate::pipeline::Setup;
-use crate::units::{SpeedUnit, Wind};
+use crate::units::{FromDirection, SpeedUnit, Wind};
 
 /// Whole numbers are so many to 1 1/s.
 const PER_SECOND: f64 = 1e7;
@@ -93,7 +93,7 @@ fn wind_number(wind: Option<Wind>) -> i64 {
     let Some(wind) = wind else {
         return -1;
     };
-    let direction = wind.from_direction().map_or(0.0, |d| d.degrees());
+    let direction = wind.from_direction().map_or(0.0, FromDirection::degrees);
     whole(direction) + TURN * whole(wind.speed() * PER_SPEED)
 }
 

@@ -104,7 +104,7 @@ pub fn report_html(
         "data": data.replace("</", "<\\/"),
         "period": period.map(|(first, last)| [first, last].map(plot::plain_time)),
         "times": outcome.period.times,
-        "interval": setup.settings.analysis.interval.as_secs_f64() / 60.0,
+        "interval": format!("{} min", setup.settings.analysis.interval.as_secs_f64() / 60.0),
         "every": frames.every,
         "map": {
             "width": base.inside[2],
@@ -127,7 +127,7 @@ pub fn report_html(
         },
         "reporting": outcome.values.iter().filter(|&&n| n > 0).count(),
         "significant": [share(&outcome.statistics.vorticity), share(&outcome.statistics.divergence)],
-        "false_rate": 100.0 * setup.settings.errors.false_discovery_rate,
+        "false_rate": format!("{}", 100.0 * setup.settings.errors.false_discovery_rate),
         "strongest": tables::strongest(setup, outcome),
         "lines": tables::lines(events),
         "arrivals": tables::arrivals(setup, events),
@@ -141,7 +141,7 @@ pub fn report_html(
         "settings": format!("{:#}", summary["settings"]),
         "corrections": summary["corrections"],
         "version": env!("CARGO_PKG_VERSION"),
-        "caution": CAUTION,
+        "caution": CAUTION.split_once(". ").map(|(first, rest)| [format!("{first}."), rest.into()]),
     });
     page(context).map_err(|e| {
         let place = std::path::Path::new("report.html");

@@ -95,7 +95,7 @@
   }
 
   // A chart of one quantity: 560 × 210, drawn as SVG.
-  const box = { left: 52, right: 548, top: 22, bottom: 180 };
+  const box = { left: 52, right: 532, top: 22, bottom: 180 };
   const round = (step) => {
     const ten = 10 ** Math.floor(Math.log10(step));
     return [1, 2, 5, 10].map((m) => m * ten).find((m) => m >= step * 0.999999);

@@ -31,7 +31,11 @@ pub(super) fn strongest(setup: &Setup, outcome: &Outcome) -> Vec<Strongest> {
         let polygon = outcome.polygon(setup, peak.polygon)?;
         Some(Strongest {
             what,
-            value: format!("{:+.1} ± {:.1}", 1e5 * peak.value, 1e5 * peak.error),
+            value: minus(&format!(
+                "{:+.1} ± {:.1}",
+                1e5 * peak.value,
+                1e5 * peak.error
+            )),
             time: plain_time(peak.time),
             micros: peak.time.micros(),
             polygon: polygon.id.clone(),
@@ -126,7 +130,7 @@ pub(super) fn stations(
 fn gains(found: Option<&StationCalibration>) -> [String; 2] {
     match found.and_then(|f| f.gain.as_ref()) {
         Some(gain) => [
-            format!("{:+.1} ± {:.1}", gain.turn, gain.turn_se),
+            minus(&format!("{:+.1} ± {:.1}", gain.turn, gain.turn_se)),
             format!("{:.2} ± {:.2}", gain.factor, gain.factor_se),
         ],
         None => [String::new(), String::new()],
@@ -138,6 +142,11 @@ fn ticket(setup: &Setup, ticket: &Ticket) -> String {
         .since
         .map(|(at, _)| format!(" since {}", plain_time(at)));
     format!("{}{}", what(setup, ticket), since.unwrap_or_default())
+}
+
+/// With a true minus sign.
+fn minus(number: &str) -> String {
+    number.replace('-', "−")
 }
 
 fn percent(share: f64) -> String {
@@ -181,6 +190,7 @@ pub(super) struct AreaRow {
     to: String,
     micros: i64,
     peak: String,
+    at: String,
     polygon: String,
     number: usize,
     area: String,
@@ -253,12 +263,12 @@ pub(super) fn areas(setup: &Setup, outcome: &EventsOutcome, most: usize) -> Vec<
             from: plain_time(area.start),
             to: until(area.end, area.open),
             micros: area.peak.time.micros(),
-            peak: format!(
-                "{:+.0} ± {:.0} at {}",
+            peak: minus(&format!(
+                "{:+.0} ± {:.0}",
                 1e5 * area.peak.value,
-                1e5 * area.peak.error,
-                plain_time(area.peak.time)
-            ),
+                1e5 * area.peak.error
+            )),
+            at: plain_time(area.peak.time),
             polygon: polygon.map_or_else(String::new, |p| p.id.clone()),
             number: area.peak.polygon,
             area: format!("{:.0}", area.area / 1e6),
