@@ -216,7 +216,7 @@ mod tests {
             (46.2, -30.2, 1.0),
             (40.5, -74.3, 0.6),
             (-10.0, -70.0, 20.0),
-            (-18.5, 177.0, 2.0),
+            (-22.5, 165.0, 2.0),
         ] {
             let places = [place(south, west), place(south + size, west + size)];
             let frame = Frame::around(&places, [0.0, 0.0, 600.0, 500.0], 300.0, 40.0);
