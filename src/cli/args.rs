@@ -457,6 +457,9 @@ pub struct EstimateArgs {
         default_value = "csv"
     )]
     pub format: Vec<Format>,
+    /// Times of polygons.geojson, RFC 3339 [default: the last]
+    #[arg(long, value_name = "TIME", value_parser = Time::parse_rfc3339)]
+    pub at: Vec<Time>,
     /// Write no series, only the summary of each polygon
     #[arg(long)]
     pub summary_only: bool,
@@ -510,6 +513,12 @@ pub enum Format {
     Csv,
     /// The same columns, typed, null for missing
     Parquet,
+    /// The columns of Parquet as an Arrow IPC file
+    Arrow,
+    /// NetCDF-4 (CF, UGRID): polygons as faces, stations as nodes, all values and winds
+    Netcdf,
+    /// The polygons with their values at the last time, or at those of --at
+    Geojson,
 }
 
 /// Limits of the polygons.

@@ -22,10 +22,11 @@ use self::args::{
 use self::expect::Expectation;
 use crate::error::{Error, ErrorKind, nearest_name};
 use crate::output::{
-    FlaggedFiles, Formats, OutputSet, arrivals_csv, calibration_csv, calibration_json,
-    corrected_list, corrected_list_section, corrections_of, events_csv, events_geojson,
-    events_json, maintenance_csv, means_csv, mesh_csv, mesh_geojson, profile_csv, profile_json,
-    reading_json, series, shifts_csv, stations_csv, structure_csv, summary_csv, summary_json,
+    FlaggedFiles, FlaggedFormats, OutputSet, SeriesChoice, SeriesFormat, arrivals_csv,
+    calibration_csv, calibration_json, corrected_list, corrected_list_section, corrections_of,
+    events_csv, events_geojson, events_json, maintenance_csv, means_csv, mesh_csv, mesh_geojson,
+    profile_csv, profile_json, reading_json, series, shifts_csv, stations_csv, structure_csv,
+    summary_csv, summary_json,
 };
 use crate::pipeline::{self, CalibrationOutcome, Reading, Setup, Sources};
 use crate::report::InputOrder;
@@ -94,7 +95,7 @@ fn check(args: &CheckArgs) -> Result<Status, Error> {
         (Some(id), Some(at)) => Some((station(network, id)?, at)),
         _ => None,
     };
-    let formats = Formats {
+    let formats = FlaggedFormats {
         csv: args.format.contains(&Format::Csv),
         parquet: args.format.contains(&Format::Parquet),
     };
@@ -209,14 +210,18 @@ fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
         .out
         .clone()
         .unwrap_or_else(|| default_folder(&args.network));
-    let formats = Formats {
-        csv: !args.summary_only && args.format.contains(&Format::Csv),
-        parquet: !args.summary_only && args.format.contains(&Format::Parquet),
+    let choice = SeriesChoice {
+        formats: if args.summary_only {
+            Vec::new()
+        } else {
+            args.format.iter().map(|&f| f.into()).collect()
+        },
+        at: args.at.clone(),
     };
     let bar = progress_bar(args.quiet);
     let run = |order: InputOrder| {
         let mut set = OutputSet::new(&folder)?;
-        let (encoder, mut series_files) = series(&setup, formats, &mut set)?;
+        let (encoder, mut series_files) = series(&setup, &choice, &mut set)?;
         let outcome = pipeline::run(
             &setup,
             order,
@@ -236,7 +241,10 @@ fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
     bar.finish_and_clear();
     let (outcome, mut set, series_files) = result?;
 
-    series_files.finish(&mut set)?;
+    for time in series_files.finish(&setup, &mut set)? {
+        let message = format!("polygons.geojson: {time} is no analysis time with reports");
+        message::say("warning", &message);
+    }
     set.put(
         "mesh.geojson",
         mesh_geojson(&setup, &outcome.extra).as_bytes(),
@@ -269,6 +277,18 @@ fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
     } else {
         Status::SomeInputUnusable
     })
+}
+
+impl From<Format> for SeriesFormat {
+    fn from(format: Format) -> Self {
+        match format {
+            Format::Csv => Self::Csv,
+            Format::Parquet => Self::Parquet,
+            Format::Arrow => Self::Arrow,
+            Format::Netcdf => Self::Netcdf,
+            Format::Geojson => Self::Geojson,
+        }
+    }
 }
 
 fn calibrate(args: &CalibrateArgs) -> Result<Status, Error> {

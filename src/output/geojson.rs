@@ -81,7 +81,7 @@ pub fn mesh_geojson(setup: &Setup, extra: &[ExtraPolygon]) -> String {
     text
 }
 
-fn geojson_geometry(polygons: &MultiPolygon<f64>) -> Geometry {
+pub(super) fn geojson_geometry(polygons: &MultiPolygon<f64>) -> Geometry {
     match polygons.0.as_slice() {
         [one] => Geometry::new(GeometryValue::from(one)),
         _ => Geometry::new(GeometryValue::from(polygons)),
