@@ -199,3 +199,77 @@ fn geojson_across_the_antimeridian() {
         }
     }
 }
+
+/// The polygons of `mesh.geojson`, coordinate for coordinate, in the form of GeoParquet 1.1.
+#[cfg(feature = "parquet")]
+#[test]
+fn the_mesh_as_geoparquet_holds_what_the_geojson_holds() {
+    use arrow_array::cast::AsArray;
+    use arrow_array::types::Float64Type;
+    use parquet::arrow::arrow_reader::ParquetRecordBatchReaderBuilder;
+
+    let out = tempfile::tempdir().unwrap();
+    let network = common::remeshed_demo(out.path());
+    let more = ["--format", "parquet", "--errors", "instrument"];
+    estimate(&network, out.path(), &[&PERIOD[..], &more].concat());
+    let file = fs::File::open(out.path().join("mesh.parquet")).unwrap();
+    let builder = ParquetRecordBatchReaderBuilder::try_new(file).unwrap();
+    let metadata = builder.metadata().file_metadata().key_value_metadata();
+    let geo = metadata.unwrap().iter().find(|pair| pair.key == "geo");
+    let geo: serde_json::Value =
+        serde_json::from_str(geo.unwrap().value.as_deref().unwrap()).unwrap();
+    assert_eq!(geo["version"], "1.1.0");
+    assert_eq!(geo["primary_column"], "geometry");
+    assert_eq!(geo["columns"]["geometry"]["encoding"], "WKB");
+    let kinds = &geo["columns"]["geometry"]["geometry_types"];
+    assert_eq!(*kinds, serde_json::json!(["Polygon"]));
+    let batches: Vec<_> = builder.build().unwrap().map(Result::unwrap).collect();
+    let [batch] = batches.as_slice() else {
+        panic!("one batch expected");
+    };
+    let features = features(&out.path().join("mesh.geojson"));
+    assert_eq!(batch.num_rows(), features.len());
+    let words = |name: &str| batch.column_by_name(name).unwrap().as_string::<i32>();
+    let areas = batch.column_by_name("area_km2").unwrap();
+    let shapes = batch.column_by_name("geometry").unwrap().as_binary::<i32>();
+    let (mut excluded, mut filling) = (0, 0);
+    for (k, feature) in features.into_iter().enumerate() {
+        let property = |name: &str| feature.property(name).unwrap().clone();
+        assert_eq!(property("polygon"), words("polygon").value(k));
+        let area = areas.as_primitive::<Float64Type>().value(k);
+        assert!((property("area_km2").as_f64().unwrap() / area - 1.0).abs() < 1e-15);
+        let reason = words("excluded");
+        let reason = (!arrow_array::Array::is_null(reason, k)).then(|| reason.value(k));
+        assert_eq!(property("excluded").as_str(), reason);
+        excluded += usize::from(reason.is_some());
+        let fills = batch.column_by_name("fills_hole").unwrap().as_boolean();
+        assert_eq!(property("fills_hole"), fills.value(k));
+        filling += usize::from(fills.value(k));
+        // One polygon without holes: byte order, kind, one ring, its points (OGC 06-103r4, 8.2).
+        let bytes = shapes.value(k);
+        assert_eq!(bytes[..9], [1, 3, 0, 0, 0, 1, 0, 0, 0]);
+        let numbers = bytes[13..].chunks(8);
+        let numbers: Vec<f64> = numbers
+            .map(|b| f64::from_le_bytes(b.try_into().unwrap()))
+            .collect();
+        let outline: geo::Polygon<f64> = feature.geometry.unwrap().try_into().unwrap();
+        let points: Vec<f64> = outline
+            .exterior()
+            .coords()
+            .flat_map(|c| [c.x, c.y])
+            .collect();
+        assert_eq!(
+            bytes[9..13],
+            u32::try_from(points.len() / 2).unwrap().to_le_bytes()
+        );
+        assert_eq!(numbers.len(), points.len());
+        // Seven decimals in both.
+        assert!(
+            numbers
+                .iter()
+                .zip(&points)
+                .all(|(a, b)| (a - b).abs() < 1e-12)
+        );
+    }
+    assert!(excluded > 0 && filling > 0, "{excluded} {filling}");
+}

@@ -241,7 +241,7 @@ fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
     bar.finish_and_clear();
     let (outcome, mut set, series_files) = result?;
 
-    for time in series_files.finish(&setup, &mut set)? {
+    for time in series_files.finish(&setup, &outcome.extra, &mut set)? {
         let message = format!("polygons.geojson: {time} is no analysis time with reports");
         message::say("warning", &message);
     }

@@ -14,6 +14,8 @@ mod flagged;
 #[cfg(feature = "parquet")]
 mod flagged_parquet;
 mod geojson;
+#[cfg(feature = "parquet")]
+mod geoparquet;
 mod kinematics;
 mod netcdf;
 #[cfg(feature = "parquet")]

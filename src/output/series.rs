@@ -21,6 +21,7 @@ use super::netcdf::{FaceBlock, FaceFile, FaceRows};
 #[cfg(feature = "parquet")]
 use super::parquet::{ParquetFile, ParquetRows, RowGroup, parquet_series};
 use crate::error::Error;
+use crate::integral::ExtraPolygon;
 use crate::pipeline::{BlockView, Setup};
 use crate::time::Time;
 
@@ -298,17 +299,29 @@ impl SeriesFiles {
         Ok(())
     }
 
-    /// Completes the files; returns the times asked for that are no analysis times.
+    /// Completes the files, and writes `mesh.parquet` beside Parquet; returns the times asked for that are no analysis times.
+    /// `extra` are the polygons of the run that stand only where stations are missing.
     ///
     /// # Errors
     /// The system's refusal.
-    pub fn finish(self, setup: &Setup, set: &mut OutputSet) -> Result<Vec<Time>, Error> {
+    pub fn finish(
+        self,
+        setup: &Setup,
+        extra: &[ExtraPolygon],
+        set: &mut OutputSet,
+    ) -> Result<Vec<Time>, Error> {
         let mut unmet = Vec::new();
+        #[cfg(feature = "parquet")]
+        if self.0.iter().any(|file| file.name == "polygons.parquet") {
+            let name = "mesh.parquet";
+            let mesh = super::geoparquet::mesh_parquet(setup, extra);
+            set.put(name, &mesh.map_err(|e| refused(name, &e))?)?;
+        }
         for file in self.0 {
             if let Writer::Geojson(collection) = &file.writer {
                 unmet.extend(collection.wanted.iter().flatten());
             }
-            let bytes = file.writer.finish(file.name, setup)?;
+            let bytes = file.writer.finish(file.name, setup, extra)?;
             set.write(file.number, &bytes)?;
         }
         Ok(unmet)
@@ -339,14 +352,14 @@ impl Writer {
     }
 
     /// The last bytes.
-    fn finish(self, name: &str, setup: &Setup) -> Result<Vec<u8>, Error> {
+    fn finish(self, name: &str, setup: &Setup, extra: &[ExtraPolygon]) -> Result<Vec<u8>, Error> {
         match self {
             Self::Text => Ok(Vec::new()),
             #[cfg(feature = "parquet")]
             Self::Parquet(file) => file.finish().map_err(|e| refused(name, &e)),
             #[cfg(feature = "parquet")]
             Self::Arrow(file) => file.finish().map_err(|e| refused(name, &e)),
-            Self::Netcdf(file) => file.finish(setup),
+            Self::Netcdf(file) => file.finish(setup, extra),
             Self::Geojson(collection) => Ok(collection.finish()),
         }
     }

@@ -1,7 +1,6 @@
 //! The values of a block as the file stores them.
 
 use super::variables::{FLAGS, FaceVariable, Source, face_variables, flag_value, reason_node};
-use crate::integral::ExtraPolygon;
 use crate::pipeline::{BlockView, Setup};
 use crate::time::Time;
 
@@ -15,8 +14,8 @@ pub(in crate::output) struct FaceRows {
 /// A block as the file stores it: columns by time, then face or node.
 pub(in crate::output) struct FaceBlock {
     pub(super) times: Vec<Time>,
-    /// Faces that follow those of the whole network.
-    pub(super) extra: Vec<ExtraPolygon>,
+    /// Numbers in the run of the faces that follow those of the whole network.
+    pub(super) extra: Vec<usize>,
     /// In the order of [`face_variables`].
     pub(super) numbers: Vec<Vec<f32>>,
     /// In the order of [`FLAGS`].
@@ -86,7 +85,7 @@ impl FaceRows {
         };
         FaceBlock {
             times: block.times.clone(),
-            extra: block.extra.clone(),
+            extra: block.extra.iter().map(|extra| extra.number).collect(),
             numbers: self.variables.iter().map(column).collect(),
             flags: FLAGS
                 .iter()

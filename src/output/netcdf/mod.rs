@@ -55,38 +55,27 @@ const WINDS: [(&str, &str, &str); 4] = [
 #[derive(Default)]
 pub(super) struct FaceFile {
     blocks: Vec<FaceBlock>,
-    /// In the order of their numbers.
-    extra: Vec<ExtraPolygon>,
 }
 
 impl FaceFile {
     /// Keeps a block.
-    pub(super) fn append(&mut self, mut block: FaceBlock) {
-        for extra in &block.extra {
-            if self.extra.iter().all(|known| known.number != extra.number) {
-                self.extra.push(extra.clone());
-            }
-        }
-        // Only the numbers are needed from here on.
-        block.numbers.shrink_to_fit();
+    pub(super) fn append(&mut self, block: FaceBlock) {
         self.blocks.push(block);
     }
 
-    /// Makes the file.
+    /// Makes the file; `extra` are the polygons of the run that stand only where stations are missing, by their numbers.
     ///
     /// # Errors
     /// The library's refusal.
-    pub(super) fn finish(mut self, setup: &Setup) -> Result<Vec<u8>, Error> {
-        self.extra.sort_by_key(|extra| extra.number);
-        self.make(setup).map_err(|error| {
+    pub(super) fn finish(self, setup: &Setup, extra: &[ExtraPolygon]) -> Result<Vec<u8>, Error> {
+        self.make(setup, extra).map_err(|error| {
             let error = std::io::Error::other(error.to_string());
             Error::write(Path::new("polygons.nc"), error)
         })
     }
 
-    fn make(mut self, setup: &Setup) -> netcdf_writer::Result<Vec<u8>> {
-        let extra = std::mem::take(&mut self.extra);
-        let faces = Faces::new(setup, &extra);
+    fn make(self, setup: &Setup, extra: &[ExtraPolygon]) -> netcdf_writer::Result<Vec<u8>> {
+        let faces = Faces::new(setup, extra);
         let mut file = NetcdfFile::new(self.about(setup))?;
         let time = file.unlimited_dimension("time")?;
         let places = faces.put(&mut file)?;
@@ -163,12 +152,11 @@ impl Series {
         let mut out = Vec::with_capacity(times * self.faces);
         for block in &mut self.blocks {
             let column = take(block).unwrap_or_default();
-            let numbers: Vec<usize> = block.extra.iter().map(|extra| extra.number).collect();
-            for row in column.chunks(self.common + numbers.len()) {
+            for row in column.chunks(self.common + block.extra.len()) {
                 let from = out.len();
                 out.extend_from_slice(row.get(..self.common).unwrap_or(row));
                 out.resize(from + self.faces, missing);
-                for (&number, &value) in numbers.iter().zip(row.iter().skip(self.common)) {
+                for (&number, &value) in block.extra.iter().zip(row.iter().skip(self.common)) {
                     if let Some(place) = out.get_mut(from + number) {
                         *place = value;
                     }
