@@ -13,6 +13,7 @@ mod fits;
 mod flagged;
 #[cfg(feature = "parquet")]
 mod flagged_parquet;
+mod frames;
 mod geojson;
 #[cfg(feature = "parquet")]
 mod geoparquet;
@@ -20,9 +21,11 @@ mod kinematics;
 mod netcdf;
 #[cfg(feature = "parquet")]
 mod parquet;
+pub mod plot;
 mod profile;
 mod reading;
 mod reason;
+mod report;
 mod series;
 #[cfg(feature = "parquet")]
 mod standing;
@@ -42,9 +45,11 @@ pub use events::{
 };
 pub use file::OutputSet;
 pub use flagged::{FlaggedFiles, FlaggedFormats};
+pub use frames::{Cell, Frame, Frames};
 pub use geojson::{mesh_geojson, outline_geometry};
 pub use profile::{assumptions, profile_csv, profile_json, w_of};
 pub use reading::reading_json;
+pub use report::report_html;
 pub use series::{SeriesChoice, SeriesEncoder, SeriesFiles, SeriesFormat, series};
 pub use structure::structure_csv;
 pub(crate) use summary::significant_share;

@@ -1,0 +1,177 @@
+//! `gyremesh estimate`.
+
+use std::path::{Path, PathBuf};
+
+use clap::{Args, ValueEnum};
+
+use super::args::{AnalysisArgs, InputArgs};
+use super::run::{over_reports, tell};
+use super::text::estimate::run_summary;
+use super::{Status, print, say};
+use crate::error::Error;
+use crate::output::{
+    OutputSet, SeriesChoice, SeriesFormat, means_csv, mesh_geojson, series, stations_csv,
+    structure_csv, summary_csv, summary_json,
+};
+use crate::pipeline::{self, Outcome, Setup};
+use crate::settings::{MeansBy, MeansSettings, Overrides};
+use crate::time::Time;
+
+/// Options of `estimate`.
+#[derive(Debug, Args)]
+pub(super) struct EstimateArgs {
+    /// Folder of the results [default: out/NAME, NAME being the folder of the settings file]
+    #[arg(long, value_name = "DIR")]
+    out: Option<PathBuf>,
+    #[command(flatten)]
+    analysis: AnalysisArgs,
+    /// Formats of the series, several separated by commas
+    #[arg(
+        long,
+        value_name = "FORMAT",
+        value_delimiter = ',',
+        default_value = "csv"
+    )]
+    format: Vec<Format>,
+    /// Times of polygons.geojson, RFC 3339; several are allowed [default: the last]
+    #[arg(long, value_name = "TIME", value_parser = Time::parse_rfc3339)]
+    at: Vec<Time>,
+    /// Write no series, only the summary of each polygon
+    #[arg(long)]
+    summary_only: bool,
+    /// What the errors hold: the sensors and sites, the wind between the stations, and late reports; or the sensors alone
+    #[arg(long, value_name = "PARTS", default_value = "all")]
+    errors: Parts,
+    /// Write kinematics.csv (or .parquet) too: mean wind, deformation, curvature and shear and more of each polygon
+    #[arg(long, conflicts_with = "summary_only")]
+    kinematics: bool,
+    /// Write polygon_means.csv too: means of each polygon by hour of the day, calendar day, calendar month or named period
+    #[arg(long, value_name = "WHAT", value_parser = means_by)]
+    by: Option<MeansBy>,
+    /// Print no summary and no progress; warnings remain
+    #[arg(long, short)]
+    quiet: bool,
+    #[command(flatten)]
+    input: InputArgs,
+}
+
+fn means_by(text: &str) -> Result<MeansBy, String> {
+    let found = MeansSettings::WORDS.iter().find(|w| w.0 == text);
+    found
+        .map(|w| w.1)
+        .ok_or_else(|| format!("`{text}` is none of hour, day, month, period"))
+}
+
+/// A format of the series.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, ValueEnum)]
+enum Format {
+    /// Text
+    Csv,
+    /// The same columns, typed, null for missing; with mesh.parquet (GeoParquet)
+    Parquet,
+    /// The columns of Parquet as an Arrow IPC file
+    Arrow,
+    /// NetCDF-4 (CF, UGRID): polygons as faces, stations as nodes, with the winds
+    Netcdf,
+    /// The polygons with their values at the times of --at
+    Geojson,
+}
+
+impl From<Format> for SeriesFormat {
+    fn from(format: Format) -> Self {
+        match format {
+            Format::Csv => Self::Csv,
+            Format::Parquet => Self::Parquet,
+            Format::Arrow => Self::Arrow,
+            Format::Netcdf => Self::Netcdf,
+            Format::Geojson => Self::Geojson,
+        }
+    }
+}
+
+/// Parts of the errors.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, ValueEnum)]
+enum Parts {
+    /// As the settings say: all, if they say nothing
+    All,
+    /// The sensors and their rounding alone
+    Instrument,
+}
+
+impl EstimateArgs {
+    fn overrides(&self) -> Overrides {
+        Overrides {
+            instrument_errors: self.errors == Parts::Instrument,
+            kinematics: self.kinematics,
+            by: self.by,
+            ..self.analysis.over(self.input.overrides())
+        }
+    }
+}
+
+pub(super) fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
+    let mut setup = args.input.setup_with(&args.overrides())?;
+    // Without a series there is no file for them.
+    setup.settings.kinematics.write &= !args.summary_only;
+    setup.has_polygons()?;
+    let folder = args
+        .out
+        .clone()
+        .unwrap_or_else(|| default_folder(&args.input.network));
+    let wanted = args.format.iter().filter(|_| !args.summary_only);
+    let choice = SeriesChoice {
+        formats: wanted.map(|&format| format.into()).collect(),
+        at: args.at.clone(),
+    };
+    let run = over_reports(&setup.settings, args.quiet, |order, progress| {
+        let mut set = OutputSet::new(&folder)?;
+        let (encoder, mut series_files) = series(&setup, &choice, &mut set)?;
+        let outcome = pipeline::run(
+            &setup,
+            order,
+            |seen| encoder.encode(seen),
+            |encoded| series_files.write(&mut set, encoded),
+            progress,
+        )?;
+        Ok((outcome, set, series_files))
+    });
+    let (outcome, mut set, series_files) = run?;
+    let unmet = series_files.finish(&setup, &outcome.extra, &mut set)?;
+    put_tables(&mut set, &setup, &outcome)?;
+    let files = set.commit()?;
+
+    for time in unmet {
+        let message = format!("polygons.geojson: {time} is no analysis time with reports");
+        say("warning", &message);
+    }
+    let status = tell(&outcome.warnings, &outcome.reading);
+    if !args.quiet {
+        print(&run_summary(&setup, &outcome, &files))?;
+    }
+    Ok(status)
+}
+
+/// The files that are not series.
+fn put_tables(set: &mut OutputSet, setup: &Setup, outcome: &Outcome) -> Result<(), Error> {
+    let mut put = |name: &str, text: String| set.put(name, text.as_bytes());
+    put("mesh.geojson", mesh_geojson(setup, &outcome.extra))?;
+    put("stations.csv", stations_csv(setup, outcome))?;
+    put("polygon_summary.csv", summary_csv(setup, outcome))?;
+    if setup.settings.means.by.is_some() {
+        put("polygon_means.csv", means_csv(setup, outcome))?;
+    }
+    if setup.settings.errors.complete {
+        put("structure.csv", structure_csv(outcome))?;
+    }
+    put("summary.json", summary_json(setup, outcome))
+}
+
+/// `out/NAME`, NAME being the folder of the settings file.
+pub(super) fn default_folder(network: &Path) -> PathBuf {
+    let name = network
+        .canonicalize()
+        .ok()
+        .and_then(|path| path.parent()?.file_name().map(PathBuf::from))
+        .unwrap_or_else(|| "network".into());
+    Path::new("out").join(name)
+}
