@@ -45,6 +45,9 @@ Writes:  polygons.csv (a row for each time and polygon; other formats with --for
 each polygon: mean, standard deviation, extremes, share beyond 1.96 standard errors), mesh.geojson, stations.csv, \
 summary.json; with --kinematics also kinematics.csv (mean wind, deformation, curvature and shear vorticity and more, a \
 row for each time and polygon). Files appear only when they are whole.
+Formats: csv; parquet (polygons.parquet, mesh.parquet), arrow (polygons.arrow); netcdf (polygons.nc, CF and UGRID); \
+geojson (polygons.geojson, at the last time or those of --at). A NetCDF file is made in memory, 220 bytes for each polygon \
+and time, with kinematics 480: take long archives in parts, with --from and --to.
 
 Settings file (defaults in brackets):
   name                        name of the network
