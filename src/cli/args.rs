@@ -13,7 +13,7 @@ use super::events::EventsArgs;
 use super::help;
 use super::polygons::PolygonsArgs;
 use super::profile::ProfileArgs;
-use super::report::ReportArgs as PageArgs;
+use super::report::PageArgs;
 use crate::error::Error;
 use crate::output::OutputSet;
 use crate::output::plot::png;
