@@ -2,8 +2,8 @@
 
 use super::axis::roomy;
 use super::chart::Chart;
-use super::footnote;
 use super::svg::{Anchor, NOTE, Paint, Style, Svg, fitted};
+use super::{footnote, height_of};
 use crate::calibration::GainEstimate;
 use crate::output::GAUGE;
 use crate::pipeline::{CalibrationOutcome, Setup};
@@ -24,7 +24,7 @@ pub fn calibration_picture(setup: &Setup, outcome: &CalibrationOutcome) -> Strin
     // Room for an upright identifier each.
     let width = (LEFT + 24.0 + 21.0 * count).clamp(700.0, 4000.0);
     let title = format!("{}: calibration", setup.settings.name);
-    let mut svg = Svg::new(width, 706.0, &title);
+    let mut svg = Svg::new(width, 690.0 + height_of(GAUGE, width - 48.0), &title);
     let name = fitted(&setup.settings.name, 22.0, width - 48.0);
     svg.text([24.0, 36.0], &name, Style::new(22.0).bold());
     svg.text(

@@ -5,7 +5,7 @@ use super::barb::{barb, of_wind};
 use super::base::{LABEL, MapBase, around, is_triangle, label_texts};
 use super::colour::{NO_VALUE, Scale};
 use super::svg::{Anchor, GRID, INK, NOTE, Paint, Style, Svg, fitted, short};
-use super::{COAST, LAND, Quantity, SEA};
+use super::{COAST, LAND, Quantity, SEA, footnote, height_of};
 use crate::output::CAUTION;
 use crate::output::frames::Frame;
 use crate::pipeline::Setup;
@@ -14,8 +14,8 @@ const WIDTH: f64 = 1000.0;
 const MARGIN: f64 = 24.0;
 /// Above the map: title and time.
 const HEAD: f64 = 78.0;
-/// Below it: colours, signs, caution.
-const FOOT: f64 = 118.0;
+/// Below it: colours and signs.
+const FOOT: f64 = 88.0;
 /// Lines that mark values which cannot be told from zero.
 pub(crate) const HATCH: &str = "<pattern id=\"hatch\" width=\"7\" height=\"7\" patternUnits=\"userSpaceOnUse\" \
      patternTransform=\"rotate(45)\"><path d=\"M0 0V7\" stroke=\"#22272e\" stroke-opacity=\"0.32\" stroke-width=\"1.6\"/></pattern>";
@@ -27,7 +27,8 @@ pub fn map_picture(setup: &Setup, frame: &Frame, quantity: Quantity) -> String {
     let base = MapBase::new(setup, inside, 420.0);
     let [left, top, width, height] = base.inside;
     let title = format!("{} of {}", quantity.title(), setup.settings.name);
-    let mut svg = Svg::new(WIDTH, top + height + FOOT, &title);
+    let foot = FOOT + height_of(CAUTION, WIDTH - 2.0 * MARGIN) + 6.0;
+    let mut svg = Svg::new(WIDTH, top + height + foot, &title);
     let heading = fitted(&setup.settings.name, 22.0, width - 220.0);
     svg.text([left, 36.0], &heading, Style::new(22.0).bold());
     let below = format!("{}, {}", quantity.title(), plain_time(frame.time));
@@ -240,5 +241,5 @@ fn legend(svg: &mut Svg, bottom: f64, scale: Scale, quantity: Quantity) {
         [WIDTH - MARGIN, y + 59.0],
         Paint::line(GRID, 1.0),
     );
-    super::footnote(svg, [MARGIN, y + 76.0], CAUTION, WIDTH - 2.0 * MARGIN);
+    footnote(svg, [MARGIN, y + 76.0], CAUTION, WIDTH - 2.0 * MARGIN);
 }

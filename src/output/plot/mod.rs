@@ -83,21 +83,32 @@ impl Quantity {
     }
 }
 
-/// A text in small letters, in lines of a width.
-fn footnote(svg: &mut Svg, [x, mut y]: [f64; 2], text: &str, width: f64) {
+/// A text in small letters as lines of a width.
+fn lines(text: &str, width: f64) -> Vec<String> {
     // Running text is narrower than identifiers.
     let fits = |line: &str, word: &str| 0.94 * width_of(&format!("{line} {word}"), 11.0) <= width;
-    let mut line = String::new();
+    let mut lines = vec![String::new()];
     for word in text.split_whitespace() {
-        if !line.is_empty() && !fits(&line, word) {
-            svg.text([x, y], &line, Style::note(11.0));
-            line.clear();
-            y += 15.0;
+        match lines.last_mut() {
+            Some(line) if line.is_empty() => line.push_str(word),
+            Some(line) if fits(line, word) => {
+                line.push(' ');
+                line.push_str(word);
+            }
+            _ => lines.push(word.to_string()),
         }
-        if !line.is_empty() {
-            line.push(' ');
-        }
-        line.push_str(word);
     }
-    svg.text([x, y], &line, Style::note(11.0));
+    lines
+}
+
+/// Height that a footnote takes, pixels.
+fn height_of(text: &str, width: f64) -> f64 {
+    15.0 * lines(text, width).len() as f64
+}
+
+/// Writes a text in small letters, in lines of a width.
+fn footnote(svg: &mut Svg, [x, y]: [f64; 2], text: &str, width: f64) {
+    for (k, line) in lines(text, width).iter().enumerate() {
+        svg.text([x, y + 15.0 * k as f64], line, Style::note(11.0));
+    }
 }

@@ -1,8 +1,8 @@
 //! The profile of one polygon: vorticity, divergence and vertical motion by level.
 
 use super::axis::{Axis, label, plain_time, roomy};
-use super::footnote;
 use super::svg::{Anchor, GRID, NOTE, Paint, Style, Svg, fitted, polyline};
+use super::{footnote, height_of};
 use crate::output::{CAUTION, assumptions};
 use crate::pipeline::{LevelEstimate, PolygonProfile, ProfileOutcome, Setup};
 use crate::profile::Coordinate;
@@ -71,7 +71,9 @@ pub fn profile_picture(
         profile.polygon,
         plain_time(profile.time)
     );
-    let mut svg = Svg::new(WIDTH, TOP + HEIGHT + 120.0, &title);
+    let notes = [assumptions(setup, outcome).join(" "), CAUTION.to_string()].join(" ");
+    let foot = TOP + HEIGHT + 64.0;
+    let mut svg = Svg::new(WIDTH, foot + height_of(&notes, WIDTH - 48.0), &title);
     let name = fitted(&profile.polygon, 22.0, WIDTH - 48.0);
     svg.text([24.0, 36.0], &name, Style::new(22.0).bold());
     let below = format!(
@@ -107,8 +109,7 @@ pub fn profile_picture(
         let left = LEFT + k as f64 * (PANEL + GAP);
         panel(&mut svg, left, &upward, unit, points, (name, COLOURS[k]));
     }
-    let notes = [assumptions(setup, outcome).join(" "), CAUTION.to_string()].join(" ");
-    footnote(&mut svg, [24.0, TOP + HEIGHT + 64.0], &notes, WIDTH - 48.0);
+    footnote(&mut svg, [24.0, foot], &notes, WIDTH - 48.0);
     Some(svg.finish())
 }
 
@@ -126,7 +127,7 @@ fn panel(
         let y = upward.pixel(tick);
         svg.line([left, y], [left + PANEL, y], Paint::line(GRID, 1.0));
     }
-    let ticks = across.ticks(4.0);
+    let ticks = across.ticks(5.0);
     let step = match ticks[..] {
         [a, b, ..] => b - a,
         _ => 1.0,

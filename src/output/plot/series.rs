@@ -5,7 +5,7 @@ use std::fmt::Write as _;
 use super::axis::roomy;
 use super::chart::Chart;
 use super::svg::{NOTE, Paint, Style, Svg, fitted};
-use super::{Quantity, footnote};
+use super::{Quantity, footnote, height_of};
 use crate::output::frames::Frames;
 use crate::output::{CAUTION, error_bars};
 use crate::pipeline::Setup;
@@ -26,7 +26,13 @@ pub fn series_picture(setup: &Setup, frames: &Frames, polygon: usize) -> Option<
     let seconds = |micros: i64| (micros - first.micros()) as f64 / 1e6;
     let title = format!("{}: {}", setup.settings.name, found.id);
     let foot = 90.0 + 2.0 * (HEIGHT + 30.0) + 34.0;
-    let mut svg = Svg::new(WIDTH, foot + 44.0, &title);
+    let mut notes = format!("Errors: {}. ", error_bars(&setup.settings.errors));
+    if frames.every > 1 {
+        // Writing to a string cannot fail.
+        let _ = write!(notes, "Every {}th analysis time is shown. ", frames.every);
+    }
+    notes.push_str(CAUTION);
+    let mut svg = Svg::new(WIDTH, foot + 6.0 + height_of(&notes, WIDTH - 48.0), &title);
     svg.text(
         [24.0, 36.0],
         &fitted(&found.id, 22.0, WIDTH - 48.0),
@@ -81,12 +87,6 @@ pub fn series_picture(setup: &Setup, frames: &Frames, polygon: usize) -> Option<
         }
         chart.border(&mut svg);
     }
-    let mut notes = format!("Errors: {}. ", error_bars(&setup.settings.errors));
-    if frames.every > 1 {
-        // Writing to a string cannot fail.
-        let _ = write!(notes, "Every {}th analysis time is shown. ", frames.every);
-    }
-    notes.push_str(CAUTION);
     svg.line(
         [24.0, foot - 14.0],
         [WIDTH - 24.0, foot - 14.0],
