@@ -169,10 +169,9 @@ fn geojson_across_the_antimeridian() {
         "stations.csv",
         "id,latitude,longitude\nA,-17.0,179.8\nB,-17.0,-179.8\nC,-16.7,-179.9\nD,-16.7,179.7\n",
     );
-    let mut reports = String::from("id,time,dir,spd\n");
-    for (id, direction) in [("A", 90), ("B", 100), ("C", 110), ("D", 120)] {
-        reports += &format!("{id},2031-01-01T00:00:00Z,{direction},5.0\n");
-    }
+    let row = |(id, direction)| format!("{id},2031-01-01T00:00:00Z,{direction},5.0\n");
+    let rows = [("A", 90), ("B", 100), ("C", 110), ("D", 120)].map(row);
+    let reports = String::from("id,time,dir,spd\n") + &rows.concat();
     put("reports.csv", &reports);
     put(
         "network.toml",

@@ -21,6 +21,9 @@ use crate::polygon::StationPolygon;
 /// zstd's usual level.
 const ZSTD: i32 = 3;
 
+/// A number of a polygon, if it has it.
+type Measure = fn(&StationPolygon) -> Option<f64>;
+
 /// The file; `extra` are polygons that stand only where stations are missing.
 ///
 /// # Errors
@@ -50,8 +53,7 @@ pub(super) fn mesh_parquet(setup: &Setup, extra: &[ExtraPolygon]) -> Result<Vec<
     put("kind", "", DataType::Utf8, false, kinds);
     let stations = words(&|row| station_list(row.polygon, &setup.network));
     put("stations", "", DataType::Utf8, false, stations);
-    type Of = fn(&StationPolygon) -> Option<f64>;
-    let numbers: [(&str, &str, Of); 8] = [
+    let numbers: [(&str, &str, Measure); 8] = [
         ("area_km2", "km2", |p| Some(p.shape.area / 1e6)),
         ("perimeter_km", "km", |p| Some(p.shape.perimeter / 1e3)),
         ("longest_edge_km", "km", |p| {

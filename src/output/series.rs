@@ -110,7 +110,9 @@ struct File {
 }
 
 /// A block, encoded for every file.
-pub struct EncodedBlock(Vec<Result<Piece, Error>>);
+///
+/// Where a library refused, its words stand in place of the piece.
+pub struct EncodedBlock(Vec<Result<Piece, String>>);
 
 /// Starts the files of the series.
 ///
@@ -249,41 +251,38 @@ impl SeriesEncoder {
 }
 
 impl Encoder {
-    fn encode(&self, seen: &BlockView) -> Result<Piece, Error> {
+    fn encode(&self, seen: &BlockView) -> Result<Piece, String> {
         let block = seen.estimates;
-        #[cfg(feature = "parquet")]
-        let group = |name, group: parquet::errors::Result<RowGroup>| {
-            group.map(Piece::RowGroup).map_err(|e| refused(name, &e))
-        };
-        #[cfg(feature = "parquet")]
-        let batch = |name, batch: Result<RecordBatch, arrow_schema::ArrowError>| {
-            batch.map(Piece::Batch).map_err(|e| refused(name, &e))
-        };
-        match self {
-            Self::Csv(rows) => Ok(Piece::Bytes(rows.encode(block))),
-            Self::Fits(rows) => Ok(Piece::Bytes(rows.encode(block))),
-            Self::KinematicsCsv(rows) => Ok(seen
-                .kinematics
-                .map_or(Piece::Nothing, |block| Piece::Bytes(rows.encode(block)))),
+        match (self, seen.kinematics) {
+            (Self::Csv(rows), _) => Ok(Piece::Bytes(rows.encode(block))),
+            (Self::Fits(rows), _) => Ok(Piece::Bytes(rows.encode(block))),
+            (Self::KinematicsCsv(rows), Some(block)) => Ok(Piece::Bytes(rows.encode(block))),
             #[cfg(feature = "parquet")]
-            Self::Parquet(rows) => group("polygons.parquet", rows.encode(block)),
+            (Self::Parquet(rows), _) => words(rows.encode(block)).map(Piece::RowGroup),
             #[cfg(feature = "parquet")]
-            Self::KinematicsParquet(rows) => seen.kinematics.map_or(Ok(Piece::Nothing), |block| {
-                group("kinematics.parquet", rows.encode(block))
-            }),
+            (Self::KinematicsParquet(rows), Some(block)) => {
+                words(rows.encode(block)).map(Piece::RowGroup)
+            }
             #[cfg(feature = "parquet")]
-            Self::Arrow(rows) => batch("polygons.arrow", rows.encode(block)),
+            (Self::Arrow(rows), _) => words(rows.encode(block)).map(Piece::Batch),
             #[cfg(feature = "parquet")]
-            Self::KinematicsArrow(columns) => seen.kinematics.map_or(Ok(Piece::Nothing), |block| {
-                batch("kinematics.arrow", kinematics_batch(columns, block))
-            }),
-            Self::Netcdf(rows) => Ok(Piece::Faces(Box::new(rows.encode(seen)))),
-            Self::Geojson(features) => {
+            (Self::KinematicsArrow(columns), Some(block)) => {
+                words(kinematics_batch(columns, block)).map(Piece::Batch)
+            }
+            (Self::Netcdf(rows), _) => Ok(Piece::Faces(Box::new(rows.encode(seen)))),
+            (Self::Geojson(features), _) => {
                 let (features, times) = features.encode(seen);
                 Ok(Piece::Features(features, times))
             }
+            // Kinematics that are not there.
+            _ => Ok(Piece::Nothing),
         }
     }
+}
+
+/// What a library said, in words.
+fn words<T, E: std::fmt::Display>(result: Result<T, E>) -> Result<T, String> {
+    result.map_err(|error| error.to_string())
 }
 
 impl SeriesFiles {
@@ -293,7 +292,8 @@ impl SeriesFiles {
     /// The system's refusal, a full disk for one.
     pub fn write(&mut self, set: &mut OutputSet, block: EncodedBlock) -> Result<(), Error> {
         for (file, piece) in self.0.iter_mut().zip(block.0) {
-            let bytes = file.writer.add(file.name, piece?)?;
+            let bytes = piece.and_then(|piece| file.writer.add(piece));
+            let bytes = bytes.map_err(|e| refused(file.name, &e))?;
             set.write(file.number, &bytes)?;
         }
         Ok(())
@@ -321,7 +321,8 @@ impl SeriesFiles {
             if let Writer::Geojson(collection) = &file.writer {
                 unmet.extend(collection.wanted.iter().flatten());
             }
-            let bytes = file.writer.finish(file.name, setup, extra)?;
+            let bytes = file.writer.finish(setup, extra);
+            let bytes = bytes.map_err(|e| refused(file.name, &e))?;
             set.write(file.number, &bytes)?;
         }
         Ok(unmet)
@@ -330,17 +331,13 @@ impl SeriesFiles {
 
 impl Writer {
     /// Takes the next piece; gives the bytes that are ready.
-    fn add(&mut self, name: &str, piece: Piece) -> Result<Vec<u8>, Error> {
+    fn add(&mut self, piece: Piece) -> Result<Vec<u8>, String> {
         match (self, piece) {
             (Self::Text, Piece::Bytes(bytes)) => return Ok(bytes),
             #[cfg(feature = "parquet")]
-            (Self::Parquet(file), Piece::RowGroup(group)) => {
-                return file.append(group).map_err(|e| refused(name, &e));
-            }
+            (Self::Parquet(file), Piece::RowGroup(group)) => return words(file.append(group)),
             #[cfg(feature = "parquet")]
-            (Self::Arrow(file), Piece::Batch(batch)) => {
-                return file.append(&batch).map_err(|e| refused(name, &e));
-            }
+            (Self::Arrow(file), Piece::Batch(batch)) => return words(file.append(&batch)),
             (Self::Netcdf(file), Piece::Faces(block)) => file.append(*block),
             (Self::Geojson(collection), Piece::Features(features, times)) => {
                 collection.add(features, &times);
@@ -352,14 +349,14 @@ impl Writer {
     }
 
     /// The last bytes.
-    fn finish(self, name: &str, setup: &Setup, extra: &[ExtraPolygon]) -> Result<Vec<u8>, Error> {
+    fn finish(self, setup: &Setup, extra: &[ExtraPolygon]) -> Result<Vec<u8>, String> {
         match self {
             Self::Text => Ok(Vec::new()),
             #[cfg(feature = "parquet")]
-            Self::Parquet(file) => file.finish().map_err(|e| refused(name, &e)),
+            Self::Parquet(file) => words(file.finish()),
             #[cfg(feature = "parquet")]
-            Self::Arrow(file) => file.finish().map_err(|e| refused(name, &e)),
-            Self::Netcdf(file) => file.finish(setup, extra),
+            Self::Arrow(file) => words(file.finish()),
+            Self::Netcdf(file) => words(file.finish(setup, extra)),
             Self::Geojson(collection) => Ok(collection.finish()),
         }
     }

@@ -15,6 +15,9 @@ pub(super) struct Faces<'a> {
     pub(super) polygons: Vec<(&'a StationPolygon, f64)>,
 }
 
+/// A number of a face with its planetary vorticity.
+type Measure = fn(&StationPolygon, f64) -> f64;
+
 /// The dimensions that variables stand on.
 pub(super) struct Places {
     pub(super) face: DimensionId,
@@ -240,8 +243,7 @@ impl<'a> Faces<'a> {
             attributes.extend(texts(&ON_FACES));
             attributes
         };
-        type Of = fn(&StationPolygon, f64) -> f64;
-        let numbers: [(&str, &str, &str, &str, Of); 8] = [
+        let numbers: [(&str, &str, &str, &str, Measure); 8] = [
             ("area", "cell_area", "area on WGS 84", "m2", |p, _| {
                 p.shape.area
             }),

@@ -20,8 +20,8 @@ pub(super) struct FaceVariable {
 /// Where the numbers come from.
 #[derive(Clone, Copy)]
 pub(super) enum Source {
-    /// From the estimates: the block, the cell, the planetary vorticity.
-    Estimate(fn(&EstimateBlock, usize, f64) -> f64),
+    /// From the estimates.
+    Estimate(OfEstimate),
     /// From the kinematics.
     Value(Quantity),
     /// The error of that.
@@ -111,77 +111,85 @@ pub(super) fn reason_node(block: &EstimateBlock, cell: usize) -> i32 {
     station.map_or(-1, |station| i32::try_from(station).unwrap_or(-1))
 }
 
+/// From the estimates: the block, the cell, the planetary vorticity.
+type OfEstimate = fn(&EstimateBlock, usize, f64) -> f64;
+
+/// An area mean with its error and the parts of that.
+struct Mean {
+    name: &'static str,
+    standard_name: &'static str,
+    long_name: &'static str,
+    value: OfEstimate,
+    error: OfEstimate,
+    /// In the order of [`PARTS`].
+    parts: [OfEstimate; 3],
+}
+
+const MEANS: [Mean; 2] = [
+    Mean {
+        name: "vorticity",
+        standard_name: "atmosphere_upward_relative_vorticity",
+        long_name: "area-mean relative vorticity, positive counter-clockwise",
+        value: |b, c, _| b.vorticity[c],
+        error: |b, c, _| b.vorticity_se[c],
+        parts: [
+            |b, c, _| b.budget.vorticity.instrument[c],
+            |b, c, _| b.budget.vorticity.sampling[c],
+            |b, c, _| b.budget.vorticity.timing[c],
+        ],
+    },
+    Mean {
+        name: "divergence",
+        standard_name: "divergence_of_wind",
+        long_name: "area-mean horizontal divergence, positive for air flowing out",
+        value: |b, c, _| b.divergence[c],
+        error: |b, c, _| b.divergence_se[c],
+        parts: [
+            |b, c, _| b.budget.divergence.instrument[c],
+            |b, c, _| b.budget.divergence.sampling[c],
+            |b, c, _| b.budget.divergence.timing[c],
+        ],
+    },
+];
+
+/// Parts of the errors: name and what is in them. Only the first is there where errors hold the instruments alone.
+const PARTS: [(&str, &str); 3] = [
+    ("instrument", "sensors and sites"),
+    ("sampling", "the wind between the stations"),
+    ("timing", "reports beside the time"),
+];
+
 /// The variables of numbers.
 pub(super) fn face_variables(complete: bool, kinematics: bool) -> Vec<FaceVariable> {
     let mut out = Vec::new();
-    type Of = fn(&EstimateBlock, usize, f64) -> f64;
-    type Quantities = [(&'static str, &'static str, &'static str, Of, Of, [Of; 3]); 2];
-    let quantities: Quantities = [
-        (
-            "vorticity",
-            "atmosphere_upward_relative_vorticity",
-            "area-mean relative vorticity, positive counter-clockwise",
-            |b, c, _| b.vorticity[c],
-            |b, c, _| b.vorticity_se[c],
-            [
-                |b, c, _| b.budget.vorticity.instrument[c],
-                |b, c, _| b.budget.vorticity.sampling[c],
-                |b, c, _| b.budget.vorticity.timing[c],
-            ],
-        ),
-        (
-            "divergence",
-            "divergence_of_wind",
-            "area-mean horizontal divergence, positive for air flowing out",
-            |b, c, _| b.divergence[c],
-            |b, c, _| b.divergence_se[c],
-            [
-                |b, c, _| b.budget.divergence.instrument[c],
-                |b, c, _| b.budget.divergence.sampling[c],
-                |b, c, _| b.budget.divergence.timing[c],
-            ],
-        ),
-    ];
-    for (name, standard_name, long_name, value, error, parts) in quantities {
+    for mean in MEANS {
+        let name = mean.name;
         out.push(FaceVariable {
             name: name.into(),
-            standard_name: standard_name.into(),
-            long_name: long_name.into(),
+            standard_name: mean.standard_name.into(),
+            long_name: mean.long_name.into(),
             units: "s-1",
             ancillary: format!("{name}_se flag {name}_significant reason"),
             is_mean: true,
-            source: Source::Estimate(value),
+            source: Source::Estimate(mean.value),
         });
-        out.push(FaceVariable {
-            name: format!("{name}_se"),
-            standard_name: format!("{standard_name} standard_error"),
-            long_name: format!("standard error of {name}"),
-            units: "s-1",
-            ancillary: String::new(),
-            is_mean: false,
-            source: Source::Estimate(error),
-        });
-        let shown = if complete { 3 } else { 1 };
-        let words = [
-            "sensors and sites",
-            "the wind between the stations",
-            "reports beside the time",
-        ];
-        for ((part, words), of) in ["instrument", "sampling", "timing"]
-            .iter()
-            .zip(words)
-            .zip(parts)
-            .take(shown)
-        {
-            out.push(FaceVariable {
-                name: format!("{name}_se_{part}"),
-                standard_name: String::new(),
-                long_name: format!("part of the standard error of {name}: {words}"),
+        let of_error =
+            |suffix: &str, standard_name: String, long_name: String, of: OfEstimate| FaceVariable {
+                name: format!("{name}_se{suffix}"),
+                standard_name,
+                long_name,
                 units: "s-1",
                 ancillary: String::new(),
                 is_mean: false,
                 source: Source::Estimate(of),
-            });
+            };
+        let standard_name = format!("{} standard_error", mean.standard_name);
+        let long_name = format!("standard error of {name}");
+        out.push(of_error("", standard_name, long_name, mean.error));
+        let parts = PARTS.iter().zip(mean.parts);
+        for (&(part, words), of) in parts.take(if complete { 3 } else { 1 }) {
+            let long_name = format!("part of the standard error of {name}: {words}");
+            out.push(of_error(&format!("_{part}"), String::new(), long_name, of));
         }
     }
     out.push(FaceVariable {
