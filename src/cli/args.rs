@@ -10,10 +10,10 @@ use super::calibrate::CalibrateArgs;
 use super::check::CheckArgs;
 use super::estimate::EstimateArgs;
 use super::events::EventsArgs;
-use super::help;
 use super::polygons::PolygonsArgs;
 use super::profile::ProfileArgs;
 use super::report::ReportArgs as PageArgs;
+use super::{help, print};
 use crate::error::Error;
 use crate::output::OutputSet;
 use crate::output::plot::png;
@@ -225,6 +225,17 @@ pub(super) struct OutputArgs {
     /// Print JSON
     #[arg(long)]
     pub json: bool,
+}
+
+impl OutputArgs {
+    /// Prints the results for programs or for people.
+    pub fn show(
+        &self,
+        json: impl FnOnce() -> String,
+        text: impl FnOnce() -> String,
+    ) -> Result<(), Error> {
+        print(&if self.json { json() } else { text() })
+    }
 }
 
 /// A format of a table.

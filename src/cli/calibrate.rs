@@ -7,7 +7,7 @@ use clap::Args;
 use super::args::{InputArgs, OutputArgs, PictureArgs};
 use super::run::{over_reports, tell};
 use super::text::calibration::calibration_text;
-use super::{Status, print, say};
+use super::{Status, say};
 use crate::error::Error;
 use crate::output::plot::calibration_picture;
 use crate::output::{
@@ -46,11 +46,10 @@ pub(super) fn calibrate(args: &CalibrateArgs) -> Result<Status, Error> {
         set.commit()?;
     }
     let status = tell(&outcome.warnings, &outcome.reading);
-    print(&if args.output.json {
-        calibration_json(&setup, &outcome)
-    } else {
-        calibration_text(&setup, &outcome)
-    })?;
+    args.output.show(
+        || calibration_json(&setup, &outcome),
+        || calibration_text(&setup, &outcome),
+    )?;
     if let Some(file) = &args.apply {
         apply(file, &setup, &outcome)?;
     }

@@ -4,11 +4,11 @@ use std::path::PathBuf;
 
 use clap::Args;
 
+use super::Status;
 use super::args::{Format, OutputArgs, ReportArgs};
 use super::run::{over_reports, tell};
 use super::text::reading::reading_text;
 use super::text::screening::explained_text;
-use super::{Status, print};
 use crate::error::{Error, nearest_name};
 use crate::output::{FlaggedFiles, Formats, OutputSet, reading_json};
 use crate::pipeline::{Reading, Sources};
@@ -78,14 +78,16 @@ pub(super) fn check(args: &CheckArgs) -> Result<Status, Error> {
         set.commit()?;
     }
     let status = tell(sources.warnings.iter().chain(&reading.warnings), &reading);
-    print(&match explain {
-        _ if args.output.json => reading_json(settings, network, &reading),
-        Some((s, _)) => {
-            let id = &network.stations()[s].id; // a station of the network
-            explained_text(id, &reading.explained, &reading)
-        }
-        None => reading_text(settings, network, &reading),
-    })?;
+    args.output.show(
+        || reading_json(settings, network, &reading),
+        || match explain {
+            Some((s, _)) => {
+                let id = &network.stations()[s].id; // a station of the network
+                explained_text(id, &reading.explained, &reading)
+            }
+            None => reading_text(settings, network, &reading),
+        },
+    )?;
     Ok(if reading.failures.len() == reading.files.len() {
         Status::NotDone
     } else {

@@ -47,6 +47,9 @@ pub(super) struct EstimateArgs {
     /// Print no summary and no progress; warnings remain
     #[arg(long, short)]
     quiet: bool,
+    /// Print summary.json in place of the summary
+    #[arg(long, conflicts_with = "quiet")]
+    json: bool,
     #[command(flatten)]
     input: InputArgs,
 }
@@ -91,25 +94,31 @@ pub(super) fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
         csv: !args.summary_only && args.format.contains(&Format::Csv),
         parquet: !args.summary_only && args.format.contains(&Format::Parquet),
     };
-    let run = over_reports(&setup.settings, args.quiet, |order, progress| {
-        let mut set = OutputSet::new(&folder)?;
-        let (encoder, mut series_files) = series(&setup, formats, &mut set)?;
-        let outcome = pipeline::run(
-            &setup,
-            order,
-            |seen| encoder.encode(seen),
-            |encoded| series_files.write(&mut set, encoded),
-            progress,
-        )?;
-        Ok((outcome, set, series_files))
-    });
+    let run = over_reports(
+        &setup.settings,
+        args.quiet || args.json,
+        |order, progress| {
+            let mut set = OutputSet::new(&folder)?;
+            let (encoder, mut series_files) = series(&setup, formats, &mut set)?;
+            let outcome = pipeline::run(
+                &setup,
+                order,
+                |seen| encoder.encode(seen),
+                |encoded| series_files.write(&mut set, encoded),
+                progress,
+            )?;
+            Ok((outcome, set, series_files))
+        },
+    );
     let (outcome, mut set, series_files) = run?;
     series_files.finish(&mut set)?;
     put_tables(&mut set, &setup, &outcome)?;
     let files = set.commit()?;
 
     let status = tell(&outcome.warnings, &outcome.reading);
-    if !args.quiet {
+    if args.json {
+        print(&summary_json(&setup, &outcome))?;
+    } else if !args.quiet {
         print(&run_summary(&setup, &outcome, &files))?;
     }
     Ok(status)

@@ -2,10 +2,10 @@
 
 use clap::Args;
 
+use super::Status;
 use super::args::{InputArgs, OutputArgs};
 use super::run::{over_reports, tell};
 use super::text::events::bulletin;
-use super::{Status, print};
 use crate::error::Error;
 use crate::output::{OutputSet, arrivals_csv, events_csv, events_geojson, events_json, shifts_csv};
 use crate::pipeline;
@@ -34,10 +34,9 @@ pub(super) fn events(args: &EventsArgs) -> Result<Status, Error> {
         set.commit()?;
     }
     let status = tell(&outcome.run.warnings, &outcome.run.reading);
-    print(&if args.output.json {
-        events_json(&setup, &outcome)
-    } else {
-        bulletin(&setup, &outcome)
-    })?;
+    args.output.show(
+        || events_json(&setup, &outcome),
+        || bulletin(&setup, &outcome),
+    )?;
     Ok(status)
 }

@@ -4,7 +4,7 @@ use std::fmt::Write as _;
 use std::path::{Path, PathBuf};
 
 use clap::Args;
-use serde_json::Value;
+use serde_json::{Value, json};
 
 use super::text::{WIDTH, cut, wrapped};
 use crate::align::instrument_covariance;
@@ -157,6 +157,33 @@ impl Expectation {
             wrapped(CAUTION, WIDTH)
         );
         out
+    }
+
+    /// The table as JSON, with what was assumed.
+    pub(super) fn json(&self, setup: &Setup) -> String {
+        let polygons = setup.built.polygons.iter().zip(&self.errors);
+        let polygons = polygons.map(|(polygon, error)| {
+            json!({
+                "polygon": polygon.id,
+                "area_km2": polygon.shape.area / 1e6,
+                "se_instrument": error.instrument,
+                "vorticity_se_sampling": error.sampling[0],
+                "divergence_se_sampling": error.sampling[1],
+                "vorticity_se": error.total[0],
+                "divergence_se": error.total[1],
+            })
+        });
+        let value = json!({
+            "network": setup.settings.name,
+            "assumed": {
+                "sensor_sd": self.sensor_sd,
+                "structure": { "function": self.function, "origin": self.origin },
+            },
+            "polygons": polygons.collect::<Vec<Value>>(),
+            "units": { "errors": "s-1", "sensor_sd": "m s-1", "area_km2": "km2" },
+            "caution": CAUTION,
+        });
+        format!("{value:#}\n")
     }
 
     /// The table as CSV, 1/s.

@@ -2,10 +2,10 @@
 
 use clap::Args;
 
+use super::Status;
 use super::args::{InputArgs, OutputArgs, PictureArgs};
 use super::run::{over_reports, tell};
 use super::text::profile::profile_text;
-use super::{Status, print};
 use crate::error::Error;
 use crate::output::plot::profile_picture;
 use crate::output::{OutputSet, profile_csv, profile_json};
@@ -38,11 +38,10 @@ pub(super) fn profile(args: &ProfileArgs) -> Result<Status, Error> {
         set.commit()?;
     }
     let status = tell(&outcome.warnings, &outcome.reading);
-    print(&if args.output.json {
-        profile_json(&setup, &outcome)
-    } else {
-        profile_text(&setup, &outcome)
-    })?;
+    args.output.show(
+        || profile_json(&setup, &outcome),
+        || profile_text(&setup, &outcome),
+    )?;
     Ok(status)
 }
 

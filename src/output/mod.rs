@@ -11,6 +11,7 @@ mod flagged_parquet;
 mod frames;
 mod geojson;
 mod kinematics;
+mod mesh;
 #[cfg(feature = "parquet")]
 mod parquet;
 pub mod plot;
@@ -39,6 +40,7 @@ pub use file::OutputSet;
 pub use flagged::FlaggedFiles;
 pub use frames::{Cell, Frame, Frames};
 pub use geojson::{mesh_geojson, outline_geometry};
+pub use mesh::mesh_json;
 pub use profile::{assumptions, profile_csv, profile_json, w_of};
 pub use reading::reading_json;
 pub use report::report_html;
