@@ -79,20 +79,34 @@ impl Folder {
     }
 }
 
-/// An hour of the demo is enough.
-const HOUR: [&str; 4] = [
-    "--from",
-    "2031-06-14T12:00:00Z",
-    "--to",
-    "2031-06-14T13:00:00Z",
-];
+/// A copy of the demo in the folder, with the reports of its first hour and its identifiers changed.
+fn short_demo(folder: &Folder, renamed: impl Fn(String) -> String) -> String {
+    let repository = Path::new(env!("CARGO_MANIFEST_DIR"));
+    let read = |name: &str| fs::read_to_string(repository.join(name)).unwrap();
+    fs::write(
+        folder.path("stations.csv"),
+        renamed(read("networks/ostrin/stations.csv")),
+    )
+    .unwrap();
+    let reports = read("examples/ostrin/reports.csv");
+    let early = |line: &&str| *line < "2031-06-14T01" || line.starts_with("time");
+    let reports: Vec<&str> = reports.lines().filter(early).collect();
+    fs::write(folder.path("reports.csv"), renamed(reports.join("\n"))).unwrap();
+    let settings = read("networks/ostrin/network.toml");
+    let settings = settings.replace("../../examples/ostrin/reports.csv", "reports.csv");
+    fs::write(folder.path("network.toml"), renamed(settings)).unwrap();
+    folder.path("network.toml").to_str().unwrap().to_string()
+}
+
+fn as_it_is(text: String) -> String {
+    text
+}
 
 #[test]
 fn estimate_prints_its_summary_as_json() {
     let folder = Folder::new();
-    let (demo, out) = (demo(), folder.name());
+    let (demo, out) = (short_demo(&folder, as_it_is), folder.name());
     let mut args = vec!["estimate", &demo, "--out", out, "--json"];
-    args.extend(HOUR);
     let run = gyremesh(&args);
     assert_eq!(run.status, 0, "{}", run.err);
     assert!(run.out == folder.read("summary.json"));
@@ -132,4 +146,116 @@ fn polygons_prints_json() {
             .unwrap()
             .contains("not warnings")
     );
+}
+
+/// `--out -` gives the bytes of the file, and nothing else on standard output.
+#[test]
+fn standard_output_gets_the_main_table_alone() {
+    let site = Folder::new();
+    let demo = short_demo(&site, as_it_is);
+    let all: [(&[&str], &str); 9] = [
+        (&["estimate"], "polygons.csv"),
+        (&["estimate", "--format", "parquet"], "polygons.parquet"),
+        (&["estimate", "--summary-only"], "polygon_summary.csv"),
+        (&["polygons"], "mesh.csv"),
+        (&["polygons", "--expect"], "expected.csv"),
+        (&["events"], "events.csv"),
+        (&["calibrate"], "maintenance.csv"),
+        (&["check"], "reports_flagged.csv"),
+        (&["check", "--format", "parquet"], "reports_flagged.parquet"),
+    ];
+    for (command, file) in all {
+        let folder = Folder::new();
+        let mut args = vec![command[0], &demo];
+        args.extend(&command[1..]);
+        args.push("--out");
+        let to_folder = gyremesh(&[&args[..], &[folder.name()]].concat());
+        let to_stdout = gyremesh(&[&args[..], &["-"]].concat());
+        assert_eq!(to_stdout.status, to_folder.status, "{}", to_stdout.err);
+        assert!(!to_folder.out.is_empty());
+        assert!(to_stdout.out == folder.read(file), "{args:?}");
+        assert_eq!(to_stdout.err, to_folder.err);
+    }
+}
+
+#[test]
+fn standard_output_holds_one_thing() {
+    let demo = demo();
+    for (command, more) in [
+        ("estimate", "--format=csv,parquet"),
+        ("estimate", "--kinematics"),
+        ("estimate", "--by=hour"),
+        ("estimate", "--json"),
+        ("events", "--json"),
+        ("polygons", "--json"),
+        ("calibrate", "--plot=svg"),
+        ("check", "--format=csv,parquet"),
+    ] {
+        let run = gyremesh(&[command, &demo, "--out", "-", more]);
+        assert_eq!(run.status, 2, "{command} {more}");
+        assert!(run.out.is_empty());
+        let option = match more.strip_prefix("--format") {
+            Some(_) => "all formats but one",
+            None => more.split('=').next().unwrap(),
+        };
+        let words = format!("alone to standard output: leave out {option}");
+        assert!(run.err.contains(&words), "{}", run.err);
+    }
+}
+
+/// A reader that has seen enough is no error.
+#[test]
+fn a_closed_pipe_under_a_table_ends_quietly() {
+    let site = Folder::new();
+    let demo = short_demo(&site, as_it_is);
+    let args = ["estimate", &demo, "--out", "-"];
+    let mut child = program()
+        .args(args)
+        .stdout(Stdio::piped())
+        .stderr(Stdio::piped())
+        .spawn()
+        .unwrap();
+    drop(child.stdout.take());
+    let output = child.wait_with_output().unwrap();
+    assert_eq!(output.status.code(), Some(0));
+    assert!(output.stderr.is_empty());
+}
+
+/// Reports out of order make the run begin anew; standard output sees it once.
+#[test]
+fn a_run_that_begins_anew_writes_its_table_once() {
+    let folder = Folder::new();
+    let stations = "id,latitude,longitude\nA,46.0,-30.0\nB,46.0,-29.7\nC,46.2,-29.85\n";
+    fs::write(folder.path("stations.csv"), stations).unwrap();
+    let mut reports = String::from("time,station,direction,speed,remark\n");
+    // So long that the file is not read in one go.
+    let remark = "remark ".repeat(15_000);
+    // Odd days forward, then even days back.
+    for day in (1..29).step_by(2).chain((2..29).step_by(2).rev()) {
+        for station in ["A", "B", "C"] {
+            reports += &format!("2031-06-{day:02}T00:00:00Z,{station},270,{day},{remark}\n");
+        }
+    }
+    fs::write(folder.path("reports.csv"), reports).unwrap();
+    let settings = "name = \"test\"\n[stations]\nfile = \"stations.csv\"\n[[reports]]\nfiles = [\"reports.csv\"]\n\
+                    [analysis]\ninterval = \"10 min\"\n";
+    fs::write(folder.path("network.toml"), settings).unwrap();
+    let network = folder.path("network.toml");
+    let run = gyremesh(&[
+        "estimate",
+        network.to_str().unwrap(),
+        "--out",
+        "-",
+        "--threads",
+        "1",
+    ]);
+    assert_eq!(run.status, 0, "{}", run.err);
+    assert!(run.err.contains("sorted first"), "{}", run.err);
+    let headers = run.text().lines().filter(|l| l.starts_with("time,"));
+    assert_eq!(headers.count(), 1);
+    let mut times: Vec<&str> = run.text().lines().skip(1).map(|l| &l[..20]).collect();
+    let rows = times.len();
+    times.dedup();
+    assert_eq!((rows, times.len()), (28, 28));
+    assert!(times.is_sorted());
 }

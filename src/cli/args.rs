@@ -201,6 +201,11 @@ pub(super) enum PictureFormat {
 }
 
 impl PictureArgs {
+    /// The option, for those that it does not go with.
+    pub fn asked(&self) -> (&'static str, bool) {
+        ("--plot", !self.plot.is_empty())
+    }
+
     /// Writes a picture in the formats asked for.
     pub fn put(&self, set: &mut OutputSet, name: &str, svg: &str) -> Result<(), Error> {
         if self.plot.contains(&PictureFormat::Svg) {
@@ -219,7 +224,7 @@ impl PictureArgs {
 /// Where the results of a command that prints go.
 #[derive(Debug, clap::Args)]
 pub(super) struct OutputArgs {
-    /// Write the files named below into this folder too
+    /// Write the files named below into this folder too; `-`: only the first of them, to standard output
     #[arg(long, value_name = "DIR")]
     pub out: Option<PathBuf>,
     /// Print JSON
@@ -228,13 +233,51 @@ pub(super) struct OutputArgs {
 }
 
 impl OutputArgs {
-    /// Prints the results for programs or for people.
+    /// The files of `--out`, if it is given; of them `main` alone for standard output, if no option of `more` is there.
+    pub fn files(&self, main: &str, more: &[(&str, bool)]) -> Result<Option<OutputSet>, Error> {
+        let Some(out) = &self.out else {
+            return Ok(None);
+        };
+        let more = [&[("--json", self.json)], more].concat();
+        output_set(out, main, &more).map(Some)
+    }
+
+    /// Prints the results for programs or for people, unless standard output has a file.
     pub fn show(
         &self,
         json: impl FnOnce() -> String,
         text: impl FnOnce() -> String,
     ) -> Result<(), Error> {
+        if self.out.as_deref().is_some_and(is_stdout) {
+            return Ok(());
+        }
         print(&if self.json { json() } else { text() })
+    }
+}
+
+/// True for `-`.
+pub(super) fn is_stdout(out: &Path) -> bool {
+    out == Path::new("-")
+}
+
+/// The files for a folder; or `main` alone for standard output, if none of the options `more` asks for something else.
+pub(super) fn output_set(
+    out: &Path,
+    main: &str,
+    more: &[(&str, bool)],
+) -> Result<OutputSet, Error> {
+    if !is_stdout(out) {
+        return OutputSet::new(out);
+    }
+    let asked = more.iter().filter(|(_, asked)| *asked);
+    let asked: Vec<&str> = asked.map(|(option, _)| *option).collect();
+    if asked.is_empty() {
+        Ok(OutputSet::for_stdout(main))
+    } else {
+        Err(Error::Options(format!(
+            "`--out -` writes {main} alone to standard output: leave out {}, or name a folder",
+            asked.join(" and ")
+        )))
     }
 }
 
@@ -245,4 +288,19 @@ pub(super) enum Format {
     Csv,
     /// The same columns, typed, null for missing
     Parquet,
+}
+
+/// What does not go with a single file.
+pub(super) fn several(formats: &[Format]) -> (&'static str, bool) {
+    ("all formats but one", formats.len() > 1)
+}
+
+impl Format {
+    /// Ending of the names of its files.
+    pub fn ending(self) -> &'static str {
+        match self {
+            Self::Csv => "csv",
+            Self::Parquet => "parquet",
+        }
+    }
 }

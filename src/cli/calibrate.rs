@@ -32,11 +32,13 @@ pub(super) struct CalibrateArgs {
 
 pub(super) fn calibrate(args: &CalibrateArgs) -> Result<Status, Error> {
     let setup = args.input.setup()?;
+    let files = args
+        .output
+        .files("maintenance.csv", &[args.pictures.asked()])?;
     let outcome = over_reports(&setup.settings, args.output.json, |order, progress| {
         pipeline::calibrate(&setup, order, progress)
     })?;
-    if let Some(folder) = &args.output.out {
-        let mut set = OutputSet::new(folder)?;
+    if let Some(mut set) = files {
         let maintenance = maintenance_csv(&setup, &outcome);
         set.put("maintenance.csv", maintenance.as_bytes())?;
         let calibration = calibration_csv(&setup, &outcome);

@@ -5,12 +5,12 @@ use std::path::PathBuf;
 use clap::Args;
 
 use super::Status;
-use super::args::{Format, OutputArgs, ReportArgs};
+use super::args::{Format, OutputArgs, ReportArgs, several};
 use super::run::{over_reports, tell};
 use super::text::reading::reading_text;
 use super::text::screening::explained_text;
 use crate::error::{Error, nearest_name};
-use crate::output::{FlaggedFiles, Formats, OutputSet, reading_json};
+use crate::output::{FlaggedFiles, Formats, reading_json};
 use crate::pipeline::{Reading, Sources};
 use crate::settings::Overrides;
 use crate::station::Network;
@@ -55,9 +55,12 @@ pub(super) fn check(args: &CheckArgs) -> Result<Status, Error> {
         csv: args.format.contains(&Format::Csv),
         parquet: args.format.contains(&Format::Parquet),
     };
+    let ending = args.format.first().map_or("csv", |f| f.ending());
+    let main = format!("reports_flagged.{ending}");
+    let more = [several(&args.format), ("--explain", explain.is_some())];
     // The rows come in no steps that could be shown.
     let (reading, set) = over_reports(settings, true, |order, _| {
-        let mut set = args.output.out.as_deref().map(OutputSet::new).transpose()?;
+        let mut set = args.output.files(&main, &more)?;
         let mut files = None;
         let reading = Reading::with(settings, network, order, explain, |window, neighbours| {
             let Some(set) = &mut set else {

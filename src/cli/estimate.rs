@@ -4,7 +4,7 @@ use std::path::{Path, PathBuf};
 
 use clap::{Args, ValueEnum};
 
-use super::args::{AnalysisArgs, Format, InputArgs};
+use super::args::{AnalysisArgs, Format, InputArgs, is_stdout, output_set, several};
 use super::run::{over_reports, tell};
 use super::text::estimate::run_summary;
 use super::{Status, print};
@@ -19,7 +19,7 @@ use crate::settings::{MeansBy, MeansSettings, Overrides};
 /// Options of `estimate`.
 #[derive(Debug, Args)]
 pub(super) struct EstimateArgs {
-    /// Folder of the results [default: out/NAME, NAME being the folder of the settings file]
+    /// Folder of the results; `-`: only the series, with --summary-only polygon_summary.csv, to standard output [default: out/NAME, NAME being the folder of the settings file]
     #[arg(long, value_name = "DIR")]
     out: Option<PathBuf>,
     #[command(flatten)]
@@ -79,6 +79,22 @@ impl EstimateArgs {
             ..self.analysis.over(self.input.overrides())
         }
     }
+
+    fn files(&self, folder: &Path) -> Result<OutputSet, Error> {
+        let ending = self.format.first().map_or("csv", |f| f.ending());
+        let main = if self.summary_only {
+            "polygon_summary.csv".into()
+        } else {
+            format!("polygons.{ending}")
+        };
+        let more = [
+            several(&self.format),
+            ("--kinematics", self.kinematics),
+            ("--by", self.by.is_some()),
+            ("--json", self.json),
+        ];
+        output_set(folder, &main, &more)
+    }
 }
 
 pub(super) fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
@@ -98,7 +114,7 @@ pub(super) fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
         &setup.settings,
         args.quiet || args.json,
         |order, progress| {
-            let mut set = OutputSet::new(&folder)?;
+            let mut set = args.files(&folder)?;
             let (encoder, mut series_files) = series(&setup, formats, &mut set)?;
             let outcome = pipeline::run(
                 &setup,
@@ -116,7 +132,9 @@ pub(super) fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
     let files = set.commit()?;
 
     let status = tell(&outcome.warnings, &outcome.reading);
-    if args.json {
+    if is_stdout(&folder) {
+        // It has the series.
+    } else if args.json {
         print(&summary_json(&setup, &outcome))?;
     } else if !args.quiet {
         print(&run_summary(&setup, &outcome, &files))?;

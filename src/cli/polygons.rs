@@ -9,7 +9,7 @@ use super::expect::{ExpectArgs, Expectation};
 use super::text::polygons::polygon_table;
 use super::{Status, say};
 use crate::error::Error;
-use crate::output::{OutputSet, mesh_csv, mesh_geojson, mesh_json};
+use crate::output::{mesh_csv, mesh_geojson, mesh_json};
 use crate::pipeline::Setup;
 
 /// Options of `polygons`.
@@ -35,8 +35,12 @@ pub(super) fn polygons(args: &PolygonsArgs) -> Result<Status, Error> {
     } else {
         None
     };
-    if let Some(folder) = &args.output.out {
-        let mut set = OutputSet::new(folder)?;
+    let main = if args.expect.expect {
+        "expected.csv"
+    } else {
+        "mesh.csv"
+    };
+    if let Some(mut set) = args.output.files(main, &[])? {
         set.put("mesh.geojson", mesh_geojson(&setup, &[]).as_bytes())?;
         set.put("mesh.csv", mesh_csv(&setup).as_bytes())?;
         if let Some(expectation) = &expectation {
