@@ -153,9 +153,10 @@ fn polygons_prints_json() {
 fn standard_output_gets_the_main_table_alone() {
     let site = Folder::new();
     let demo = short_demo(&site, as_it_is);
-    let all: [(&[&str], &str); 9] = [
+    let all: [(&[&str], &str); 10] = [
         (&["estimate"], "polygons.csv"),
         (&["estimate", "--format", "parquet"], "polygons.parquet"),
+        (&["estimate", "--format", "netcdf"], "polygons.nc"),
         (&["estimate", "--summary-only"], "polygon_summary.csv"),
         (&["polygons"], "mesh.csv"),
         (&["polygons", "--expect"], "expected.csv"),
@@ -258,4 +259,60 @@ fn a_run_that_begins_anew_writes_its_table_once() {
     times.dedup();
     assert_eq!((rows, times.len()), (28, 28));
     assert!(times.is_sorted());
+}
+
+#[test]
+fn completions_are_scripts() {
+    for shell in ["bash", "zsh", "fish", "elvish", "powershell"] {
+        let run = gyremesh(&["completions", shell]);
+        assert_eq!((run.status, run.err.as_str()), (0, ""), "{shell}");
+        for word in ["estimate", "smallest-angle", "summary-only"] {
+            assert!(run.text().contains(word), "{shell}: {word}");
+        }
+    }
+    assert_eq!(gyremesh(&["completions", "cmd"]).status, 2);
+}
+
+/// The shell takes the script, and completes with it.
+#[cfg(unix)]
+#[test]
+fn bash_completes_commands_and_options() {
+    let folder = Folder::new();
+    let script = gyremesh(&["completions", "bash"]);
+    fs::write(folder.path("gyremesh.bash"), &script.out).unwrap();
+    let complete = "source gyremesh.bash; COMP_WORDS=(gyremesh est); COMP_CWORD=1; _gyremesh gyremesh est gyremesh; \
+                    echo \"${COMPREPLY[@]}\"; COMP_WORDS=(gyremesh estimate --summ); COMP_CWORD=2; \
+                    _gyremesh gyremesh --summ estimate; echo \"${COMPREPLY[@]}\"";
+    let bash =
+        |args: &[&str]| finished(Command::new("bash").args(args).current_dir(folder.0.path()));
+    let parsed = bash(&["-n", "gyremesh.bash"]);
+    assert_eq!((parsed.status, parsed.err.as_str()), (0, ""));
+    let run = bash(&["-c", complete]);
+    assert_eq!(run.text(), "estimate\n--summary-only\n", "{}", run.err);
+}
+
+#[test]
+fn the_manual_has_a_page_for_each_command() {
+    let folder = Folder::new();
+    let run = gyremesh(&["manual", "--out", folder.name()]);
+    assert_eq!((run.status, run.err.as_str()), (0, ""));
+    let program = folder.read("gyremesh.1");
+    assert!(gyremesh(&["manual"]).out == program);
+    let help = gyremesh(&["-h"]);
+    let commands = help.text().split("Commands:\n").nth(1).unwrap();
+    let commands = commands.split("\n\n").next().unwrap().lines();
+    // Names stand at two columns, the rest of their text further in.
+    let names = commands
+        .filter(|l| !l.starts_with("    "))
+        .map(|l| l.split_whitespace().next().unwrap());
+    let names: Vec<&str> = names.filter(|name| *name != "help").collect();
+    assert!(names.len() >= 9, "{names:?}");
+    for name in names {
+        let page = String::from_utf8(folder.read(&format!("gyremesh-{name}.1"))).unwrap();
+        assert!(
+            page.contains(&format!(".TH gyremesh\\-{name} 1"))
+                || page.contains(&format!(".TH gyremesh-{name} 1")),
+            "{page}"
+        );
+    }
 }

@@ -8,11 +8,13 @@ use clap::{Parser, Subcommand, ValueEnum};
 
 use super::calibrate::CalibrateArgs;
 use super::check::CheckArgs;
+use super::completions::CompletionsArgs;
 use super::estimate::EstimateArgs;
 use super::events::EventsArgs;
+use super::manual::ManualArgs;
 use super::polygons::PolygonsArgs;
 use super::profile::ProfileArgs;
-use super::report::ReportArgs as PageArgs;
+use super::report::PageArgs;
 use super::{help, print};
 use crate::error::Error;
 use crate::output::OutputSet;
@@ -24,7 +26,7 @@ use crate::units;
 
 /// Where the air converges and spins up, by how much, and whether to believe it.
 #[derive(Debug, Parser)]
-#[command(version, about, long_about = help::LONG_ABOUT, after_help = help::AFTER_HELP, max_term_width = 100)]
+#[command(version, about, long_about = help::LONG_ABOUT, after_help = help::laid_out(help::AFTER_HELP), max_term_width = 80)]
 pub(super) struct Args {
     /// What to do.
     #[command(subcommand)]
@@ -35,26 +37,32 @@ pub(super) struct Args {
 #[derive(Debug, Subcommand)]
 pub(super) enum Command {
     /// Read all reports and show what came of each file and station; estimates nothing
-    #[command(after_help = help::CHECK)]
+    #[command(after_help = help::laid_out(help::CHECK))]
     Check(CheckArgs),
     /// List the polygons of a network, their shape and what is left out; needs no reports
-    #[command(after_help = help::POLYGONS)]
+    #[command(after_help = help::laid_out(help::POLYGONS))]
     Polygons(PolygonsArgs),
     /// Estimate area-mean vorticity and divergence from the reports (the main job)
-    #[command(after_help = help::ESTIMATE)]
+    #[command(after_help = help::laid_out(help::ESTIMATE))]
     Estimate(EstimateArgs),
     /// Find vanes that are turned, speeds mis-scaled, clocks off and data mixed up, from the network itself
-    #[command(after_help = help::CALIBRATE)]
+    #[command(after_help = help::laid_out(help::CALIBRATE))]
     Calibrate(CalibrateArgs),
     /// Tell what happened: areas that converge or spin up, wind-shift lines, and when they reach your places
-    #[command(after_help = help::EVENTS)]
+    #[command(after_help = help::laid_out(help::EVENTS))]
     Events(EventsArgs),
     /// Profiles of vorticity, divergence and vertical motion from reports on levels: soundings, profilers, masts, lidars
-    #[command(after_help = help::PROFILE)]
+    #[command(after_help = help::laid_out(help::PROFILE))]
     Profile(ProfileArgs),
     /// Make one page for a browser, which works offline: map that moves in time, series, events, stations, settings
-    #[command(after_help = help::REPORT)]
+    #[command(after_help = help::laid_out(help::REPORT))]
     Report(PageArgs),
+    /// Print what makes a shell complete commands and options
+    #[command(after_help = help::laid_out(help::COMPLETIONS))]
+    Completions(CompletionsArgs),
+    /// Print or write the manual, for `man`
+    #[command(after_help = help::laid_out(help::MANUAL))]
+    Manual(ManualArgs),
 }
 
 /// What every command that estimates takes: a network, its reports, and which of them are used.
@@ -291,7 +299,7 @@ pub(super) enum Format {
 }
 
 /// What does not go with a single file.
-pub(super) fn several(formats: &[Format]) -> (&'static str, bool) {
+pub(super) fn several<T>(formats: &[T]) -> (&'static str, bool) {
     ("all formats but one", formats.len() > 1)
 }
 

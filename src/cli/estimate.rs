@@ -4,17 +4,18 @@ use std::path::{Path, PathBuf};
 
 use clap::{Args, ValueEnum};
 
-use super::args::{AnalysisArgs, Format, InputArgs, is_stdout, output_set, several};
+use super::args::{AnalysisArgs, InputArgs, is_stdout, output_set, several};
 use super::run::{over_reports, tell};
 use super::text::estimate::run_summary;
-use super::{Status, print};
+use super::{Status, print, say};
 use crate::error::Error;
 use crate::output::{
-    Formats, OutputSet, means_csv, mesh_geojson, series, stations_csv, structure_csv, summary_csv,
-    summary_json,
+    OutputSet, SeriesChoice, SeriesFormat, means_csv, mesh_geojson, series, stations_csv,
+    structure_csv, summary_csv, summary_json,
 };
 use crate::pipeline::{self, Outcome, Setup};
 use crate::settings::{MeansBy, MeansSettings, Overrides};
+use crate::time::Time;
 
 /// Options of `estimate`.
 #[derive(Debug, Args)]
@@ -32,6 +33,9 @@ pub(super) struct EstimateArgs {
         default_value = "csv"
     )]
     format: Vec<Format>,
+    /// Times of polygons.geojson, RFC 3339; several are allowed [default: the last]
+    #[arg(long, value_name = "TIME", value_parser = Time::parse_rfc3339)]
+    at: Vec<Time>,
     /// Write no series, only the summary of each polygon
     #[arg(long)]
     summary_only: bool,
@@ -61,6 +65,46 @@ fn means_by(text: &str) -> Result<MeansBy, String> {
         .ok_or_else(|| format!("`{text}` is none of hour, day, month, period"))
 }
 
+/// A format of the series.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, ValueEnum)]
+enum Format {
+    /// Text
+    Csv,
+    /// The same columns, typed, null for missing; with mesh.parquet (GeoParquet)
+    Parquet,
+    /// The columns of Parquet as an Arrow IPC file
+    Arrow,
+    /// NetCDF-4 (CF, UGRID): polygons as faces, stations as nodes, with the winds
+    Netcdf,
+    /// The polygons with their values at the times of --at
+    Geojson,
+}
+
+impl Format {
+    /// The series in this format.
+    fn file(self) -> &'static str {
+        match self {
+            Self::Csv => "polygons.csv",
+            Self::Parquet => "polygons.parquet",
+            Self::Arrow => "polygons.arrow",
+            Self::Netcdf => "polygons.nc",
+            Self::Geojson => "polygons.geojson",
+        }
+    }
+}
+
+impl From<Format> for SeriesFormat {
+    fn from(format: Format) -> Self {
+        match format {
+            Format::Csv => Self::Csv,
+            Format::Parquet => Self::Parquet,
+            Format::Arrow => Self::Arrow,
+            Format::Netcdf => Self::Netcdf,
+            Format::Geojson => Self::Geojson,
+        }
+    }
+}
+
 /// Parts of the errors.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, ValueEnum)]
 enum Parts {
@@ -81,19 +125,15 @@ impl EstimateArgs {
     }
 
     fn files(&self, folder: &Path) -> Result<OutputSet, Error> {
-        let ending = self.format.first().map_or("csv", |f| f.ending());
-        let main = if self.summary_only {
-            "polygon_summary.csv".into()
-        } else {
-            format!("polygons.{ending}")
-        };
+        let series = self.format.first().filter(|_| !self.summary_only);
+        let main = series.map_or("polygon_summary.csv", |format| format.file());
         let more = [
             several(&self.format),
             ("--kinematics", self.kinematics),
             ("--by", self.by.is_some()),
             ("--json", self.json),
         ];
-        output_set(folder, &main, &more)
+        output_set(folder, main, &more)
     }
 }
 
@@ -106,16 +146,17 @@ pub(super) fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
         .out
         .clone()
         .unwrap_or_else(|| default_folder(&args.input.network));
-    let formats = Formats {
-        csv: !args.summary_only && args.format.contains(&Format::Csv),
-        parquet: !args.summary_only && args.format.contains(&Format::Parquet),
+    let wanted = args.format.iter().filter(|_| !args.summary_only);
+    let choice = SeriesChoice {
+        formats: wanted.map(|&format| format.into()).collect(),
+        at: args.at.clone(),
     };
     let run = over_reports(
         &setup.settings,
         args.quiet || args.json,
         |order, progress| {
             let mut set = args.files(&folder)?;
-            let (encoder, mut series_files) = series(&setup, formats, &mut set)?;
+            let (encoder, mut series_files) = series(&setup, &choice, &mut set)?;
             let outcome = pipeline::run(
                 &setup,
                 order,
@@ -127,10 +168,14 @@ pub(super) fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
         },
     );
     let (outcome, mut set, series_files) = run?;
-    series_files.finish(&mut set)?;
+    let unmet = series_files.finish(&setup, &outcome.extra, &mut set)?;
     put_tables(&mut set, &setup, &outcome)?;
     let files = set.commit()?;
 
+    for time in unmet {
+        let message = format!("polygons.geojson: {time} is no analysis time with reports");
+        say("warning", &message);
+    }
     let status = tell(&outcome.warnings, &outcome.reading);
     if is_stdout(&folder) {
         // It has the series.

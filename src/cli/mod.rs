@@ -3,10 +3,12 @@
 mod args;
 mod calibrate;
 mod check;
+mod completions;
 mod estimate;
 mod events;
 mod expect;
 mod help;
+mod manual;
 mod polygons;
 mod profile;
 mod report;
@@ -57,6 +59,8 @@ pub fn main() -> Status {
         Command::Events(args) => events::events(args),
         Command::Profile(args) => profile::profile(args),
         Command::Report(args) => report::report(args),
+        Command::Completions(args) => completions::completions(args),
+        Command::Manual(args) => manual::manual(args),
     };
     match result {
         Ok(status) => status,

@@ -14,7 +14,7 @@ use crate::pipeline::{self, CalibrationOutcome, EventsOutcome, Setup};
 
 /// Options of `report`.
 #[derive(Debug, Args)]
-pub(super) struct ReportArgs {
+pub(super) struct PageArgs {
     /// Folder of report.html; `-`: the page to standard output [default: out/NAME, NAME being the folder of the settings file]
     #[arg(long, value_name = "DIR")]
     out: Option<PathBuf>,
@@ -24,7 +24,7 @@ pub(super) struct ReportArgs {
     input: InputArgs,
 }
 
-pub(super) fn report(args: &ReportArgs) -> Result<Status, Error> {
+pub(super) fn report(args: &PageArgs) -> Result<Status, Error> {
     let setup = args
         .input
         .setup_with(&args.analysis.over(args.input.overrides()))?;

@@ -17,9 +17,9 @@ use crate::error::Error;
 use crate::pipeline::{CalibrationOutcome, EventsOutcome, Setup};
 
 /// Size of the map, pixels of its own.
-const MAP: [f64; 4] = [0.0, 0.0, 900.0, 720.0];
+const MAP: [f64; 4] = [0.0, 0.0, 680.0, 580.0];
 /// Least height of the map.
-const LEAST: f64 = 420.0;
+const LEAST: f64 = 320.0;
 /// Areas in the table of events.
 const AREAS: usize = 20;
 
