@@ -7,6 +7,7 @@ use std::process::{Command, Stdio};
 
 use serde_json::Value;
 use tempfile::TempDir;
+use unicode_width::UnicodeWidthStr;
 
 struct Run {
     status: i32,
@@ -79,22 +80,20 @@ impl Folder {
     }
 }
 
-/// A copy of the demo in the folder, with the reports of its first hour and its identifiers changed.
-fn short_demo(folder: &Folder, renamed: impl Fn(String) -> String) -> String {
+/// A copy of the demo in the folder, with its reports before a time of the day, all of it changed.
+fn demo_until(folder: &Folder, end: &str, changed: impl Fn(String) -> String) -> String {
     let repository = Path::new(env!("CARGO_MANIFEST_DIR"));
     let read = |name: &str| fs::read_to_string(repository.join(name)).unwrap();
-    fs::write(
-        folder.path("stations.csv"),
-        renamed(read("networks/ostrin/stations.csv")),
-    )
-    .unwrap();
+    let write = |name: &str, text: String| fs::write(folder.path(name), changed(text)).unwrap();
+    write("stations.csv", read("networks/ostrin/stations.csv"));
     let reports = read("examples/ostrin/reports.csv");
-    let early = |line: &&str| *line < "2031-06-14T01" || line.starts_with("time");
+    let end = format!("2031-06-14T{end}");
+    let early = |line: &&str| **line < *end || line.starts_with("time");
     let reports: Vec<&str> = reports.lines().filter(early).collect();
-    fs::write(folder.path("reports.csv"), renamed(reports.join("\n"))).unwrap();
+    write("reports.csv", reports.join("\n"));
     let settings = read("networks/ostrin/network.toml");
     let settings = settings.replace("../../examples/ostrin/reports.csv", "reports.csv");
-    fs::write(folder.path("network.toml"), renamed(settings)).unwrap();
+    write("network.toml", settings);
     folder.path("network.toml").to_str().unwrap().to_string()
 }
 
@@ -105,7 +104,7 @@ fn as_it_is(text: String) -> String {
 #[test]
 fn estimate_prints_its_summary_as_json() {
     let folder = Folder::new();
-    let (demo, out) = (short_demo(&folder, as_it_is), folder.name());
+    let (demo, out) = (demo_until(&folder, "01", as_it_is), folder.name());
     let mut args = vec!["estimate", &demo, "--out", out, "--json"];
     let run = gyremesh(&args);
     assert_eq!(run.status, 0, "{}", run.err);
@@ -152,7 +151,7 @@ fn polygons_prints_json() {
 #[test]
 fn standard_output_gets_the_main_table_alone() {
     let site = Folder::new();
-    let demo = short_demo(&site, as_it_is);
+    let demo = demo_until(&site, "01", as_it_is);
     let all: [(&[&str], &str); 10] = [
         (&["estimate"], "polygons.csv"),
         (&["estimate", "--format", "parquet"], "polygons.parquet"),
@@ -208,7 +207,7 @@ fn standard_output_holds_one_thing() {
 #[test]
 fn a_closed_pipe_under_a_table_ends_quietly() {
     let site = Folder::new();
-    let demo = short_demo(&site, as_it_is);
+    let demo = demo_until(&site, "01", as_it_is);
     let args = ["estimate", &demo, "--out", "-"];
     let mut child = program()
         .args(args)
@@ -315,4 +314,217 @@ fn the_manual_has_a_page_for_each_command() {
             "{page}"
         );
     }
+}
+
+/// Identifiers and names longer than their columns, of signs that take none, one and two.
+fn with_long_names(text: String) -> String {
+    let mut text = text.replace("OS", "Zu\u{308}rich-mesonet-大帽山自動氣象站-OS");
+    for name in [
+        "Ostrin Lake mesonet",
+        "Hollin Ridge wind farm",
+        "whole network",
+    ] {
+        text = text.replace(
+            name,
+            &format!("{name} 香港天文台 {}", "very long ".repeat(12)),
+        );
+    }
+    text
+}
+
+/// Runs a command and looks at what it prints: no line beyond 80 columns, no escape codes.
+fn fits_80_columns(args: &[&str]) -> String {
+    let run = gyremesh(args);
+    assert!(
+        run.status < 2 && run.text().len() > 40,
+        "{args:?}\n{}",
+        run.err
+    );
+    for line in run.text().lines() {
+        assert!(
+            line.width() <= 80,
+            "{args:?}: {} columns\n{line}",
+            line.width()
+        );
+        assert!(!line.contains('\u{1b}'), "{args:?}: {line:?}");
+    }
+    run.text().to_string()
+}
+
+#[test]
+fn help_fits_80_columns() {
+    let all = fits_80_columns(&["-h"]);
+    fits_80_columns(&["--help"]);
+    let names = all.split("Commands:\n").nth(1).unwrap().lines();
+    let names = names.take_while(|line| !line.is_empty());
+    // Names stand at two columns, the rest of their text further in.
+    let names = names.filter(|line| !line.starts_with("   "));
+    let names: Vec<&str> = names
+        .map(|line| line.split_whitespace().next().unwrap())
+        .collect();
+    assert!(names.len() >= 10, "{names:?}");
+    for name in names.into_iter().filter(|name| *name != "help") {
+        fits_80_columns(&[name, "-h"]);
+        fits_80_columns(&[name, "--help"]);
+    }
+}
+
+#[test]
+fn tables_fit_80_columns() {
+    let plain = Folder::new();
+    let site = Folder::new();
+    let short = Folder::new();
+    let plain = demo_until(&plain, "01", as_it_is);
+    let short = demo_until(&short, "04", with_long_names);
+    let long = demo_until(&site, "12", with_long_names);
+    let station = with_long_names("OS36".into());
+    for network in [&plain, &long] {
+        fits_80_columns(&["polygons", network]);
+        fits_80_columns(&["polygons", network, "--expect"]);
+    }
+    fits_80_columns(&["check", &plain]);
+    fits_80_columns(&["calibrate", &plain]);
+    let text = fits_80_columns(&["check", &short]);
+    // Identifiers can be told apart.
+    assert!(
+        text.contains("OS36 ") && text.contains("Zu\u{308}rich"),
+        "{text}"
+    );
+    let at = ["--explain", &station, "--at", "2031-06-14T03:00:00Z"];
+    fits_80_columns(&[&["check", &short][..], &at].concat());
+    let text = fits_80_columns(&["calibrate", &long]);
+    assert!(text.contains("evidence"), "{text}");
+}
+
+#[test]
+fn bulletins_and_summaries_fit_80_columns() {
+    let site = Folder::new();
+    let long = demo_until(&site, "15", with_long_names);
+    let text = fits_80_columns(&["events", &long]);
+    assert!(text.contains("reaches"), "{text}");
+    let out = site.path("out");
+    let long = demo_until(&site, "12", with_long_names);
+    let text = fits_80_columns(&["estimate", &long, "--out", out.to_str().unwrap()]);
+    assert!(
+        text.contains("Odd means") && text.contains("Reported least"),
+        "{text}"
+    );
+}
+
+#[test]
+fn profiles_fit_80_columns() {
+    let folder = Folder::new();
+    let stations = "id,latitude,longitude\nOS1,46.0,-30.0\nOS2,46.0,-29.7\nOS3,46.2,-29.85\n";
+    let mut reports = String::from("time,station,direction,speed,level\n");
+    for (station, speed) in [("OS1", 5), ("OS2", 7), ("OS3", 9)] {
+        for level in ["850", "700", "500"] {
+            // One has no wind at the top.
+            if (station, level) != ("OS3", "500") {
+                reports += &format!("2031-06-14T00:00:00Z,{station},270,{speed},{level}\n");
+            }
+        }
+    }
+    let settings = "name = \"Ostrin Lake mesonet\"\n[stations]\nfile = \"stations.csv\"\n[[reports]]\n\
+                    files = [\"reports.csv\"]\nlevel_unit = \"hPa\"\n\
+                    columns = { time = \"time\", station = \"station\", direction = \"direction\", \
+                    speed = \"speed\", level = \"level\" }\n[analysis]\ninterval = \"1 h\"\n\
+                    [profile]\nlevels = [\"850 hPa\", \"700 hPa\", \"500 hPa\"]\n";
+    for (name, text) in [
+        ("stations.csv", stations),
+        ("reports.csv", &reports),
+        ("network.toml", settings),
+    ] {
+        fs::write(folder.path(name), with_long_names(text.into())).unwrap();
+    }
+    let network = folder.path("network.toml");
+    let text = fits_80_columns(&["profile", network.to_str().unwrap()]);
+    assert!(text.contains("850 hPa"), "{text}");
+    let network = network.to_str().unwrap();
+    let to_folder = gyremesh(&["profile", network, "--out", folder.name()]);
+    assert_eq!(to_folder.status, 0);
+    assert!(gyremesh(&["profile", network, "--out", "-"]).out == folder.read("profile.csv"));
+}
+
+/// Colours for those who ask for them (<https://no-color.org>, <https://bixense.com/clicolors>), not in a pipe.
+#[test]
+fn colours_are_asked_for() {
+    let site = Folder::new();
+    let demo = demo_until(&site, "01", as_it_is);
+    let args = [
+        "check",
+        &demo,
+        "--explain",
+        "OS01",
+        "--at",
+        "2031-06-14T00:30:00Z",
+    ];
+    let plain = gyremesh(&args);
+    let forced = finished(program().env("CLICOLOR_FORCE", "1").args(args));
+    let none = finished(
+        program()
+            .env("CLICOLOR_FORCE", "1")
+            .env("NO_COLOR", "1")
+            .args(args),
+    );
+    assert!(plain.out == none.out);
+    // Nothing is suspect here, so nothing is coloured.
+    assert!(forced.out == plain.out);
+    let table = ["polygons", &demo];
+    let forced = finished(program().env("CLICOLOR_FORCE", "1").args(table));
+    assert!(
+        forced
+            .text()
+            .starts_with("\u{1b}[1mOstrin Lake mesonet\u{1b}[0m\n")
+    );
+    let stripped = forced
+        .text()
+        .replace("\u{1b}[1m", "")
+        .replace("\u{1b}[0m", "");
+    assert_eq!(stripped, gyremesh(&table).text());
+    let json = ["polygons", &demo, "--json"];
+    let forced = finished(program().env("CLICOLOR_FORCE", "1").args(json));
+    assert!(forced.out == gyremesh(&json).out);
+
+    let wrong = ["polygons", "nowhere.toml"];
+    let run = gyremesh(&wrong);
+    assert!(
+        run.err.starts_with("error: cannot read nowhere.toml"),
+        "{}",
+        run.err
+    );
+    let run = finished(program().env("CLICOLOR_FORCE", "1").args(wrong));
+    assert!(
+        run.err
+            .starts_with("\u{1b}[1m\u{1b}[31merror:\u{1b}[0m cannot"),
+        "{:?}",
+        run.err
+    );
+}
+
+/// What failed is red.
+#[test]
+fn a_failed_test_is_coloured() {
+    let site = Folder::new();
+    let demo = demo_until(&site, "01", |text| {
+        text.replace("T00:30:00Z,OS01,", "T00:30:00Z,OS01,10,120.0,,")
+    });
+    let args = [
+        "check",
+        &demo,
+        "--explain",
+        "OS01",
+        "--at",
+        "2031-06-14T00:30:00Z",
+    ];
+    let run = finished(program().env("CLICOLOR_FORCE", "1").args(args));
+    assert!(
+        run.text().contains("\u{1b}[31mflag 4, fail\u{1b}[0m"),
+        "{}",
+        run.text()
+    );
+    assert!(
+        run.text().contains("  \u{1b}[31m4 gross range:\u{1b}[0m"),
+        "{}",
+        run.text()
+    );
 }

@@ -19,6 +19,10 @@ use crate::time::Time;
 
 /// Options of `estimate`.
 #[derive(Debug, Args)]
+#[expect(
+    clippy::struct_excessive_bools,
+    reason = "each is an option of its own"
+)]
 pub(super) struct EstimateArgs {
     /// Folder of the results; `-`: only the series, with --summary-only polygon_summary.csv, to standard output [default: out/NAME, NAME being the folder of the settings file]
     #[arg(long, value_name = "DIR")]
