@@ -1,6 +1,5 @@
 //! The commands, and the options that several of them have.
 
-use std::io;
 use std::path::{Path, PathBuf};
 use std::time::Duration;
 
@@ -18,7 +17,6 @@ use super::report::PageArgs;
 use super::{help, print};
 use crate::error::Error;
 use crate::output::OutputSet;
-use crate::output::plot::png;
 use crate::pipeline::Setup;
 use crate::settings::Overrides;
 use crate::time::Time;
@@ -188,44 +186,6 @@ impl AnalysisArgs {
             window: self.window,
             ..overrides
         }
-    }
-}
-
-/// Pictures.
-#[derive(Debug, clap::Args)]
-pub(super) struct PictureArgs {
-    /// Draw pictures too, in one format or both: png, svg
-    #[arg(long, value_name = "FORMAT", value_delimiter = ',')]
-    pub plot: Vec<PictureFormat>,
-}
-
-/// A format of pictures.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, ValueEnum)]
-pub(super) enum PictureFormat {
-    /// Pixels, sharp in print
-    Png,
-    /// Shapes and text
-    Svg,
-}
-
-impl PictureArgs {
-    /// The option, for those that it does not go with.
-    pub fn asked(&self) -> (&'static str, bool) {
-        ("--plot", !self.plot.is_empty())
-    }
-
-    /// Writes a picture in the formats asked for.
-    pub fn put(&self, set: &mut OutputSet, name: &str, svg: &str) -> Result<(), Error> {
-        if self.plot.contains(&PictureFormat::Svg) {
-            set.put(&format!("{name}.svg"), svg.as_bytes())?;
-        }
-        if self.plot.contains(&PictureFormat::Png) {
-            let name = format!("{name}.png");
-            let bytes =
-                png(svg).map_err(|e| Error::write(Path::new(&name), io::Error::other(e)))?;
-            set.put(&name, &bytes)?;
-        }
-        Ok(())
     }
 }
 

@@ -9,6 +9,7 @@ mod events;
 mod expect;
 mod help;
 mod manual;
+mod pictures;
 mod polygons;
 mod profile;
 mod report;

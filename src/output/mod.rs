@@ -52,7 +52,7 @@ pub use mesh::mesh_json;
 pub use profile::{assumptions, profile_csv, profile_json, w_of};
 pub use reading::reading_json;
 pub use report::report_html;
-pub use series::{SeriesChoice, SeriesEncoder, SeriesFiles, SeriesFormat, series};
+pub use series::{EncodedBlock, SeriesChoice, SeriesEncoder, SeriesFiles, SeriesFormat, series};
 pub use structure::structure_csv;
 pub(crate) use summary::significant_share;
 pub use summary::summary_json;

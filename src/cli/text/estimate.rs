@@ -96,8 +96,10 @@ pub(crate) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
         .filter_map(|f| f.file_name().map(|n| n.to_string_lossy().into_owned()))
         .collect();
     if let Some(folder) = files.first().and_then(|f| f.parent()) {
-        let text = format!("Written to {}: {}", folder.display(), names.join(", "));
-        let _ = writeln!(out, "\n{}", wrapped(&text, WIDTH));
+        let _ = writeln!(out, "\nWritten to {}:", folder.display());
+        for line in wrapped(&names.join(", "), WIDTH - 2).lines() {
+            let _ = writeln!(out, "  {line}");
+        }
     }
     out
 }
