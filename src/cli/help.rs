@@ -1,5 +1,52 @@
 //! The longer help texts.
 
+/// Columns of the longer help: with a margin of 2 it fits a page of the manual on a terminal of 80.
+const WIDTH: usize = 76;
+/// A second line begins under the last column of a table, unless that leaves too little room.
+const DEEPEST: usize = 40;
+
+/// The text with its long lines broken, the rest of each under where its last column begins.
+pub(super) fn laid_out(text: &str) -> String {
+    let mut out = String::new();
+    for line in text.lines() {
+        let words = line.trim_start();
+        let start = line.len() - words.len();
+        // Columns stand at least two spaces apart, or after a colon.
+        let first = words.split(' ').next().filter(|word| word.ends_with(':'));
+        let column = words.rfind("  ").map(|at| at + 2);
+        let column = column.or(first.map(|word| word.len() + 1)).unwrap_or(0);
+        let hang = start + if start + column <= DEEPEST { column } else { 2 };
+        let mut width = start;
+        out.push_str(&line[..start]);
+        for (k, word) in words.split(' ').enumerate() {
+            let length = word.chars().count();
+            if k > 0 && !word.is_empty() && width + 1 + length > WIDTH {
+                out.truncate(out.trim_end().len());
+                out.push('\n');
+                out.push_str(&" ".repeat(hang));
+                width = hang;
+            } else if k > 0 {
+                out.push(' ');
+                width += 1;
+            }
+            out.push_str(word);
+            width += length;
+        }
+        out.push('\n');
+    }
+    out.truncate(out.trim_end().len());
+    out
+}
+
+pub(super) const COMPLETIONS: &str = "\
+Examples: gyremesh completions bash > ~/.local/share/bash-completion/completions/gyremesh
+          gyremesh completions zsh > DIR/_gyremesh, DIR being a folder of $fpath
+          gyremesh completions fish > ~/.config/fish/completions/gyremesh.fish";
+
+pub(super) const MANUAL: &str = "\
+Example: gyremesh manual --out ~/.local/share/man/man1
+         man gyremesh-estimate";
+
 pub(super) const LONG_ABOUT: &str = "\
 Gyremesh reads the reports of a network of wind stations, joins the stations to polygons, integrates the wind along \
 the edges of each polygon, and gives area-mean vorticity and divergence with their errors.

@@ -18,6 +18,7 @@ mod geojson;
 #[cfg(feature = "parquet")]
 mod geoparquet;
 mod kinematics;
+mod mesh;
 mod netcdf;
 #[cfg(feature = "parquet")]
 mod parquet;
@@ -47,6 +48,7 @@ pub use file::OutputSet;
 pub use flagged::{FlaggedFiles, FlaggedFormats};
 pub use frames::{Cell, Frame, Frames};
 pub use geojson::{mesh_geojson, outline_geometry};
+pub use mesh::mesh_json;
 pub use profile::{assumptions, profile_csv, profile_json, w_of};
 pub use reading::reading_json;
 pub use report::report_html;
