@@ -3,6 +3,7 @@
 use std::fmt::Write as _;
 use std::path::PathBuf;
 
+use crate::helmholtz::Part;
 use crate::integral::{Cause, Peak};
 use crate::output::{CAUTION, error_bars, significant_share};
 use crate::pipeline::{Outcome, Setup};
@@ -159,6 +160,7 @@ pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
         setup.self_test.largest_difference, setup.self_test.polygons
     );
     significance(&mut out, setup, outcome);
+    energy_text(&mut out, outcome);
     let _ = writeln!(out, "\nStrongest, in 1e-5 /s:");
     let extremes = &outcome.extremes;
     for (what, peak) in [
@@ -192,6 +194,22 @@ pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
         );
     }
     out
+}
+
+/// Kinetic energy by parts of the wind.
+fn energy_text(out: &mut String, outcome: &Outcome) {
+    let books = &outcome.energy;
+    let shares = Part::ALL.map(|part| Some((part.name(), 100.0 * books.share(part)?)));
+    let [Some(first), Some(second), Some(third)] = shares else {
+        return;
+    };
+    let words = [first, second, third].map(|(name, share)| format!("{share:.1} % {name}"));
+    let _ = writeln!(
+        out,
+        "Energy      {} ({} times)",
+        words.join(", "),
+        books.times
+    );
 }
 
 /// Stations behind odd means.

@@ -46,6 +46,7 @@ use crate::structure::{Exponent, StructureFunction};
 use crate::time::Time;
 use crate::units::Wind;
 
+pub(crate) use frame::seen_from;
 pub use frame::{CarriedStation, LocalWind, PolygonFrame};
 pub use quantity::{QUANTITIES, Quantities, Quantity};
 pub use state::State;

@@ -2,6 +2,7 @@
 
 mod calibration;
 mod csv;
+mod decompose;
 mod events;
 mod file;
 mod fits;

@@ -3,6 +3,7 @@
 use std::path::Path;
 
 use super::csv::PolygonRows;
+use super::decompose::{DecomposeBytes, DecomposeRows};
 use super::file::OutputSet;
 use super::fits::FitRows;
 use super::kinematics::KinematicsRows;
@@ -27,6 +28,7 @@ pub struct SeriesEncoder {
     csv: Option<PolygonRows>,
     fits: Option<FitRows>,
     kinematics: Option<KinematicsRows>,
+    decompose: Option<DecomposeRows>,
     #[cfg(feature = "parquet")]
     parquet: Option<ParquetRows>,
     #[cfg(feature = "parquet")]
@@ -38,6 +40,8 @@ pub struct SeriesFiles {
     csv: Option<usize>,
     fits: Option<usize>,
     kinematics: Option<usize>,
+    /// `decompose.csv` and `decompose_stations.csv`.
+    decompose: Option<[usize; 2]>,
     #[cfg(feature = "parquet")]
     parquet: Option<(usize, ParquetFile)>,
     #[cfg(feature = "parquet")]
@@ -49,6 +53,7 @@ pub struct EncodedBlock {
     csv: Option<Vec<u8>>,
     fits: Option<Vec<u8>>,
     kinematics: Option<Vec<u8>>,
+    decompose: Option<DecomposeBytes>,
     #[cfg(feature = "parquet")]
     parquet: Option<parquet::errors::Result<RowGroup>>,
     #[cfg(feature = "parquet")]
@@ -90,6 +95,15 @@ pub fn series(
     } else {
         None
     };
+    let decompose_files = if setup.settings.decompose && (formats.csv || formats.parquet) {
+        let energies = set.create("decompose.csv")?;
+        set.write(energies, DecomposeRows::energy_header().as_bytes())?;
+        let stations = set.create("decompose_stations.csv")?;
+        set.write(stations, DecomposeRows::station_header().as_bytes())?;
+        Some([energies, stations])
+    } else {
+        None
+    };
     #[cfg(not(feature = "parquet"))]
     if formats.parquet {
         let reason = std::io::Error::other("this program was built without the feature `parquet`");
@@ -115,6 +129,7 @@ pub fn series(
         csv: formats.csv.then(|| PolygonRows::new(setup)),
         fits: with_fits.then(|| FitRows::new(setup)),
         kinematics: kinematics_file.map(|_| KinematicsRows::new(setup)),
+        decompose: decompose_files.map(|_| DecomposeRows::new(setup)),
         #[cfg(feature = "parquet")]
         parquet: parquet_rows,
         #[cfg(feature = "parquet")]
@@ -124,6 +139,7 @@ pub fn series(
         csv: csv_file,
         fits: fits_file,
         kinematics: kinematics_file,
+        decompose: decompose_files,
         #[cfg(feature = "parquet")]
         parquet: parquet_file,
         #[cfg(feature = "parquet")]
@@ -153,6 +169,11 @@ impl SeriesEncoder {
                 .as_ref()
                 .zip(kinematics)
                 .map(|(rows, block)| rows.encode(block)),
+            decompose: self
+                .decompose
+                .as_ref()
+                .zip(seen.decomposition)
+                .map(|(rows, block)| rows.encode(block)),
             #[cfg(feature = "parquet")]
             parquet: self.parquet.as_ref().map(|rows| rows.encode(block)),
             #[cfg(feature = "parquet")]
@@ -179,6 +200,10 @@ impl SeriesFiles {
         }
         if let (Some(file), Some(bytes)) = (self.kinematics, &block.kinematics) {
             set.write(file, bytes)?;
+        }
+        if let (Some([energies, stations]), Some(bytes)) = (self.decompose, &block.decompose) {
+            set.write(energies, &bytes.energies)?;
+            set.write(stations, &bytes.stations)?;
         }
         #[cfg(feature = "parquet")]
         for (table, group) in [

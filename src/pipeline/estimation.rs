@@ -3,12 +3,14 @@
 use rayon::prelude::*;
 
 use super::complete::{Common, ErrorModel, Holes};
+use super::decompose::Decomposition;
 use super::field::FieldState;
 use super::outliers::OutlierBooks;
 use super::remesh::Remesh;
 use super::run::BlockView;
 use super::{Setup, Window};
 use crate::align::{AlignBooks, Aligner, StationSensors, WindBlock, block_times, height_factor};
+use crate::helmholtz::EnergyBooks;
 use crate::integral::{
     CauseBooks, EstimateBlock, Extremes, FalseDiscovery, FitBooks, GroupMeans, RunStatistics,
 };
@@ -38,6 +40,7 @@ pub(super) struct Estimation<'a> {
     rule: FalseDiscovery,
     /// Where they are asked for.
     kinematics: Option<Kinematics>,
+    decomposition: Option<Decomposition>,
 }
 
 impl<'a> Estimation<'a> {
@@ -68,6 +71,7 @@ impl<'a> Estimation<'a> {
             remesh: (settings.missing == Missing::Remesh)
                 .then(|| Remesh::new(setup, spacing.filter(|_| complete))),
             kinematics: kinematics(setup),
+            decomposition: settings.decompose.then(|| Decomposition::new(setup)),
             rule: FalseDiscovery::new(
                 setup.settings.errors.false_discovery_rate,
                 // A triangulation of n stations has fewer than 2 n triangles.
@@ -123,13 +127,19 @@ impl<'a> Estimation<'a> {
             limits: &setup.settings.limits,
         };
         let kinematics = self.kinematics.as_ref();
+        let decomposition = self.decomposition.as_ref();
         let results: Vec<(Sums, T)> = winds
             .par_iter()
             .zip(models)
             .zip(holes)
             .map(|((winds, models), holes)| {
                 let (block, lasting) = common.estimate(winds, &models, holes);
-                let sums = Sums::of(setup, &block, &lasting, polygons);
+                let mut sums = Sums::of(setup, &block, &lasting, polygons);
+                let decomposition = decomposition.map(|d| d.of(winds));
+                sums.energy = decomposition
+                    .as_ref()
+                    .map(EnergyBooks::of)
+                    .unwrap_or_default();
                 let kinematics = kinematics.map(|k| {
                     let sampling = common.errors.map(|e| (&e.sampling, models.as_slice()));
                     k.of(winds, &block, sampling)
@@ -137,6 +147,7 @@ impl<'a> Estimation<'a> {
                 let seen = BlockView {
                     estimates: &block,
                     kinematics: kinematics.as_ref(),
+                    decomposition: decomposition.as_ref(),
                     winds,
                     models: &models,
                 };
@@ -188,6 +199,7 @@ pub(super) struct Sums {
     pub(super) means: GroupMeans,
     pub(super) fits: FitBooks,
     pub(super) causes: CauseBooks,
+    pub(super) energy: EnergyBooks,
 }
 
 impl Sums {
@@ -201,6 +213,7 @@ impl Sums {
             means: GroupMeans::of(block, lasting, &setup.settings.means),
             fits: FitBooks::of(block),
             causes: CauseBooks::of(block, planetary.len()),
+            energy: EnergyBooks::default(),
         };
         if !block.extra.is_empty() {
             sums.extremes.renumber(common, &block.extra);
@@ -219,6 +232,7 @@ impl Sums {
         self.means.merge(&later.means);
         self.fits.merge(&later.fits);
         self.causes.merge(&later.causes);
+        self.energy.merge(&later.energy);
     }
 }
 

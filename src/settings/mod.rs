@@ -57,6 +57,8 @@ pub struct Settings {
     pub errors: ErrorSettings,
     /// Whether the kinematics of each polygon are written, and from which speed on.
     pub kinematics: KinematicsSettings,
+    /// Whether the rotational, divergent and harmonic part of the wind are written.
+    pub decompose: bool,
     /// Over which times values are averaged.
     pub means: MeansSettings,
     /// What the calibration leaves out.

@@ -8,7 +8,7 @@ use super::calibration::calibration;
 use super::check_keys::check;
 use super::errors::errors;
 use super::events::{events, places};
-use super::kinematics::kinematics;
+use super::kinematics::{decompose, kinematics};
 use super::means::means;
 use super::path::expand_path;
 use super::profile::profile;
@@ -52,6 +52,8 @@ pub struct Overrides {
     pub by: Option<MeansBy>,
     /// `kinematics.write = true`
     pub kinematics: bool,
+    /// `decompose.write = true`
+    pub decompose: bool,
     /// Take the reports unchecked
     pub no_screen: bool,
 }
@@ -98,6 +100,7 @@ fn parse_settings(
         analysis: analysis(root.section("analysis"), overrides),
         errors: errors(root.section("errors"), overrides),
         kinematics: kinematics(root.section("kinematics"), overrides),
+        decompose: decompose(root.section("decompose"), overrides),
         means: means(&mut root, overrides),
         calibration: calibration(root.section("calibration")),
         events: events(root.section("events")),
