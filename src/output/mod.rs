@@ -9,10 +9,12 @@ mod fits;
 mod flagged;
 #[cfg(feature = "parquet")]
 mod flagged_parquet;
+mod frames;
 mod geojson;
 mod kinematics;
 #[cfg(feature = "parquet")]
 mod parquet;
+pub mod plot;
 mod profile;
 mod reading;
 mod reason;
@@ -35,6 +37,7 @@ pub use events::{
 };
 pub use file::OutputSet;
 pub use flagged::FlaggedFiles;
+pub use frames::{Cell, Frame, Frames};
 pub use geojson::{mesh_geojson, outline_geometry};
 pub use profile::{assumptions, profile_csv, profile_json, w_of};
 pub use reading::reading_json;
