@@ -1,12 +1,12 @@
 //! `gyremesh polygons --expect`: what a network can resolve, before any report is read.
 
 use std::fmt::Write as _;
-use std::path::Path;
+use std::path::{Path, PathBuf};
 
+use clap::Args;
 use serde_json::Value;
 
-use super::args::PolygonsArgs;
-use super::message::{WIDTH, cut, wrapped};
+use super::text::{WIDTH, cut, wrapped};
 use crate::align::instrument_covariance;
 use crate::error::{Error, Place, Problem};
 use crate::integral::{ExpectedErrors, Sampling, expected_errors};
@@ -14,11 +14,41 @@ use crate::output::CAUTION;
 use crate::pipeline::Setup;
 use crate::station::Position;
 use crate::structure::{Exponent, StructureFunction};
-use crate::units::Wind;
+use crate::units::{self, Wind};
 
 /// Speed at which the errors of the sensors are taken if they are not stated, m/s: a light wind, between the errors that
 /// are the same at all speeds and those that grow with it.
 const SPEED: f64 = 5.0;
+
+/// What `polygons --expect` assumes.
+#[derive(Debug, Args)]
+pub(super) struct ExpectArgs {
+    /// Show the errors to expect of vorticity and divergence: what can this network resolve?
+    #[arg(long)]
+    pub expect: bool,
+    /// With --expect: error of either wind component of a sensor, such as 0.3m/s [default: of the settings at 5 m/s]
+    #[arg(long, value_name = "SPEED", value_parser = units::parse_speed, requires = "expect")]
+    sensor_error: Option<f64>,
+    /// With --expect: how much either component of the wind differs over --distance (root mean square)
+    #[arg(long, value_name = "SPEED", value_parser = units::parse_speed, requires = "expect")]
+    difference: Option<f64>,
+    /// With --expect: the distance of --difference
+    #[arg(long, value_name = "LENGTH", value_parser = units::parse_length, requires = "expect")]
+    distance: Option<f64>,
+    /// With --expect: exponent by which squared differences grow with distance, 1/3 to 2
+    #[arg(long, value_name = "NUMBER", value_parser = exponent, requires = "expect")]
+    exponent: Option<f64>,
+    /// With --expect: take the structure function found by a run, from its summary.json
+    #[arg(long, value_name = "FILE", requires = "expect", conflicts_with_all = ["difference", "distance", "exponent"])]
+    past: Option<PathBuf>,
+}
+
+fn exponent(text: &str) -> Result<f64, String> {
+    let found: Option<f64> = text.parse().ok();
+    found
+        .filter(|p| (1.0 / 3.0..=1.97).contains(p))
+        .ok_or_else(|| format!("`{text}` is no exponent (1/3 to 1.97 expected, such as 0.67)"))
+}
 
 /// What was assumed, and what follows for each polygon.
 pub(super) struct Expectation {
@@ -30,7 +60,7 @@ pub(super) struct Expectation {
 
 impl Expectation {
     /// For the polygons within the limits.
-    pub(super) fn of(setup: &Setup, args: &PolygonsArgs) -> Result<Self, Error> {
+    pub(super) fn of(setup: &Setup, args: &ExpectArgs) -> Result<Self, Error> {
         let sensor_sd = args.sensor_error.unwrap_or_else(|| {
             let wind = Wind { u: SPEED, v: 0.0 };
             let covariance = instrument_covariance(wind, false, &setup.settings.sensor);

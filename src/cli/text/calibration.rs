@@ -2,14 +2,14 @@
 
 use std::fmt::Write as _;
 
-use super::message::{WIDTH, corrections_text, cut, wrapped};
+use super::{WIDTH, corrections_text, cut, wrapped};
 use crate::calibration::{Cost, Ticket};
 use crate::output::{CAUTION, GAUGE, what};
 use crate::pipeline::{CalibrationOutcome, Setup};
 use crate::time::Time;
 
 /// The tickets, and what they rest on.
-pub(super) fn calibration_text(setup: &Setup, outcome: &CalibrationOutcome) -> String {
+pub(crate) fn calibration_text(setup: &Setup, outcome: &CalibrationOutcome) -> String {
     let mut out = String::new();
     let calibration = &outcome.calibration;
     // Writing to a string cannot fail.

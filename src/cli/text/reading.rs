@@ -2,7 +2,7 @@
 
 use std::fmt::Write as _;
 
-use super::message::cut;
+use super::cut;
 use super::screening::screening_text;
 use crate::pipeline::Reading;
 use crate::settings::Settings;
@@ -14,7 +14,7 @@ use crate::time::Time;
 const CONFLICTS: usize = 5;
 
 /// Tables of files, stations and conflicts.
-pub(super) fn reading_text(settings: &Settings, network: &Network, reading: &Reading) -> String {
+pub(crate) fn reading_text(settings: &Settings, network: &Network, reading: &Reading) -> String {
     let mut out = String::new();
     // Writing to a string cannot fail.
     let _ = writeln!(
@@ -171,7 +171,7 @@ fn interval(micros: i64) -> String {
 }
 
 /// A file name whose beginning is cut off if it is too long.
-pub(super) fn shortened(name: &str, width: usize) -> String {
+pub(crate) fn shortened(name: &str, width: usize) -> String {
     let length = name.chars().count();
     if length <= width {
         return name.to_string();

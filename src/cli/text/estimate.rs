@@ -1,106 +1,20 @@
-//! What the program says to people.
+//! The text of `gyremesh estimate`, in 80 columns.
 
 use std::fmt::Write as _;
 use std::path::PathBuf;
 
+use super::{WIDTH, corrections_text, cut, wrapped};
 use crate::helmholtz::Part;
 use crate::integral::{Cause, Peak};
 use crate::output::{CAUTION, error_bars, significant_share};
 use crate::pipeline::{Outcome, Setup};
-use crate::polygon::{Exclusion, StationPolygon};
 use crate::units::Wind;
 
-/// Width of everything printed.
-pub(super) const WIDTH: usize = 80;
 /// Stations named as those that reported least.
 const LEAST: usize = 3;
 
-/// Says something on stderr.
-#[expect(
-    clippy::print_stderr,
-    reason = "this is the one place that speaks to stderr"
-)]
-pub(super) fn say(kind: &str, text: &str) {
-    eprintln!("{kind}: {text}");
-}
-
-/// Text cut to a width in characters.
-pub(super) fn cut(text: &str, width: usize) -> String {
-    if text.chars().count() <= width {
-        text.to_string()
-    } else {
-        let mut short: String = text.chars().take(width.saturating_sub(1)).collect();
-        short.push('…');
-        short
-    }
-}
-
-/// The table of `polygons`.
-pub(super) fn polygon_table(setup: &Setup) -> String {
-    let mut out = String::new();
-    let built = &setup.built;
-    // Writing to a string cannot fail.
-    let _ = writeln!(
-        out,
-        "{}: {} stations, {} polygons within the limits, {} left out",
-        setup.settings.name,
-        setup.network.len(),
-        built.polygons.len(),
-        built.excluded.len()
-    );
-    let _ = writeln!(
-        out,
-        "noise: error of vorticity or divergence, 1e-5 /s, for 1 m/s in each component\n"
-    );
-    let _ = writeln!(
-        out,
-        "{:<24} {:>9} {:>8} {:>6} {:>7} {:>6}  left out",
-        "polygon", "area km2", "edge km", "angle", "quality", "noise"
-    );
-    let used = built.polygons.iter().map(|p| (p, None));
-    let excluded = built.excluded.iter().map(|(p, why)| (p, Some(why)));
-    for (polygon, why) in used.chain(excluded) {
-        out.push_str(&polygon_line(polygon, why));
-    }
-    if built.flat > 0 {
-        let _ = writeln!(
-            out,
-            "\n{} triangles of stations on one line dropped",
-            built.flat
-        );
-    }
-    out
-}
-
-fn polygon_line(polygon: &StationPolygon, why: Option<&Exclusion>) -> String {
-    let shape = &polygon.shape;
-    let line = format!(
-        "{:<24} {:>9.1} {:>8.1} {:>6.1} {:>7.2} {:>6.1}  {}",
-        cut(&polygon.id, 24),
-        shape.area / 1e6,
-        shape.longest_edge / 1e3,
-        shape.smallest_angle,
-        shape.quality,
-        shape.noise_factor * 1e5,
-        why.map_or_else(String::new, short_reason)
-    );
-    cut(line.trim_end(), WIDTH) + "\n"
-}
-
-fn short_reason(why: &Exclusion) -> String {
-    match why {
-        Exclusion::SmallAngle(..) => "angle",
-        Exclusion::LongEdge(..) => "edge",
-        Exclusion::SmallArea(..) => "too small",
-        Exclusion::LargeArea(..) => "too large",
-        Exclusion::ElevationSpread(..) => "heights",
-        Exclusion::Slope(..) => "slope",
-    }
-    .into()
-}
-
 /// The summary of `estimate`.
-pub(super) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -> String {
+pub(crate) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -> String {
     let mut out = String::new();
     let period = &outcome.period;
     let built = &setup.built;
@@ -238,7 +152,7 @@ fn attributions_text(out: &mut String, setup: &Setup, outcome: &Outcome) {
 }
 
 /// Where a vector points, degrees clockwise from north.
-pub(super) fn towards(vector: Wind) -> f64 {
+fn towards(vector: Wind) -> f64 {
     let from = vector.from_direction();
     from.map_or(0.0, |from| (from.degrees() + 180.0).rem_euclid(360.0))
 }
@@ -309,20 +223,6 @@ fn peak_text(setup: &Setup, outcome: &Outcome, peak: Option<Peak>) -> String {
     )
 }
 
-/// Says which corrections of the station list are used, all of them.
-pub(super) fn corrections_text(out: &mut String, setup: &Setup) {
-    for station in setup.network.stations() {
-        if let Some(correction) = &station.correction {
-            let _ = writeln!(
-                out,
-                "Corrected   {} {}",
-                cut(&station.id, 12),
-                cut(&correction.words(), WIDTH - 25)
-            );
-        }
-    }
-}
-
 /// Names the stations with the fewest values, if any is incomplete.
 fn least_reporting(out: &mut String, setup: &Setup, outcome: &Outcome) {
     let times = outcome.period.times;
@@ -345,23 +245,4 @@ fn least_reporting(out: &mut String, setup: &Setup, outcome: &Outcome) {
             cut(&station.id, 24)
         );
     }
-}
-
-/// Text in lines of at most the width.
-pub(super) fn wrapped(text: &str, most: usize) -> String {
-    let mut out = String::new();
-    let mut width = 0;
-    for word in text.split_whitespace() {
-        let length = word.chars().count();
-        if width > 0 && width + 1 + length > most {
-            out.push('\n');
-            width = 0;
-        } else if width > 0 {
-            out.push(' ');
-            width += 1;
-        }
-        out.push_str(word);
-        width += length;
-    }
-    out
 }

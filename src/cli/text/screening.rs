@@ -2,8 +2,8 @@
 
 use std::fmt::Write as _;
 
-use super::message::{cut, wrapped};
 use super::reading::shortened;
+use super::{cut, wrapped};
 use crate::check::{Explained, StationReading, Test};
 use crate::pipeline::Reading;
 use crate::station::{Network, Station};
@@ -12,7 +12,7 @@ use crate::station::{Network, Station};
 const WORST: usize = 10;
 
 /// Tables of the tests and of the worst stations.
-pub(super) fn screening_text(out: &mut String, network: &Network, reading: &Reading) {
+pub(crate) fn screening_text(out: &mut String, network: &Network, reading: &Reading) {
     let all: u64 = reading.stations.iter().map(|s| s.reports).sum();
     // Writing to a string cannot fail.
     let _ = writeln!(
@@ -106,7 +106,7 @@ fn worst(out: &mut String, network: &Network, reading: &Reading) {
 }
 
 /// Every test of some reports of a station, with its numbers.
-pub(super) fn explained_text(station: &str, explained: &[Explained], reading: &Reading) -> String {
+pub(crate) fn explained_text(station: &str, explained: &[Explained], reading: &Reading) -> String {
     let mut out = String::new();
     if explained.is_empty() {
         let _ = writeln!(out, "{station} has no reports");
