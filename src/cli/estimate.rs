@@ -15,7 +15,7 @@ use crate::output::{
     summary_json,
 };
 use crate::pipeline::{self, Outcome, Setup};
-use crate::settings::{MeansBy, MeansSettings, Overrides};
+use crate::settings::{MeansBy, MeansSettings, Overrides, height_above_ground};
 use crate::units;
 
 /// Options of `estimate`.
@@ -50,6 +50,9 @@ pub(super) struct EstimateArgs {
     /// Write kinematics.csv (or .parquet) too: mean wind, deformation, curvature and shear and more of each polygon
     #[arg(long, conflicts_with = "summary_only")]
     kinematics: bool,
+    /// Write vertical_motion.csv too: vertical wind at this height above the ground, if the divergence is the same up to it
+    #[arg(long, value_name = "HEIGHT", value_parser = height_above_ground, conflicts_with = "summary_only")]
+    w_at: Option<f64>,
     /// Write decompose.csv and decompose_stations.csv too: rotational, divergent and harmonic part of the wind
     #[arg(long)]
     decompose: bool,
@@ -88,6 +91,7 @@ impl EstimateArgs {
             instrument_errors: self.errors == Parts::Instrument,
             kinematics: self.kinematics,
             decompose: self.decompose,
+            w_at: self.w_at,
             by: self.by,
             ..self.input.overrides()
         }

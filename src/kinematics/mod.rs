@@ -4,7 +4,8 @@
 //! [`PolygonFrame`] carries the winds of the stations to the middle of the polygon and gives mean wind and velocity
 //! gradient as linear forms; their covariance has the three parts of the estimate's own budget (instruments and sites,
 //! sampling, timing: [`crate::integral::complete_errors`], [`crate::integral::MomentConstants`]). All else follows from
-//! these six numbers ([`Quantities::of`]). Of an observed scalar: [`scalar`].
+//! these six numbers ([`Quantities::of`]). Of observed scalars: [`scalar`],
+//! [`Kinematics::scalars`].
 //!
 //! Signs: stretching u_x − v_y and shearing v_x + u_y in axes towards east and north; curvature and shear vorticity
 //! positive counter-clockwise; contraction positive where air is drawn together. `methods.md` 3 has the formulas.
@@ -33,6 +34,7 @@
 mod frame;
 mod quantity;
 pub mod scalar;
+mod scalar_block;
 mod state;
 
 use rayon::prelude::*;
@@ -49,6 +51,7 @@ use crate::units::Wind;
 pub(crate) use frame::seen_from;
 pub use frame::{CarriedStation, LocalWind, PolygonFrame};
 pub use quantity::{QUANTITIES, Quantities, Quantity};
+pub use scalar_block::{SCALAR_QUANTITIES, ScalarCell, ScalarCells, ScalarQuantity};
 pub use state::State;
 
 /// Kinematics of all polygons at a run of times; polygons × times, as in [`EstimateBlock`].
@@ -104,6 +107,34 @@ impl Kinematics {
         model: Option<(&Sampling, &[StructureFunction])>,
     ) -> KinematicsBlock {
         let n = block.times.len();
+        let mut cells = Vec::with_capacity(self.frames.len() * n);
+        let frames = self.frames.iter().zip(&self.planetary);
+        for ((p, (frame, &planetary)), states) in
+            frames.enumerate().zip(self.states(winds, n, model))
+        {
+            let flags = &block.flag[p * n..(p + 1) * n];
+            cells.extend(states.iter().zip(flags).map(|((wind, covariance), &flag)| {
+                if !flag.is_usable() {
+                    return Quantities::default();
+                }
+                let state = State::new(wind, covariance);
+                let least = self.settings.least_speed;
+                Quantities::of(&state, planetary, frame.latitude, least)
+            }));
+        }
+        KinematicsBlock {
+            times: block.times.clone(),
+            cells,
+        }
+    }
+
+    /// Mean wind and gradient of each polygon at `n` times with their covariances.
+    fn states<'a>(
+        &'a self,
+        winds: &'a WindBlock,
+        n: usize,
+        model: Option<(&'a Sampling, &'a [StructureFunction])>,
+    ) -> impl Iterator<Item = Vec<(LocalWind, MomentCovariance)>> + 'a {
         let models: Vec<&StructureFunction> = match model {
             Some((_, models)) => (0..n)
                 .filter_map(|t| models.get(t).or(models.last()))
@@ -111,12 +142,8 @@ impl Kinematics {
             None => Vec::new(),
         };
         let own = own_variances(winds, &models);
-        let mut cells = Vec::with_capacity(self.frames.len() * n);
-        let mut states = Vec::with_capacity(n);
-        for (p, (frame, &planetary)) in self.frames.iter().zip(&self.planetary).enumerate() {
-            let flags = &block.flag[p * n..(p + 1) * n];
-            states.clear();
-            states.resize(n, (LocalWind::default(), [[0.0; 3]; 6]));
+        self.frames.iter().enumerate().map(move |(p, frame)| {
+            let mut states = vec![(LocalWind::default(), [[0.0; 3]; 6]); n];
             for station in &frame.stations {
                 add_station(station, winds, &own, &mut states);
             }
@@ -131,19 +158,8 @@ impl Kinematics {
                     add(sums, &of_polygon.covariance(model));
                 }
             }
-            cells.extend(states.iter().zip(flags).map(|((wind, covariance), &flag)| {
-                if !flag.is_usable() {
-                    return Quantities::default();
-                }
-                let state = State::new(wind, covariance);
-                let least = self.settings.least_speed;
-                Quantities::of(&state, planetary, frame.latitude, least)
-            }));
-        }
-        KinematicsBlock {
-            times: block.times.clone(),
-            cells,
-        }
+            states
+        })
     }
 }
 

@@ -79,7 +79,7 @@ impl KinematicsRows {
     clippy::cast_possible_truncation,
     reason = "seven digits are enough for an error"
 )]
-fn short(error: f64) -> f32 {
+pub(super) fn short(error: f64) -> f32 {
     error as f32
 }
 

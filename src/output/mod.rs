@@ -18,6 +18,7 @@ pub mod plot;
 mod profile;
 mod reading;
 mod reason;
+mod scalars;
 mod series;
 #[cfg(feature = "parquet")]
 mod standing;
@@ -25,6 +26,7 @@ mod structure;
 mod summary;
 #[cfg(feature = "parquet")]
 mod template;
+mod vertical_motion;
 
 pub use calibration::{
     GAUGE, calibration_csv, calibration_json, corrected_list, corrected_list_section,
@@ -45,6 +47,7 @@ pub use series::{Formats, SeriesEncoder, SeriesFiles, series};
 pub use structure::structure_csv;
 pub(crate) use summary::significant_share;
 pub use summary::summary_json;
+pub use vertical_motion::assumption_of_height;
 
 use crate::settings::ErrorSettings;
 

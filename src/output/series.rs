@@ -11,6 +11,8 @@ use super::kinematics::KinematicsRows;
 use super::kinematics::{KinematicsParquet, kinematics_parquet};
 #[cfg(feature = "parquet")]
 use super::parquet::{ParquetFile, ParquetRows, RowGroup, parquet_series};
+use super::scalars::ScalarRows;
+use super::vertical_motion::VerticalMotionRows;
 use crate::error::Error;
 use crate::pipeline::{BlockView, Setup};
 
@@ -29,6 +31,8 @@ pub struct SeriesEncoder {
     fits: Option<FitRows>,
     kinematics: Option<KinematicsRows>,
     decompose: Option<DecomposeRows>,
+    scalars: Option<ScalarRows>,
+    vertical_motion: Option<VerticalMotionRows>,
     #[cfg(feature = "parquet")]
     parquet: Option<ParquetRows>,
     #[cfg(feature = "parquet")]
@@ -42,6 +46,8 @@ pub struct SeriesFiles {
     kinematics: Option<usize>,
     /// `decompose.csv` and `decompose_stations.csv`.
     decompose: Option<[usize; 2]>,
+    scalars: Option<usize>,
+    vertical_motion: Option<usize>,
     #[cfg(feature = "parquet")]
     parquet: Option<(usize, ParquetFile)>,
     #[cfg(feature = "parquet")]
@@ -54,6 +60,8 @@ pub struct EncodedBlock {
     fits: Option<Vec<u8>>,
     kinematics: Option<Vec<u8>>,
     decompose: Option<DecomposeBytes>,
+    scalars: Option<Vec<u8>>,
+    vertical_motion: Option<Vec<u8>>,
     #[cfg(feature = "parquet")]
     parquet: Option<parquet::errors::Result<RowGroup>>,
     #[cfg(feature = "parquet")]
@@ -95,6 +103,22 @@ pub fn series(
     } else {
         None
     };
+    let with_scalars = with_kinematics && !setup.settings.scalars.is_empty();
+    let scalars_file = if with_scalars && (formats.csv || formats.parquet) {
+        let file = set.create("scalars.csv")?;
+        set.write(file, ScalarRows::header().as_bytes())?;
+        Some(file)
+    } else {
+        None
+    };
+    let w_at = (setup.settings.w_at).filter(|_| formats.csv || formats.parquet);
+    let vertical_file = if w_at.is_some() {
+        let file = set.create("vertical_motion.csv")?;
+        set.write(file, VerticalMotionRows::header().as_bytes())?;
+        Some(file)
+    } else {
+        None
+    };
     let decompose_files = if setup.settings.decompose && (formats.csv || formats.parquet) {
         let energies = set.create("decompose.csv")?;
         set.write(energies, DecomposeRows::energy_header().as_bytes())?;
@@ -130,6 +154,8 @@ pub fn series(
         fits: with_fits.then(|| FitRows::new(setup)),
         kinematics: kinematics_file.map(|_| KinematicsRows::new(setup)),
         decompose: decompose_files.map(|_| DecomposeRows::new(setup)),
+        scalars: scalars_file.map(|_| ScalarRows::new(setup)),
+        vertical_motion: w_at.map(|height| VerticalMotionRows::new(setup, height)),
         #[cfg(feature = "parquet")]
         parquet: parquet_rows,
         #[cfg(feature = "parquet")]
@@ -140,6 +166,8 @@ pub fn series(
         fits: fits_file,
         kinematics: kinematics_file,
         decompose: decompose_files,
+        scalars: scalars_file,
+        vertical_motion: vertical_file,
         #[cfg(feature = "parquet")]
         parquet: parquet_file,
         #[cfg(feature = "parquet")]
@@ -174,6 +202,12 @@ impl SeriesEncoder {
                 .as_ref()
                 .zip(seen.decomposition)
                 .map(|(rows, block)| rows.encode(block)),
+            scalars: self
+                .scalars
+                .as_ref()
+                .zip(seen.scalars)
+                .map(|(rows, block)| rows.encode(block)),
+            vertical_motion: self.vertical_motion.as_ref().map(|rows| rows.encode(block)),
             #[cfg(feature = "parquet")]
             parquet: self.parquet.as_ref().map(|rows| rows.encode(block)),
             #[cfg(feature = "parquet")]
@@ -199,6 +233,12 @@ impl SeriesFiles {
             set.write(file, bytes)?;
         }
         if let (Some(file), Some(bytes)) = (self.kinematics, &block.kinematics) {
+            set.write(file, bytes)?;
+        }
+        if let (Some(file), Some(bytes)) = (self.scalars, &block.scalars) {
+            set.write(file, bytes)?;
+        }
+        if let (Some(file), Some(bytes)) = (self.vertical_motion, &block.vertical_motion) {
             set.write(file, bytes)?;
         }
         if let (Some([energies, stations]), Some(bytes)) = (self.decompose, &block.decompose) {

@@ -4,6 +4,7 @@ use std::collections::BTreeMap;
 
 use serde_json::{Value, json};
 
+use super::vertical_motion::assumption_of_height;
 use super::{CAUTION, error_bars};
 use crate::helmholtz::Part;
 use crate::integral::{Attribution, Cause, Peak, Statistics};
@@ -99,6 +100,10 @@ pub fn summary_json(setup: &Setup, outcome: &Outcome) -> String {
             "anticyclonic_vorticity": peak(setup, outcome, extremes.anticyclonic),
         },
         "kinetic_energy": energy(setup, outcome),
+        "vertical_motion": setup.settings.w_at.map(|height| json!({
+            "height_m": height,
+            "assumption": assumption_of_height(height),
+        })),
         "corrections": corrections(setup),
         "warnings": warnings,
         "units": {
@@ -247,6 +252,7 @@ fn settings(settings: &Settings) -> Value {
         "errors": settings.errors,
         "kinematics": settings.kinematics,
         "decompose": settings.decompose,
+        "scalars": settings.scalars,
         "means": means(&settings.means),
         "check": settings.screen.then_some(&settings.check),
         "polygons": {

@@ -127,6 +127,7 @@ impl<'a> Estimation<'a> {
             limits: &setup.settings.limits,
         };
         let kinematics = self.kinematics.as_ref();
+        let scalar_errors: Vec<f64> = setup.settings.scalars.iter().map(|s| s.error).collect();
         let decomposition = self.decomposition.as_ref();
         let results: Vec<(Sums, T)> = winds
             .par_iter()
@@ -140,13 +141,17 @@ impl<'a> Estimation<'a> {
                     .as_ref()
                     .map(EnergyBooks::of)
                     .unwrap_or_default();
-                let kinematics = kinematics.map(|k| {
-                    let sampling = common.errors.map(|e| (&e.sampling, models.as_slice()));
-                    k.of(winds, &block, sampling)
+                let sampling = common.errors.map(|e| (&e.sampling, models.as_slice()));
+                let scalars = kinematics.filter(|_| !scalar_errors.is_empty()).map(|k| {
+                    let mesh = (setup.built.polygons.as_slice(), &setup.built.edges);
+                    let values = aligner.scalars(&winds.times, scalar_errors.len());
+                    k.scalars(mesh, winds, &block, sampling, (&values, &scalar_errors))
                 });
+                let kinematics = kinematics.map(|k| k.of(winds, &block, sampling));
                 let seen = BlockView {
                     estimates: &block,
                     kinematics: kinematics.as_ref(),
+                    scalars: scalars.as_ref(),
                     decomposition: decomposition.as_ref(),
                     winds,
                     models: &models,

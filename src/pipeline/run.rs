@@ -12,7 +12,7 @@ use crate::integral::{
     Attribution, CauseBooks, EstimateBlock, ExtraPolygon, Extremes, FitBook, FitBooks, GroupMeans,
     RunStatistics, attribute,
 };
-use crate::kinematics::KinematicsBlock;
+use crate::kinematics::{KinematicsBlock, ScalarCells};
 use crate::polygon::StationPolygon;
 use crate::report::{InputOrder, ReportFiles, ReportTable};
 use crate::settings::Settings;
@@ -92,6 +92,8 @@ pub struct BlockView<'a> {
     pub estimates: &'a EstimateBlock,
     /// Where they are asked for.
     pub kinematics: Option<&'a KinematicsBlock>,
+    /// Observed scalars, where kinematics are asked for and the reports have any.
+    pub scalars: Option<&'a ScalarCells>,
     /// Where it is asked for.
     pub decomposition: Option<&'a DecompositionBlock>,
     /// The winds of all stations at these times.

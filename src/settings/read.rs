@@ -13,6 +13,7 @@ use super::means::means;
 use super::path::expand_path;
 use super::profile::profile;
 use super::reports::{reports, text_format};
+use super::scalars::scalars;
 use super::section::{Document, Section};
 use super::{
     MEMORY, MeansBy, Missing, PolygonChoice, PolygonLimits, RegionParts, RegionSettings,
@@ -54,6 +55,8 @@ pub struct Overrides {
     pub kinematics: bool,
     /// `decompose.write = true`
     pub decompose: bool,
+    /// `kinematics.w_at`, m
+    pub w_at: Option<f64>,
     /// Take the reports unchecked
     pub no_screen: bool,
 }
@@ -92,14 +95,18 @@ fn parse_settings(
 
     let sensor = sensor(root.section("sensor"));
     let (polygons, missing) = polygons(root.section("polygons"));
+    let (kinematics, w_at) = kinematics(root.section("kinematics"), overrides);
+    let mut reports = reports(&mut root, base, &overrides.reports);
     let settings = Settings {
         name,
         station_file,
         catalogue,
-        reports: reports(&mut root, base, &overrides.reports),
+        scalars: scalars(&mut root, &mut reports),
+        reports,
         analysis: analysis(root.section("analysis"), overrides),
         errors: errors(root.section("errors"), overrides),
-        kinematics: kinematics(root.section("kinematics"), overrides),
+        kinematics,
+        w_at,
         decompose: decompose(root.section("decompose"), overrides),
         means: means(&mut root, overrides),
         calibration: calibration(root.section("calibration")),

@@ -6,7 +6,7 @@ use std::path::PathBuf;
 use super::{WIDTH, corrections_text, cut, wrapped};
 use crate::helmholtz::Part;
 use crate::integral::{Cause, Peak};
-use crate::output::{CAUTION, error_bars, significant_share};
+use crate::output::{CAUTION, assumption_of_height, error_bars, significant_share};
 use crate::pipeline::{Outcome, Setup};
 use crate::units::Wind;
 
@@ -94,6 +94,9 @@ pub(crate) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
             WIDTH
         )
     );
+    if let Some(height) = setup.settings.w_at {
+        let _ = writeln!(out, "{}", wrapped(&assumption_of_height(height), WIDTH));
+    }
     let _ = writeln!(out, "{}", wrapped(CAUTION, WIDTH));
     let names: Vec<String> = files
         .iter()
