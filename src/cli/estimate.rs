@@ -11,8 +11,8 @@ use super::text::estimate::run_summary;
 use super::{Status, print};
 use crate::error::Error;
 use crate::output::{
-    Formats, OutputSet, means_csv, mesh_geojson, series, stations_csv, structure_csv, summary_csv,
-    summary_json,
+    Formats, OutputSet, kinematics_means_csv, means_csv, mesh_geojson, series, stations_csv,
+    structure_csv, summary_csv, summary_json,
 };
 use crate::pipeline::{self, Outcome, Setup};
 use crate::settings::{MeansBy, MeansSettings, Overrides, height_above_ground};
@@ -148,6 +148,9 @@ fn put_tables(set: &mut OutputSet, setup: &Setup, outcome: &Outcome) -> Result<(
     put("polygon_summary.csv", summary_csv(setup, outcome))?;
     if setup.settings.means.by.is_some() {
         put("polygon_means.csv", means_csv(setup, outcome))?;
+        if setup.settings.kinematics.write {
+            put("kinematics_means.csv", kinematics_means_csv(setup, outcome))?;
+        }
     }
     if setup.settings.errors.complete {
         put("structure.csv", structure_csv(outcome))?;

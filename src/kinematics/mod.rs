@@ -32,6 +32,7 @@
 //! 95 to 100 %, the others as above. The asymptotic contraction rate was given in 0.2 % of all cases and held in 96 % of these.
 
 mod frame;
+mod means;
 mod quantity;
 pub mod scalar;
 mod scalar_block;
@@ -50,6 +51,7 @@ use crate::units::Wind;
 
 pub(crate) use frame::seen_from;
 pub use frame::{CarriedStation, LocalWind, PolygonFrame};
+pub use means::KinematicMeans;
 pub use quantity::{QUANTITIES, Quantities, Quantity};
 pub use scalar_block::{SCALAR_QUANTITIES, ScalarCell, ScalarCells, ScalarQuantity};
 pub use state::State;
@@ -61,6 +63,14 @@ pub struct KinematicsBlock {
     pub times: Vec<Time>,
     /// Polygon `p` at time `t` stands at `p * times.len() + t`; all empty where the polygon has no value.
     pub cells: Vec<Quantities>,
+}
+
+/// Which parts of the errors.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+enum Errors {
+    All,
+    /// Those of instruments and sites.
+    Persistent,
 }
 
 /// The frames of a network's polygons, made once.
@@ -106,11 +116,32 @@ impl Kinematics {
         block: &EstimateBlock,
         model: Option<(&Sampling, &[StructureFunction])>,
     ) -> KinematicsBlock {
+        self.block(winds, block, model, Errors::All)
+    }
+
+    /// The same with the errors of instruments and sites alone: those that persist.
+    #[must_use]
+    pub fn with_persistent_errors(
+        &self,
+        winds: &WindBlock,
+        block: &EstimateBlock,
+        model: Option<(&Sampling, &[StructureFunction])>,
+    ) -> KinematicsBlock {
+        self.block(winds, block, model, Errors::Persistent)
+    }
+
+    fn block(
+        &self,
+        winds: &WindBlock,
+        block: &EstimateBlock,
+        model: Option<(&Sampling, &[StructureFunction])>,
+        errors: Errors,
+    ) -> KinematicsBlock {
         let n = block.times.len();
         let mut cells = Vec::with_capacity(self.frames.len() * n);
         let frames = self.frames.iter().zip(&self.planetary);
         for ((p, (frame, &planetary)), states) in
-            frames.enumerate().zip(self.states(winds, n, model))
+            frames.enumerate().zip(self.states(winds, n, model, errors))
         {
             let flags = &block.flag[p * n..(p + 1) * n];
             cells.extend(states.iter().zip(flags).map(|((wind, covariance), &flag)| {
@@ -134,6 +165,7 @@ impl Kinematics {
         winds: &'a WindBlock,
         n: usize,
         model: Option<(&'a Sampling, &'a [StructureFunction])>,
+        errors: Errors,
     ) -> impl Iterator<Item = Vec<(LocalWind, MomentCovariance)>> + 'a {
         let models: Vec<&StructureFunction> = match model {
             Some((_, models)) => (0..n)
@@ -141,13 +173,13 @@ impl Kinematics {
                 .collect(),
             None => Vec::new(),
         };
-        let own = own_variances(winds, &models);
+        let own = own_variances(winds, &models, errors);
         self.frames.iter().enumerate().map(move |(p, frame)| {
             let mut states = vec![(LocalWind::default(), [[0.0; 3]; 6]); n];
             for station in &frame.stations {
                 add_station(station, winds, &own, &mut states);
             }
-            if let Some((sampling, _)) = model {
+            if let Some((sampling, _)) = model.filter(|_| errors == Errors::All) {
                 let mut constants: Option<(Exponent, &MomentConstants)> = None;
                 for ((_, sums), model) in states.iter_mut().zip(&models) {
                     let of_polygon = match constants {
@@ -164,7 +196,7 @@ impl Kinematics {
 }
 
 /// What sites and ages add to the variance of either component of every wind, m²/s².
-fn own_variances(winds: &WindBlock, models: &[&StructureFunction]) -> Vec<f64> {
+fn own_variances(winds: &WindBlock, models: &[&StructureFunction], errors: Errors) -> Vec<f64> {
     if models.is_empty() {
         return vec![0.0; winds.age.len()];
     }
@@ -172,7 +204,10 @@ fn own_variances(winds: &WindBlock, models: &[&StructureFunction]) -> Vec<f64> {
         .age
         .chunks(models.len())
         .flat_map(|ages| ages.iter().zip(models))
-        .map(|(&age, m)| m.site_variance + m.temporal.at(f64::from(age)))
+        .map(|(&age, m)| match errors {
+            Errors::All => m.site_variance + m.temporal.at(f64::from(age)),
+            Errors::Persistent => m.site_variance,
+        })
         .collect()
 }
 

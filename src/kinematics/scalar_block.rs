@@ -2,7 +2,7 @@
 
 use super::quantity::{Arrow, LEAST_RATIO};
 use super::scalar::{flux_convergence, frontogenesis, gradient};
-use super::{Kinematics, LocalWind, PolygonFrame, State};
+use super::{Errors, Kinematics, LocalWind, PolygonFrame, State};
 use crate::align::{ScalarBlock, WindBlock};
 use crate::check::Flag;
 use crate::integral::{EstimateBlock, Sampling};
@@ -120,7 +120,9 @@ impl Kinematics {
         let mut cells = Vec::with_capacity(errors.len() * polygons.len() * n);
         let mut values = Vec::new();
         let polygons = polygons.iter().zip(&self.frames).enumerate();
-        for ((p, (polygon, frame)), states) in polygons.zip(self.states(winds, n, model)) {
+        for ((p, (polygon, frame)), states) in
+            polygons.zip(self.states(winds, n, model, Errors::All))
+        {
             for (scalar, &sd) in errors.iter().enumerate() {
                 for (t, (wind, covariance)) in states.iter().enumerate() {
                     values.clear();

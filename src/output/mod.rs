@@ -41,6 +41,7 @@ pub use file::OutputSet;
 pub use flagged::FlaggedFiles;
 pub use frames::{Cell, Frame, Frames};
 pub use geojson::{mesh_geojson, outline_geometry};
+pub use kinematics::kinematics_means_csv;
 pub use profile::{assumptions, profile_csv, profile_json, w_of};
 pub use reading::reading_json;
 pub use series::{Formats, SeriesEncoder, SeriesFiles, series};

@@ -14,7 +14,7 @@ use crate::helmholtz::EnergyBooks;
 use crate::integral::{
     CauseBooks, EstimateBlock, Extremes, FalseDiscovery, FitBooks, GroupMeans, RunStatistics,
 };
-use crate::kinematics::Kinematics;
+use crate::kinematics::{KinematicMeans, Kinematics};
 use crate::report::{Rounding, SpeedStep};
 use crate::settings::{Missing, SensorErrors, Settings};
 use crate::spatial::SpatialCheck;
@@ -147,7 +147,13 @@ impl<'a> Estimation<'a> {
                     let values = aligner.scalars(&winds.times, scalar_errors.len());
                     k.scalars(mesh, winds, &block, sampling, (&values, &scalar_errors))
                 });
-                let kinematics = kinematics.map(|k| k.of(winds, &block, sampling));
+                let moments = kinematics.map(|k| (k, k.of(winds, &block, sampling)));
+                let by = &setup.settings.means;
+                if let Some((k, moments)) = moments.as_ref().filter(|_| by.by.is_some()) {
+                    let persistent = k.with_persistent_errors(winds, &block, sampling);
+                    sums.kinematics = KinematicMeans::of(moments, &persistent, &lasting, by);
+                }
+                let kinematics = moments.map(|(_, moments)| moments);
                 let seen = BlockView {
                     estimates: &block,
                     kinematics: kinematics.as_ref(),
@@ -205,6 +211,7 @@ pub(super) struct Sums {
     pub(super) fits: FitBooks,
     pub(super) causes: CauseBooks,
     pub(super) energy: EnergyBooks,
+    pub(super) kinematics: KinematicMeans,
 }
 
 impl Sums {
@@ -219,6 +226,7 @@ impl Sums {
             fits: FitBooks::of(block),
             causes: CauseBooks::of(block, planetary.len()),
             energy: EnergyBooks::default(),
+            kinematics: KinematicMeans::default(),
         };
         if !block.extra.is_empty() {
             sums.extremes.renumber(common, &block.extra);
@@ -238,6 +246,7 @@ impl Sums {
         self.fits.merge(&later.fits);
         self.causes.merge(&later.causes);
         self.energy.merge(&later.energy);
+        self.kinematics.merge(&later.kinematics);
     }
 }
 

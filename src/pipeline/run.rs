@@ -12,7 +12,7 @@ use crate::integral::{
     Attribution, CauseBooks, EstimateBlock, ExtraPolygon, Extremes, FitBook, FitBooks, GroupMeans,
     RunStatistics, attribute,
 };
-use crate::kinematics::{KinematicsBlock, ScalarCells};
+use crate::kinematics::{KinematicMeans, KinematicsBlock, ScalarCells};
 use crate::polygon::StationPolygon;
 use crate::report::{InputOrder, ReportFiles, ReportTable};
 use crate::settings::Settings;
@@ -48,6 +48,8 @@ pub struct Outcome {
     pub causes: CauseBooks,
     /// The same by hour, day, month or period, if the settings ask for it.
     pub means: GroupMeans,
+    /// Means of the kinematic quantities by the same groups, if both are asked for.
+    pub kinematic_means: KinematicMeans,
     /// Linear fits beside the line integrals of polygons with more than three stations.
     pub fits: FitBooks,
     /// Kinetic energy by parts of the wind; nothing if they were not asked for.
@@ -178,6 +180,7 @@ pub fn run<T: Send>(
         causes: estimation.sums.causes,
         fits: estimation.sums.fits,
         energy: estimation.sums.energy,
+        kinematic_means: estimation.sums.kinematics,
         structure: estimation
             .field
             .filter(|_| setup.settings.errors.complete)
