@@ -6,7 +6,7 @@
 Needs Python 3 and `zstandard`. Rings are simplified (Douglas & Peucker 1973) to TOLERANCE degrees, islands smaller than
 SMALLEST square degrees are dropped. The file is a Zstandard frame of: for each ring the number of points and its points,
 all as LEB128 numbers; coordinates are zigzag differences of longitude and latitude in thousandths of a degree, the
-first point's from 0, 0.
+first point's from 0, 0. Every ring runs clockwise seen from above, outlines and holes alike.
 """
 
 import json
@@ -33,12 +33,13 @@ def rings(topology):
     for geometry in topology["objects"]["land"]["geometries"]:
         polygons = geometry["arcs"] if geometry["type"] == "MultiPolygon" else [geometry["arcs"]]
         for polygon in polygons:
-            for ring in polygon:
+            for number_of_ring, ring in enumerate(polygon):
                 points = []
                 for number in ring:
                     arc = arcs[number] if number >= 0 else arcs[~number][::-1]
                     points.extend(arc[1:] if points else arc)
-                yield points
+                # Outlines run clockwise on the sphere, as TopoJSON has them; holes are turned round to do the same.
+                yield points if number_of_ring == 0 else points[::-1]
 
 
 def simplified(points):

@@ -26,7 +26,7 @@ use crate::structure::typical_spacing;
 use crate::warning::Warning;
 
 pub use calibrate::{CalibrationOutcome, calibrate};
-pub use events::{EventsOutcome, find_events};
+pub use events::{EventsOutcome, find_events, find_events_and};
 pub use profile::{LevelEstimate, PolygonProfile, ProfileOutcome, profile};
 pub use reading::Reading;
 pub use run::{BlockView, Outcome, StructureReport, run};
@@ -80,6 +80,20 @@ pub struct Setup {
 }
 
 impl Setup {
+    /// Whether there is anything to estimate.
+    ///
+    /// # Errors
+    /// No polygon is within the limits.
+    pub fn has_polygons(&self) -> Result<(), Error> {
+        if self.built.polygons.is_empty() {
+            return Err(Error::Network(format!(
+                "none of {} polygons is within the limits; `gyremesh polygons` lists the reasons",
+                self.built.excluded.len()
+            )));
+        }
+        Ok(())
+    }
+
     /// Reads settings and stations, and builds the polygons.
     ///
     /// # Errors

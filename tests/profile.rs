@@ -284,6 +284,22 @@ fn files_table_and_caution() {
     assert!(csv.lines().all(|line| columns(line) == header));
 }
 
+/// Reports kept by an earlier run, or sorted in little memory, give the same profiles.
+#[test]
+fn a_cache_or_little_memory_changes_nothing() {
+    let folder = tempfile::tempdir().unwrap();
+    write(folder.path(), &reports(|_, _| false), ALL);
+    let plain = run(folder.path(), &["--json"]);
+    assert_eq!(plain.2, 0, "{}", plain.1);
+    let file = folder.path().join("kept");
+    let kept = ["--json", "--cache", file.to_str().unwrap()];
+    for more in [&kept[..], &kept, &["--json", "--memory", "1MiB"]] {
+        let (out, err, status) = run(folder.path(), more);
+        assert_eq!((out, status), (plain.0.clone(), 0), "{more:?}: {err}");
+    }
+    assert!(file.exists());
+}
+
 #[test]
 fn wrong_settings_say_what_is_expected() {
     let folder = tempfile::tempdir().unwrap();

@@ -2,6 +2,8 @@
 #![cfg(feature = "parquet")]
 #![allow(clippy::unwrap_used, clippy::panic, reason = "tests may panic")]
 
+mod common;
+
 use std::collections::BTreeMap;
 use std::fs::File;
 use std::path::Path;
@@ -60,7 +62,11 @@ fn text(batch: &RecordBatch, column: usize, row: usize) -> Vec<f64> {
 }
 
 fn name(batch: &RecordBatch, column: usize, row: usize) -> String {
-    let array = batch.column(column).as_dictionary::<Int32Type>();
+    let array = batch.column(column);
+    if let Some(plain) = array.as_string_opt::<i32>() {
+        return plain.value(row).to_string();
+    }
+    let array = array.as_dictionary::<Int32Type>();
     if array.is_null(row) {
         return String::new();
     }
@@ -70,41 +76,40 @@ fn name(batch: &RecordBatch, column: usize, row: usize) -> String {
 
 /// The same bytes of every number, column for column, row for row.
 #[test]
-fn parquet_holds_what_the_csv_holds() {
+fn parquet_and_arrow_hold_what_the_csv_holds() {
     let out = tempfile::tempdir().unwrap();
-    estimate(out.path(), &["--format", "csv,parquet"]);
+    estimate(out.path(), &["--format", "csv,parquet,arrow"]);
     compare(out.path());
 }
 
 /// With triangles that come and go (`missing = "remesh"`) as well.
 #[test]
-fn parquet_holds_what_the_csv_holds_where_triangles_come_and_go() {
+fn parquet_and_arrow_hold_what_the_csv_holds_where_triangles_come_and_go() {
     let out = tempfile::tempdir().unwrap();
-    let root = Path::new(env!("CARGO_MANIFEST_DIR"));
-    let settings = std::fs::read_to_string(root.join("networks/ostrin/network.toml")).unwrap();
-    let settings = settings
-        .replace(
-            "stations.csv",
-            root.join("networks/ostrin/stations.csv").to_str().unwrap(),
-        )
-        .replace("../../examples", root.join("examples").to_str().unwrap())
-        .replace("[limits]", "[polygons]\nmissing = \"remesh\"\n[limits]");
-    let network = out.path().join("network.toml");
-    std::fs::write(&network, settings).unwrap();
-    estimate_network(&network, out.path(), &["--format", "csv,parquet"]);
+    let network = common::remeshed_demo(out.path());
+    estimate_network(&network, out.path(), &["--format", "csv,parquet,arrow"]);
     compare(out.path());
 }
 
 fn compare(out: &Path) {
-    let csv = rows(&out.join("polygons.csv"));
     let file = File::open(out.join("polygons.parquet")).unwrap();
     let builder = ParquetRecordBatchReaderBuilder::try_new(file).unwrap();
-    let names: Vec<String> = builder
-        .schema()
-        .fields()
-        .iter()
-        .map(|f| f.name().clone())
-        .collect();
+    let schema = builder.schema().clone();
+    compare_batches(out, &schema, builder.build().unwrap().map(Result::unwrap));
+    let file = File::open(out.join("polygons.arrow")).unwrap();
+    let reader = arrow_ipc::reader::FileReader::try_new(file, None).unwrap();
+    let schema = reader.schema();
+    assert!(schema.metadata()["caution"].contains("not warnings"));
+    compare_batches(out, &schema, reader.map(Result::unwrap));
+}
+
+fn compare_batches(
+    out: &Path,
+    schema: &arrow_schema::Schema,
+    batches: impl Iterator<Item = RecordBatch>,
+) {
+    let csv = rows(&out.join("polygons.csv"));
+    let names: Vec<String> = schema.fields().iter().map(|f| f.name().clone()).collect();
     let header = csv::Reader::from_path(out.join("polygons.csv"))
         .unwrap()
         .headers()
@@ -112,8 +117,7 @@ fn compare(out: &Path) {
         .clone();
     assert_eq!(names, header.iter().collect::<Vec<_>>());
     let mut at = 0;
-    for batch in builder.build().unwrap() {
-        let batch = batch.unwrap();
+    for batch in batches {
         for row in 0..batch.num_rows() {
             let expected = &csv[at];
             let micros = batch

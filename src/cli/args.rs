@@ -1,6 +1,8 @@
 //! The commands, and the options that several of them have.
 
-use std::path::PathBuf;
+use std::io;
+use std::path::{Path, PathBuf};
+use std::time::Duration;
 
 use clap::{Parser, Subcommand, ValueEnum};
 
@@ -11,7 +13,10 @@ use super::events::EventsArgs;
 use super::help;
 use super::polygons::PolygonsArgs;
 use super::profile::ProfileArgs;
+use super::report::PageArgs;
 use crate::error::Error;
+use crate::output::OutputSet;
+use crate::output::plot::png;
 use crate::pipeline::Setup;
 use crate::settings::Overrides;
 use crate::time::Time;
@@ -47,6 +52,9 @@ pub(super) enum Command {
     /// Profiles of vorticity, divergence and vertical motion from reports on levels: soundings, profilers, masts, lidars
     #[command(after_help = help::PROFILE)]
     Profile(ProfileArgs),
+    /// Make one page for a browser, which works offline: map that moves in time, series, events, stations, settings
+    #[command(after_help = help::REPORT)]
+    Report(PageArgs),
 }
 
 /// What every command that estimates takes: a network, its reports, and which of them are used.
@@ -146,6 +154,65 @@ impl MeshArgs {
             longest_edge: self.longest_edge,
             ..Overrides::default()
         }
+    }
+}
+
+/// How the winds at the analysis times come about.
+#[derive(Debug, clap::Args)]
+pub(super) struct AnalysisArgs {
+    /// Time between estimates, such as 5min or 1h
+    #[arg(long, value_name = "DURATION", value_parser = units::parse_duration)]
+    pub interval: Option<Duration>,
+    /// How far a report may be from the analysis time
+    #[arg(long, value_name = "DURATION", value_parser = units::parse_duration)]
+    pub tolerance: Option<Duration>,
+    /// Take the vector mean of the reports in the window of this length that ends at the analysis time
+    #[arg(long, value_name = "DURATION", value_parser = units::parse_duration)]
+    pub window: Option<Duration>,
+}
+
+impl AnalysisArgs {
+    /// Adds these to what stands in place of the settings.
+    pub fn over(&self, overrides: Overrides) -> Overrides {
+        Overrides {
+            interval: self.interval,
+            tolerance: self.tolerance,
+            window: self.window,
+            ..overrides
+        }
+    }
+}
+
+/// Pictures.
+#[derive(Debug, clap::Args)]
+pub(super) struct PictureArgs {
+    /// Draw pictures too, in one format or both: png, svg
+    #[arg(long, value_name = "FORMAT", value_delimiter = ',')]
+    pub plot: Vec<PictureFormat>,
+}
+
+/// A format of pictures.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, ValueEnum)]
+pub(super) enum PictureFormat {
+    /// Pixels, sharp in print
+    Png,
+    /// Shapes and text
+    Svg,
+}
+
+impl PictureArgs {
+    /// Writes a picture in the formats asked for.
+    pub fn put(&self, set: &mut OutputSet, name: &str, svg: &str) -> Result<(), Error> {
+        if self.plot.contains(&PictureFormat::Svg) {
+            set.put(&format!("{name}.svg"), svg.as_bytes())?;
+        }
+        if self.plot.contains(&PictureFormat::Png) {
+            let name = format!("{name}.png");
+            let bytes =
+                png(svg).map_err(|e| Error::write(Path::new(&name), io::Error::other(e)))?;
+            set.put(&name, &bytes)?;
+        }
+        Ok(())
     }
 }
 

@@ -4,11 +4,12 @@ use std::path::{Path, PathBuf};
 
 use clap::Args;
 
-use super::args::{InputArgs, OutputArgs};
+use super::args::{InputArgs, OutputArgs, PictureArgs};
 use super::run::{over_reports, tell};
 use super::text::calibration::calibration_text;
 use super::{Status, print, say};
 use crate::error::Error;
+use crate::output::plot::calibration_picture;
 use crate::output::{
     OutputSet, calibration_csv, calibration_json, corrected_list, corrected_list_section,
     corrections_of, maintenance_csv,
@@ -20,6 +21,8 @@ use crate::pipeline::{self, CalibrationOutcome, Setup};
 pub(super) struct CalibrateArgs {
     #[command(flatten)]
     output: OutputArgs,
+    #[command(flatten)]
+    pictures: PictureArgs,
     /// Write a station list with the corrections and their origin
     #[arg(long, value_name = "FILE")]
     apply: Option<PathBuf>,
@@ -38,6 +41,8 @@ pub(super) fn calibrate(args: &CalibrateArgs) -> Result<Status, Error> {
         set.put("maintenance.csv", maintenance.as_bytes())?;
         let calibration = calibration_csv(&setup, &outcome);
         set.put("calibration.csv", calibration.as_bytes())?;
+        let picture = calibration_picture(&setup, &outcome);
+        args.pictures.put(&mut set, "calibration", &picture)?;
         set.commit()?;
     }
     let status = tell(&outcome.warnings, &outcome.reading);

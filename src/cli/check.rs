@@ -10,7 +10,7 @@ use super::text::reading::reading_text;
 use super::text::screening::explained_text;
 use super::{Status, print};
 use crate::error::{Error, nearest_name};
-use crate::output::{FlaggedFiles, Formats, OutputSet, reading_json};
+use crate::output::{FlaggedFiles, FlaggedFormats, OutputSet, reading_json};
 use crate::pipeline::{Reading, Sources};
 use crate::settings::Overrides;
 use crate::station::Network;
@@ -51,7 +51,7 @@ pub(super) fn check(args: &CheckArgs) -> Result<Status, Error> {
         (Some(id), Some(at)) => Some((station(network, id)?, at)),
         _ => None,
     };
-    let formats = Formats {
+    let formats = FlaggedFormats {
         csv: args.format.contains(&Format::Csv),
         parquet: args.format.contains(&Format::Parquet),
     };

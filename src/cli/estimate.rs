@@ -1,38 +1,34 @@
 //! `gyremesh estimate`.
 
 use std::path::{Path, PathBuf};
-use std::time::Duration;
 
 use clap::{Args, ValueEnum};
 
-use super::args::{Format, InputArgs};
+use super::args::{AnalysisArgs, InputArgs};
 use super::run::{over_reports, tell};
 use super::text::estimate::run_summary;
-use super::{Status, print};
+use super::{Status, print, say};
 use crate::error::Error;
 use crate::output::{
-    Formats, OutputSet, kinematics_means_csv, means_csv, mesh_geojson, series, stations_csv,
-    structure_csv, summary_csv, summary_json,
+    OutputSet, SeriesChoice, SeriesFormat, kinematics_means_csv, means_csv, mesh_geojson, series,
+    stations_csv, structure_csv, summary_csv, summary_json,
 };
 use crate::pipeline::{self, Outcome, Setup};
 use crate::settings::{MeansBy, MeansSettings, Overrides, height_above_ground};
-use crate::units;
+use crate::time::Time;
 
 /// Options of `estimate`.
 #[derive(Debug, Args)]
+#[expect(
+    clippy::struct_excessive_bools,
+    reason = "switches of the command line"
+)]
 pub(super) struct EstimateArgs {
     /// Folder of the results [default: out/NAME, NAME being the folder of the settings file]
     #[arg(long, value_name = "DIR")]
     out: Option<PathBuf>,
-    /// Time between estimates, such as 5min or 1h
-    #[arg(long, value_name = "DURATION", value_parser = units::parse_duration)]
-    interval: Option<Duration>,
-    /// How far a report may be from the analysis time
-    #[arg(long, value_name = "DURATION", value_parser = units::parse_duration)]
-    tolerance: Option<Duration>,
-    /// Take the vector mean of the reports in the window of this length that ends at the analysis time
-    #[arg(long, value_name = "DURATION", value_parser = units::parse_duration)]
-    window: Option<Duration>,
+    #[command(flatten)]
+    analysis: AnalysisArgs,
     /// Formats of the series, several separated by commas
     #[arg(
         long,
@@ -41,6 +37,9 @@ pub(super) struct EstimateArgs {
         default_value = "csv"
     )]
     format: Vec<Format>,
+    /// Times of polygons.geojson, RFC 3339; several are allowed [default: the last]
+    #[arg(long, value_name = "TIME", value_parser = Time::parse_rfc3339)]
+    at: Vec<Time>,
     /// Write no series, only the summary of each polygon
     #[arg(long)]
     summary_only: bool,
@@ -73,6 +72,33 @@ fn means_by(text: &str) -> Result<MeansBy, String> {
         .ok_or_else(|| format!("`{text}` is none of hour, day, month, period"))
 }
 
+/// A format of the series.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, ValueEnum)]
+enum Format {
+    /// Text
+    Csv,
+    /// The same columns, typed, null for missing; with mesh.parquet (GeoParquet)
+    Parquet,
+    /// The columns of Parquet as an Arrow IPC file
+    Arrow,
+    /// NetCDF-4 (CF, UGRID): polygons as faces, stations as nodes, with the winds
+    Netcdf,
+    /// The polygons with their values at the times of --at
+    Geojson,
+}
+
+impl From<Format> for SeriesFormat {
+    fn from(format: Format) -> Self {
+        match format {
+            Format::Csv => Self::Csv,
+            Format::Parquet => Self::Parquet,
+            Format::Arrow => Self::Arrow,
+            Format::Netcdf => Self::Netcdf,
+            Format::Geojson => Self::Geojson,
+        }
+    }
+}
+
 /// Parts of the errors.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, ValueEnum)]
 enum Parts {
@@ -85,15 +111,12 @@ enum Parts {
 impl EstimateArgs {
     fn overrides(&self) -> Overrides {
         Overrides {
-            interval: self.interval,
-            tolerance: self.tolerance,
-            window: self.window,
             instrument_errors: self.errors == Parts::Instrument,
             kinematics: self.kinematics,
             decompose: self.decompose,
             w_at: self.w_at,
             by: self.by,
-            ..self.input.overrides()
+            ..self.analysis.over(self.input.overrides())
         }
     }
 }
@@ -101,24 +124,23 @@ impl EstimateArgs {
 pub(super) fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
     let mut setup = args.input.setup_with(&args.overrides())?;
     // Without a series there is no file for them.
-    setup.settings.kinematics.write &= !args.summary_only;
-    if setup.built.polygons.is_empty() {
-        return Err(Error::Network(format!(
-            "none of {} polygons is within the limits; `gyremesh polygons` lists the reasons",
-            setup.built.excluded.len()
-        )));
+    if args.summary_only {
+        setup.settings.kinematics.write = false;
+        setup.settings.w_at = None;
     }
+    setup.has_polygons()?;
     let folder = args
         .out
         .clone()
         .unwrap_or_else(|| default_folder(&args.input.network));
-    let formats = Formats {
-        csv: !args.summary_only && args.format.contains(&Format::Csv),
-        parquet: !args.summary_only && args.format.contains(&Format::Parquet),
+    let wanted = args.format.iter().filter(|_| !args.summary_only);
+    let choice = SeriesChoice {
+        formats: wanted.map(|&format| format.into()).collect(),
+        at: args.at.clone(),
     };
     let run = over_reports(&setup.settings, args.quiet, |order, progress| {
         let mut set = OutputSet::new(&folder)?;
-        let (encoder, mut series_files) = series(&setup, formats, &mut set)?;
+        let (encoder, mut series_files) = series(&setup, &choice, &mut set)?;
         let outcome = pipeline::run(
             &setup,
             order,
@@ -129,10 +151,14 @@ pub(super) fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
         Ok((outcome, set, series_files))
     });
     let (outcome, mut set, series_files) = run?;
-    series_files.finish(&mut set)?;
+    let unmet = series_files.finish(&setup, &outcome.extra, &mut set)?;
     put_tables(&mut set, &setup, &outcome)?;
     let files = set.commit()?;
 
+    for time in unmet {
+        let message = format!("polygons.geojson: {time} is no analysis time with reports");
+        say("warning", &message);
+    }
     let status = tell(&outcome.warnings, &outcome.reading);
     if !args.quiet {
         print(&run_summary(&setup, &outcome, &files))?;
@@ -159,7 +185,7 @@ fn put_tables(set: &mut OutputSet, setup: &Setup, outcome: &Outcome) -> Result<(
 }
 
 /// `out/NAME`, NAME being the folder of the settings file.
-fn default_folder(network: &Path) -> PathBuf {
+pub(super) fn default_folder(network: &Path) -> PathBuf {
     let name = network
         .canonicalize()
         .ok()

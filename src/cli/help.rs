@@ -44,8 +44,13 @@ Prints:  period, share of reports used, polygons, strongest convergence and spin
 Writes:  polygons.csv (a row for each time and polygon; other formats with --format), polygon_summary.csv (a row for \
 each polygon: mean, standard deviation, extremes, share beyond 1.96 standard errors), mesh.geojson, stations.csv, \
 summary.json; with --kinematics also kinematics.csv (mean wind, deformation, curvature and shear vorticity and more, a \
-row for each time and polygon) and scalars.csv (observed scalars), with --w-at vertical_motion.csv (w = -D h), with --decompose decompose.csv (energies of the rotational, divergent and harmonic part \
-of the wind at each time) and decompose_stations.csv (streamfunction and velocity potential). Files appear only when they are whole.
+row for each time and polygon) and scalars.csv (observed scalars); with --w-at vertical_motion.csv (w = -D h); with \
+--decompose decompose.csv (energies of the rotational, divergent and harmonic part of the wind at each time) and \
+decompose_stations.csv (streamfunction and velocity potential); with --by polygon_means.csv, and kinematics_means.csv. Files \
+appear only when they are whole.
+Formats: csv; parquet (polygons.parquet, mesh.parquet), arrow (polygons.arrow); netcdf (polygons.nc, CF and UGRID); \
+geojson (polygons.geojson, at the last time or those of --at). A NetCDF file is made in memory, 220 bytes for each polygon \
+and time, with kinematics 480: take long archives in parts, with --from and --to.
 
 Settings file (defaults in brackets):
   name                        name of the network
@@ -191,5 +196,17 @@ Settings:
              height          for reports without levels, such as 500 m: w there from the divergence at the ground
 
 Example: gyremesh profile soundings/network.toml --out out/soundings
+
+These are estimates, not warnings: follow the national weather service, site safety rules and local codes.";
+
+pub(super) const REPORT: &str = "\
+Reads:   settings, station list, report files, twice: for the estimates and for the calibration.
+Prints:  where the page is.
+Writes:  report.html: a map of the polygons coloured by vorticity or divergence with the winds as barbs (WMO), which \
+moves in time; the series of each polygon with 95 % intervals; strongest values; events and arrivals; stations with \
+their flags and calibration; polygons left out, and why; settings. One file that loads nothing from elsewhere. Of more \
+than some days it shows every second, fourth, ... analysis time, and says so.
+
+Example: gyremesh report networks/ostrin/network.toml --out out/ostrin
 
 These are estimates, not warnings: follow the national weather service, site safety rules and local codes.";

@@ -9,6 +9,7 @@ mod expect;
 mod help;
 mod polygons;
 mod profile;
+mod report;
 mod run;
 mod text;
 
@@ -55,6 +56,7 @@ pub fn main() -> Status {
         Command::Calibrate(args) => calibrate::calibrate(args),
         Command::Events(args) => events::events(args),
         Command::Profile(args) => profile::profile(args),
+        Command::Report(args) => report::report(args),
     };
     match result {
         Ok(status) => status,

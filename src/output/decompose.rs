@@ -6,15 +6,9 @@ use super::csv::quoted;
 use crate::helmholtz::{DecompositionBlock, Part};
 use crate::pipeline::Setup;
 
-/// Writes rows of both files.
+/// Writes rows of either file.
 pub(super) struct DecomposeRows {
     names: Vec<String>,
-}
-
-/// Rows of a block.
-pub(super) struct DecomposeBytes {
-    pub(super) energies: Vec<u8>,
-    pub(super) stations: Vec<u8>,
 }
 
 impl DecomposeRows {
@@ -55,67 +49,67 @@ impl DecomposeRows {
         out
     }
 
-    pub(super) fn encode(&self, block: &DecompositionBlock) -> DecomposeBytes {
-        let mut out = DecomposeBytes {
-            energies: Vec::new(),
-            stations: Vec::new(),
-        };
+    /// Rows of `decompose.csv`; times without a mesh keep theirs.
+    pub(super) fn energies(block: &DecompositionBlock) -> Vec<u8> {
+        let mut out = Vec::with_capacity(block.times.len() * 256);
         let mut buffer = Buffer::new();
-        let mut counts = String::new();
         for ((time, found), reporting) in block.times.iter().zip(&block.at).zip(&block.reporting) {
-            let time = time.to_string();
-            let energies = &mut out.energies;
-            energies.extend_from_slice(time.as_bytes());
+            out.extend_from_slice(format!("{time},{reporting}").as_bytes());
             let Some((mesh, split)) = found else {
-                // Times without a mesh keep their row.
-                energies.extend_from_slice(format!(",{reporting},0,0,0,0,0").as_bytes());
-                energies.extend_from_slice(&[b','; 8]);
-                energies.push(b'\n');
+                out.extend_from_slice(b",0,0,0,0,0,,,,,,,,\n");
                 continue;
             };
-            counts.clear();
             for count in [
-                *reporting,
                 mesh.stations.len(),
                 mesh.inside(),
                 mesh.triangles,
                 mesh.left_out,
                 mesh.holes,
             ] {
-                counts.push(',');
-                counts.push_str(&count.to_string());
+                out.extend_from_slice(format!(",{count}").as_bytes());
             }
-            energies.extend_from_slice(counts.as_bytes());
             let numbers = [mesh.area / 1e6, split.energy].into_iter();
             for number in numbers.chain(split.parts) {
-                energies.push(b',');
-                energies.extend_from_slice(buffer.format(number).as_bytes());
+                out.push(b',');
+                out.extend_from_slice(buffer.format(number).as_bytes());
             }
             for part in Part::ALL {
-                energies.push(b',');
+                out.push(b',');
                 if let Some(share) = split.share(part) {
-                    energies.extend_from_slice(buffer.format(share).as_bytes());
+                    out.extend_from_slice(buffer.format(share).as_bytes());
                 }
             }
-            energies.push(b'\n');
+            out.push(b'\n');
+        }
+        out
+    }
+
+    /// Rows of `decompose_stations.csv`, of the stations of the mesh.
+    pub(super) fn stations(&self, block: &DecompositionBlock) -> Vec<u8> {
+        let mut out = Vec::new();
+        let mut buffer = Buffer::new();
+        for (time, found) in block.times.iter().zip(&block.at) {
+            let Some((mesh, split)) = found else {
+                continue;
+            };
+            let time = time.to_string();
             let nodes = mesh
                 .stations
                 .iter()
                 .zip(&mesh.interior)
                 .zip(&split.stations);
             for ((&station, &inside), found) in nodes {
-                let row = &mut out.stations;
-                row.extend_from_slice(time.as_bytes());
-                row.push(b',');
-                row.extend_from_slice(self.names[station].as_bytes());
-                row.extend_from_slice(if inside { b",true" } else { b",false" });
+                out.extend_from_slice(time.as_bytes());
+                out.push(b',');
+                out.extend_from_slice(self.names[station].as_bytes());
+                out.extend_from_slice(if inside { b",true" } else { b",false" });
                 let potentials = [found.streamfunction, found.velocity_potential];
                 let winds = found.parts.iter().flat_map(|w| [w.u, w.v]);
                 for number in potentials.into_iter().chain(winds) {
-                    row.push(b',');
-                    row.extend_from_slice(buffer.format(number).as_bytes());
+                    out.push(b',');
+                    out.extend_from_slice(buffer.format(number).as_bytes());
                 }
-                row.push(b'\n');
+                out.push(b'\n');
             }
         }
         out

@@ -9,7 +9,6 @@ use zmij::Buffer;
 use super::file::OutputSet;
 #[cfg(feature = "parquet")]
 use super::flagged_parquet::FlaggedParquet;
-use super::series::Formats;
 use crate::check::{Flag, Test};
 use crate::error::Error;
 use crate::pipeline::Window;
@@ -17,6 +16,15 @@ use crate::report::ReportTable;
 use crate::settings::Settings;
 use crate::station::Network;
 use crate::units::FromDirection;
+
+/// Formats of the flagged reports.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub struct FlaggedFormats {
+    /// `reports_flagged.csv`.
+    pub csv: bool,
+    /// `reports_flagged.parquet`.
+    pub parquet: bool,
+}
 
 /// Rows that one thread encodes at a time.
 pub(super) const CHUNK: usize = 1 << 14;
@@ -89,7 +97,7 @@ impl FlaggedFiles {
     pub fn new(
         settings: &Settings,
         network: &Network,
-        formats: Formats,
+        formats: FlaggedFormats,
         set: &mut OutputSet,
     ) -> Result<Self, Error> {
         let csv = if formats.csv {

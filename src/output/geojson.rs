@@ -18,29 +18,50 @@ const PIECE: f64 = 25e3;
 /// Decimals of the coordinates: 1 cm (RFC 7946, 11.2 advises against more than needed).
 const DECIMALS: f64 = 1e7;
 
+/// A polygon of the mesh.
+pub(super) struct MeshRow<'a> {
+    pub(super) polygon: &'a StationPolygon,
+    pub(super) planetary: Option<f64>,
+    /// Why it is left out.
+    pub(super) excluded: Option<String>,
+    /// True if it stands only where stations are missing.
+    pub(super) fills_hole: bool,
+}
+
+/// The polygons of the network, those left out, and those of `extra`, which stand only where stations are missing.
+pub(super) fn mesh_rows<'a>(
+    setup: &'a Setup,
+    extra: &'a [ExtraPolygon],
+) -> impl Iterator<Item = MeshRow<'a>> {
+    let polygons = setup.built.polygons.iter();
+    let used = polygons.zip(&setup.planetary).map(|(polygon, &f)| MeshRow {
+        polygon,
+        planetary: Some(f),
+        excluded: None,
+        fills_hole: false,
+    });
+    let excluded = setup.built.excluded.iter().map(|(polygon, why)| MeshRow {
+        polygon,
+        planetary: None,
+        excluded: Some(why.to_string()),
+        fills_hole: false,
+    });
+    let extra = extra.iter().map(|extra| MeshRow {
+        polygon: &extra.polygon,
+        planetary: Some(extra.planetary),
+        excluded: None,
+        fills_hole: true,
+    });
+    used.chain(excluded).chain(extra)
+}
+
 /// `mesh.geojson`: one feature for each polygon, those left out with the reason; `extra` are those that stand only where
 /// stations are missing.
 #[must_use]
 pub fn mesh_geojson(setup: &Setup, extra: &[ExtraPolygon]) -> String {
-    let used = setup
-        .built
-        .polygons
-        .iter()
-        .zip(&setup.planetary)
-        .map(|(p, &f)| (p, Some(f), None));
-    let excluded = setup
-        .built
-        .excluded
-        .iter()
-        .map(|(p, why)| (p, None, Some(why.to_string())));
-    let extra = extra
-        .iter()
-        .map(|e| (&e.polygon, Some(e.planetary), None, true));
-    let features = used
-        .chain(excluded)
-        .map(|(polygon, planetary, excluded)| (polygon, planetary, excluded, false))
-        .chain(extra)
-        .map(|(polygon, planetary, excluded, fills_hole)| {
+    let features = mesh_rows(setup, extra)
+        .map(|row| {
+            let polygon = row.polygon;
             let shape = &polygon.shape;
             let properties = json!({
                 "polygon": polygon.id,
@@ -54,9 +75,9 @@ pub fn mesh_geojson(setup: &Setup, extra: &[ExtraPolygon]) -> String {
                 "noise_factor_per_m": shape.noise_factor,
                 "elevation_spread_m": shape.elevation_spread,
                 "slope": shape.slope,
-                "planetary_vorticity": planetary,
-                "fills_hole": fills_hole,
-                "excluded": excluded,
+                "planetary_vorticity": row.planetary,
+                "fills_hole": row.fills_hole,
+                "excluded": row.excluded,
             });
             let properties: Option<JsonObject> = match properties {
                 serde_json::Value::Object(object) => Some(object),
@@ -81,7 +102,7 @@ pub fn mesh_geojson(setup: &Setup, extra: &[ExtraPolygon]) -> String {
     text
 }
 
-fn geojson_geometry(polygons: &MultiPolygon<f64>) -> Geometry {
+pub(super) fn geojson_geometry(polygons: &MultiPolygon<f64>) -> Geometry {
     match polygons.0.as_slice() {
         [one] => Geometry::new(GeometryValue::from(one)),
         _ => Geometry::new(GeometryValue::from(polygons)),

@@ -1,4 +1,4 @@
-//! `kinematics.csv` and `kinematics.parquet`: a row for each time and polygon, in the order of `polygons.csv`; empty or
+//! `kinematics.csv`, `.parquet` and `.arrow`: a row for each time and polygon, in the order of `polygons.csv`; empty or
 //! null where a quantity is suppressed or missing.
 
 #[cfg(feature = "parquet")]
@@ -10,11 +10,9 @@ use arrow_array::{
     TimestampMicrosecondArray, types::Int32Type,
 };
 #[cfg(feature = "parquet")]
-use arrow_schema::{DataType, Field, Schema, SchemaRef, TimeUnit};
+use arrow_schema::{ArrowError, DataType, Field, Schema, SchemaRef, TimeUnit};
 #[cfg(feature = "parquet")]
 use parquet::arrow::arrow_writer::ArrowRowGroupWriterFactory;
-#[cfg(feature = "parquet")]
-use parquet::errors::Result;
 use zmij::Buffer;
 
 use super::csv::{group_name, quoted};
@@ -114,15 +112,14 @@ pub(super) fn short(error: f64) -> f32 {
     error as f32
 }
 
-/// Encodes blocks as row groups of `kinematics.parquet`.
+/// The columns of `kinematics.parquet` and `kinematics.arrow`.
 #[cfg(feature = "parquet")]
-pub(super) struct KinematicsParquet {
-    factory: ArrowRowGroupWriterFactory,
+pub(super) struct KinematicsColumns {
     polygons: ArrayRef,
 }
 
 #[cfg(feature = "parquet")]
-static SCHEMA: LazyLock<SchemaRef> = LazyLock::new(|| {
+pub(super) static SCHEMA: LazyLock<SchemaRef> = LazyLock::new(|| {
     let time = DataType::Timestamp(TimeUnit::Microsecond, Some("UTC".into()));
     let name = DataType::Dictionary(Box::new(DataType::Int32), Box::new(DataType::Utf8));
     let mut fields = vec![
@@ -141,27 +138,20 @@ static SCHEMA: LazyLock<SchemaRef> = LazyLock::new(|| {
     Arc::new(Schema::new(fields))
 });
 
-/// Starts the file.
-///
-/// # Errors
-/// The library's refusal.
 #[cfg(feature = "parquet")]
-pub(super) fn kinematics_parquet(setup: &Setup) -> Result<(KinematicsParquet, ParquetFile)> {
-    let numbers = SCHEMA.fields().iter().skip(2).map(|f| f.name().as_str());
-    let numbers: Vec<&str> = numbers.collect();
-    let (_, factory, file) = start_file(setup, &SCHEMA, &numbers, &["time"])?;
-    let names = setup.built.polygons.iter().map(|p| p.id.as_str());
-    let polygons = Arc::new(StringArray::from_iter_values(names));
-    Ok((KinematicsParquet { factory, polygons }, file))
-}
+impl KinematicsColumns {
+    pub(super) fn new(setup: &Setup) -> Self {
+        let names = setup.built.polygons.iter().map(|p| p.id.as_str());
+        Self {
+            polygons: Arc::new(StringArray::from_iter_values(names)),
+        }
+    }
 
-#[cfg(feature = "parquet")]
-impl KinematicsParquet {
-    /// Encodes a block: rows by time, then polygon.
+    /// The columns of a block: rows by time, then polygon.
     ///
     /// # Errors
     /// The library's refusal.
-    pub(super) fn encode(&self, block: &KinematicsBlock) -> Result<RowGroup> {
+    pub(super) fn of(&self, block: &KinematicsBlock) -> Result<Vec<ArrayRef>, ArrowError> {
         let (n, polygons) = (block.times.len(), self.polygons.len());
         let times = block.times.iter().map(|time| time.micros());
         let times = times.flat_map(|time| std::iter::repeat_n(time, polygons));
@@ -181,6 +171,39 @@ impl KinematicsParquet {
             let errors = cells().map(|cell| cell.get(quantity).map(|v| short(v.1)));
             columns.push(Arc::new(errors.collect::<Float32Array>()));
         }
-        encode_columns(&self.factory, &SCHEMA, &columns)
+        Ok(columns)
+    }
+}
+
+/// Encodes blocks as row groups of `kinematics.parquet`.
+#[cfg(feature = "parquet")]
+pub(super) struct KinematicsParquet {
+    factory: ArrowRowGroupWriterFactory,
+    columns: KinematicsColumns,
+}
+
+/// Starts the file.
+///
+/// # Errors
+/// The library's refusal.
+#[cfg(feature = "parquet")]
+pub(super) fn kinematics_parquet(
+    setup: &Setup,
+) -> parquet::errors::Result<(KinematicsParquet, ParquetFile)> {
+    let numbers = SCHEMA.fields().iter().skip(2).map(|f| f.name().as_str());
+    let numbers: Vec<&str> = numbers.collect();
+    let (_, factory, file) = start_file(setup, &SCHEMA, &numbers, &["time"])?;
+    let columns = KinematicsColumns::new(setup);
+    Ok((KinematicsParquet { factory, columns }, file))
+}
+
+#[cfg(feature = "parquet")]
+impl KinematicsParquet {
+    /// Encodes a block.
+    ///
+    /// # Errors
+    /// The library's refusal.
+    pub(super) fn encode(&self, block: &KinematicsBlock) -> parquet::errors::Result<RowGroup> {
+        encode_columns(&self.factory, &SCHEMA, &self.columns.of(block)?)
     }
 }

@@ -7,11 +7,11 @@ use std::sync::Arc;
 
 use arrow_array::types::Int32Type;
 use arrow_array::{
-    ArrayRef, BooleanArray, DictionaryArray, Float32Array, Float64Array, Int32Array, StringArray,
+    ArrayRef, BooleanArray, DictionaryArray, Float32Array, Float64Array, Int32Array,
     TimestampMicrosecondArray, UInt8Array, new_null_array,
 };
 use arrow_buffer::NullBuffer;
-use arrow_schema::{DataType, Field, Schema, SchemaRef, TimeUnit};
+use arrow_schema::{DataType, SchemaRef};
 use parquet::arrow::ArrowWriter;
 use parquet::arrow::arrow_writer::{ArrowColumnChunk, ArrowRowGroupWriterFactory, compute_leaves};
 use parquet::basic::{Compression, Encoding, ZstdLevel};
@@ -20,8 +20,7 @@ use parquet::file::metadata::KeyValue;
 use parquet::file::properties::{EnabledStatistics, WriterProperties};
 use parquet::file::writer::SerializedFileWriter;
 
-use super::reason::Reasons;
-use super::standing::StandingRows;
+use super::columns::SeriesColumns;
 use super::template::{FixedColumns, Template};
 use crate::integral::{Cause, EstimateBlock, Sense};
 use crate::pipeline::Setup;
@@ -46,16 +45,10 @@ const NUMBERS: [&str; 12] = [
 const STEPS: [&str; 2] = ["time", "flag"];
 
 /// Encodes blocks of estimates as row groups.
-pub struct ParquetRows {
-    schema: SchemaRef,
+pub(super) struct ParquetRows {
+    own: SeriesColumns,
     factory: ArrowRowGroupWriterFactory,
-    senses: ArrayRef,
-    /// The reasons that can stand, in the order of [`Reasons::index`].
-    reasons: ArrayRef,
-    of_reasons: Reasons,
-    planetary: Vec<f64>,
     fixed: FixedColumns,
-    complete: bool,
 }
 
 /// The file that the row groups become.
@@ -76,22 +69,14 @@ enum EncodedColumn {
 ///
 /// # Errors
 /// The library's refusal.
-pub fn parquet_series(setup: &Setup) -> Result<(ParquetRows, ParquetFile)> {
-    let schema = Arc::new(schema());
-    let (properties, factory, file) = start_file(setup, &schema, &NUMBERS, &STEPS)?;
-    let of_reasons = Reasons::new(&setup.network);
+pub(super) fn parquet_series(setup: &Setup) -> Result<(ParquetRows, ParquetFile)> {
+    let own = SeriesColumns::new(setup);
+    let (properties, factory, file) = start_file(setup, &own.schema, &NUMBERS, &STEPS)?;
+    let fixed = FixedColumns::new(&own.schema, properties);
     let rows = ParquetRows {
-        fixed: FixedColumns::new(setup, &schema, properties),
-        schema,
+        own,
         factory,
-        senses: Arc::new(StringArray::from(vec![
-            Sense::Cyclonic.name(),
-            Sense::Anticyclonic.name(),
-        ])),
-        reasons: Arc::new(StringArray::from(of_reasons.words().to_vec())),
-        of_reasons,
-        planetary: setup.planetary.clone(),
-        complete: setup.settings.errors.complete,
+        fixed,
     };
     Ok((rows, file))
 }
@@ -111,18 +96,11 @@ pub(super) fn start_file(
         .set_statistics_enabled(EnabledStatistics::Chunk)
         // The copied columns have none, and all columns must be alike.
         .set_offset_index_disabled(true)
-        .set_key_value_metadata(Some(vec![
-            KeyValue::new(
-                "program".into(),
-                format!("gyremesh {}", env!("CARGO_PKG_VERSION")),
-            ),
-            KeyValue::new("network".into(), setup.settings.name.clone()),
-            KeyValue::new("caution".into(), super::CAUTION.to_string()),
-            KeyValue::new(
-                "error_bars".into(),
-                super::error_bars(&setup.settings.errors).to_string(),
-            ),
-        ]));
+        .set_key_value_metadata(Some(
+            super::file_metadata(setup)
+                .map(|(key, value)| KeyValue::new(key.into(), value))
+                .into(),
+        ));
     for (names, encoding) in [
         (numbers, Encoding::BYTE_STREAM_SPLIT),
         (steps, Encoding::DELTA_BINARY_PACKED),
@@ -159,59 +137,19 @@ pub(super) fn encode_columns(
     Ok(RowGroup(encoded))
 }
 
-/// The columns of the contract, with their units.
-fn schema() -> Schema {
-    let dictionary = || DataType::Dictionary(Box::new(DataType::Int32), Box::new(DataType::Utf8));
-    let field = |name: &str, kind: DataType, nullable: bool, units: &str| {
-        let field = Field::new(name, kind, nullable);
-        if units.is_empty() {
-            field
-        } else {
-            field.with_metadata([("units".to_string(), units.to_string())].into())
-        }
-    };
-    let number =
-        |name: &str, nullable: bool, units: &str| field(name, DataType::Float64, nullable, units);
-    let part = |name: &str| field(name, DataType::Float32, true, "s-1");
-    let time = DataType::Timestamp(TimeUnit::Microsecond, Some("UTC".into()));
-    Schema::new(vec![
-        field("time", time, false, ""),
-        field("polygon", dictionary(), false, ""),
-        field("stations", dictionary(), false, ""),
-        number("area_km2", false, "km2"),
-        number("vorticity", true, "s-1"),
-        number("vorticity_se", true, "s-1"),
-        number("divergence", true, "s-1"),
-        number("divergence_se", true, "s-1"),
-        number("planetary_vorticity", false, "s-1"),
-        number("absolute_vorticity", true, "s-1"),
-        field("flag", DataType::UInt8, false, ""),
-        field("sense", dictionary(), true, ""),
-        field("age_s", DataType::Float32, true, "s"),
-        part("vorticity_se_instrument"),
-        part("vorticity_se_sampling"),
-        part("vorticity_se_timing"),
-        part("divergence_se_instrument"),
-        part("divergence_se_sampling"),
-        part("divergence_se_timing"),
-        field("vorticity_significant", DataType::Boolean, true, ""),
-        field("divergence_significant", DataType::Boolean, true, ""),
-        field("reason", dictionary(), true, ""),
-    ])
-}
-
 impl ParquetRows {
     /// Encodes a block: rows by time, then polygon.
     ///
     /// # Errors
     /// The library's refusal.
     pub fn encode(&self, block: &EstimateBlock) -> Result<RowGroup> {
-        let template = self.fixed.of_times(block.times.len())?;
+        let template = self.fixed.of_times(block.times.len(), &self.own)?;
         let columns = self.columns(block)?;
         let writers = self.factory.create_column_writers(0)?;
         let mut encoded = Vec::with_capacity(columns.len());
         // Every column of the schema is one leaf.
         for (k, ((field, column), mut writer)) in self
+            .own
             .schema
             .fields()
             .iter()
@@ -234,9 +172,10 @@ impl ParquetRows {
     /// The columns of a block; `None` for those that are the same in every block of as many times.
     fn columns(&self, block: &EstimateBlock) -> Result<Vec<Option<ArrayRef>>> {
         if !block.absent.is_empty() {
-            return self.standing(block);
+            let columns = self.own.of(block)?;
+            return Ok(columns.into_iter().map(Some).collect());
         }
-        let (n, polygons) = (block.times.len(), self.planetary.len());
+        let (n, polygons) = (block.times.len(), self.own.planetary.len());
         let all_there = block.flag.iter().all(|flag| flag.is_usable());
         let there: Option<NullBuffer> =
             (!all_there).then(|| by_time(&block.flag, n, |flag, _| flag.is_usable()).into());
@@ -245,10 +184,10 @@ impl ParquetRows {
             Some(Arc::new(Float64Array::new(values.into(), there.clone())))
         };
         let absolute = by_time(&block.vorticity, n, |&vorticity, polygon| {
-            vorticity + self.planetary[polygon]
+            vorticity + self.own.planetary[polygon]
         });
         let sense = by_time(&block.vorticity, n, |&vorticity, polygon| {
-            Sense::of(vorticity, self.planetary[polygon])
+            Sense::of(vorticity, self.own.planetary[polygon])
         });
         let sense: Int32Array = sense
             .into_iter()
@@ -274,12 +213,13 @@ impl ParquetRows {
             let values = by_time(column, n, |&value, _| value as f32);
             Some(Arc::new(Float32Array::new(values.into(), there.clone())))
         };
-        let no_ages = self.complete && there.is_none() && block.age.iter().all(|&age| age <= 0.0);
+        let no_ages =
+            self.own.complete && there.is_none() && block.age.iter().all(|&age| age <= 0.0);
         let timing = |column: &[f64]| {
             if no_ages {
                 None
             } else {
-                part(column, self.complete)
+                part(column, self.own.complete)
             }
         };
         let called = |column: &[bool]| -> Option<ArrayRef> {
@@ -303,14 +243,14 @@ impl ParquetRows {
             Some(Arc::new(UInt8Array::from(flag))),
             Some(Arc::new(DictionaryArray::<Int32Type>::try_new(
                 sense,
-                Arc::clone(&self.senses),
+                Arc::clone(&self.own.senses),
             )?)),
             Some(Arc::new(Float32Array::new(age.into(), there.clone()))),
             part(&z.instrument, true),
-            part(&z.sampling, self.complete),
+            part(&z.sampling, self.own.complete),
             timing(&z.timing),
             part(&d.instrument, true),
-            part(&d.sampling, self.complete),
+            part(&d.sampling, self.own.complete),
             timing(&d.timing),
             called(&block.significant[0]),
             called(&block.significant[1]),
@@ -320,80 +260,19 @@ impl ParquetRows {
 }
 
 impl ParquetRows {
-    /// The columns of a block of which not all polygons stand at all times.
-    fn standing(&self, block: &EstimateBlock) -> Result<Vec<Option<ArrayRef>>> {
-        let rows = StandingRows::new(block);
-        let extra = |p: usize| block.extra.get(p.checked_sub(self.planetary.len())?);
-        let planetary = |p: usize| {
-            let own = self.planetary.get(p).copied();
-            own.or_else(|| extra(p).map(|extra| extra.planetary))
-                .unwrap_or_default()
-        };
-        let area = |p: usize| {
-            let own = self.fixed.area(p);
-            own.or_else(|| extra(p).map(|extra| extra.polygon.shape.area / 1e6))
-                .unwrap_or_default()
-        };
-        let [ids, stations] = self
-            .fixed
-            .names(block.extra.iter().map(|extra| &extra.polygon));
-        let sense = |cell: usize, p: usize| {
-            let sense = Sense::of(block.vorticity[cell], planetary(p));
-            let sense = sense.filter(|_| block.flag[cell].is_usable());
-            sense.map(|sense| usize::from(sense == Sense::Anticyclonic))
-        };
-        let reason = |cell: usize, _| {
-            let cause = block.causes.get(cell).copied().flatten();
-            cause.map(|cause| self.of_reasons.index(cause))
-        };
-        let part = |column: &[f64], asked_for: bool| {
-            if asked_for {
-                rows.part(column)
-            } else {
-                new_null_array(&DataType::Float32, rows.len())
-            }
-        };
-        let (z, d) = (&block.budget.vorticity, &block.budget.divergence);
-        let columns = [
-            rows.times(),
-            rows.named(|_, p| Some(p), &ids)?,
-            rows.named(|_, p| Some(p), &stations)?,
-            rows.given(|_, p| area(p)),
-            rows.values(|cell, _| block.vorticity[cell]),
-            rows.values(|cell, _| block.vorticity_se[cell]),
-            rows.values(|cell, _| block.divergence[cell]),
-            rows.values(|cell, _| block.divergence_se[cell]),
-            rows.given(|_, p| planetary(p)),
-            rows.values(|cell, p| block.vorticity[cell] + planetary(p)),
-            rows.flags(),
-            rows.named(sense, &self.senses)?,
-            rows.ages(),
-            part(&z.instrument, true),
-            part(&z.sampling, self.complete),
-            part(&z.timing, self.complete),
-            part(&d.instrument, true),
-            part(&d.sampling, self.complete),
-            part(&d.timing, self.complete),
-            rows.called(&block.significant[0]),
-            rows.called(&block.significant[1]),
-            rows.named(reason, &self.reasons)?,
-        ];
-        Ok(columns.into_iter().map(Some).collect())
-    }
-
     /// Why estimates are flagged; `None` where none is.
     fn reason(&self, block: &EstimateBlock) -> Result<Option<ArrayRef>> {
         if block.causes.is_empty() {
             return Ok(None);
         }
         let index = |cause: &Option<Cause>, _| {
-            let place = self.of_reasons.index((*cause)?);
+            let place = self.own.of_reasons.index((*cause)?);
             i32::try_from(place).ok()
         };
         let keys: Int32Array = by_time(&block.causes, block.times.len(), index)
             .into_iter()
             .collect();
-        let array = DictionaryArray::<Int32Type>::try_new(keys, Arc::clone(&self.reasons))?;
+        let array = DictionaryArray::<Int32Type>::try_new(keys, Arc::clone(&self.own.reasons))?;
         Ok(Some(Arc::new(array)))
     }
 }

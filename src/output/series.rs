@@ -1,221 +1,328 @@
 //! The series of all polygons, in the formats asked for.
+//!
+//! Each file has an [`Encoder`], which all threads share and which turns a block into a [`Piece`], and a [`Writer`], which
+//! takes the pieces in the order of time and gives the bytes that are ready.
 
 use std::path::Path;
 
+#[cfg(feature = "parquet")]
+use arrow_array::RecordBatch;
+
+#[cfg(feature = "parquet")]
+use super::arrow::{ArrowFile, ArrowRows, kinematics_arrow, kinematics_batch};
 use super::csv::PolygonRows;
-use super::decompose::{DecomposeBytes, DecomposeRows};
+use super::decompose::DecomposeRows;
+use super::features::{BETWEEN, COLLECTION, PolygonFeatures};
 use super::file::OutputSet;
 use super::fits::FitRows;
 use super::kinematics::KinematicsRows;
 #[cfg(feature = "parquet")]
-use super::kinematics::{KinematicsParquet, kinematics_parquet};
+use super::kinematics::{KinematicsColumns, KinematicsParquet, kinematics_parquet};
+use super::netcdf::{FaceBlock, FaceFile, FaceRows};
 #[cfg(feature = "parquet")]
 use super::parquet::{ParquetFile, ParquetRows, RowGroup, parquet_series};
 use super::scalars::ScalarRows;
 use super::vertical_motion::VerticalMotionRows;
 use crate::error::Error;
+use crate::integral::ExtraPolygon;
 use crate::pipeline::{BlockView, Setup};
+use crate::time::Time;
 
-/// Formats of the series, and of the flagged reports.
+/// A format of the series.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub struct Formats {
-    /// CSV: `polygons.csv`, `reports_flagged.csv`.
-    pub csv: bool,
-    /// Parquet: `polygons.parquet`, `reports_flagged.parquet`.
-    pub parquet: bool,
+pub enum SeriesFormat {
+    /// `polygons.csv`: text.
+    Csv,
+    /// `polygons.parquet`: the same columns, typed.
+    Parquet,
+    /// `polygons.arrow`: the same columns as an Arrow IPC file.
+    Arrow,
+    /// `polygons.nc`: NetCDF-4 after CF and UGRID.
+    Netcdf,
+    /// `polygons.geojson`: the polygons with their values at some times.
+    Geojson,
 }
 
-/// Turns blocks of estimates into bytes; shared by all threads.
-pub struct SeriesEncoder {
-    csv: Option<PolygonRows>,
-    fits: Option<FitRows>,
-    kinematics: Option<KinematicsRows>,
-    decompose: Option<DecomposeRows>,
-    scalars: Option<ScalarRows>,
-    vertical_motion: Option<VerticalMotionRows>,
-    #[cfg(feature = "parquet")]
-    parquet: Option<ParquetRows>,
-    #[cfg(feature = "parquet")]
-    kinematics_parquet: Option<KinematicsParquet>,
+/// What is wanted of the series.
+#[derive(Debug, Clone, Default, PartialEq, Eq)]
+pub struct SeriesChoice {
+    /// The formats.
+    pub formats: Vec<SeriesFormat>,
+    /// Times of `polygons.geojson`; the last analysis time if there is none.
+    pub at: Vec<Time>,
 }
 
-/// The files that the bytes go to, in the order of time.
-pub struct SeriesFiles {
-    csv: Option<usize>,
-    fits: Option<usize>,
-    kinematics: Option<usize>,
-    /// `decompose.csv` and `decompose_stations.csv`.
-    decompose: Option<[usize; 2]>,
-    scalars: Option<usize>,
-    vertical_motion: Option<usize>,
+/// How a file's blocks are encoded.
+enum Encoder {
+    Csv(PolygonRows),
+    Fits(FitRows),
+    KinematicsCsv(KinematicsRows),
+    Scalars(ScalarRows),
+    VerticalMotion(VerticalMotionRows),
+    Energies,
+    Potentials(DecomposeRows),
     #[cfg(feature = "parquet")]
-    parquet: Option<(usize, ParquetFile)>,
+    Parquet(Box<ParquetRows>),
     #[cfg(feature = "parquet")]
-    kinematics_parquet: Option<(usize, ParquetFile)>,
+    KinematicsParquet(KinematicsParquet),
+    #[cfg(feature = "parquet")]
+    Arrow(Box<ArrowRows>),
+    #[cfg(feature = "parquet")]
+    KinematicsArrow(KinematicsColumns),
+    Netcdf(FaceRows),
+    Geojson(PolygonFeatures),
 }
 
-/// An encoded block.
-pub struct EncodedBlock {
-    csv: Option<Vec<u8>>,
-    fits: Option<Vec<u8>>,
-    kinematics: Option<Vec<u8>>,
-    decompose: Option<DecomposeBytes>,
-    scalars: Option<Vec<u8>>,
-    vertical_motion: Option<Vec<u8>>,
+/// An encoded block of one file.
+enum Piece {
+    Nothing,
+    Bytes(Vec<u8>),
     #[cfg(feature = "parquet")]
-    parquet: Option<parquet::errors::Result<RowGroup>>,
+    RowGroup(RowGroup),
     #[cfg(feature = "parquet")]
-    kinematics_parquet: Option<parquet::errors::Result<RowGroup>>,
+    Batch(RecordBatch),
+    Faces(Box<FaceBlock>),
+    /// Features, and their times.
+    Features(Vec<u8>, Vec<Time>),
 }
+
+/// How the pieces of a file become its bytes.
+enum Writer {
+    Text,
+    #[cfg(feature = "parquet")]
+    Parquet(Box<ParquetFile>),
+    #[cfg(feature = "parquet")]
+    Arrow(Box<ArrowFile>),
+    Netcdf(FaceFile),
+    Geojson(Collection),
+}
+
+/// The features so far.
+struct Collection {
+    /// Times asked for that have not come; `None` if the last is wanted.
+    wanted: Option<Vec<Time>>,
+    features: Vec<u8>,
+}
+
+/// Turns blocks of estimates into pieces of all files; shared by all threads.
+pub struct SeriesEncoder(Vec<Encoder>);
+
+/// The files that the pieces go to, in the order of time.
+pub struct SeriesFiles(Vec<File>);
+
+struct File {
+    name: &'static str,
+    number: usize,
+    writer: Writer,
+}
+
+/// A block, encoded for every file.
+pub struct EncodedBlock(Vec<Result<Piece, Error>>);
 
 /// Starts the files of the series.
 ///
 /// # Errors
-/// A file cannot be made; Parquet is asked for and the program was built without it.
+/// A file cannot be made; Parquet or Arrow is asked for and the program was built without them.
 pub fn series(
     setup: &Setup,
-    formats: Formats,
+    choice: &SeriesChoice,
     set: &mut OutputSet,
 ) -> Result<(SeriesEncoder, SeriesFiles), Error> {
-    let csv_file = if formats.csv {
-        let file = set.create("polygons.csv")?;
-        set.write(file, PolygonRows::header().as_bytes())?;
-        Some(file)
-    } else {
-        None
+    let mut start = Start {
+        set,
+        encoders: Vec::new(),
+        files: Vec::new(),
     };
-    // Where there are polygons with more than three stations, and a series at all.
-    let with_fits = setup.settings.errors.complete
-        && (formats.csv || formats.parquet)
-        && setup.built.polygons.iter().any(|p| p.size() > 3);
-    let fits_file = if with_fits {
-        let file = set.create("fits.csv")?;
-        set.write(file, FitRows::header().as_bytes())?;
-        Some(file)
-    } else {
-        None
-    };
-    let with_kinematics = setup.settings.kinematics.write;
-    let kinematics_file = if with_kinematics && formats.csv {
-        let file = set.create("kinematics.csv")?;
-        set.write(file, KinematicsRows::header().as_bytes())?;
-        Some(file)
-    } else {
-        None
-    };
-    let with_scalars = with_kinematics && !setup.settings.scalars.is_empty();
-    let scalars_file = if with_scalars && (formats.csv || formats.parquet) {
-        let file = set.create("scalars.csv")?;
-        set.write(file, ScalarRows::header().as_bytes())?;
-        Some(file)
-    } else {
-        None
-    };
-    let w_at = (setup.settings.w_at).filter(|_| formats.csv || formats.parquet);
-    let vertical_file = if w_at.is_some() {
-        let file = set.create("vertical_motion.csv")?;
-        set.write(file, VerticalMotionRows::header().as_bytes())?;
-        Some(file)
-    } else {
-        None
-    };
-    let decompose_files = if setup.settings.decompose && (formats.csv || formats.parquet) {
-        let energies = set.create("decompose.csv")?;
-        set.write(energies, DecomposeRows::energy_header().as_bytes())?;
-        let stations = set.create("decompose_stations.csv")?;
-        set.write(stations, DecomposeRows::station_header().as_bytes())?;
-        Some([energies, stations])
-    } else {
-        None
-    };
-    #[cfg(not(feature = "parquet"))]
-    if formats.parquet {
-        let reason = std::io::Error::other("this program was built without the feature `parquet`");
-        return Err(Error::write(Path::new("polygons.parquet"), reason));
+    let kinematics = setup.settings.kinematics.write;
+    let wants = |format| choice.formats.contains(&format);
+    if wants(SeriesFormat::Csv) {
+        let rows = Encoder::Csv(PolygonRows::new(setup));
+        start.text("polygons.csv", PolygonRows::header(), rows)?;
     }
-    #[cfg(feature = "parquet")]
-    let (parquet_rows, parquet_file) = if formats.parquet {
-        let file = set.create("polygons.parquet")?;
-        let (rows, parquet) = parquet_series(setup).map_err(|e| parquet_error(&e))?;
-        (Some(rows), Some((file, parquet)))
-    } else {
-        (None, None)
-    };
-    #[cfg(feature = "parquet")]
-    let (kinematics_rows, kinematics_table) = if formats.parquet && with_kinematics {
-        let file = set.create("kinematics.parquet")?;
-        let (rows, parquet) = kinematics_parquet(setup).map_err(|e| parquet_error(&e))?;
-        (Some(rows), Some((file, parquet)))
-    } else {
-        (None, None)
-    };
-    let encoder = SeriesEncoder {
-        csv: formats.csv.then(|| PolygonRows::new(setup)),
-        fits: with_fits.then(|| FitRows::new(setup)),
-        kinematics: kinematics_file.map(|_| KinematicsRows::new(setup)),
-        decompose: decompose_files.map(|_| DecomposeRows::new(setup)),
-        scalars: scalars_file.map(|_| ScalarRows::new(setup)),
-        vertical_motion: w_at.map(|height| VerticalMotionRows::new(setup, height)),
-        #[cfg(feature = "parquet")]
-        parquet: parquet_rows,
-        #[cfg(feature = "parquet")]
-        kinematics_parquet: kinematics_rows,
-    };
-    let files = SeriesFiles {
-        csv: csv_file,
-        fits: fits_file,
-        kinematics: kinematics_file,
-        decompose: decompose_files,
-        scalars: scalars_file,
-        vertical_motion: vertical_file,
-        #[cfg(feature = "parquet")]
-        parquet: parquet_file,
-        #[cfg(feature = "parquet")]
-        kinematics_parquet: kinematics_table,
-    };
-    Ok((encoder, files))
+    // Where there are polygons with more than three stations, and a series at all.
+    if setup.settings.errors.complete
+        && !choice.formats.is_empty()
+        && setup.built.polygons.iter().any(|p| p.size() > 3)
+    {
+        let rows = Encoder::Fits(FitRows::new(setup));
+        start.text("fits.csv", FitRows::header(), rows)?;
+    }
+    if wants(SeriesFormat::Csv) && kinematics {
+        let rows = Encoder::KinematicsCsv(KinematicsRows::new(setup));
+        start.text("kinematics.csv", &KinematicsRows::header(), rows)?;
+    }
+    if !choice.formats.is_empty() {
+        start.more_text(setup)?;
+    }
+    for format in [SeriesFormat::Parquet, SeriesFormat::Arrow] {
+        if wants(format) {
+            start.tables(setup, format, kinematics)?;
+        }
+    }
+    if wants(SeriesFormat::Netcdf) {
+        let rows = Encoder::Netcdf(FaceRows::new(setup));
+        start.file("polygons.nc", rows, Writer::Netcdf(FaceFile::default()))?;
+    }
+    if wants(SeriesFormat::Geojson) {
+        let features = Encoder::Geojson(PolygonFeatures::new(setup, &choice.at));
+        let collection = Collection {
+            wanted: Some(choice.at.clone()).filter(|at| !at.is_empty()),
+            features: Vec::new(),
+        };
+        start.file("polygons.geojson", features, Writer::Geojson(collection))?;
+    }
+    Ok((SeriesEncoder(start.encoders), SeriesFiles(start.files)))
 }
 
-#[cfg(feature = "parquet")]
-fn parquet_error(error: &parquet::errors::ParquetError) -> Error {
-    Error::write(
-        Path::new("polygons.parquet"),
-        std::io::Error::other(error.to_string()),
-    )
+/// The files as they are started.
+struct Start<'a> {
+    set: &'a mut OutputSet,
+    encoders: Vec<Encoder>,
+    files: Vec<File>,
+}
+
+impl Start<'_> {
+    fn file(&mut self, name: &'static str, encoder: Encoder, writer: Writer) -> Result<(), Error> {
+        let number = self.set.create(name)?;
+        self.encoders.push(encoder);
+        self.files.push(File {
+            name,
+            number,
+            writer,
+        });
+        Ok(())
+    }
+
+    fn text(&mut self, name: &'static str, header: &str, encoder: Encoder) -> Result<(), Error> {
+        self.file(name, encoder, Writer::Text)?;
+        self.files.last().map_or(Ok(()), |file| {
+            self.set.write(file.number, header.as_bytes())
+        })
+    }
+
+    /// What is written as text alone, where it is asked for.
+    fn more_text(&mut self, setup: &Setup) -> Result<(), Error> {
+        let settings = &setup.settings;
+        if settings.kinematics.write && !settings.scalars.is_empty() {
+            let rows = Encoder::Scalars(ScalarRows::new(setup));
+            self.text("scalars.csv", &ScalarRows::header(), rows)?;
+        }
+        if let Some(height) = settings.w_at {
+            let rows = Encoder::VerticalMotion(VerticalMotionRows::new(setup, height));
+            self.text("vertical_motion.csv", VerticalMotionRows::header(), rows)?;
+        }
+        if settings.decompose {
+            let header = DecomposeRows::energy_header();
+            self.text("decompose.csv", &header, Encoder::Energies)?;
+            let rows = Encoder::Potentials(DecomposeRows::new(setup));
+            let header = DecomposeRows::station_header();
+            self.text("decompose_stations.csv", &header, rows)?;
+        }
+        Ok(())
+    }
+
+    #[cfg(feature = "parquet")]
+    fn tables(
+        &mut self,
+        setup: &Setup,
+        format: SeriesFormat,
+        kinematics: bool,
+    ) -> Result<(), Error> {
+        if format == SeriesFormat::Parquet {
+            let name = "polygons.parquet";
+            let (rows, file) = parquet_series(setup).map_err(|e| refused(name, &e))?;
+            let (rows, file) = (Encoder::Parquet(Box::new(rows)), Box::new(file));
+            self.file(name, rows, Writer::Parquet(file))?;
+            if kinematics {
+                let name = "kinematics.parquet";
+                let (rows, file) = kinematics_parquet(setup).map_err(|e| refused(name, &e))?;
+                let rows = Encoder::KinematicsParquet(rows);
+                self.file(name, rows, Writer::Parquet(Box::new(file)))?;
+            }
+        } else {
+            let name = "polygons.arrow";
+            let (rows, file) = ArrowRows::start(setup).map_err(|e| refused(name, &e))?;
+            let (rows, file) = (Encoder::Arrow(Box::new(rows)), Box::new(file));
+            self.file(name, rows, Writer::Arrow(file))?;
+            if kinematics {
+                let name = "kinematics.arrow";
+                let (columns, file) = kinematics_arrow(setup).map_err(|e| refused(name, &e))?;
+                let columns = Encoder::KinematicsArrow(columns);
+                self.file(name, columns, Writer::Arrow(Box::new(file)))?;
+            }
+        }
+        Ok(())
+    }
+
+    #[cfg(not(feature = "parquet"))]
+    fn tables(&mut self, _: &Setup, format: SeriesFormat, _: bool) -> Result<(), Error> {
+        let name = match format {
+            SeriesFormat::Parquet => "polygons.parquet",
+            _ => "polygons.arrow",
+        };
+        let reason = "this program was built without the feature `parquet`";
+        Err(refused(name, &reason))
+    }
+}
+
+/// What a library said of a file.
+fn refused(name: &str, error: &dyn std::fmt::Display) -> Error {
+    Error::write(Path::new(name), std::io::Error::other(error.to_string()))
 }
 
 impl SeriesEncoder {
-    /// Encodes a block in all formats.
+    /// Encodes a block for every file.
     #[must_use]
     pub fn encode(&self, seen: &BlockView) -> EncodedBlock {
-        let (block, kinematics) = (seen.estimates, seen.kinematics);
-        EncodedBlock {
-            csv: self.csv.as_ref().map(|rows| rows.encode(block)),
-            fits: self.fits.as_ref().map(|rows| rows.encode(block)),
-            kinematics: self
+        let pieces = self.0.iter().map(|encoder| encoder.encode(seen));
+        EncodedBlock(pieces.collect())
+    }
+}
+
+impl Encoder {
+    fn encode(&self, seen: &BlockView) -> Result<Piece, Error> {
+        let block = seen.estimates;
+        #[cfg(feature = "parquet")]
+        let group = |name, group: parquet::errors::Result<RowGroup>| {
+            group.map(Piece::RowGroup).map_err(|e| refused(name, &e))
+        };
+        #[cfg(feature = "parquet")]
+        let batch = |name, batch: Result<RecordBatch, arrow_schema::ArrowError>| {
+            batch.map(Piece::Batch).map_err(|e| refused(name, &e))
+        };
+        match self {
+            Self::Csv(rows) => Ok(Piece::Bytes(rows.encode(block))),
+            Self::Fits(rows) => Ok(Piece::Bytes(rows.encode(block))),
+            Self::KinematicsCsv(rows) => Ok(seen
                 .kinematics
-                .as_ref()
-                .zip(kinematics)
-                .map(|(rows, block)| rows.encode(block)),
-            decompose: self
-                .decompose
-                .as_ref()
-                .zip(seen.decomposition)
-                .map(|(rows, block)| rows.encode(block)),
-            scalars: self
+                .map_or(Piece::Nothing, |block| Piece::Bytes(rows.encode(block)))),
+            Self::Scalars(rows) => Ok(seen
                 .scalars
-                .as_ref()
-                .zip(seen.scalars)
-                .map(|(rows, block)| rows.encode(block)),
-            vertical_motion: self.vertical_motion.as_ref().map(|rows| rows.encode(block)),
+                .map_or(Piece::Nothing, |block| Piece::Bytes(rows.encode(block)))),
+            Self::VerticalMotion(rows) => Ok(Piece::Bytes(rows.encode(block))),
+            Self::Energies => Ok(seen.decomposition.map_or(Piece::Nothing, |block| {
+                Piece::Bytes(DecomposeRows::energies(block))
+            })),
+            Self::Potentials(rows) => Ok(seen
+                .decomposition
+                .map_or(Piece::Nothing, |block| Piece::Bytes(rows.stations(block)))),
             #[cfg(feature = "parquet")]
-            parquet: self.parquet.as_ref().map(|rows| rows.encode(block)),
+            Self::Parquet(rows) => group("polygons.parquet", rows.encode(block)),
             #[cfg(feature = "parquet")]
-            kinematics_parquet: self
-                .kinematics_parquet
-                .as_ref()
-                .zip(kinematics)
-                .map(|(rows, block)| rows.encode(block)),
+            Self::KinematicsParquet(rows) => seen.kinematics.map_or(Ok(Piece::Nothing), |block| {
+                group("kinematics.parquet", rows.encode(block))
+            }),
+            #[cfg(feature = "parquet")]
+            Self::Arrow(rows) => batch("polygons.arrow", rows.encode(block)),
+            #[cfg(feature = "parquet")]
+            Self::KinematicsArrow(columns) => seen.kinematics.map_or(Ok(Piece::Nothing), |block| {
+                batch("kinematics.arrow", kinematics_batch(columns, block))
+            }),
+            Self::Netcdf(rows) => Ok(Piece::Faces(Box::new(rows.encode(seen)))),
+            Self::Geojson(features) => {
+                let (features, times) = features.encode(seen);
+                Ok(Piece::Features(features, times))
+            }
         }
     }
 }
@@ -226,54 +333,97 @@ impl SeriesFiles {
     /// # Errors
     /// The system's refusal, a full disk for one.
     pub fn write(&mut self, set: &mut OutputSet, block: EncodedBlock) -> Result<(), Error> {
-        if let (Some(file), Some(bytes)) = (self.csv, &block.csv) {
-            set.write(file, bytes)?;
-        }
-        if let (Some(file), Some(bytes)) = (self.fits, &block.fits) {
-            set.write(file, bytes)?;
-        }
-        if let (Some(file), Some(bytes)) = (self.kinematics, &block.kinematics) {
-            set.write(file, bytes)?;
-        }
-        if let (Some(file), Some(bytes)) = (self.scalars, &block.scalars) {
-            set.write(file, bytes)?;
-        }
-        if let (Some(file), Some(bytes)) = (self.vertical_motion, &block.vertical_motion) {
-            set.write(file, bytes)?;
-        }
-        if let (Some([energies, stations]), Some(bytes)) = (self.decompose, &block.decompose) {
-            set.write(energies, &bytes.energies)?;
-            set.write(stations, &bytes.stations)?;
-        }
-        #[cfg(feature = "parquet")]
-        for (table, group) in [
-            (&mut self.parquet, block.parquet),
-            (&mut self.kinematics_parquet, block.kinematics_parquet),
-        ] {
-            if let (Some((file, parquet)), Some(group)) = (table, group) {
-                let bytes = group
-                    .and_then(|group| parquet.append(group))
-                    .map_err(|e| parquet_error(&e))?;
-                set.write(*file, &bytes)?;
-            }
+        for (file, piece) in self.0.iter_mut().zip(block.0) {
+            let bytes = file.writer.add(file.name, piece?)?;
+            set.write(file.number, &bytes)?;
         }
         Ok(())
     }
 
-    /// Completes the files.
+    /// Completes the files, and writes `mesh.parquet` beside Parquet; returns the times asked for that are no analysis times.
+    /// `extra` are the polygons of the run that stand only where stations are missing.
     ///
     /// # Errors
     /// The system's refusal.
-    #[cfg_attr(
-        not(feature = "parquet"),
-        expect(unused_variables, reason = "only Parquet has an end")
-    )]
-    pub fn finish(self, set: &mut OutputSet) -> Result<(), Error> {
+    pub fn finish(
+        self,
+        setup: &Setup,
+        extra: &[ExtraPolygon],
+        set: &mut OutputSet,
+    ) -> Result<Vec<Time>, Error> {
+        let mut unmet = Vec::new();
         #[cfg(feature = "parquet")]
-        for (file, parquet) in self.parquet.into_iter().chain(self.kinematics_parquet) {
-            let bytes = parquet.finish().map_err(|e| parquet_error(&e))?;
-            set.write(file, &bytes)?;
+        if self.0.iter().any(|file| file.name == "polygons.parquet") {
+            let name = "mesh.parquet";
+            let mesh = super::geoparquet::mesh_parquet(setup, extra);
+            set.put(name, &mesh.map_err(|e| refused(name, &e))?)?;
         }
-        Ok(())
+        for file in self.0 {
+            if let Writer::Geojson(collection) = &file.writer {
+                unmet.extend(collection.wanted.iter().flatten());
+            }
+            let bytes = file.writer.finish(file.name, setup, extra)?;
+            set.write(file.number, &bytes)?;
+        }
+        Ok(unmet)
+    }
+}
+
+impl Writer {
+    /// Takes the next piece; gives the bytes that are ready.
+    fn add(&mut self, name: &str, piece: Piece) -> Result<Vec<u8>, Error> {
+        match (self, piece) {
+            (Self::Text, Piece::Bytes(bytes)) => return Ok(bytes),
+            #[cfg(feature = "parquet")]
+            (Self::Parquet(file), Piece::RowGroup(group)) => {
+                return file.append(group).map_err(|e| refused(name, &e));
+            }
+            #[cfg(feature = "parquet")]
+            (Self::Arrow(file), Piece::Batch(batch)) => {
+                return file.append(&batch).map_err(|e| refused(name, &e));
+            }
+            (Self::Netcdf(file), Piece::Faces(block)) => file.append(*block),
+            (Self::Geojson(collection), Piece::Features(features, times)) => {
+                collection.add(features, &times);
+            }
+            // A file takes the pieces of its own encoder.
+            _ => {}
+        }
+        Ok(Vec::new())
+    }
+
+    /// The last bytes.
+    fn finish(self, name: &str, setup: &Setup, extra: &[ExtraPolygon]) -> Result<Vec<u8>, Error> {
+        match self {
+            Self::Text => Ok(Vec::new()),
+            #[cfg(feature = "parquet")]
+            Self::Parquet(file) => file.finish().map_err(|e| refused(name, &e)),
+            #[cfg(feature = "parquet")]
+            Self::Arrow(file) => file.finish().map_err(|e| refused(name, &e)),
+            Self::Netcdf(file) => file.finish(setup, extra),
+            Self::Geojson(collection) => Ok(collection.finish()),
+        }
+    }
+}
+
+impl Collection {
+    fn add(&mut self, features: Vec<u8>, times: &[Time]) {
+        if features.is_empty() {
+            return;
+        }
+        let Some(wanted) = &mut self.wanted else {
+            self.features = features;
+            return;
+        };
+        wanted.retain(|time| !times.contains(time));
+        if !self.features.is_empty() {
+            self.features.extend_from_slice(BETWEEN.as_bytes());
+        }
+        self.features.extend(features);
+    }
+
+    fn finish(self) -> Vec<u8> {
+        let [before, after] = COLLECTION.map(str::as_bytes);
+        [before, &self.features, after].concat()
     }
 }

@@ -1,4 +1,4 @@
-//! Columns of the Parquet series where not all polygons stand at all times.
+//! Columns of the series, of the polygons that stand at each time.
 
 use std::sync::Arc;
 
@@ -8,7 +8,7 @@ use arrow_array::{
     TimestampMicrosecondArray, UInt8Array,
 };
 use arrow_buffer::NullBuffer;
-use parquet::errors::Result;
+use arrow_schema::ArrowError;
 
 use crate::integral::EstimateBlock;
 
@@ -53,7 +53,7 @@ impl<'a> StandingRows<'a> {
         &self,
         of: impl Fn(usize, usize) -> Option<usize>,
         names: &ArrayRef,
-    ) -> Result<ArrayRef> {
+    ) -> Result<ArrayRef, ArrowError> {
         let keys = self.rows.iter().map(|&(cell, p)| of(cell, p));
         let keys: Int32Array = keys
             .map(|key| key.and_then(|key| i32::try_from(key).ok()))

@@ -193,7 +193,8 @@ fn means(means: &MeansSettings) -> Option<Value> {
     }))
 }
 
-fn settings(settings: &Settings) -> Value {
+/// The settings used, without what says nothing of the results (memory, cache).
+pub(super) fn settings(settings: &Settings) -> Value {
     let analysis = &settings.analysis;
     let method = match analysis.method {
         AlignMethod::Nearest { tolerance } => {

@@ -5,8 +5,7 @@ use std::sync::{Arc, Mutex, PoisonError};
 
 use arrow_array::types::Int32Type;
 use arrow_array::{
-    ArrayRef, DictionaryArray, Float32Array, Float64Array, Int32Array, RecordBatch, StringArray,
-    new_null_array,
+    ArrayRef, DictionaryArray, Float32Array, Float64Array, Int32Array, RecordBatch, new_null_array,
 };
 use arrow_schema::{Schema, SchemaRef};
 use bytes::Bytes;
@@ -17,20 +16,12 @@ use parquet::file::metadata::ParquetMetaData;
 use parquet::file::properties::WriterProperties;
 use parquet::file::writer::SerializedRowGroupWriter;
 
-use super::csv::station_list;
-use crate::pipeline::Setup;
-use crate::polygon::StationPolygon;
-use crate::station::Network;
+use super::columns::SeriesColumns;
 
-/// What stands in every row of a polygon.
+/// What stands in every row of a polygon, encoded.
 pub(super) struct FixedColumns {
     schema: SchemaRef,
     properties: WriterProperties,
-    polygons: ArrayRef,
-    stations: ArrayRef,
-    area: Vec<f64>,
-    network: Network,
-    planetary: Vec<f64>,
     /// By the number of times. There are at most as many as a block has times.
     templates: Mutex<HashMap<usize, Arc<Template>>>,
 }
@@ -42,9 +33,7 @@ pub(super) struct Template {
 }
 
 impl FixedColumns {
-    pub(super) fn new(setup: &Setup, schema: &SchemaRef, properties: WriterProperties) -> Self {
-        let polygons = &setup.built.polygons;
-        let names = |names: Vec<String>| -> ArrayRef { Arc::new(StringArray::from(names)) };
+    pub(super) fn new(schema: &SchemaRef, properties: WriterProperties) -> Self {
         // The columns that are not of use may be null here.
         let nullable = schema.fields().iter().map(|f| f.as_ref().clone());
         let used = [
@@ -63,45 +52,15 @@ impl FixedColumns {
         Self {
             schema: Arc::new(Schema::new(nullable.collect::<Vec<_>>())),
             properties,
-            polygons: names(polygons.iter().map(|p| p.id.clone()).collect()),
-            stations: names(
-                polygons
-                    .iter()
-                    .map(|p| station_list(p, &setup.network))
-                    .collect(),
-            ),
-            area: polygons.iter().map(|p| p.shape.area / 1e6).collect(),
-            planetary: setup.planetary.clone(),
-            network: setup.network.clone(),
             templates: Mutex::default(),
         }
-    }
-
-    /// Names and stations of the polygons, with those of some more.
-    pub(super) fn names<'p>(
-        &self,
-        more: impl Iterator<Item = &'p StationPolygon> + Clone,
-    ) -> [ArrayRef; 2] {
-        let with = |own: &ArrayRef, more: Vec<String>| -> ArrayRef {
-            let own = own.as_any().downcast_ref::<StringArray>();
-            let own = own.into_iter().flatten().flatten().map(String::from);
-            Arc::new(StringArray::from(own.chain(more).collect::<Vec<String>>()))
-        };
-        let ids = more.clone().map(|p| p.id.clone()).collect();
-        let lists = more.map(|p| station_list(p, &self.network)).collect();
-        [with(&self.polygons, ids), with(&self.stations, lists)]
-    }
-
-    /// Area of polygon `p`, km²; `None` beyond those of the whole network.
-    pub(super) fn area(&self, p: usize) -> Option<f64> {
-        self.area.get(p).copied()
     }
 
     /// The fixed columns of a block of this many times.
     ///
     /// # Errors
     /// The library's refusal.
-    pub(super) fn of_times(&self, times: usize) -> Result<Arc<Template>> {
+    pub(super) fn of_times(&self, times: usize, own: &SeriesColumns) -> Result<Arc<Template>> {
         let mut templates = self
             .templates
             .lock()
@@ -109,13 +68,13 @@ impl FixedColumns {
         if let Some(template) = templates.get(&times) {
             return Ok(Arc::clone(template));
         }
-        let template = Arc::new(self.encode(times)?);
+        let template = Arc::new(self.encode(times, own)?);
         templates.insert(times, Arc::clone(&template));
         Ok(template)
     }
 
-    fn encode(&self, times: usize) -> Result<Template> {
-        let rows = times * self.area.len();
+    fn encode(&self, times: usize, own: &SeriesColumns) -> Result<Template> {
+        let rows = times * own.area.len();
         let numbers = |values: &[f64]| -> ArrayRef {
             let repeated = std::iter::repeat_n(values, times).flatten();
             Arc::new(Float64Array::from_iter_values(repeated.copied()))
@@ -128,10 +87,10 @@ impl FixedColumns {
         };
         let columns = self.schema.fields().iter().map(|field| {
             Ok(match field.name().as_str() {
-                "polygon" => named(&self.polygons)?,
-                "stations" => named(&self.stations)?,
-                "area_km2" => numbers(&self.area),
-                "planetary_vorticity" => numbers(&self.planetary),
+                "polygon" => named(&own.polygons)?,
+                "stations" => named(&own.stations)?,
+                "area_km2" => numbers(&own.area),
+                "planetary_vorticity" => numbers(&own.planetary),
                 // Where every report stands at its analysis time.
                 "vorticity_se_timing" | "divergence_se_timing" => {
                     Arc::new(Float32Array::from(vec![0.0; rows]))

@@ -46,6 +46,20 @@ pub fn find_events(
     order: InputOrder,
     progress: impl FnMut(u64),
 ) -> Result<EventsOutcome, Error> {
+    find_events_and(setup, order, |_| (), |()| Ok(()), progress)
+}
+
+/// The same, and what [`super::run()`] does with `encode` and `write`.
+///
+/// # Errors
+/// As [`find_events`]; whatever `write` returns.
+pub fn find_events_and<T: Send>(
+    setup: &Setup,
+    order: InputOrder,
+    encode: impl Fn(&BlockView) -> T + Sync,
+    mut write: impl FnMut(T) -> Result<(), Error> + Send,
+    progress: impl FnMut(u64),
+) -> Result<EventsOutcome, Error> {
     let settings = &setup.settings;
     let interval = settings.analysis.interval.as_secs_f64();
     let spacing = setup
@@ -67,12 +81,15 @@ pub fn find_events(
     let mut lines = LineFinder::new(network, &plane, spacing, &settings.events, places);
     let prior = settings.errors.structure.prior(spacing).temporal;
 
-    let encode = |seen: &BlockView| Observed {
-        winds: seen.winds.clone(),
-        temporal: seen.models.iter().map(|model| model.temporal).collect(),
-        snapshots: finder.snapshots(seen.estimates),
+    let observe = |seen: &BlockView| {
+        let observed = Observed {
+            winds: seen.winds.clone(),
+            temporal: seen.models.iter().map(|model| model.temporal).collect(),
+            snapshots: finder.snapshots(seen.estimates),
+        };
+        (observed, encode(seen))
     };
-    let write = |observed: Observed| {
+    let follow = |(observed, encoded): (Observed, T)| {
         for snapshot in &observed.snapshots {
             tracker.advance(snapshot);
         }
@@ -81,9 +98,9 @@ pub fn find_events(
             let passages = shifts.advance(&observed.winds, t, temporal);
             lines.advance(time, &passages);
         }
-        Ok(())
+        write(encoded)
     };
-    let run = run(setup, order, encode, write, progress)?;
+    let run = run(setup, order, observe, follow, progress)?;
     let (lines, passages) = lines.finish();
     let areas = tracker.finish();
     let doubts = areas.iter().map(|area| doubt(setup, &run, area));

@@ -45,6 +45,10 @@ impl Default for ReportFormat {
 /// Table or code form.
 #[derive(Debug, Clone, PartialEq, Eq, Serialize)]
 #[serde(rename_all = "snake_case")]
+#[expect(
+    clippy::large_enum_variant,
+    reason = "there is one for each group of report files"
+)]
 pub enum ReportForm {
     /// Rows and columns: text, Parquet or Arrow IPC (found by the content).
     Table(Columns),

@@ -26,6 +26,10 @@ use crate::units;
 
 /// What the command line sets in place of the file.
 #[derive(Debug, Clone, Default)]
+#[expect(
+    clippy::struct_excessive_bools,
+    reason = "switches of the command line"
+)]
 pub struct Overrides {
     /// Report files in place of those of the settings; they have the format of the first `[[reports]]`.
     pub reports: Vec<PathBuf>,

@@ -6,12 +6,28 @@ pub mod faults;
 pub mod hard;
 pub mod turbulence;
 
+use std::path::{Path, PathBuf};
+
 use geographiclib_rs::{DirectGeodesic, Geodesic};
 use gyremesh::error::{Error, Place};
 use gyremesh::polygon::{BuiltPolygons, StationPolygon, build_polygons};
 use gyremesh::settings::{PolygonChoice, PolygonLimits, RegionParts, RegionSettings, RingSettings};
 use gyremesh::station::{Network, Position, Station};
 use gyremesh::units::Wind;
+
+/// Settings of the demo with triangles that come and go, written into `folder`.
+pub fn remeshed_demo(folder: &Path) -> PathBuf {
+    let root = Path::new(env!("CARGO_MANIFEST_DIR"));
+    let settings = std::fs::read_to_string(root.join("networks/ostrin/network.toml")).unwrap();
+    let stations = root.join("networks/ostrin/stations.csv");
+    let settings = settings
+        .replace("\"stations.csv\"", &format!("'{}'", stations.display()))
+        .replace("../../examples", root.join("examples").to_str().unwrap())
+        .replace("[limits]", "[polygons]\nmissing = \"remesh\"\n[limits]");
+    let path = folder.join("network.toml");
+    std::fs::write(&path, settings).unwrap();
+    path
+}
 
 /// No limits at all.
 pub const NO_LIMITS: PolygonLimits = PolygonLimits {

@@ -106,7 +106,7 @@ pub(super) fn roomy(values: impl Iterator<Item = f64>) -> [f64; 2] {
     [low - room, high + room]
 }
 
-/// A number for an axis: no more digits than its step needs, a true minus sign.
+/// A number for an axis: no more digits than its step needs; an en dash for the minus sign, which the font does not have.
 pub(super) fn label(value: f64, step: f64) -> String {
     let places = (-(step.abs().log10() + 1e-9).floor()).clamp(0.0, 9.0);
     #[expect(
@@ -116,7 +116,7 @@ pub(super) fn label(value: f64, step: f64) -> String {
     )]
     let places = if places.is_nan() { 0 } else { places as usize };
     let text = format!("{:.places$}", value + 0.0);
-    text.replace('-', "\u{2212}")
+    text.replace('-', "\u{2013}")
 }
 
 /// Times on an axis, as seconds since the first, with their texts; the texts of midnights are dates.
@@ -176,7 +176,7 @@ mod tests {
         let axis = Axis::logarithmic([3.0, 120.0], [0.0, 100.0]);
         assert_eq!(axis.ticks(6.0), vec![5.0, 10.0, 20.0, 50.0, 100.0]);
         assert!((axis.pixel(3.0)).abs() < 1e-9 && (axis.pixel(120.0) - 100.0).abs() < 1e-9);
-        assert_eq!(label(-0.2, 0.1), "\u{2212}0.2");
+        assert_eq!(label(-0.2, 0.1), "\u{2013}0.2");
         assert_eq!(label(20.0, 5.0), "20");
     }
 

@@ -5,7 +5,7 @@
 use std::fmt::Write as _;
 
 use super::svg::short;
-use crate::units::{SpeedUnit, Wind};
+use crate::units::{FromDirection, SpeedUnit, Wind};
 
 /// Length of the staff, pixels.
 const STAFF: f64 = 24.0;
@@ -66,7 +66,7 @@ pub(crate) fn barb(halves: usize, southern: bool) -> String {
 
 /// Half barbs and where the wind blows from, degrees clockwise from north; a calm has no direction.
 pub(crate) fn of_wind(wind: Wind) -> (usize, f64) {
-    let direction = wind.from_direction().map_or(0.0, |d| d.degrees());
+    let direction = wind.from_direction().map_or(0.0, FromDirection::degrees);
     match halves(wind.speed()) {
         0 => (0, 0.0),
         n => (n, direction),

@@ -178,3 +178,45 @@ fn path(frame: &Frame, parts: &MultiPolygon<f64>) -> String {
     }
     data
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// 45 stations strewn over a map, by a linear congruential generator (Knuth, MMIX; from memory).
+    #[test]
+    fn labels_of_45_stations_do_not_overlap() {
+        let mut state: u64 = 7;
+        let mut next = |most: f64| {
+            state = state
+                .wrapping_mul(6_364_136_223_846_793_005)
+                .wrapping_add(1_442_695_040_888_963_407);
+            (state >> 40) as f64 / 16_777_216.0 * most
+        };
+        let spot = |_| Spot {
+            at: [60.0 + next(830.0), 130.0 + next(600.0)],
+            north: 0.0,
+        };
+        let base = MapBase {
+            inside: [24.0, 78.0, 952.0, 760.0],
+            land: String::new(),
+            polygons: Vec::new(),
+            excluded: Vec::new(),
+            stations: (0..45).map(spot).collect(),
+            bar: (0.0, String::new()),
+            north: 0.0,
+            southern: false,
+        };
+        let texts: Vec<String> = (0..45).map(|k| format!("STATION{k:02}")).collect();
+        let feet = base.labels(&texts, &[]);
+        let boxes: Vec<[f64; 4]> = (feet.iter().zip(&texts))
+            .filter_map(|(foot, text)| Some(text_box((*foot)?, width_of(text, LABEL))))
+            .collect();
+        assert!(boxes.len() > 40, "{} labels", boxes.len());
+        for (k, a) in boxes.iter().enumerate() {
+            assert!(boxes[..k].iter().all(|b| !overlap(a, b)));
+            let dots = base.stations.iter().map(|s| around(s.at, 3.9));
+            assert!(dots.into_iter().all(|dot| !overlap(a, &dot)));
+        }
+    }
+}

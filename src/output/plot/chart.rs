@@ -1,5 +1,7 @@
 //! A frame with axes, and what is drawn in it.
 
+use std::fmt::Write as _;
+
 use super::axis::{Axis, label, time_ticks};
 use super::svg::{Anchor, GRID, NOTE, Paint, Style, Svg, polyline, short};
 use crate::time::Time;
@@ -119,8 +121,8 @@ impl Chart {
             let pixels: Vec<[f64; 2]> = piece.iter().flatten().map(|p| self.at(p.0, p.1)).collect();
             data.push_str(&polyline(&pixels, false));
             if let [[x, y]] = pixels[..] {
-                // A point alone shows as a short dash.
-                data.push_str(&format!("L{} {}", short(x + 1.5), short(y)));
+                // A point alone shows as a short dash; writing to a string cannot fail.
+                let _ = write!(data, "L{} {}", short(x + 1.5), short(y));
             }
         }
         if !data.is_empty() {

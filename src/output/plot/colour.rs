@@ -11,6 +11,16 @@ pub(crate) const STOPS: [[u8; 3]; 7] = [
     [201, 108, 34],
     [112, 48, 8],
 ];
+/// The same on a dark ground: the middle is dark, the ends are light.
+pub(crate) const DARK_STOPS: [[u8; 3]; 7] = [
+    [158, 214, 255],
+    [72, 150, 208],
+    [42, 88, 128],
+    [38, 43, 50],
+    [120, 74, 36],
+    [206, 124, 54],
+    [255, 205, 148],
+];
 /// Polygons without a value.
 pub(crate) const NO_VALUE: &str = "#c9cdd2";
 

@@ -3,7 +3,7 @@
 
 use std::sync::OnceLock;
 
-use super::projection::Frame;
+use super::projection::{Frame, RADIUS};
 use super::svg::polyline;
 
 static PACKED: &[u8] = include_bytes!("land.bin");
@@ -15,7 +15,7 @@ const NEAR: f64 = 0.4;
 /// Latitude and longitude, degrees, of the points of each ring.
 type Rings = Vec<Vec<(f64, f64)>>;
 
-/// All rings of the file; none if it cannot be read, which a test would tell.
+/// All rings of the file, each clockwise seen from above; none if it cannot be read, which a test would tell.
 fn rings() -> &'static Rings {
     static RINGS: OnceLock<Rings> = OnceLock::new();
     RINGS.get_or_init(|| {
@@ -63,8 +63,7 @@ impl Numbers<'_> {
     }
 }
 
-/// Path data of the land within the frame, and of its coast, which has no lines along the frame; both empty where there
-/// is no land, or nothing else.
+/// Path data of the land within the frame, to be filled by the even-odd rule; empty where there is none.
 pub(super) fn land(frame: &Frame) -> String {
     let [left, top, width, height] = frame.inside;
     // A little more than is seen, so that no line runs along the edge.
@@ -80,6 +79,14 @@ pub(super) fn land(frame: &Frame) -> String {
             .iter()
             .map(|&(lat, lon)| frame.pixel(lat, lon))
             .collect();
+        // The map turns a ring around its antipode inside out: the land is what lies outside. The ring runs
+        // counter-clockwise then, which makes its area negative, as pixels run downwards, and it holds most of the Earth.
+        let hemisphere = std::f64::consts::TAU * (RADIUS / frame.metres).powi(2);
+        if 0.5 * doubled_area(&points) < -hemisphere {
+            let [left, top, right, bottom] = outer;
+            let corners = [[left, top], [right, top], [right, bottom], [left, bottom]];
+            data.push_str(&polyline(&corners, true));
+        }
         let mut clipped = points;
         for side in 0..4 {
             clipped = cut(&clipped, side, outer);
@@ -99,6 +106,13 @@ pub(super) fn land(frame: &Frame) -> String {
         }
     }
     data
+}
+
+/// Twice the signed area of a ring.
+fn doubled_area(ring: &[[f64; 2]]) -> f64 {
+    let next = ring.iter().cycle().skip(1);
+    let pairs = ring.iter().zip(next);
+    pairs.map(|(a, b)| a[0] * b[1] - b[0] * a[1]).sum()
 }
 
 /// The part of a ring on the inner side of one side of the box: left, top, right, bottom.
@@ -169,6 +183,57 @@ mod tests {
         }
         for (latitude, longitude) in [(46.5, -29.8), (0.0, -150.0), (22.2, 114.6), (43.0, 5.0)] {
             assert!(!on_land(latitude, longitude), "{latitude} {longitude}");
+        }
+    }
+
+    /// Even-odd: whether a pixel lies inside a path.
+    fn inside(data: &str, at: [f64; 2]) -> bool {
+        let mut inside = false;
+        for ring in data.split('M').skip(1) {
+            let numbers = ring.split(['L', 'Z', ' ']).filter(|n| !n.is_empty());
+            let numbers: Vec<f64> = numbers.map(|n| n.parse().unwrap()).collect();
+            let points: Vec<[f64; 2]> = numbers.chunks(2).map(|p| [p[0], p[1]]).collect();
+            let mut before = points[points.len() - 1];
+            for point in points {
+                let ([x1, y1], [x2, y2]) = (before, point);
+                if (y1 > at[1]) != (y2 > at[1]) && at[0] < x1 + (at[1] - y1) / (y2 - y1) * (x2 - x1)
+                {
+                    inside = !inside;
+                }
+                before = point;
+            }
+        }
+        inside
+    }
+
+    /// South America lies around the antipode of Hong Kong, Spain around that of New Zealand.
+    #[test]
+    fn the_map_shows_the_land_of_the_file() {
+        let place = |latitude, longitude| Position::new(latitude, longitude).unwrap();
+        for (south, west, size) in [
+            (22.2, 113.9, 0.3),
+            (-41.5, 172.5, 2.0),
+            (46.2, -30.2, 1.0),
+            (40.5, -74.3, 0.6),
+            (-10.0, -70.0, 20.0),
+            (-22.5, 165.0, 2.0),
+        ] {
+            let places = [place(south, west), place(south + size, west + size)];
+            let frame = Frame::around(&places, [0.0, 0.0, 600.0, 500.0], 300.0, 40.0);
+            let data = land(&frame);
+            let (mut right, mut all) = (0, 0);
+            for i in 0..12 {
+                for j in 0..12 {
+                    let part = |k: i32| f64::from(k) / 11.0 * size;
+                    let (latitude, longitude) = (south + part(i), west + part(j));
+                    let same = inside(&data, frame.pixel(latitude, longitude))
+                        == on_land(latitude, longitude);
+                    right += i32::from(same);
+                    all += 1;
+                }
+            }
+            // Some of the places may lie within a pixel of the coast.
+            assert!(right >= all - 2, "{south} {west}: {right} of {all}");
         }
     }
 

@@ -215,7 +215,11 @@ fn legend(svg: &mut Svg, bottom: f64, scale: Scale, quantity: Quantity) {
         "grey: no estimate",
         Style::new(12.0),
     );
-    svg.text([signs, y + 48.0], "Open circle: no wind", Style::note(12.0));
+    svg.text(
+        [signs, y + 48.0],
+        "open circle: no wind; dashed: ring or region",
+        Style::note(12.0),
+    );
     let barbs = signs + 300.0;
     for (k, (halves, text)) in [(1, "5 kt"), (2, "10 kt"), (10, "50 kt")]
         .iter()

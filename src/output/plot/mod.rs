@@ -85,9 +85,11 @@ impl Quantity {
 
 /// A text in small letters, in lines of a width.
 fn footnote(svg: &mut Svg, [x, mut y]: [f64; 2], text: &str, width: f64) {
+    // Running text is narrower than identifiers.
+    let fits = |line: &str, word: &str| 0.94 * width_of(&format!("{line} {word}"), 11.0) <= width;
     let mut line = String::new();
     for word in text.split_whitespace() {
-        if !line.is_empty() && width_of(&line, 11.0) + width_of(word, 11.0) + 6.0 > width {
+        if !line.is_empty() && !fits(&line, word) {
             svg.text([x, y], &line, Style::note(11.0));
             line.clear();
             y += 15.0;

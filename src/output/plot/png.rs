@@ -51,11 +51,29 @@ pub fn png(svg: &str) -> Result<Vec<u8>, String> {
 mod tests {
     use super::*;
 
+    fn dark_pixels(text: &str) -> usize {
+        let svg = format!(
+            "<svg xmlns=\"http://www.w3.org/2000/svg\" width=\"60\" height=\"40\" font-family=\"Noto Sans\">\
+             <rect width=\"60\" height=\"40\" fill=\"#ffffff\"/><text x=\"5\" y=\"30\" font-size=\"24\">{text}</text></svg>"
+        );
+        let picture = Pixmap::decode_png(&png(&svg).unwrap()).unwrap();
+        picture.pixels().iter().filter(|p| p.red() < 128).count()
+    }
+
+    /// A character that the font does not have leaves nothing, and says nothing.
+    #[test]
+    fn every_sign_of_the_pictures_is_in_the_font() {
+        assert_eq!(dark_pixels(" "), 0);
+        for sign in "0–±²⁻⁵¹°ωζδé…,;:()%'+/ŁŻ".chars() {
+            assert!(dark_pixels(&sign.to_string()) > 3, "{sign}");
+        }
+    }
+
     /// Text is dropped silently where no font is found, so dark pixels are counted.
     #[test]
     fn text_appears() {
         let svg = "<svg xmlns=\"http://www.w3.org/2000/svg\" width=\"200\" height=\"40\" font-family=\"Noto Sans\">\
-                   <rect width=\"200\" height=\"40\" fill=\"#ffffff\"/><text x=\"5\" y=\"30\" font-size=\"24\">10⁻⁵ s⁻¹ ±ζδ−</text></svg>";
+                   <rect width=\"200\" height=\"40\" fill=\"#ffffff\"/><text x=\"5\" y=\"30\" font-size=\"24\">10⁻⁵ s⁻¹ ±ζδ–</text></svg>";
         let bytes = png(svg).unwrap();
         let picture = Pixmap::decode_png(&bytes).unwrap();
         assert_eq!((picture.width(), picture.height()), (400, 80));

@@ -58,9 +58,7 @@ pub fn profile_picture(
     ];
     let heights = || panels.iter().flat_map(|p| &p.0).map(|p| p.0 * unit);
     let [low, high] = roomy(heights());
-    if heights().next().is_none() {
-        return None;
-    }
+    heights().next()?;
     // Pressure falls upward.
     let ends = if pressure {
         [TOP, TOP + HEIGHT]

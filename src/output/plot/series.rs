@@ -1,5 +1,7 @@
 //! Vorticity and divergence of one polygon in the course of time, with their errors.
 
+use std::fmt::Write as _;
+
 use super::axis::roomy;
 use super::chart::Chart;
 use super::svg::{NOTE, Paint, Style, Svg, fitted};
@@ -55,7 +57,7 @@ pub fn series_picture(setup: &Setup, frames: &Frames, polygon: usize) -> Option<
             .collect();
         let bounds = points.iter().flatten().flat_map(|p| [p.1 - p.2, p.1 + p.2]);
         let range = roomy(bounds.chain([0.0]));
-        let place = [LEFT, top, WIDTH - LEFT - 24.0, HEIGHT];
+        let place = [LEFT, top, WIDTH - LEFT - 34.0, HEIGHT];
         let chart = Chart::linear(place, [0.0, seconds(last.micros()).max(1.0)], range);
         chart.y_axis(&mut svg, &format!("{}, 10⁻⁵ s⁻¹", quantity.name()));
         if q == 1 {
@@ -81,10 +83,8 @@ pub fn series_picture(setup: &Setup, frames: &Frames, polygon: usize) -> Option<
     }
     let mut notes = format!("Errors: {}. ", error_bars(&setup.settings.errors));
     if frames.every > 1 {
-        notes.push_str(&format!(
-            "Every {}th analysis time is shown. ",
-            frames.every
-        ));
+        // Writing to a string cannot fail.
+        let _ = write!(notes, "Every {}th analysis time is shown. ", frames.every);
     }
     notes.push_str(CAUTION);
     svg.line(
