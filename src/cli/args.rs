@@ -1,7 +1,6 @@
 //! The commands, and the options that several of them have.
 
-use std::io;
-use std::path::{Path, PathBuf};
+use std::path::PathBuf;
 use std::time::Duration;
 
 use clap::{Parser, Subcommand, ValueEnum};
@@ -15,8 +14,6 @@ use super::polygons::PolygonsArgs;
 use super::profile::ProfileArgs;
 use super::report::PageArgs;
 use crate::error::Error;
-use crate::output::OutputSet;
-use crate::output::plot::png;
 use crate::pipeline::Setup;
 use crate::settings::Overrides;
 use crate::time::Time;
@@ -180,39 +177,6 @@ impl AnalysisArgs {
             window: self.window,
             ..overrides
         }
-    }
-}
-
-/// Pictures.
-#[derive(Debug, clap::Args)]
-pub(super) struct PictureArgs {
-    /// Draw pictures too, in one format or both: png, svg
-    #[arg(long, value_name = "FORMAT", value_delimiter = ',')]
-    pub plot: Vec<PictureFormat>,
-}
-
-/// A format of pictures.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, ValueEnum)]
-pub(super) enum PictureFormat {
-    /// Pixels, sharp in print
-    Png,
-    /// Shapes and text
-    Svg,
-}
-
-impl PictureArgs {
-    /// Writes a picture in the formats asked for.
-    pub fn put(&self, set: &mut OutputSet, name: &str, svg: &str) -> Result<(), Error> {
-        if self.plot.contains(&PictureFormat::Svg) {
-            set.put(&format!("{name}.svg"), svg.as_bytes())?;
-        }
-        if self.plot.contains(&PictureFormat::Png) {
-            let name = format!("{name}.png");
-            let bytes =
-                png(svg).map_err(|e| Error::write(Path::new(&name), io::Error::other(e)))?;
-            set.put(&name, &bytes)?;
-        }
-        Ok(())
     }
 }
 

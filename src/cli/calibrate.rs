@@ -4,7 +4,8 @@ use std::path::{Path, PathBuf};
 
 use clap::Args;
 
-use super::args::{InputArgs, OutputArgs, PictureArgs};
+use super::args::{InputArgs, OutputArgs};
+use super::pictures::PictureArgs;
 use super::run::{over_reports, tell};
 use super::text::calibration::calibration_text;
 use super::{Status, print, say};

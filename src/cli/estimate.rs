@@ -5,15 +5,17 @@ use std::path::{Path, PathBuf};
 use clap::{Args, ValueEnum};
 
 use super::args::{AnalysisArgs, InputArgs};
+use super::pictures::{PictureArgs, polygon, put_pictures};
+use super::report::put_page;
 use super::run::{over_reports, tell};
 use super::text::estimate::run_summary;
 use super::{Status, print, say};
 use crate::error::Error;
 use crate::output::{
-    OutputSet, SeriesChoice, SeriesFormat, kinematics_means_csv, means_csv, mesh_geojson, series,
-    stations_csv, structure_csv, summary_csv, summary_json,
+    EncodedBlock, Frame, Frames, OutputSet, SeriesChoice, SeriesFormat, kinematics_means_csv,
+    means_csv, mesh_geojson, series, stations_csv, structure_csv, summary_csv, summary_json,
 };
-use crate::pipeline::{self, Outcome, Setup};
+use crate::pipeline::{BlockView, EventsOutcome, Outcome, Setup, find_events_and, run};
 use crate::settings::{MeansBy, MeansSettings, Overrides, height_above_ground};
 use crate::time::Time;
 
@@ -37,9 +39,15 @@ pub(super) struct EstimateArgs {
         default_value = "csv"
     )]
     format: Vec<Format>,
-    /// Times of polygons.geojson, RFC 3339; several are allowed [default: the last]
+    /// Times of polygons.geojson and of the maps of --plot, RFC 3339; several are allowed [default: the last, and that
+    /// of the strongest value]
     #[arg(long, value_name = "TIME", value_parser = Time::parse_rfc3339)]
     at: Vec<Time>,
+    #[command(flatten)]
+    pictures: PictureArgs,
+    /// Polygon whose series --plot draws [default: that of the strongest convergence]
+    #[arg(long, value_name = "NAME", requires = "plot")]
+    polygon: Option<String>,
     /// Write no series, only the summary of each polygon
     #[arg(long)]
     summary_only: bool,
@@ -85,17 +93,21 @@ enum Format {
     Netcdf,
     /// The polygons with their values at the times of --at
     Geojson,
+    /// The page of `gyremesh report`
+    Html,
 }
 
-impl From<Format> for SeriesFormat {
-    fn from(format: Format) -> Self {
-        match format {
-            Format::Csv => Self::Csv,
-            Format::Parquet => Self::Parquet,
-            Format::Arrow => Self::Arrow,
-            Format::Netcdf => Self::Netcdf,
-            Format::Geojson => Self::Geojson,
-        }
+impl Format {
+    /// What it is of the series; the page is none.
+    fn series(self) -> Option<SeriesFormat> {
+        Some(match self {
+            Self::Csv => SeriesFormat::Csv,
+            Self::Parquet => SeriesFormat::Parquet,
+            Self::Arrow => SeriesFormat::Arrow,
+            Self::Netcdf => SeriesFormat::Netcdf,
+            Self::Geojson => SeriesFormat::Geojson,
+            Self::Html => return None,
+        })
     }
 }
 
@@ -135,24 +147,43 @@ pub(super) fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
         .unwrap_or_else(|| default_folder(&args.input.network));
     let wanted = args.format.iter().filter(|_| !args.summary_only);
     let choice = SeriesChoice {
-        formats: wanted.map(|&format| format.into()).collect(),
+        formats: wanted.filter_map(|format| format.series()).collect(),
         at: args.at.clone(),
     };
+    let page = args.format.contains(&Format::Html);
+    let drawn = page || args.pictures.any();
+    let shown = args.polygon.as_deref();
+    let shown = shown.map(|name| polygon(&setup, name)).transpose()?;
+    let polygons = setup.built.polygons.len();
     let run = over_reports(&setup.settings, args.quiet, |order, progress| {
         let mut set = OutputSet::new(&folder)?;
         let (encoder, mut series_files) = series(&setup, &choice, &mut set)?;
-        let outcome = pipeline::run(
-            &setup,
-            order,
-            |seen| encoder.encode(seen),
-            |encoded| series_files.write(&mut set, encoded),
-            progress,
-        )?;
-        Ok((outcome, set, series_files))
+        let mut frames = Frames::new(polygons, &args.at);
+        let encode = |seen: &BlockView| {
+            let frames = drawn.then(|| Frames::of(seen, polygons));
+            (encoder.encode(seen), frames)
+        };
+        let write = |(encoded, block): (EncodedBlock, Option<Vec<Frame>>)| {
+            frames.add(block.unwrap_or_default());
+            series_files.write(&mut set, encoded)
+        };
+        // The page tells of events too.
+        let done = if page {
+            let events = find_events_and(&setup, order, encode, write, progress)?;
+            Done::Events(Box::new(events))
+        } else {
+            Done::Run(Box::new(run(&setup, order, encode, write, progress)?))
+        };
+        Ok((done, set, series_files, frames))
     });
-    let (outcome, mut set, series_files) = run?;
+    let (done, mut set, series_files, frames) = run?;
+    let outcome = done.outcome();
     let unmet = series_files.finish(&setup, &outcome.extra, &mut set)?;
-    put_tables(&mut set, &setup, &outcome)?;
+    put_tables(&mut set, &setup, outcome)?;
+    put_pictures(&mut set, &args.pictures, (&setup, outcome), &frames, shown)?;
+    if let Done::Events(events) = &done {
+        put_page(&mut set, &setup, events, &frames)?;
+    }
     let files = set.commit()?;
 
     for time in unmet {
@@ -161,9 +192,24 @@ pub(super) fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
     }
     let status = tell(&outcome.warnings, &outcome.reading);
     if !args.quiet {
-        print(&run_summary(&setup, &outcome, &files))?;
+        print(&run_summary(&setup, outcome, &files))?;
     }
     Ok(status)
+}
+
+/// What was run.
+enum Done {
+    Run(Box<Outcome>),
+    Events(Box<EventsOutcome>),
+}
+
+impl Done {
+    fn outcome(&self) -> &Outcome {
+        match self {
+            Self::Run(outcome) => outcome,
+            Self::Events(events) => &events.run,
+        }
+    }
 }
 
 /// The files that are not series.

@@ -7,6 +7,7 @@ mod estimate;
 mod events;
 mod expect;
 mod help;
+mod pictures;
 mod polygons;
 mod profile;
 mod report;

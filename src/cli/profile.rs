@@ -2,7 +2,8 @@
 
 use clap::Args;
 
-use super::args::{InputArgs, OutputArgs, PictureArgs};
+use super::args::{InputArgs, OutputArgs};
+use super::pictures::PictureArgs;
 use super::run::{over_reports, tell};
 use super::text::profile::profile_text;
 use super::{Status, print};

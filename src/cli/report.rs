@@ -33,7 +33,7 @@ pub(super) fn report(args: &PageArgs) -> Result<Status, Error> {
     let folder = folder.unwrap_or_else(|| default_folder(&args.input.network));
     let polygons = setup.built.polygons.len();
     let (events, frames) = over_reports(&setup.settings, false, |order, progress| {
-        let mut frames = Frames::new(polygons, None);
+        let mut frames = Frames::new(polygons, &[]);
         let events = pipeline::find_events_and(
             &setup,
             order,

@@ -58,23 +58,23 @@ pub struct Frames {
     pub kept: Vec<Frame>,
     /// Those with the strongest vorticity and divergence of all times.
     pub strongest: [Option<Frame>; 2],
-    wanted: Option<Time>,
-    /// The one nearest to the time asked for.
-    pub at: Option<Frame>,
+    wanted: Vec<Time>,
+    /// For each time asked for the nearest one.
+    pub at: Vec<Frame>,
 }
 
 impl Frames {
-    /// No frames yet, of a network with so many polygons; the one nearest to `wanted` is kept besides.
+    /// No frames yet, of a network with so many polygons; those nearest to the times of `wanted` are kept besides.
     #[must_use]
-    pub fn new(polygons: usize, wanted: Option<Time>) -> Self {
+    pub fn new(polygons: usize, wanted: &[Time]) -> Self {
         Self {
             most: (MOST_CELLS / polygons.max(1)).clamp(24, MOST_TIMES),
             seen: 0,
             every: 1,
             kept: Vec::new(),
             strongest: [None, None],
-            wanted,
-            at: None,
+            wanted: wanted.to_vec(),
+            at: Vec::new(),
         }
     }
 
@@ -115,10 +115,13 @@ impl Frames {
                     *strongest = Some(frame.clone());
                 }
             }
-            if let Some(wanted) = self.wanted {
+            if self.at.is_empty() {
+                self.at = vec![frame.clone(); self.wanted.len()];
+            }
+            for (at, wanted) in self.at.iter_mut().zip(&self.wanted) {
                 let away = |frame: &Frame| frame.time.micros().abs_diff(wanted.micros());
-                if self.at.as_ref().is_none_or(|at| away(&frame) < away(at)) {
-                    self.at = Some(frame.clone());
+                if away(&frame) < away(at) {
+                    *at = frame.clone();
                 }
             }
             if self.seen.is_multiple_of(self.every) {
@@ -166,7 +169,7 @@ mod tests {
     #[test]
     fn long_runs_are_thinned_evenly_and_keep_their_peak() {
         let wanted = Time::from_micros(777 * 60_000_000);
-        let mut frames = Frames::new(1, Some(wanted));
+        let mut frames = Frames::new(1, &[wanted]);
         for block in 0..250 {
             let minutes = (10 * block)..(10 * block + 10);
             frames.add(
@@ -183,9 +186,9 @@ mod tests {
             .map(|f| f.time.micros() / 60_000_000)
             .collect();
         assert!(minutes.windows(2).all(|w| w[1] - w[0] == 8));
-        let at = |frame: &Option<Frame>| frame.as_ref().map(|f| f.time.micros() / 60_000_000);
-        assert_eq!(at(&frames.strongest[0]), Some(1001));
-        assert_eq!(at(&frames.strongest[1]), Some(1001));
-        assert_eq!(at(&frames.at), Some(777));
+        let at = |frame: &Frame| frame.time.micros() / 60_000_000;
+        assert_eq!(frames.strongest[0].as_ref().map(at), Some(1001));
+        assert_eq!(frames.strongest[1].as_ref().map(at), Some(1001));
+        assert_eq!(frames.at.iter().map(at).collect::<Vec<_>>(), [777]);
     }
 }

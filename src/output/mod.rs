@@ -54,7 +54,7 @@ pub use kinematics::kinematics_means_csv;
 pub use profile::{assumptions, profile_csv, profile_json, w_of};
 pub use reading::reading_json;
 pub use report::report_html;
-pub use series::{SeriesChoice, SeriesEncoder, SeriesFiles, SeriesFormat, series};
+pub use series::{EncodedBlock, SeriesChoice, SeriesEncoder, SeriesFiles, SeriesFormat, series};
 pub use structure::structure_csv;
 pub(crate) use summary::significant_share;
 pub use summary::summary_json;
