@@ -38,12 +38,12 @@ fn unbalanced(page: &str) -> Vec<String> {
         let name: String = tag
             .trim_start_matches('/')
             .chars()
-            .take_while(|c| c.is_ascii_alphanumeric())
+            .take_while(char::is_ascii_alphanumeric)
             .collect();
         rest = &rest[end + 1..];
         if tag.starts_with('/') {
             let last = open.pop();
-            assert_eq!(last.as_deref(), Some(name.as_str()), "before {:.80}", rest);
+            assert_eq!(last.as_deref(), Some(name.as_str()), "before {rest:.80}");
         } else if !tag.ends_with('/') && !["meta", "input", "br", "link"].contains(&name.as_str()) {
             if ["script", "style", "pre"].contains(&name.as_str()) {
                 let close = format!("</{name}>");
