@@ -58,7 +58,7 @@ impl fmt::Display for Problem {
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 #[non_exhaustive]
 pub enum ErrorKind {
-    /// Settings or station list.
+    /// Options, settings or station list.
     Settings,
     /// Stations that make no polygons: too few, too wide, all on a line.
     Network,
@@ -81,6 +81,9 @@ pub enum Error {
     /// Settings and station list have these defects, all that were found.
     #[error("{}", list(.0))]
     Invalid(Vec<Problem>),
+    /// Options that do not go together.
+    #[error("{0}")]
+    Options(String),
     /// The stations make no polygons.
     #[error("{0}")]
     Network(String),
@@ -126,7 +129,7 @@ impl Error {
     #[must_use]
     pub fn kind(&self) -> ErrorKind {
         match self {
-            Self::Invalid(_) => ErrorKind::Settings,
+            Self::Invalid(_) | Self::Options(_) => ErrorKind::Settings,
             Self::Network(_) => ErrorKind::Network,
             Self::Reports(_) => ErrorKind::Reports,
             Self::NotInOrder(_) => ErrorKind::Order,

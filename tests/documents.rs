@@ -37,6 +37,7 @@ fn the_first_run_of_the_readme_prints_what_it_shows() {
         "out/ostrin",
     );
     assert_eq!(printed.trim(), shown.trim());
+    assert!(printed.lines().all(|line| line.chars().count() <= 80));
 }
 
 #[test]

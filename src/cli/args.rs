@@ -1,19 +1,22 @@
 //! The commands, and the options that several of them have.
 
-use std::path::PathBuf;
+use std::path::{Path, PathBuf};
 use std::time::Duration;
 
 use clap::{Parser, Subcommand, ValueEnum};
 
 use super::calibrate::CalibrateArgs;
 use super::check::CheckArgs;
+use super::completions::CompletionsArgs;
 use super::estimate::EstimateArgs;
 use super::events::EventsArgs;
-use super::help;
+use super::manual::ManualArgs;
 use super::polygons::PolygonsArgs;
 use super::profile::ProfileArgs;
 use super::report::PageArgs;
+use super::{help, print};
 use crate::error::Error;
+use crate::output::OutputSet;
 use crate::pipeline::Setup;
 use crate::settings::Overrides;
 use crate::time::Time;
@@ -21,7 +24,7 @@ use crate::units;
 
 /// Where the air converges and spins up, by how much, and whether to believe it.
 #[derive(Debug, Parser)]
-#[command(version, about, long_about = help::LONG_ABOUT, after_help = help::AFTER_HELP, max_term_width = 100)]
+#[command(version, about, long_about = help::LONG_ABOUT, after_help = help::laid_out(help::AFTER_HELP), max_term_width = 80)]
 pub(super) struct Args {
     /// What to do.
     #[command(subcommand)]
@@ -32,26 +35,32 @@ pub(super) struct Args {
 #[derive(Debug, Subcommand)]
 pub(super) enum Command {
     /// Read all reports and show what came of each file and station; estimates nothing
-    #[command(after_help = help::CHECK)]
+    #[command(after_help = help::laid_out(help::CHECK))]
     Check(CheckArgs),
     /// List the polygons of a network, their shape and what is left out; needs no reports
-    #[command(after_help = help::POLYGONS)]
+    #[command(after_help = help::laid_out(help::POLYGONS))]
     Polygons(PolygonsArgs),
     /// Estimate area-mean vorticity and divergence from the reports (the main job)
-    #[command(after_help = help::ESTIMATE)]
+    #[command(after_help = help::laid_out(help::ESTIMATE))]
     Estimate(EstimateArgs),
     /// Find vanes that are turned, speeds mis-scaled, clocks off and data mixed up, from the network itself
-    #[command(after_help = help::CALIBRATE)]
+    #[command(after_help = help::laid_out(help::CALIBRATE))]
     Calibrate(CalibrateArgs),
     /// Tell what happened: areas that converge or spin up, wind-shift lines, and when they reach your places
-    #[command(after_help = help::EVENTS)]
+    #[command(after_help = help::laid_out(help::EVENTS))]
     Events(EventsArgs),
     /// Profiles of vorticity, divergence and vertical motion from reports on levels: soundings, profilers, masts, lidars
-    #[command(after_help = help::PROFILE)]
+    #[command(after_help = help::laid_out(help::PROFILE))]
     Profile(ProfileArgs),
     /// Make one page for a browser, which works offline: map that moves in time, series, events, stations, settings
-    #[command(after_help = help::REPORT)]
+    #[command(after_help = help::laid_out(help::REPORT))]
     Report(PageArgs),
+    /// Print what makes a shell complete commands and options
+    #[command(after_help = help::laid_out(help::COMPLETIONS))]
+    Completions(CompletionsArgs),
+    /// Print or write the manual, for `man`
+    #[command(after_help = help::laid_out(help::MANUAL))]
+    Manual(ManualArgs),
 }
 
 /// What every command that estimates takes: a network, its reports, and which of them are used.
@@ -183,12 +192,61 @@ impl AnalysisArgs {
 /// Where the results of a command that prints go.
 #[derive(Debug, clap::Args)]
 pub(super) struct OutputArgs {
-    /// Write the files named below into this folder too
+    /// Write the files named below into this folder too; `-`: only the first of them, to standard output
     #[arg(long, value_name = "DIR")]
     pub out: Option<PathBuf>,
     /// Print JSON
     #[arg(long)]
     pub json: bool,
+}
+
+impl OutputArgs {
+    /// The files of `--out`, if it is given; of them `main` alone for standard output, if no option of `more` is there.
+    pub fn files(&self, main: &str, more: &[(&str, bool)]) -> Result<Option<OutputSet>, Error> {
+        let Some(out) = &self.out else {
+            return Ok(None);
+        };
+        let more = [&[("--json", self.json)], more].concat();
+        output_set(out, main, &more).map(Some)
+    }
+
+    /// Prints the results for programs or for people, unless standard output has a file.
+    pub fn show(
+        &self,
+        json: impl FnOnce() -> String,
+        text: impl FnOnce() -> String,
+    ) -> Result<(), Error> {
+        if self.out.as_deref().is_some_and(is_stdout) {
+            return Ok(());
+        }
+        print(&if self.json { json() } else { text() })
+    }
+}
+
+/// True for `-`.
+pub(super) fn is_stdout(out: &Path) -> bool {
+    out == Path::new("-")
+}
+
+/// The files for a folder; or `main` alone for standard output, if none of the options `more` asks for something else.
+pub(super) fn output_set(
+    out: &Path,
+    main: &str,
+    more: &[(&str, bool)],
+) -> Result<OutputSet, Error> {
+    if !is_stdout(out) {
+        return OutputSet::new(out);
+    }
+    let asked = more.iter().filter(|(_, asked)| *asked);
+    let asked: Vec<&str> = asked.map(|(option, _)| *option).collect();
+    if asked.is_empty() {
+        Ok(OutputSet::for_stdout(main))
+    } else {
+        Err(Error::Options(format!(
+            "`--out -` writes {main} alone to standard output: leave out {}, or name a folder",
+            asked.join(" and ")
+        )))
+    }
 }
 
 /// A format of a table.
@@ -198,4 +256,19 @@ pub(super) enum Format {
     Csv,
     /// The same columns, typed, null for missing
     Parquet,
+}
+
+/// What does not go with a single file.
+pub(super) fn several<T>(formats: &[T]) -> (&'static str, bool) {
+    ("all formats but one", formats.len() > 1)
+}
+
+impl Format {
+    /// Ending of the names of its files.
+    pub fn ending(self) -> &'static str {
+        match self {
+            Self::Csv => "csv",
+            Self::Parquet => "parquet",
+        }
+    }
 }

@@ -8,7 +8,7 @@ use super::args::{InputArgs, OutputArgs};
 use super::pictures::PictureArgs;
 use super::run::{over_reports, tell};
 use super::text::calibration::calibration_text;
-use super::{Status, print, say};
+use super::{Status, say};
 use crate::error::Error;
 use crate::output::plot::calibration_picture;
 use crate::output::{
@@ -33,11 +33,13 @@ pub(super) struct CalibrateArgs {
 
 pub(super) fn calibrate(args: &CalibrateArgs) -> Result<Status, Error> {
     let setup = args.input.setup()?;
+    let files = args
+        .output
+        .files("maintenance.csv", &[args.pictures.asked()])?;
     let outcome = over_reports(&setup.settings, args.output.json, |order, progress| {
         pipeline::calibrate(&setup, order, progress)
     })?;
-    if let Some(folder) = &args.output.out {
-        let mut set = OutputSet::new(folder)?;
+    if let Some(mut set) = files {
         let maintenance = maintenance_csv(&setup, &outcome);
         set.put("maintenance.csv", maintenance.as_bytes())?;
         let calibration = calibration_csv(&setup, &outcome);
@@ -47,11 +49,10 @@ pub(super) fn calibrate(args: &CalibrateArgs) -> Result<Status, Error> {
         set.commit()?;
     }
     let status = tell(&outcome.warnings, &outcome.reading);
-    print(&if args.output.json {
-        calibration_json(&setup, &outcome)
-    } else {
-        calibration_text(&setup, &outcome)
-    })?;
+    args.output.show(
+        || calibration_json(&setup, &outcome),
+        || calibration_text(&setup, &outcome),
+    )?;
     if let Some(file) = &args.apply {
         apply(file, &setup, &outcome)?;
     }

@@ -4,13 +4,13 @@ use std::path::PathBuf;
 
 use clap::Args;
 
-use super::args::{Format, OutputArgs, ReportArgs};
+use super::Status;
+use super::args::{Format, OutputArgs, ReportArgs, several};
 use super::run::{over_reports, tell};
 use super::text::reading::reading_text;
 use super::text::screening::explained_text;
-use super::{Status, print};
 use crate::error::{Error, nearest_name};
-use crate::output::{FlaggedFiles, FlaggedFormats, OutputSet, reading_json};
+use crate::output::{FlaggedFiles, FlaggedFormats, reading_json};
 use crate::pipeline::{Reading, Sources};
 use crate::settings::Overrides;
 use crate::station::Network;
@@ -55,9 +55,12 @@ pub(super) fn check(args: &CheckArgs) -> Result<Status, Error> {
         csv: args.format.contains(&Format::Csv),
         parquet: args.format.contains(&Format::Parquet),
     };
+    let ending = args.format.first().map_or("csv", |f| f.ending());
+    let main = format!("reports_flagged.{ending}");
+    let more = [several(&args.format), ("--explain", explain.is_some())];
     // The rows come in no steps that could be shown.
     let (reading, set) = over_reports(settings, true, |order, _| {
-        let mut set = args.output.out.as_deref().map(OutputSet::new).transpose()?;
+        let mut set = args.output.files(&main, &more)?;
         let mut files = None;
         let reading = Reading::with(settings, network, order, explain, |window, neighbours| {
             let Some(set) = &mut set else {
@@ -78,14 +81,16 @@ pub(super) fn check(args: &CheckArgs) -> Result<Status, Error> {
         set.commit()?;
     }
     let status = tell(sources.warnings.iter().chain(&reading.warnings), &reading);
-    print(&match explain {
-        _ if args.output.json => reading_json(settings, network, &reading),
-        Some((s, _)) => {
-            let id = &network.stations()[s].id; // a station of the network
-            explained_text(id, &reading.explained, &reading)
-        }
-        None => reading_text(settings, network, &reading),
-    })?;
+    args.output.show(
+        || reading_json(settings, network, &reading),
+        || match explain {
+            Some((s, _)) => {
+                let id = &network.stations()[s].id; // a station of the network
+                explained_text(id, &reading.explained, &reading)
+            }
+            None => reading_text(settings, network, &reading),
+        },
+    )?;
     Ok(if reading.failures.len() == reading.files.len() {
         Status::NotDone
     } else {

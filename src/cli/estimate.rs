@@ -4,7 +4,7 @@ use std::path::{Path, PathBuf};
 
 use clap::{Args, ValueEnum};
 
-use super::args::{AnalysisArgs, InputArgs};
+use super::args::{AnalysisArgs, InputArgs, is_stdout, output_set, several};
 use super::pictures::{PictureArgs, polygon, put_pictures};
 use super::report::put_page;
 use super::run::{over_reports, tell};
@@ -12,17 +12,21 @@ use super::text::estimate::run_summary;
 use super::{Status, print, say};
 use crate::error::Error;
 use crate::output::{
-    EncodedBlock, Frame, Frames, OutputSet, SeriesChoice, SeriesFormat, means_csv, mesh_geojson,
-    series, stations_csv, structure_csv, summary_csv, summary_json,
+    EncodedBlock, Frame, Frames, OutputSet, SeriesChoice, SeriesFormat, kinematics_means_csv,
+    means_csv, mesh_geojson, series, stations_csv, structure_csv, summary_csv, summary_json,
 };
 use crate::pipeline::{BlockView, EventsOutcome, Outcome, Setup, find_events_and, run};
-use crate::settings::{MeansBy, MeansSettings, Overrides};
+use crate::settings::{MeansBy, MeansSettings, Overrides, height_above_ground};
 use crate::time::Time;
 
 /// Options of `estimate`.
 #[derive(Debug, Args)]
+#[expect(
+    clippy::struct_excessive_bools,
+    reason = "each is an option of its own"
+)]
 pub(super) struct EstimateArgs {
-    /// Folder of the results [default: out/NAME, NAME being the folder of the settings file]
+    /// Folder of the results; `-`: only the series, with --summary-only polygon_summary.csv, to standard output [default: out/NAME, NAME being the folder of the settings file]
     #[arg(long, value_name = "DIR")]
     out: Option<PathBuf>,
     #[command(flatten)]
@@ -53,12 +57,21 @@ pub(super) struct EstimateArgs {
     /// Write kinematics.csv (or .parquet) too: mean wind, deformation, curvature and shear and more of each polygon
     #[arg(long, conflicts_with = "summary_only")]
     kinematics: bool,
+    /// Write vertical_motion.csv too: vertical wind at this height above the ground, if the divergence is the same up to it
+    #[arg(long, value_name = "HEIGHT", value_parser = height_above_ground, conflicts_with = "summary_only")]
+    w_at: Option<f64>,
+    /// Write decompose.csv and decompose_stations.csv too: rotational, divergent and harmonic part of the wind
+    #[arg(long)]
+    decompose: bool,
     /// Write polygon_means.csv too: means of each polygon by hour of the day, calendar day, calendar month or named period
     #[arg(long, value_name = "WHAT", value_parser = means_by)]
     by: Option<MeansBy>,
     /// Print no summary and no progress; warnings remain
     #[arg(long, short)]
     quiet: bool,
+    /// Print summary.json in place of the summary
+    #[arg(long, conflicts_with = "quiet")]
+    json: bool,
     #[command(flatten)]
     input: InputArgs,
 }
@@ -88,6 +101,18 @@ enum Format {
 }
 
 impl Format {
+    /// Its file: the series, or the page.
+    fn file(self) -> &'static str {
+        match self {
+            Self::Csv => "polygons.csv",
+            Self::Parquet => "polygons.parquet",
+            Self::Arrow => "polygons.arrow",
+            Self::Netcdf => "polygons.nc",
+            Self::Geojson => "polygons.geojson",
+            Self::Html => "report.html",
+        }
+    }
+
     /// What it is of the series; the page is none.
     fn series(self) -> Option<SeriesFormat> {
         Some(match self {
@@ -115,16 +140,35 @@ impl EstimateArgs {
         Overrides {
             instrument_errors: self.errors == Parts::Instrument,
             kinematics: self.kinematics,
+            decompose: self.decompose,
+            w_at: self.w_at,
             by: self.by,
             ..self.analysis.over(self.input.overrides())
         }
+    }
+
+    fn files(&self, folder: &Path) -> Result<OutputSet, Error> {
+        let written = |format: &&Format| !self.summary_only || **format == Format::Html;
+        let first = self.format.first().filter(written);
+        let main = first.map_or("polygon_summary.csv", |format| format.file());
+        let more = [
+            several(&self.format),
+            ("--kinematics", self.kinematics),
+            ("--by", self.by.is_some()),
+            self.pictures.asked(),
+            ("--json", self.json),
+        ];
+        output_set(folder, main, &more)
     }
 }
 
 pub(super) fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
     let mut setup = args.input.setup_with(&args.overrides())?;
     // Without a series there is no file for them.
-    setup.settings.kinematics.write &= !args.summary_only;
+    if args.summary_only {
+        setup.settings.kinematics.write = false;
+        setup.settings.w_at = None;
+    }
     setup.has_polygons()?;
     let folder = args
         .out
@@ -140,27 +184,31 @@ pub(super) fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
     let shown = args.polygon.as_deref();
     let shown = shown.map(|name| polygon(&setup, name)).transpose()?;
     let polygons = setup.built.polygons.len();
-    let run = over_reports(&setup.settings, args.quiet, |order, progress| {
-        let mut set = OutputSet::new(&folder)?;
-        let (encoder, mut series_files) = series(&setup, &choice, &mut set)?;
-        let mut frames = Frames::new(polygons, &args.at);
-        let encode = |seen: &BlockView| {
-            let frames = drawn.then(|| Frames::of(seen, polygons));
-            (encoder.encode(seen), frames)
-        };
-        let write = |(encoded, block): (EncodedBlock, Option<Vec<Frame>>)| {
-            frames.add(block.unwrap_or_default());
-            series_files.write(&mut set, encoded)
-        };
-        // The page tells of events too.
-        let done = if page {
-            let events = find_events_and(&setup, order, encode, write, progress)?;
-            Done::Events(Box::new(events))
-        } else {
-            Done::Run(Box::new(run(&setup, order, encode, write, progress)?))
-        };
-        Ok((done, set, series_files, frames))
-    });
+    let run = over_reports(
+        &setup.settings,
+        args.quiet || args.json,
+        |order, progress| {
+            let mut set = args.files(&folder)?;
+            let (encoder, mut series_files) = series(&setup, &choice, &mut set)?;
+            let mut frames = Frames::new(polygons, &args.at);
+            let encode = |seen: &BlockView| {
+                let frames = drawn.then(|| Frames::of(seen, polygons));
+                (encoder.encode(seen), frames)
+            };
+            let write = |(encoded, block): (EncodedBlock, Option<Vec<Frame>>)| {
+                frames.add(block.unwrap_or_default());
+                series_files.write(&mut set, encoded)
+            };
+            // The page tells of events too.
+            let done = if page {
+                let events = find_events_and(&setup, order, encode, write, progress)?;
+                Done::Events(Box::new(events))
+            } else {
+                Done::Run(Box::new(run(&setup, order, encode, write, progress)?))
+            };
+            Ok((done, set, series_files, frames))
+        },
+    );
     let (done, mut set, series_files, frames) = run?;
     let outcome = done.outcome();
     let unmet = series_files.finish(&setup, &outcome.extra, &mut set)?;
@@ -176,7 +224,11 @@ pub(super) fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
         say("warning", &message);
     }
     let status = tell(&outcome.warnings, &outcome.reading);
-    if !args.quiet {
+    if is_stdout(&folder) {
+        // It has the series.
+    } else if args.json {
+        print(&summary_json(&setup, outcome))?;
+    } else if !args.quiet {
         print(&run_summary(&setup, outcome, &files))?;
     }
     Ok(status)
@@ -205,6 +257,9 @@ fn put_tables(set: &mut OutputSet, setup: &Setup, outcome: &Outcome) -> Result<(
     put("polygon_summary.csv", summary_csv(setup, outcome))?;
     if setup.settings.means.by.is_some() {
         put("polygon_means.csv", means_csv(setup, outcome))?;
+        if setup.settings.kinematics.write {
+            put("kinematics_means.csv", kinematics_means_csv(setup, outcome))?;
+        }
     }
     if setup.settings.errors.complete {
         put("structure.csv", structure_csv(outcome))?;

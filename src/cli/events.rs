@@ -2,12 +2,12 @@
 
 use clap::Args;
 
+use super::Status;
 use super::args::{InputArgs, OutputArgs};
 use super::run::{over_reports, tell};
 use super::text::events::bulletin;
-use super::{Status, print};
 use crate::error::Error;
-use crate::output::{OutputSet, arrivals_csv, events_csv, events_geojson, events_json, shifts_csv};
+use crate::output::{arrivals_csv, events_csv, events_geojson, events_json, shifts_csv};
 use crate::pipeline;
 
 /// Options of `events`.
@@ -21,11 +21,11 @@ pub(super) struct EventsArgs {
 
 pub(super) fn events(args: &EventsArgs) -> Result<Status, Error> {
     let setup = args.input.setup()?;
+    let files = args.output.files("events.csv", &[])?;
     let outcome = over_reports(&setup.settings, args.output.json, |order, progress| {
         pipeline::find_events(&setup, order, progress)
     })?;
-    if let Some(folder) = &args.output.out {
-        let mut set = OutputSet::new(folder)?;
+    if let Some(mut set) = files {
         set.put("events.csv", events_csv(&setup, &outcome).as_bytes())?;
         set.put("shifts.csv", shifts_csv(&setup, &outcome).as_bytes())?;
         set.put("arrivals.csv", arrivals_csv(&setup, &outcome).as_bytes())?;
@@ -34,10 +34,9 @@ pub(super) fn events(args: &EventsArgs) -> Result<Status, Error> {
         set.commit()?;
     }
     let status = tell(&outcome.run.warnings, &outcome.run.reading);
-    print(&if args.output.json {
-        events_json(&setup, &outcome)
-    } else {
-        bulletin(&setup, &outcome)
-    })?;
+    args.output.show(
+        || events_json(&setup, &outcome),
+        || bulletin(&setup, &outcome),
+    )?;
     Ok(status)
 }

@@ -4,9 +4,9 @@ use std::fmt::Write as _;
 use std::path::{Path, PathBuf};
 
 use clap::Args;
-use serde_json::Value;
+use serde_json::{Value, json};
 
-use super::text::{WIDTH, cut, wrapped};
+use super::text::{WIDTH, cell, cut, heading, wrapped};
 use crate::align::instrument_covariance;
 use crate::error::{Error, Place, Problem};
 use crate::integral::{ExpectedErrors, Sampling, expected_errors};
@@ -110,8 +110,8 @@ impl Expectation {
         // Writing to a string cannot fail.
         let _ = writeln!(
             out,
-            "{}: errors to expect of vorticity and divergence, 1e-5 /s",
-            setup.settings.name
+            "{}\nErrors to expect of vorticity and divergence, 1e-5 /s",
+            heading(&cut(&setup.settings.name, WIDTH))
         );
         let assumed = format!(
             "Sensors: {:.2} m/s in each component. Winds {:.1} km apart differ by {:.1} m/s in each component, exponent \
@@ -124,11 +124,11 @@ impl Expectation {
             self.origin
         );
         let _ = writeln!(out, "{}\n", wrapped(&assumed, WIDTH));
-        let _ = writeln!(
-            out,
-            "{:<23} {:>9} {:>7} {:>8} {:>8} {:>9} {:>9}",
+        let columns = format!(
+            "{:<23} {:>9} {:>7} {:>8} {:>8} {:>9} {:>10}",
             "polygon", "area km2", "sensors", "unseen", "unseen", "vorticity", "divergence"
         );
+        let _ = writeln!(out, "{}", heading(&columns));
         let _ = writeln!(out, "{:<41} {:>8} {:>8}", "", "(vort.)", "(div.)");
         for (polygon, error) in setup.built.polygons.iter().zip(&self.errors) {
             let tenths = [
@@ -142,8 +142,8 @@ impl Expectation {
             let [sensors, z, d, vorticity, divergence] = tenths;
             let _ = writeln!(
                 out,
-                "{:<23} {:>9.1} {sensors:>7} {z:>8} {d:>8} {vorticity:>9} {divergence:>9}",
-                cut(&polygon.id, 23),
+                "{} {:>9.1} {sensors:>7} {z:>8} {d:>8} {vorticity:>9} {divergence:>10}",
+                cell(&polygon.id, 23),
                 polygon.shape.area / 1e6,
             );
         }
@@ -157,6 +157,33 @@ impl Expectation {
             wrapped(CAUTION, WIDTH)
         );
         out
+    }
+
+    /// The table as JSON, with what was assumed.
+    pub(super) fn json(&self, setup: &Setup) -> String {
+        let polygons = setup.built.polygons.iter().zip(&self.errors);
+        let polygons = polygons.map(|(polygon, error)| {
+            json!({
+                "polygon": polygon.id,
+                "area_km2": polygon.shape.area / 1e6,
+                "se_instrument": error.instrument,
+                "vorticity_se_sampling": error.sampling[0],
+                "divergence_se_sampling": error.sampling[1],
+                "vorticity_se": error.total[0],
+                "divergence_se": error.total[1],
+            })
+        });
+        let value = json!({
+            "network": setup.settings.name,
+            "assumed": {
+                "sensor_sd": self.sensor_sd,
+                "structure": { "function": self.function, "origin": self.origin },
+            },
+            "polygons": polygons.collect::<Vec<Value>>(),
+            "units": { "errors": "s-1", "sensor_sd": "m s-1", "area_km2": "km2" },
+            "caution": CAUTION,
+        });
+        format!("{value:#}\n")
     }
 
     /// The table as CSV, 1/s.

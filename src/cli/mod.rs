@@ -3,10 +3,12 @@
 mod args;
 mod calibrate;
 mod check;
+mod completions;
 mod estimate;
 mod events;
 mod expect;
 mod help;
+mod manual;
 mod pictures;
 mod polygons;
 mod profile;
@@ -14,9 +16,10 @@ mod report;
 mod run;
 mod text;
 
-use std::io::{self, Write};
+use std::io::Write;
 use std::path::Path;
 
+use anstyle::AnsiColor;
 use clap::Parser;
 
 use self::args::{Args, Command};
@@ -58,6 +61,8 @@ pub fn main() -> Status {
         Command::Events(args) => events::events(args),
         Command::Profile(args) => profile::profile(args),
         Command::Report(args) => report::report(args),
+        Command::Completions(args) => completions::completions(args),
+        Command::Manual(args) => manual::manual(args),
     };
     match result {
         Ok(status) => status,
@@ -71,17 +76,21 @@ pub fn main() -> Status {
 
 /// Results for the user.
 fn print(text: &str) -> Result<(), Error> {
-    let mut out = io::stdout().lock();
+    // Escape codes are for terminals (NO_COLOR, CLICOLOR and CLICOLOR_FORCE say otherwise).
+    let mut out = anstream::stdout().lock();
     out.write_all(text.as_bytes())
         .and_then(|()| out.flush())
         .map_err(|e| Error::write(Path::new("standard output"), e))
 }
 
 /// Says something on stderr.
-#[expect(
-    clippy::print_stderr,
-    reason = "this is the one place that speaks to stderr"
-)]
 fn say(kind: &str, text: &str) {
-    eprintln!("{kind}: {text}");
+    let style = match kind {
+        "error" => AnsiColor::Red,
+        "warning" => AnsiColor::Yellow,
+        _ => AnsiColor::Cyan,
+    };
+    let style = style.on_default().bold();
+    // There is nowhere else to say that this cannot be said.
+    let _ = writeln!(anstream::stderr(), "{style}{kind}:{style:#} {text}");
 }

@@ -43,6 +43,11 @@ impl PictureArgs {
         Ok(())
     }
 
+    /// The option, for those that it does not go with.
+    pub fn asked(&self) -> (&'static str, bool) {
+        ("--plot", self.any())
+    }
+
     /// Whether there is one to draw.
     pub fn any(&self) -> bool {
         !self.plot.is_empty()

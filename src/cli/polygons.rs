@@ -4,12 +4,12 @@ use std::path::PathBuf;
 
 use clap::Args;
 
-use super::args::MeshArgs;
+use super::args::{MeshArgs, OutputArgs};
 use super::expect::{ExpectArgs, Expectation};
 use super::text::polygons::polygon_table;
-use super::{Status, print, say};
+use super::{Status, say};
 use crate::error::Error;
-use crate::output::{OutputSet, mesh_csv, mesh_geojson};
+use crate::output::{mesh_csv, mesh_geojson, mesh_json};
 use crate::pipeline::Setup;
 
 /// Options of `polygons`.
@@ -17,9 +17,8 @@ use crate::pipeline::Setup;
 pub(super) struct PolygonsArgs {
     /// Settings file
     network: PathBuf,
-    /// Write the files named below into this folder too
-    #[arg(long, value_name = "DIR")]
-    out: Option<PathBuf>,
+    #[command(flatten)]
+    output: OutputArgs,
     #[command(flatten)]
     mesh: MeshArgs,
     #[command(flatten)]
@@ -36,8 +35,12 @@ pub(super) fn polygons(args: &PolygonsArgs) -> Result<Status, Error> {
     } else {
         None
     };
-    if let Some(folder) = &args.out {
-        let mut set = OutputSet::new(folder)?;
+    let main = if args.expect.expect {
+        "expected.csv"
+    } else {
+        "mesh.csv"
+    };
+    if let Some(mut set) = args.output.files(main, &[])? {
         set.put("mesh.geojson", mesh_geojson(&setup, &[]).as_bytes())?;
         set.put("mesh.csv", mesh_csv(&setup).as_bytes())?;
         if let Some(expectation) = &expectation {
@@ -45,9 +48,13 @@ pub(super) fn polygons(args: &PolygonsArgs) -> Result<Status, Error> {
         }
         set.commit()?;
     }
-    print(&match expectation {
-        Some(expectation) => expectation.text(&setup),
-        None => polygon_table(&setup),
-    })?;
+    match expectation {
+        Some(expectation) => args
+            .output
+            .show(|| expectation.json(&setup), || expectation.text(&setup))?,
+        None => args
+            .output
+            .show(|| mesh_json(&setup), || polygon_table(&setup))?,
+    }
     Ok(Status::Complete)
 }

@@ -2,14 +2,14 @@
 
 use clap::Args;
 
+use super::Status;
 use super::args::{InputArgs, OutputArgs};
 use super::pictures::PictureArgs;
 use super::run::{over_reports, tell};
 use super::text::profile::profile_text;
-use super::{Status, print};
 use crate::error::Error;
 use crate::output::plot::profile_picture;
-use crate::output::{OutputSet, profile_csv, profile_json};
+use crate::output::{profile_csv, profile_json};
 use crate::pipeline::{self, PolygonProfile};
 
 /// Options of `profile`.
@@ -25,11 +25,11 @@ pub(super) struct ProfileArgs {
 
 pub(super) fn profile(args: &ProfileArgs) -> Result<Status, Error> {
     let setup = args.input.setup()?;
+    let files = args.output.files("profile.csv", &[args.pictures.asked()])?;
     let outcome = over_reports(&setup.settings, args.output.json, |order, progress| {
         pipeline::profile(&setup, order, progress)
     })?;
-    if let Some(folder) = &args.output.out {
-        let mut set = OutputSet::new(folder)?;
+    if let Some(mut set) = files {
         set.put("profile.csv", profile_csv(&setup, &outcome).as_bytes())?;
         if let Some(profile) = most_complete(&outcome.profiles)
             && let Some(picture) = profile_picture(&setup, &outcome, profile)
@@ -39,11 +39,10 @@ pub(super) fn profile(args: &ProfileArgs) -> Result<Status, Error> {
         set.commit()?;
     }
     let status = tell(&outcome.warnings, &outcome.reading);
-    print(&if args.output.json {
-        profile_json(&setup, &outcome)
-    } else {
-        profile_text(&setup, &outcome)
-    })?;
+    args.output.show(
+        || profile_json(&setup, &outcome),
+        || profile_text(&setup, &outcome),
+    )?;
     Ok(status)
 }
 

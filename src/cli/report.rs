@@ -4,7 +4,7 @@ use std::path::PathBuf;
 
 use clap::Args;
 
-use super::args::{AnalysisArgs, InputArgs};
+use super::args::{AnalysisArgs, InputArgs, output_set};
 use super::estimate::default_folder;
 use super::run::{over_reports, tell};
 use super::{Status, print, say};
@@ -15,7 +15,7 @@ use crate::pipeline::{self, CalibrationOutcome, EventsOutcome, Setup};
 /// Options of `report`.
 #[derive(Debug, Args)]
 pub(super) struct PageArgs {
-    /// Folder of report.html [default: out/NAME, NAME being the folder of the settings file]
+    /// Folder of report.html; `-`: the page to standard output [default: out/NAME, NAME being the folder of the settings file]
     #[arg(long, value_name = "DIR")]
     out: Option<PathBuf>,
     #[command(flatten)]
@@ -46,7 +46,7 @@ pub(super) fn report(args: &PageArgs) -> Result<Status, Error> {
         )?;
         Ok((events, frames))
     })?;
-    let mut set = OutputSet::new(&folder)?;
+    let mut set = output_set(&folder, "report.html", &[])?;
     put_page(&mut set, &setup, &events, &frames)?;
     let files = set.commit()?;
     let status = tell(&events.run.warnings, &events.run.reading);

@@ -1,19 +1,38 @@
 //! Files that appear only when they are whole.
 
-use std::fs;
-use std::io::{BufWriter, Write};
+use std::fs::{self, File};
+use std::io::{self, BufWriter, Seek, Write};
 use std::path::{Path, PathBuf};
 
 use tempfile::{Builder, NamedTempFile};
 
 use crate::error::Error;
 
+/// Bytes written at once.
+const BUFFER: usize = 1 << 18;
+
 /// The files of one run: each is written beside its name and renamed when all are complete; dropped before that, it
-/// leaves nothing behind.
+/// leaves nothing behind. Or one of them alone, for standard output, which gets it when it is complete.
 #[derive(Debug)]
 pub struct OutputSet {
-    folder: PathBuf,
-    files: Vec<(PathBuf, BufWriter<NamedTempFile>)>,
+    to: Destination,
+    files: Vec<(PathBuf, Part)>,
+}
+
+#[derive(Debug)]
+enum Destination {
+    Folder(PathBuf),
+    /// The name of the one file.
+    Stdout(String),
+}
+
+/// A file until it is complete.
+#[derive(Debug)]
+enum Part {
+    Beside(BufWriter<NamedTempFile>),
+    ForStdout(BufWriter<File>),
+    /// Not wanted.
+    Nowhere,
 }
 
 impl OutputSet {
@@ -24,9 +43,18 @@ impl OutputSet {
     pub fn new(folder: &Path) -> Result<Self, Error> {
         fs::create_dir_all(folder).map_err(|e| Error::write(folder, e))?;
         Ok(Self {
-            folder: folder.to_path_buf(),
+            to: Destination::Folder(folder.to_path_buf()),
             files: Vec::new(),
         })
+    }
+
+    /// The file of this name for standard output; all others are not written.
+    #[must_use]
+    pub fn for_stdout(name: &str) -> Self {
+        Self {
+            to: Destination::Stdout(name.to_string()),
+            files: Vec::new(),
+        }
     }
 
     /// Starts a file; the number returned names it.
@@ -34,20 +62,16 @@ impl OutputSet {
     /// # Errors
     /// The system's refusal.
     pub fn create(&mut self, name: &str) -> Result<usize, Error> {
-        let path = self.folder.join(name);
-        let mut builder = Builder::new();
-        builder.prefix(".").suffix(".part");
-        #[cfg(unix)]
-        {
-            use std::os::unix::fs::PermissionsExt;
-            // What a plain new file would have; the system takes its mask off.
-            builder.permissions(fs::Permissions::from_mode(0o666));
-        }
-        let file = builder
-            .tempfile_in(&self.folder)
-            .map_err(|e| Error::write(&path, e))?;
-        self.files
-            .push((path, BufWriter::with_capacity(1 << 18, file)));
+        let file = match &self.to {
+            Destination::Folder(folder) => (folder.join(name), beside(folder, name)?),
+            Destination::Stdout(main) if main == name => {
+                let file = tempfile::tempfile().map_err(|e| Error::write(Path::new(name), e))?;
+                let part = Part::ForStdout(BufWriter::with_capacity(BUFFER, file));
+                (name.into(), part)
+            }
+            Destination::Stdout(_) => (name.into(), Part::Nowhere),
+        };
+        self.files.push(file);
         Ok(self.files.len() - 1)
     }
 
@@ -56,8 +80,13 @@ impl OutputSet {
     /// # Errors
     /// The system's refusal, a full disk for one.
     pub fn write(&mut self, file: usize, bytes: &[u8]) -> Result<(), Error> {
-        let (path, writer) = &mut self.files[file];
-        writer.write_all(bytes).map_err(|e| Error::write(path, e))
+        let (path, part) = &mut self.files[file];
+        match part {
+            Part::Beside(writer) => writer.write_all(bytes),
+            Part::ForStdout(writer) => writer.write_all(bytes),
+            Part::Nowhere => Ok(()),
+        }
+        .map_err(|e| Error::write(path, e))
     }
 
     /// Writes a whole file.
@@ -69,17 +98,25 @@ impl OutputSet {
         self.write(file, bytes)
     }
 
-    /// Completes all files, then gives them their names; returns these.
+    /// Completes all files, then gives them their names; returns these. Standard output gets its file.
     ///
     /// # Errors
     /// The system's refusal; files already renamed are whole, the others are gone.
     pub fn commit(self) -> Result<Vec<PathBuf>, Error> {
         let mut whole = Vec::new();
-        for (path, writer) in self.files {
-            let file = writer
-                .into_inner()
-                .map_err(|e| Error::write(&path, e.into_error()))?;
-            whole.push((path, file));
+        for (path, part) in self.files {
+            let failed = |e: io::Error| Error::write(&path, e);
+            match part {
+                Part::Beside(writer) => {
+                    let file = writer.into_inner().map_err(|e| failed(e.into_error()))?;
+                    whole.push((path, file));
+                }
+                Part::ForStdout(writer) => {
+                    let file = writer.into_inner().map_err(|e| failed(e.into_error()))?;
+                    to_stdout(file).map_err(|e| Error::write(Path::new("standard output"), e))?;
+                }
+                Part::Nowhere => (),
+            }
         }
         let mut names = Vec::new();
         for (path, file) in whole {
@@ -89,6 +126,29 @@ impl OutputSet {
         }
         Ok(names)
     }
+}
+
+/// A file of another name in the folder.
+fn beside(folder: &Path, name: &str) -> Result<Part, Error> {
+    let mut builder = Builder::new();
+    builder.prefix(".").suffix(".part");
+    #[cfg(unix)]
+    {
+        use std::os::unix::fs::PermissionsExt;
+        // What a plain new file would have; the system takes its mask off.
+        builder.permissions(fs::Permissions::from_mode(0o666));
+    }
+    let file = builder
+        .tempfile_in(folder)
+        .map_err(|e| Error::write(&folder.join(name), e))?;
+    Ok(Part::Beside(BufWriter::with_capacity(BUFFER, file)))
+}
+
+fn to_stdout(mut file: File) -> io::Result<()> {
+    file.rewind()?;
+    let mut out = io::stdout().lock();
+    io::copy(&mut file, &mut out)?;
+    out.flush()
 }
 
 #[cfg(test)]

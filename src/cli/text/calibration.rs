@@ -2,7 +2,7 @@
 
 use std::fmt::Write as _;
 
-use super::{WIDTH, corrections_text, cut, wrapped};
+use super::{WIDTH, cell, corrections_text, cut, heading, row, wrapped};
 use crate::calibration::{Cost, Ticket};
 use crate::output::{CAUTION, GAUGE, what};
 use crate::pipeline::{CalibrationOutcome, Setup};
@@ -13,7 +13,7 @@ pub(crate) fn calibration_text(setup: &Setup, outcome: &CalibrationOutcome) -> S
     let mut out = String::new();
     let calibration = &outcome.calibration;
     // Writing to a string cannot fail.
-    let _ = writeln!(out, "{}", cut(&setup.settings.name, WIDTH));
+    let _ = writeln!(out, "{}", heading(&cut(&setup.settings.name, WIDTH)));
     if let Some([first, last]) = calibration.period {
         let _ = writeln!(
             out,
@@ -69,15 +69,10 @@ fn ticket_text(out: &mut String, setup: &Setup, ticket: &Ticket, cost: &Cost) {
         }
         None => "in the whole record".into(),
     };
-    let head = format!(
-        "{:<12} {}: {}",
-        cut(id, 12),
-        what(setup, ticket),
-        size(ticket)
-    );
-    let _ = writeln!(out, "\n{}", cut(&head, WIDTH));
+    let head = format!("{} {}: {}", cell(id, 12), what(setup, ticket), size(ticket));
+    let _ = writeln!(out, "\n{}", heading(&cut(&head, WIDTH)));
     let mut line = |name: &str, text: &str| {
-        let _ = writeln!(out, "  {name:<9} {}", cut(text, WIDTH - 12));
+        row(out, &format!("  {name}"), text);
     };
     line("when", &since);
     for state in ticket.before.split("; ").filter(|state| !state.is_empty()) {

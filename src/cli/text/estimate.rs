@@ -3,9 +3,10 @@
 use std::fmt::Write as _;
 use std::path::PathBuf;
 
-use super::{WIDTH, corrections_text, cut, wrapped};
+use super::{WIDTH, cell, corrections_text, cut, heading, row, short_id, wrapped};
+use crate::helmholtz::Part;
 use crate::integral::{Cause, Peak};
-use crate::output::{CAUTION, error_bars, significant_share};
+use crate::output::{CAUTION, assumption_of_height, error_bars, significant_share};
 use crate::pipeline::{Outcome, Setup};
 use crate::units::Wind;
 
@@ -17,14 +18,12 @@ pub(crate) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
     let mut out = String::new();
     let period = &outcome.period;
     let built = &setup.built;
-    let _ = writeln!(out, "{}", setup.settings.name);
+    let _ = writeln!(out, "{}", heading(&cut(&setup.settings.name, WIDTH)));
     if let Some((first, last)) = period.ends {
         let interval = setup.settings.analysis.interval.as_secs_f64() / 60.0;
-        let _ = writeln!(
-            out,
-            "Period      {first} to {last}, {} times, every {interval} min",
-            period.times
-        );
+        let times = period.times;
+        let text = format!("{first} to {last}, {times} times, every {interval} min");
+        row(&mut out, "Period", &text);
     }
     corrections_text(&mut out, setup);
     let reporting = outcome.values.iter().filter(|&&n| n > 0).count();
@@ -73,7 +72,8 @@ pub(crate) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
         setup.self_test.largest_difference, setup.self_test.polygons
     );
     significance(&mut out, setup, outcome);
-    let _ = writeln!(out, "\nStrongest, in 1e-5 /s:");
+    energy_text(&mut out, outcome);
+    let _ = writeln!(out, "\n{}", heading("Strongest, in 1e-5 /s:"));
     let extremes = &outcome.extremes;
     for (what, peak) in [
         ("convergence", extremes.convergence),
@@ -92,20 +92,37 @@ pub(crate) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
             WIDTH
         )
     );
+    if let Some(height) = setup.settings.w_at {
+        let _ = writeln!(out, "{}", wrapped(&assumption_of_height(height), WIDTH));
+    }
     let _ = writeln!(out, "{}", wrapped(CAUTION, WIDTH));
     let names: Vec<String> = files
         .iter()
         .filter_map(|f| f.file_name().map(|n| n.to_string_lossy().into_owned()))
         .collect();
     if let Some(folder) = files.first().and_then(|f| f.parent()) {
-        let _ = writeln!(
-            out,
-            "\nWritten to {}: {}",
-            folder.display(),
-            names.join(", ")
-        );
+        let _ = writeln!(out, "\nWritten to {}:", folder.display());
+        for line in wrapped(&names.join(", "), WIDTH - 2).lines() {
+            let _ = writeln!(out, "  {line}");
+        }
     }
     out
+}
+
+/// Kinetic energy by parts of the wind.
+fn energy_text(out: &mut String, outcome: &Outcome) {
+    let books = &outcome.energy;
+    let shares = Part::ALL.map(|part| Some((part.name(), 100.0 * books.share(part)?)));
+    let [Some(first), Some(second), Some(third)] = shares else {
+        return;
+    };
+    let words = [first, second, third].map(|(name, share)| format!("{share:.1} % {name}"));
+    let _ = writeln!(
+        out,
+        "Energy      {} ({} times)",
+        words.join(", "),
+        books.times
+    );
 }
 
 /// Stations behind odd means.
@@ -113,17 +130,15 @@ fn attributions_text(out: &mut String, setup: &Setup, outcome: &Outcome) {
     if outcome.attributions.is_empty() {
         return;
     }
-    let _ = writeln!(
-        out,
-        "\nOdd means, as if the wind of one station were off (see `gyremesh calibrate`):"
-    );
+    let head = "Odd means, as if the wind of one station were off (see `gyremesh calibrate`):";
+    let _ = writeln!(out, "\n{}", heading(head));
     for found in &outcome.attributions {
         // Stations of the network.
         let id = &setup.network.stations()[found.station].id;
         let _ = writeln!(
             out,
-            "  {:<16} {:.1} +- {:.1} m/s towards {:03.0} degrees; {:.0} % of {} polygons' means",
-            cut(id, 16),
+            "  {} {:.1} ± {:.1} m/s towards {:03.0} degrees; {:.0} % of {} polygons' means",
+            cell(id, 12),
             found.offset.speed(),
             found.error,
             towards(found.offset),
@@ -193,15 +208,15 @@ fn peak_text(setup: &Setup, outcome: &Outcome, peak: Option<Peak>) -> String {
     };
     let (latitude, longitude) = polygon.middle;
     format!(
-        "{:+.1} ± {:.1}  {}  {} ({:.2} {}, {:.2} {})",
-        peak.value * 1e5,
-        peak.error * 1e5,
+        "{:<15} {}  {:.2} {} {:.2} {}\n{:20}{}",
+        format!("{:+.1} ± {:.1}", peak.value * 1e5, peak.error * 1e5),
         peak.time,
-        cut(&polygon.id, 24),
         latitude.abs(),
         if latitude < 0.0 { "S" } else { "N" },
         longitude.abs(),
         if longitude < 0.0 { "W" } else { "E" },
+        "",
+        short_id(&polygon.id, WIDTH - 20),
     )
 }
 
@@ -216,15 +231,15 @@ fn least_reporting(out: &mut String, setup: &Setup, outcome: &Outcome) {
         let _ = writeln!(out, "\nEvery station has a value at every time");
         return;
     }
-    let _ = writeln!(out, "\nReported least:");
+    let _ = writeln!(out, "\n{}", heading("Reported least:"));
     for &s in order.iter().take(LEAST) {
         let station = &setup.network.stations()[s];
         let values = outcome.values[s];
         let share = 100.0 * values as f64 / times.max(1) as f64;
         let _ = writeln!(
             out,
-            "  {:<24} {values} of {times} times ({share:.1} %)",
-            cut(&station.id, 24)
+            "  {} {values} of {times} times ({share:.1} %)",
+            cell(&station.id, 24)
         );
     }
 }

@@ -2,7 +2,7 @@
 
 use std::fmt::Write as _;
 
-use super::{WIDTH, corrections_text, cut, wrapped};
+use super::{WIDTH, corrections_text, cut, heading, short_id, wrapped};
 use crate::event::{AreaEvent, AreaKind, LineEvent, Motion, PlaceArrival};
 use crate::output::{CAUTION, area_id, line_id};
 use crate::pipeline::{EventsOutcome, Setup};
@@ -17,7 +17,7 @@ const LINES: usize = 8;
 pub(crate) fn bulletin(setup: &Setup, outcome: &EventsOutcome) -> String {
     let mut out = String::new();
     // Writing to a string cannot fail.
-    let _ = writeln!(out, "{}", cut(&setup.settings.name, WIDTH));
+    let _ = writeln!(out, "{}", heading(&cut(&setup.settings.name, WIDTH)));
     if let Some((first, last)) = outcome.period() {
         let _ = writeln!(out, "Period      {first} to {last}");
     }
@@ -136,13 +136,13 @@ fn line_text(out: &mut String, setup: &Setup, k: usize, line: &LineEvent) {
     let mut letters = name.chars();
     let first = letters.next().map(|c| c.to_ascii_uppercase());
     let name: String = first.into_iter().chain(letters).collect();
-    let _ = writeln!(
-        out,
-        "\n{:<4} {name}, {}{}",
+    let head = format!(
+        "{:<4} {name}, {}{}",
         line_id(k),
         span(line.start, line.end),
         if line.open { ", still under way" } else { "" }
     );
+    let _ = writeln!(out, "\n{}", heading(&head));
     let mut row = |name: &str, text: &str| {
         let _ = writeln!(out, "     {name:<10} {}", cut(text, WIDTH - 16));
     };
@@ -206,13 +206,13 @@ fn area_text(out: &mut String, setup: &Setup, outcome: &EventsOutcome, k: usize,
         AreaKind::Cyclonic => "Cyclonic spin-up",
         AreaKind::Anticyclonic => "Anticyclonic spin-up",
     };
-    let _ = writeln!(
-        out,
-        "\n{:<4} {name}, {}{}",
+    let head = format!(
+        "{:<4} {name}, {}{}",
         area_id(k),
         span(area.start, area.end),
         if area.open { ", still on" } else { "" }
     );
+    let _ = writeln!(out, "\n{}", heading(&head));
     let mut row = |name: &str, text: &str| {
         let _ = writeln!(out, "     {name:<10} {}", cut(text, WIDTH - 16));
     };
@@ -225,7 +225,7 @@ fn area_text(out: &mut String, setup: &Setup, outcome: &EventsOutcome, k: usize,
             peak.value * 1e5,
             peak.error * 1e5,
             minute(peak.time),
-            cut(polygon.map_or("", |p| p.id.as_str()), 24)
+            short_id(polygon.map_or("", |p| p.id.as_str()), 24)
         ),
     );
     let place = |p: Option<&(Time, [f64; 2])>| p.and_then(|p| outcome.place(p.1));
@@ -276,8 +276,9 @@ fn doubts_text(out: &mut String, setup: &Setup, outcome: &EventsOutcome) {
             .get(station)
             .map_or("", |s| s.id.as_str());
         let text = format!(
-            "Left out: {} around {id} alone, whose mean wind looks off (see `gyremesh calibrate`).",
-            counted(n, "area")
+            "Left out: {} around {} alone, whose mean wind looks off (see `gyremesh calibrate`).",
+            counted(n, "area"),
+            short_id(id, 24)
         );
         let _ = writeln!(out, "\n{}", wrapped(&text, WIDTH));
     }

@@ -2,7 +2,7 @@
 
 use std::fmt::Write as _;
 
-use super::{WIDTH, cut};
+use super::{WIDTH, cell, cut, heading};
 use crate::pipeline::Setup;
 use crate::polygon::{Exclusion, StationPolygon};
 
@@ -11,10 +11,10 @@ pub(crate) fn polygon_table(setup: &Setup) -> String {
     let mut out = String::new();
     let built = &setup.built;
     // Writing to a string cannot fail.
+    let _ = writeln!(out, "{}", heading(&cut(&setup.settings.name, WIDTH)));
     let _ = writeln!(
         out,
-        "{}: {} stations, {} polygons within the limits, {} left out",
-        setup.settings.name,
+        "{} stations, {} polygons within the limits, {} left out",
         setup.network.len(),
         built.polygons.len(),
         built.excluded.len()
@@ -23,11 +23,11 @@ pub(crate) fn polygon_table(setup: &Setup) -> String {
         out,
         "noise: error of vorticity or divergence, 1e-5 /s, for 1 m/s in each component\n"
     );
-    let _ = writeln!(
-        out,
+    let columns = format!(
         "{:<24} {:>9} {:>8} {:>6} {:>7} {:>6}  left out",
         "polygon", "area km2", "edge km", "angle", "quality", "noise"
     );
+    let _ = writeln!(out, "{}", heading(&columns));
     let used = built.polygons.iter().map(|p| (p, None));
     let excluded = built.excluded.iter().map(|(p, why)| (p, Some(why)));
     for (polygon, why) in used.chain(excluded) {
@@ -46,8 +46,8 @@ pub(crate) fn polygon_table(setup: &Setup) -> String {
 fn polygon_line(polygon: &StationPolygon, why: Option<&Exclusion>) -> String {
     let shape = &polygon.shape;
     let line = format!(
-        "{:<24} {:>9.1} {:>8.1} {:>6.1} {:>7.2} {:>6.1}  {}",
-        cut(&polygon.id, 24),
+        "{} {:>9.1} {:>8.1} {:>6.1} {:>7.2} {:>6.1}  {}",
+        cell(&polygon.id, 24),
         shape.area / 1e6,
         shape.longest_edge / 1e3,
         shape.smallest_angle,

@@ -2,7 +2,7 @@
 
 use std::fmt::Write as _;
 
-use super::{WIDTH, cut, wrapped};
+use super::{WIDTH, cut, heading, wrapped};
 use crate::output::{CAUTION, assumptions, w_of};
 use crate::pipeline::{LevelEstimate, PolygonProfile, ProfileOutcome, Setup};
 use crate::profile::{Coordinate, Motion};
@@ -15,7 +15,7 @@ pub(crate) fn profile_text(setup: &Setup, outcome: &ProfileOutcome) -> String {
     let mut out = String::new();
     let without: u64 = outcome.without.values().sum();
     // Writing to a string cannot fail.
-    let _ = writeln!(out, "{}", cut(&setup.settings.name, WIDTH));
+    let _ = writeln!(out, "{}", heading(&cut(&setup.settings.name, WIDTH)));
     let _ = writeln!(
         out,
         "Platforms   {}; winds at {} of {} platform levels; nominal times: {}",
@@ -92,7 +92,7 @@ fn profile_table(out: &mut String, setup: &Setup, profile: &PolygonProfile, on_g
         format!("  {latitude:.1} N {longitude:.1} E, {:.0} km2", area / 1e6)
     });
     let head = format!("{}  {}{place}", profile.time, profile.polygon);
-    let _ = writeln!(out, "\n{}", cut(&head, WIDTH));
+    let _ = writeln!(out, "\n{}", heading(&cut(&head, WIDTH)));
     let motion = if pressure { "omega Pa/s" } else { "w cm/s" };
     let last = if pressure { "w cm/s" } else { "" };
     let line = format!(

@@ -2,8 +2,8 @@
 
 use std::fmt::Write as _;
 
-use super::cut;
 use super::screening::screening_text;
+use super::{WIDTH, cell, cut, heading, short_id};
 use crate::pipeline::Reading;
 use crate::settings::Settings;
 use crate::station::Network;
@@ -19,15 +19,12 @@ pub(crate) fn reading_text(settings: &Settings, network: &Network, reading: &Rea
     // Writing to a string cannot fail.
     let _ = writeln!(
         out,
-        "{}: {} stations in the list",
-        settings.name,
+        "{}\n{} stations in the list",
+        heading(&cut(&settings.name, WIDTH)),
         network.len()
     );
-    let _ = writeln!(
-        out,
-        "\n{:>10} {:>10} {:>10}  file",
-        "rows", "passed", "set aside"
-    );
+    let columns = format!("{:>10} {:>10} {:>10}  file", "rows", "passed", "set aside");
+    let _ = writeln!(out, "\n{}", heading(&columns));
     for file in &reading.files {
         let tally = &file.tally;
         let name: String = shortened(&file.file, 44);
@@ -63,7 +60,7 @@ pub(crate) fn reading_text(settings: &Settings, network: &Network, reading: &Rea
                     .files
                     .get(usize::from(file))
                     .map_or("?", |f| f.file.as_str());
-                format!("{}:{line}", shortened(file, 22))
+                format!("{}:{line}", shortened(file, 52))
             };
             let station = network
                 .stations()
@@ -71,8 +68,8 @@ pub(crate) fn reading_text(settings: &Settings, network: &Network, reading: &Rea
                 .map_or("", |s| s.id.as_str());
             let _ = writeln!(
                 out,
-                "  {} {}: {} holds, not {}",
-                cut(station, 12),
+                "  {} {}:\n    {} holds,\n    not {}",
+                short_id(station, 12),
                 minute(conflict.time),
                 place(conflict.holds),
                 place(conflict.set_aside)
@@ -97,16 +94,16 @@ fn reasons(out: &mut String, tally: &Tally) {
 
 /// What the reports of each station hold.
 fn contents(out: &mut String, network: &Network, reading: &Reading) {
-    let _ = writeln!(
-        out,
-        "\n{:<16} {:>8} {:>8} {:>7} {:>8} {:>8} {:>7} {:>7}",
+    let columns = format!(
+        "{:<16} {:>8} {:>8} {:>7} {:>8} {:>8} {:>7} {:>7}",
         "station", "reports", "wind", "calm", "no dir", "no speed", "suspect", "failed"
     );
+    let _ = writeln!(out, "\n{}", heading(&columns));
     for (station, s) in network.stations().iter().zip(&reading.stations) {
         let _ = writeln!(
             out,
-            "{:<16} {:>8} {:>8} {:>7} {:>8} {:>8} {:>7} {:>7}",
-            cut(&station.id, 16),
+            "{} {:>8} {:>8} {:>7} {:>8} {:>8} {:>7} {:>7}",
+            cell(&station.id, 16),
             s.reports,
             s.wind,
             s.calm,
@@ -120,19 +117,19 @@ fn contents(out: &mut String, network: &Network, reading: &Reading) {
 
 /// When each station reports, and how it rounds.
 fn timing(out: &mut String, network: &Network, reading: &Reading) {
-    let _ = writeln!(
-        out,
-        "\n{:<16} {:<16} {:<16} {:>7} {:>5} {:>5} {:>8}",
+    let columns = format!(
+        "{:<16} {:<16} {:<16} {:>7} {:>5} {:>5} {:>8}",
         "station", "first (UTC)", "last", "every", "gaps", "deg", "speed"
     );
+    let _ = writeln!(out, "\n{}", heading(&columns));
     for (station, s) in network.stations().iter().zip(&reading.stations) {
         let (first, last) = s
             .period
             .map_or_else(Default::default, |(a, b)| (minute(a), minute(b)));
         let _ = writeln!(
             out,
-            "{:<16} {first:<16} {last:<16} {:>7} {:>5} {:>5} {:>8}",
-            cut(&station.id, 16),
+            "{} {first:<16} {last:<16} {:>7} {:>5} {:>5} {:>8}",
+            cell(&station.id, 16),
             s.interval.map_or_else(String::new, interval),
             s.gaps,
             s.rounding
@@ -172,10 +169,7 @@ fn interval(micros: i64) -> String {
 
 /// A file name whose beginning is cut off if it is too long.
 pub(crate) fn shortened(name: &str, width: usize) -> String {
-    let length = name.chars().count();
-    if length <= width {
-        return name.to_string();
-    }
-    let end: String = name.chars().skip(length - width + 1).collect();
-    format!("…{end}")
+    // Its end, as the beginning of what is turned round.
+    let reversed: String = name.chars().rev().collect();
+    cut(&reversed, width).chars().rev().collect()
 }

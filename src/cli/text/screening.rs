@@ -3,7 +3,7 @@
 use std::fmt::Write as _;
 
 use super::reading::shortened;
-use super::{cut, wrapped};
+use super::{WIDTH, cell, cut, flagged, heading, short_id, wrapped};
 use crate::check::{Explained, StationReading, Test};
 use crate::pipeline::Reading;
 use crate::station::{Network, Station};
@@ -15,11 +15,11 @@ const WORST: usize = 10;
 pub(crate) fn screening_text(out: &mut String, network: &Network, reading: &Reading) {
     let all: u64 = reading.stations.iter().map(|s| s.reports).sum();
     // Writing to a string cannot fail.
-    let _ = writeln!(
-        out,
-        "\n{:<20} {:>9} {:>9} {:>9} {:>9}",
+    let columns = format!(
+        "{:<20} {:>9} {:>9} {:>9} {:>9}",
         "test", "suspect", "share", "failed", "share"
     );
+    let _ = writeln!(out, "\n{}", heading(&columns));
     let sum = |of: &dyn Fn(&StationReading) -> u64| reading.stations.iter().map(of).sum::<u64>();
     for test in Test::ALL.into_iter().filter(|&t| t != Test::TimingGap) {
         let name = test.words();
@@ -69,11 +69,11 @@ fn worst(out: &mut String, network: &Network, reading: &Reading) {
         let (a, b) = (key(a.1), key(b.1));
         b.0.total_cmp(&a.0).then(b.1.total_cmp(&a.1))
     });
-    let _ = writeln!(
-        out,
-        "\n{:<16} {:>7} {:>8} {:>7}  raised by (reports)",
+    let columns = format!(
+        "{:<16} {:>7} {:>8} {:>7}  raised by (reports)",
         "worst stations", "pass", "suspect", "failed"
     );
+    let _ = writeln!(out, "\n{}", heading(&columns));
     for (station, s) in order.iter().take(WORST) {
         let mut tests: Vec<(u64, Test)> = Test::ALL
             .into_iter()
@@ -87,14 +87,14 @@ fn worst(out: &mut String, network: &Network, reading: &Reading) {
             .map(|(n, test)| format!("{} ({n})", test.words()))
             .collect();
         let line = format!(
-            "{:<16} {:>5.1} % {:>6.2} % {:>5.2} %  {}",
-            cut(&station.id, 16),
+            "{} {:>5.1} % {:>6.2} % {:>5.2} %  {}",
+            cell(&station.id, 16),
             share(s.passed, s.reports),
             share(s.suspect, s.reports),
             share(s.failed, s.reports),
             words.join(", ")
         );
-        let _ = writeln!(out, "{}", cut(&line, 80));
+        let _ = writeln!(out, "{}", cut(&line, WIDTH));
     }
     if order.len() > WORST {
         let _ = writeln!(
@@ -116,20 +116,28 @@ pub(crate) fn explained_text(station: &str, explained: &[Explained], reading: &R
             out.push('\n');
         }
         let file = reading.files.get(usize::from(report.origin.0));
+        let said = format!(
+            "{} {}: {}",
+            short_id(station, 24),
+            report.time,
+            cut(&report.report, 4 * WIDTH)
+        );
         let _ = writeln!(
             out,
-            "{station} {}: {}\n{}:{}",
-            report.time,
-            report.report,
+            "{}\n{}:{}",
+            wrapped(&said, WIDTH),
             file.map_or_else(String::new, |f| shortened(&f.file, 60)),
             report.origin.1
         );
-        let _ = writeln!(out, "flag {}, {}", report.flag.value(), report.flag.word());
+        let flag = format!("flag {}, {}", report.flag.value(), report.flag.word());
+        let _ = writeln!(out, "{}", flagged(report.flag, &flag));
         for finding in &report.findings {
             let name = finding.test.words();
-            let text = format!("{} {}: {}", finding.flag.value(), name, finding.words);
-            for (line, words) in wrapped(&text, 76).lines().enumerate() {
+            let start = format!("{} {name}:", finding.flag.value());
+            let text = wrapped(&format!("{start} {}", finding.words), WIDTH - 4);
+            for (line, words) in text.lines().enumerate() {
                 let indent = if line == 0 { "  " } else { "    " };
+                let words = words.replacen(&start, &flagged(finding.flag, &start), 1);
                 let _ = writeln!(out, "{indent}{words}");
             }
         }
