@@ -4,6 +4,7 @@
 //! ```console
 //! $ cargo run --example polygon_of_four
 //! ```
+#![expect(clippy::print_stdout, reason = "an example prints")]
 
 use std::error::Error;
 
@@ -11,7 +12,7 @@ use gyremesh::align::{AlignedWind, WindBlock, instrument_covariance};
 use gyremesh::check::Flag;
 use gyremesh::error::Place;
 use gyremesh::integral::{Sampling, complete_errors, estimate, planetary_vorticity};
-use gyremesh::kinematics::{Kinematics, Quantity};
+use gyremesh::kinematics::{Kinematics, Quantities, Quantity};
 use gyremesh::output::CAUTION;
 use gyremesh::polygon::{build_polygons, median_edge};
 use gyremesh::settings::{
@@ -56,22 +57,7 @@ fn main() -> Result<(), Box<dyn Error>> {
         .ok_or("the limits leave no polygon")?;
     let f = planetary_vorticity(polygon, &positions);
 
-    // The winds at one time, with the errors of common sensors.
-    let time = Time::parse_rfc3339("2031-06-14T15:00:00Z")?;
-    let sensor = SensorErrors::default();
-    let mut winds = WindBlock::empty(vec![time], network.len());
-    for (id, _, _, direction, speed) in REPORTS {
-        let from = FromDirection::new(direction).ok_or("a direction lies between 0 and 360")?;
-        let wind = Wind::blowing_from(speed, from);
-        let value = AlignedWind {
-            wind,
-            covariance: instrument_covariance(wind, false, &sensor),
-            flag: Flag::Pass,
-            age: 0.0,
-        };
-        let station = network.find(id).ok_or("a station of the list")?;
-        winds.set(station, 0, &value);
-    }
+    let winds = winds(&network)?;
 
     // What the stations do not see of the wind between them: a network learns it from its reports; one time alone must
     // take what is usual.
@@ -82,10 +68,11 @@ fn main() -> Result<(), Box<dyn Error>> {
     block.budget = complete_errors(&built.polygons, &sampling, &winds, &usual, &mut block);
 
     println!(
-        "Polygon {}, {:.0} km2, edges of {:.0} km, at {time}\n",
+        "Polygon {}, {:.0} km2, edges of {:.0} km, at {}\n",
         polygon.id,
         polygon.shape.area / 1e6,
-        spacing / 1e3
+        spacing / 1e3,
+        block.times[0]
     );
     let parts = &block.budget;
     for (name, value, error, parts) in [
@@ -119,6 +106,32 @@ fn main() -> Result<(), Box<dyn Error>> {
     let settings = KinematicsSettings::default();
     let kinematics = Kinematics::new(&built.polygons, &built.edges, &positions, &[f], settings);
     let found = kinematics.of(&winds, &block, Some((&sampling, &usual)));
+    print_kinematics(&found.cells[0]);
+    println!("\n± is one standard error. {CAUTION}");
+    Ok(())
+}
+
+/// The winds at one time, with the errors of common sensors.
+fn winds(network: &Network) -> Result<WindBlock, Box<dyn Error>> {
+    let time = Time::parse_rfc3339("2031-06-14T15:00:00Z")?;
+    let sensor = SensorErrors::default();
+    let mut winds = WindBlock::empty(vec![time], network.len());
+    for (id, _, _, direction, speed) in REPORTS {
+        let from = FromDirection::new(direction).ok_or("a direction lies between 0 and 360")?;
+        let wind = Wind::blowing_from(speed, from);
+        let value = AlignedWind {
+            wind,
+            covariance: instrument_covariance(wind, false, &sensor),
+            flag: Flag::Pass,
+            age: 0.0,
+        };
+        let station = network.find(id).ok_or("a station of the list")?;
+        winds.set(station, 0, &value);
+    }
+    Ok(winds)
+}
+
+fn print_kinematics(found: &Quantities) {
     for quantity in [
         Quantity::MeanSpeed,
         Quantity::MeanDirection,
@@ -129,7 +142,7 @@ fn main() -> Result<(), Box<dyn Error>> {
         Quantity::RossbyNumber,
     ] {
         let name = quantity.name().replace('_', " ");
-        match found.cells[0].get(quantity) {
+        match found.get(quantity) {
             Some((value, error)) if quantity.units() == "s-1" => {
                 println!(
                     "{name:<22} ({:+6.1} ± {:4.1})e-5 1/s",
@@ -137,12 +150,13 @@ fn main() -> Result<(), Box<dyn Error>> {
                     error * 1e5
                 );
             }
+            Some((value, error)) if quantity.units() == "1" => {
+                println!("{name:<22}  {value:6.1} ± {error:4.1}");
+            }
             Some((value, error)) => {
                 println!("{name:<22}  {value:6.1} ± {error:4.1} {}", quantity.units());
             }
             None => println!("{name:<22}  cannot be told from these winds"),
         }
     }
-    println!("\n± is one standard error. {CAUTION}");
-    Ok(())
 }

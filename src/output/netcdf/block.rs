@@ -21,7 +21,7 @@ pub(in crate::output) struct FaceBlock {
     /// In the order of [`FLAGS`].
     pub(super) flags: Vec<Vec<i8>>,
     pub(super) reason_node: Vec<i32>,
-    /// Winds of the stations in the order of [`WINDS`].
+    /// Winds of the stations in the order of [`super::WINDS`].
     pub(super) winds: [Vec<f32>; 4],
     pub(super) wind_flag: Vec<i8>,
 }
