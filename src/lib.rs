@@ -52,6 +52,7 @@
 //! - [`polygon`]: triangles, rings, regions; shape and coefficient rows.
 //! - [`integral`]: area means with their errors.
 //! - [`kinematics`]: deformation, curvature and shear and the like of each polygon.
+//! - [`helmholtz`]: rotational, divergent and harmonic part of the wind.
 //! - [`event`]: areas, wind shifts and lines, followed in time.
 //! - [`profile`]: winds on levels, vertical motion.
 //! - [`pipeline`]: joins them; [`output`] writes; [`cli`] speaks.
@@ -72,6 +73,7 @@ pub mod check;
 pub mod cli;
 pub mod error;
 pub mod event;
+pub mod helmholtz;
 pub mod input;
 pub mod integral;
 pub mod kinematics;

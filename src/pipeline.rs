@@ -2,6 +2,7 @@
 
 mod calibrate;
 mod complete;
+mod decompose;
 mod estimation;
 mod events;
 mod field;

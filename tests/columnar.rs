@@ -25,7 +25,8 @@ use arrow_ipc::writer::{FileWriter, IpcWriteOptions};
 use gyremesh::error::Error;
 use gyremesh::input::{Label, TextFormat, TimeForm, TimeFormat, Zone};
 use gyremesh::report::{
-    Columns, ReadOutcome, ReportForm, ReportFormat, ReportTable, WindColumns, read_reports,
+    Columns, ReadOutcome, ReportForm, ReportFormat, ReportTable, ScalarColumn, WindColumns,
+    read_reports,
 };
 use gyremesh::settings::ReportSource;
 use gyremesh::station::{Network, Position, Station};
@@ -105,7 +106,10 @@ fn listed(outcome: &ReadOutcome, header: u32) -> Vec<String> {
         let (speed, direction, gust) = (table.speed(i), table.direction(i), table.gust(i));
         let (time, line) = (table.times()[i], table.origin(i).1 - header);
         let (content, moving) = (table.content(i), table.moving(i));
-        format!("{line} {s} {time} {speed:?} {direction:?} {gust:?} {content:?} {moving:?}")
+        format!(
+            "{line} {s} {time} {speed:?} {direction:?} {gust:?} {content:?} {moving:?} {:?}",
+            table.scalar(i, 2)
+        )
     })
     .collect()
 }
@@ -222,6 +226,11 @@ n,A,,5.5,0,9
     let format = ReportFormat {
         form: ReportForm::Table(Columns {
             gust: Some("gust".into()),
+            scalars: vec![ScalarColumn {
+                name: "as written".into(),
+                column: "gust".into(),
+                slot: 2,
+            }],
             ..Columns::default()
         }),
         time: TimeFormat {

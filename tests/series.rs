@@ -450,6 +450,91 @@ fn means_by_group() {
     assert_eq!(means(&by_period), means(&again));
 }
 
+/// `kinematics_means.csv` against `kinematics.csv`: values, means, deviations, extremes; the Rossby number is the vorticity
+/// over f, so its means and their errors are those of the vorticity in `polygon_means.csv`.
+#[test]
+fn means_of_kinematics() {
+    let out = tempfile::tempdir().unwrap();
+    let options = [
+        "--kinematics",
+        "--by",
+        "hour",
+        "--no-screen",
+        "--interval",
+        "20min",
+        "--threads",
+    ];
+    let folders = ["1", "3"].map(|threads| {
+        let folder = out.path().join(threads);
+        estimate(&folder, &[options.as_slice(), &[threads]].concat());
+        folder
+    });
+    let [one, three] = folders
+        .each_ref()
+        .map(|f| rows(&f.join("kinematics_means.csv")));
+    assert_eq!(one, three);
+    let folder = &folders[0];
+    let mut reader = csv::Reader::from_path(folder.join("kinematics.csv")).unwrap();
+    let header = reader.headers().unwrap().clone();
+    let mut all: BTreeMap<(String, String, String), Vec<f64>> = BTreeMap::new();
+    for row in reader.records().map(Result::unwrap) {
+        for (k, name) in header.iter().enumerate().skip(2).step_by(2) {
+            if let Ok(value) = row[k].parse() {
+                let key = (
+                    row[0][11..13].to_string(),
+                    row[1].to_string(),
+                    name.to_string(),
+                );
+                all.entry(key).or_default().push(value);
+            }
+        }
+    }
+    all.retain(|key, _| key.2 != "mean_direction" && key.2 != "dilatation_axis");
+    assert_eq!(all.len(), one.len());
+    let planetary: BTreeMap<String, f64> = rows(&folder.join("polygons.csv"))
+        .iter()
+        .map(|row| (row[1].to_string(), row[8].parse().unwrap()))
+        .collect();
+    let of_vorticity: BTreeMap<(String, String), [f64; 2]> =
+        rows(&folder.join("polygon_means.csv"))
+            .iter()
+            .filter(|row| !row[3].is_empty())
+            .map(|row| {
+                let numbers = [3, 4].map(|k| row[k].parse().unwrap());
+                ((row[0].to_string(), row[1].to_string()), numbers)
+            })
+            .collect();
+    let mut compared = 0;
+    for row in &one {
+        let number = |k: usize| row[k].parse::<f64>().unwrap();
+        let values = &all[&(row[0].to_string(), row[1].to_string(), row[2].to_string())];
+        let n = values.len() as f64;
+        assert_eq!(row[3].parse(), Ok(values.len()));
+        let mean = values.iter().sum::<f64>() / n;
+        let size = values.iter().fold(0.0, |size: f64, v| size.max(v.abs()));
+        assert!((number(4) - mean).abs() <= 1e-12 * size, "{row:?}");
+        if values.len() > 1 {
+            let squares = values.iter().map(|v| (v - mean).powi(2)).sum::<f64>();
+            assert!((number(6) - (squares / (n - 1.0)).sqrt()).abs() <= 1e-9 * size);
+        }
+        let least = values.iter().copied().fold(f64::INFINITY, f64::min);
+        assert!((number(7) - least).abs() <= 0.0);
+        let most = values.iter().copied().fold(f64::NEG_INFINITY, f64::max);
+        assert!((number(8) - most).abs() <= 0.0);
+        if &row[2] == "rossby_number" {
+            let f = planetary[&row[1]];
+            let [mean, error] = of_vorticity[&(row[0].to_string(), row[1].to_string())];
+            assert!((number(4) * f - mean).abs() < 1e-15);
+            assert!(
+                (number(5) * f / error - 1.0).abs() < 1e-6,
+                "{row:?} {error}"
+            );
+            compared += 1;
+        }
+    }
+    assert!(compared > 1000, "{compared}");
+}
+
 /// `check --out`: the same cells in both formats, row for row.
 #[test]
 fn flagged_reports_as_parquet_hold_what_the_csv_holds() {

@@ -81,6 +81,7 @@ fn columns(mut choice: u8) -> (Columns, North) {
         latitude: named("latitude").filter(|_| more),
         longitude: named("longitude").filter(|_| more),
         level: named("level").filter(|_| more),
+        scalars: Vec::new(),
     };
     (columns, north)
 }

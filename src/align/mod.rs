@@ -7,6 +7,7 @@ mod books;
 mod height;
 mod instrument;
 mod marks;
+mod scalars;
 mod time;
 pub mod vector;
 
@@ -27,6 +28,7 @@ use crate::units::Wind;
 pub use books::{AlignBooks, Period};
 pub use height::{HeightReduction, Profile, height_factor};
 pub use instrument::{Covariance, instrument_covariance};
+pub use scalars::ScalarBlock;
 pub use time::TimeGrid;
 
 /// Most analysis times in one block. A triangle's columns then take about 30 kB: they stay in the first-level cache.
@@ -619,13 +621,18 @@ fn between(a: &AlignedWind, b: &AlignedWind, share: f64) -> AlignedWind {
 /// Levels count as the same within this share.
 const SAME_LEVEL: f64 = 1e-3;
 
+/// True if report `i` stands on the level that is wanted, or any is.
+fn on_level(table: &ReportTable, i: usize, level: Option<f64>) -> bool {
+    level.is_none_or(|wanted| {
+        let found = table.moving(i).and_then(|m| m.level);
+        found.is_some_and(|found| (found - wanted).abs() <= SAME_LEVEL * wanted.abs())
+    })
+}
+
 /// Why a report cannot be used at any time.
 fn unusable(table: &ReportTable, i: usize, level: Option<f64>) -> Option<Reason> {
-    if let Some(wanted) = level {
-        let found = table.moving(i).and_then(|m| m.level);
-        if found.is_none_or(|found| (found - wanted).abs() > SAME_LEVEL * wanted.abs()) {
-            return Some(Reason::OtherLevel);
-        }
+    if !on_level(table, i, level) {
+        return Some(Reason::OtherLevel);
     }
     match table.content(i) {
         Content::Nothing => Some(Reason::NoSpeed),

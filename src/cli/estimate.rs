@@ -12,11 +12,11 @@ use super::text::estimate::run_summary;
 use super::{Status, print, say};
 use crate::error::Error;
 use crate::output::{
-    EncodedBlock, Frame, Frames, OutputSet, SeriesChoice, SeriesFormat, means_csv, mesh_geojson,
-    series, stations_csv, structure_csv, summary_csv, summary_json,
+    EncodedBlock, Frame, Frames, OutputSet, SeriesChoice, SeriesFormat, kinematics_means_csv,
+    means_csv, mesh_geojson, series, stations_csv, structure_csv, summary_csv, summary_json,
 };
 use crate::pipeline::{BlockView, EventsOutcome, Outcome, Setup, find_events_and, run};
-use crate::settings::{MeansBy, MeansSettings, Overrides};
+use crate::settings::{MeansBy, MeansSettings, Overrides, height_above_ground};
 use crate::time::Time;
 
 /// Options of `estimate`.
@@ -57,6 +57,12 @@ pub(super) struct EstimateArgs {
     /// Write kinematics.csv (or .parquet) too: mean wind, deformation, curvature and shear and more of each polygon
     #[arg(long, conflicts_with = "summary_only")]
     kinematics: bool,
+    /// Write vertical_motion.csv too: vertical wind at this height above the ground, if the divergence is the same up to it
+    #[arg(long, value_name = "HEIGHT", value_parser = height_above_ground, conflicts_with = "summary_only")]
+    w_at: Option<f64>,
+    /// Write decompose.csv and decompose_stations.csv too: rotational, divergent and harmonic part of the wind
+    #[arg(long)]
+    decompose: bool,
     /// Write polygon_means.csv too: means of each polygon by hour of the day, calendar day, calendar month or named period
     #[arg(long, value_name = "WHAT", value_parser = means_by)]
     by: Option<MeansBy>,
@@ -134,6 +140,8 @@ impl EstimateArgs {
         Overrides {
             instrument_errors: self.errors == Parts::Instrument,
             kinematics: self.kinematics,
+            decompose: self.decompose,
+            w_at: self.w_at,
             by: self.by,
             ..self.analysis.over(self.input.overrides())
         }
@@ -157,7 +165,10 @@ impl EstimateArgs {
 pub(super) fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
     let mut setup = args.input.setup_with(&args.overrides())?;
     // Without a series there is no file for them.
-    setup.settings.kinematics.write &= !args.summary_only;
+    if args.summary_only {
+        setup.settings.kinematics.write = false;
+        setup.settings.w_at = None;
+    }
     setup.has_polygons()?;
     let folder = args
         .out
@@ -246,6 +257,9 @@ fn put_tables(set: &mut OutputSet, setup: &Setup, outcome: &Outcome) -> Result<(
     put("polygon_summary.csv", summary_csv(setup, outcome))?;
     if setup.settings.means.by.is_some() {
         put("polygon_means.csv", means_csv(setup, outcome))?;
+        if setup.settings.kinematics.write {
+            put("kinematics_means.csv", kinematics_means_csv(setup, outcome))?;
+        }
     }
     if setup.settings.errors.complete {
         put("structure.csv", structure_csv(outcome))?;

@@ -91,7 +91,10 @@ Prints:  period, share of reports used, polygons, strongest convergence and spin
 Writes:  polygons.csv (a row for each time and polygon; other formats with --format), polygon_summary.csv (a row for \
 each polygon: mean, standard deviation, extremes, share beyond 1.96 standard errors), mesh.geojson, stations.csv, \
 summary.json; with --kinematics also kinematics.csv (mean wind, deformation, curvature and shear vorticity and more, a \
-row for each time and polygon). Files appear only when they are whole.
+row for each time and polygon) and scalars.csv (observed scalars); with --w-at vertical_motion.csv (w = -D h); with \
+--decompose decompose.csv (energies of the rotational, divergent and harmonic part of the wind at each time) and \
+decompose_stations.csv (streamfunction and velocity potential); with --by polygon_means.csv, and kinematics_means.csv. Files \
+appear only when they are whole.
 Formats: csv; parquet (polygons.parquet, mesh.parquet), arrow (polygons.arrow); netcdf (polygons.nc, CF and UGRID); \
 geojson (polygons.geojson, at the last time or those of --at). A NetCDF file is made in memory, 220 bytes for each polygon \
 and time, with kinematics 480: take long archives in parts, with --from and --to.
@@ -112,7 +115,8 @@ ${NAME} is an environment variable
               form            table, metar or synop [table]
               columns         station, time (one or a list), direction, speed [of these names]; one of direction and \
 speed if the other stands in another file; or eastward, northward; or report (METAR text); {station} in a name makes \
-the table wide; gust, latitude, longitude, level [none]
+the table wide; gust, latitude, longitude, level [none]; scalars: \
+{ NAME = column }, of tables with a row for each station
               speed_unit      m/s, km/h, mph or kt [m/s]
               north           true or magnetic [true]
               level_unit      Pa, hPa, m, km or ft [Pa or m]
@@ -129,8 +133,11 @@ label: start, middle or end of the window [end], averaging
               height (common height), profile: log or power [log], exponent [1/7]; level, such as 850 hPa
   [errors]    parts: all or instrument [all]; false_discovery_rate [0.05]; window [24 h] and memory [1 h] of the
               structure function; prior_difference [4.5 m2/s2], prior_distance [30 km], prior_exponent [2/3]
-  [kinematics]  write: true for kinematics.csv or .parquet [false]; least_speed [1 m/s]: no curvature, shear or \
+  [kinematics]  write: true for kinematics.csv or .parquet [false]; w_at: height above the ground for \
+vertical_motion.csv [none]; least_speed [1 m/s]: no curvature, shear or \
 diffluence in weaker mean winds
+  [scalars.NAME]  error: standard error of a scalar of `columns.scalars`, in its own unit; see scalars.csv
+  [decompose] write: true for decompose.csv and decompose_stations.csv [false]
   [means]     by: hour, day, month or period [none]; zone: UTC, +08:00 or Asia/Hong_Kong [UTC]
   [[periods]] name, from, to (RFC 3339, both included): for means by period
   [check]     speed_suspect [75 m/s], speed_fail [100 m/s], starting_speed [sensor.calm_below], displacement of \

@@ -36,36 +36,9 @@ impl GroupMeans {
     #[must_use]
     pub fn of(block: &EstimateBlock, lasting: &[f64], settings: &MeansSettings) -> Self {
         let mut out = Self::default();
-        let mut add = |group: Group, times: Range<usize>| {
-            if !times.is_empty() {
-                let part = RunStatistics::of_times(block, lasting, times);
-                out.0.entry(group).or_default().merge(&part);
-            }
-        };
-        let Some(by) = settings.by else {
-            return out;
-        };
-        if by == MeansBy::Period {
-            for (k, period) in settings.periods.iter().enumerate() {
-                let before = block.times.partition_point(|&t| t < period.from);
-                let until = block.times.partition_point(|&t| t <= period.to);
-                add(Group::Period(k), before..until.max(before));
-            }
-            return out;
-        }
-        let group = |time: Time| {
-            let local = local_time(time, settings.zone);
-            match by {
-                MeansBy::Day => Group::Day(local.year(), local.month(), local.day()),
-                MeansBy::Month => Group::Month(local.year(), local.month()),
-                MeansBy::Hour | MeansBy::Period => Group::Hour(local.hour()),
-            }
-        };
-        let groups: Vec<Group> = block.times.iter().map(|&t| group(t)).collect();
-        let mut start = 0;
-        for run in groups.chunk_by(|a, b| a == b) {
-            add(run[0], start..start + run.len()); // a run has a first
-            start += run.len();
+        for (group, times) in groups_of(&block.times, settings) {
+            let part = RunStatistics::of_times(block, lasting, times);
+            out.0.entry(group).or_default().merge(&part);
         }
         out
     }
@@ -76,6 +49,40 @@ impl GroupMeans {
             self.0.entry(group).or_default().merge(statistics);
         }
     }
+}
+
+/// Runs of times that belong to one group, in the order of time; those of named periods may overlap. None if no means are
+/// asked for.
+#[must_use]
+pub fn groups_of(times: &[Time], settings: &MeansSettings) -> Vec<(Group, Range<usize>)> {
+    let Some(by) = settings.by else {
+        return Vec::new();
+    };
+    let mut out = Vec::new();
+    if by == MeansBy::Period {
+        for (k, period) in settings.periods.iter().enumerate() {
+            let before = times.partition_point(|&t| t < period.from);
+            let until = times.partition_point(|&t| t <= period.to);
+            out.push((Group::Period(k), before..until.max(before)));
+        }
+    } else {
+        let group = |time: Time| {
+            let local = local_time(time, settings.zone);
+            match by {
+                MeansBy::Day => Group::Day(local.year(), local.month(), local.day()),
+                MeansBy::Month => Group::Month(local.year(), local.month()),
+                MeansBy::Hour | MeansBy::Period => Group::Hour(local.hour()),
+            }
+        };
+        let groups: Vec<Group> = times.iter().map(|&t| group(t)).collect();
+        let mut start = 0;
+        for run in groups.chunk_by(|a, b| a == b) {
+            out.push((run[0], start..start + run.len())); // a run has a first
+            start += run.len();
+        }
+    }
+    out.retain(|(_, times)| !times.is_empty());
+    out
 }
 
 /// What the clock of a zone shows.

@@ -43,7 +43,7 @@ pub use earth::{OMEGA, SelfTest, earth_rotation, planetary_vorticity, self_test}
 pub use extra::ExtraPolygon;
 pub use extremes::{Extremes, Peak};
 pub use fit_books::{FitBook, FitBooks};
-pub use group_means::{Group, GroupMeans};
+pub use group_means::{Group, GroupMeans, groups_of};
 pub use mean_error::MeanError;
 pub use moments::{MomentConstants, MomentCovariance, PAIRS, mean_weights};
 pub use sampling::{PairCovariance, Sampling, SamplingConstants};

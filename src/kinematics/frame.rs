@@ -49,6 +49,25 @@ pub struct LocalWind {
     pub gradient: [f64; 4],
 }
 
+/// A position as seen from a middle (latitude, longitude): its place by distance and azimuth, x towards east and y towards
+/// north, and sine and cosine of the angle by which its winds turn counter-clockwise when they are carried to the middle.
+pub(crate) fn seen_from(
+    geodesic: &Geodesic,
+    (latitude, longitude): (f64, f64),
+    position: Position,
+) -> ([f64; 2], [f64; 2]) {
+    let (distance, start, end, _arc): (f64, f64, f64, f64) = geodesic.inverse(
+        latitude,
+        longitude,
+        position.latitude(),
+        position.longitude(),
+    );
+    let (x, y) = sin_cos_degrees(start);
+    let turn = if distance > 0.0 { end - start } else { 0.0 };
+    let (sin, cos) = sin_cos_degrees(turn);
+    ([distance * x, distance * y], [sin, cos])
+}
+
 impl PolygonFrame {
     /// The frame of a polygon.
     ///
@@ -63,21 +82,12 @@ impl PolygonFrame {
     #[must_use]
     pub fn new(polygon: &StationPolygon, edges: &EdgeSet, positions: &[Position]) -> Self {
         let geodesic = Geodesic::wgs84();
-        let (latitude, longitude) = polygon.middle;
         // Place, and turn to the middle, of every station.
         let seen: Vec<([f64; 2], [f64; 2])> = polygon
             .row
             .stations
             .iter()
-            .map(|&station| {
-                let p = positions[station];
-                let (distance, start, end, _arc): (f64, f64, f64, f64) =
-                    geodesic.inverse(latitude, longitude, p.latitude(), p.longitude());
-                let (x, y) = sin_cos_degrees(start);
-                let turn = if distance > 0.0 { end - start } else { 0.0 };
-                let (sin, cos) = sin_cos_degrees(turn);
-                ([distance * x, distance * y], [sin, cos])
-            })
+            .map(|&station| seen_from(&geodesic, polygon.middle, positions[station]))
             .collect();
         let number = |station: usize| polygon.row.stations.iter().position(|&s| s == station);
         let place = |station: usize| number(station).map_or([0.0; 2], |k| seen[k].0);
@@ -104,7 +114,7 @@ impl PolygonFrame {
         });
         Self {
             stations: stations.collect(),
-            latitude,
+            latitude: polygon.middle.0,
         }
     }
 

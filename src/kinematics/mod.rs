@@ -4,7 +4,8 @@
 //! [`PolygonFrame`] carries the winds of the stations to the middle of the polygon and gives mean wind and velocity
 //! gradient as linear forms; their covariance has the three parts of the estimate's own budget (instruments and sites,
 //! sampling, timing: [`crate::integral::complete_errors`], [`crate::integral::MomentConstants`]). All else follows from
-//! these six numbers ([`Quantities::of`]). Of an observed scalar: [`scalar`].
+//! these six numbers ([`Quantities::of`]). Of observed scalars: [`scalar`],
+//! [`Kinematics::scalars`].
 //!
 //! Signs: stretching u_x − v_y and shearing v_x + u_y in axes towards east and north; curvature and shear vorticity
 //! positive counter-clockwise; contraction positive where air is drawn together. `methods.md` 3 has the formulas.
@@ -31,8 +32,10 @@
 //! 95 to 100 %, the others as above. The asymptotic contraction rate was given in 0.2 % of all cases and held in 96 % of these.
 
 mod frame;
+mod means;
 mod quantity;
 pub mod scalar;
+mod scalar_block;
 mod state;
 
 use rayon::prelude::*;
@@ -46,8 +49,11 @@ use crate::structure::{Exponent, StructureFunction};
 use crate::time::Time;
 use crate::units::Wind;
 
+pub(crate) use frame::seen_from;
 pub use frame::{CarriedStation, LocalWind, PolygonFrame};
+pub use means::KinematicMeans;
 pub use quantity::{QUANTITIES, Quantities, Quantity};
+pub use scalar_block::{SCALAR_QUANTITIES, ScalarCell, ScalarCells, ScalarQuantity};
 pub use state::State;
 
 /// Kinematics of all polygons at a run of times; polygons × times, as in [`EstimateBlock`].
@@ -57,6 +63,14 @@ pub struct KinematicsBlock {
     pub times: Vec<Time>,
     /// Polygon `p` at time `t` stands at `p * times.len() + t`; all empty where the polygon has no value.
     pub cells: Vec<Quantities>,
+}
+
+/// Which parts of the errors.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+enum Errors {
+    All,
+    /// Those of instruments and sites.
+    Persistent,
 }
 
 /// The frames of a network's polygons, made once.
@@ -102,34 +116,34 @@ impl Kinematics {
         block: &EstimateBlock,
         model: Option<(&Sampling, &[StructureFunction])>,
     ) -> KinematicsBlock {
+        self.block(winds, block, model, Errors::All)
+    }
+
+    /// The same with the errors of instruments and sites alone: those that persist.
+    #[must_use]
+    pub fn with_persistent_errors(
+        &self,
+        winds: &WindBlock,
+        block: &EstimateBlock,
+        model: Option<(&Sampling, &[StructureFunction])>,
+    ) -> KinematicsBlock {
+        self.block(winds, block, model, Errors::Persistent)
+    }
+
+    fn block(
+        &self,
+        winds: &WindBlock,
+        block: &EstimateBlock,
+        model: Option<(&Sampling, &[StructureFunction])>,
+        errors: Errors,
+    ) -> KinematicsBlock {
         let n = block.times.len();
-        let models: Vec<&StructureFunction> = match model {
-            Some((_, models)) => (0..n)
-                .filter_map(|t| models.get(t).or(models.last()))
-                .collect(),
-            None => Vec::new(),
-        };
-        let own = own_variances(winds, &models);
         let mut cells = Vec::with_capacity(self.frames.len() * n);
-        let mut states = Vec::with_capacity(n);
-        for (p, (frame, &planetary)) in self.frames.iter().zip(&self.planetary).enumerate() {
+        let frames = self.frames.iter().zip(&self.planetary);
+        for ((p, (frame, &planetary)), states) in
+            frames.enumerate().zip(self.states(winds, n, model, errors))
+        {
             let flags = &block.flag[p * n..(p + 1) * n];
-            states.clear();
-            states.resize(n, (LocalWind::default(), [[0.0; 3]; 6]));
-            for station in &frame.stations {
-                add_station(station, winds, &own, &mut states);
-            }
-            if let Some((sampling, _)) = model {
-                let mut constants: Option<(Exponent, &MomentConstants)> = None;
-                for ((_, sums), model) in states.iter_mut().zip(&models) {
-                    let of_polygon = match constants {
-                        Some((exponent, found)) if exponent == model.exponent => found,
-                        _ => &sampling.moment_constants(model.exponent)[p],
-                    };
-                    constants = Some((model.exponent, of_polygon));
-                    add(sums, &of_polygon.covariance(model));
-                }
-            }
             cells.extend(states.iter().zip(flags).map(|((wind, covariance), &flag)| {
                 if !flag.is_usable() {
                     return Quantities::default();
@@ -144,10 +158,45 @@ impl Kinematics {
             cells,
         }
     }
+
+    /// Mean wind and gradient of each polygon at `n` times with their covariances.
+    fn states<'a>(
+        &'a self,
+        winds: &'a WindBlock,
+        n: usize,
+        model: Option<(&'a Sampling, &'a [StructureFunction])>,
+        errors: Errors,
+    ) -> impl Iterator<Item = Vec<(LocalWind, MomentCovariance)>> + 'a {
+        let models: Vec<&StructureFunction> = match model {
+            Some((_, models)) => (0..n)
+                .filter_map(|t| models.get(t).or(models.last()))
+                .collect(),
+            None => Vec::new(),
+        };
+        let own = own_variances(winds, &models, errors);
+        self.frames.iter().enumerate().map(move |(p, frame)| {
+            let mut states = vec![(LocalWind::default(), [[0.0; 3]; 6]); n];
+            for station in &frame.stations {
+                add_station(station, winds, &own, &mut states);
+            }
+            if let Some((sampling, _)) = model.filter(|_| errors == Errors::All) {
+                let mut constants: Option<(Exponent, &MomentConstants)> = None;
+                for ((_, sums), model) in states.iter_mut().zip(&models) {
+                    let of_polygon = match constants {
+                        Some((exponent, found)) if exponent == model.exponent => found,
+                        _ => &sampling.moment_constants(model.exponent)[p],
+                    };
+                    constants = Some((model.exponent, of_polygon));
+                    add(sums, &of_polygon.covariance(model));
+                }
+            }
+            states
+        })
+    }
 }
 
 /// What sites and ages add to the variance of either component of every wind, m²/s².
-fn own_variances(winds: &WindBlock, models: &[&StructureFunction]) -> Vec<f64> {
+fn own_variances(winds: &WindBlock, models: &[&StructureFunction], errors: Errors) -> Vec<f64> {
     if models.is_empty() {
         return vec![0.0; winds.age.len()];
     }
@@ -155,7 +204,10 @@ fn own_variances(winds: &WindBlock, models: &[&StructureFunction]) -> Vec<f64> {
         .age
         .chunks(models.len())
         .flat_map(|ages| ages.iter().zip(models))
-        .map(|(&age, m)| m.site_variance + m.temporal.at(f64::from(age)))
+        .map(|(&age, m)| match errors {
+            Errors::All => m.site_variance + m.temporal.at(f64::from(age)),
+            Errors::Persistent => m.site_variance,
+        })
         .collect()
 }
 

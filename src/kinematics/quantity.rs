@@ -50,7 +50,7 @@ pub const QUANTITIES: usize = 17;
 /// Half of a 95 % interval in standard errors (normal distribution).
 const Z95: f64 = 1.959_964;
 /// The root of Okubo-Weiss is given where that is more than this many errors above 0.
-const LEAST_RATIO: f64 = 3.0;
+pub(super) const LEAST_RATIO: f64 = 3.0;
 /// Parts along and across the wind are given where its speed is more than this many errors: the direction is then known
 /// to a third of a radian.
 const LEAST_SPEED_RATIO: f64 = 3.0;
@@ -271,15 +271,15 @@ impl Quantities {
 }
 
 /// A vector of two components with its errors along and across it.
-struct Arrow {
-    length: f64,
+pub(super) struct Arrow {
+    pub(super) length: f64,
     direction: [f64; 2],
-    along: f64,
-    across: f64,
+    pub(super) along: f64,
+    pub(super) across: f64,
 }
 
 impl Arrow {
-    fn of([x, y]: [f64; 2], [xx, xy, yy]: [f64; 3]) -> Self {
+    pub(super) fn of([x, y]: [f64; 2], [xx, xy, yy]: [f64; 3]) -> Self {
         let length = x.hypot(y);
         if length <= 0.0 {
             let any = (0.5 * (xx + yy)).max(0.0).sqrt();
@@ -303,7 +303,7 @@ impl Arrow {
 
     /// Error of its angle, radians, if it has one: the interval is ± asin(1.96 σ/r) with σ across and r the length, and
     /// the whole circle where r is less than 1.96 σ.
-    fn angle_error(&self) -> Option<f64> {
+    pub(super) fn angle_error(&self) -> Option<f64> {
         let sine = Z95 * self.across / self.length;
         let half = if sine < 1.0 { sine.asin() } else { PI };
         (self.length > 0.0).then_some(half / Z95)

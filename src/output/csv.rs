@@ -288,18 +288,23 @@ pub fn summary_csv(setup: &Setup, outcome: &Outcome) -> String {
 pub fn means_csv(setup: &Setup, outcome: &Outcome) -> String {
     let mut out = format!("group,polygon{}\n", statistics_columns());
     for (&group, statistics) in &outcome.means.0 {
-        let name = match group {
-            Group::Hour(hour) => format!("{hour:02}"),
-            Group::Month(year, month) => format!("{year:04}-{month:02}"),
-            Group::Day(year, month, day) => format!("{year:04}-{month:02}-{day:02}"),
-            Group::Period(k) => {
-                let period = setup.settings.means.periods.get(k);
-                period.map_or_else(String::new, |p| quoted(&p.name))
-            }
-        };
+        let name = group_name(setup, group);
         statistics_rows(&mut out, setup, outcome, statistics, None, &(name + ","));
     }
     out
+}
+
+/// A group of times as it is written.
+pub(super) fn group_name(setup: &Setup, group: Group) -> String {
+    match group {
+        Group::Hour(hour) => format!("{hour:02}"),
+        Group::Month(year, month) => format!("{year:04}-{month:02}"),
+        Group::Day(year, month, day) => format!("{year:04}-{month:02}-{day:02}"),
+        Group::Period(k) => {
+            let period = setup.settings.means.periods.get(k);
+            period.map_or_else(String::new, |p| quoted(&p.name))
+        }
+    }
 }
 
 fn statistics_columns() -> String {

@@ -15,11 +15,11 @@ use arrow_schema::{ArrowError, DataType, Field, Schema, SchemaRef, TimeUnit};
 use parquet::arrow::arrow_writer::ArrowRowGroupWriterFactory;
 use zmij::Buffer;
 
-use super::csv::quoted;
+use super::csv::{group_name, quoted};
 #[cfg(feature = "parquet")]
 use super::parquet::{ParquetFile, RowGroup, encode_columns, start_file};
-use crate::kinematics::{KinematicsBlock, Quantity};
-use crate::pipeline::Setup;
+use crate::kinematics::{KinematicsBlock, QUANTITIES, Quantity};
+use crate::pipeline::{Outcome, Setup};
 
 /// Writes rows of `kinematics.csv`.
 pub(super) struct KinematicsRows {
@@ -73,11 +73,42 @@ impl KinematicsRows {
     }
 }
 
+/// `kinematics_means.csv`: a row for each group of times, polygon and quantity that has values.
+#[must_use]
+pub fn kinematics_means_csv(setup: &Setup, outcome: &Outcome) -> String {
+    let mut out = String::from("group,polygon,quantity,values,mean,mean_se,sd,min,max\n");
+    let mut buffer = Buffer::new();
+    for (&group, statistics) in &outcome.kinematic_means.0 {
+        let name = group_name(setup, group);
+        let polygons = setup.built.polygons.iter();
+        for (polygon, of_polygon) in polygons.zip(statistics.chunks_exact(QUANTITIES)) {
+            let id = quoted(&polygon.id);
+            let found = Quantity::ALL.iter().zip(of_polygon);
+            for (quantity, s) in found.filter(|(_, s)| s.count > 0) {
+                for text in [name.as_str(), &id, quantity.name(), &s.count.to_string()] {
+                    out.push_str(text);
+                    out.push(',');
+                }
+                out.push_str(buffer.format(s.mean));
+                let ends = [s.smallest, s.largest].map(|end| end.map(|(value, _)| value));
+                for number in [s.mean_error(), s.standard_deviation(), ends[0], ends[1]] {
+                    out.push(',');
+                    if let Some(number) = number {
+                        out.push_str(buffer.format(number));
+                    }
+                }
+                out.push('\n');
+            }
+        }
+    }
+    out
+}
+
 #[expect(
     clippy::cast_possible_truncation,
     reason = "seven digits are enough for an error"
 )]
-fn short(error: f64) -> f32 {
+pub(super) fn short(error: f64) -> f32 {
     error as f32
 }
 

@@ -6,6 +6,7 @@ mod calibration;
 #[cfg(feature = "parquet")]
 mod columns;
 mod csv;
+mod decompose;
 mod events;
 mod features;
 mod file;
@@ -27,6 +28,7 @@ mod profile;
 mod reading;
 mod reason;
 mod report;
+mod scalars;
 mod series;
 #[cfg(feature = "parquet")]
 mod standing;
@@ -34,6 +36,7 @@ mod structure;
 mod summary;
 #[cfg(feature = "parquet")]
 mod template;
+mod vertical_motion;
 
 pub use calibration::{
     GAUGE, calibration_csv, calibration_json, corrected_list, corrected_list_section,
@@ -48,6 +51,7 @@ pub use file::OutputSet;
 pub use flagged::{FlaggedFiles, FlaggedFormats};
 pub use frames::{Cell, Frame, Frames};
 pub use geojson::{mesh_geojson, outline_geometry};
+pub use kinematics::kinematics_means_csv;
 pub use mesh::mesh_json;
 pub use profile::{assumptions, profile_csv, profile_json, w_of};
 pub use reading::reading_json;
@@ -56,6 +60,7 @@ pub use series::{EncodedBlock, SeriesChoice, SeriesEncoder, SeriesFiles, SeriesF
 pub use structure::structure_csv;
 pub(crate) use summary::significant_share;
 pub use summary::summary_json;
+pub use vertical_motion::assumption_of_height;
 
 #[cfg(feature = "parquet")]
 use crate::pipeline::Setup;

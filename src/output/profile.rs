@@ -3,6 +3,7 @@
 use serde_json::{Value, json};
 
 use super::csv::{number, optional, quoted};
+use super::vertical_motion::assumption_of_height;
 use super::{CAUTION, error_bars};
 use crate::pipeline::{LevelEstimate, PolygonProfile, ProfileOutcome, Setup};
 use crate::profile::{Coordinate, Level, Motion, air_at_pressure, w_of_omega};
@@ -38,9 +39,7 @@ pub fn assumptions(setup: &Setup, outcome: &ProfileOutcome) -> Vec<String> {
         ));
     }
     if let (true, Some(height)) = (wanted.levels.is_empty(), wanted.height) {
-        out.push(format!(
-            "w = -D h: the divergence at the ground is taken to be the same from flat ground up to h = {height} m."
-        ));
+        out.push(assumption_of_height(height));
         return out;
     }
     let (symbol, unit) = match wanted.coordinate {

@@ -11,6 +11,7 @@ use arrow_array::RecordBatch;
 #[cfg(feature = "parquet")]
 use super::arrow::{ArrowFile, ArrowRows, kinematics_arrow, kinematics_batch};
 use super::csv::PolygonRows;
+use super::decompose::DecomposeRows;
 use super::features::{BETWEEN, COLLECTION, PolygonFeatures};
 use super::file::OutputSet;
 use super::fits::FitRows;
@@ -20,6 +21,8 @@ use super::kinematics::{KinematicsColumns, KinematicsParquet, kinematics_parquet
 use super::netcdf::{FaceBlock, FaceFile, FaceRows};
 #[cfg(feature = "parquet")]
 use super::parquet::{ParquetFile, ParquetRows, RowGroup, parquet_series};
+use super::scalars::ScalarRows;
+use super::vertical_motion::VerticalMotionRows;
 use crate::error::Error;
 use crate::integral::ExtraPolygon;
 use crate::pipeline::{BlockView, Setup};
@@ -54,6 +57,10 @@ enum Encoder {
     Csv(PolygonRows),
     Fits(FitRows),
     KinematicsCsv(KinematicsRows),
+    Scalars(ScalarRows),
+    VerticalMotion(VerticalMotionRows),
+    Energies,
+    Potentials(DecomposeRows),
     #[cfg(feature = "parquet")]
     Parquet(Box<ParquetRows>),
     #[cfg(feature = "parquet")]
@@ -146,6 +153,9 @@ pub fn series(
         let rows = Encoder::KinematicsCsv(KinematicsRows::new(setup));
         start.text("kinematics.csv", &KinematicsRows::header(), rows)?;
     }
+    if !choice.formats.is_empty() {
+        start.more_text(setup)?;
+    }
     for format in [SeriesFormat::Parquet, SeriesFormat::Arrow] {
         if wants(format) {
             start.tables(setup, format, kinematics)?;
@@ -190,6 +200,27 @@ impl Start<'_> {
         self.files.last().map_or(Ok(()), |file| {
             self.set.write(file.number, header.as_bytes())
         })
+    }
+
+    /// What is written as text alone, where it is asked for.
+    fn more_text(&mut self, setup: &Setup) -> Result<(), Error> {
+        let settings = &setup.settings;
+        if settings.kinematics.write && !settings.scalars.is_empty() {
+            let rows = Encoder::Scalars(ScalarRows::new(setup));
+            self.text("scalars.csv", &ScalarRows::header(), rows)?;
+        }
+        if let Some(height) = settings.w_at {
+            let rows = Encoder::VerticalMotion(VerticalMotionRows::new(setup, height));
+            self.text("vertical_motion.csv", VerticalMotionRows::header(), rows)?;
+        }
+        if settings.decompose {
+            let header = DecomposeRows::energy_header();
+            self.text("decompose.csv", &header, Encoder::Energies)?;
+            let rows = Encoder::Potentials(DecomposeRows::new(setup));
+            let header = DecomposeRows::station_header();
+            self.text("decompose_stations.csv", &header, rows)?;
+        }
+        Ok(())
     }
 
     #[cfg(feature = "parquet")]
@@ -257,6 +288,16 @@ impl Encoder {
             (Self::Csv(rows), _) => Ok(Piece::Bytes(rows.encode(block))),
             (Self::Fits(rows), _) => Ok(Piece::Bytes(rows.encode(block))),
             (Self::KinematicsCsv(rows), Some(block)) => Ok(Piece::Bytes(rows.encode(block))),
+            (Self::Scalars(rows), _) => Ok(seen
+                .scalars
+                .map_or(Piece::Nothing, |block| Piece::Bytes(rows.encode(block)))),
+            (Self::VerticalMotion(rows), _) => Ok(Piece::Bytes(rows.encode(block))),
+            (Self::Energies, _) => Ok(seen.decomposition.map_or(Piece::Nothing, |block| {
+                Piece::Bytes(DecomposeRows::energies(block))
+            })),
+            (Self::Potentials(rows), _) => Ok(seen
+                .decomposition
+                .map_or(Piece::Nothing, |block| Piece::Bytes(rows.stations(block)))),
             #[cfg(feature = "parquet")]
             (Self::Parquet(rows), _) => words(rows.encode(block)).map(Piece::RowGroup),
             #[cfg(feature = "parquet")]

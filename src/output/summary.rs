@@ -4,7 +4,9 @@ use std::collections::BTreeMap;
 
 use serde_json::{Value, json};
 
+use super::vertical_motion::assumption_of_height;
 use super::{CAUTION, error_bars};
+use crate::helmholtz::Part;
 use crate::integral::{Attribution, Cause, Peak, Statistics};
 use crate::pipeline::{Outcome, Setup};
 use crate::settings::{AlignMethod, MeansSettings, ReportSource, Settings};
@@ -97,6 +99,11 @@ pub fn summary_json(setup: &Setup, outcome: &Outcome) -> String {
             "cyclonic_vorticity": peak(setup, outcome, extremes.cyclonic),
             "anticyclonic_vorticity": peak(setup, outcome, extremes.anticyclonic),
         },
+        "kinetic_energy": energy(setup, outcome),
+        "vertical_motion": setup.settings.w_at.map(|height| json!({
+            "height_m": height,
+            "assumption": assumption_of_height(height),
+        })),
         "corrections": corrections(setup),
         "warnings": warnings,
         "units": {
@@ -108,6 +115,19 @@ pub fn summary_json(setup: &Setup, outcome: &Outcome) -> String {
     let mut text = format!("{summary:#}");
     text.push('\n');
     text
+}
+
+/// Kinetic energy by parts of the wind, if it was asked for.
+fn energy(setup: &Setup, outcome: &Outcome) -> Option<Value> {
+    let books = &outcome.energy;
+    setup.settings.decompose.then(|| {
+        let shares = Part::ALL.map(|part| (format!("{}_share", part.name()), books.share(part)));
+        let mut out = json!({ "times": books.times });
+        for (name, share) in shares {
+            out[name] = share.into();
+        }
+        out
+    })
 }
 
 /// What the station list corrects.
@@ -232,6 +252,8 @@ pub(super) fn settings(settings: &Settings) -> Value {
         },
         "errors": settings.errors,
         "kinematics": settings.kinematics,
+        "decompose": settings.decompose,
+        "scalars": settings.scalars,
         "means": means(&settings.means),
         "check": settings.screen.then_some(&settings.check),
         "polygons": {

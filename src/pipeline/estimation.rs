@@ -3,16 +3,18 @@
 use rayon::prelude::*;
 
 use super::complete::{Common, ErrorModel, Holes};
+use super::decompose::Decomposition;
 use super::field::FieldState;
 use super::outliers::OutlierBooks;
 use super::remesh::Remesh;
 use super::run::BlockView;
 use super::{Setup, Window};
 use crate::align::{AlignBooks, Aligner, StationSensors, WindBlock, block_times, height_factor};
+use crate::helmholtz::EnergyBooks;
 use crate::integral::{
     CauseBooks, EstimateBlock, Extremes, FalseDiscovery, FitBooks, GroupMeans, RunStatistics,
 };
-use crate::kinematics::Kinematics;
+use crate::kinematics::{KinematicMeans, Kinematics};
 use crate::report::{Rounding, SpeedStep};
 use crate::settings::{Missing, SensorErrors, Settings};
 use crate::spatial::SpatialCheck;
@@ -38,6 +40,7 @@ pub(super) struct Estimation<'a> {
     rule: FalseDiscovery,
     /// Where they are asked for.
     kinematics: Option<Kinematics>,
+    decomposition: Option<Decomposition>,
 }
 
 impl<'a> Estimation<'a> {
@@ -68,6 +71,7 @@ impl<'a> Estimation<'a> {
             remesh: (settings.missing == Missing::Remesh)
                 .then(|| Remesh::new(setup, spacing.filter(|_| complete))),
             kinematics: kinematics(setup),
+            decomposition: settings.decompose.then(|| Decomposition::new(setup)),
             rule: FalseDiscovery::new(
                 setup.settings.errors.false_discovery_rate,
                 // A triangulation of n stations has fewer than 2 n triangles.
@@ -123,20 +127,38 @@ impl<'a> Estimation<'a> {
             limits: &setup.settings.limits,
         };
         let kinematics = self.kinematics.as_ref();
+        let scalar_errors: Vec<f64> = setup.settings.scalars.iter().map(|s| s.error).collect();
+        let decomposition = self.decomposition.as_ref();
         let results: Vec<(Sums, T)> = winds
             .par_iter()
             .zip(models)
             .zip(holes)
             .map(|((winds, models), holes)| {
                 let (block, lasting) = common.estimate(winds, &models, holes);
-                let sums = Sums::of(setup, &block, &lasting, polygons);
-                let kinematics = kinematics.map(|k| {
-                    let sampling = common.errors.map(|e| (&e.sampling, models.as_slice()));
-                    k.of(winds, &block, sampling)
+                let mut sums = Sums::of(setup, &block, &lasting, polygons);
+                let decomposition = decomposition.map(|d| d.of(winds));
+                sums.energy = decomposition
+                    .as_ref()
+                    .map(EnergyBooks::of)
+                    .unwrap_or_default();
+                let sampling = common.errors.map(|e| (&e.sampling, models.as_slice()));
+                let scalars = kinematics.filter(|_| !scalar_errors.is_empty()).map(|k| {
+                    let mesh = (setup.built.polygons.as_slice(), &setup.built.edges);
+                    let values = aligner.scalars(&winds.times, scalar_errors.len());
+                    k.scalars(mesh, winds, &block, sampling, (&values, &scalar_errors))
                 });
+                let moments = kinematics.map(|k| (k, k.of(winds, &block, sampling)));
+                let by = &setup.settings.means;
+                if let Some((k, moments)) = moments.as_ref().filter(|_| by.by.is_some()) {
+                    let persistent = k.with_persistent_errors(winds, &block, sampling);
+                    sums.kinematics = KinematicMeans::of(moments, &persistent, &lasting, by);
+                }
+                let kinematics = moments.map(|(_, moments)| moments);
                 let seen = BlockView {
                     estimates: &block,
                     kinematics: kinematics.as_ref(),
+                    scalars: scalars.as_ref(),
+                    decomposition: decomposition.as_ref(),
                     winds,
                     models: &models,
                 };
@@ -188,6 +210,8 @@ pub(super) struct Sums {
     pub(super) means: GroupMeans,
     pub(super) fits: FitBooks,
     pub(super) causes: CauseBooks,
+    pub(super) energy: EnergyBooks,
+    pub(super) kinematics: KinematicMeans,
 }
 
 impl Sums {
@@ -201,6 +225,8 @@ impl Sums {
             means: GroupMeans::of(block, lasting, &setup.settings.means),
             fits: FitBooks::of(block),
             causes: CauseBooks::of(block, planetary.len()),
+            energy: EnergyBooks::default(),
+            kinematics: KinematicMeans::default(),
         };
         if !block.extra.is_empty() {
             sums.extremes.renumber(common, &block.extra);
@@ -219,6 +245,8 @@ impl Sums {
         self.means.merge(&later.means);
         self.fits.merge(&later.fits);
         self.causes.merge(&later.causes);
+        self.energy.merge(&later.energy);
+        self.kinematics.merge(&later.kinematics);
     }
 }
 

@@ -7,11 +7,12 @@ use super::field::FieldState;
 use super::{Reading, Setup, Windows};
 use crate::align::{Period, WindBlock};
 use crate::error::Error;
+use crate::helmholtz::{DecompositionBlock, EnergyBooks};
 use crate::integral::{
     Attribution, CauseBooks, EstimateBlock, ExtraPolygon, Extremes, FitBook, FitBooks, GroupMeans,
     RunStatistics, attribute,
 };
-use crate::kinematics::KinematicsBlock;
+use crate::kinematics::{KinematicMeans, KinematicsBlock, ScalarCells};
 use crate::polygon::StationPolygon;
 use crate::report::{InputOrder, ReportFiles, ReportTable};
 use crate::settings::Settings;
@@ -47,8 +48,12 @@ pub struct Outcome {
     pub causes: CauseBooks,
     /// The same by hour, day, month or period, if the settings ask for it.
     pub means: GroupMeans,
+    /// Means of the kinematic quantities by the same groups, if both are asked for.
+    pub kinematic_means: KinematicMeans,
     /// Linear fits beside the line integrals of polygons with more than three stations.
     pub fits: FitBooks,
+    /// Kinetic energy by parts of the wind; nothing if they were not asked for.
+    pub energy: EnergyBooks,
     /// The structure function at the end of each day and of the run; empty where it was not asked for.
     pub structure: Vec<StructureReport>,
     /// What the user should know of all stages.
@@ -89,6 +94,10 @@ pub struct BlockView<'a> {
     pub estimates: &'a EstimateBlock,
     /// Where they are asked for.
     pub kinematics: Option<&'a KinematicsBlock>,
+    /// Observed scalars, where kinematics are asked for and the reports have any.
+    pub scalars: Option<&'a ScalarCells>,
+    /// Where it is asked for.
+    pub decomposition: Option<&'a DecompositionBlock>,
     /// The winds of all stations at these times.
     pub winds: &'a WindBlock,
     /// The structure function at each time; none if none was asked for.
@@ -170,6 +179,8 @@ pub fn run<T: Send>(
         extra: estimation.remesh.map(|r| r.extra).unwrap_or_default(),
         causes: estimation.sums.causes,
         fits: estimation.sums.fits,
+        energy: estimation.sums.energy,
+        kinematic_means: estimation.sums.kinematics,
         structure: estimation
             .field
             .filter(|_| setup.settings.errors.complete)

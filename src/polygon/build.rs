@@ -94,6 +94,22 @@ pub fn build_triangles(
     builder.built
 }
 
+/// Numbers of the stations that make triangles, one at each place, and the warnings of the others.
+pub(crate) fn apart(network: &Network) -> (Vec<usize>, Vec<Warning>) {
+    let doubles = network.coincident();
+    let left_out: HashSet<&str> = doubles
+        .iter()
+        .filter_map(|w| match w {
+            Warning::OnePlace { left_out, .. } => Some(left_out.as_str()),
+            _ => None,
+        })
+        .collect();
+    let stations = (0..network.len())
+        .filter(|&s| !left_out.contains(network.stations()[s].id.as_str()))
+        .collect();
+    (stations, doubles)
+}
+
 fn warn(built: &mut BuiltPolygons, limits: &PolygonLimits) {
     let slopes = built.polygons.iter().filter_map(|p| p.shape.slope);
     let steep: Vec<f64> = slopes
@@ -169,17 +185,7 @@ impl Builder<'_> {
     }
 
     fn triangles(&mut self) -> Result<(), Error> {
-        let doubles = self.network.coincident();
-        let left_out: HashSet<&str> = doubles
-            .iter()
-            .filter_map(|w| match w {
-                Warning::OnePlace { left_out, .. } => Some(left_out.as_str()),
-                _ => None,
-            })
-            .collect();
-        let stations: Vec<usize> = (0..self.network.len())
-            .filter(|&s| !left_out.contains(self.network.stations()[s].id.as_str()))
-            .collect();
+        let (stations, doubles) = apart(self.network);
         for ring in triangulate(&self.positions, &stations)? {
             self.triangle(ring);
         }

@@ -12,6 +12,7 @@ use geographiclib_rs::{Geodesic, PolygonArea, Winding};
 
 use crate::station::Position;
 
+pub(crate) use build::apart;
 pub use build::{BuiltPolygons, build_polygons, build_triangles};
 pub(crate) use delaunay::smallest_first;
 pub use delaunay::triangulate;

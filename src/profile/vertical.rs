@@ -259,7 +259,8 @@ fn steps(bounds: &[f64]) -> Vec<f64> {
 #[must_use]
 pub fn motion_at_height(divergence: Measured, height: f64) -> Measured {
     Measured {
-        value: -divergence.value * height,
+        // No motion has no sign.
+        value: 0.0 - divergence.value * height,
         se: divergence.se * height,
     }
 }

@@ -3,7 +3,7 @@
 use std::cmp::Ordering;
 use std::ops::Range;
 
-use super::rows::{Packed, Rows, kind};
+use super::rows::{NO_SCALARS, Packed, Rows, kind};
 use super::table::{Conflict, ReportTable, TableColumns};
 use crate::check::{Flag, TestFlags};
 use crate::tally::{Reason, Tally};
@@ -45,9 +45,12 @@ pub(super) fn build(
     }
     let plain = kinds & (kind::SPEED_PART | kind::DIRECTION_PART) == 0
         && !before.has_rare_columns()
-        && parts
-            .iter()
-            .all(|p| p.gust.is_empty() && p.moving.is_empty() && p.correction.is_empty());
+        && parts.iter().all(|p| {
+            p.gust.is_empty()
+                && p.moving.is_empty()
+                && p.correction.is_empty()
+                && p.scalars.is_empty()
+        });
     let (mut table, tally) = plain
         .then(|| straight(parts, &counts, before, &carried))
         .flatten()
@@ -201,8 +204,15 @@ impl TableColumns {
         }
         if !other.moving.is_empty() || !self.moving.is_empty() {
             self.moving.resize(before, None);
-            let values = range.map(|i| other.moving.get(i).copied().flatten());
+            let values = range
+                .clone()
+                .map(|i| other.moving.get(i).copied().flatten());
             self.moving.extend(values);
+        }
+        if !other.scalars.is_empty() || !self.scalars.is_empty() {
+            self.scalars.resize(before, NO_SCALARS);
+            let values = range.map(|i| other.scalars.get(i).copied().unwrap_or(NO_SCALARS));
+            self.scalars.extend(values);
         }
     }
 }
@@ -365,6 +375,17 @@ impl TableBuilder<'_> {
         if !rows.moving.is_empty() || !out.moving.is_empty() {
             out.moving.resize(before, None);
             out.moving.push(rows.moving.get(row).copied().flatten());
+        }
+        // The parts of a wind may both have scalars.
+        let scalars = |at: At| {
+            let column = &self.parts[at.part as usize].scalars;
+            column.get(at.row as usize).copied().unwrap_or(NO_SCALARS)
+        };
+        let (own, other) = (scalars(at), direction.map_or(NO_SCALARS, scalars));
+        let values = std::array::from_fn(|k| own[k].or(other[k]));
+        if values != NO_SCALARS || !out.scalars.is_empty() {
+            out.scalars.resize(before, NO_SCALARS);
+            out.scalars.push(values);
         }
     }
 }

@@ -3,7 +3,7 @@
 
 use std::io;
 
-use super::rows::{Moving, Packed, Rows};
+use super::rows::{Moving, NO_SCALARS, Packed, Rows};
 use crate::station::Position;
 use crate::time::Time;
 
@@ -17,6 +17,7 @@ mod has {
     pub const GUST: u8 = 1;
     pub const MOVING: u8 = 2;
     pub const CORRECTION: u8 = 4;
+    pub const SCALARS: u8 = 8;
 }
 
 /// Bits that say which values of a moving instrument are there.
@@ -38,7 +39,8 @@ pub(super) fn encode(rows: &Rows) -> io::Result<Vec<u8>> {
     raw.push(
         bit(!rows.gust.is_empty(), has::GUST)
             | bit(!rows.moving.is_empty(), has::MOVING)
-            | bit(!rows.correction.is_empty(), has::CORRECTION),
+            | bit(!rows.correction.is_empty(), has::CORRECTION)
+            | bit(!rows.scalars.is_empty(), has::SCALARS),
     );
     let packed = &rows.packed;
     raw.extend(packed.iter().flat_map(|r| r.time.micros().to_le_bytes()));
@@ -68,6 +70,10 @@ pub(super) fn encode(rows: &Rows) -> io::Result<Vec<u8>> {
         }
     }
     raw.extend_from_slice(&rows.correction);
+    for value in rows.scalars.iter().flatten() {
+        raw.push(u8::from(value.is_some()));
+        raw.extend_from_slice(&value.unwrap_or(0.0).to_le_bytes());
+    }
     zstd::bulk::compress(&raw, LEVEL)
 }
 
@@ -135,6 +141,17 @@ pub(super) fn decode(bytes: &[u8]) -> io::Result<Rows> {
         let corrections = source.column::<1>(n)?;
         rows.correction.extend(corrections.iter().map(|&[c]| c));
     }
+    if columns & has::SCALARS != 0 {
+        for _ in 0..n {
+            let mut values = NO_SCALARS;
+            for value in &mut values {
+                let [there] = source.take::<1>()?;
+                let number = f64::from_le_bytes(source.take()?);
+                *value = (there != 0).then_some(number);
+            }
+            rows.scalars.push(values);
+        }
+    }
     if source.0.is_empty() {
         Ok(rows)
     } else {
@@ -189,6 +206,9 @@ mod tests {
                 correction: u8::from(odd),
                 place: (k % 4, u64::from(k)),
             });
+            if odd && k % 2 == 0 {
+                rows.put_scalars(&[Some(f64::from(k) * 0.3), None, Some(-1.5), None]);
+            }
         }
         rows
     }

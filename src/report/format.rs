@@ -45,6 +45,10 @@ impl Default for ReportFormat {
 /// Table or code form.
 #[derive(Debug, Clone, PartialEq, Eq, Serialize)]
 #[serde(rename_all = "snake_case")]
+#[expect(
+    clippy::large_enum_variant,
+    reason = "there is one for each group of report files"
+)]
 pub enum ReportForm {
     /// Rows and columns: text, Parquet or Arrow IPC (found by the content).
     Table(Columns),
@@ -73,6 +77,20 @@ pub struct Columns {
     pub longitude: Option<String>,
     /// Level of the report: height or pressure.
     pub level: Option<String>,
+    /// Observed scalars, in tables with a row for each station and time.
+    #[serde(skip_serializing_if = "Vec::is_empty")]
+    pub scalars: Vec<ScalarColumn>,
+}
+
+/// The column of an observed scalar, such as temperature.
+#[derive(Debug, Clone, PartialEq, Eq, Serialize)]
+pub struct ScalarColumn {
+    /// The user's name of it.
+    pub name: String,
+    /// Name of the column.
+    pub column: String,
+    /// Its place among the scalars of all report files, below [`super::SCALARS`].
+    pub slot: usize,
 }
 
 impl Default for Columns {
@@ -88,6 +106,7 @@ impl Default for Columns {
             latitude: None,
             longitude: None,
             level: None,
+            scalars: Vec::new(),
         }
     }
 }

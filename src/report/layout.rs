@@ -50,6 +50,7 @@ fn is_plain(values: &ValueReader) -> bool {
         ]
         .iter()
         .all(|c| c.is_none())
+        && columns.scalars.is_empty()
 }
 
 /// The roles of the columns up to the last one needed.
@@ -80,6 +81,8 @@ pub(super) struct Layout {
     pub(super) latitude: Option<usize>,
     pub(super) longitude: Option<usize>,
     pub(super) level: Option<usize>,
+    /// Of the scalars, as they are listed.
+    pub(super) scalars: Vec<usize>,
     pub(super) wide: Vec<WideStation>,
     /// The columns up to the last one needed, of a table so plain that most rows can go the short way: direction and
     /// speed, one time column, true north, nothing else. Empty for any other.
@@ -133,6 +136,8 @@ impl Layout {
         let latitude = finder.optional(columns.latitude.as_deref());
         let longitude = finder.optional(columns.longitude.as_deref());
         let level = finder.optional(columns.level.as_deref());
+        let scalars = columns.scalars.iter();
+        let scalars = scalars.filter_map(|s| finder.find(&s.column)).collect();
         let wide = if is_wide {
             let others = [
                 &columns.gust,
@@ -168,6 +173,7 @@ impl Layout {
             latitude,
             longitude,
             level,
+            scalars,
             wide,
             roles,
         })

@@ -46,6 +46,15 @@ pub struct Moving {
     pub level: Option<f64>,
 }
 
+/// Most scalars that report files can have.
+pub const SCALARS: usize = 4;
+
+/// Values of observed scalars, in the user's units, in the order of the settings.
+pub type ScalarValues = [Option<f64>; SCALARS];
+
+/// None of them.
+pub(super) const NO_SCALARS: ScalarValues = [None; SCALARS];
+
 /// Bits of the `kind` column.
 pub(super) mod kind {
     pub const SPEED: u8 = 1;
@@ -78,6 +87,7 @@ pub struct Rows {
     pub(super) gust: Vec<Option<f64>>,
     pub(super) moving: Vec<Option<Moving>>,
     pub(super) correction: Vec<u8>,
+    pub(super) scalars: Vec<ScalarValues>,
 }
 
 impl Rows {
@@ -139,6 +149,18 @@ impl Rows {
             report.correction > 0,
             0,
         );
+        put(&mut self.scalars, before, NO_SCALARS, false, NO_SCALARS);
+    }
+
+    /// Adds scalars to the last report.
+    #[inline]
+    pub fn put_scalars(&mut self, values: &ScalarValues) {
+        if let Some(before) = self.len().checked_sub(1)
+            && values.iter().any(Option::is_some)
+        {
+            self.scalars.truncate(before);
+            put(&mut self.scalars, before, *values, true, NO_SCALARS);
+        }
     }
 
     /// Adds a report of speed (m/s) and direction and nothing else: the usual one, on the shortest way.
@@ -170,6 +192,9 @@ impl Rows {
         if !self.correction.is_empty() {
             self.correction.push(0);
         }
+        if !self.scalars.is_empty() {
+            self.scalars.push(NO_SCALARS);
+        }
     }
 
     /// Adds a row of `other`, which has it.
@@ -183,6 +208,9 @@ impl Rows {
         let correction = other.correction.get(row).copied().unwrap_or(0);
         let corrected = correction > 0;
         put(&mut self.correction, before, correction, corrected, 0);
+        let scalars = other.scalars.get(row).copied().unwrap_or(NO_SCALARS);
+        let there = scalars != NO_SCALARS;
+        put(&mut self.scalars, before, scalars, there, NO_SCALARS);
     }
 
     /// First and last time.
@@ -218,6 +246,7 @@ impl Rows {
                 gust: chosen(&self.gust, &stays, wanted),
                 moving: chosen(&self.moving, &stays, wanted),
                 correction: chosen(&self.correction, &stays, wanted),
+                scalars: chosen(&self.scalars, &stays, wanted),
             }
         };
         let later = part(false);
@@ -232,6 +261,7 @@ impl Rows {
             + self.gust.capacity() * size_of::<Option<f64>>()
             + self.moving.capacity() * size_of::<Option<Moving>>()
             + self.correction.capacity()
+            + self.scalars.capacity() * size_of::<ScalarValues>()
     }
 
     /// How many there are.

@@ -1,7 +1,7 @@
 //! Reports in columns, by station and time.
 
 use super::build::build;
-use super::rows::{Moving, Rows, kind};
+use super::rows::{Moving, Rows, ScalarValues, kind};
 use crate::check::{Flag, Test, TestFlags};
 use crate::tally::Tally;
 use crate::time::Time;
@@ -50,7 +50,7 @@ pub struct ReportTable {
     pub(super) conflicts: Vec<Conflict>,
 }
 
-/// The values of the reports, one column each; gust and moving are empty where no report has any.
+/// The values of the reports, one column each; gust, moving and scalars are empty where no report has any.
 #[derive(Debug, Default)]
 pub(super) struct TableColumns {
     pub(super) time: Vec<Time>,
@@ -65,6 +65,7 @@ pub(super) struct TableColumns {
     pub(super) tests: Vec<TestFlags>,
     pub(super) gust: Vec<Option<f64>>,
     pub(super) moving: Vec<Option<Moving>>,
+    pub(super) scalars: Vec<ScalarValues>,
 }
 
 impl Default for ReportTable {
@@ -269,9 +270,17 @@ impl ReportTable {
         !self.columns.moving.is_empty()
     }
 
-    /// True if any report has a gust, or its own position or level.
+    /// Scalar number `slot` of report `i`, in the user's unit.
+    #[must_use]
+    pub fn scalar(&self, i: usize, slot: usize) -> Option<f64> {
+        let values = self.columns.scalars.get(i)?;
+        values.get(slot).copied().flatten()
+    }
+
+    /// True if any report has a gust, its own position or level, or scalars.
     pub(super) fn has_rare_columns(&self) -> bool {
-        !self.columns.gust.is_empty() || !self.columns.moving.is_empty()
+        let columns = &self.columns;
+        !columns.gust.is_empty() || !columns.moving.is_empty() || !columns.scalars.is_empty()
     }
 
     /// Place of report `i` in the input: number of the file as read, line.

@@ -11,7 +11,7 @@ use super::layout::{Layout, Role};
 use super::metar::parse_metar;
 use super::names::{Finder, Found};
 use super::read::PartOutcome;
-use super::rows::{Moving, Rows};
+use super::rows::{Moving, NO_SCALARS, Rows, ScalarValues};
 use super::values::{GivenWind, Unusable, Value, ValueReader, WindValue};
 use crate::error::Error;
 use crate::input::{
@@ -290,7 +290,12 @@ impl<'a> BlockReader<'a> {
             wind.gust = self.values.speed(station, gust, Value::Gust)?;
         }
         let moving = self.moving(row)?;
-        self.push(station, time, &wind, moving, line);
+        let mut scalars = NO_SCALARS;
+        let named = self.values.columns.scalars.iter().zip(&layout.scalars);
+        for (k, (named, &column)) in named.enumerate() {
+            scalars[named.slot] = self.values.number_in(row.field(column), Value::Scalar(k))?;
+        }
+        self.push(station, time, &wind, (moving, &scalars), line);
         Ok(())
     }
 
@@ -316,7 +321,7 @@ impl<'a> BlockReader<'a> {
             let first = entry.first.map_or(&b""[..], |c| row.field(c));
             let second = entry.second.map_or(&b""[..], |c| row.field(c));
             match self.wind(station, time, first, second) {
-                Ok(wind) => self.push(station, time, &wind, None, line),
+                Ok(wind) => self.push(station, time, &wind, (None, &NO_SCALARS), line),
                 Err(unusable) => self.set_aside(unusable, line),
             }
         }
@@ -372,7 +377,7 @@ impl<'a> BlockReader<'a> {
             gust,
             correction: metar.correction,
         };
-        self.push(station, time, &wind, None, line);
+        self.push(station, time, &wind, (None, &NO_SCALARS), line);
         Ok(())
     }
 
@@ -381,12 +386,13 @@ impl<'a> BlockReader<'a> {
         station: u32,
         time: Time,
         wind: &WindValue,
-        moving: Option<Moving>,
+        (moving, scalars): (Option<Moving>, &ScalarValues),
         line: u64,
     ) {
         match self.values.report(station, time, wind, moving, line) {
             Some(report) => {
                 self.rows.push(&report);
+                self.rows.put_scalars(scalars);
                 self.outcome.books.tally.pass(1);
             }
             None => self

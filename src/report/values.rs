@@ -24,6 +24,8 @@ pub(super) enum Value {
     Latitude,
     Longitude,
     Level,
+    /// Number of the column among the table's scalars.
+    Scalar(usize),
 }
 
 /// A row that cannot be used.
@@ -156,6 +158,7 @@ impl<'a> ValueReader<'a> {
             Value::Latitude => optional(&self.columns.latitude),
             Value::Longitude => optional(&self.columns.longitude),
             Value::Level => optional(&self.columns.level),
+            Value::Scalar(k) => self.columns.scalars.get(k).map_or("", |s| &s.column),
         }
     }
 

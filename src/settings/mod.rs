@@ -15,6 +15,7 @@ mod path;
 mod profile;
 mod read;
 mod reports;
+mod scalars;
 mod section;
 
 use std::collections::BTreeMap;
@@ -35,6 +36,7 @@ pub use check::{
     RangeLimits, RateLimits, RunLimits, Season, SpikeLimits, StuckLimits,
 };
 pub use events::{EventSettings, NamedPlace, Onset};
+pub use kinematics::height_above_ground;
 pub use profile::{Boundary, ProfileSettings};
 pub use read::{Overrides, read_settings};
 
@@ -57,6 +59,12 @@ pub struct Settings {
     pub errors: ErrorSettings,
     /// Whether the kinematics of each polygon are written, and from which speed on.
     pub kinematics: KinematicsSettings,
+    /// Observed scalars, by name; their order is that of [`crate::report::ScalarValues`].
+    pub scalars: Vec<ScalarSettings>,
+    /// Height above the ground at which the vertical wind is written, m, from the divergence at the ground.
+    pub w_at: Option<f64>,
+    /// Whether the rotational, divergent and harmonic part of the wind are written.
+    pub decompose: bool,
     /// Over which times values are averaged.
     pub means: MeansSettings,
     /// What the calibration leaves out.
@@ -173,6 +181,15 @@ impl Default for KinematicsSettings {
             least_speed: 1.0,
         }
     }
+}
+
+/// An observed scalar, such as temperature or humidity.
+#[derive(Debug, Clone, PartialEq, serde::Serialize)]
+pub struct ScalarSettings {
+    /// The user's name of it.
+    pub name: String,
+    /// Standard error of a value, in its own unit.
+    pub error: f64,
 }
 
 /// What values are averaged by.

@@ -1,9 +1,9 @@
 //! `[profile]`: levels, boundaries and adjustment of the vertical motion.
 
 use super::analysis::level;
+use super::kinematics::height_above_ground;
 use super::section::{Found, Section};
 use crate::profile::{Adjustment, Coordinate, Level};
-use crate::units;
 
 /// A boundary of the vertical motion.
 #[derive(Debug, Clone, Copy, Default, PartialEq, serde::Serialize)]
@@ -96,12 +96,7 @@ pub(super) fn profile(mut section: Section) -> ProfileSettings {
     ];
     let adjustment = section.choice("adjustment", &adjustments);
     let anelastic = section.choice("density", &[("standard", true), ("constant", false)]);
-    let height = section.parsed("height", |text| match units::parse_length(text)? {
-        height if height > 0.0 => Ok(height),
-        _ => Err(format!(
-            "`{text}` is no height above the ground (more than 0 expected)"
-        )),
-    });
+    let height = section.parsed("height", height_above_ground);
     section.finish();
     ProfileSettings {
         coordinate,

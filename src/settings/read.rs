@@ -8,11 +8,12 @@ use super::calibration::calibration;
 use super::check_keys::check;
 use super::errors::errors;
 use super::events::{events, places};
-use super::kinematics::kinematics;
+use super::kinematics::{decompose, kinematics};
 use super::means::means;
 use super::path::expand_path;
 use super::profile::profile;
 use super::reports::{reports, text_format};
+use super::scalars::scalars;
 use super::section::{Document, Section};
 use super::{
     MEMORY, MeansBy, Missing, PolygonChoice, PolygonLimits, RegionParts, RegionSettings,
@@ -25,6 +26,10 @@ use crate::units;
 
 /// What the command line sets in place of the file.
 #[derive(Debug, Clone, Default)]
+#[expect(
+    clippy::struct_excessive_bools,
+    reason = "switches of the command line"
+)]
 pub struct Overrides {
     /// Report files in place of those of the settings; they have the format of the first `[[reports]]`.
     pub reports: Vec<PathBuf>,
@@ -52,6 +57,10 @@ pub struct Overrides {
     pub by: Option<MeansBy>,
     /// `kinematics.write = true`
     pub kinematics: bool,
+    /// `decompose.write = true`
+    pub decompose: bool,
+    /// `kinematics.w_at`, m
+    pub w_at: Option<f64>,
     /// Take the reports unchecked
     pub no_screen: bool,
 }
@@ -90,14 +99,19 @@ fn parse_settings(
 
     let sensor = sensor(root.section("sensor"));
     let (polygons, missing) = polygons(root.section("polygons"));
+    let (kinematics, w_at) = kinematics(root.section("kinematics"), overrides);
+    let mut reports = reports(&mut root, base, &overrides.reports);
     let settings = Settings {
         name,
         station_file,
         catalogue,
-        reports: reports(&mut root, base, &overrides.reports),
+        scalars: scalars(&mut root, &mut reports),
+        reports,
         analysis: analysis(root.section("analysis"), overrides),
         errors: errors(root.section("errors"), overrides),
-        kinematics: kinematics(root.section("kinematics"), overrides),
+        kinematics,
+        w_at,
+        decompose: decompose(root.section("decompose"), overrides),
         means: means(&mut root, overrides),
         calibration: calibration(root.section("calibration")),
         events: events(root.section("events")),

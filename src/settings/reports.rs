@@ -5,6 +5,7 @@ use std::time::Duration;
 
 use super::ReportSource;
 use super::path::{expand_path, expand_pattern};
+use super::scalars;
 use super::section::{Found, Section};
 use crate::error::Place;
 use crate::input::{Label, RepeatedHour, TextFormat, TimeForm, TimeFormat, Zone};
@@ -215,6 +216,7 @@ fn columns(mut section: Section) -> Columns {
             None if metar => Vec::new(),
             time => time.unwrap_or_else(|| vec!["time".into()]),
         },
+        scalars: scalars::columns(&mut section, &wind),
         wind,
         gust: text(&mut section, "gust"),
         latitude: text(&mut section, "latitude"),

@@ -4,8 +4,9 @@ use std::fmt::Write as _;
 use std::path::PathBuf;
 
 use super::{WIDTH, cell, corrections_text, cut, heading, row, short_id, wrapped};
+use crate::helmholtz::Part;
 use crate::integral::{Cause, Peak};
-use crate::output::{CAUTION, error_bars, significant_share};
+use crate::output::{CAUTION, assumption_of_height, error_bars, significant_share};
 use crate::pipeline::{Outcome, Setup};
 use crate::units::Wind;
 
@@ -71,6 +72,7 @@ pub(crate) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
         setup.self_test.largest_difference, setup.self_test.polygons
     );
     significance(&mut out, setup, outcome);
+    energy_text(&mut out, outcome);
     let _ = writeln!(out, "\n{}", heading("Strongest, in 1e-5 /s:"));
     let extremes = &outcome.extremes;
     for (what, peak) in [
@@ -90,6 +92,9 @@ pub(crate) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
             WIDTH
         )
     );
+    if let Some(height) = setup.settings.w_at {
+        let _ = writeln!(out, "{}", wrapped(&assumption_of_height(height), WIDTH));
+    }
     let _ = writeln!(out, "{}", wrapped(CAUTION, WIDTH));
     let names: Vec<String> = files
         .iter()
@@ -102,6 +107,22 @@ pub(crate) fn run_summary(setup: &Setup, outcome: &Outcome, files: &[PathBuf]) -
         }
     }
     out
+}
+
+/// Kinetic energy by parts of the wind.
+fn energy_text(out: &mut String, outcome: &Outcome) {
+    let books = &outcome.energy;
+    let shares = Part::ALL.map(|part| Some((part.name(), 100.0 * books.share(part)?)));
+    let [Some(first), Some(second), Some(third)] = shares else {
+        return;
+    };
+    let words = [first, second, third].map(|(name, share)| format!("{share:.1} % {name}"));
+    let _ = writeln!(
+        out,
+        "Energy      {} ({} times)",
+        words.join(", "),
+        books.times
+    );
 }
 
 /// Stations behind odd means.

@@ -12,7 +12,7 @@ use crate::report::format::WindColumns;
 use crate::report::metar::parse_metar;
 use crate::report::names::{Finder, Found};
 use crate::report::read::PartOutcome;
-use crate::report::rows::{Moving, Rows};
+use crate::report::rows::{Moving, NO_SCALARS, Rows, ScalarValues};
 use crate::report::values::{GivenWind, Unusable, Value, ValueReader, WindValue};
 use crate::tally::Reason;
 use crate::time::Time;
@@ -42,6 +42,7 @@ struct Columns<'b> {
     latitude: Cells<'b>,
     longitude: Cells<'b>,
     level: Cells<'b>,
+    scalars: Vec<Cells<'b>>,
 }
 
 impl<'b> Columns<'b> {
@@ -65,6 +66,7 @@ impl<'b> Columns<'b> {
             latitude: cells(layout.latitude),
             longitude: cells(layout.longitude),
             level: cells(layout.level),
+            scalars: layout.scalars.iter().map(|&place| cells(place)).collect(),
         }
     }
 }
@@ -128,7 +130,12 @@ impl<'a> BatchReader<'a> {
         let gust = self.number(columns.gust.at(row), Value::Gust)?;
         wind.gust = self.values.speed(station, gust, Value::Gust)?;
         let moving = self.moving(columns, row)?;
-        self.push(station, time, &wind, moving);
+        let mut scalars = NO_SCALARS;
+        let named = self.values.columns.scalars.iter().zip(&columns.scalars);
+        for (k, (named, column)) in named.enumerate() {
+            scalars[named.slot] = self.number(column.at(row), Value::Scalar(k))?;
+        }
+        self.push(station, time, &wind, (moving, &scalars));
         Ok(())
     }
 
@@ -167,14 +174,21 @@ impl<'a> BatchReader<'a> {
             gust,
             correction: metar.correction,
         };
-        self.push(station, time, &wind, None);
+        self.push(station, time, &wind, (None, &NO_SCALARS));
         Ok(())
     }
 
-    fn push(&mut self, station: u32, time: Time, wind: &WindValue, moving: Option<Moving>) {
+    fn push(
+        &mut self,
+        station: u32,
+        time: Time,
+        wind: &WindValue,
+        (moving, scalars): (Option<Moving>, &ScalarValues),
+    ) {
         match self.values.report(station, time, wind, moving, self.line) {
             Some(report) => {
                 self.rows.push(&report);
+                self.rows.put_scalars(scalars);
                 self.outcome.books.tally.pass(1);
             }
             None => self

@@ -25,6 +25,8 @@ pub(super) struct Layout {
     pub(super) latitude: Option<usize>,
     pub(super) longitude: Option<usize>,
     pub(super) level: Option<usize>,
+    /// Of the scalars, as they are listed.
+    pub(super) scalars: Vec<Option<usize>>,
 }
 
 impl Layout {
@@ -73,6 +75,11 @@ impl Layout {
         let latitude = optional(columns.latitude.as_deref(), &is_number, number);
         let longitude = optional(columns.longitude.as_deref(), &is_number, number);
         let level = optional(columns.level.as_deref(), &is_number, number);
+        let scalars: Vec<Option<usize>> = columns
+            .scalars
+            .iter()
+            .map(|s| optional(Some(&s.column), &is_number, number))
+            .collect();
         let (time, time_kinds): (Vec<usize>, Vec<Kind>) = columns
             .time
             .iter()
@@ -86,7 +93,12 @@ impl Layout {
         let mut wanted: Vec<usize> = time
             .iter()
             .copied()
-            .chain(optional.into_iter().flatten())
+            .chain(
+                optional
+                    .into_iter()
+                    .chain(scalars.iter().copied())
+                    .flatten(),
+            )
             .collect();
         wanted.sort_unstable();
         wanted.dedup();
@@ -105,6 +117,7 @@ impl Layout {
             latitude: latitude.and_then(place),
             longitude: longitude.and_then(place),
             level: level.and_then(place),
+            scalars: scalars.into_iter().map(|s| s.and_then(place)).collect(),
             wanted,
         })
     }
