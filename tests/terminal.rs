@@ -185,6 +185,7 @@ fn standard_output_holds_one_thing() {
     for (command, more) in [
         ("estimate", "--format=csv,parquet"),
         ("estimate", "--kinematics"),
+        ("estimate", "--decompose"),
         ("estimate", "--by=hour"),
         ("estimate", "--json"),
         ("events", "--json"),
