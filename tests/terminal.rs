@@ -1,6 +1,7 @@
 //! What the program prints, for people and for other programs: JSON, standard output, widths, colours, manual.
 #![allow(clippy::unwrap_used, clippy::panic, reason = "tests may panic")]
 
+use std::fmt::Write as _;
 use std::fs;
 use std::path::{Path, PathBuf};
 use std::process::{Command, Stdio};
@@ -81,10 +82,10 @@ impl Folder {
 }
 
 /// A copy of the demo in the folder, with its reports before a time of the day, all of it changed.
-fn demo_until(folder: &Folder, end: &str, changed: impl Fn(String) -> String) -> String {
+fn demo_until(folder: &Folder, end: &str, changed: impl Fn(&str) -> String) -> String {
     let repository = Path::new(env!("CARGO_MANIFEST_DIR"));
     let read = |name: &str| fs::read_to_string(repository.join(name)).unwrap();
-    let write = |name: &str, text: String| fs::write(folder.path(name), changed(text)).unwrap();
+    let write = |name: &str, text: String| fs::write(folder.path(name), changed(&text)).unwrap();
     write("stations.csv", read("networks/ostrin/stations.csv"));
     let reports = read("examples/ostrin/reports.csv");
     let end = format!("2031-06-14T{end}");
@@ -97,8 +98,8 @@ fn demo_until(folder: &Folder, end: &str, changed: impl Fn(String) -> String) ->
     folder.path("network.toml").to_str().unwrap().to_string()
 }
 
-fn as_it_is(text: String) -> String {
-    text
+fn as_it_is(text: &str) -> String {
+    text.to_string()
 }
 
 #[test]
@@ -184,6 +185,7 @@ fn standard_output_holds_one_thing() {
     for (command, more) in [
         ("estimate", "--format=csv,parquet"),
         ("estimate", "--kinematics"),
+        ("estimate", "--decompose"),
         ("estimate", "--by=hour"),
         ("estimate", "--json"),
         ("events", "--json"),
@@ -233,7 +235,10 @@ fn a_run_that_begins_anew_writes_its_table_once() {
     // Odd days forward, then even days back.
     for day in (1..29).step_by(2).chain((2..29).step_by(2).rev()) {
         for station in ["A", "B", "C"] {
-            reports += &format!("2031-06-{day:02}T00:00:00Z,{station},270,{day},{remark}\n");
+            let _ = writeln!(
+                reports,
+                "2031-06-{day:02}T00:00:00Z,{station},270,{day},{remark}"
+            );
         }
     }
     fs::write(folder.path("reports.csv"), reports).unwrap();
@@ -317,7 +322,7 @@ fn the_manual_has_a_page_for_each_command() {
 }
 
 /// Identifiers and names longer than their columns, of signs that take none, one and two.
-fn with_long_names(text: String) -> String {
+fn with_long_names(text: &str) -> String {
     let mut text = text.replace("OS", "Zu\u{308}rich-mesonet-大帽山自動氣象站-OS");
     for name in [
         "Ostrin Lake mesonet",
@@ -377,7 +382,7 @@ fn tables_fit_80_columns() {
     let plain = demo_until(&plain, "01", as_it_is);
     let short = demo_until(&short, "04", with_long_names);
     let long = demo_until(&site, "12", with_long_names);
-    let station = with_long_names("OS36".into());
+    let station = with_long_names("OS36");
     for network in [&plain, &long] {
         fits_80_columns(&["polygons", network]);
         fits_80_columns(&["polygons", network, "--expect"]);
@@ -420,7 +425,10 @@ fn profiles_fit_80_columns() {
         for level in ["850", "700", "500"] {
             // One has no wind at the top.
             if (station, level) != ("OS3", "500") {
-                reports += &format!("2031-06-14T00:00:00Z,{station},270,{speed},{level}\n");
+                let _ = writeln!(
+                    reports,
+                    "2031-06-14T00:00:00Z,{station},270,{speed},{level}"
+                );
             }
         }
     }
@@ -434,7 +442,7 @@ fn profiles_fit_80_columns() {
         ("reports.csv", &reports),
         ("network.toml", settings),
     ] {
-        fs::write(folder.path(name), with_long_names(text.into())).unwrap();
+        fs::write(folder.path(name), with_long_names(text)).unwrap();
     }
     let network = folder.path("network.toml");
     let text = fits_80_columns(&["profile", network.to_str().unwrap()]);

@@ -154,6 +154,8 @@ impl EstimateArgs {
         let more = [
             several(&self.format),
             ("--kinematics", self.kinematics),
+            ("--w-at", self.w_at.is_some()),
+            ("--decompose", self.decompose),
             ("--by", self.by.is_some()),
             self.pictures.asked(),
             ("--json", self.json),

@@ -81,7 +81,7 @@ Reads:   settings, station list.
 Prints:  a line for each polygon: area, longest edge, smallest angle, shape quality (1 = regular), the error of \
 vorticity or divergence for an error of 1 m/s in each wind component (1e-5 /s), and why it is left out.
 With --expect: the errors to expect, by sensors and by the wind that no station sees.
-Writes:  with --out: mesh.geojson (RFC 7946), mesh.csv, and with --expect expected.csv.
+Writes:  with --out: with --expect expected.csv; mesh.csv, mesh.geojson (RFC 7946).
 
 Example: gyremesh polygons networks/ostrin/network.toml";
 
