@@ -172,6 +172,23 @@ impl Setup {
     }
 }
 
+/// The parts of the analysis period in which no station moves; one where nothing does, and where settings or station list
+/// have defects, which [`Setup::read`] tells.
+///
+/// # Errors
+/// The settings cannot be read.
+pub fn epochs(path: &Path, overrides: &Overrides) -> Result<Vec<Period>, Error> {
+    let (settings, _) = read_settings(path, overrides)?;
+    let period = Period {
+        from: settings.analysis.from,
+        to: settings.analysis.to,
+    };
+    match read_catalogue(&settings.station_file, &settings.catalogue) {
+        Ok(list) => Ok(list.epochs(period)),
+        Err(_) => Ok(vec![period]),
+    }
+}
+
 /// Settings and stations with the defects of the settings. Without `one_place`, a station that moved is taken at its
 /// last place.
 fn read_sources(

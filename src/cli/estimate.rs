@@ -15,7 +15,7 @@ use crate::output::{
     EncodedBlock, Frame, Frames, OutputSet, SeriesChoice, SeriesFormat, kinematics_means_csv,
     means_csv, mesh_geojson, series, stations_csv, structure_csv, summary_csv, summary_json,
 };
-use crate::pipeline::{BlockView, EventsOutcome, Outcome, Setup, find_events_and, run};
+use crate::pipeline::{BlockView, EventsOutcome, Outcome, Setup, epochs, find_events_and, run};
 use crate::settings::{MeansBy, MeansSettings, Overrides, height_above_ground};
 use crate::time::Time;
 
@@ -164,18 +164,67 @@ impl EstimateArgs {
     }
 }
 
+/// One run; where stations moved within the period, one for each part in which none does, with a mesh and a folder of its
+/// own.
 pub(super) fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
-    let mut setup = args.input.setup_with(&args.overrides())?;
+    let overrides = args.overrides();
+    let folder = args.out.clone();
+    let folder = folder.unwrap_or_else(|| default_folder(&args.input.network));
+    let epochs = epochs(&args.input.network, &overrides)?;
+    if epochs.len() < 2 {
+        return estimate_in(args, &overrides, &folder);
+    }
+    let all = epochs.len();
+    if is_stdout(&folder) || args.json {
+        let message = format!(
+            "stations moved within the period, which makes {all} runs: name a folder and leave out `--json`, or set \
+             `--from` and `--to` to one side of the moves"
+        );
+        return Err(Error::Options(message));
+    }
+    let mut done = None;
+    let mut refused = None;
+    for (k, epoch) in epochs.into_iter().enumerate() {
+        let name = format!("epoch{}", k + 1);
+        let ends = [("from", epoch.from), ("until", epoch.to)];
+        let ends =
+            ends.map(|(word, end)| end.map_or(String::new(), |end| format!(" {word} {end}")));
+        say(
+            "note",
+            &format!("{name} of {all}, as stations moved:{}{}", ends[0], ends[1]),
+        );
+        let overrides = Overrides {
+            from: epoch.from,
+            to: epoch.to,
+            ..overrides.clone()
+        };
+        match estimate_in(args, &overrides, &folder.join(&name)) {
+            Ok(status) if done != Some(Status::SomeInputUnusable) => done = Some(status),
+            Ok(_) => {}
+            Err(error @ (Error::Reports(_) | Error::Network(_))) => {
+                say("warning", &format!("{name} has no results: {error}"));
+                refused = Some(error);
+            }
+            Err(error) => return Err(error),
+        }
+    }
+    match (done, refused) {
+        (Some(_), Some(_)) => Ok(Status::SomeInputUnusable),
+        (Some(status), None) => Ok(status),
+        (None, Some(error)) => Err(error),
+        (None, None) => Ok(Status::NotDone),
+    }
+}
+
+/// One run with one mesh.
+fn estimate_in(args: &EstimateArgs, overrides: &Overrides, folder: &Path) -> Result<Status, Error> {
+    let mut setup = args.input.setup_with(overrides)?;
     // Without a series there is no file for them.
     if args.summary_only {
         setup.settings.kinematics.write = false;
         setup.settings.w_at = None;
     }
     setup.has_polygons()?;
-    let folder = args
-        .out
-        .clone()
-        .unwrap_or_else(|| default_folder(&args.input.network));
     let wanted = args.format.iter().filter(|_| !args.summary_only);
     let choice = SeriesChoice {
         formats: wanted.filter_map(|format| format.series()).collect(),
@@ -190,7 +239,7 @@ pub(super) fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
         &setup.settings,
         args.quiet || args.json,
         |order, progress| {
-            let mut set = args.files(&folder)?;
+            let mut set = args.files(folder)?;
             let (encoder, mut series_files) = series(&setup, &choice, &mut set)?;
             let mut frames = Frames::new(polygons, &args.at);
             let encode = |seen: &BlockView| {
@@ -226,7 +275,7 @@ pub(super) fn estimate(args: &EstimateArgs) -> Result<Status, Error> {
         say("warning", &message);
     }
     let status = tell(&outcome.warnings, &outcome.reading);
-    if is_stdout(&folder) {
+    if is_stdout(folder) {
         // It has the series.
     } else if args.json {
         print(&summary_json(&setup, outcome))?;

@@ -96,8 +96,10 @@ row for each time and polygon) and scalars.csv (observed scalars); with --w-at v
 decompose_stations.csv (streamfunction and velocity potential); with --by polygon_means.csv, and kinematics_means.csv. Files \
 appear only when they are whole.
 Formats: csv; parquet (polygons.parquet, mesh.parquet), arrow (polygons.arrow); netcdf (polygons.nc, CF and UGRID); \
-geojson (polygons.geojson, at the last time or those of --at). A NetCDF file is made in memory, 220 bytes for each polygon \
+geojson (polygons.geojson, at the last time or those of --at); html (report.html, see `gyremesh report --help`). With --plot \
+also map_vorticity, map_divergence, series and structure (.png, .svg). A NetCDF file is made in memory, 220 bytes for each polygon \
 and time, with kinematics 480: take long archives in parts, with --from and --to.
+Stations that moved within the period: a run for each part in which none does, in the folders epoch1, epoch2, ...
 
 Settings file (defaults in brackets):
   name                        name of the network

@@ -82,6 +82,31 @@ impl StationList {
         }
     }
 
+    /// The parts of a period in which no station moves, in the order of time: each later place of a station begins one.
+    #[must_use]
+    pub fn epochs(&self, period: Period) -> Vec<Period> {
+        let mut moves: Vec<Time> = Vec::new();
+        for places in self.by_station() {
+            let touching = places.iter().filter(|place| period.touches(&place.station));
+            let later = touching.skip(1);
+            moves.extend(later.filter_map(|place| place.station.valid_from));
+        }
+        moves.sort_unstable();
+        moves.dedup();
+        let mut from = period.from;
+        let mut epochs = Vec::with_capacity(moves.len() + 1);
+        for at in moves {
+            let to = Some(at.plus_micros(-1));
+            epochs.push(Period { from, to });
+            from = Some(at);
+        }
+        epochs.push(Period {
+            from,
+            to: period.to,
+        });
+        epochs
+    }
+
     /// Every station once, at its last place and without limits: for work that reads reports and needs no geometry.
     #[must_use]
     pub fn all_times(&self) -> Network {
