@@ -28,6 +28,29 @@ pub(super) struct MeshRow<'a> {
     pub(super) fills_hole: bool,
 }
 
+impl MeshRow<'_> {
+    /// The columns of `mesh.csv`, and whether it fills a hole.
+    pub(super) fn json(&self, network: &Network) -> serde_json::Value {
+        let (polygon, shape) = (self.polygon, &self.polygon.shape);
+        json!({
+            "polygon": polygon.id,
+            "kind": polygon.kind.name(),
+            "stations": station_list(polygon, network),
+            "area_km2": shape.area / 1e6,
+            "perimeter_km": shape.perimeter / 1e3,
+            "longest_edge_km": shape.longest_edge / 1e3,
+            "smallest_angle_deg": shape.smallest_angle,
+            "shape_quality": shape.quality,
+            "noise_factor_per_m": shape.noise_factor,
+            "elevation_spread_m": shape.elevation_spread,
+            "slope": shape.slope,
+            "planetary_vorticity": self.planetary,
+            "fills_hole": self.fills_hole,
+            "excluded": self.excluded,
+        })
+    }
+}
+
 /// The polygons of the network, those left out, and those of `extra`, which stand only where stations are missing.
 pub(super) fn mesh_rows<'a>(
     setup: &'a Setup,
@@ -62,24 +85,7 @@ pub fn mesh_geojson(setup: &Setup, extra: &[ExtraPolygon]) -> String {
     let features = mesh_rows(setup, extra)
         .map(|row| {
             let polygon = row.polygon;
-            let shape = &polygon.shape;
-            let properties = json!({
-                "polygon": polygon.id,
-                "kind": polygon.kind.name(),
-                "stations": station_list(polygon, &setup.network),
-                "area_km2": shape.area / 1e6,
-                "perimeter_km": shape.perimeter / 1e3,
-                "longest_edge_km": shape.longest_edge / 1e3,
-                "smallest_angle_deg": shape.smallest_angle,
-                "shape_quality": shape.quality,
-                "noise_factor_per_m": shape.noise_factor,
-                "elevation_spread_m": shape.elevation_spread,
-                "slope": shape.slope,
-                "planetary_vorticity": row.planetary,
-                "fills_hole": row.fills_hole,
-                "excluded": row.excluded,
-            });
-            let properties: Option<JsonObject> = match properties {
+            let properties: Option<JsonObject> = match row.json(&setup.network) {
                 serde_json::Value::Object(object) => Some(object),
                 _ => None,
             };
