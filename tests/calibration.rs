@@ -149,10 +149,21 @@ fn faults_of_a_week_are_found() {
     assert!(score.turn.iter().all(|t| t.abs() < 5.0), "{:?}", score.turn);
 }
 
+/// The first fifty of [`two_hundred_weeks`].
 #[test]
-#[ignore = "200 weeks of 40 stations, two minutes in release; run by .ci/run"]
+#[ignore = "50 weeks of 40 stations, in release; run by .ci/run"]
+fn fifty_weeks() {
+    check_weeks(50);
+}
+
+#[test]
+#[ignore = "200 weeks of 40 stations, two minutes in release; the first fifty run in .ci/run"]
 fn two_hundred_weeks() {
-    let score = week(200);
+    check_weeks(200);
+}
+
+fn check_weeks(runs: u64) {
+    let score = week(runs);
     assert!(share(score.found, score.planted) >= 0.95);
     assert!(share(score.falsely, score.sound) <= 0.01);
     let (bias, spread) = sd(&score.turn);
