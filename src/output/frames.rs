@@ -140,6 +140,16 @@ impl Frames {
         }
     }
 
+    /// Those kept and those with the strongest values, in the order of time.
+    #[must_use]
+    pub fn shown(&self) -> Vec<&Frame> {
+        let mut shown: Vec<&Frame> = self.kept.iter().collect();
+        shown.extend(self.strongest.iter().flatten());
+        shown.sort_by_key(|frame| frame.time);
+        shown.dedup_by_key(|frame| frame.time);
+        shown
+    }
+
     /// Analysis times of the run.
     #[must_use]
     pub fn times(&self) -> u64 {
@@ -190,5 +200,8 @@ mod tests {
         assert_eq!(frames.strongest[0].as_ref().map(at), Some(1001));
         assert_eq!(frames.strongest[1].as_ref().map(at), Some(1001));
         assert_eq!(frames.at.iter().map(at).collect::<Vec<_>>(), [777]);
+        let shown: Vec<i64> = frames.shown().into_iter().map(at).collect();
+        assert_eq!(shown.len(), 314);
+        assert!(shown.is_sorted() && shown.contains(&1001));
     }
 }

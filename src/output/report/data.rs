@@ -21,7 +21,7 @@ const TURN: i64 = 400;
 /// and station the wind.
 pub(super) fn data(setup: &Setup, frames: &Frames) -> Value {
     let reasons = Reasons::new(&setup.network);
-    let kept = &frames.kept;
+    let kept = frames.shown();
     let column = |pick: &dyn Fn(&Cell) -> f64| -> Vec<Vec<i64>> {
         let row = |cells: &[Cell]| {
             let number = |cell: &Cell| {

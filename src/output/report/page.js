@@ -133,7 +133,7 @@
         band += `M${up.concat(down).join("L")}Z`;
       }
       const points = piece.map((t) => `${x(t).toFixed(1)} ${y(values[t][0]).toFixed(1)}`);
-      if (points.length) line += `M${points.join("L")}${points.length === 1 ? "h1" : ""}`;
+      if (points.length) line += `M${points.join("L")}${points.length === 1 ? "h3" : ""}`;
       piece = [];
     };
     values.forEach((found, t) => found ? piece.push(t) : close());
