@@ -107,10 +107,10 @@ fn estimate_draws_maps_a_series_and_the_structure_function() {
         caution,
     ];
     let svg = picture(field.path(), map, &texts);
-    // 4 barbs, north twice; both triangles have the colour of -2e-5, which is the end of the scale.
+    // 4 barbs with their halos, the hatching and north; both triangles have the colour of -2e-5, which is the end of the scale.
     assert_eq!(
         svg.matches("rotate(").count() - svg.matches("rotate(90)").count(),
-        4 + 2
+        2 * 4 + 2
     );
     assert_eq!(svg.matches("fill=\"#0d3a66\"").count(), 2);
     let series = picture(

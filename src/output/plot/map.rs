@@ -119,6 +119,9 @@ fn stations(svg: &mut Svg, setup: &Setup, base: &MapBase, frame: &Frame) {
             stroke: INK,
             width: 1.3,
         };
+        // Seen on dark polygons too.
+        let halo = format!("{place} stroke-opacity=\"0.75\"");
+        svg.path_with(&data, Paint::line("#ffffff", 3.6), &halo);
         svg.path_with(&data, paint, &place);
         svg.circle([x, y], 2.4, Paint::fill(INK));
         let (sin, cos) = turn.to_radians().sin_cos();
